@@ -1,0 +1,1 @@
+"""Cross-section tables for model atmospheres from molecular line lists, with the proof inside."""

@@ -1,0 +1,70 @@
+"""Every error this package raises on purpose.
+
+Bad input gets one line that says what is wrong, where, what was expected, what was
+found and how to mend it.  The command line prints that line and ends with the exit
+code of the error's class; nothing else ever reaches a user as a bare traceback.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+
+class OpacityError(Exception):
+    """Base of all errors of this package; `exit_code` is what the command line returns."""
+
+    exit_code = 1
+
+
+class InputError(OpacityError, ValueError):
+    """An argument of a Python call or of a command that cannot be right."""
+
+    exit_code = 2
+
+
+class RecipeError(OpacityError):
+    """A recipe with one or more faults, all of them in `problems`, one line each."""
+
+    exit_code = 2
+
+    def __init__(self, problems: Sequence[str]) -> None:
+        self.problems: tuple[str, ...] = tuple(problems)
+        super().__init__("\n".join(self.problems))
+
+
+class LineListError(OpacityError):
+    """A line list that cannot be read, or that holds what the recipe does not allow."""
+
+
+class MoleculeError(OpacityError):
+    """An isotopologue, mass, abundance, partition function or width that is not to be had."""
+
+
+class TableError(OpacityError):
+    """A table that is missing, damaged, of another format version, or asked beyond its grid."""
+
+
+class ResourceError(OpacityError):
+    """Memory, disk or permission that the work needs and does not have."""
+
+
+def problem(
+    where: object,
+    what: str,
+    *,
+    expected: object = None,
+    found: object = None,
+    remedy: str | None = None,
+) -> str:
+    """Put one error line together: ``where: what; expected ..., found ...; remedy``."""
+    line = f"{where}: {what}" if str(where) else what
+    parts = []
+    if expected is not None:
+        parts.append(f"expected {expected}")
+    if found is not None:
+        parts.append(f"found {found}")
+    if parts:
+        line += "; " + ", ".join(parts)
+    if remedy:
+        line += f"; {remedy}"
+    return line

@@ -1,0 +1,145 @@
+"""What a recipe says, as frozen values: read-only, in the units used inside, with no reference to files' content.
+
+Units: cm-1, K, bar; half-widths in cm-1/bar at 296 K.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from opacity.errors import InputError, problem
+from opacity.grids import FloatArray
+
+
+@dataclass(frozen=True)
+class Molecule:
+    """`mass` (g/mol) is given only for a molecule that hapi does not know."""
+
+    name: str
+    formula: str
+    mass: float | None = None
+
+
+@dataclass(frozen=True)
+class LineListSource:
+    """One `[[line_list]]`: files as written in the recipe, `paths` as found beside it."""
+
+    format: str
+    files: tuple[str, ...]
+    paths: tuple[Path, ...]
+    range: tuple[float, float] | None = None
+    isotopologue: str | None = None
+    reference: str = ""
+    bad_records: str = "stop"
+
+
+@dataclass(frozen=True)
+class PartitionFunctionChoice:
+    """`source` is "TIPS-2021", "TIPS-2025" or "file"; `path` is the file of T (K) and Q."""
+
+    source: str
+    file: str | None = None
+    path: Path | None = None
+
+
+@dataclass(frozen=True)
+class BroadeningDefault:
+    """Width for lines for which the list gives none: `gamma` cm-1/bar at 296 K, temperature exponent, source."""
+
+    gamma: float
+    exponent: float
+    source: str
+
+
+@dataclass(frozen=True)
+class Broadening:
+    """`mixture`: mole fraction by broadener, sum 1."""
+
+    mixture: dict[str, float]
+    default: dict[str, BroadeningDefault] = field(default_factory=dict)
+
+
+@dataclass(frozen=True)
+class CutoffStep:
+    """`cutoff` (cm-1) holds up to and including `to_pressure` (bar); None means for all higher pressures."""
+
+    cutoff: float
+    to_pressure: float | None = None
+
+
+@dataclass(frozen=True)
+class Cutoff:
+    """Distance from the unshifted line centre up to which a line counts, by pressure."""
+
+    steps: tuple[CutoffStep, ...]
+
+    def at(self, pressure: float) -> float:
+        """The cut-off (cm-1) at a pressure (bar)."""
+        for step in self.steps:
+            if step.to_pressure is None or pressure <= step.to_pressure:
+                return step.cutoff
+        raise InputError(
+            problem("profile.cutoff", "no cut-off for this pressure", expected="a last step without to_pressure",
+                    found=f"{pressure:g} bar")
+        )
+
+
+@dataclass(frozen=True)
+class Profile:
+    """How a line's profile is cut and how exactly it is summed."""
+
+    cutoff: Cutoff
+    tolerance: float = 1e-3
+    plinth: bool = False
+
+
+@dataclass(frozen=True)
+class Grid:
+    """Axes of the table.  With `nodes` the table is a profile: one spectrum for each (T, P) pair."""
+
+    wavenumber: FloatArray
+    wavenumber_spacing: str
+    temperature: tuple[float, ...]
+    pressure: tuple[float, ...]
+    nodes: tuple[tuple[float, float], ...] | None = None
+
+    def node_list(self) -> tuple[tuple[float, float], ...]:
+        """All (T, P) of the table, temperature slowest."""
+        if self.nodes is not None:
+            return self.nodes
+        return tuple((t, p) for t in self.temperature for p in self.pressure)
+
+
+@dataclass(frozen=True)
+class BandStrength:
+    """A published integrated strength that `check` holds the table against."""
+
+    name: str
+    range: tuple[float, float]
+    strength: float
+    unit: str
+    temperature: float
+    uncertainty: float
+    source: str
+
+
+@dataclass(frozen=True)
+class Recipe:
+    """A whole recipe.  `abundance` is "terrestrial", "pure", or fractions by isotopologue."""
+
+    path: Path
+    text: str
+    molecule: Molecule
+    line_lists: tuple[LineListSource, ...]
+    abundance: str | dict[str, float]
+    partition_function: PartitionFunctionChoice
+    broadening: Broadening
+    profile: Profile
+    grid: Grid
+    band_strengths: tuple[BandStrength, ...] = ()
+
+    @property
+    def name(self) -> str:
+        """The recipe file's name without its ending: tables are named after it."""
+        return self.path.stem

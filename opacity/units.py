@@ -1,0 +1,40 @@
+"""Conversions at the door: everything inside is cm-1, K, bar and cm2 per molecule.
+
+Band strengths are published in many units; the temperature meant by an "atm" is part of
+the unit's name here, because mixing up 273.15 K and 296 K is an error of 8.4 %.
+"""
+
+from __future__ import annotations
+
+from opacity.constants import AVOGADRO, LOSCHMIDT, STANDARD_ATMOSPHERE
+from opacity.errors import InputError, problem
+
+_KM_PER_MOL = 1e5 / AVOGADRO
+
+BAND_STRENGTH_UNITS: dict[str, float] = {
+    "cm/molecule": 1.0,
+    "km/mol": _KM_PER_MOL,
+    "cm-2 atm-1 (273.15 K)": 1.0 / LOSCHMIDT,
+    "cm-2 atm-1 (296 K)": 296.0 / 273.15 / LOSCHMIDT,
+    "cm-2 atm-1 (300 K)": 300.0 / 273.15 / LOSCHMIDT,
+    "cm-2 amagat-1": 1.0 / LOSCHMIDT,
+}
+"""Factor from each unit of integrated band strength to cm per molecule."""
+
+
+def per_atm_to_per_bar(value: float) -> float:
+    """A width or shift in cm-1/atm as cm-1/bar."""
+    return value / STANDARD_ATMOSPHERE
+
+
+def band_strength_to_cm_per_molecule(value: float, unit: str) -> float:
+    """An integrated band strength in one of `BAND_STRENGTH_UNITS` as cm per molecule.
+
+    Raises InputError for a unit that is not in the table.
+    """
+    if unit not in BAND_STRENGTH_UNITS:
+        allowed = ", ".join(f'"{name}"' for name in BAND_STRENGTH_UNITS)
+        raise InputError(
+            problem("unit", "unknown unit of band strength", expected=allowed, found=f'"{unit}"')
+        )
+    return value * BAND_STRENGTH_UNITS[unit]
