@@ -77,10 +77,13 @@ def spaced(start: float, stop: float, count: int, spacing: str) -> FloatArray:
     if count < 1 or (count == 1 and start != stop) or (count > 1 and start == stop):
         raise InputError(problem("count", "does not fit the range", expected="2 or more values", found=count))
     if spacing == "linear":
-        return np.linspace(start, stop, count)
-    values = np.exp(np.linspace(math.log(start), math.log(stop), count))
+        values = np.linspace(start, stop, count)
+    else:
+        values = np.exp(np.linspace(math.log(start), math.log(stop), count))
+    # Users ask for nodes by the number they would write, 1e-4 and not 9.999999999999991e-05.
+    values = np.array([float(f"{value:.12g}") for value in values])
     values[0], values[-1] = start, stop
-    return np.asarray(values, dtype=np.float64)
+    return values
 
 
 def as_axis(name: str, unit: str, values: Sequence[float] | NDArray[Any] | float) -> FloatArray:
@@ -100,7 +103,10 @@ def as_axis(name: str, unit: str, values: Sequence[float] | NDArray[Any] | float
     if falls.size:
         raise InputError(
             problem(
-                name, "not in rising order", expected=f"a value above {axis[falls[0]]:g}", found=f"{axis[falls[0] + 1]:g}"
+                name,
+                "not in rising order",
+                expected=f"a value above {axis[falls[0]]:g}",
+                found=f"{axis[falls[0] + 1]:g}",
             )
         )
     return axis

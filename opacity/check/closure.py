@@ -1,0 +1,140 @@
+"""Closure: the integral of a table's spectrum against the sum of its lines' strengths.
+
+Expected is sum S times the share of each profile inside cut-off and grid.  The points of a grid sample the
+profiles: what that does to the sum is predicted line by line where the grid is even, so that a step too coarse
+for the lines is told apart from a wrong table.
+"""
+
+from __future__ import annotations
+
+from dataclasses import asdict, dataclass
+from typing import Any
+
+import numpy as np
+
+from opacity.check.profile_share import sampling_offset, sampling_risk, share_between, spacing_at
+from opacity.check.result import AGREES, CANNOT_JUDGE, DIFFERS, CheckResult
+from opacity.cross_section.exact import voigt_profile
+from opacity.cross_section.prepare import NodeLines
+from opacity.grids import FloatArray, cell_widths
+
+JUDGED_BELOW = 0.01
+"""Above this much uncertainty of the expectation itself (relative) closure is not judged."""
+
+
+@dataclass(frozen=True)
+class Closure:
+    """Account of one node, strengths in cm/molecule.
+
+    `strength` of all lines prepared; `in_reach` what of it lies inside cut-off and grid; `integral` of the
+    points; `sampling` the relative difference that sampling is predicted to make (None where it can't be);
+    `at_risk` the share of the strength in lines that the step does not resolve; `allowance` for the ends.
+    """
+
+    temperature: float
+    pressure: float
+    strength: float
+    in_reach: float
+    integral: float
+    sampling: float | None
+    at_risk: float
+    allowance: float
+
+    @property
+    def difference(self) -> float:
+        """Relative difference of the integral from the expectation with sampling taken into account."""
+        expected = self.in_reach * (1.0 + (self.sampling or 0.0))
+        if expected <= 0.0:
+            return 0.0 if self.integral == 0.0 else float("inf")
+        return self.integral / expected - 1.0
+
+    def as_dict(self) -> dict[str, Any]:
+        """The account as plain values for JSON."""
+        return {**asdict(self), "difference": self.difference}
+
+
+def closure_of(
+    node: NodeLines, wavenumber: FloatArray, sigma: FloatArray, cutoff: float, plinth: bool, uniform: bool
+) -> Closure:
+    """The account of one spectrum (n_nu,) computed from the lines of `node`."""
+    lower = np.maximum(node.wavenumber - cutoff, wavenumber[0])
+    upper = np.minimum(node.wavenumber + cutoff, wavenumber[-1])
+    share = share_between(node, lower, upper)
+    if plinth:
+        edge = _at_distance(node, np.full(node.centre.size, cutoff))
+        share = np.maximum(share - edge * np.maximum(upper - lower, 0.0), 0.0)
+    in_reach = float(np.sum(node.strength * share))
+    weighed = node.strength * (share > 0.0)
+    risk = sampling_risk(node, wavenumber)
+    inside = (node.centre > wavenumber[0]) & (node.centre < wavenumber[-1])
+    at_risk = float(np.sum(weighed * risk * inside)) / max(float(np.sum(weighed * inside)), 1e-300)
+    sampling: float | None = None
+    if at_risk <= 0.1 * JUDGED_BELOW:
+        sampling = 0.0
+    elif uniform:
+        step = float(wavenumber[1] - wavenumber[0])
+        offset = sampling_offset(node, float(wavenumber[0]), step)
+        if np.all(np.isfinite(offset[inside & (weighed > 0.0)])):
+            sampling = float(np.sum(np.where(inside, node.strength * np.nan_to_num(offset), 0.0))) / max(in_reach, 1e-300)
+    return Closure(
+        temperature=node.temperature,
+        pressure=node.pressure,
+        strength=float(np.sum(node.strength)),
+        in_reach=in_reach,
+        integral=float(np.sum(cell_widths(wavenumber) * sigma)),
+        sampling=sampling,
+        at_risk=at_risk,
+        allowance=_ends_allowance(node, wavenumber, cutoff, risk) / max(in_reach, 1e-300),
+    )
+
+
+def _at_distance(node: NodeLines, distance: FloatArray) -> FloatArray:
+    """Each line's profile (per cm-1) at a distance from its centre, (n_lines,)."""
+    return voigt_profile(distance, node.doppler, node.lorentz)
+
+
+def _ends_allowance(node: NodeLines, wavenumber: FloatArray, cutoff: float, risk: FloatArray) -> float:
+    """How far the trapezoid sum may be off at the steps of the cut-off and at lines across the grid's ends, cm/molecule.
+
+    Half a cell of the profile's value at each cut; lines of which the grid's end cuts the unresolved core count whole.
+    """
+    if wavenumber.size < 2:
+        return float(np.sum(node.strength))
+    step = spacing_at(wavenumber, node.centre)
+    at_cut = np.zeros(node.centre.size)
+    for side in (-1.0, 1.0):
+        edge = node.wavenumber + side * cutoff
+        within = (edge >= wavenumber[0]) & (edge <= wavenumber[-1])
+        at_cut += np.where(within, 0.5 * step * _at_distance(node, np.abs(edge - node.centre)), 0.0)
+    near_end = np.zeros(node.centre.size)
+    for end in (wavenumber[0], wavenumber[-1]):
+        distance = np.abs(node.centre - end)
+        width = node.doppler + node.lorentz
+        # Trapezoid end term h^2/12 |V'| with |V'| <= V / max(distance, width), and the unresolved share.
+        value = _at_distance(node, distance)
+        near_end += step**2 / 12.0 * 2.0 * value / np.maximum(distance, width)
+        near_end += np.where(distance < 5.0 * np.maximum(width, step), risk, 0.0)
+    return float(np.sum(node.strength * (at_cut + near_end)))
+
+
+def judge_closure(accounts: list[Closure], tolerance: float) -> CheckResult:
+    """One row for all nodes: the worst of those that can be judged."""
+    judged = [one for one in accounts if one.sampling is not None and one.allowance <= JUDGED_BELOW and one.in_reach > 0]
+    coarse = [one for one in accounts if one.at_risk > JUDGED_BELOW]
+    note = ""
+    if coarse:
+        worst = max(coarse, key=lambda one: one.at_risk)
+        note = (
+            f"; step too coarse at {len(coarse)} of {len(accounts)} nodes: at {worst.temperature:g} K,"
+            f" {worst.pressure:.3g} bar {worst.at_risk:.0%} of the strength is in lines narrower than it resolves"
+        )
+    if not judged:
+        return CheckResult("closure", CANNOT_JUDGE, "no node can be judged" + note)
+    worst = max(judged, key=lambda one: abs(one.difference) / (tolerance + one.allowance))
+    bad = [one for one in judged if abs(one.difference) > tolerance + one.allowance]
+    detail = (
+        f"{len(judged)} of {len(accounts)} nodes; worst {worst.difference:+.1e} at {worst.temperature:g} K,"
+        f" {worst.pressure:.3g} bar" + note
+    )
+    verdict = DIFFERS if bad else AGREES
+    return CheckResult("closure", verdict, detail, worst.difference, tolerance + worst.allowance)

@@ -1,0 +1,46 @@
+"""The truth: the direct sum of Voigt profiles with scipy.special.wofz, written to be read, not to be fast."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from scipy.special import wofz
+
+from opacity.cross_section.prepare import NodeLines
+from opacity.grids import FloatArray
+
+SQRT_LN2 = math.sqrt(math.log(2.0))
+
+
+def voigt_profile(distance: FloatArray, doppler: FloatArray | float, lorentz: FloatArray | float) -> FloatArray:
+    """V = sqrt(ln2/pi)/alpha Re w(x + iy), x = sqrt(ln2) distance/alpha, y = sqrt(ln2) gamma/alpha; per cm-1.
+
+    `distance` from the centre (n,), `doppler` (alpha) and `lorentz` (gamma) HWHM, numbers or (n,), all cm-1.
+    """
+    x = SQRT_LN2 * distance / doppler
+    y = SQRT_LN2 * lorentz / doppler
+    return np.asarray(SQRT_LN2 / math.sqrt(math.pi) / doppler * wofz(x + 1j * y).real)
+
+
+def exact_spectrum(node: NodeLines, wavenumber: FloatArray, cutoff: float, plinth: bool = False) -> FloatArray:
+    """Cross-section (cm2/molecule) at each wavenumber, (n_nu,): each line within |nu - nu0| <= cutoff of its
+    unshifted wavenumber nu0, its profile about the shifted centre.
+
+    With `plinth` the profile's value at the distance `cutoff` from its centre is subtracted inside it, floor 0.
+    `wavenumber` must rise (it may have gaps).
+    """
+    sigma = np.zeros(wavenumber.size)
+    low = np.searchsorted(wavenumber, node.wavenumber - cutoff - 1e-6)
+    high = np.searchsorted(wavenumber, node.wavenumber + cutoff + 1e-6)
+    for line in np.flatnonzero(high > low):
+        near = slice(low[line], high[line])
+        within = np.abs(wavenumber[near] - node.wavenumber[line]) <= cutoff
+        profile = voigt_profile(
+            wavenumber[near][within] - node.centre[line], node.doppler[line], node.lorentz[line]
+        )
+        if plinth:
+            edge = voigt_profile(np.array([cutoff]), node.doppler[line], node.lorentz[line])
+            profile = np.maximum(profile - edge, 0.0)
+        sigma[near][within] += node.strength[line] * profile
+    return sigma

@@ -1,0 +1,197 @@
+"""Lines made ready for computing: abundances applied, broadening resolved, partition functions at hand.
+
+Both the exact sum and the kernels take what `PreparedLines.at` gives, so that they differ in the sum alone.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+from opacity.constants import REFERENCE_TEMPERATURE
+from opacity.errors import InputError, MoleculeError, problem
+from opacity.grids import FloatArray
+from opacity.kernels.line_strength import strength_ratio
+from opacity.kernels.line_width import doppler_half_width, pressure_half_width, shifted_centre
+from opacity.line_list.ledger import Ledger
+from opacity.line_list.model import LineList
+from opacity.molecule import partition_function as pf
+from opacity.molecule.broadening import Assumption, DefaultWidth, LineBroadening, resolve_broadening
+from opacity.molecule.isotopologue import Isotopologue
+
+
+@dataclass(frozen=True)
+class NodeLines:
+    """Lines at one temperature and pressure, each (n_lines,): cm-1 and cm/molecule, half-widths HWHM.
+
+    `wavenumber` is the unshifted one that the cut-off counts from, `centre` the shifted one.
+    """
+
+    temperature: float
+    pressure: float
+    wavenumber: FloatArray
+    centre: FloatArray
+    strength: FloatArray
+    doppler: FloatArray
+    lorentz: FloatArray
+
+
+@dataclass(frozen=True)
+class PreparedLines:
+    """Lines of one species with the choices of isotopologues, partition function and mixture made.
+
+    Arrays are (n_lines,): `strength` at 296 K in cm/molecule per molecule of the species with the abundances
+    chosen; `mass` g/mol.
+    """
+
+    wavenumber: FloatArray
+    strength: FloatArray
+    lower_energy: FloatArray
+    mass: FloatArray
+    isotopologue: NDArray[np.int16]
+    isotopologues: tuple[Isotopologue, ...]
+    partition: tuple[pf.PartitionFunction, ...]
+    broadening: LineBroadening
+    assumptions: tuple[Assumption, ...]
+    ledger: Ledger
+
+    def __len__(self) -> int:
+        return int(self.wavenumber.size)
+
+    def strengths(self, temperature: float) -> FloatArray:
+        """S(T) of all lines, cm/molecule, (n_lines,).  Raises MoleculeError where Q is not valid."""
+        ratio = np.array([q(REFERENCE_TEMPERATURE) / q(temperature) for q in self.partition] or [1.0])
+        return self.strength * strength_ratio(
+            self.wavenumber, self.lower_energy, temperature, ratio[self.isotopologue]
+        )
+
+    def at(self, temperature: float, pressure: float, strength: FloatArray | None = None) -> NodeLines:
+        """The lines at one node (K, bar); `strength` spares computing S(T) again.
+
+        Raises MoleculeError where a partition function is not valid at the temperature.
+        """
+        centre = shifted_centre(self.wavenumber, self.broadening.shift, pressure)
+        return NodeLines(
+            temperature,
+            pressure,
+            self.wavenumber,
+            centre,
+            self.strengths(temperature) if strength is None else strength,
+            doppler_half_width(self.wavenumber, centre, temperature, self.mass),
+            pressure_half_width(self.broadening.gamma, self.broadening.exponent, temperature, pressure),
+        )
+
+
+def prepare(
+    lines: LineList,
+    *,
+    partition_function: str | Path,
+    abundance: str | Mapping[str, float],
+    broadeners: Mapping[str, float],
+    defaults: Mapping[str, DefaultWidth] | None = None,
+) -> PreparedLines:
+    """Make a line list ready.  Arguments as those of `opacity.cross_section`.
+
+    Raises InputError for an unknown choice, MoleculeError for widths or partition functions that are not to be had.
+    """
+    _check_mixture(broadeners)
+    factors = abundance_factors(lines.isotopologues, abundance)
+    factor = np.array(factors or [0.0])[lines.isotopologue]
+    if np.any(factor == 0.0):
+        lines = lines.select(factor > 0.0, "isotopologue not in the mixture chosen")
+        factor = factor[factor > 0.0]
+    used = [factor > 0.0 for factor in factors]
+    masses = np.array([one.mass for one in lines.isotopologues] or [1.0])
+    broadening = resolve_broadening(lines.broadeners, broadeners, defaults or {}, len(lines))
+    notes = tuple(Assumption(text, count) for text, count in sorted(lines.ledger.notes.items()))
+    return PreparedLines(
+        wavenumber=lines.wavenumber,
+        strength=lines.strength * factor,
+        lower_energy=lines.lower_energy,
+        mass=masses[lines.isotopologue],
+        isotopologue=_renumber(lines.isotopologue, used),
+        isotopologues=tuple(one for one, keep in zip(lines.isotopologues, used, strict=True) if keep),
+        partition=tuple(
+            partition_of(partition_function, one)
+            for one, keep in zip(lines.isotopologues, used, strict=True)
+            if keep
+        ),
+        broadening=broadening,
+        assumptions=notes + broadening.assumptions,
+        ledger=lines.ledger,
+    )
+
+
+def _renumber(index: NDArray[np.int16], used: list[bool]) -> NDArray[np.int16]:
+    place = (np.cumsum(used or [True]) - 1).astype(np.int16)
+    return np.asarray(place[index], dtype=np.int16)
+
+
+def _check_mixture(broadeners: Mapping[str, float]) -> None:
+    total = sum(broadeners.values())
+    if not broadeners or not all(0.0 < x <= 1.0 for x in broadeners.values()) or abs(total - 1.0) > 1e-6:
+        raise InputError(
+            problem("broadeners", "not mole fractions", expected="values above 0 with sum 1", found=dict(broadeners))
+        )
+
+
+def partition_of(choice: str | Path, isotopologue: Isotopologue) -> pf.PartitionFunction:
+    """The partition function of an isotopologue: a TIPS edition by name, or a file of T and Q."""
+    if isinstance(choice, Path):
+        return pf.from_file(choice)
+    if choice in pf.TIPS_EDITIONS:
+        if not isotopologue.known:
+            raise MoleculeError(
+                problem(
+                    f"partition function {choice}",
+                    f"hapi does not know {isotopologue.molecule_formula}",
+                    remedy='give source = "file"',
+                )
+            )
+        return pf.tips(choice, isotopologue)
+    expected = " or ".join([*(f'"{name}"' for name in pf.TIPS_EDITIONS), "a Path of a file of T and Q"])
+    raise InputError(problem("partition_function", "unknown source", expected=expected, found=f'"{choice}"'))
+
+
+def abundance_factors(isotopologues: tuple[Isotopologue, ...], abundance: str | Mapping[str, float]) -> list[float]:
+    """By what to multiply a list's strengths, isotopologue by isotopologue; 0 leaves its lines out.
+
+    A HITRAN-format strength already holds the terrestrial abundance (HITRAN's definition): it is taken out
+    before another one is applied.
+    """
+    if abundance == "terrestrial":
+        return [1.0] * len(isotopologues)
+    if abundance == "pure":
+        if len(isotopologues) > 1:
+            found = ", ".join(one.formula for one in isotopologues)
+            raise InputError(
+                problem("abundance", '"pure" needs lines of one isotopologue', expected="one", found=found)
+            )
+        return [1.0 / one.abundance for one in isotopologues]
+    if isinstance(abundance, str):
+        raise InputError(
+            problem(
+                "abundance", "unknown", expected='"terrestrial", "pure" or fractions by isotopologue', found=abundance
+            )
+        )
+    names = {name for one in isotopologues for name in (one.formula, str(one.local))}
+    unknown = sorted(set(abundance) - names)
+    if unknown:
+        listed = ", ".join(f"{one.formula} ({one.local})" for one in isotopologues)
+        raise InputError(
+            problem("abundance", f"no lines of isotopologue {unknown[0]}", expected=listed or "a list with lines")
+        )
+    return [_fraction(one, abundance) / one.abundance for one in isotopologues]
+
+
+def _fraction(isotopologue: Isotopologue, abundance: Mapping[str, float]) -> float:
+    given = [abundance[key] for key in (isotopologue.formula, str(isotopologue.local)) if key in abundance]
+    if len(given) > 1:
+        raise InputError(
+            problem("abundance", f"{isotopologue.formula} is given twice", remedy="name it by formula or by number")
+        )
+    return given[0] if given else 0.0

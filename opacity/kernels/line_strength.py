@@ -1,0 +1,45 @@
+"""Line strength at a temperature."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION
+
+Array = NDArray[np.float64]
+
+
+def strength_ratio(wavenumber: Array, lower_energy: Array, temperature: float, partition_ratio: Array) -> Array:
+    """S(T) / S(296 K) of lines, (n_lines,).
+
+    S(T)/S0 = Q(T0)/Q(T) exp[-c2 E''(1/T - 1/T0)] [1 - exp(-c2 nu/T)] / [1 - exp(-c2 nu/T0)], T0 = 296 K
+    (Rothman et al. 1998, JQSRT 60, 665, appendix).  `wavenumber` and `lower_energy` in cm-1, (n_lines,);
+    `partition_ratio` is Q(T0)/Q(T), (n_lines,).
+    """
+    reference = REFERENCE_TEMPERATURE
+    boltzmann = np.exp(-SECOND_RADIATION * lower_energy * (1.0 / temperature - 1.0 / reference))
+    emission = np.expm1(-SECOND_RADIATION * wavenumber / temperature)
+    emission_reference = np.expm1(-SECOND_RADIATION * wavenumber / reference)
+    return np.asarray(partition_ratio * boltzmann * (emission / emission_reference))
+
+
+def strength_from_einstein_a(
+    wavenumber: Array,
+    lower_energy: Array,
+    einstein_a: Array,
+    upper_weight: Array,
+    abundance: Array,
+    temperature: float,
+    partition: Array,
+) -> Array:
+    """S(T) in cm/molecule from the Einstein coefficient, (n_lines,).
+
+    S = Ia g' A exp(-c2 E''/T) [1 - exp(-c2 nu/T)] / (8 pi c nu^2 Q(T)) (Rothman et al. 1998, appendix);
+    A in s-1, c in cm/s, `partition` Q(T), `abundance` Ia; all (n_lines,).
+    """
+    light_speed = 2.99792458e10
+    population = np.exp(-SECOND_RADIATION * lower_energy / temperature) / partition
+    emission = -np.expm1(-SECOND_RADIATION * wavenumber / temperature)
+    scale = 8.0 * np.pi * light_speed * wavenumber**2
+    return np.asarray(abundance * upper_weight * einstein_a * population * emission / scale)

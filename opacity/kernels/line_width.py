@@ -1,0 +1,35 @@
+"""Doppler and pressure widths of lines, and where a line's centre is at a pressure."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from opacity.constants import DOPPLER_HWHM, REFERENCE_TEMPERATURE
+
+Array = NDArray[np.float64]
+
+LOWEST_SHIFTED = 0.5
+"""A shifted centre counts for the Doppler width as no lower than this share of the unshifted one."""
+
+
+def shifted_centre(wavenumber: Array, shift: Array, pressure: float) -> Array:
+    """nu0 + P sum_b x_b delta_b in cm-1, (n_lines,); `shift` is the sum in cm-1/bar, pressure in bar."""
+    return wavenumber + pressure * shift
+
+
+def doppler_half_width(wavenumber: Array, centre: Array, temperature: float, mass: Array) -> Array:
+    """alpha = nu/c sqrt(2 ln2 k T/m), HWHM in cm-1, (n_lines,); `mass` in g/mol.
+
+    nu is the shifted centre; at pressures so high that the linear shift has lost its meaning, half of `wavenumber`.
+    """
+    return DOPPLER_HWHM * np.maximum(centre, LOWEST_SHIFTED * wavenumber) * np.sqrt(temperature / mass)
+
+
+def pressure_half_width(gamma: Array, exponent: Array, temperature: float, pressure: float) -> Array:
+    """P sum_b gamma_b (296 K/T)^n_b, HWHM in cm-1, (n_lines,).
+
+    `gamma` already holds the mole fraction, x_b gamma_b in cm-1/bar at 296 K; both (n_broadeners, n_lines)
+    (Rothman et al. 1998, JQSRT 60, 665, appendix).
+    """
+    return np.asarray(pressure * np.sum(gamma * (REFERENCE_TEMPERATURE / temperature) ** exponent, axis=0))

@@ -1,0 +1,129 @@
+"""A local table of hapi: `<name>.data` with `<name>.header` beside it (the layout is hapi's own, hitran-api 1.3).
+
+Records of fixed width, then extra columns behind a separator; the header, in JSON, names and places them all.
+Extra columns gamma_x, n_x and delta_x are half-width (cm-1/atm), exponent and shift (cm-1/atm) for broadener x.
+"""
+
+from __future__ import annotations
+
+import json
+import re
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from opacity.errors import LineListError, problem
+from opacity.grids import FloatArray
+from opacity.line_list.fields import parse_fields
+from opacity.line_list.hitran import parse_fixed
+from opacity.line_list.records import ParsedColumns
+from opacity.line_list.text import read_text, split_records
+
+_NAMES = {
+    "molec_id": "molecule",
+    "nu": "wavenumber",
+    "sw": "strength",
+    "a": "einstein_a",
+    "elower": "lower_energy",
+    "gp": "upper_weight",
+    "gpp": "lower_weight",
+}
+_NEEDED = ("molec_id", "local_iso_id", "nu", "sw", "elower")
+_KINDS = {"gamma": "gamma", "n": "exponent", "delta": "shift"}
+_COLUMN = re.compile(r"(gamma|n|delta)_([a-z][a-z0-9]*)")
+_WIDTH = re.compile(r"%(\d+)")
+_MISSING = re.compile(rb"#+")
+
+
+@dataclass(frozen=True)
+class _Header:
+    layout: dict[str, tuple[int, int]]
+    code_byte: int
+    width: int
+    extra: tuple[str, ...]
+    separator: bytes
+
+
+def parse_hapi_table(path: Path) -> ParsedColumns:
+    """The columns of a local hapi table.  Raises LineListError for a missing or unusable header."""
+    header = _read_header(path)
+    records, numbers = split_records(read_text(path))
+    parts = [record[header.width :].rstrip(b" \t").split(header.separator) for record in records]
+    # Behind the fixed part stands a separator, so that the first part is empty where there are extra columns.
+    count = len(header.extra)
+    whole = np.array(
+        [
+            len(record) >= header.width and len(part) == count + 1 and not part[0].strip()
+            for record, part in zip(records, parts, strict=True)
+        ],
+        dtype=bool,
+    )
+    expected = f"{header.width} characters and {count} extra columns"
+    columns = parse_fixed(path, records, numbers, whole, expected, header.layout, header.width, header.code_byte)
+    for position, name in enumerate(header.extra, start=1):
+        texts = [_MISSING.sub(b"", part[position]) if ok else b"" for part, ok in zip(parts, whole, strict=True)]
+        known = _internal_name(name)
+        if known is not None:
+            fields = np.array(texts, dtype=np.bytes_) if texts else np.empty(0, dtype="S1")
+            columns.numbers[known], columns.unreadable[known] = parse_fields(fields)
+    _complete_broadeners(columns)
+    return columns
+
+
+def _internal_name(name: str) -> str | None:
+    match = _COLUMN.fullmatch(name.lower())
+    return f"{_KINDS[match[1]]}_{match[2]}" if match else _NAMES.get(name.lower())
+
+
+def _complete_broadeners(columns: ParsedColumns) -> None:
+    broadeners = sorted({name.split("_", 1)[1] for name in columns.numbers if name.startswith("gamma_")})
+    nothing: FloatArray = np.full(len(columns.raw), np.nan)
+    for name in broadeners:
+        for kind in ("exponent", "shift"):
+            columns.numbers.setdefault(f"{kind}_{name}", nothing)
+    columns.broadeners = tuple(broadeners)
+
+
+def _read_header(path: Path) -> _Header:
+    header_path = path.with_suffix(".header")
+    if not header_path.is_file():
+        raise LineListError(
+            problem(path, "a hapi table needs its header beside it", expected=str(header_path), found="no such file")
+        )
+    try:
+        header = json.loads(read_text(header_path))
+        return _interpret(header)
+    except (ValueError, KeyError, TypeError, AttributeError, UnicodeDecodeError, RecursionError) as error:
+        raise LineListError(
+            problem(header_path, f"not a header of a hapi table ({type(error).__name__}: {error})")
+        ) from error
+
+
+def _interpret(header: dict[str, Any]) -> _Header:
+    positions, formats = header["position"], header["format"]
+    missing = [name for name in _NEEDED if name not in positions]
+    if missing:
+        raise KeyError(f"no column {', '.join(missing)}")
+    layout, ends = {}, []
+    for name, start in positions.items():
+        stop = int(start) + _width(formats[name])
+        if int(start) < 0:
+            raise ValueError(f"column {name} starts before the record")
+        ends.append(stop)
+        known = _internal_name(name)
+        if known is not None:
+            layout[known] = (int(start), stop)
+    separator = str(header.get("extra_separator", ",")).encode("ascii")
+    if not separator:
+        raise ValueError("empty extra_separator")
+    extra = tuple(str(name) for name in header.get("extra", []))
+    return _Header(layout, int(positions["local_iso_id"]), max(ends), extra, separator)
+
+
+def _width(text: str) -> int:
+    match = _WIDTH.match(text)
+    if match is None or not 1 <= int(match[1]) <= 1000:
+        raise ValueError(f'impossible column format "{text}"')
+    return int(match[1])

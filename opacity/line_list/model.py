@@ -1,0 +1,71 @@
+"""Lines in memory, in the units used inside."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from opacity.grids import FloatArray
+from opacity.line_list.ledger import Ledger
+from opacity.molecule.broadening import BroadenerColumns
+from opacity.molecule.isotopologue import Isotopologue
+
+
+@dataclass(frozen=True)
+class LineList:
+    """A line list as columns, sorted by wavenumber; every array is (n_lines,).
+
+    `wavenumber` cm-1; `strength` cm/molecule at 296 K, of the mixture of isotopologues that the list was made
+    for (terrestrial in HITRAN format); `lower_energy` cm-1; `einstein_a` s-1 and the weights `upper_weight`,
+    `lower_weight` NaN where not given; `isotopologue` index into `isotopologues`; `broadeners` by lower-case
+    name, in cm-1/bar; `record` the line number in its file and `file` the index into `files`.
+    """
+
+    wavenumber: FloatArray
+    strength: FloatArray
+    lower_energy: FloatArray
+    einstein_a: FloatArray
+    upper_weight: FloatArray
+    lower_weight: FloatArray
+    isotopologue: NDArray[np.int16]
+    isotopologues: tuple[Isotopologue, ...]
+    broadeners: dict[str, BroadenerColumns]
+    record: NDArray[np.int64]
+    file: NDArray[np.int16]
+    files: tuple[str, ...]
+    ledger: Ledger = field(default_factory=Ledger)
+
+    def __len__(self) -> int:
+        return int(self.wavenumber.size)
+
+    @property
+    def molecule_formula(self) -> str:
+        """Formula of the molecule, empty for a list without lines."""
+        return self.isotopologues[0].molecule_formula if self.isotopologues else ""
+
+    def select(self, which: NDArray[np.bool_] | NDArray[np.intp], reason: str | None = None) -> LineList:
+        """The lines picked by a mask or an index; with `reason` the others are entered in the ledger."""
+        ledger = Ledger()
+        ledger.add(self.ledger)
+        picked = self.wavenumber[which]
+        if reason is not None:
+            ledger.leave_out(reason, len(self) - picked.size)
+        return replace(
+            self,
+            wavenumber=picked,
+            strength=self.strength[which],
+            lower_energy=self.lower_energy[which],
+            einstein_a=self.einstein_a[which],
+            upper_weight=self.upper_weight[which],
+            lower_weight=self.lower_weight[which],
+            isotopologue=self.isotopologue[which],
+            broadeners={
+                name: BroadenerColumns(one.gamma[which], one.exponent[which], one.shift[which])
+                for name, one in self.broadeners.items()
+            },
+            record=self.record[which],
+            file=self.file[which],
+            ledger=ledger,
+        )

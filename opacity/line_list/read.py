@@ -1,0 +1,113 @@
+"""Reading one or several files of lines into one list."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from pathlib import Path
+
+import numpy as np
+
+from opacity.errors import InputError, LineListError, problem
+from opacity.grids import FloatArray
+from opacity.line_list.hapi_table import parse_hapi_table
+from opacity.line_list.hitran import parse_hitran
+from opacity.line_list.ledger import Ledger
+from opacity.line_list.model import LineList
+from opacity.line_list.records import ParsedColumns, ReadOptions, judge
+from opacity.molecule.broadening import BroadenerColumns
+from opacity.molecule.isotopologue import Isotopologue
+
+READERS: dict[str, Callable[[Path], ParsedColumns]] = {"hitran": parse_hitran, "hapi": parse_hapi_table}
+
+
+def read_lines(
+    files: str | Path | Sequence[str | Path],
+    format: str | None = None,
+    *,
+    range: tuple[float, float] | None = None,
+    bad_records: str = "stop",
+    options: ReadOptions | None = None,
+) -> LineList:
+    """Read line lists into one `LineList` sorted by wavenumber.
+
+    `format` is "hitran" (160-character records, .gz and .bz2 too) or "hapi" (.data with its .header); if it is
+    None the file's ending decides.  `range` (cm-1) keeps the lines inside it, ends included.  `bad_records`
+    is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).
+
+    Raises LineListError naming file and line, InputError for an unknown format or option.
+    """
+    if bad_records not in ("stop", "leave-out"):
+        raise InputError(problem("bad_records", "unknown", expected='"stop" or "leave-out"', found=f'"{bad_records}"'))
+    paths = [Path(files)] if isinstance(files, (str, Path)) else [Path(one) for one in files]
+    if not paths:
+        raise InputError(problem("files", "no line list given", expected="one or more files"))
+    base = options or ReadOptions()
+    chosen = ReadOptions(bad_records == "leave-out", base.formula, base.mass, base.isotopologue)
+    lines = merge([judge(_reader(path, format)(path), chosen) for path in paths])
+    formulas = sorted({one.molecule_formula for one in lines.isotopologues})
+    if len(formulas) > 1:
+        raise LineListError(
+            problem(paths[0], "lines of several molecules", expected="one molecule", found=", ".join(formulas))
+        )
+    if range is not None:
+        lower, upper = range
+        lines = lines.select((lines.wavenumber >= lower) & (lines.wavenumber <= upper), "outside the range asked for")
+    return lines
+
+
+def _reader(path: Path, format: str | None) -> Callable[[Path], ParsedColumns]:
+    chosen = format or ("hapi" if path.suffix == ".data" else "hitran")
+    if chosen not in READERS:
+        expected = " or ".join(f'"{name}"' for name in READERS)
+        raise InputError(problem("format", "unknown line-list format", expected=expected, found=f'"{chosen}"'))
+    return READERS[chosen]
+
+
+def merge(lists: Sequence[LineList]) -> LineList:
+    """One list from several, sorted by wavenumber; lines of equal wavenumber keep the order of the files."""
+    if len(lists) == 1:
+        return lists[0]
+    known: list[Isotopologue] = []
+    files: list[str] = []
+    index, file = [], []
+    ledger = Ledger()
+    for one in lists:
+        known += [iso for iso in one.isotopologues if iso not in known]
+        place = np.array([known.index(iso) for iso in one.isotopologues] or [0], dtype=np.int16)
+        index.append(place[one.isotopologue] if len(one) else one.isotopologue)
+        file.append((one.file + len(files)).astype(np.int16))
+        files += one.files
+        ledger.add(one.ledger)
+    wavenumber = np.concatenate([one.wavenumber for one in lists])
+    order = np.argsort(wavenumber, kind="stable")
+
+    def column(name: str) -> FloatArray:
+        return np.asarray(np.concatenate([getattr(one, name) for one in lists])[order])
+
+    names = sorted({name for one in lists for name in one.broadeners})
+    return LineList(
+        wavenumber=wavenumber[order],
+        strength=column("strength"),
+        lower_energy=column("lower_energy"),
+        einstein_a=column("einstein_a"),
+        upper_weight=column("upper_weight"),
+        lower_weight=column("lower_weight"),
+        isotopologue=np.concatenate(index)[order],
+        isotopologues=tuple(known),
+        broadeners={name: _merge_broadener(name, lists, order) for name in names},
+        record=np.concatenate([one.record for one in lists])[order],
+        file=np.concatenate(file)[order],
+        files=tuple(files),
+        ledger=ledger,
+    )
+
+
+def _merge_broadener(name: str, lists: Sequence[LineList], order: np.ndarray) -> BroadenerColumns:  # type: ignore[type-arg]
+    def join(part: str) -> FloatArray:
+        pieces = [
+            getattr(one.broadeners[name], part) if name in one.broadeners else np.full(len(one), np.nan)
+            for one in lists
+        ]
+        return np.asarray(np.concatenate(pieces)[order])
+
+    return BroadenerColumns(join("gamma"), join("exponent"), join("shift"))

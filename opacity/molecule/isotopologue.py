@@ -1,0 +1,55 @@
+"""Isotopologues: codes, formulas, masses and terrestrial abundances, from hapi's tables."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from opacity.errors import MoleculeError, problem
+from opacity.molecule.hapi_tables import hapi
+
+LOCAL_CODES = {str(n): n for n in range(1, 10)} | {"0": 10, "A": 11, "B": 12}
+"""Isotopologue codes of 160-character records: '1'..'9', then '0', 'A', 'B' for 10, 11, 12 (HITRAN)."""
+
+
+@dataclass(frozen=True)
+class Isotopologue:
+    """One isotopologue: HITRAN numbers, formula, mass (g/mol), terrestrial abundance.
+
+    `known` is false for one that a recipe defines because hapi does not know its molecule; its
+    abundance is then 1, and its list's strengths hold no abundance.
+    """
+
+    molecule: int
+    local: int
+    formula: str
+    molecule_formula: str
+    mass: float
+    abundance: float
+    known: bool = True
+
+
+def molecule_is_known(molecule: int) -> bool:
+    """Whether hapi's tables hold this HITRAN molecule number."""
+    return any(key[0] == molecule for key in hapi().ISO)
+
+
+def isotopologue(molecule: int, local: int) -> Isotopologue:
+    """The isotopologue with these HITRAN numbers.  Raises MoleculeError if hapi's tables lack it."""
+    row = hapi().ISO.get((molecule, local))
+    if row is None:
+        locals_known = sorted(key[1] for key in hapi().ISO if key[0] == molecule)
+        raise MoleculeError(
+            problem(
+                f"molecule {molecule}, isotopologue {local}",
+                "unknown isotopologue",
+                expected=f"local numbers {locals_known}" if locals_known else "a molecule number of HITRAN",
+            )
+        )
+    _, formula, abundance, mass, molecule_formula = row
+    return Isotopologue(molecule, local, str(formula), str(molecule_formula), float(mass), float(abundance))
+
+
+def isotopologues_of(molecule_formula: str) -> list[Isotopologue]:
+    """All isotopologues that hapi's tables hold of a molecule, most abundant first; empty if it is unknown."""
+    found = [isotopologue(*key) for key, row in hapi().ISO.items() if row[4] == molecule_formula]
+    return sorted(found, key=lambda one: one.local)

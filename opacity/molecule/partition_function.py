@@ -1,0 +1,187 @@
+"""Partition functions Q(T), each with the range in which it can be trusted.
+
+TIPS (Gamache et al. 2021, JQSRT 271, 107713; Gamache et al. 2025, JQSRT 345, 109568) comes
+through hapi.  Its tables were examined for smoothness: a value that a cubic through
+its four neighbours misses by more than 0.15 % is a step, and beyond a step (seen from 296 K)
+the ratio Q(T)/Q(296 K) is off by the step's size, so the range ends there.  Ranges that smoothness can't
+find, but a comparison of the two editions or with levels does, are listed in `_LIMITS`.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import lru_cache
+from pathlib import Path
+
+import numpy as np
+from scipy.interpolate import CubicSpline
+
+from opacity.constants import REFERENCE_TEMPERATURE
+from opacity.errors import MoleculeError, problem
+from opacity.grids import FloatArray
+from opacity.molecule.hapi_tables import hapi
+from opacity.molecule.isotopologue import Isotopologue
+
+TIPS_EDITIONS = {"TIPS-2021": 2021, "TIPS-2025": 2025}
+
+TIPS_LOWEST = 20.0
+"""Below 20 K hapi's interpolation of the tables is wrong: CO +0.3 % at 9.4 K, +11 % at 2.7 K (measured)."""
+
+STEP = 1.5e-3
+"""A relative jump from its neighbours above which a tabulated Q counts as a step."""
+
+# Upper ends (K) where an edition starts to differ by 1 % from the other, and is known to be the wrong one:
+# TIPS-2021 O2 is 32 % low and N2O 19 % low at 3000 K; TIPS-2025 CH4 is 11-29 % low at 2000-2250 K (measured).
+_LIMITS = {
+    ("TIPS-2021", 7, 1): 750.0,
+    ("TIPS-2021", 4, 1): 1710.0,
+    ("TIPS-2025", 6, 1): 1610.0,
+    ("TIPS-2025", 6, 2): 1610.0,
+}
+
+
+@dataclass(frozen=True)
+class PartitionFunction:
+    """Q(T) of one isotopologue.  `source` names where it came from; `lowest` and `highest` bound its use (K)."""
+
+    source: str
+    lowest: float
+    highest: float
+    _spline: CubicSpline | None = None
+    _tips: tuple[int, int, int] | None = None
+
+    def __call__(self, temperature: float) -> float:
+        """Q at a temperature (K).  Raises MoleculeError outside the valid range."""
+        if not self.lowest <= temperature <= self.highest:
+            raise MoleculeError(
+                problem(
+                    f"partition function {self.source}",
+                    "temperature outside its valid range",
+                    expected=f"{self.lowest:g} to {self.highest:g} K",
+                    found=f"{temperature:g} K",
+                    remedy="choose another source or other temperatures",
+                )
+            )
+        if self._tips is not None:
+            return tips_value(self._tips, temperature)
+        assert self._spline is not None
+        return float(np.exp(self._spline(np.log(temperature))))
+
+
+def tips_value(key: tuple[int, int, int], temperature: float) -> float:
+    """Q as hapi gives it, for (edition year, molecule, isotopologue), range not judged."""
+    year, molecule, local = key
+    return float(hapi().partitionSum(molecule, local, float(temperature), version=year))
+
+
+def tips(edition: str, isotopologue: Isotopologue) -> PartitionFunction:
+    """The TIPS partition function of an isotopologue.  Raises MoleculeError if the edition lacks it."""
+    year = TIPS_EDITIONS[edition]
+    table = _tips_table(year, isotopologue.molecule, isotopologue.local)
+    if table is None:
+        raise MoleculeError(
+            problem(
+                f"partition function {edition}",
+                f"no values for {isotopologue.formula} ({isotopologue.molecule_formula})",
+                remedy="choose another edition or source = \"file\"",
+            )
+        )
+    lowest, highest = _trusted_range(*table)
+    highest = min(highest, _LIMITS.get((edition, isotopologue.molecule, isotopologue.local), highest))
+    key = (year, isotopologue.molecule, isotopologue.local)
+    return PartitionFunction(f"{edition} {isotopologue.formula}", lowest, highest, _tips=key)
+
+
+@lru_cache(maxsize=512)
+def _tips_table(year: int, molecule: int, local: int) -> tuple[FloatArray, FloatArray] | None:
+    module = hapi()
+    temperatures = getattr(module, f"TIPS_{year}_ISOT_HASH").get((molecule, local))
+    values = getattr(module, f"TIPS_{year}_ISOQ_HASH").get((molecule, local))
+    if temperatures is None or values is None:
+        return None
+    size = min(len(temperatures), len(values))
+    return np.asarray(temperatures[:size], dtype=np.float64), np.asarray(values[:size], dtype=np.float64)
+
+
+def _trusted_range(temperature: FloatArray, value: FloatArray) -> tuple[float, float]:
+    """The stretch around 296 K without a step, not below 20 K."""
+    lowest, highest = max(TIPS_LOWEST, float(temperature[0])), float(temperature[-1])
+    bad = temperature[~(value > 0.0)]
+    bad = np.concatenate([bad, temperature[2:-2][np.abs(neighbour_residuals(temperature, value)) > STEP]])
+    # Below 60 K the tables' 10 K spacing is too wide for a cubic to follow ln Q: nothing can be said there.
+    bad = bad[bad > 60.0]
+    above, below = bad[bad > REFERENCE_TEMPERATURE], bad[bad < REFERENCE_TEMPERATURE]
+    if above.size:
+        highest = float(temperature[temperature < above.min()][-1])
+    if below.size:
+        lowest = float(temperature[temperature > below.max()][0])
+    return lowest, highest
+
+
+def neighbour_residuals(temperature: FloatArray, value: FloatArray) -> FloatArray:
+    """ln Q at each inner point less the cubic in ln T through its two neighbours on each side, (n - 4,)."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        log_t, log_q = np.log(temperature), np.log(value)
+        offsets = (-2, -1, 1, 2)
+        centre = log_t[2:-2]
+        x = [log_t[2 + k : log_t.size - 2 + k] - centre for k in offsets]
+        predicted = np.zeros_like(centre)
+        for i, k in enumerate(offsets):
+            weight = np.ones_like(centre)
+            for j in range(4):
+                if j != i:
+                    weight = weight * x[j] / (x[j] - x[i])
+            predicted = predicted + weight * log_q[2 + k : log_q.size - 2 + k]
+        return np.asarray(log_q[2:-2] - predicted)
+
+
+def editions_differ(isotopologue: Isotopologue, temperature: float) -> float:
+    """Q(T)/Q(296 K) of TIPS-2021 over that of TIPS-2025, less 1; 0 where one of them has no value."""
+    ratios = []
+    for year in TIPS_EDITIONS.values():
+        table = _tips_table(year, isotopologue.molecule, isotopologue.local)
+        if table is None or not table[0][0] <= temperature <= table[0][-1]:
+            return 0.0
+        key = (year, isotopologue.molecule, isotopologue.local)
+        ratios.append(tips_value(key, temperature) / tips_value(key, REFERENCE_TEMPERATURE))
+    return ratios[0] / ratios[1] - 1.0
+
+
+def from_file(path: Path) -> PartitionFunction:
+    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout).
+
+    Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.
+    Raises MoleculeError naming the line that can't be right.
+    """
+    try:
+        lines = path.read_text(encoding="ascii").splitlines()
+    except (OSError, UnicodeDecodeError) as error:
+        raise MoleculeError(problem(path, f"partition function cannot be read ({error})")) from error
+    rows: list[tuple[float, float]] = []
+    for number, line in enumerate(lines, start=1):
+        if not line.strip():
+            continue
+        rows.append(_row(path, number, line, rows[-1][0] if rows else 0.0))
+    if len(rows) < 4:
+        raise MoleculeError(problem(path, "too few rows", expected="4 or more of T and Q", found=len(rows)))
+    table = np.array(rows)
+    spline = CubicSpline(np.log(table[:, 0]), np.log(table[:, 1]))
+    return PartitionFunction(f"file {path.name}", float(table[0, 0]), float(table[-1, 0]), _spline=spline)
+
+
+def _row(path: Path, number: int, line: str, previous: float) -> tuple[float, float]:
+    fields = line.split()
+    try:
+        temperature, value = (float(field) for field in fields[:2])
+    except ValueError:
+        temperature, value = np.nan, np.nan
+    if not (previous < temperature < np.inf and 0.0 < value < np.inf):
+        raise MoleculeError(
+            problem(
+                f"{path}:{number}",
+                "not a row of a partition function",
+                expected=f"T above {previous:g} K and Q above 0",
+                found=f'"{line.strip()[:40]}"',
+            )
+        )
+    return temperature, value

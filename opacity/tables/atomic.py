@@ -1,0 +1,106 @@
+"""The only way in which a file gets its final name: written whole beside it, read back, then renamed."""
+
+from __future__ import annotations
+
+import contextlib
+import errno
+import hashlib
+import os
+import secrets
+from collections.abc import Callable, Iterator
+from pathlib import Path
+
+from opacity.errors import InputError, ResourceError, problem
+
+_PIECE = 1 << 24
+
+_REMEDIES = {
+    errno.ENOSPC: "make room on the disk or choose another folder",
+    errno.EDQUOT: "your quota is used up: make room or choose another folder",
+    errno.EACCES: "choose a folder in which you may write",
+    errno.EPERM: "choose a folder in which you may write",
+    errno.EROFS: "choose a folder in which you may write",
+    errno.ENOENT: "create the folder first",
+    errno.ENOTDIR: "choose a folder that is one",
+    errno.EISDIR: "choose a name that no folder has",
+    errno.ENAMETOOLONG: "choose a shorter name",
+    errno.EIO: "the disk or the network file system failed",
+}
+
+
+def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | None = None) -> Path:
+    """Write `data` so that `path` is at every moment absent, what it was before, or complete.
+
+    The bytes go to a temporary name in the same folder, are synced, read back and compared;
+    `check`, if given, is called with the temporary name and may raise.  Only then is the file
+    renamed.  The temporary file is removed on every failure.  Raises ResourceError for all that
+    the file system refuses, InputError for a path that can't be one.
+    """
+    path = Path(path)
+    if "\0" in str(path) or path.name in ("", ".."):
+        raise InputError(problem("path", "not the name of a file", found=repr(str(path))))
+    temporary = path.parent / f".{secrets.token_hex(8)}.part"
+    with _as_resource_error(path):
+        try:
+            _write_synced(temporary, data)
+            _compare(temporary, data, path)
+            if check is not None:
+                check(temporary)
+            os.replace(temporary, path)
+        finally:
+            with contextlib.suppress(FileNotFoundError, NotADirectoryError):
+                os.unlink(temporary)
+        _sync_folder(path.parent)
+    return path
+
+
+@contextlib.contextmanager
+def _as_resource_error(path: Path) -> Iterator[None]:
+    try:
+        yield
+    except OSError as error:
+        reason = error.strerror or str(error)
+        remedy = _REMEDIES.get(error.errno or 0)
+        raise ResourceError(problem(path, f"cannot be written ({reason})", remedy=remedy)) from error
+
+
+def _write_synced(path: Path, data: bytes) -> None:
+    descriptor = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0), 0o666)
+    try:
+        rest = memoryview(data)
+        while rest:
+            rest = rest[os.write(descriptor, rest[:_PIECE]) :]
+        os.fsync(descriptor)
+        _drop_cached_pages(descriptor)
+    finally:
+        os.close(descriptor)
+
+
+def _drop_cached_pages(descriptor: int) -> None:
+    """Ask the system to forget what it holds of a file, so that reading back asks the disk."""
+    if hasattr(os, "posix_fadvise"):
+        with contextlib.suppress(OSError):
+            os.posix_fadvise(descriptor, 0, 0, os.POSIX_FADV_DONTNEED)
+
+
+def _compare(written: Path, data: bytes, path: Path) -> None:
+    digest = hashlib.sha256()
+    with open(written, "rb") as stream:
+        while piece := stream.read(_PIECE):
+            digest.update(piece)
+    if digest.digest() != hashlib.sha256(data).digest():
+        raise ResourceError(problem(path, "what the disk gives back is not what was written to it"))
+
+
+def _sync_folder(folder: Path) -> None:
+    """Make the rename last; file systems that cannot sync a folder say EINVAL, and there is no more to be done."""
+    if os.name == "nt":
+        return
+    descriptor = os.open(folder, os.O_RDONLY)
+    try:
+        os.fsync(descriptor)
+    except OSError as error:
+        if error.errno not in (errno.EINVAL, errno.ENOTSUP):
+            raise
+    finally:
+        os.close(descriptor)

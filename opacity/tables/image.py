@@ -1,0 +1,159 @@
+"""A table as the bytes of an HDF5 file, built in memory: the same table gives the same bytes."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterator, Mapping
+from typing import Any
+
+import h5py
+import numpy as np
+from numpy.typing import NDArray
+
+from opacity.provenance import VERSION
+from opacity.tables import layout
+from opacity.tables.model import CrossSectionTable
+
+_GROWTH = 1 << 22
+_DIMENSION_ONLY = "This is a netCDF dimension but not a netCDF variable. {:9d}"
+"""What netCDF-4 looks for at the start of the NAME of a scale without values (netCDF-4 format description)."""
+
+
+def table_image(table: CrossSectionTable, dtype: np.dtype[Any]) -> bytes:
+    """The HDF5 file of `table`, with the cross-section stored as `dtype` (f4 or f8)."""
+    with h5py.File(
+        "image", "w", driver="core", backing_store=False, block_size=_GROWTH, libver=layout.LIBVER, track_order=True
+    ) as file:
+        _set_attributes(file, _global_attributes(table))
+        _write_axes(file, table)
+        _write_cross_section(file, table, dtype)
+        for name, text in _texts(table).items():
+            _write_text(file, name, text)
+        file.flush()
+        return bytes(file.id.get_file_image())
+
+
+def node_indices(table: CrossSectionTable) -> Iterator[tuple[int, ...]]:
+    """The index of each spectrum of `table.cross_section`, in stored order."""
+    return np.ndindex(table.cross_section.shape[:-1])
+
+
+def as_json(value: Mapping[str, Any]) -> str:
+    """JSON with sorted keys; ValueError for NaN and infinity, TypeError for what JSON cannot say."""
+    return json.dumps(value, sort_keys=True, indent=1, ensure_ascii=False, allow_nan=False)
+
+
+def _texts(table: CrossSectionTable) -> dict[str, str]:
+    return {"recipe": table.recipe, "provenance": as_json(table.provenance), "checks": as_json(table.checks)}
+
+
+def _global_attributes(table: CrossSectionTable) -> dict[str, Any]:
+    return {
+        **layout.GLOBAL_ATTRIBUTES,
+        "title": table.title,
+        "source": f"opacity {VERSION}",
+        "format": layout.FORMAT_NAME,
+        "format_version": np.int32(layout.FORMAT_VERSION),
+        "formula": table.formula,
+        "nodes": "profile" if table.profile else "grid",
+    }
+
+
+def _set_attributes(target: Any, attributes: Mapping[str, Any]) -> None:
+    for name, value in attributes.items():
+        target.attrs[name] = _fixed(value) if isinstance(value, str) else value
+
+
+def _fixed(text: str) -> Any:
+    """Text of fixed length, marked as ASCII where it is; readers in C and Fortran get no pointer."""
+    if text.isascii():
+        return np.bytes_(text.encode("ascii"))
+    data = text.encode("utf-8")
+    return np.array(data, dtype=h5py.string_dtype("utf-8", len(data)))
+
+
+def _write_axes(file: Any, table: CrossSectionTable) -> None:
+    if table.profile:
+        _add_dimension(file, "node", table.temperature.size)
+    for name in layout.AXES:
+        values: NDArray[np.float64] = getattr(table, name)
+        dataset = file.create_dataset(name, data=values.astype("<f8"), track_order=True)
+        attributes = {**layout.ATTRIBUTES[name], "units": layout.UNITS[name], "sha256": layout.sha256_of(values)}
+        _set_attributes(dataset, attributes)
+        dimension = layout.axis_dimension(name, table.profile)
+        if dimension == name:
+            dataset.make_scale(name)
+        else:
+            _attach(file, dataset, (dimension,))
+
+
+def _add_dimension(file: Any, name: str, size: int) -> None:
+    """A dimension without values, as netCDF-4 writes it."""
+    dataset = file.create_dataset(name, shape=(size,), dtype=">f4", track_order=True)
+    dataset.make_scale(_DIMENSION_ONLY.format(size))
+
+
+def _attach(file: Any, dataset: Any, dimensions: tuple[str, ...]) -> None:
+    for position, name in enumerate(dimensions):
+        dataset.dims[position].attach_scale(file[name])
+
+
+def _write_cross_section(file: Any, table: CrossSectionTable, dtype: np.dtype[Any]) -> None:
+    shape = table.cross_section.shape
+    dataset = file.create_dataset(
+        layout.CROSS_SECTION,
+        shape=shape,
+        dtype=dtype,
+        chunks=(1,) * (len(shape) - 1) + (min(layout.BLOCK, shape[-1]),),
+        compression="gzip",
+        compression_opts=layout.GZIP_LEVEL,
+        shuffle=True,
+        fillvalue=dtype.type(np.nan),
+        track_order=True,
+    )
+    attributes: dict[str, Any] = {**layout.ATTRIBUTES[layout.CROSS_SECTION], "units": layout.UNITS["cross_section"]}
+    if table.profile:
+        attributes["coordinates"] = "temperature pressure"
+    _set_attributes(dataset, {**attributes, "_FillValue": np.full(1, np.nan, dtype)})
+    dimensions = layout.node_dimensions(table.profile)
+    _attach(file, dataset, (*dimensions, "wavenumber"))
+    _write_hashes(file, _fill(dataset, table, dtype), dimensions)
+
+
+def _fill(dataset: Any, table: CrossSectionTable, dtype: np.dtype[Any]) -> NDArray[np.bytes_]:
+    """Store every spectrum and return the sha256 of its blocks as characters, (..., n_block, 64)."""
+    points = table.wavenumber.size
+    blocks = layout.block_slices(points)
+    hashes = np.empty((*table.cross_section.shape[:-1], len(blocks), layout.HEX_DIGITS), dtype="S1")
+    for node in node_indices(table):
+        # Adding 0 turns a negative zero into the plain one.
+        spectrum = np.add(table.cross_section[node], 0.0).astype(dtype)
+        dataset[node] = spectrum
+        for number, block in enumerate(blocks):
+            hashes[(*node, number)] = _characters(layout.sha256_of(spectrum[block]))
+    return hashes
+
+
+def _write_hashes(file: Any, hashes: NDArray[np.bytes_], dimensions: tuple[str, ...]) -> None:
+    _add_dimension(file, "block", hashes.shape[-2])
+    _add_dimension(file, "hex_digit", layout.HEX_DIGITS)
+    dataset = file.create_dataset(layout.HASHES, data=hashes, track_order=True)
+    _set_attributes(dataset, layout.ATTRIBUTES[layout.HASHES])
+    _attach(file, dataset, (*dimensions, "block", "hex_digit"))
+
+
+def _characters(text: str) -> NDArray[np.bytes_]:
+    return np.frombuffer(text.encode("utf-8"), dtype="S1")
+
+
+def _write_text(file: Any, name: str, text: str) -> None:
+    """Characters in a dataset, which has no limit of size, as attributes do (64 kB).
+
+    An empty text is one NUL, because netCDF takes a dimension of size 0 for an unlimited one.
+    """
+    characters = _characters(text or "\0")
+    _add_dimension(file, f"{name}_length", characters.size)
+    dataset = file.create_dataset(name, data=characters, track_order=True)
+    attributes = {**layout.ATTRIBUTES[name], "_Encoding": "utf-8", "sha256": layout.sha256_of(characters)}
+    _set_attributes(dataset, attributes)
+    _attach(file, dataset, (f"{name}_length",))

@@ -1,0 +1,130 @@
+"""Writing a cross-section table: what it may hold, and the way to its final name."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from opacity.errors import InputError, OpacityError, ResourceError, TableError, problem
+from opacity.grids import FloatArray, as_axis, as_wavenumbers
+from opacity.tables import layout
+from opacity.tables.atomic import write_atomically
+from opacity.tables.image import as_json, node_indices, table_image
+from opacity.tables.model import CrossSectionTable
+from opacity.tables.read import open_table
+
+
+def write_cross_section_table(path: Path, table: CrossSectionTable) -> Path:
+    """Write `table` to `path` (HDF5) and return the path.
+
+    The file is built in memory, written beside `path`, read back from the disk, compared block by
+    block and only then given its name.  The same table gives the same bytes.  Raises TableError for
+    a table that may not be stored (NaN, infinity or a negative value anywhere, axes that do not fit),
+    ResourceError where memory or the file system refuses; nothing is left behind then.
+    """
+    path = Path(path)
+    dtype = check_table(path, table)
+    try:
+        image = table_image(table, dtype)
+    except MemoryError as error:
+        raise ResourceError(problem(path, "the table does not fit in memory; use fewer nodes or points")) from error
+    except (OSError, RuntimeError, ValueError) as error:
+        raise TableError(problem(path, f"the table cannot be stored ({_one_line(error)})")) from error
+    return write_atomically(path, image, _verify)
+
+
+def check_table(path: Path, table: CrossSectionTable) -> np.dtype[Any]:
+    """The type, f4 or f8, in which `table` is to be stored; TableError where it may not be."""
+    for name in ("title", "formula"):
+        _check_label(path, name, getattr(table, name))
+    _check_axes(path, table)
+    _check_texts(path, table)
+    smallest, largest = _extremes(path, table)
+    fits = smallest > layout.F4_SMALLEST and largest < layout.F4_LARGEST
+    return np.dtype("<f4" if fits else "<f8")
+
+
+def _verify(written: Path) -> None:
+    try:
+        with open_table(written) as table:
+            table.verify()
+    except OpacityError as error:
+        raise ResourceError(f"what was written does not read back: {error}") from error
+
+
+def _one_line(error: Exception) -> str:
+    return " ".join(str(error).split())
+
+
+def _check_label(path: Path, name: str, text: str) -> None:
+    if not text.strip() or not text.isprintable():
+        raise TableError(problem(path, f"unusable {name}", expected="one line of text", found=repr(text)))
+
+
+def _check_axes(path: Path, table: CrossSectionTable) -> None:
+    try:
+        as_wavenumbers(table.wavenumber)
+        for name in ("temperature", "pressure"):
+            _check_node_axis(name, getattr(table, name), table.profile)
+    except InputError as error:
+        raise TableError(f"{path}: {error}") from error
+    sizes = table.temperature.size, table.pressure.size
+    if table.profile and sizes[0] != sizes[1]:
+        raise TableError(
+            problem(path, "a profile needs one pressure a temperature", found=f"{sizes[0]} and {sizes[1]}")
+        )
+    expected = (*layout.spectra_shape(*sizes, table.profile), table.wavenumber.size)
+    if table.cross_section.shape != expected:
+        raise TableError(
+            problem(path, "cross_section does not fit its axes", expected=expected, found=table.cross_section.shape)
+        )
+
+
+def _check_node_axis(name: str, values: FloatArray, profile: bool) -> None:
+    """A grid's axis rises; along a profile the order is free, and each value must stand by itself."""
+    unit = layout.UNITS[name]
+    if not profile:
+        as_axis(name, unit, values)
+        return
+    if values.ndim != 1 or values.size == 0:
+        raise InputError(problem(name, "not a list of nodes", expected="one or more numbers", found=values.shape))
+    for value in values:
+        as_axis(name, unit, value)
+
+
+def _check_texts(path: Path, table: CrossSectionTable) -> None:
+    if "\0" in table.recipe:
+        raise TableError(problem(path, "the recipe holds a NUL character"))
+    try:
+        table.recipe.encode("utf-8")
+        as_json(table.provenance).encode("utf-8")
+        as_json(table.checks).encode("utf-8")
+    except (TypeError, ValueError, RecursionError) as error:
+        raise TableError(problem(path, f"a text that cannot be stored ({_one_line(error)})")) from error
+
+
+def _extremes(path: Path, table: CrossSectionTable) -> tuple[float, float]:
+    """The smallest value that is not 0 and the largest; TableError at the first that may not be stored."""
+    smallest, largest = math.inf, 0.0
+    for node in node_indices(table):
+        spectrum = table.cross_section[node]
+        bad = np.flatnonzero(~(np.isfinite(spectrum) & (spectrum >= 0.0)))
+        if bad.size:
+            raise TableError(_impossible(path, table, node, int(bad[0])))
+        positive = spectrum[spectrum > 0.0]
+        if positive.size:
+            smallest, largest = min(smallest, float(positive.min())), max(largest, float(positive.max()))
+    return smallest, largest
+
+
+def _impossible(path: Path, table: CrossSectionTable, node: tuple[int, ...], point: int) -> str:
+    place = f"cross_section at {table.temperature[node[0]]:g} K, {table.pressure[node[-1]]:g} bar"
+    return problem(
+        path,
+        f"impossible {place}, {table.wavenumber[point]:.10g} cm-1",
+        expected="a finite number, 0 or above",
+        found=f"{table.cross_section[(*node, point)]:g}",
+    )
