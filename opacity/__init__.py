@@ -1,1 +1,69 @@
-"""Cross-section tables for model atmospheres from molecular line lists, with the proof inside."""
+"""Cross-section tables for model atmospheres from molecular line lists, with the proof inside.
+
+The public names are loaded when they are first used, so that reading a table loads neither numba nor hapi.
+"""
+
+from __future__ import annotations
+
+import importlib
+from typing import TYPE_CHECKING, Any
+
+from opacity.errors import (
+    InputError,
+    LineListError,
+    MoleculeError,
+    OpacityError,
+    RecipeError,
+    ResourceError,
+    TableError,
+)
+from opacity.provenance import VERSION
+
+__version__ = VERSION
+
+if TYPE_CHECKING:
+    from opacity.api import build, cross_section, exact_cross_section, plan
+    from opacity.line_list.read import read_lines
+    from opacity.molecule.broadening import DefaultWidth
+    from opacity.recipe.load import load_recipe
+    from opacity.tables.read import open_table
+
+_HOMES = {
+    "build": "opacity.api",
+    "cross_section": "opacity.api",
+    "exact_cross_section": "opacity.api",
+    "plan": "opacity.api",
+    "read_lines": "opacity.line_list.read",
+    "DefaultWidth": "opacity.molecule.broadening",
+    "load_recipe": "opacity.recipe.load",
+    "open_table": "opacity.tables.read",
+}
+
+__all__ = [
+    "DefaultWidth",
+    "InputError",
+    "LineListError",
+    "MoleculeError",
+    "OpacityError",
+    "RecipeError",
+    "ResourceError",
+    "TableError",
+    "__version__",
+    "build",
+    "cross_section",
+    "exact_cross_section",
+    "load_recipe",
+    "open_table",
+    "plan",
+    "read_lines",
+]
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+    return getattr(importlib.import_module(_HOMES[name]), name)
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

@@ -28,7 +28,5 @@ LOSCHMIDT = 101325.0 / (BOLTZMANN * 273.15) * 1e-6
 REFERENCE_TEMPERATURE = 296.0
 """Temperature of strengths and widths in HITRAN-format lists, K (Rothman et al. 1998, JQSRT 60, 665)."""
 
-DOPPLER_HWHM = math.sqrt(
-    2.0 * math.log(2.0) * BOLTZMANN * AVOGADRO * 1e3
-) / LIGHT_SPEED
+DOPPLER_HWHM = math.sqrt(2.0 * math.log(2.0) * BOLTZMANN * AVOGADRO * 1e3) / LIGHT_SPEED
 """alpha_D = DOPPLER_HWHM * nu * sqrt(T[K] / M[g mol-1]): 3.581163e-7 (half-width at half maximum)."""

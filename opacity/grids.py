@@ -14,7 +14,7 @@ from opacity.errors import InputError, problem
 FloatArray = NDArray[np.float64]
 
 SPACINGS = ("linear", "log")
-MAX_POINTS = 2_000_000_000
+MAX_POINTS = 200_000_000
 
 
 def uniform_wavenumbers(start: float, stop: float, step: float) -> FloatArray:
@@ -29,9 +29,8 @@ def uniform_wavenumbers(start: float, stop: float, step: float) -> FloatArray:
     if not (math.isfinite(step) and step > 0.0):
         raise InputError(problem("wavenumber.step", "impossible step", expected="a number above 0", found=step))
     steps = (stop - start) / step
+    _check_count(steps)
     whole = round(steps)
-    if whole + 1 > MAX_POINTS:
-        raise InputError(problem("wavenumber", "too many points", expected=f"at most {MAX_POINTS}", found=whole + 1))
     if abs(steps - whole) > 1e-6 * max(1.0, min(steps, 1e3)):
         nearest = start + whole * step
         raise InputError(
@@ -60,12 +59,18 @@ def log_wavenumbers(start: float, stop: float, resolving_power: float) -> FloatA
             problem("wavenumber.resolving_power", "impossible", expected="a number above 0", found=resolving_power)
         )
     intervals = math.log(stop / start) * resolving_power
+    _check_count(intervals)
     count = max(math.ceil(intervals * (1.0 - 1e-12)), 1 if stop > start else 0) + 1
-    if count > MAX_POINTS:
-        raise InputError(problem("wavenumber", "too many points", expected=f"at most {MAX_POINTS}", found=count))
     points = np.exp(np.linspace(math.log(start), math.log(stop), count))
     points[0], points[-1] = start, stop
     return np.asarray(points, dtype=np.float64)
+
+
+def _check_count(intervals: float) -> None:
+    if not intervals < MAX_POINTS:
+        raise InputError(
+            problem("wavenumber", "too many points", expected=f"at most {MAX_POINTS}", found=f"{intervals:.3g}")
+        )
 
 
 def spaced(start: float, stop: float, count: int, spacing: str) -> FloatArray:

@@ -34,7 +34,5 @@ def band_strength_to_cm_per_molecule(value: float, unit: str) -> float:
     """
     if unit not in BAND_STRENGTH_UNITS:
         allowed = ", ".join(f'"{name}"' for name in BAND_STRENGTH_UNITS)
-        raise InputError(
-            problem("unit", "unknown unit of band strength", expected=allowed, found=f'"{unit}"')
-        )
+        raise InputError(problem("unit", "unknown unit of band strength", expected=allowed, found=f'"{unit}"'))
     return value * BAND_STRENGTH_UNITS[unit]

@@ -75,7 +75,9 @@ def closure_of(
         step = float(wavenumber[1] - wavenumber[0])
         offset = sampling_offset(node, float(wavenumber[0]), step)
         if np.all(np.isfinite(offset[inside & (weighed > 0.0)])):
-            sampling = float(np.sum(np.where(inside, node.strength * np.nan_to_num(offset), 0.0))) / max(in_reach, 1e-300)
+            sampling = float(np.sum(np.where(inside, node.strength * np.nan_to_num(offset), 0.0))) / max(
+                in_reach, 1e-300
+            )
     return Closure(
         temperature=node.temperature,
         pressure=node.pressure,
@@ -94,7 +96,7 @@ def _at_distance(node: NodeLines, distance: FloatArray) -> FloatArray:
 
 
 def _ends_allowance(node: NodeLines, wavenumber: FloatArray, cutoff: float, risk: FloatArray) -> float:
-    """How far the trapezoid sum may be off at the steps of the cut-off and at lines across the grid's ends, cm/molecule.
+    """How far the trapezoid sum may be off at the cut-off's steps and at lines across the grid's ends, cm/molecule.
 
     Half a cell of the profile's value at each cut; lines of which the grid's end cuts the unresolved core count whole.
     """
@@ -119,7 +121,9 @@ def _ends_allowance(node: NodeLines, wavenumber: FloatArray, cutoff: float, risk
 
 def judge_closure(accounts: list[Closure], tolerance: float) -> CheckResult:
     """One row for all nodes: the worst of those that can be judged."""
-    judged = [one for one in accounts if one.sampling is not None and one.allowance <= JUDGED_BELOW and one.in_reach > 0]
+    judged = [
+        one for one in accounts if one.sampling is not None and one.allowance <= JUDGED_BELOW and one.in_reach > 0
+    ]
     coarse = [one for one in accounts if one.at_risk > JUDGED_BELOW]
     note = ""
     if coarse:

@@ -36,9 +36,7 @@ def exact_spectrum(node: NodeLines, wavenumber: FloatArray, cutoff: float, plint
     for line in np.flatnonzero(high > low):
         near = slice(low[line], high[line])
         within = np.abs(wavenumber[near] - node.wavenumber[line]) <= cutoff
-        profile = voigt_profile(
-            wavenumber[near][within] - node.centre[line], node.doppler[line], node.lorentz[line]
-        )
+        profile = voigt_profile(wavenumber[near][within] - node.centre[line], node.doppler[line], node.lorentz[line])
         if plinth:
             edge = voigt_profile(np.array([cutoff]), node.doppler[line], node.lorentz[line])
             profile = np.maximum(profile - edge, 0.0)

@@ -65,9 +65,7 @@ class PreparedLines:
     def strengths(self, temperature: float) -> FloatArray:
         """S(T) of all lines, cm/molecule, (n_lines,).  Raises MoleculeError where Q is not valid."""
         ratio = np.array([q(REFERENCE_TEMPERATURE) / q(temperature) for q in self.partition] or [1.0])
-        return self.strength * strength_ratio(
-            self.wavenumber, self.lower_energy, temperature, ratio[self.isotopologue]
-        )
+        return self.strength * strength_ratio(self.wavenumber, self.lower_energy, temperature, ratio[self.isotopologue])
 
     def at(self, temperature: float, pressure: float, strength: FloatArray | None = None) -> NodeLines:
         """The lines at one node (K, bar); `strength` spares computing S(T) again.
@@ -116,9 +114,7 @@ def prepare(
         isotopologue=_renumber(lines.isotopologue, used),
         isotopologues=tuple(one for one, keep in zip(lines.isotopologues, used, strict=True) if keep),
         partition=tuple(
-            partition_of(partition_function, one)
-            for one, keep in zip(lines.isotopologues, used, strict=True)
-            if keep
+            partition_of(partition_function, one) for one, keep in zip(lines.isotopologues, used, strict=True) if keep
         ),
         broadening=broadening,
         assumptions=notes + broadening.assumptions,

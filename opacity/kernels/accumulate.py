@@ -95,7 +95,7 @@ def voigt_value(x: float, y: float, tolerance: float, near_radius: float, far_ra
         add_narrow(out, at, 0, 1, 0.0, 1.0, y, 1.0, 0.0)
     else:
         add_core(out, at, 0, 1, 0.0, 1.0, y, 1.0, 0.0)
-    return out[0]
+    return float(out[0])
 
 
 @jit
@@ -179,4 +179,4 @@ def add_lines(
 def _plinth_value(edge: float, y: float, core: float, near: float) -> float:
     out = np.zeros(1)
     add_line(out, np.full(1, edge), 0, 1, 0.0, 1.0, y, 1.0, 0.0, core, near)
-    return out[0]
+    return float(out[0])

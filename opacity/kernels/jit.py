@@ -8,7 +8,7 @@ interpreter lock: the caller runs tiles side by side in threads, and results do 
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import Any, TypeVar
+from typing import Any, TypeVar, cast
 
 import numba
 
@@ -19,11 +19,11 @@ _FAST_MATH = {"contract", "reassoc", "arcp", "nsz"}
 
 def jit(function: Function) -> Function:
     """Compile a pure function of scalars and arrays at its first call; the machine code is kept on disk."""
-    compiled: Function = numba.njit(nogil=True, cache=True, error_model="numpy", fastmath=_FAST_MATH)(function)
-    return compiled
+    compiled: Any = numba.njit(nogil=True, cache=True, error_model="numpy", fastmath=_FAST_MATH)(function)
+    return cast(Function, compiled)
 
 
 def jit_exact(function: Function) -> Function:
     """As `jit`, with plain IEEE arithmetic: for index searches, whose comparisons must be those of numpy."""
-    compiled: Function = numba.njit(nogil=True, cache=True, error_model="numpy")(function)
-    return compiled
+    compiled: Any = numba.njit(nogil=True, cache=True, error_model="numpy")(function)
+    return cast(Function, compiled)

@@ -6,6 +6,7 @@ from collections.abc import Callable, Sequence
 from pathlib import Path
 
 import numpy as np
+from numpy.typing import NDArray
 
 from opacity.errors import InputError, LineListError, problem
 from opacity.grids import FloatArray
@@ -102,7 +103,7 @@ def merge(lists: Sequence[LineList]) -> LineList:
     )
 
 
-def _merge_broadener(name: str, lists: Sequence[LineList], order: np.ndarray) -> BroadenerColumns:  # type: ignore[type-arg]
+def _merge_broadener(name: str, lists: Sequence[LineList], order: NDArray[np.intp]) -> BroadenerColumns:
     def join(part: str) -> FloatArray:
         pieces = [
             getattr(one.broadeners[name], part) if name in one.broadeners else np.full(len(one), np.nan)

@@ -130,9 +130,7 @@ def _resolve_one(
     return gamma, exponent, notes
 
 
-def _missing(
-    name: str, missing: int, n_lines: int, gamma: FloatArray, columns: Mapping[str, BroadenerColumns]
-) -> str:
+def _missing(name: str, missing: int, n_lines: int, gamma: FloatArray, columns: Mapping[str, BroadenerColumns]) -> str:
     what = "half-width" if np.isnan(gamma).any() else "temperature exponent"
     return problem(
         f"broadening by {name}",

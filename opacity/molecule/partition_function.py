@@ -83,7 +83,7 @@ def tips(edition: str, isotopologue: Isotopologue) -> PartitionFunction:
             problem(
                 f"partition function {edition}",
                 f"no values for {isotopologue.formula} ({isotopologue.molecule_formula})",
-                remedy="choose another edition or source = \"file\"",
+                remedy='choose another edition or source = "file"',
             )
         )
     lowest, highest = _trusted_range(*table)

@@ -80,8 +80,12 @@ class Cutoff:
             if step.to_pressure is None or pressure <= step.to_pressure:
                 return step.cutoff
         raise InputError(
-            problem("profile.cutoff", "no cut-off for this pressure", expected="a last step without to_pressure",
-                    found=f"{pressure:g} bar")
+            problem(
+                "profile.cutoff",
+                "no cut-off for this pressure",
+                expected="a last step without to_pressure",
+                found=f"{pressure:g} bar",
+            )
         )
 
 

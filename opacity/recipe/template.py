@@ -50,7 +50,7 @@ def _molecule(formula: str, facts: MoleculeFacts | None) -> str:
 
 
 def _line_list(formula: str, facts: MoleculeFacts | None) -> str:
-    section = _LINE_LIST.format(formula=formula)
+    section = _LINE_LIST.format(files=f'["lines/{formula}*.par"]')
     if facts is None:
         section += '# isotopologue = "(12C)(16O)"         # decide: which isotopologue the list holds\n'
     return section
@@ -85,7 +85,7 @@ _HEAD = """\
 _LINE_LIST = """\
 [[line_list]]                          # repeat the section for further lists of other ranges or isotopologues
 format = "hitran"                      # "hitran": records of 160 characters; "hapi": a .data file with its .header
-files = ["lines/{formula}*.par"]       # decide: the files you have; patterns are allowed
+files = {files:<30} # decide: the files you have; patterns are allowed
 # range = [0.0, 9000.0]                # cm-1, to read only a part
 reference = ""                         # decide: the publication to cite for this list; goes into the table
 bad_records = "stop"                   # "leave-out" counts and skips records that cannot be read
@@ -125,8 +125,8 @@ mixture = { H2 = 0.85, He = 0.15 }
 
 _PROFILE = """\
 [profile]
-# Lines count up to this distance from their centre.  25 cm-1 is common practice; up to 200 bar, and 100 cm-1
-# above, is the recommendation of Gharib-Nezhad et al. 2024.
+# Lines count up to this distance from their centre.  25 cm-1 is common practice; Gharib-Nezhad et al.
+# 2024 recommend 25 cm-1 up to 200 bar and 100 cm-1 above.
 cutoff = [{ to_pressure = 200.0, cutoff = 25.0 }, { cutoff = 100.0 }]
 tolerance = 1e-3                       # largest relative error of the sum of lines, 1e-6 to 0.1
 plinth = false                         # true subtracts the profile's value at the cut-off, for use with a continuum
@@ -134,11 +134,11 @@ plinth = false                         # true subtracts the profile's value at t
 
 _GRID = """\
 [grid]
-# decide: range and step.  A step above the half-width of the narrowest lines loses some between the points;
+# decide: range and step.  With a step above the half-width of the narrowest lines some fall between the points;
 # `opacity plan` says at which nodes.  Instead of step, resolving_power = 100000.0 spaces points evenly in log.
 wavenumber = { start = 2000.0, stop = 2300.0, step = 0.01 }
-# decide: temperatures (K) and pressures (bar).  Interpolation in a table works best with four nodes or more on
-# each axis, evenly spaced in log.  A list made for 296 K misses hot lines: keep HITRAN-like lists below 700 K.
+# decide: temperatures (K) and pressures (bar).  Interpolation in a table needs four nodes or more on each axis
+# to be cubic; with fewer it is linear.  A list made for 296 K misses hot lines: above 700 K take another.
 temperature = { start = 150.0, stop = 700.0, count = 9, spacing = "log" }
 pressure = { start = 1e-6, stop = 100.0, count = 9, spacing = "log" }
 # For one atmospheric profile instead of a grid: nodes = [[300.0, 0.01], [450.0, 0.1]]

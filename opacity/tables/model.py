@@ -31,3 +31,7 @@ class CrossSectionTable:
     provenance: dict[str, Any]
     checks: dict[str, Any]
     profile: bool = False
+
+    def spectrum(self, *node: int) -> FloatArray:
+        """Cross-section (cm2/molecule) of one node by its indices, (n_nu,)."""
+        return np.asarray(self.cross_section[node], dtype=np.float64)

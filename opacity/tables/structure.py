@@ -65,13 +65,16 @@ def _check_is_file(path: Path) -> None:
 
 
 def _open_hdf5(path: Path) -> Any:
-    """Network file systems that have no locks say ENOLCK; a table is never changed, so none is needed."""
+    """Network file systems that have no locks say ENOLCK; a table is never changed, so none is needed.
+
+    Blocks are read whole, so a cache of them would only hide from `Table.verify` what is on the disk now.
+    """
     try:
-        return h5py.File(path, "r")
+        return h5py.File(path, "r", rdcc_nbytes=0)
     except OSError as error:
         if error.errno != errno.ENOLCK and f"errno = {errno.ENOLCK}," not in str(error):
             raise
-        return h5py.File(path, "r", locking=False)
+        return h5py.File(path, "r", rdcc_nbytes=0, locking=False)
 
 
 def _one_line(error: Exception) -> str:
@@ -130,9 +133,11 @@ def is_profile(path: Path, file: Any) -> bool:
 def dataset(path: Path, file: Any, name: str) -> Any:
     """The dataset `name` with the units it must have."""
     with reading(path, f"dataset {name}"):
-        found = file.get(name)
-        if not isinstance(found, h5py.Dataset):
+        if name not in file.keys():  # noqa: SIM118 - `in file` is False also for what is there and damaged
             raise damaged(path, f"dataset {name} is missing")
+        found = file[name]
+        if not isinstance(found, h5py.Dataset):
+            raise damaged(path, f"{name} is not a dataset")
     if name in layout.UNITS:
         units = attribute(path, found, "units", default="")
         if units != layout.UNITS[name]:

@@ -16,6 +16,9 @@ from opacity.tables.image import as_json, node_indices, table_image
 from opacity.tables.model import CrossSectionTable
 from opacity.tables.read import open_table
 
+_LONGEST_LABEL = 1000
+"""Characters in a title: attributes beyond 64 kB are stored in a way that older readers do not know."""
+
 
 def write_cross_section_table(path: Path, table: CrossSectionTable) -> Path:
     """Write `table` to `path` (HDF5) and return the path.
@@ -29,10 +32,9 @@ def write_cross_section_table(path: Path, table: CrossSectionTable) -> Path:
     dtype = check_table(path, table)
     try:
         image = table_image(table, dtype)
-    except MemoryError as error:
-        raise ResourceError(problem(path, "the table does not fit in memory; use fewer nodes or points")) from error
-    except (OSError, RuntimeError, ValueError) as error:
-        raise TableError(problem(path, f"the table cannot be stored ({_one_line(error)})")) from error
+    except (MemoryError, OSError, RuntimeError) as error:
+        message = f"the table cannot be put together in memory ({_one_line(error) or 'no more of it'})"
+        raise ResourceError(problem(path, message, remedy="use fewer nodes or points")) from error
     return write_atomically(path, image, _verify)
 
 
@@ -60,8 +62,9 @@ def _one_line(error: Exception) -> str:
 
 
 def _check_label(path: Path, name: str, text: str) -> None:
-    if not text.strip() or not text.isprintable():
-        raise TableError(problem(path, f"unusable {name}", expected="one line of text", found=repr(text)))
+    if not text.strip() or not text.isprintable() or len(text) > _LONGEST_LABEL:
+        expected = f"one line of 1 to {_LONGEST_LABEL} characters"
+        raise TableError(problem(path, f"unusable {name}", expected=expected, found=repr(text[:80])))
 
 
 def _check_axes(path: Path, table: CrossSectionTable) -> None:

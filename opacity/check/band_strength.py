@@ -1,0 +1,57 @@
+"""Published integrated band strengths against the integral of a table over the band."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from opacity.check.result import CANNOT_JUDGE, CheckResult, judge
+from opacity.check.spectra import Spectra, interpolated, nodes_of
+from opacity.grids import FloatArray
+from opacity.recipe.model import BandStrength
+from opacity.units import band_strength_to_cm_per_molecule
+
+STANDARD_DEVIATIONS = 2.0
+"""A band agrees within this many of the published standard deviations."""
+
+
+def integral_between(wavenumber: FloatArray, values: FloatArray, lower: float, upper: float) -> float:
+    """Trapezoid integral of values (n_nu,) between two wavenumbers that need not be grid points."""
+    inside = (wavenumber > lower) & (wavenumber < upper)
+    points = np.concatenate([[lower], wavenumber[inside], [upper]])
+    ends = np.interp([lower, upper], wavenumber, values)
+    return float(np.trapezoid(np.concatenate([[ends[0]], values[inside], [ends[1]]]), points))
+
+
+def check_band(band: BandStrength, spectra: Spectra, pressure: float | None) -> CheckResult:
+    """Judge one band at the published temperature and a pressure (bar) at which the table resolves it.
+
+    It cannot be judged where the band or the temperature is not inside the table, or no pressure is resolved.
+    """
+    name = f"band {band.name}"
+    nu = spectra.wavenumber
+    if band.range[0] < nu[0] or band.range[1] > nu[-1]:
+        detail = f"{band.range[0]:g}-{band.range[1]:g} cm-1 is not all inside the table ({nu[0]:g}-{nu[-1]:g})"
+        return CheckResult(name, CANNOT_JUDGE, detail)
+    if pressure is None:
+        return CheckResult(name, CANNOT_JUDGE, "the step is too coarse for the lines at every pressure")
+    spectrum = _spectrum_at(spectra, band.temperature, pressure)
+    if spectrum is None:
+        return CheckResult(name, CANNOT_JUDGE, f"the table has no spectrum at {band.temperature:g} K")
+    published = band_strength_to_cm_per_molecule(band.strength, band.unit)
+    found = integral_between(nu, spectrum, *band.range)
+    value = found / published - 1.0
+    detail = (
+        f"{found:.4e} against {published:.4e} cm/molecule ({abs(value) / band.uncertainty:.1f} standard deviations);"
+        f" {band.temperature:g} K, {pressure:.3g} bar; {band.source}"
+    )
+    return judge(name, value, STANDARD_DEVIATIONS * band.uncertainty, detail)
+
+
+def _spectrum_at(spectra: Spectra, temperature: float, pressure: float) -> FloatArray | None:
+    for index, t, p in nodes_of(spectra):
+        if abs(t - temperature) <= 1e-9 * t and abs(p - pressure) <= 1e-9 * p:
+            return spectra.spectrum(*index)
+    axis = spectra.temperature
+    if spectra.profile or not axis[0] <= temperature <= axis[-1]:
+        return None
+    return interpolated(spectra, temperature, pressure)

@@ -1,0 +1,61 @@
+"""What `show` says of a table."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from opacity.tables.read import Table
+
+
+def summary(table: Table) -> dict[str, Any]:
+    """A table's axes, sources and checks as plain values for JSON."""
+    return {
+        "table": str(table.path),
+        "title": table.title,
+        "formula": table.formula,
+        "format_version": table.format_version,
+        "profile": table.profile,
+        "temperature": table.temperature.tolist(),
+        "pressure": table.pressure.tolist(),
+        "wavenumber": {
+            "first": float(table.wavenumber[0]),
+            "last": float(table.wavenumber[-1]),
+            "points": int(table.wavenumber.size),
+        },
+        "stored_as": str(table.dtype),
+        "provenance": table.provenance,
+        "checks": {key: value for key, value in table.checks.items() if key != "closure"},
+    }
+
+
+def summary_lines(table: Table) -> list[tuple[str, str]]:
+    """The same for people, as pairs of a word and its value."""
+    nu, provenance = table.wavenumber, table.provenance
+    wavelength = "" if nu[0] <= 0.0 else f" ({1e4 / nu[-1]:.4g} to {1e4 / nu[0]:.4g} um)"
+    kind = f"{table.temperature.size} nodes along a profile" if table.profile else "grid"
+    program = provenance.get("program", {})
+    lines = [
+        ("table", str(table.path)),
+        ("what", f"{table.title}, cm2 per molecule, {kind}"),
+        ("temperature", _axis(table.temperature.tolist(), "K")),
+        ("pressure", _axis(table.pressure.tolist(), "bar")),
+        ("wavenumber", f"{nu[0]:.8g} to {nu[-1]:.8g} cm-1{wavelength}, {nu.size} points"),
+        ("line list", "; ".join(f"{one['file']} ({one['reference']})" for one in provenance.get("line_lists", []))),
+        ("partition", str(provenance.get("partition_function", {}).get("source", ""))),
+        ("broadening", _mixture(provenance.get("broadening", {}).get("mixture", {}))),
+        ("built by", f"{program.get('name', '')} {program.get('version', '')}"),
+    ]
+    lines += [(row["check"], f"{row['verdict']}: {row['detail']}") for row in table.checks.get("results", [])]
+    lines += [("assumed", f"for {one['lines']} lines: {one['what']}") for one in table.checks.get("assumptions", [])]
+    lines += [("cite", one) for one in provenance.get("references", [])]
+    return lines
+
+
+def _axis(values: list[float], unit: str) -> str:
+    if len(values) <= 8:
+        return ", ".join(f"{value:.4g}" for value in values) + f" {unit}"
+    return f"{len(values)} values from {min(values):.4g} to {max(values):.4g} {unit}"
+
+
+def _mixture(mixture: dict[str, float]) -> str:
+    return ", ".join(f"{name} {fraction:g}" for name, fraction in mixture.items())

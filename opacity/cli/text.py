@@ -1,0 +1,72 @@
+"""How results look on a terminal."""
+
+from __future__ import annotations
+
+import json
+import textwrap
+from collections.abc import Iterable, Mapping, Sequence
+from typing import Any
+
+from opacity.check.result import CheckResult
+
+WIDTH = 100
+
+
+def as_json(value: Mapping[str, Any]) -> str:
+    """JSON for programs; infinities and NaN, which JSON does not know, as null."""
+    return json.dumps(_finite(value), indent=2)
+
+
+def _finite(value: Any) -> Any:
+    if isinstance(value, Mapping):
+        return {key: _finite(one) for key, one in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [_finite(one) for one in value]
+    if isinstance(value, float) and not abs(value) < float("inf"):
+        return None
+    return value
+
+
+def results_table(results: Iterable[CheckResult]) -> str:
+    """Rows of results: check, verdict, difference and limit, then the detail below, indented."""
+    rows = list(results)
+    name_width = max([len("check"), *(len(row.check) for row in rows)])
+    lines = [f"{'check':{name_width}}  {'verdict':12}  {'difference':>10}  {'limit':>8}"]
+    for row in rows:
+        value = "" if row.value is None else f"{row.value:+.2e}"
+        limit = "" if row.limit is None else f"{row.limit:.1e}"
+        lines.append(f"{row.check:{name_width}}  {row.verdict:12}  {value:>10}  {limit:>8}".rstrip())
+        lines += textwrap.wrap(row.detail, WIDTH, initial_indent="    ", subsequent_indent="    ")
+    return "\n".join(lines)
+
+
+def facts(pairs: Sequence[tuple[str, str]]) -> str:
+    """Two columns: what, and its value; long values are folded."""
+    width = max(len(name) for name, _ in pairs)
+    indent = " " * (width + 2)
+    lines = []
+    for name, value in pairs:
+        folded = textwrap.wrap(value, WIDTH - width, subsequent_indent="") or [""]
+        lines.append(f"{name:{width}}  {folded[0]}")
+        lines += [indent + part for part in folded[1:]]
+    return "\n".join(lines)
+
+
+def size(n_bytes: float | None) -> str:
+    """A number of bytes for people."""
+    if n_bytes is None:
+        return "unknown"
+    for unit in ("B", "kB", "MB"):
+        if n_bytes < 1000.0:
+            return f"{n_bytes:.3g} {unit}"
+        n_bytes /= 1000.0
+    return f"{n_bytes:.3g} GB"
+
+
+def duration(seconds: float) -> str:
+    """A time for people."""
+    if seconds < 100.0:
+        return f"{seconds:.2g} s"
+    if seconds < 6000.0:
+        return f"{seconds / 60.0:.0f} min"
+    return f"{seconds / 3600.0:.1f} h"

@@ -1,0 +1,165 @@
+"""A build: from a recipe to a table whose checks are inside it."""
+
+from __future__ import annotations
+
+import json
+import platform
+import time
+from concurrent.futures import Executor, ThreadPoolExecutor
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from opacity.check.run import CheckReport, run_checks
+from opacity.cross_section.compute import spectrum
+from opacity.cross_section.prepare import PreparedLines
+from opacity.cross_section.tolerance import Regions, regions
+from opacity.errors import ResourceError, TableError, problem
+from opacity.grids import FloatArray
+from opacity.pipeline.inputs import Inputs, load_inputs
+from opacity.pipeline.plan import Plan, make_plan, table_name
+from opacity.pipeline.progress import Progress
+from opacity.pipeline.resources import allowed_cpus
+from opacity.recipe.model import Recipe
+from opacity.tables.atomic import write_atomically
+from opacity.tables.model import CrossSectionTable
+from opacity.tables.read import open_table
+from opacity.tables.write import check_table, write_cross_section_table
+
+
+@dataclass(frozen=True)
+class BuildResult:
+    """What a build made: the table, the log beside it, the plan and the checks; `reused` if it was there already."""
+
+    table: Path
+    log: Path
+    plan: Plan
+    figures: dict[str, Any]
+    seconds: float
+    reused: bool = False
+
+
+def build_table(recipe: Recipe, folder: Path, *, workers: int | None = None, quiet: bool = False) -> BuildResult:
+    """Build a recipe's cross-section table into a folder, which is made if it is missing.
+
+    A table that is there already and was built from the very same inputs is verified and kept.
+    Raises OpacityError of the kind that fits; nothing half-written ever has the table's name.
+    """
+    started = time.monotonic()
+    inputs = load_inputs(recipe)
+    plan = make_plan(recipe, inputs, folder)
+    path, log = folder / table_name(recipe), folder / f"{recipe.name}.log.json"
+    kept = _still_good(path, inputs)
+    if kept is not None:
+        return BuildResult(path, log, plan, kept, time.monotonic() - started, reused=True)
+    _make_folder(folder)
+    count = allowed_cpus() if workers is None else workers
+    sigma = compute_spectra(recipe, inputs.lines, count, quiet)
+    table, report = _checked_table(recipe, inputs, sigma, path, quiet)
+    write_cross_section_table(path, table)
+    seconds = time.monotonic() - started
+    _write_log(log, recipe, seconds, count)
+    return BuildResult(path, log, plan, report.figures, seconds)
+
+
+def _still_good(path: Path, inputs: Inputs) -> dict[str, Any] | None:
+    """The checks of a table that is there, whole, and made from these inputs; otherwise None."""
+    if not path.exists():
+        return None
+    try:
+        with open_table(path) as table:
+            if table.provenance.get("inputs_sha256") != inputs.sha256:
+                return None
+            table.verify()
+            return table.checks
+    except TableError:  # damaged: it is built again
+        return None
+
+
+def _make_folder(folder: Path) -> None:
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise ResourceError(problem(folder, f"the folder for the tables cannot be made ({error.strerror})")) from error
+
+
+def compute_spectra(recipe: Recipe, lines: PreparedLines, workers: int, quiet: bool) -> FloatArray:
+    """All spectra of a recipe, (n_T, n_P, n_nu) or (n_node, n_nu)."""
+    grid, profile = recipe.grid, recipe.profile
+    nodes = grid.node_list()
+    limits = regions(profile.tolerance, profile.plinth)
+    try:
+        sigma = np.empty((len(nodes), grid.wavenumber.size))
+    except MemoryError as error:
+        raise ResourceError(problem(recipe.path, "the spectra do not fit in memory", remedy="use fewer")) from error
+    executor = ThreadPoolExecutor(workers) if workers > 1 else None
+    try:
+        with Progress("spectra", len(nodes), "nodes", quiet) as progress:
+            _fill(sigma, recipe, lines, limits, executor, progress)
+    finally:
+        if executor is not None:
+            executor.shutdown(wait=True, cancel_futures=True)
+    if grid.nodes is not None:
+        return sigma
+    return sigma.reshape(len(grid.temperature), len(grid.pressure), -1)
+
+
+def _fill(
+    sigma: FloatArray,
+    recipe: Recipe,
+    lines: PreparedLines,
+    limits: Regions,
+    executor: Executor | None,
+    progress: Progress,
+) -> None:
+    strengths: dict[float, FloatArray] = {}
+    for row, (temperature, pressure) in enumerate(recipe.grid.node_list()):
+        if temperature not in strengths:
+            strengths = {temperature: lines.strengths(temperature)}
+        node = lines.at(temperature, pressure, strengths[temperature])
+        cutoff = recipe.profile.cutoff.at(pressure)
+        sigma[row] = spectrum(node, recipe.grid.wavenumber, cutoff, limits, recipe.profile.plinth, executor)
+        progress.step()
+
+
+def _checked_table(
+    recipe: Recipe, inputs: Inputs, sigma: FloatArray, path: Path, quiet: bool
+) -> tuple[CrossSectionTable, CheckReport]:
+    """The table with its checks, made of the values as they will be stored."""
+    grid = recipe.grid
+    nodes = grid.nodes
+    axes = (grid.temperature, grid.pressure) if nodes is None else ([t for t, _ in nodes], [p for _, p in nodes])
+    table = CrossSectionTable(
+        title=f"Absorption cross-section of {recipe.molecule.name} ({recipe.molecule.formula})",
+        formula=recipe.molecule.formula,
+        temperature=np.array(axes[0], dtype=np.float64),
+        pressure=np.array(axes[1], dtype=np.float64),
+        wavenumber=grid.wavenumber,
+        cross_section=sigma,
+        recipe=recipe.text,
+        provenance=inputs.provenance,
+        checks={},
+        profile=nodes is not None,
+    )
+    if check_table(path, table) == np.dtype("<f4"):
+        for node in np.ndindex(sigma.shape[:-1]):
+            sigma[node] = sigma[node].astype(np.float32)
+    with Progress("checks", len(grid.node_list()), "nodes", quiet) as progress:
+        report = run_checks(table, recipe, inputs.lines, inputs.seed, progress.step)
+    return replace(table, checks=report.figures), report
+
+
+def _write_log(log: Path, recipe: Recipe, seconds: float, workers: int) -> None:
+    """What depends on time and place, beside the table and not in it."""
+    entry = {
+        "recipe": str(recipe.path.absolute()),
+        "finished": time.strftime("%Y-%m-%dT%H:%M:%SZ", time.gmtime()),
+        "seconds": round(seconds, 3),
+        "workers": workers,
+        "host": platform.node(),
+        "processor": platform.processor() or platform.machine(),
+        "python": platform.python_version(),
+    }
+    write_atomically(log, (json.dumps(entry, indent=2) + "\n").encode("utf-8"))

@@ -1,0 +1,183 @@
+"""The plan: what a build will do and need, and what a user should know before it starts."""
+
+from __future__ import annotations
+
+from dataclasses import asdict, dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from opacity.check.profile_share import sampling_risk
+from opacity.cross_section.prepare import PreparedLines
+from opacity.errors import MoleculeError, ResourceError, problem
+from opacity.molecule.partition_function import editions_differ
+from opacity.pipeline.inputs import Inputs, invalid_temperatures
+from opacity.pipeline.resources import available_memory, free_disk
+from opacity.recipe.model import Recipe
+
+EVALUATIONS_PER_SECOND = 5e8
+"""Profile values that one core of an ordinary machine adds in a second: for the estimate of time only."""
+AT_RISK = 0.01
+HOT_FOR_296K_LIST = 700.0
+EDITIONS_AGREE = 0.01
+
+
+@dataclass(frozen=True)
+class NodeResolution:
+    """How well the step resolves the lines of one node; `at_risk` is the share of the strength in lines it does not."""
+
+    temperature: float
+    pressure: float
+    at_risk: float
+    narrowest_half_width: float
+
+
+@dataclass(frozen=True)
+class Plan:
+    """What a build of a recipe amounts to.  Memory and disk in bytes, time in seconds on one core."""
+
+    recipe: str
+    table: str
+    nodes: int
+    points: int
+    lines: int
+    profile_values: float
+    seconds: float
+    memory: int
+    memory_available: int | None
+    disk: int
+    disk_free: int | None
+    coarse_nodes: tuple[NodeResolution, ...]
+    warnings: tuple[str, ...]
+    assumptions: tuple[tuple[str, int], ...]
+    ledger: dict[str, Any]
+
+    def as_dict(self) -> dict[str, Any]:
+        """The plan as plain values for JSON."""
+        return asdict(self)
+
+
+def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
+    """Plan a build into a folder.
+
+    Raises MoleculeError where a partition function does not hold, ResourceError where the build cannot fit.
+    """
+    lines, grid = inputs.lines, recipe.grid
+    node_list = grid.node_list()
+    temperatures = sorted({t for t, _ in node_list})
+    problems = invalid_temperatures(lines, temperatures)
+    if problems:
+        raise MoleculeError("\n".join(problems))
+    points, nodes = grid.wavenumber.size, len(node_list)
+    coarse = _coarse_nodes(recipe, lines)
+    values = _profile_values(recipe, lines)
+    # All spectra as f8, their f4 copy, the compressed image and as much again while it is written.
+    memory = nodes * points * (8 + 4 + 4 + 4) + len(lines) * 250 + 400_000_000
+    plan = Plan(
+        recipe=str(recipe.path),
+        table=str(folder / table_name(recipe)),
+        nodes=nodes,
+        points=points,
+        lines=len(lines),
+        profile_values=values,
+        seconds=values / EVALUATIONS_PER_SECOND,
+        memory=memory,
+        memory_available=available_memory(),
+        disk=nodes * points * 4 + 1_000_000,
+        disk_free=free_disk(folder),
+        coarse_nodes=tuple(coarse),
+        warnings=tuple(_warnings(recipe, lines, coarse, temperatures)),
+        assumptions=tuple((one.what, one.lines) for one in lines.assumptions),
+        ledger=lines.ledger.as_dict(),
+    )
+    _refuse_what_cannot_fit(plan)
+    return plan
+
+
+def table_name(recipe: Recipe) -> str:
+    """File name of a recipe's cross-section table."""
+    return f"{recipe.name}.cross-section.h5"
+
+
+def _refuse_what_cannot_fit(plan: Plan) -> None:
+    for what, needed, free in (
+        ("memory", plan.memory, plan.memory_available),
+        ("disk", plan.disk, plan.disk_free),
+    ):
+        if free is not None and needed > free:
+            raise ResourceError(
+                problem(
+                    plan.recipe,
+                    f"the build does not fit in {what}",
+                    expected=f"at most {free / 1e9:.2f} GB",
+                    found=f"{needed / 1e9:.2f} GB for {plan.nodes} nodes of {plan.points} points",
+                    remedy="use fewer nodes, fewer points or a larger machine",
+                )
+            )
+
+
+def _profile_values(recipe: Recipe, lines: PreparedLines) -> float:
+    nu = recipe.grid.wavenumber
+    total = 0.0
+    counts: dict[float, float] = {}
+    for _, pressure in recipe.grid.node_list():
+        cutoff = recipe.profile.cutoff.at(pressure)
+        if cutoff not in counts:
+            low = np.searchsorted(nu, lines.wavenumber - cutoff)
+            high = np.searchsorted(nu, lines.wavenumber + cutoff)
+            counts[cutoff] = float(np.sum(high - low))
+        total += counts[cutoff]
+    return total
+
+
+def _coarse_nodes(recipe: Recipe, lines: PreparedLines) -> list[NodeResolution]:
+    """Nodes at which more than 1 % of the strength is in lines that the step does not resolve, worst first."""
+    coarse = []
+    nu = recipe.grid.wavenumber
+    strengths: dict[float, Any] = {}
+    for temperature, pressure in recipe.grid.node_list():
+        if temperature not in strengths:
+            strengths[temperature] = lines.strengths(temperature)
+        node = lines.at(temperature, pressure, strengths[temperature])
+        inside = (node.centre >= nu[0]) & (node.centre <= nu[-1])
+        total = float(np.sum(node.strength[inside]))
+        if total <= 0.0:
+            continue
+        at_risk = float(np.sum((node.strength * sampling_risk(node, nu))[inside])) / total
+        if at_risk > AT_RISK:
+            width = 0.5346 * node.lorentz + np.sqrt(0.2166 * node.lorentz**2 + node.doppler**2)
+            coarse.append(NodeResolution(temperature, pressure, at_risk, float(width[inside].min())))
+    return sorted(coarse, key=lambda one: -one.at_risk)
+
+
+def _warnings(
+    recipe: Recipe, lines: PreparedLines, coarse: list[NodeResolution], temperatures: list[float]
+) -> list[str]:
+    warnings = []
+    if not len(lines):
+        warnings.append("no line reaches the grid: every value will be 0")
+    if coarse:
+        worst = coarse[0]
+        share = f"{worst.at_risk:.0%} of the strength is in lines that it does not resolve"
+        warnings.append(
+            f"the step is too coarse at {len(coarse)} of {len(recipe.grid.node_list())} nodes: at"
+            f" {worst.temperature:g} K, {worst.pressure:.3g} bar {share} (narrowest half-width"
+            f" {worst.narrowest_half_width:.2g} cm-1); each value is right at its point, sums over points are not"
+        )
+    if temperatures and temperatures[-1] > HOT_FOR_296K_LIST:
+        warnings.append(
+            f"a HITRAN-format list made for 296 K lacks hot lines, and the grid goes to {temperatures[-1]:g} K:"
+            " use a high-temperature list above about 700 K"
+        )
+    for one in lines.isotopologues:
+        if recipe.partition_function.source == "file" or not one.known:
+            continue
+        worst_t = max(temperatures, key=lambda t, iso=one: abs(editions_differ(iso, t)))  # type: ignore[misc]
+        difference = editions_differ(one, worst_t)
+        if abs(difference) > EDITIONS_AGREE:
+            warnings.append(
+                f"partition function of {one.formula}: TIPS-2021 and TIPS-2025 differ by {difference:+.1%}"
+                f" at {worst_t:g} K"
+            )
+    return warnings

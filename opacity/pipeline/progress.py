@@ -1,0 +1,50 @@
+"""Progress of long work on stderr: a bar on a terminal, otherwise a line now and then."""
+
+from __future__ import annotations
+
+import sys
+import time
+from types import TracebackType
+from typing import Any
+
+from tqdm import tqdm
+
+SECONDS_BETWEEN_LINES = 30.0
+
+
+class Progress:
+    """Counts steps of one stage; use it in a `with` statement.  With `quiet` nothing is printed."""
+
+    def __init__(self, stage: str, total: int, unit: str, quiet: bool = False) -> None:
+        self.stage, self.total, self.unit = stage, total, unit
+        self.done = 0
+        self._started = self._printed = time.monotonic()
+        self._quiet = quiet
+        self._bar: Any = None
+        if not quiet and sys.stderr.isatty():
+            self._bar = tqdm(total=total, desc=stage, unit=f" {unit}", leave=False, file=sys.stderr)
+
+    def __enter__(self) -> Progress:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        if self._bar is not None:
+            self._bar.close()
+
+    def step(self) -> None:
+        """One step is done."""
+        self.done += 1
+        if self._bar is not None:
+            self._bar.update()
+        elif not self._quiet:
+            self._print_line()
+
+    def _print_line(self) -> None:
+        now = time.monotonic()
+        if now - self._printed < SECONDS_BETWEEN_LINES or self.done == self.total:
+            return
+        self._printed = now
+        left = (now - self._started) / self.done * (self.total - self.done)
+        print(f"{self.stage}: {self.done} of {self.total} {self.unit}, {left:.0f} s left", file=sys.stderr, flush=True)
