@@ -10,9 +10,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.cross_section.exact import exact_spectrum
-from opacity.cross_section.prepare import NodeLines, PreparedLines, prepare
-from opacity.cross_section.tolerance import regions
+from opacity.cross_sections.exact import exact_spectrum
+from opacity.cross_sections.prepare import NodeLines, PreparedLines, prepare
+from opacity.cross_sections.tolerance import regions
 from opacity.errors import InputError, problem
 from opacity.grids import FloatArray, as_axis, as_wavenumbers
 from opacity.line_list.model import LineList
@@ -55,7 +55,7 @@ def cross_section(
     are not to be had.
     """
     # Late, so that importing the package does not load numba.
-    from opacity.cross_section.compute import spectrum
+    from opacity.cross_sections.compute import spectrum
 
     limits = regions(tolerance, plinth)
     nu = as_wavenumbers(wavenumber)

@@ -16,8 +16,8 @@ from numpy.typing import NDArray
 
 from opacity.check.result import CheckResult, judge
 from opacity.check.spectra import Spectra, interpolated, nodes_of
-from opacity.cross_section.exact import exact_spectrum
-from opacity.cross_section.prepare import PreparedLines
+from opacity.cross_sections.exact import exact_spectrum
+from opacity.cross_sections.prepare import PreparedLines
 from opacity.grids import FloatArray
 from opacity.recipe.model import Profile
 

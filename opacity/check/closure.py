@@ -14,8 +14,8 @@ import numpy as np
 
 from opacity.check.profile_share import sampling_offset, sampling_risk, share_between, spacing_at
 from opacity.check.result import AGREES, CANNOT_JUDGE, DIFFERS, CheckResult
-from opacity.cross_section.exact import voigt_profile
-from opacity.cross_section.prepare import NodeLines
+from opacity.cross_sections.exact import voigt_profile
+from opacity.cross_sections.prepare import NodeLines
 from opacity.grids import FloatArray, cell_widths
 
 JUDGED_BELOW = 0.01

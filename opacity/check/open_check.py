@@ -6,7 +6,7 @@ from collections.abc import Callable
 
 from opacity.check.result import AGREES, CheckResult
 from opacity.check.run import CheckReport, run_checks
-from opacity.cross_section.prepare import PreparedLines
+from opacity.cross_sections.prepare import PreparedLines
 from opacity.errors import TableError, problem
 from opacity.recipe.model import Recipe
 from opacity.tables.read import Table

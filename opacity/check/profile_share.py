@@ -7,8 +7,8 @@ import math
 import numpy as np
 from scipy.special import wofz
 
-from opacity.cross_section.exact import SQRT_LN2
-from opacity.cross_section.prepare import NodeLines
+from opacity.cross_sections.exact import SQRT_LN2
+from opacity.cross_sections.prepare import NodeLines
 from opacity.grids import FloatArray
 
 _FAR = 6.0

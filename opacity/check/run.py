@@ -11,7 +11,7 @@ from opacity.check.band_strength import check_band
 from opacity.check.closure import JUDGED_BELOW, Closure, closure_of, judge_closure
 from opacity.check.result import CheckResult
 from opacity.check.spectra import Spectra, is_uniform, nodes_of
-from opacity.cross_section.prepare import PreparedLines
+from opacity.cross_sections.prepare import PreparedLines
 from opacity.recipe.model import Recipe
 
 

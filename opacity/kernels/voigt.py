@@ -1,6 +1,6 @@
 """The Voigt function K(x, y) = Re w(x + iy), w the Faddeeva function, added along stretches of a grid.
 
-Four formulas, each where it is accurate; `cross_section.tolerance` says where that is.
+Four formulas, each where it is accurate; `cross_sections.tolerance` says where that is.
 All of them add   max(amplitude K((nu - centre) scale, y) - plinth, 0)   to `out` for the points first <= i < last.
 
 far    Gauss-Hermite quadrature of the Voigt integral with 2 points: relative error 2.7 / |z|^4

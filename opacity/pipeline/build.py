@@ -13,9 +13,9 @@ from typing import Any
 import numpy as np
 
 from opacity.check.run import CheckReport, run_checks
-from opacity.cross_section.compute import spectrum
-from opacity.cross_section.prepare import PreparedLines
-from opacity.cross_section.tolerance import Regions, regions
+from opacity.cross_sections.compute import spectrum
+from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.tolerance import Regions, regions
 from opacity.errors import ResourceError, TableError, problem
 from opacity.grids import FloatArray
 from opacity.pipeline.inputs import Inputs, load_inputs

@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from opacity.cross_section.prepare import PreparedLines, prepare
+from opacity.cross_sections.prepare import PreparedLines, prepare
 from opacity.errors import LineListError, RecipeError, problem
 from opacity.line_list.model import LineList
 from opacity.line_list.read import merge, read_lines

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 
 from opacity.check.profile_share import sampling_risk
-from opacity.cross_section.prepare import PreparedLines
+from opacity.cross_sections.prepare import PreparedLines
 from opacity.errors import MoleculeError, ResourceError, problem
 from opacity.molecule.partition_function import editions_differ
 from opacity.pipeline.inputs import Inputs, invalid_temperatures

@@ -50,7 +50,7 @@ def draw_table(table: Table, path: Path, *, zoom: tuple[float, float] | None = N
         canvas = canvas_class(figure)
         _fill_figure(figure, table, groups, part)
         stream = io.BytesIO()
-        # Without the name of the software the same table gives the same file with any matplotlib of one look.
+        # The name and version of the software would make files differ that look the same.
         canvas.print_png(stream, metadata={"Software": None})
     return write_atomically(path, stream.getvalue())
 

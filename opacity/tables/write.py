@@ -35,7 +35,7 @@ def write_cross_section_table(path: Path, table: CrossSectionTable) -> Path:
     except (MemoryError, OSError, RuntimeError) as error:
         message = f"the table cannot be put together in memory ({_one_line(error) or 'no more of it'})"
         raise ResourceError(problem(path, message, remedy="use fewer nodes or points")) from error
-    return write_atomically(path, image, _verify)
+    return write_atomically(path, image, lambda written: _verify(path, written))
 
 
 def check_table(path: Path, table: CrossSectionTable) -> np.dtype[Any]:
@@ -49,12 +49,12 @@ def check_table(path: Path, table: CrossSectionTable) -> np.dtype[Any]:
     return np.dtype("<f4" if fits else "<f8")
 
 
-def _verify(written: Path) -> None:
+def _verify(path: Path, written: Path) -> None:
     try:
         with open_table(written) as table:
             table.verify()
     except OpacityError as error:
-        raise ResourceError(f"what was written does not read back: {error}") from error
+        raise ResourceError(problem(path, f"what was written does not read back ({error})")) from error
 
 
 def _one_line(error: Exception) -> str:

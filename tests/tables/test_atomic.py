@@ -115,7 +115,7 @@ def test_a_table_that_does_not_read_back(make_table, tmp_path, monkeypatch):
         return bytes(image)
 
     monkeypatch.setattr(write, "table_image", spoilt)
-    with pytest.raises(ResourceError, match=r"does not read back: .*block cross_section\["):
+    with pytest.raises(ResourceError, match=r"a\.h5: what was written does not read back \(.*block cross_section\["):
         write.write_cross_section_table(tmp_path / "a.h5", make_table())
     assert list(tmp_path.iterdir()) == []
 

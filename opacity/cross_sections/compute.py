@@ -12,8 +12,8 @@ from concurrent.futures import Executor
 
 import numpy as np
 
-from opacity.cross_section.prepare import NodeLines
-from opacity.cross_section.tolerance import Regions
+from opacity.cross_sections.prepare import NodeLines
+from opacity.cross_sections.tolerance import Regions
 from opacity.errors import InputError, problem
 from opacity.grids import FloatArray
 from opacity.kernels.accumulate import add_lines

@@ -7,7 +7,7 @@ import math
 import numpy as np
 from scipy.special import wofz
 
-from opacity.cross_section.prepare import NodeLines
+from opacity.cross_sections.prepare import NodeLines
 from opacity.grids import FloatArray
 
 SQRT_LN2 = math.sqrt(math.log(2.0))
