@@ -69,11 +69,11 @@ def choose_points(
 
 
 def relative_errors(values: FloatArray, truth: FloatArray) -> FloatArray:
-    """|value - truth| / truth, (n,); where truth is 0 the error is 0 for 0 and infinite for anything else."""
+    """|value - truth| / truth, (n,); where truth is 0 the error is 0 for 0 and infinite for all above `NEGLIGIBLE`."""
     errors = np.abs(values - truth)
     safe = np.where(truth > 0.0, truth, 1.0)
     errors = np.where(truth > 0.0, errors / safe, np.where(values == 0.0, 0.0, np.inf))
-    negligible = (truth < NEGLIGIBLE) & (values < 2.0 * NEGLIGIBLE) & (values >= 0.0) & (truth > 0.0)
+    negligible = (truth < NEGLIGIBLE) & (values < 2.0 * NEGLIGIBLE) & (values >= 0.0)
     return np.where(negligible, 0.0, errors)
 
 

@@ -11,6 +11,7 @@ from dataclasses import asdict, dataclass
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from opacity.check.profile_share import sampling_offset, sampling_risk, share_between, spacing_at
 from opacity.check.result import AGREES, CANNOT_JUDGE, DIFFERS, CheckResult
@@ -28,7 +29,8 @@ class Closure:
 
     `strength` of all lines prepared; `in_reach` what of it lies inside cut-off and grid; `integral` of the
     points; `sampling` the relative difference that sampling is predicted to make (None where it can't be);
-    `at_risk` the share of the strength in lines that the step does not resolve; `allowance` for the ends.
+    `at_risk` the share of the strength in lines that the step does not resolve; `allowance` (relative) for the
+    ends, and for sampling that is too small to matter but was not predicted.
     """
 
     temperature: float
@@ -68,26 +70,28 @@ def closure_of(
     risk = sampling_risk(node, wavenumber)
     inside = (node.centre > wavenumber[0]) & (node.centre < wavenumber[-1])
     at_risk = float(np.sum(weighed * risk * inside)) / max(float(np.sum(weighed * inside)), 1e-300)
-    sampling: float | None = None
-    if at_risk <= 0.1 * JUDGED_BELOW:
-        sampling = 0.0
-    elif uniform:
-        step = float(wavenumber[1] - wavenumber[0])
-        offset = sampling_offset(node, float(wavenumber[0]), step)
-        if np.all(np.isfinite(offset[inside & (weighed > 0.0)])):
-            sampling = float(np.sum(np.where(inside, node.strength * np.nan_to_num(offset), 0.0))) / max(
-                in_reach, 1e-300
-            )
+    sampling = _predicted_sampling(node, wavenumber, inside) if uniform else None
+    allowance = _ends_allowance(node, wavenumber, cutoff, risk)
+    if sampling is None and at_risk <= 0.1 * JUDGED_BELOW:
+        sampling, allowance = 0.0, allowance + float(np.sum(weighed * risk * inside))
     return Closure(
         temperature=node.temperature,
         pressure=node.pressure,
         strength=float(np.sum(node.strength)),
         in_reach=in_reach,
         integral=float(np.sum(cell_widths(wavenumber) * sigma)),
-        sampling=sampling,
+        sampling=None if sampling is None else sampling / max(in_reach, 1e-300),
         at_risk=at_risk,
-        allowance=_ends_allowance(node, wavenumber, cutoff, risk) / max(in_reach, 1e-300),
+        allowance=allowance / max(in_reach, 1e-300),
     )
+
+
+def _predicted_sampling(node: NodeLines, wavenumber: FloatArray, inside: NDArray[np.bool_]) -> float | None:
+    """What sampling on an even grid adds to the sum, cm/molecule; None where it can't be predicted for some line."""
+    offset = sampling_offset(node, float(wavenumber[0]), float(wavenumber[1] - wavenumber[0]))[inside]
+    if not np.all(np.isfinite(offset[node.strength[inside] > 0.0])):
+        return None
+    return float(np.sum(node.strength[inside] * np.nan_to_num(offset)))
 
 
 def _at_distance(node: NodeLines, distance: FloatArray) -> FloatArray:

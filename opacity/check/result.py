@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import asdict, dataclass
 from typing import Any
 
@@ -23,6 +24,17 @@ class CheckResult:
     def as_dict(self) -> dict[str, Any]:
         """The row as plain values for JSON."""
         return asdict(self)
+
+
+def finite(value: Any) -> Any:
+    """Plain values with infinities and NaN, which JSON does not know, as None."""
+    if isinstance(value, Mapping):
+        return {key: finite(one) for key, one in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [finite(one) for one in value]
+    if isinstance(value, float) and not abs(value) < float("inf"):
+        return None
+    return value
 
 
 def judge(check: str, value: float, limit: float, detail: str) -> CheckResult:

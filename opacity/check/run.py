@@ -9,7 +9,7 @@ from typing import Any
 from opacity.check.audit import audit, interpolation_errors, judge_audit
 from opacity.check.band_strength import check_band
 from opacity.check.closure import JUDGED_BELOW, Closure, closure_of, judge_closure
-from opacity.check.result import CheckResult
+from opacity.check.result import CheckResult, finite
 from opacity.check.spectra import Spectra, is_uniform, nodes_of
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.recipe.model import Recipe
@@ -57,7 +57,7 @@ def run_checks(
         "ledger": lines.ledger.as_dict(),
         "assumptions": [{"what": one.what, "lines": one.lines} for one in lines.assumptions],
     }
-    return CheckReport(tuple(rows), figures)
+    return CheckReport(tuple(rows), finite(figures))
 
 
 def _best_pressure(accounts: list[Closure], temperature: float) -> float | None:

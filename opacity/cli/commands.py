@@ -145,8 +145,11 @@ def check(arguments: Namespace) -> int:
 def show(arguments: Namespace) -> int:
     """`opacity show TABLE`: a summary, and with --plot a picture."""
     from opacity.cli.summary import summary, summary_lines
+    from opacity.errors import InputError, problem
     from opacity.tables.read import open_table
 
+    if arguments.zoom and not arguments.plot:
+        raise InputError(problem("--zoom", "enlarges a part of a picture", remedy="give --plot FILE.png too"))
     with open_table(arguments.table) as table:
         if arguments.json:
             print(text.as_json(summary(table)))

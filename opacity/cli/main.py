@@ -3,6 +3,9 @@
 from __future__ import annotations
 
 import argparse
+import contextlib
+import io
+import math
 import os
 import sys
 from collections.abc import Sequence
@@ -12,12 +15,20 @@ from opacity.cli import commands
 from opacity.errors import OpacityError
 from opacity.provenance import VERSION
 
+FAILED = 1
 INTERRUPTED = 130
+
+
+class _Parser(argparse.ArgumentParser):
+    """A parser whose errors are one line, as all failures here."""
+
+    def error(self, message: str) -> NoReturn:
+        self.exit(2, f"{self.prog}: {message}; `{self.prog} --help` tells more\n")
 
 
 def parser() -> argparse.ArgumentParser:
     """All commands and their options."""
-    top = argparse.ArgumentParser(
+    top = _Parser(
         prog="opacity",
         description="Cross-section tables for model atmospheres from molecular line lists, with the proof inside.",
         epilog="Exit codes: 0 done, 1 failed or a check differs, 2 wrong use or wrong recipe, 130 interrupted.",
@@ -65,24 +76,25 @@ def _add_shared(one: argparse.ArgumentParser) -> None:
 
 
 def _positive(value: str) -> int:
-    number = int(value)
-    if not 1 <= number <= 1024:
-        raise argparse.ArgumentTypeError(f"expected 1 to 1024, found {value}")
-    return number
+    if not (value.isdecimal() and len(value) <= 4 and 1 <= int(value) <= 1024):
+        raise argparse.ArgumentTypeError(f"expected a whole number, 1 to 1024, found {value!r}")
+    return int(value)
 
 
 def _whole(value: str) -> int:
-    number = int(value)
-    if number < 0:
-        raise argparse.ArgumentTypeError(f"expected 0 or more, found {value}")
-    return number
+    if not (value.isdecimal() and len(value) <= 30):
+        raise argparse.ArgumentTypeError(f"expected a whole number, 0 or more, found {value!r}")
+    return int(value)
 
 
 def _range(value: str) -> tuple[float, float]:
-    parts = value.split(",")
-    if len(parts) != 2:
-        raise argparse.ArgumentTypeError(f"expected FROM,TO, found {value}")
-    return float(parts[0]), float(parts[1])
+    try:
+        lower, upper = (float(part) for part in value.split(","))
+    except ValueError:
+        lower, upper = math.nan, math.nan
+    if not 0.0 <= lower < upper < math.inf:
+        raise argparse.ArgumentTypeError(f"expected FROM,TO in cm-1, such as 2100,2110, found {value!r}")
+    return lower, upper
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -90,7 +102,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     parsed = parser().parse_args(arguments)
     try:
         code = int(parsed.run(parsed))
-        sys.stdout.flush()
+        if sys.stdout is not None:  # closed by whoever started us
+            sys.stdout.flush()
         return code
     except OpacityError as error:
         print(error, file=sys.stderr)
@@ -99,11 +112,27 @@ def main(arguments: Sequence[str] | None = None) -> int:
         print("interrupted: nothing half-written was left behind", file=sys.stderr)
         return INTERRUPTED
     except BrokenPipeError:
-        # Whoever read our output has gone; keep the interpreter from complaining about it at exit.
+        # Whoever read our output has gone.
+        _silence_stdout()
+        return FAILED
+    except OSError as error:
+        _silence_stdout()
+        print(f"{error.filename or 'output'}: {error.strerror or error}", file=sys.stderr)
+        return FAILED
+    except MemoryError:
+        print("not enough memory: use fewer nodes, fewer points or a shorter line list", file=sys.stderr)
+        return FAILED
+
+
+def _silence_stdout() -> None:
+    """What could not be written is lost; at exit the interpreter would try again and complain."""
+    with contextlib.suppress(OSError, ValueError, AttributeError):
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-        return 1
 
 
 def run() -> NoReturn:
     """Entry point of the installed command."""
+    # File names need not be text, and a terminal need not know every character.
+    if isinstance(sys.stdout, io.TextIOWrapper) and sys.stdout.errors == "strict":
+        sys.stdout.reconfigure(errors="backslashreplace")
     sys.exit(main())

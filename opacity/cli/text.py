@@ -7,24 +7,14 @@ import textwrap
 from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
-from opacity.check.result import CheckResult
+from opacity.check.result import CheckResult, finite
 
 WIDTH = 100
 
 
 def as_json(value: Mapping[str, Any]) -> str:
     """JSON for programs; infinities and NaN, which JSON does not know, as null."""
-    return json.dumps(_finite(value), indent=2)
-
-
-def _finite(value: Any) -> Any:
-    if isinstance(value, Mapping):
-        return {key: _finite(one) for key, one in value.items()}
-    if isinstance(value, (list, tuple)):
-        return [_finite(one) for one in value]
-    if isinstance(value, float) and not abs(value) < float("inf"):
-        return None
-    return value
+    return json.dumps(finite(value), indent=2)
 
 
 def results_table(results: Iterable[CheckResult]) -> str:

@@ -34,7 +34,8 @@ _NEEDED = ("molec_id", "local_iso_id", "nu", "sw", "elower")
 _KINDS = {"gamma": "gamma", "n": "exponent", "delta": "shift"}
 _COLUMN = re.compile(r"(gamma|n|delta)_([a-z][a-z0-9]*)")
 _WIDTH = re.compile(r"%(\d+)")
-_MISSING = re.compile(rb"#+")
+_LONGEST = 10_000
+"""No fixed part of a record is longer than this, in characters (160 is the rule)."""
 
 
 @dataclass(frozen=True)
@@ -50,7 +51,8 @@ def parse_hapi_table(path: Path) -> ParsedColumns:
     """The columns of a local hapi table.  Raises LineListError for a missing or unusable header."""
     header = _read_header(path)
     records, numbers = split_records(read_text(path))
-    parts = [record[header.width :].rstrip(b" \t").split(header.separator) for record in records]
+    blanks = b" \t".replace(header.separator, b"")
+    parts = [record[header.width :].rstrip(blanks).split(header.separator) for record in records]
     # Behind the fixed part stands a separator, so that the first part is empty where there are extra columns.
     count = len(header.extra)
     whole = np.array(
@@ -63,7 +65,7 @@ def parse_hapi_table(path: Path) -> ParsedColumns:
     expected = f"{header.width} characters and {count} extra columns"
     columns = parse_fixed(path, records, numbers, whole, expected, header.layout, header.width, header.code_byte)
     for position, name in enumerate(header.extra, start=1):
-        texts = [_MISSING.sub(b"", part[position]) if ok else b"" for part, ok in zip(parts, whole, strict=True)]
+        texts = [part[position] if ok else b"" for part, ok in zip(parts, whole, strict=True)]
         known = _internal_name(name)
         if known is not None:
             fields = np.array(texts, dtype=np.bytes_) if texts else np.empty(0, dtype="S1")
@@ -87,7 +89,7 @@ def _complete_broadeners(columns: ParsedColumns) -> None:
 
 
 def _read_header(path: Path) -> _Header:
-    header_path = path.with_suffix(".header")
+    header_path = path.parent / f"{path.stem}.header"
     if not header_path.is_file():
         raise LineListError(
             problem(path, "a hapi table needs its header beside it", expected=str(header_path), found="no such file")
@@ -95,7 +97,7 @@ def _read_header(path: Path) -> _Header:
     try:
         header = json.loads(read_text(header_path))
         return _interpret(header)
-    except (ValueError, KeyError, TypeError, AttributeError, UnicodeDecodeError, RecursionError) as error:
+    except (ValueError, KeyError, TypeError, AttributeError, OverflowError, RecursionError) as error:
         raise LineListError(
             problem(header_path, f"not a header of a hapi table ({type(error).__name__}: {error})")
         ) from error
@@ -106,24 +108,37 @@ def _interpret(header: dict[str, Any]) -> _Header:
     missing = [name for name in _NEEDED if name not in positions]
     if missing:
         raise KeyError(f"no column {', '.join(missing)}")
-    layout, ends = {}, []
-    for name, start in positions.items():
-        stop = int(start) + _width(formats[name])
-        if int(start) < 0:
-            raise ValueError(f"column {name} starts before the record")
-        ends.append(stop)
-        known = _internal_name(name)
-        if known is not None:
-            layout[known] = (int(start), stop)
+    spans = {name: (int(start), int(start) + _width(formats[name])) for name, start in positions.items()}
+    _check_spans(spans)
     separator = str(header.get("extra_separator", ",")).encode("ascii")
     if not separator:
         raise ValueError("empty extra_separator")
     extra = tuple(str(name) for name in header.get("extra", []))
-    return _Header(layout, int(positions["local_iso_id"]), max(ends), extra, separator)
+    named = [known for name in (*spans, *extra) if (known := _internal_name(name)) is not None]
+    twice = sorted({name for name in named if named.count(name) > 1})
+    if twice:
+        raise ValueError(f"column named twice: {', '.join(twice)}")
+    layout = {known: span for name, span in spans.items() if (known := _internal_name(name)) is not None}
+    width = max(stop for _, stop in spans.values())
+    return _Header(layout, spans["local_iso_id"][0], width, extra, separator)
+
+
+def _check_spans(spans: dict[str, tuple[int, int]]) -> None:
+    """Columns (first byte, byte after the last) must lie inside a record and apart from each other."""
+    previous = 0
+    for name, (start, stop) in sorted(spans.items(), key=lambda item: item[1]):
+        if start < previous:
+            raise ValueError(f"column {name!r} starts inside another column or before the record")
+        previous = stop
+    if previous > _LONGEST:
+        raise ValueError(f"columns end at character {previous}, more than {_LONGEST}")
+    start, stop = spans["local_iso_id"]
+    if stop - start != 1:
+        raise ValueError(f"column 'local_iso_id' is {stop - start} characters wide, not 1")
 
 
 def _width(text: str) -> int:
     match = _WIDTH.match(text)
     if match is None or not 1 <= int(match[1]) <= 1000:
-        raise ValueError(f'impossible column format "{text}"')
+        raise ValueError(f"impossible column format {text!r}")
     return int(match[1])

@@ -43,8 +43,10 @@ def read_lines(
     if not paths:
         raise InputError(problem("files", "no line list given", expected="one or more files"))
     base = options or ReadOptions()
+    if range is not None and not range[0] <= range[1]:
+        raise InputError(problem("range", "not a range", expected="two wavenumbers, the lower first", found=range))
     chosen = ReadOptions(bad_records == "leave-out", base.formula, base.mass, base.isotopologue)
-    lines = merge([judge(_reader(path, format)(path), chosen) for path in paths])
+    lines = merge([_read_one(path, format, chosen) for path in paths])
     formulas = sorted({one.molecule_formula for one in lines.isotopologues})
     if len(formulas) > 1:
         raise LineListError(
@@ -54,6 +56,13 @@ def read_lines(
         lower, upper = range
         lines = lines.select((lines.wavenumber >= lower) & (lines.wavenumber <= upper), "outside the range asked for")
     return lines
+
+
+def _read_one(path: Path, format: str | None, options: ReadOptions) -> LineList:
+    columns = _reader(path, format)(path)
+    if not columns.raw:
+        raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
+    return judge(columns, options)
 
 
 def _reader(path: Path, format: str | None) -> Callable[[Path], ParsedColumns]:

@@ -5,6 +5,7 @@ This is the common second half of all readers; the first half only finds the col
 
 from __future__ import annotations
 
+import re
 from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass, field
@@ -23,6 +24,8 @@ from opacity.molecule.isotopologue import LOCAL_CODES, Isotopologue, isotopologu
 
 REQUIRED = ("molecule", "wavenumber", "strength", "lower_energy")
 MAX_EXPONENT = 10.0
+MAX_MOLECULE = 999
+_NOT_TEXT = re.compile(rb"[^\t\x20-\x7e]")
 
 
 @dataclass
@@ -83,7 +86,7 @@ def judge(columns: ParsedColumns, options: ReadOptions) -> LineList:
 
 def _first_problem(columns: ParsedColumns, first: tuple[int, str, str], bad: int) -> str:
     row, reason, expected = first
-    text = columns.raw[row][:70].decode("ascii", "replace")
+    text = _NOT_TEXT.sub(b"?", columns.raw[row][:70]).decode("ascii").replace("\t", " ")
     return problem(
         f"{columns.path}:{columns.line[row]}",
         reason,
@@ -96,6 +99,8 @@ def _first_problem(columns: ParsedColumns, first: tuple[int, str, str], bad: int
 def _faults(columns: ParsedColumns) -> Iterator[tuple[str, str, NDArray[np.bool_]]]:
     numbers = columns.numbers
     yield "record of the wrong length", columns.length_expected, ~columns.whole
+    plain = np.array([_NOT_TEXT.search(record) is None for record in columns.raw], dtype=bool)
+    yield "record with bytes that are no text", "printable ASCII characters", ~plain
     yield from columns.faults
     for name, unreadable in columns.unreadable.items():
         yield f"{_words(name)} is not a number", "digits", unreadable
@@ -103,6 +108,9 @@ def _faults(columns: ParsedColumns) -> Iterator[tuple[str, str, NDArray[np.bool_
         yield f"{_words(name)} is missing", "a number", np.isnan(numbers[name])
     for name, values in numbers.items():
         yield f"{_words(name)} is not finite", "a finite number", np.isinf(values)
+    molecule = numbers["molecule"]
+    impossible = (molecule < 1.0) | (molecule > MAX_MOLECULE) | (molecule != np.floor(molecule))
+    yield "molecule number is impossible", f"a whole number from 1 to {MAX_MOLECULE}", impossible
     yield "wavenumber is not above 0", "a positive wavenumber", ~(numbers["wavenumber"] > 0.0)
     yield "strength is negative", "0 or more", numbers["strength"] < 0.0
     if "einstein_a" in numbers:

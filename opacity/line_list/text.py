@@ -14,10 +14,10 @@ def read_text(path: Path) -> bytes:
     """All bytes of a file, decompressed by its ending (.gz, .bz2).  Raises LineListError naming the file."""
     try:
         data = path.read_bytes()
-        if path.suffix == ".gz":
+        if path.suffix.lower() == ".gz":
             return gzip.decompress(data)
-        if path.suffix == ".bz2":
-            return bz2.decompress(data)
+        if path.suffix.lower() == ".bz2":
+            return _bunzip2(data)
         return data
     except (EOFError, zlib.error, gzip.BadGzipFile, ValueError) as error:
         raise LineListError(
@@ -26,6 +26,18 @@ def read_text(path: Path) -> bytes:
     except OSError as error:
         reason = error.strerror or f"damaged {path.suffix} file ({error})"
         raise LineListError(problem(path, f"cannot be read ({reason})")) from error
+
+
+def _bunzip2(data: bytes) -> bytes:
+    """All streams of a bz2 file; the standard library's `bz2.decompress` passes over damage behind the first."""
+    parts = []
+    while data:
+        stream = bz2.BZ2Decompressor()
+        parts.append(stream.decompress(data))
+        if not stream.eof:
+            raise EOFError("it ends before its end mark")
+        data = stream.unused_data
+    return b"".join(parts)
 
 
 def split_records(data: bytes) -> tuple[list[bytes], list[int]]:

@@ -50,6 +50,6 @@ def isotopologue(molecule: int, local: int) -> Isotopologue:
 
 
 def isotopologues_of(molecule_formula: str) -> list[Isotopologue]:
-    """All isotopologues that hapi's tables hold of a molecule, most abundant first; empty if it is unknown."""
+    """All isotopologues that hapi's tables hold of a molecule, by local number; empty if it is unknown."""
     found = [isotopologue(*key) for key, row in hapi().ISO.items() if row[4] == molecule_formula]
     return sorted(found, key=lambda one: one.local)

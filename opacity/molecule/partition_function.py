@@ -30,13 +30,38 @@ TIPS_LOWEST = 20.0
 STEP = 1.5e-3
 """A relative jump from its neighbours above which a tabulated Q counts as a step."""
 
-# Upper ends (K) where an edition starts to differ by 1 % from the other, and is known to be the wrong one:
-# TIPS-2021 O2 is 32 % low and N2O 19 % low at 3000 K; TIPS-2025 CH4 is 11-29 % low at 2000-2250 K (measured).
+# Upper ends (K), the last tabulated temperature at which an edition is within 1 % of the other, for the edition
+# that is known to be wrong above: there its Q falls against that of a rigid rotor with harmonic oscillators, which
+# a sum over all levels does not (measured; TIPS-2021 O2 is 32 % low and N2O 19 % low at 3000 K, TIPS-2025 CH4
+# 11-29 % low at 2000-2250 K).
 _LIMITS = {
-    ("TIPS-2021", 7, 1): 750.0,
     ("TIPS-2021", 4, 1): 1710.0,
+    ("TIPS-2021", 7, 1): 750.0,
+    ("TIPS-2021", 8, 1): 2480.0,
+    ("TIPS-2021", 8, 2): 2450.0,
+    ("TIPS-2021", 8, 3): 2420.0,
+    ("TIPS-2021", 11, 1): 1960.0,
+    ("TIPS-2021", 11, 2): 940.0,
+    ("TIPS-2021", 22, 1): 3460.0,
+    ("TIPS-2021", 22, 2): 3370.0,
     ("TIPS-2025", 6, 1): 1610.0,
     ("TIPS-2025", 6, 2): 1610.0,
+    ("TIPS-2025", 7, 2): 1790.0,
+    ("TIPS-2025", 7, 3): 1800.0,
+    ("TIPS-2025", 13, 3): 900.0,
+    ("TIPS-2025", 20, 1): 1370.0,
+}
+
+# Wrong at all temperatures against a rigid rotor with harmonic oscillators, which the other edition meets within
+# 1 % at 200-1000 K: Q(1000 K)/Q(296 K) of GeH4 is 66 % low, that of CS2 44 % high (measured).
+_UNUSABLE = {
+    ("TIPS-2021", 52, 1),
+    ("TIPS-2021", 52, 2),
+    ("TIPS-2021", 52, 3),
+    ("TIPS-2021", 52, 4),
+    ("TIPS-2021", 52, 5),
+    ("TIPS-2021", 53, 1),
+    ("TIPS-2021", 53, 4),
 }
 
 
@@ -75,14 +100,15 @@ def tips_value(key: tuple[int, int, int], temperature: float) -> float:
 
 
 def tips(edition: str, isotopologue: Isotopologue) -> PartitionFunction:
-    """The TIPS partition function of an isotopologue.  Raises MoleculeError if the edition lacks it."""
+    """The TIPS partition function of an isotopologue.  Raises MoleculeError if the edition has no good one."""
     year = TIPS_EDITIONS[edition]
     table = _tips_table(year, isotopologue.molecule, isotopologue.local)
-    if table is None:
+    if table is None or (edition, isotopologue.molecule, isotopologue.local) in _UNUSABLE:
+        kind = "values" if table is None else "trustworthy values"
         raise MoleculeError(
             problem(
                 f"partition function {edition}",
-                f"no values for {isotopologue.formula} ({isotopologue.molecule_formula})",
+                f"no {kind} for {isotopologue.formula} ({isotopologue.molecule_formula})",
                 remedy='choose another edition or source = "file"',
             )
         )
@@ -97,7 +123,8 @@ def _tips_table(year: int, molecule: int, local: int) -> tuple[FloatArray, Float
     module = hapi()
     temperatures = getattr(module, f"TIPS_{year}_ISOT_HASH").get((molecule, local))
     values = getattr(module, f"TIPS_{year}_ISOQ_HASH").get((molecule, local))
-    if temperatures is None or values is None:
+    # TIPS-2025 holds zeros for the O atom: no values.
+    if temperatures is None or values is None or not np.any(np.asarray(values) > 0.0):
         return None
     size = min(len(temperatures), len(values))
     return np.asarray(temperatures[:size], dtype=np.float64), np.asarray(values[:size], dtype=np.float64)
@@ -172,7 +199,8 @@ def from_file(path: Path) -> PartitionFunction:
 def _row(path: Path, number: int, line: str, previous: float) -> tuple[float, float]:
     fields = line.split()
     try:
-        temperature, value = (float(field) for field in fields[:2])
+        # Python's float also reads 1_0.
+        temperature, value = (float(field.replace("_", "?")) for field in fields[:2])
     except ValueError:
         temperature, value = np.nan, np.nan
     if not (previous < temperature < np.inf and 0.0 < value < np.inf):

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import os
 import platform
 import time
 from concurrent.futures import Executor, ThreadPoolExecutor
@@ -55,6 +56,7 @@ def build_table(recipe: Recipe, folder: Path, *, workers: int | None = None, qui
     if kept is not None:
         return BuildResult(path, log, plan, kept, time.monotonic() - started, reused=True)
     _make_folder(folder)
+    _refuse_folders(path, log)
     count = allowed_cpus() if workers is None else workers
     sigma = compute_spectra(recipe, inputs.lines, count, quiet)
     table, report = _checked_table(recipe, inputs, sigma, path, quiet)
@@ -66,7 +68,7 @@ def build_table(recipe: Recipe, folder: Path, *, workers: int | None = None, qui
 
 def _still_good(path: Path, inputs: Inputs) -> dict[str, Any] | None:
     """The checks of a table that is there, whole, and made from these inputs; otherwise None."""
-    if not path.exists():
+    if not os.path.exists(path):
         return None
     try:
         with open_table(path) as table:
@@ -83,6 +85,17 @@ def _make_folder(folder: Path) -> None:
         folder.mkdir(parents=True, exist_ok=True)
     except OSError as error:
         raise ResourceError(problem(folder, f"the folder for the tables cannot be made ({error.strerror})")) from error
+    if not os.access(folder, os.W_OK | os.X_OK):
+        raise ResourceError(
+            problem(folder, "nothing can be written here", remedy="choose a folder in which you may write")
+        )
+
+
+def _refuse_folders(*paths: Path) -> None:
+    """Before hours of work, not after them."""
+    for path in paths:
+        if path.is_dir():
+            raise ResourceError(problem(path, "is a folder", expected="a file or nothing", remedy="move it away"))
 
 
 def compute_spectra(recipe: Recipe, lines: PreparedLines, workers: int, quiet: bool) -> FloatArray:

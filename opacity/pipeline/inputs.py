@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import os
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -12,7 +13,7 @@ from typing import Any
 import numpy as np
 
 from opacity.cross_sections.prepare import PreparedLines, prepare
-from opacity.errors import LineListError, RecipeError, problem
+from opacity.errors import InputError, LineListError, RecipeError, problem
 from opacity.line_list.model import LineList
 from opacity.line_list.read import merge, read_lines
 from opacity.line_list.records import ReadOptions
@@ -57,17 +58,25 @@ def load_inputs(recipe: Recipe) -> Inputs:
     margin = max(step.cutoff for step in recipe.profile.cutoff.steps)
     within = (lines.wavenumber >= nu[0] - margin) & (lines.wavenumber <= nu[-1] + margin)
     lines = lines.select(within, "beyond the reach of the grid")
-    choice = recipe.partition_function
-    prepared = prepare(
-        lines,
-        partition_function=choice.path if choice.path is not None else choice.source,
-        abundance=recipe.abundance,
-        broadeners=recipe.broadening.mixture,
-        defaults={
-            name: DefaultWidth(one.gamma, one.exponent, one.source) for name, one in recipe.broadening.default.items()
-        },
-    )
+    prepared = _prepared(recipe, lines)
     return Inputs(prepared, _provenance(recipe, lists, prepared))
+
+
+def _prepared(recipe: Recipe, lines: LineList) -> PreparedLines:
+    choice = recipe.partition_function
+    defaults = {
+        name: DefaultWidth(one.gamma, one.exponent, one.source) for name, one in recipe.broadening.default.items()
+    }
+    try:
+        return prepare(
+            lines,
+            partition_function=choice.path if choice.path is not None else choice.source,
+            abundance=recipe.abundance,
+            broadeners=recipe.broadening.mixture,
+            defaults=defaults,
+        )
+    except InputError as error:  # a choice of the recipe that does not fit the lines
+        raise RecipeError([f"{recipe.path}: {error}"]) from error
 
 
 def _read(recipe: Recipe, source: LineListSource) -> LineList:
@@ -155,7 +164,9 @@ def _all_paths(source: LineListSource) -> list[Path]:
 
 
 def _file_entry(path: Path, source: LineListSource) -> dict[str, Any]:
-    return {"file": path.name, "sha256": file_sha256(path), "reference": source.reference}
+    # A file name need not be text.
+    name = os.fsencode(path.name).decode("utf-8", "backslashreplace")
+    return {"file": name, "sha256": file_sha256(path), "reference": source.reference}
 
 
 def invalid_temperatures(lines: PreparedLines, temperatures: Sequence[float]) -> list[str]:

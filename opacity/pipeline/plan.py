@@ -110,8 +110,8 @@ def _refuse_what_cannot_fit(plan: Plan) -> None:
                 problem(
                     plan.recipe,
                     f"the build does not fit in {what}",
-                    expected=f"at most {free / 1e9:.2f} GB",
-                    found=f"{needed / 1e9:.2f} GB for {plan.nodes} nodes of {plan.points} points",
+                    expected=f"at most {free / 1e6:.4g} MB",
+                    found=f"{needed / 1e6:.4g} MB for {plan.nodes} nodes of {plan.points} points",
                     remedy="use fewer nodes, fewer points or a larger machine",
                 )
             )

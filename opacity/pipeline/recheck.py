@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import json
+import os
 from pathlib import Path
 
 from opacity.check.open_check import check_integrity, recheck, require_same_inputs, stored_results
 from opacity.check.run import CheckReport
-from opacity.errors import RecipeError, TableError, problem
+from opacity.errors import InputError, problem
 from opacity.pipeline.inputs import load_inputs
 from opacity.pipeline.plan import table_name
 from opacity.pipeline.progress import Progress
@@ -24,17 +25,21 @@ def find_table_and_recipe(target: Path, recipe: Path | None, folder: Path) -> tu
     beside the table names, None where there is none.
     """
     if target.suffix == ".toml":
+        if recipe is not None:
+            raise InputError(
+                problem("--recipe", f"{target} is a recipe itself", remedy="give the table, or no --recipe")
+            )
         return folder / table_name(load_recipe(target)), target
     return target, recipe if recipe is not None else _recipe_of_log(target)
 
 
 def _recipe_of_log(table: Path) -> Path | None:
-    log = table.with_name(table.name.removesuffix(TABLE_ENDING) + ".log.json")
     try:
+        log = table.with_name(table.name.removesuffix(TABLE_ENDING) + ".log.json")
         path = Path(json.loads(log.read_text(encoding="utf-8"))["recipe"])
     except (OSError, ValueError, KeyError, TypeError):
         return None
-    return path if path.is_file() else None
+    return path if os.path.isfile(path) else None
 
 
 def check_table_file(
@@ -43,7 +48,8 @@ def check_table_file(
     """Check a table on disk; the report and a word on what it rests on.
 
     Without the recipe only integrity is checked, and the results that the build stored are repeated as such.
-    Raises TableError for a damaged table, or one that was not built from the recipe as it stands.
+    Raises TableError for a damaged table, or one that was not built from the recipe as it stands, RecipeError for a
+    recipe that cannot be used.
     """
     with open_table(path) as table:
         if recipe_path is None:
@@ -54,10 +60,7 @@ def check_table_file(
 
 
 def _with_recipe(table: Table, recipe_path: Path, seed: int | None, quiet: bool) -> tuple[CheckReport, str]:
-    try:
-        recipe = load_recipe(recipe_path)
-    except RecipeError as error:
-        raise TableError(problem(table.path, f"its recipe cannot be used: {error.problems[0]}")) from error
+    recipe = load_recipe(recipe_path)
     inputs = load_inputs(recipe)
     require_same_inputs(table, recipe, inputs.provenance)
     nodes = table.temperature.size if table.profile else table.temperature.size * table.pressure.size
