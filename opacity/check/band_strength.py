@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import numpy as np
 
+from opacity.check.closure import share_within
 from opacity.check.result import CANNOT_JUDGE, CheckResult, judge
 from opacity.check.spectra import Spectra, interpolated, nodes_of
+from opacity.cross_sections.prepare import PreparedLines
 from opacity.grids import FloatArray
-from opacity.recipe.model import BandStrength
+from opacity.recipe.model import BandStrength, Profile
 from opacity.units import band_strength_to_cm_per_molecule
 
 STANDARD_DEVIATIONS = 2.0
@@ -22,10 +24,13 @@ def integral_between(wavenumber: FloatArray, values: FloatArray, lower: float, u
     return float(np.trapezoid(np.concatenate([[ends[0]], values[inside], [ends[1]]]), points))
 
 
-def check_band(band: BandStrength, spectra: Spectra, pressure: float | None) -> CheckResult:
+def check_band(
+    band: BandStrength, spectra: Spectra, pressure: float | None, lines: PreparedLines, profile: Profile
+) -> CheckResult:
     """Judge one band at the published temperature and a pressure (bar) at which the table resolves it.
 
-    It cannot be judged where the band or the temperature is not inside the table, or no pressure is resolved.
+    It cannot be judged where the band or the temperature is not inside the table, no pressure is resolved, or the
+    table has no node at the temperature and interpolating costs too much.
     """
     name = f"band {band.name}"
     nu = spectra.wavenumber
@@ -40,11 +45,28 @@ def check_band(band: BandStrength, spectra: Spectra, pressure: float | None) -> 
     published = band_strength_to_cm_per_molecule(band.strength, band.unit)
     found = integral_between(nu, spectrum, *band.range)
     value = found / published - 1.0
+    limit = STANDARD_DEVIATIONS * band.uncertainty
+    between = ""
+    if not np.any(spectra.temperature == band.temperature):
+        cost = found / _from_lines(band, pressure, lines, profile) - 1.0
+        between = f", interpolated at a cost of {cost:+.1e}"
+        if not abs(cost) <= 0.5 * limit:
+            detail = (
+                f"no node at {band.temperature:g} K, and interpolating between nodes changes the band by {cost:+.1%}"
+            )
+            return CheckResult(name, CANNOT_JUDGE, detail)
     detail = (
         f"{found:.4e} against {published:.4e} cm/molecule ({abs(value) / band.uncertainty:.1f} standard deviations);"
-        f" {band.temperature:g} K, {pressure:.3g} bar; {band.source}"
+        f" {band.temperature:g} K{between}, {pressure:.3g} bar; {band.source}"
     )
-    return judge(name, value, STANDARD_DEVIATIONS * band.uncertainty, detail)
+    return judge(name, value, limit, detail)
+
+
+def _from_lines(band: BandStrength, pressure: float, lines: PreparedLines, profile: Profile) -> float:
+    """The band's integral as a table with a node at its temperature would hold it, cm/molecule."""
+    node = lines.at(band.temperature, pressure)
+    share = share_within(node, *band.range, profile.cutoff.at(pressure), profile.plinth)
+    return max(float(np.sum(node.strength * share)), 1e-300)
 
 
 def _spectrum_at(spectra: Spectra, temperature: float, pressure: float) -> FloatArray | None:

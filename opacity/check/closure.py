@@ -29,8 +29,8 @@ class Closure:
 
     `strength` of all lines prepared; `in_reach` what of it lies inside cut-off and grid; `integral` of the
     points; `sampling` the relative difference that sampling is predicted to make (None where it can't be);
-    `at_risk` the share of the strength in lines that the step does not resolve; `allowance` (relative) for the
-    ends, and for sampling that is too small to matter but was not predicted.
+    `at_risk` the share of the strength in lines that the step does not resolve; `allowance` (relative, at most 1)
+    for the ends, and for sampling that is too small to matter but was not predicted.
     """
 
     temperature: float
@@ -43,12 +43,22 @@ class Closure:
     allowance: float
 
     @property
+    def expected(self) -> float:
+        """What the integral should be, with sampling taken into account."""
+        return self.in_reach * (1.0 + (self.sampling or 0.0))
+
+    @property
     def difference(self) -> float:
-        """Relative difference of the integral from the expectation with sampling taken into account."""
-        expected = self.in_reach * (1.0 + (self.sampling or 0.0))
-        if expected <= 0.0:
+        """Relative difference of the integral from the expectation."""
+        if self.expected <= 0.0:
             return 0.0 if self.integral == 0.0 else float("inf")
-        return self.integral / expected - 1.0
+        return self.integral / self.expected - 1.0
+
+    @property
+    def can_be_judged(self) -> bool:
+        """Whether the expectation is certain enough; not so where the points miss nearly all of the strength."""
+        seen = self.expected > JUDGED_BELOW * self.in_reach
+        return self.sampling is not None and seen and self.allowance <= JUDGED_BELOW
 
     def as_dict(self) -> dict[str, Any]:
         """The account as plain values for JSON."""
@@ -59,12 +69,7 @@ def closure_of(
     node: NodeLines, wavenumber: FloatArray, sigma: FloatArray, cutoff: float, plinth: bool, uniform: bool
 ) -> Closure:
     """The account of one spectrum (n_nu,) computed from the lines of `node`."""
-    lower = np.maximum(node.wavenumber - cutoff, wavenumber[0])
-    upper = np.minimum(node.wavenumber + cutoff, wavenumber[-1])
-    share = share_between(node, lower, upper)
-    if plinth:
-        edge = _at_distance(node, np.full(node.centre.size, cutoff))
-        share = np.maximum(share - edge * np.maximum(upper - lower, 0.0), 0.0)
+    share = share_within(node, float(wavenumber[0]), float(wavenumber[-1]), cutoff, plinth)
     in_reach = float(np.sum(node.strength * share))
     weighed = node.strength * (share > 0.0)
     risk = sampling_risk(node, wavenumber)
@@ -74,16 +79,29 @@ def closure_of(
     allowance = _ends_allowance(node, wavenumber, cutoff, risk)
     if sampling is None and at_risk <= 0.1 * JUDGED_BELOW:
         sampling, allowance = 0.0, allowance + float(np.sum(weighed * risk * inside))
+    relative = None if sampling is None else sampling / max(in_reach, 1e-300)
+    expected = in_reach * (1.0 + (relative or 0.0))
     return Closure(
         temperature=node.temperature,
         pressure=node.pressure,
         strength=float(np.sum(node.strength)),
         in_reach=in_reach,
         integral=float(np.sum(cell_widths(wavenumber) * sigma)),
-        sampling=None if sampling is None else sampling / max(in_reach, 1e-300),
+        sampling=relative,
         at_risk=at_risk,
-        allowance=allowance / max(in_reach, 1e-300),
+        allowance=min(allowance / expected, 1.0) if expected > 0.0 else 1.0,
     )
+
+
+def share_within(node: NodeLines, first: float, last: float, cutoff: float, plinth: bool) -> FloatArray:
+    """Share of each line's profile that lies inside its cut-off and between two wavenumbers, (n_lines,)."""
+    lower = np.maximum(node.wavenumber - cutoff, first)
+    upper = np.minimum(node.wavenumber + cutoff, last)
+    share = share_between(node, lower, upper)
+    if plinth:
+        edge = _at_distance(node, np.full(node.centre.size, cutoff))
+        share = np.maximum(share - edge * np.maximum(upper - lower, 0.0), 0.0)
+    return share
 
 
 def _predicted_sampling(node: NodeLines, wavenumber: FloatArray, inside: NDArray[np.bool_]) -> float | None:
@@ -125,9 +143,7 @@ def _ends_allowance(node: NodeLines, wavenumber: FloatArray, cutoff: float, risk
 
 def judge_closure(accounts: list[Closure], tolerance: float) -> CheckResult:
     """One row for all nodes: the worst of those that can be judged."""
-    judged = [
-        one for one in accounts if one.sampling is not None and one.allowance <= JUDGED_BELOW and one.in_reach > 0
-    ]
+    judged = [one for one in accounts if one.can_be_judged]
     coarse = [one for one in accounts if one.at_risk > JUDGED_BELOW]
     note = ""
     if coarse:

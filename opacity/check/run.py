@@ -47,7 +47,9 @@ def run_checks(
     found = audit(spectra, lines, profile, seed)
     between = interpolation_errors(spectra, lines, profile, seed)
     rows = [judge_closure(accounts, profile.tolerance), judge_audit(found, profile.tolerance)]
-    rows += [check_band(band, spectra, _best_pressure(accounts, band.temperature)) for band in recipe.band_strengths]
+    for band in recipe.band_strengths:
+        pressure = _best_pressure(accounts, band.temperature)
+        rows.append(check_band(band, spectra, pressure, lines, profile))
     figures = {
         "tolerance": profile.tolerance,
         "results": [row.as_dict() for row in rows],

@@ -40,7 +40,7 @@ def summary_lines(table: Table) -> list[tuple[str, str]]:
         ("temperature", _axis(table.temperature.tolist(), "K")),
         ("pressure", _axis(table.pressure.tolist(), "bar")),
         ("wavenumber", f"{nu[0]:.8g} to {nu[-1]:.8g} cm-1{wavelength}, {nu.size} points"),
-        ("line list", "; ".join(f"{one['file']} ({one['reference']})" for one in provenance.get("line_lists", []))),
+        ("line list", ", ".join(one["file"] for one in provenance.get("line_lists", []))),
         ("partition", str(provenance.get("partition_function", {}).get("source", ""))),
         ("broadening", _mixture(provenance.get("broadening", {}).get("mixture", {}))),
         ("built by", f"{program.get('name', '')} {program.get('version', '')}"),

@@ -31,18 +31,19 @@ def _source_hash() -> str:
 
 
 _HASH = _source_hash()
+_CONFIG: Any = numba.config
 
 
 @contextmanager
 def _cache_of_this_source() -> Iterator[None]:
     """While a function is decorated, point numba to the cache folder of exactly this source."""
-    before = numba.config.CACHE_DIR
+    before = _CONFIG.CACHE_DIR
     base = Path(before) if before else Path(__file__).parent / "__pycache__"
-    numba.config.CACHE_DIR = str(base / f"kernels-{_HASH}")
+    _CONFIG.CACHE_DIR = str(base / f"kernels-{_HASH}")
     try:
         yield
     finally:
-        numba.config.CACHE_DIR = before
+        _CONFIG.CACHE_DIR = before
 
 
 def jit(function: Function) -> Function:
