@@ -48,8 +48,7 @@ def run_checks(
     between = interpolation_errors(spectra, lines, profile, seed)
     rows = [judge_closure(accounts, profile.tolerance), judge_audit(found, profile.tolerance)]
     for band in recipe.band_strengths:
-        pressure = _best_pressure(accounts, band.temperature)
-        rows.append(check_band(band, spectra, pressure, lines, profile))
+        rows.append(check_band(band, spectra, _best_pressure(accounts, band.temperature), lines, profile))
     figures = {
         "tolerance": profile.tolerance,
         "results": [row.as_dict() for row in rows],

@@ -59,7 +59,7 @@ def hapi_header(extra=(), **changes):
         column = COLUMN_NAMES.get(name, name)
         positions[column], formats[column] = start, f"%{width}s"
         start += width
-    formats |= {name: "%7.4f" for name in extra}
+    formats |= dict.fromkeys(extra, "%7.4f")
     header = {
         "table_name": "made",
         "number_of_rows": -1,
@@ -67,7 +67,7 @@ def hapi_header(extra=(), **changes):
         "position": positions,
         "format": formats,
         "extra": list(extra),
-        "extra_format": {name: "%7.4f" for name in extra},
+        "extra_format": dict.fromkeys(extra, "%7.4f"),
         "extra_separator": ",",
     }
     return {**header, **changes}

@@ -54,10 +54,8 @@ def test_what_is_no_number(record, write_par, field, text):
 
 
 @pytest.mark.parametrize("field", [name for name in NUMERIC if name not in ("molecule", "n_air")])
-@pytest.mark.parametrize("text", ["9E999", "1E400", "-9E99999"])
+@pytest.mark.parametrize("text", ["9E999", "1E400", "2+999"])
 def test_a_number_beyond_all_bounds(record, write_par, field, text):
-    text = text.replace("99999", "999") if field.startswith(("upper", "lower_w")) else text
-    text = text.replace("-9E99999", "9E309") if field.startswith("gamma") else text
     judged(write_par, record(), record(**{field: text}), f"{NUMERIC[field]} is not finite")
 
 

@@ -176,8 +176,8 @@ def test_wrong_arguments_are_refused(record, write_par):
         read_lines(path, "csv")
     with pytest.raises(InputError, match=r'^bad_records: unknown; expected "stop" or "leave-out", found "ignore"$'):
         read_lines(path, bad_records="ignore")
-    with pytest.raises(InputError, match="^files: no line list given"):
+    with pytest.raises(InputError, match=r"^files: no line list given"):
         read_lines([])
     for wrong in ((2.0, 1.0), (float("nan"), 1.0), (0.0, float("nan"))):
-        with pytest.raises(InputError, match="^range: not a range; expected two wavenumbers"):
+        with pytest.raises(InputError, match=r"^range: not a range; expected two wavenumbers"):
             read_lines(path, range=wrong)

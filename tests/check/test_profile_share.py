@@ -1,0 +1,94 @@
+"""Integrals of Voigt profiles against arbitrary-precision quadrature, and the sums that a grid makes of them."""
+
+from __future__ import annotations
+
+import math
+
+import mpmath
+import numpy as np
+import pytest
+
+from opacity.check.profile_share import sampling_offset, sampling_risk, share_between, upper_tail
+from opacity.cross_sections.exact import voigt_profile
+from opacity.cross_sections.prepare import NodeLines
+
+PROMISED = 2e-7
+"""Relative error of a tail, as `upper_tail` says."""
+
+
+def exact_tail(x: float, y: float) -> float:
+    """Integral of Re w(t + iy)/sqrt(pi) from x on: w as exp(-z^2) erfc(-iz), the far rest term by term exactly.
+
+    K(t, y) is the convolution of exp(-u^2) with y/(pi ((t-u)^2 + y^2)) (Armstrong 1967, JQSRT 7, 61), whose integral
+    over t is an arc tangent.
+    """
+    with mpmath.workdps(20):
+        far = max(x, 8.0)
+        places = [x, *(p for p in (-6, -4, -2, -1, 0, 1, 2, 3, 4, 5, 6, 7) if p > x), far]
+        near = mpmath.mpf(0)
+        if x < far:
+            near = mpmath.quad(lambda t: (mpmath.exp(-((t + 1j * y) ** 2)) * mpmath.erfc(-1j * t + y)).real, places)
+        rest = mpmath.quad(lambda u: mpmath.exp(-u * u) * mpmath.atan2(y, far - u), [-8, -4, 0, 4, 8])
+        return float(near / mpmath.sqrt(mpmath.pi) + rest / mpmath.pi ** mpmath.mpf("1.5"))
+
+
+@pytest.mark.parametrize("y", [1e-8, 1e-4, 0.1, 1.0, 10.0, 100.0])
+@pytest.mark.parametrize("x", [0.0, 0.3, 2.0, 5.9, 6.1, 30.0, -2.0])
+def test_the_tail_of_a_profile_agrees_with_quadrature(x: float, y: float):
+    found = upper_tail(np.array([x]), np.array([y]))[0]
+    assert found == pytest.approx(exact_tail(x, y), rel=PROMISED)
+
+
+def test_the_tail_falls_from_one_to_zero_and_is_symmetric():
+    x = np.linspace(-50.0, 50.0, 501)
+    for y in (1e-8, 1e-3, 1.0, 30.0):
+        tail = upper_tail(x, np.full(x.size, y))
+        assert np.all(np.diff(tail) <= PROMISED * tail[1:])
+        np.testing.assert_allclose(tail + tail[::-1], 1.0, rtol=1e-12)
+        assert 0.0 < tail[-1] < tail[0] < 1.0
+
+
+def test_a_lorentz_profile_has_the_tail_of_an_arc_tangent():
+    x, y = np.array([0.0, 500.0, 3e4]), np.full(3, 1e3)
+    # The Doppler part adds 1/(2 (x2 + y2)) of the tail at most, 5e-7.
+    np.testing.assert_allclose(upper_tail(x, y), np.arctan2(y, x) / math.pi, rtol=1e-6)
+
+
+def one_line(centre: float, doppler: float, lorentz: float) -> NodeLines:
+    values = [np.array([v]) for v in (centre, centre, 1.0, doppler, lorentz)]
+    return NodeLines(296.0, 1.0, *values)
+
+
+def test_shares_of_neighbouring_stretches_add_up():
+    line = one_line(1000.0, 0.002, 0.01)
+    limits = [900.0, 999.0, 999.99, 1000.0, 1000.02, 1003.0, 1100.0]
+    shares = [
+        share_between(line, np.array([a]), np.array([b]))[0] for a, b in zip(limits[:-1], limits[1:], strict=True)
+    ]
+    whole = share_between(line, np.array([900.0]), np.array([1100.0]))[0]
+    assert sum(shares) == pytest.approx(whole, rel=1e-9)
+    # Of a Lorentz profile 2 gamma / (pi d) lies beyond the distance d on both sides together.
+    assert 1.0 - whole == pytest.approx(2.0 * 0.01 / (math.pi * 100.0), rel=1e-4)
+    assert share_between(line, np.array([1100.0]), np.array([900.0]))[0] == 0.0
+
+
+@pytest.mark.parametrize("lorentz", [1e-9, 2e-4, 3e-3])
+@pytest.mark.parametrize("step", [0.001, 0.004, 0.011, 0.05])
+@pytest.mark.parametrize("phase", [0.0, 0.26, 0.5])
+def test_the_sum_over_points_is_as_predicted(step: float, lorentz: float, phase: float):
+    start, count = 1000.0, 40001
+    nu = start + step * np.arange(count)
+    line = one_line(start + step * (20000 + phase), 0.0025, lorentz)
+    total = step * float(np.sum(voigt_profile(nu - line.centre[0], line.doppler, line.lorentz)))
+    seen = share_between(line, nu[:1] - 0.5 * step, nu[-1:] + 0.5 * step)[0]
+    offset = sampling_offset(line, start, step)[0]
+    # The tail of `share_between` is good to 2e-7 of the little that lies beyond; the harmonics are exact.
+    assert total == pytest.approx(seen + offset, rel=1e-9, abs=1e-9)
+    assert abs(offset) <= 1.01 * sampling_risk(line, nu)[0] or sampling_risk(line, nu)[0] == 1.0
+
+
+def test_a_hopeless_step_is_not_predicted():
+    line = one_line(1000.3, 0.0025, 1e-6)
+    assert math.isnan(sampling_offset(line, 900.0, 1.0)[0])
+    assert sampling_risk(line, np.array([900.0, 901.0, 1100.0]))[0] == 1.0
+    assert sampling_risk(line, np.array([1000.0]))[0] == 1.0
