@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 
-from opacity.check.closure import share_within
+from opacity.check.closure import JUDGED_BELOW, Closure, share_within
 from opacity.check.result import CANNOT_JUDGE, CheckResult, judge
 from opacity.check.spectra import Spectra, interpolated, nodes_of
 from opacity.cross_sections.prepare import PreparedLines
@@ -67,6 +69,27 @@ def _from_lines(band: BandStrength, pressure: float, lines: PreparedLines, profi
     node = lines.at(band.temperature, pressure)
     share = share_within(node, *band.range, profile.cutoff.at(pressure), profile.plinth)
     return max(float(np.sum(node.strength * share)), 1e-300)
+
+
+def choose_pressure(
+    band: BandStrength, accounts: Sequence[Closure], lines: PreparedLines, profile: Profile
+) -> float | None:
+    """The pressure (bar) at which sampling and wings change a band least, near its temperature; None if all are coarse.
+
+    At low pressure the step may not resolve the lines, at high pressure their wings leave the band.
+    """
+    nearest = min((abs(one.temperature - band.temperature) for one in accounts), default=0.0)
+    near = [one for one in accounts if abs(one.temperature - band.temperature) <= nearest * (1.0 + 1e-9)]
+    resolved = [one for one in near if one.at_risk <= JUDGED_BELOW]
+
+    def change(one: Closure) -> float:
+        node = lines.at(one.temperature, one.pressure)
+        share = share_within(node, *band.range, profile.cutoff.at(one.pressure), profile.plinth)
+        inside = (node.wavenumber >= band.range[0]) & (node.wavenumber <= band.range[1])
+        whole = max(float(np.sum(node.strength[inside])), 1e-300)
+        return one.at_risk + abs(float(np.sum(node.strength * share)) / whole - 1.0)
+
+    return min(resolved, key=change).pressure if resolved else None
 
 
 def _spectrum_at(spectra: Spectra, temperature: float, pressure: float) -> FloatArray | None:

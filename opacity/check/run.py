@@ -7,8 +7,8 @@ from dataclasses import dataclass
 from typing import Any
 
 from opacity.check.audit import audit, interpolation_errors, judge_audit
-from opacity.check.band_strength import check_band
-from opacity.check.closure import JUDGED_BELOW, Closure, closure_of, judge_closure
+from opacity.check.band_strength import check_band, choose_pressure
+from opacity.check.closure import closure_of, judge_closure
 from opacity.check.result import CheckResult, finite
 from opacity.check.spectra import Spectra, is_uniform, nodes_of
 from opacity.cross_sections.prepare import PreparedLines
@@ -48,7 +48,7 @@ def run_checks(
     between = interpolation_errors(spectra, lines, profile, seed)
     rows = [judge_closure(accounts, profile.tolerance), judge_audit(found, profile.tolerance)]
     for band in recipe.band_strengths:
-        rows.append(check_band(band, spectra, _best_pressure(accounts, band.temperature), lines, profile))
+        rows.append(check_band(band, spectra, choose_pressure(band, accounts, lines, profile), lines, profile))
     figures = {
         "tolerance": profile.tolerance,
         "results": [row.as_dict() for row in rows],
@@ -59,15 +59,3 @@ def run_checks(
         "assumptions": [{"what": one.what, "lines": one.lines} for one in lines.assumptions],
     }
     return CheckReport(tuple(rows), finite(figures))
-
-
-def _best_pressure(accounts: list[Closure], temperature: float) -> float | None:
-    """The pressure at which least of the strength is lost to sampling, cut-off and ends, near a temperature."""
-    if not accounts:
-        return None
-    nearest = min(abs(one.temperature - temperature) for one in accounts)
-    near = [one for one in accounts if abs(one.temperature - temperature) <= nearest * (1.0 + 1e-9)]
-    resolved = [one for one in near if one.at_risk <= JUDGED_BELOW]
-    if not resolved:
-        return None
-    return min(resolved, key=lambda one: one.at_risk + 1.0 - one.in_reach / max(one.strength, 1e-300)).pressure

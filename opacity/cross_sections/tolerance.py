@@ -15,9 +15,9 @@ SMALLEST_TOLERANCE = 1e-6
 LARGEST_TOLERANCE = 0.1
 
 # Relative errors of Gauss-Hermite quadrature, measured against wofz and checked in the tests:
-# 2 points 2.7 / |z|^4 for |z| >= 7, 6 points 310 / |z|^12 for |z| >= 5; half of the tolerance goes to them.
+# 2 points 2.7 / |z|^4 for |z| >= 7, 6 points 600 / |z|^12 for |z| >= 5; half of the tolerance goes to them.
 _FAR_COEFFICIENT = 2.7
-_NEAR_COEFFICIENT = 310.0
+_NEAR_COEFFICIENT = 600.0
 _SMALLEST_FAR = 7.0
 _SMALLEST_NEAR = 5.0
 

@@ -4,7 +4,7 @@ Four formulas, each where it is accurate; `cross_sections.tolerance` says where 
 All of them add   max(amplitude K((nu - centre) scale, y) - plinth, 0)   to `out` for the points first <= i < last.
 
 far    Gauss-Hermite quadrature of the Voigt integral with 2 points: relative error 2.7 / |z|^4
-near   the same with 6 points: relative error 310 / |z|^12 for |z| >= 5
+near   the same with 6 points: relative error 600 / |z|^12 for |z| >= 5
 core   Weideman 1994 (SIAM J. Numer. Anal. 31, 1497), 24 terms: 5e-8 for y >= 0.05, |x| <= 7.5
 narrow K = exp(y2 - x2) cos 2xy - 2/sqrt(pi) Im D(x + iy), with Dawson's function D expanded in y to the fifth
        order about the real axis from a table: 3e-8 for y <= 0.05, |x| <= 10, however small y

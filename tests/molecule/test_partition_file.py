@@ -1,0 +1,121 @@
+"""Partition functions from a file of T and Q."""
+
+from __future__ import annotations
+
+import re
+
+import numpy as np
+import pytest
+
+from opacity.constants import SECOND_RADIATION
+from opacity.errors import MoleculeError
+from opacity.molecule.partition_function import from_file
+
+GOOD = ["100.0 10.0", "200.0 28.0", "300.0 52.0", "400.0 80.0", "500.0 112.0"]
+
+
+@pytest.fixture
+def write(tmp_path):
+    def make(rows):
+        path = tmp_path / "made.pf"
+        path.write_bytes("\n".join(rows).encode("latin-1"))
+        return path
+
+    return make
+
+
+def direct_sum(temperature):
+    """Q of a rigid rotor (B = 1.93 cm-1) with a harmonic oscillator (2143 cm-1), summed over its levels."""
+    j, v = np.arange(700)[:, None], np.arange(60)[None, :]
+    energy = 1.93 * j * (j + 1) + 2143.0 * v
+    return float(np.sum((2 * j + 1) * np.exp(-SECOND_RADIATION * energy / temperature)))
+
+
+def test_a_power_of_the_temperature_is_met_between_its_points(write):
+    temperature = np.geomspace(10.0, 5000.0, 20)
+    q = from_file(write([f"{t!r} {0.3 * t**1.5!r}" for t in temperature.tolist()]))
+    for t in (10.0, 11.3, 296.0, 1234.5, 4999.0, float(temperature[7])):
+        assert q(t) == pytest.approx(0.3 * t**1.5, rel=1e-13)
+
+
+@pytest.mark.parametrize(("step", "accuracy"), [(1.0, 1e-9), (10.0, 2e-6)])
+def test_a_sum_over_levels_is_met_between_its_points(write, step, accuracy):
+    temperature = np.arange(20.0, 3000.1, step)
+    q = from_file(write([f"{t:.1f} {direct_sum(t):.12e}" for t in temperature]))
+    middle = np.arange(50.0, 2990.0, 97.0) + 0.5 * step
+    np.testing.assert_allclose([q(t) for t in middle], [direct_sum(t) for t in middle], rtol=accuracy)
+
+
+def test_the_points_themselves_are_given_back_and_blank_lines_passed_over(write):
+    q = from_file(write(["", *GOOD[:2], "   ", *GOOD[2:], "", ""]))
+    for row in GOOD:
+        t, value = map(float, row.split())
+        assert q(t) == pytest.approx(value, rel=1e-14)
+    assert (q.lowest, q.highest, q.source) == (100.0, 500.0, "file made.pf")
+
+
+def test_further_columns_are_not_read(write):
+    q = from_file(write([row + " 3.0 text" for row in GOOD]))
+    assert q(300.0) == pytest.approx(52.0, rel=1e-14)
+
+
+@pytest.mark.parametrize("temperature", [99.999, 500.001, 0.0, float("nan")])
+def test_it_never_goes_beyond_its_ends(write, temperature):
+    q = from_file(write(GOOD))
+    with pytest.raises(
+        MoleculeError,
+        match=r"^partition function file made\.pf: temperature outside its valid range; expected 100 to 500 K, found ",
+    ):
+        q(temperature)
+
+
+@pytest.mark.parametrize(
+    "row",
+    [
+        "x 30.0",
+        "250.0 x",
+        "250.0",
+        "250.0,30.0",
+        "nan 30.0",
+        "250.0 nan",
+        "inf 30.0",
+        "250.0 inf",
+        "250.0 1E999",
+        "250.0 0.0",
+        "250.0 -30.0",
+        "200.0 30.0",
+        "150.0 30.0",
+        "-250.0 30.0",
+        "2_5_0 30.0",
+        "250.0 3_0",
+        "# T Q",
+        "\x00 1",
+    ],
+)
+@pytest.mark.parametrize("place", [2, 4])
+def test_a_bad_row_is_named(write, row, place):
+    rows = [*GOOD[:place], row, *GOOD[place:]]
+    if place == 4:
+        rows[4] = rows[4].replace("250.0", "450.0").replace("2_5_0", "4_5_0")
+    path = write(rows)
+    with pytest.raises(MoleculeError, match="^" + re.escape(f"{path}:{place + 1}: not a row of a")) as caught:
+        from_file(path)
+    assert "expected T above" in str(caught.value)
+    assert len(str(caught.value).splitlines()) == 1
+
+
+@pytest.mark.parametrize("count", [0, 1, 3])
+def test_too_few_rows(write, count):
+    path = write(GOOD[:count])
+    message = f"{path}: too few rows; expected 4 or more of T and Q, found {count}"
+    with pytest.raises(MoleculeError, match="^" + re.escape(message) + "$"):
+        from_file(path)
+
+
+def test_a_file_that_cannot_be_read(tmp_path, write):
+    for path in (tmp_path / "none.pf", tmp_path, write(["100.0 1\xb20.0"])):
+        with pytest.raises(
+            MoleculeError, match="^" + re.escape(f"{path}: partition function cannot be read")
+        ) as caught:
+            from_file(path)
+        assert len(str(caught.value).splitlines()) == 1
