@@ -69,7 +69,12 @@ def log_wavenumbers(start: float, stop: float, resolving_power: float) -> FloatA
 def _check_count(intervals: float) -> None:
     if not intervals < MAX_POINTS:
         raise InputError(
-            problem("wavenumber", "too many points", expected=f"at most {MAX_POINTS}", found=f"{intervals:.3g}")
+            problem(
+                "wavenumber",
+                "too many points",
+                expected=f"at most {MAX_POINTS}",
+                found=f"{intervals + 1:.0f}" if intervals < 1e15 else f"{intervals:.3g}",
+            )
         )
 
 

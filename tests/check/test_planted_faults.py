@@ -26,12 +26,6 @@ def with_broadening(lines, **changes):
     return replace(lines, broadening=replace(lines.broadening, **changes))
 
 
-@pytest.fixture(scope="module")
-def shifted(make_case):
-    """The small recipe with self widths, whose lines reach the grid's middle; a pressure shift is planted."""
-    return make_case()
-
-
 @pytest.mark.parametrize("seed", SEEDS)
 def test_without_a_fault_all_agree(small, seed):
     assert verdicts(small, small.values, seed) == ["agrees", "agrees"]
