@@ -104,6 +104,16 @@ def prepare(
         factor = factor[factor > 0.0]
     used = [factor > 0.0 for factor in factors]
     masses = np.array([one.mass for one in lines.isotopologues] or [1.0])
+    if isinstance(partition_function, Path) and sum(used) > 1:
+        found = ", ".join(one.formula for one, keep in zip(lines.isotopologues, used, strict=True) if keep)
+        raise MoleculeError(
+            problem(
+                f"partition function {partition_function}",
+                "one file serves one isotopologue",
+                found=found,
+                remedy="choose a TIPS edition, or one isotopologue under [isotopologues]",
+            )
+        )
     broadening = resolve_broadening(lines.broadeners, broadeners, defaults or {}, len(lines))
     notes = tuple(Assumption(text, count) for text, count in sorted(lines.ledger.notes.items()))
     return PreparedLines(
@@ -180,6 +190,11 @@ def abundance_factors(isotopologues: tuple[Isotopologue, ...], abundance: str | 
         listed = ", ".join(f"{one.formula} ({one.local})" for one in isotopologues)
         raise InputError(
             problem("abundance", f"no lines of isotopologue {unknown[0]}", expected=listed or "a list with lines")
+        )
+    total = sum(abundance.values())
+    if not abundance or not all(0.0 <= x <= 1.0 for x in abundance.values()) or not total <= 1.0 + 1e-6:
+        raise InputError(
+            problem("abundance", "not fractions", expected="0 to 1 each, sum at most 1", found=dict(abundance))
         )
     return [_fraction(one, abundance) / one.abundance for one in isotopologues]
 

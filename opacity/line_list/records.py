@@ -113,6 +113,8 @@ def _faults(columns: ParsedColumns) -> Iterator[tuple[str, str, NDArray[np.bool_
     yield "molecule number is impossible", f"a whole number from 1 to {MAX_MOLECULE}", impossible
     yield "wavenumber is not above 0", "a positive wavenumber", ~(numbers["wavenumber"] > 0.0)
     yield "strength is negative", "0 or more", numbers["strength"] < 0.0
+    # HITRAN writes -1 for an energy that is not known.
+    yield "lower-state energy is impossible", "-1 or more", numbers["lower_energy"] < -1.0
     if "einstein_a" in numbers:
         yield "Einstein A is negative", "0 or more", numbers["einstein_a"] < 0.0
     for broadener in columns.broadeners:

@@ -33,7 +33,8 @@ STEP = 1.5e-3
 # Upper ends (K), the last tabulated temperature at which an edition is within 1 % of the other, for the edition
 # that is known to be wrong above: there its Q falls against that of a rigid rotor with harmonic oscillators, which
 # a sum over all levels does not (measured; TIPS-2021 O2 is 32 % low and N2O 19 % low at 3000 K, TIPS-2025 CH4
-# 11-29 % low at 2000-2250 K).
+# 11-29 % low at 2000-2250 K).  NO of TIPS-2021 rests on NASA polynomials, which TIPS-2025 meets; for H2CO above 1370 K
+# it is not settled which edition is right, so neither its fall nor the other's is trusted for TIPS-2025.
 _LIMITS = {
     ("TIPS-2021", 4, 1): 1710.0,
     ("TIPS-2021", 7, 1): 750.0,

@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 import os
+import time
 from dataclasses import replace
 from pathlib import Path
 
@@ -20,6 +21,7 @@ from opacity.recipe.load import load_recipe
 from opacity.tables.read import open_table
 
 SHORT = "{ start = 2146.9, stop = 2147.3, step = 0.004 }"
+LONG = "{ start = 2145.0, stop = 2149.0, step = 0.0001 }"
 
 
 def built(path: Path, folder: Path, **options):
@@ -45,10 +47,10 @@ def left_in(folder: Path) -> list[str]:
         ({"nodes": "nodes = [[296.0, 0.1]]", "wavenumber": SHORT}, (1, 101)),
         ({"wavenumber": "{ start = 2147.0, stop = 2147.0, step = 0.004 }"}, (2, 2, 1)),
         # Ten tiles of the kernels and three stored blocks.
-        ({"wavenumber": "{ start = 2145.0, stop = 2149.0, step = 0.0001 }", "nodes": "nodes = [[296.0, 0.1]]"}, (1, 40001)),
+        ({"wavenumber": LONG, "nodes": "nodes = [[296.0, 0.1]]"}, (1, 40001)),
     ],
     ids=["grid", "log grid", "profile", "one node", "one temperature", "one node of a profile", "one point", "blocks"],
-)  # fmt: skip
+)
 def test_every_shape_of_grid_is_built_right(write_recipe, tmp_path, changes, shape):
     path = write_recipe(**changes)
     made = built(path, tmp_path / "out")
@@ -76,10 +78,11 @@ def test_every_shape_of_grid_is_built_right(write_recipe, tmp_path, changes, sha
 
 def test_the_bits_do_not_depend_on_workers_time_or_folder(write_recipe, tmp_path, monkeypatch):
     # More tiles than workers, so that they are really shared out.
-    path = write_recipe(wavenumber="{ start = 2145.0, stop = 2149.0, step = 0.0001 }", nodes="nodes = [[296.0, 0.1]]")
+    path = write_recipe(wavenumber=LONG, nodes="nodes = [[296.0, 0.1]]")
     hashes = set()
-    for workers, folder, clock in ((1, "a", 1e9), (2, "b", 1.5e9), (5, "c", 1.7e9)):
-        monkeypatch.setattr(build_module.time, "time", lambda now=clock: now)
+    for workers, folder in ((1, "a"), (2, "b"), (5, "c")):
+        if hashes:
+            time.sleep(0.6)  # HDF5 can keep whole seconds: three builds are never within one
         monkeypatch.setattr(build_module.platform, "node", lambda name=folder: f"host {name}")
         hashes.add(sha256(built(path, tmp_path / folder / "deep", workers=workers).table))
     assert len(hashes) == 1
