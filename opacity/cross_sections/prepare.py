@@ -12,13 +12,12 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.constants import REFERENCE_TEMPERATURE
 from opacity.errors import InputError, MoleculeError, problem
 from opacity.grids import FloatArray
 from opacity.kernels.line_strength import strength_ratio
 from opacity.kernels.line_width import doppler_half_width, pressure_half_width, shifted_centre
 from opacity.line_list.ledger import Ledger
-from opacity.line_list.model import LineList
+from opacity.line_list.model import LineList, StrengthBasis
 from opacity.molecule import partition_function as pf
 from opacity.molecule.broadening import Assumption, DefaultWidth, LineBroadening, resolve_broadening
 from opacity.molecule.isotopologue import Isotopologue
@@ -44,8 +43,8 @@ class NodeLines:
 class PreparedLines:
     """Lines of one species with the choices of isotopologues, partition function and mixture made.
 
-    Arrays are (n_lines,): `strength` at 296 K in cm/molecule per molecule of the species with the abundances
-    chosen; `mass` g/mol.
+    Arrays are (n_lines,): `strength` in cm/molecule per molecule of the species with the abundances chosen, standing
+    for what `basis` says of each isotopologue; `mass` g/mol.
     """
 
     wavenumber: FloatArray
@@ -54,6 +53,7 @@ class PreparedLines:
     mass: FloatArray
     isotopologue: NDArray[np.int16]
     isotopologues: tuple[Isotopologue, ...]
+    basis: tuple[StrengthBasis, ...]
     partition: tuple[pf.PartitionFunction, ...]
     broadening: LineBroadening
     assumptions: tuple[Assumption, ...]
@@ -64,8 +64,18 @@ class PreparedLines:
 
     def strengths(self, temperature: float) -> FloatArray:
         """S(T) of all lines, cm/molecule, (n_lines,).  Raises MoleculeError where Q is not valid."""
-        ratio = np.array([q(REFERENCE_TEMPERATURE) / q(temperature) for q in self.partition] or [1.0])
-        return self.strength * strength_ratio(self.wavenumber, self.lower_energy, temperature, ratio[self.isotopologue])
+        if not len(self):
+            return np.empty(0)
+        pairs = list(zip(self.partition, self.basis, strict=True))
+        ratio = np.array([(q(one.temperature) if one.holds_partition else 1.0) / q(temperature) for q, one in pairs])
+        reference = np.array([one.temperature for one in self.basis])
+        return self.strength * strength_ratio(
+            self.wavenumber,
+            self.lower_energy,
+            temperature,
+            ratio[self.isotopologue],
+            reference[self.isotopologue] if np.any(reference != reference[0]) else float(reference[0]),
+        )
 
     def at(self, temperature: float, pressure: float, strength: FloatArray | None = None) -> NodeLines:
         """The lines at one node (K, bar); `strength` spares computing S(T) again.
@@ -97,7 +107,7 @@ def prepare(
     Raises InputError for an unknown choice, MoleculeError for widths or partition functions that are not to be had.
     """
     _check_mixture(broadeners)
-    factors = abundance_factors(lines.isotopologues, abundance)
+    factors = abundance_factors(lines.isotopologues, lines.basis, abundance)
     factor = np.array(factors or [0.0])[lines.isotopologue]
     if np.any(factor == 0.0):
         lines = lines.select(factor > 0.0, "isotopologue not in the mixture chosen")
@@ -123,6 +133,7 @@ def prepare(
         mass=masses[lines.isotopologue],
         isotopologue=_renumber(lines.isotopologue, used),
         isotopologues=tuple(one for one, keep in zip(lines.isotopologues, used, strict=True) if keep),
+        basis=tuple(one for one, keep in zip(lines.basis, used, strict=True) if keep),
         partition=tuple(
             partition_of(partition_function, one) for one, keep in zip(lines.isotopologues, used, strict=True) if keep
         ),
@@ -163,21 +174,23 @@ def partition_of(choice: str | Path, isotopologue: Isotopologue) -> pf.Partition
     raise InputError(problem("partition_function", "unknown source", expected=expected, found=f'"{choice}"'))
 
 
-def abundance_factors(isotopologues: tuple[Isotopologue, ...], abundance: str | Mapping[str, float]) -> list[float]:
+def abundance_factors(
+    isotopologues: tuple[Isotopologue, ...], basis: tuple[StrengthBasis, ...], abundance: str | Mapping[str, float]
+) -> list[float]:
     """By what to multiply a list's strengths, isotopologue by isotopologue; 0 leaves its lines out.
 
-    A HITRAN-format strength already holds the terrestrial abundance (HITRAN's definition): it is taken out
-    before another one is applied.
+    What abundance a list's strengths already hold (the terrestrial one in HITRAN format) is taken out before
+    another one is applied.
     """
     if abundance == "terrestrial":
-        return [1.0] * len(isotopologues)
+        return [one.abundance / of.abundance for one, of in zip(isotopologues, basis, strict=True)]
     if abundance == "pure":
         if len(isotopologues) > 1:
             found = ", ".join(one.formula for one in isotopologues)
             raise InputError(
                 problem("abundance", '"pure" needs lines of one isotopologue', expected="one", found=found)
             )
-        return [1.0 / one.abundance for one in isotopologues]
+        return [1.0 / of.abundance for of in basis]
     if isinstance(abundance, str):
         raise InputError(
             problem(
@@ -196,7 +209,7 @@ def abundance_factors(isotopologues: tuple[Isotopologue, ...], abundance: str | 
         raise InputError(
             problem("abundance", "not fractions", expected="0 to 1 each, sum at most 1", found=dict(abundance))
         )
-    return [_fraction(one, abundance) / one.abundance for one in isotopologues]
+    return [_fraction(one, abundance) / of.abundance for one, of in zip(isotopologues, basis, strict=True)]
 
 
 def _fraction(isotopologue: Isotopologue, abundance: Mapping[str, float]) -> float:

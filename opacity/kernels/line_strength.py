@@ -10,14 +10,19 @@ from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION
 Array = NDArray[np.float64]
 
 
-def strength_ratio(wavenumber: Array, lower_energy: Array, temperature: float, partition_ratio: Array) -> Array:
-    """S(T) / S(296 K) of lines, (n_lines,).
+def strength_ratio(
+    wavenumber: Array,
+    lower_energy: Array,
+    temperature: float,
+    partition_ratio: Array,
+    reference: float | Array = REFERENCE_TEMPERATURE,
+) -> Array:
+    """S(T) / S(T0) of lines, (n_lines,).
 
-    S(T)/S0 = Q(T0)/Q(T) exp[-c2 E''(1/T - 1/T0)] [1 - exp(-c2 nu/T)] / [1 - exp(-c2 nu/T0)], T0 = 296 K
+    S(T)/S0 = Q(T0)/Q(T) exp[-c2 E''(1/T - 1/T0)] [1 - exp(-c2 nu/T)] / [1 - exp(-c2 nu/T0)]
     (Rothman et al. 1998, JQSRT 60, 665, appendix).  `wavenumber` and `lower_energy` in cm-1, (n_lines,);
-    `partition_ratio` is Q(T0)/Q(T), (n_lines,).
+    `partition_ratio` is Q(T0)/Q(T), (n_lines,); `reference` is T0, 296 K or (n_lines,).
     """
-    reference = REFERENCE_TEMPERATURE
     boltzmann = np.exp(-SECOND_RADIATION * lower_energy * (1.0 / temperature - 1.0 / reference))
     emission = np.expm1(-SECOND_RADIATION * wavenumber / temperature)
     emission_reference = np.expm1(-SECOND_RADIATION * wavenumber / reference)

@@ -8,18 +8,20 @@ from __future__ import annotations
 
 import json
 import re
+from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from opacity.errors import LineListError, problem
 from opacity.grids import FloatArray
-from opacity.line_list.fields import parse_fields
+from opacity.kernels.text import BLANK, UNREADABLE, read_fields, split_fields
 from opacity.line_list.hitran import parse_fixed
 from opacity.line_list.records import ParsedColumns
-from opacity.line_list.text import read_text, split_records
+from opacity.line_list.text import TextChunk, read_chunks, read_text
 
 _NAMES = {
     "molec_id": "molecule",
@@ -47,31 +49,43 @@ class _Header:
     separator: bytes
 
 
-def parse_hapi_table(path: Path) -> ParsedColumns:
-    """The columns of a local hapi table.  Raises LineListError for a missing or unusable header."""
+def parse_hapi_table(path: Path) -> Iterator[ParsedColumns]:
+    """Columns of a local hapi table, chunk by chunk.  Raises LineListError for a missing or unusable header."""
     header = _read_header(path)
-    records, numbers = split_records(read_text(path))
-    blanks = b" \t".replace(header.separator, b"")
-    parts = [record[header.width :].rstrip(blanks).split(header.separator) for record in records]
-    # Behind the fixed part stands a separator, so that the first part is empty where there are extra columns.
-    count = len(header.extra)
-    whole = np.array(
-        [
-            len(record) >= header.width and len(part) == count + 1 and not part[0].strip()
-            for record, part in zip(records, parts, strict=True)
-        ],
-        dtype=bool,
-    )
-    expected = f"{header.width} characters and {count} extra columns"
-    columns = parse_fixed(path, records, numbers, whole, expected, header.layout, header.width, header.code_byte)
+    for chunk in read_chunks(path):
+        yield _parse_chunk(path, chunk, header)
+
+
+def _parse_chunk(path: Path, chunk: TextChunk, header: _Header) -> ParsedColumns:
+    # Behind the fixed part stands a separator, so that the first field is empty where there are extra columns.
+    count = len(header.extra) + 1
+    long_enough = chunk.stops - chunk.starts >= header.width
+    starts = np.empty((len(chunk), count), dtype=np.int64)
+    stops = np.zeros((len(chunk), count), dtype=np.int64)
+    behind = np.where(long_enough, chunk.starts + header.width, -1)
+    separator = np.frombuffer(header.separator, dtype=np.uint8)
+    split_fields(chunk.buffer, behind, np.where(long_enough, chunk.stops, -1), separator, starts, stops)
+    _, first_field = _read(chunk, starts[:, 0], stops[:, 0])
+    whole = long_enough & (starts[:, 0] >= 0) & (first_field == BLANK)
+    expected = f"{header.width} characters and {count - 1} extra columns"
+    columns = parse_fixed(path, chunk, whole, expected, header.layout, header.code_byte)
     for position, name in enumerate(header.extra, start=1):
-        texts = [part[position] if ok else b"" for part, ok in zip(parts, whole, strict=True)]
         known = _internal_name(name)
         if known is not None:
-            fields = np.array(texts, dtype=np.bytes_) if texts else np.empty(0, dtype="S1")
-            columns.numbers[known], columns.unreadable[known] = parse_fields(fields)
+            field_starts = np.where(whole, starts[:, position], -1)
+            values, status = _read(chunk, field_starts, stops[:, position])
+            columns.numbers[known] = values
+            columns.unreadable[known] = status == UNREADABLE
     _complete_broadeners(columns)
     return columns
+
+
+def _read(
+    chunk: TextChunk, starts: NDArray[np.int64], stops: NDArray[np.int64]
+) -> tuple[FloatArray, NDArray[np.uint8]]:
+    values, status = np.empty(len(chunk)), np.empty(len(chunk), dtype=np.uint8)
+    read_fields(chunk.buffer, np.ascontiguousarray(starts), np.ascontiguousarray(stops), values, status)
+    return values, status
 
 
 def _internal_name(name: str) -> str | None:
@@ -81,7 +95,7 @@ def _internal_name(name: str) -> str | None:
 
 def _complete_broadeners(columns: ParsedColumns) -> None:
     broadeners = sorted({name.split("_", 1)[1] for name in columns.numbers if name.startswith("gamma_")})
-    nothing: FloatArray = np.full(len(columns.raw), np.nan)
+    nothing: FloatArray = np.full(len(columns.text), np.nan)
     for name in broadeners:
         for kind in ("exponent", "shift"):
             columns.numbers.setdefault(f"{kind}_{name}", nothing)

@@ -2,14 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Mapping
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.line_list.fields import parse_column
+from opacity.kernels.text import UNREADABLE, read_fixed_column, wide_enough
 from opacity.line_list.records import ParsedColumns
-from opacity.line_list.text import read_text, split_records
+from opacity.line_list.text import TextChunk, read_chunks
 
 RECORD_LENGTH = 160
 
@@ -30,41 +31,43 @@ LAYOUT = {
 CODE_BYTE = 2
 
 
-def parse_hitran(path: Path) -> ParsedColumns:
-    """The columns of a file of 160-character records, plain, .gz or .bz2; blanks after the record do no harm."""
-    records, numbers = split_records(read_text(path))
-    whole = np.array([_has_length(record) for record in records], dtype=bool)
-    return parse_fixed(path, records, numbers, whole, f"{RECORD_LENGTH} characters", LAYOUT, RECORD_LENGTH)
+def parse_hitran(path: Path) -> Iterator[ParsedColumns]:
+    """Columns of a file of 160-character records, chunk by chunk; blanks after the record do no harm."""
+    for chunk in read_chunks(path):
+        yield parse_hitran_chunk(path, chunk)
 
 
-def _has_length(record: bytes) -> bool:
-    return len(record) >= RECORD_LENGTH and not record[RECORD_LENGTH:].strip(b" \t")
+def parse_hitran_chunk(path: Path, chunk: TextChunk) -> ParsedColumns:
+    """The columns of some records."""
+    whole = np.empty(len(chunk), dtype=np.bool_)
+    wide_enough(chunk.buffer, chunk.starts, chunk.stops, RECORD_LENGTH, whole)
+    columns = parse_fixed(path, chunk, whole, f"{RECORD_LENGTH} characters", LAYOUT)
+    for name in ("exponent_self", "shift_self"):
+        columns.numbers[name] = np.full(len(chunk), np.nan)
+    return columns
 
 
 def parse_fixed(
     path: Path,
-    records: list[bytes],
-    line_numbers: list[int],
+    chunk: TextChunk,
     whole: NDArray[np.bool_],
     expected: str,
-    layout: dict[str, tuple[int, int]],
-    width: int,
+    layout: Mapping[str, tuple[int, int]],
     code_byte: int = CODE_BYTE,
 ) -> ParsedColumns:
-    """Columns of fixed width from records; a record that is not `whole` gets blanks instead of its numbers."""
-    blank = b" " * width
-    text = b"".join(record[:width] if ok else blank for record, ok in zip(records, whole, strict=True))
-    block = np.frombuffer(text, dtype=np.uint8).reshape(len(records), width)
+    """Columns of fixed width; a record that is not `whole` counts as blank."""
+    starts = chunk.starts if whole.all() else np.where(whole, chunk.starts, -1)
     numbers, unreadable = {}, {}
-    for name, (start, stop) in layout.items():
-        numbers[name], unreadable[name] = parse_column(block, start, stop)
-    for name in ("exponent_self", "shift_self"):
-        numbers.setdefault(name, np.full(len(records), np.nan))
-    code = np.ascontiguousarray(block[:, code_byte : code_byte + 1]).view("S1")[:, 0]
+    for name, (first, last) in layout.items():
+        values, status = np.empty(len(chunk)), np.empty(len(chunk), dtype=np.uint8)
+        read_fixed_column(chunk.buffer, starts, first, last, values, status)
+        numbers[name] = values
+        if np.any(status == UNREADABLE):
+            unreadable[name] = status == UNREADABLE
+    code = chunk.buffer[np.where(whole, chunk.starts + code_byte, 0)] if len(chunk) else chunk.buffer[:0]
     return ParsedColumns(
         path=path,
-        line=np.array(line_numbers, dtype=np.int64),
-        raw=records,
+        text=chunk,
         numbers=numbers,
         unreadable=unreadable,
         code=code,

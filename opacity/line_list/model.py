@@ -14,11 +14,25 @@ from opacity.molecule.isotopologue import Isotopologue
 
 
 @dataclass(frozen=True)
+class StrengthBasis:
+    """What a list's strengths stand for, isotopologue by isotopologue.
+
+    `temperature` K, at which they hold; `holds_partition` whether they are divided by Q at that temperature;
+    `abundance` the isotopologue's abundance that they are multiplied with (1 for none).
+    HITRAN: 296 K, divided, terrestrial.  From A coefficients: not divided, none.  JPL/CDMS: 300 K, divided, none.
+    """
+
+    temperature: float
+    holds_partition: bool
+    abundance: float
+
+
+@dataclass(frozen=True)
 class LineList:
     """A line list as columns, sorted by wavenumber; every array is (n_lines,).
 
-    `wavenumber` cm-1; `strength` cm/molecule at 296 K, of the mixture of isotopologues that the list was made
-    for (terrestrial in HITRAN format); `lower_energy` cm-1; `einstein_a` s-1 and the weights `upper_weight`,
+    `wavenumber` cm-1; `strength` cm/molecule, standing for what `basis` says of each isotopologue (in HITRAN
+    format at 296 K with terrestrial abundance); `lower_energy` cm-1; `einstein_a` s-1 and the weights `upper_weight`,
     `lower_weight` NaN where not given; `isotopologue` index into `isotopologues`; `broadeners` by lower-case
     name, in cm-1/bar; `record` the line number in its file and `file` the index into `files`.
     """
@@ -31,6 +45,7 @@ class LineList:
     lower_weight: FloatArray
     isotopologue: NDArray[np.int16]
     isotopologues: tuple[Isotopologue, ...]
+    basis: tuple[StrengthBasis, ...]
     broadeners: dict[str, BroadenerColumns]
     record: NDArray[np.int64]
     file: NDArray[np.int16]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
 
 import numpy as np
@@ -13,12 +13,12 @@ from opacity.grids import FloatArray
 from opacity.line_list.hapi_table import parse_hapi_table
 from opacity.line_list.hitran import parse_hitran
 from opacity.line_list.ledger import Ledger
-from opacity.line_list.model import LineList
+from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.records import ParsedColumns, ReadOptions, judge
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
 
-READERS: dict[str, Callable[[Path], ParsedColumns]] = {"hitran": parse_hitran, "hapi": parse_hapi_table}
+READERS: dict[str, Callable[[Path], Iterator[ParsedColumns]]] = {"hitran": parse_hitran, "hapi": parse_hapi_table}
 
 
 def read_lines(
@@ -59,13 +59,24 @@ def read_lines(
 
 
 def _read_one(path: Path, format: str | None, options: ReadOptions) -> LineList:
-    columns = _reader(path, format)(path)
-    if not columns.raw:
+    return merge(list(read_batches(path, format, options)))
+
+
+def read_batches(path: Path, format: str | None, options: ReadOptions) -> Iterator[LineList]:
+    """The lines of one file, batch by batch in the order of the file, each sorted by wavenumber.
+
+    Raises LineListError for a record that can't be right, or a file that holds none.
+    """
+    empty = True
+    for columns in _reader(path, format)(path):
+        if len(columns.text):
+            empty = False
+            yield judge(columns, options)
+    if empty:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
-    return judge(columns, options)
 
 
-def _reader(path: Path, format: str | None) -> Callable[[Path], ParsedColumns]:
+def _reader(path: Path, format: str | None) -> Callable[[Path], Iterator[ParsedColumns]]:
     chosen = format or ("hapi" if path.suffix == ".data" else "hitran")
     if chosen not in READERS:
         expected = " or ".join(f'"{name}"' for name in READERS)
@@ -77,16 +88,18 @@ def merge(lists: Sequence[LineList]) -> LineList:
     """One list from several, sorted by wavenumber; lines of equal wavenumber keep the order of the files."""
     if len(lists) == 1:
         return lists[0]
-    known: list[Isotopologue] = []
+    known: list[tuple[Isotopologue, StrengthBasis]] = []
     files: list[str] = []
     index, file = [], []
     ledger = Ledger()
     for one in lists:
-        known += [iso for iso in one.isotopologues if iso not in known]
-        place = np.array([known.index(iso) for iso in one.isotopologues] or [0], dtype=np.int16)
+        pairs = list(zip(one.isotopologues, one.basis, strict=True))
+        known += [pair for pair in pairs if pair not in known]
+        place = np.array([known.index(pair) for pair in pairs] or [0], dtype=np.int16)
         index.append(place[one.isotopologue] if len(one) else one.isotopologue)
-        file.append((one.file + len(files)).astype(np.int16))
-        files += one.files
+        files += [name for name in one.files if name not in files]
+        number = np.array([files.index(name) for name in one.files], dtype=np.int16)
+        file.append(number[one.file] if len(one) else one.file)
         ledger.add(one.ledger)
     wavenumber = np.concatenate([one.wavenumber for one in lists])
     order = np.argsort(wavenumber, kind="stable")
@@ -103,7 +116,8 @@ def merge(lists: Sequence[LineList]) -> LineList:
         upper_weight=column("upper_weight"),
         lower_weight=column("lower_weight"),
         isotopologue=np.concatenate(index)[order],
-        isotopologues=tuple(known),
+        isotopologues=tuple(one for one, _ in known),
+        basis=tuple(basis for _, basis in known),
         broadeners={name: _merge_broadener(name, lists, order) for name in names},
         record=np.concatenate([one.record for one in lists])[order],
         file=np.concatenate(file)[order],

@@ -14,11 +14,12 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.constants import STANDARD_ATMOSPHERE
+from opacity.constants import REFERENCE_TEMPERATURE, STANDARD_ATMOSPHERE
 from opacity.errors import LineListError, MoleculeError, problem
 from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
-from opacity.line_list.model import LineList
+from opacity.line_list.model import LineList, StrengthBasis
+from opacity.line_list.text import TextChunk
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import LOCAL_CODES, Isotopologue, isotopologue, molecule_is_known
 
@@ -30,19 +31,18 @@ _NOT_TEXT = re.compile(rb"[^\t\x20-\x7e]")
 
 @dataclass
 class ParsedColumns:
-    """Columns of one file as read, in the list's own units; masks say what could not be read.
+    """Columns of some records of a file, in the list's own units; masks say what could not be read.
 
     `numbers` by name (each (n,)): molecule, wavenumber, strength, einstein_a, lower_energy, upper_weight,
     lower_weight and, for each broadener b, gamma_b, exponent_b, shift_b (per atm).  `code` is the
-    isotopologue's one-character code.  `whole` is false where the record has the wrong length.
+    byte of the isotopologue's one-character code.  `whole` is false where the record has the wrong length.
     """
 
     path: Path
-    line: NDArray[np.int64]
-    raw: list[bytes]
+    text: TextChunk
     numbers: dict[str, FloatArray]
     unreadable: dict[str, NDArray[np.bool_]]
-    code: NDArray[np.bytes_]
+    code: NDArray[np.uint8]
     whole: NDArray[np.bool_]
     length_expected: str
     broadeners: tuple[str, ...]
@@ -60,9 +60,9 @@ class ReadOptions:
 
 
 def judge(columns: ParsedColumns, options: ReadOptions) -> LineList:
-    """The lines of one file.  Raises LineListError for the first record that can't be right, unless left out."""
-    ledger = Ledger(read=len(columns.raw))
-    good = np.ones(len(columns.raw), dtype=bool)
+    """The lines among some records.  Raises LineListError for the first record that can't be right, unless left out."""
+    ledger = Ledger(read=len(columns.text))
+    good = np.ones(len(columns.text), dtype=bool)
     found: list[tuple[int, str, str]] = []
     for reason, expected, bad in _faults(columns):
         fresh = bad & good
@@ -86,21 +86,21 @@ def judge(columns: ParsedColumns, options: ReadOptions) -> LineList:
 
 def _first_problem(columns: ParsedColumns, first: tuple[int, str, str], bad: int) -> str:
     row, reason, expected = first
-    text = _NOT_TEXT.sub(b"?", columns.raw[row][:70]).decode("ascii").replace("\t", " ")
+    raw = columns.text.record(row)
+    text = _NOT_TEXT.sub(b"?", raw[:70]).decode("ascii").replace("\t", " ")
     return problem(
-        f"{columns.path}:{columns.line[row]}",
+        f"{columns.path}:{columns.text.line[row]}",
         reason,
         expected=expected,
-        found=f'"{text}..."' if len(columns.raw[row]) > 70 else f'"{text}"',
-        remedy=f'{bad} of {len(columns.raw)} records are unusable: mend the list, or set bad_records = "leave-out"',
+        found=f'"{text}..."' if len(raw) > 70 else f'"{text}"',
+        remedy=f'{bad} of {len(columns.text)} records are unusable: mend the list, or set bad_records = "leave-out"',
     )
 
 
 def _faults(columns: ParsedColumns) -> Iterator[tuple[str, str, NDArray[np.bool_]]]:
     numbers = columns.numbers
     yield "record of the wrong length", columns.length_expected, ~columns.whole
-    plain = np.array([_NOT_TEXT.search(record) is None for record in columns.raw], dtype=bool)
-    yield "record with bytes that are no text", "printable ASCII characters", ~plain
+    yield "record with bytes that are no text", "printable ASCII characters", ~columns.text.plain
     yield from columns.faults
     for name, unreadable in columns.unreadable.items():
         yield f"{_words(name)} is not a number", "digits", unreadable
@@ -141,7 +141,7 @@ def _isotopologues(
     for number in np.unique(molecules[good]):
         for code in np.unique(columns.code[good & (molecules == number)]):
             rows = good & (molecules == number) & (columns.code == code)
-            one = _one_isotopologue(int(number), bytes(code).decode("latin-1"), options)
+            one = _one_isotopologue(int(number), chr(code), options)
             if one is None:
                 unknown |= rows
             elif options.formula is not None and one.molecule_formula != options.formula:
@@ -215,8 +215,10 @@ def _build(
         lower_weight=numbers.get("lower_weight", nothing)[order],
         isotopologue=index[order],
         isotopologues=known,
+        # Rothman et al. 1998: strengths at 296 K, weighted by terrestrial abundance.
+        basis=tuple(StrengthBasis(REFERENCE_TEMPERATURE, True, one.abundance) for one in known),
         broadeners=broadeners,
-        record=columns.line[order],
+        record=columns.text.line[order],
         file=np.zeros(order.size, dtype=np.int16),
         files=(str(columns.path),),
         ledger=ledger,

@@ -6,7 +6,7 @@ import numpy as np
 
 from opacity.cross_sections.prepare import NodeLines
 from opacity.line_list.ledger import Ledger
-from opacity.line_list.model import LineList
+from opacity.line_list.model import LineList, StrengthBasis
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
 
@@ -38,6 +38,7 @@ def line_list(
         lower_weight=nothing,
         isotopologue=np.zeros(nu.size, dtype=np.int16),
         isotopologues=(CARBON_MONOXIDE,),
+        basis=(StrengthBasis(296.0, True, CARBON_MONOXIDE.abundance),),
         broadeners={"air": BroadenerColumns(column(gamma), column(exponent), column(shift))},
         record=np.arange(nu.size, dtype=np.int64),
         file=np.zeros(nu.size, dtype=np.int16),

@@ -13,7 +13,7 @@ from opacity.cross_sections.prepare import abundance_factors, prepare
 from opacity.errors import InputError, MoleculeError
 from opacity.kernels.line_strength import strength_from_einstein_a
 from opacity.line_list.ledger import Ledger
-from opacity.line_list.model import LineList
+from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.read import read_lines
 from opacity.molecule.broadening import BroadenerColumns, DefaultWidth
 from opacity.molecule.hapi_tables import hapi
@@ -49,6 +49,7 @@ def made_list(isotopologues=CO, index=ISO):
         lower_weight=nothing,
         isotopologue=np.asarray(index, dtype=np.int16),
         isotopologues=isotopologues,
+        basis=tuple(StrengthBasis(296.0, True, one.abundance) for one in isotopologues),
         broadeners={"air": BroadenerColumns(**AIR), "h2": BroadenerColumns(**H2), "self": BroadenerColumns(**SELF)},
         record=np.arange(1, 7),
         file=np.zeros(6, dtype=np.int16),
@@ -200,7 +201,8 @@ def test_abundances_that_cannot_be_used(abundance, message):
 
 def test_a_molecule_that_is_not_known_keeps_its_strengths():
     one = Isotopologue(99, 1, "X(2Y)", "XY", 50.0, 1.0, known=False)
-    assert abundance_factors((one,), "pure") == abundance_factors((one,), "terrestrial") == [1.0]
+    basis = (StrengthBasis(296.0, True, 1.0),)
+    assert abundance_factors((one,), basis, "pure") == abundance_factors((one,), basis, "terrestrial") == [1.0]
 
 
 @pytest.mark.parametrize(

@@ -156,10 +156,10 @@ def test_a_file_without_permission_is_refused(record, write_par):
 def test_a_read_that_fails_is_refused(record, write_par, monkeypatch):
     path = write_par(records(record))
 
-    def fails(self):
+    def fails(*arguments):
         raise PermissionError(13, "Permission denied")
 
-    monkeypatch.setattr(type(path), "read_bytes", fails)
+    monkeypatch.setattr("opacity.line_list.text.open", fails, raising=False)
     refused(path, "cannot be read (Permission denied)")
 
 
