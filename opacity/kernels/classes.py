@@ -9,7 +9,9 @@ from opacity.kernels.jit import jit_exact
 
 
 @jit_exact
-def classify(rows: NDArray[np.uint64], slots: NDArray[np.int64], first: NDArray[np.int64], out: NDArray[np.uint32]) -> int:
+def classify(
+    rows: NDArray[np.uint64], slots: NDArray[np.int64], first: NDArray[np.int64], out: NDArray[np.uint32]
+) -> int:
     """Number equal rows alike, in order of first appearance; the number of classes.
 
     `rows` (n, k) as bits; `slots` is work space, all -1, its length a power of two above n; `first` (n,) receives the

@@ -8,8 +8,9 @@ from __future__ import annotations
 
 import json
 import re
-from collections.abc import Iterator
+from collections.abc import Callable
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -21,7 +22,7 @@ from opacity.grids import FloatArray
 from opacity.kernels.text import BLANK, UNREADABLE, read_fields, split_fields
 from opacity.line_list.hitran import parse_fixed
 from opacity.line_list.records import ParsedColumns
-from opacity.line_list.text import TextChunk, read_chunks, read_text
+from opacity.line_list.text import TextChunk, read_text
 
 _NAMES = {
     "molec_id": "molecule",
@@ -49,14 +50,12 @@ class _Header:
     separator: bytes
 
 
-def parse_hapi_table(path: Path) -> Iterator[ParsedColumns]:
-    """Columns of a local hapi table, chunk by chunk.  Raises LineListError for a missing or unusable header."""
-    header = _read_header(path)
-    for chunk in read_chunks(path):
-        yield _parse_chunk(path, chunk, header)
+def hapi_parser(path: Path) -> Callable[[TextChunk], ParsedColumns]:
+    """What makes columns of some records of a hapi table.  Raises LineListError for a missing or unusable header."""
+    return partial(_parse, path, _read_header(path))
 
 
-def _parse_chunk(path: Path, chunk: TextChunk, header: _Header) -> ParsedColumns:
+def _parse(path: Path, header: _Header, chunk: TextChunk) -> ParsedColumns:
     # Behind the fixed part stands a separator, so that the first field is empty where there are extra columns.
     count = len(header.extra) + 1
     long_enough = chunk.stops - chunk.starts >= header.width

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Mapping
+from functools import partial
 from pathlib import Path
 
 import numpy as np
@@ -10,7 +11,7 @@ from numpy.typing import NDArray
 
 from opacity.kernels.text import UNREADABLE, read_fixed_column, wide_enough
 from opacity.line_list.records import ParsedColumns
-from opacity.line_list.text import TextChunk, read_chunks
+from opacity.line_list.text import TextChunk
 
 RECORD_LENGTH = 160
 
@@ -31,14 +32,12 @@ LAYOUT = {
 CODE_BYTE = 2
 
 
-def parse_hitran(path: Path) -> Iterator[ParsedColumns]:
-    """Columns of a file of 160-character records, chunk by chunk; blanks after the record do no harm."""
-    for chunk in read_chunks(path):
-        yield parse_hitran_chunk(path, chunk)
+def hitran_parser(path: Path) -> Callable[[TextChunk], ParsedColumns]:
+    """What makes columns of some 160-character records of a file; blanks after the record do no harm."""
+    return partial(_parse, path)
 
 
-def parse_hitran_chunk(path: Path, chunk: TextChunk) -> ParsedColumns:
-    """The columns of some records."""
+def _parse(path: Path, chunk: TextChunk) -> ParsedColumns:
     whole = np.empty(len(chunk), dtype=np.bool_)
     wide_enough(chunk.buffer, chunk.starts, chunk.stops, RECORD_LENGTH, whole)
     columns = parse_fixed(path, chunk, whole, f"{RECORD_LENGTH} characters", LAYOUT)

@@ -33,6 +33,11 @@ class Ledger:
             self.kept -= count
             self.left_out[reason] += count
 
+    @staticmethod
+    def from_dict(values: dict[str, Any]) -> Ledger:
+        """The account that `as_dict` described."""
+        return Ledger(int(values["read"]), int(values["kept"]), Counter(values["left_out"]), Counter(values["notes"]))
+
     def as_dict(self) -> dict[str, Any]:
         """The account as plain values for JSON, reasons in alphabetical order."""
         return {

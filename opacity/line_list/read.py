@@ -10,15 +10,18 @@ from numpy.typing import NDArray
 
 from opacity.errors import InputError, LineListError, problem
 from opacity.grids import FloatArray
-from opacity.line_list.hapi_table import parse_hapi_table
-from opacity.line_list.hitran import parse_hitran
+from opacity.line_list.hapi_table import hapi_parser
+from opacity.line_list.hitran import hitran_parser
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.records import ParsedColumns, ReadOptions, judge
+from opacity.line_list.text import TextChunk, read_chunks
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
 
-READERS: dict[str, Callable[[Path], Iterator[ParsedColumns]]] = {"hitran": parse_hitran, "hapi": parse_hapi_table}
+Parser = Callable[[TextChunk], ParsedColumns]
+
+READERS: dict[str, Callable[[Path], Parser]] = {"hitran": hitran_parser, "hapi": hapi_parser}
 
 
 def read_lines(
@@ -68,20 +71,22 @@ def read_batches(path: Path, format: str | None, options: ReadOptions) -> Iterat
     Raises LineListError for a record that can't be right, or a file that holds none.
     """
     empty = True
-    for columns in _reader(path, format)(path):
-        if len(columns.text):
+    parse = parser_of(path, format)
+    for chunk in read_chunks(path):
+        if len(chunk):
             empty = False
-            yield judge(columns, options)
+            yield judge(parse(chunk), options)
     if empty:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
 
 
-def _reader(path: Path, format: str | None) -> Callable[[Path], Iterator[ParsedColumns]]:
+def parser_of(path: Path, format: str | None) -> Parser:
+    """The parser of a file's chunks, by format, or by the file's ending where it is None."""
     chosen = format or ("hapi" if path.suffix == ".data" else "hitran")
     if chosen not in READERS:
         expected = " or ".join(f'"{name}"' for name in READERS)
         raise InputError(problem("format", "unknown line-list format", expected=expected, found=f'"{chosen}"'))
-    return READERS[chosen]
+    return READERS[chosen](path)
 
 
 def merge(lists: Sequence[LineList]) -> LineList:

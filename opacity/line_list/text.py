@@ -31,6 +31,7 @@ class TextChunk:
     """Lines of a text that are not blank: line i is `buffer[starts[i]:stops[i]]`, without its line end.
 
     `line` holds the line numbers in the file, `plain` whether a line is printable ASCII throughout; all (n,).
+    `read` is how many bytes of the file, compressed or not, had been read by the end of the chunk.
     """
 
     buffer: NDArray[np.uint8]
@@ -38,6 +39,7 @@ class TextChunk:
     stops: NDArray[np.int64]
     line: NDArray[np.int64]
     plain: NDArray[np.bool_]
+    read: int = 0
 
     def __len__(self) -> int:
         return int(self.starts.size)
@@ -53,7 +55,7 @@ def read_chunks(path: Path, size: int = CHUNK) -> Iterator[TextChunk]:
     Raises LineListError naming the file where it cannot be read, is damaged, or is no text of lines.
     """
     number = 1
-    for block in _whole_lines(path, size):
+    for block, read in _whole_lines(path, size):
         buffer = np.frombuffer(block, dtype=np.uint8)
         newlines = count_newlines(buffer)
         room = newlines + 1
@@ -61,36 +63,36 @@ def read_chunks(path: Path, size: int = CHUNK) -> Iterator[TextChunk]:
         plain = np.empty(room, dtype=np.bool_)
         count = find_lines(buffer, number, starts, stops, line, plain)
         number += newlines
-        yield TextChunk(buffer, starts[:count], stops[:count], line[:count], plain[:count])
+        yield TextChunk(buffer, starts[:count], stops[:count], line[:count], plain[:count], read)
 
 
 def read_text(path: Path) -> bytes:
     """All bytes of a small file, decompressed by its ending.  Raises LineListError naming the file."""
-    return b"".join(_blocks(path, CHUNK))
+    return b"".join(block for block, _ in _blocks(path, CHUNK))
 
 
-def _whole_lines(path: Path, size: int) -> Iterator[bytes]:
-    rest = b""
-    for block in _blocks(path, size):
+def _whole_lines(path: Path, size: int) -> Iterator[tuple[bytes, int]]:
+    rest, read = b"", 0
+    for block, read in _blocks(path, size):
         cut = block.rfind(b"\n") + 1
         if not cut:
             rest += block
             if len(rest) > max(size, LONGEST_LINE):
                 raise LineListError(problem(path, f"no line end in {len(rest)} bytes", expected="a text of lines"))
             continue
-        yield rest + block[:cut]
+        yield rest + block[:cut], read
         rest = block[cut:]
     if rest:
-        yield rest
+        yield rest, read
 
 
-def _blocks(path: Path, size: int) -> Iterator[bytes]:
-    """Blocks of decompressed bytes; every way of failing becomes a LineListError."""
+def _blocks(path: Path, size: int) -> Iterator[tuple[bytes, int]]:
+    """Blocks of decompressed bytes, and how far into the file they go; every way of failing becomes a LineListError."""
     suffix = path.suffix.lower()
     try:
         with open(path, "rb") as file, _opened(path, file, suffix) as reader:
             while block := reader.read(size):
-                yield block
+                yield block, reader.tell() if suffix == ".bz2" else file.tell()
     except (EOFError, zlib.error, gzip.BadGzipFile, ValueError, RuntimeError) as error:
         raise LineListError(
             problem(path, f"damaged or cut {path.suffix} file ({_one_line(error)})", remedy="fetch the file again")
@@ -133,6 +135,10 @@ class _ParallelBunzip2:
             raise EOFError("bytes behind its end that are no bz2")
         return block
 
+    def tell(self) -> int:
+        """Bytes of the file that have been decompressed, about."""
+        return int(self._file.tell_compressed()) // 8
+
     def close(self) -> None:
         """Close the reader."""
         self._file.close()
@@ -144,6 +150,10 @@ class _Bunzip2:
     def __init__(self, file: BinaryIO) -> None:
         self._file = file
         self._stream: Any = None
+
+    def tell(self) -> int:
+        """Bytes of the file that have been read."""
+        return self._file.tell()
 
     def read(self, size: int) -> bytes:
         """Up to `size` bytes, none at the end.  Raises EOFError where the file is cut."""

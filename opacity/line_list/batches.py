@@ -1,0 +1,98 @@
+"""A list of any size as packed batches in the order of its file, made by several threads and taken in order."""
+
+from __future__ import annotations
+
+from collections import deque
+from collections.abc import Callable, Iterable, Iterator
+from concurrent.futures import Executor, Future
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import TypeVar
+
+import numpy as np
+
+from opacity.errors import LineListError, problem
+from opacity.line_list.ledger import Ledger
+from opacity.line_list.model import StrengthBasis
+from opacity.line_list.packed import PackedLines, pack
+from opacity.line_list.read import parser_of
+from opacity.line_list.records import ReadOptions, judge
+from opacity.line_list.text import TextChunk, read_chunks
+from opacity.molecule.isotopologue import Isotopologue
+
+Item = TypeVar("Item")
+Result = TypeVar("Result")
+
+IN_FLIGHT = 4
+
+
+@dataclass(frozen=True)
+class Batch:
+    """Some lines of a file: packed, with the isotopologues that their classes point to, and the account of them.
+
+    `read` is how many bytes of the file had been read by the end of the batch.
+    """
+
+    packed: PackedLines
+    isotopologues: tuple[Isotopologue, ...]
+    basis: tuple[StrengthBasis, ...]
+    ledger: Ledger
+    read: int = 0
+
+
+def record_batches(
+    path: Path,
+    format: str,
+    options: ReadOptions,
+    range: tuple[float, float] | None,
+    executor: Executor | None,
+) -> Iterator[Batch]:
+    """The lines of a file of records ("hitran" or "hapi").
+
+    Raises LineListError for the first record that can't be right, or a file that holds none.
+    """
+    parse = parser_of(path, format)
+
+    def work(chunk: TextChunk) -> Batch:
+        lines = judge(parse(chunk), options)
+        if range is not None:
+            within = (lines.wavenumber >= range[0]) & (lines.wavenumber <= range[1])
+            lines = lines.select(within, "outside the range asked for")
+        return Batch(pack(lines), lines.isotopologues, lines.basis, lines.ledger, chunk.read)
+
+    empty = True
+    for batch in in_order(work, (chunk for chunk in read_chunks(path) if len(chunk)), executor):
+        empty = False
+        yield batch
+    if empty:
+        raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
+
+
+def in_order(work: Callable[[Item], Result], items: Iterable[Item], executor: Executor | None) -> Iterator[Result]:
+    """The results of `work` in the order of the items, a few of them being made at the same time."""
+    if executor is None:
+        yield from map(work, items)
+        return
+    waiting: deque[Future[Result]] = deque()
+    try:
+        for item in items:
+            waiting.append(executor.submit(work, item))
+            if len(waiting) >= IN_FLIGHT:
+                yield waiting.popleft().result()
+        while waiting:
+            yield waiting.popleft().result()
+    finally:
+        for future in waiting:
+            future.cancel()
+
+
+def renumbered(packed: PackedLines, isotopologue: list[int], file: int) -> PackedLines:
+    """The lines with their classes' isotopologues numbered anew and all in one file."""
+    classes = packed.classes
+    place = np.array(isotopologue or [0], dtype=np.int16)
+    changed = replace(
+        classes,
+        isotopologue=place[classes.isotopologue],
+        file=np.full(len(classes), file, dtype=np.int16),
+    )
+    return replace(packed, classes=changed)

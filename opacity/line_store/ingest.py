@@ -1,0 +1,209 @@
+"""From input files to a line store, with bounded memory; an ingest that was interrupted goes on file by file."""
+
+from __future__ import annotations
+
+import json
+import shutil
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from opacity.errors import LineListError, ResourceError, problem
+from opacity.line_list.batches import Batch, renumbered
+from opacity.line_list.ledger import Ledger
+from opacity.line_list.model import StrengthBasis
+from opacity.line_list.packed import PackedLines, join
+from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, PARTS, SEGMENT_LINES, Segment
+from opacity.line_store.merge import merged
+from opacity.line_store.segment import write_segment
+from opacity.molecule.isotopologue import Isotopologue
+from opacity.provenance import file_sha256
+from opacity.tables.atomic import write_atomically
+
+BYTES_A_LINE = 120
+"""Packed lines being joined, sorted and written: columns, their sorted copy, the file's image, and room to spare."""
+
+Progress = Callable[[int, int], None]
+
+
+@dataclass(frozen=True)
+class InputFile:
+    """One file to ingest: `batches` reads it; `beside` are files that its lines depend on too (a header, states)."""
+
+    path: Path
+    batches: Callable[[], Iterator[Batch]]
+    beside: tuple[Path, ...] = ()
+
+
+def identity(one: InputFile) -> dict[str, Any]:
+    """Name, size, time of change and sha256 of an input and of what lies beside it."""
+    return {"files": [_file_identity(path) for path in (one.path, *one.beside)]}
+
+
+def _file_identity(path: Path) -> dict[str, Any]:
+    try:
+        status = path.stat()
+    except OSError as error:
+        raise LineListError(problem(path, f"cannot be read ({error.strerror})")) from error
+    return {"file": path.name, "size": status.st_size, "mtime_ns": status.st_mtime_ns, "sha256": file_sha256(path)}
+
+
+def same_content(one: InputFile, known: dict[str, Any]) -> bool:
+    """Whether an input is what it was: sizes and times of change, or failing the times its sha256."""
+    paths, before = (one.path, *one.beside), known.get("files", [])
+    if len(paths) != len(before):
+        return False
+    for path, entry in zip(paths, before, strict=True):
+        try:
+            status = path.stat()
+        except OSError:
+            return False
+        if path.name != entry.get("file") or status.st_size != entry.get("size"):
+            return False
+        if status.st_mtime_ns != entry.get("mtime_ns") and file_sha256(path) != entry.get("sha256"):
+            return False
+    return True
+
+
+def ingest(folder: Path, inputs: list[InputFile], key: str, memory: int, progress: Progress) -> None:
+    """Make the store in `folder` from the inputs.
+
+    `key` says how the inputs are read; `memory` bounds what is held, in bytes; `progress(records, bytes read)` is
+    called as records are read.  Raises LineListError for what can't be right, ResourceError where the disk refuses.
+    """
+    parts = folder / PARTS
+    try:
+        parts.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise ResourceError(problem(parts, f"the line store's folder cannot be made ({error.strerror})")) from error
+    lines_at_once = max(memory // 3 // BYTES_A_LINE, 1 << 14)
+    manifests = [_ingest_file(parts, number, one, key, lines_at_once, progress) for number, one in enumerate(inputs)]
+    _finish(folder, manifests, key, lines_at_once)
+    shutil.rmtree(parts, ignore_errors=True)
+
+
+def _ingest_file(
+    parts: Path, number: int, one: InputFile, key: str, lines_at_once: int, progress: Progress
+) -> dict[str, Any]:
+    """The manifest of one file's sorted parts, made anew unless it is there from an interrupted ingest."""
+    manifest_path = parts / f"{number:05d}.json"
+    kept = _read_json(manifest_path)
+    if kept is not None and kept.get("key") == key and same_content(one, kept.get("identity", {})):
+        progress(int(kept["ledger"]["read"]), one.path.stat().st_size)
+        return kept
+    known: list[tuple[Isotopologue, StrengthBasis]] = []
+    segments: list[Segment] = []
+    ledger = Ledger()
+    names: set[str] = set()
+    waiting: list[PackedLines] = []
+    position = 0
+    for batch in one.batches():
+        ledger.add(batch.ledger)
+        pairs = list(zip(batch.isotopologues, batch.basis, strict=True))
+        known += [pair for pair in pairs if pair not in known]
+        waiting.append(renumbered(batch.packed, [known.index(pair) for pair in pairs], number))
+        names |= set(batch.packed.classes.broadeners)
+        if sum(_weight(part) for part in waiting) >= lines_at_once:
+            segments += _write_run(parts, f"{number:05d}-{len(segments):06d}", waiting)
+            waiting = []
+        progress(batch.ledger.read, max(batch.read - position, 0))
+        position = max(batch.read, position)
+    segments += _write_run(parts, f"{number:05d}-{len(segments):06d}", waiting)
+    if not ledger.adds_up():
+        raise LineListError(problem(one.path, "the account of its records does not add up", found=ledger.as_dict()))
+    manifest = {
+        "key": key,
+        "identity": identity(one),
+        "ledger": ledger.as_dict(),
+        "isotopologues": [iso.__dict__ for iso, _ in known],
+        "basis": [basis.__dict__ for _, basis in known],
+        "broadeners": sorted(names),
+        "segments": [segment.as_dict() for segment in segments],
+    }
+    write_atomically(manifest_path, json.dumps(manifest).encode("utf-8"))
+    return manifest
+
+
+def _weight(packed: PackedLines) -> int:
+    """Lines that the packed lines count for: a table of classes as long as the list weighs as much again."""
+    return len(packed) + len(packed.classes) * (2 + len(packed.classes.broadeners))
+
+
+def _write_run(parts: Path, name: str, waiting: list[PackedLines]) -> list[Segment]:
+    """One sorted run as segments."""
+    if not waiting or not sum(len(part) for part in waiting):
+        return []
+    run = join(waiting)
+    waiting.clear()
+    pieces = range(0, len(run), SEGMENT_LINES)
+    return [
+        write_segment(parts, f"{name}-{k:04d}.part", run.select(slice(start, start + SEGMENT_LINES)))
+        for k, start in enumerate(pieces)
+    ]
+
+
+def _read_json(path: Path) -> dict[str, Any] | None:
+    try:
+        value = json.loads(path.read_text(encoding="utf-8"))
+    except (OSError, ValueError):
+        return None
+    return value if isinstance(value, dict) else None
+
+
+def _finish(folder: Path, manifests: list[dict[str, Any]], key: str, lines_at_once: int) -> None:
+    """Merge all parts into the store's segments and write its index, which makes it a store."""
+    known: list[dict[str, Any]] = []
+    basis: list[dict[str, Any]] = []
+    numbers: dict[int, list[int]] = {}
+    for number, manifest in enumerate(manifests):
+        numbers[number] = []
+        for iso, of in zip(manifest["isotopologues"], manifest["basis"], strict=True):
+            pairs = list(zip(known, basis, strict=True))
+            if (iso, of) not in pairs:
+                known.append(iso)
+                basis.append(of)
+                pairs.append((iso, of))
+            numbers[number].append(pairs.index((iso, of)))
+    parts = [Segment.from_dict(one) for manifest in manifests for one in manifest["segments"]]
+    segments = _merge(folder, parts, numbers, min(lines_at_once // 2, SEGMENT_LINES))
+    ledger = Ledger()
+    for manifest in manifests:
+        ledger.add(Ledger.from_dict(manifest["ledger"]))
+    if sum(segment.lines for segment in segments) != ledger.kept:
+        raise LineListError(
+            problem(folder, "lines were lost on the way to the store", expected=ledger.kept,
+                    found=sum(segment.lines for segment in segments))
+        )  # fmt: skip
+    index = {
+        "format": FORMAT_NAME,
+        "format_version": FORMAT_VERSION,
+        "key": key,
+        "inputs": [manifest["identity"] for manifest in manifests],
+        "ledger": ledger.as_dict(),
+        "isotopologues": known,
+        "basis": basis,
+        "broadeners": sorted({name for manifest in manifests for name in manifest["broadeners"]}),
+        "segments": [segment.as_dict() for segment in segments],
+    }
+    write_atomically(folder / INDEX, json.dumps(index).encode("utf-8"))
+
+
+def _merge(folder: Path, parts: list[Segment], numbers: dict[int, list[int]], lines_at_once: int) -> list[Segment]:
+    if not parts:
+        return []
+    return [
+        write_segment(folder, f"{k:06d}.lines.h5", _number_isotopologues(stretch, numbers))
+        for k, stretch in enumerate(merged(folder / PARTS, parts, lines_at_once))
+    ]
+
+
+def _number_isotopologues(packed: PackedLines, numbers: dict[int, list[int]]) -> PackedLines:
+    """From each file's own numbering of isotopologues to that of the store."""
+    classes = packed.classes
+    place = np.array(
+        [numbers[int(f)][int(i)] for f, i in zip(classes.file, classes.isotopologue, strict=True)], dtype=np.int16
+    )
+    return replace(packed, classes=replace(classes, isotopologue=place))

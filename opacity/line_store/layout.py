@@ -1,0 +1,53 @@
+"""Names and versions of the files of a line store.
+
+A store is a folder: `index.json` (written last: without it there is no store) and segments, each an HDF5 file of
+up to 2^20 lines sorted by wavenumber.  Segments follow each other in wavenumber.  While it is made, `parts/` holds
+sorted parts by input file, so that an interrupted ingest goes on where it was.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+FORMAT_NAME = "opacity line store"
+FORMAT_VERSION = 1
+
+SEGMENT_LINES = 1 << 20
+SAMPLE_EVERY = 4096
+
+INDEX = "index.json"
+PARTS = "parts"
+
+
+@dataclass(frozen=True)
+class Segment:
+    """One file of sorted lines: its name, number of lines, first and last wavenumber, and sha256.
+
+    `sample` is every 4096th wavenumber and the last, so that a merge can choose its boundaries without reading.
+    """
+
+    file: str
+    lines: int
+    first: float
+    last: float
+    sha256: str
+    bytes: int
+    sample: tuple[float, ...]
+
+    def as_dict(self) -> dict[str, Any]:
+        """Plain values for JSON."""
+        return {**self.__dict__, "sample": list(self.sample)}
+
+    @staticmethod
+    def from_dict(values: dict[str, Any]) -> Segment:
+        """The segment that `as_dict` described.  Raises KeyError, TypeError or ValueError for anything else."""
+        return Segment(
+            file=str(values["file"]),
+            lines=int(values["lines"]),
+            first=float(values["first"]),
+            last=float(values["last"]),
+            sha256=str(values["sha256"]),
+            bytes=int(values["bytes"]),
+            sample=tuple(float(one) for one in values["sample"]),
+        )

@@ -1,0 +1,123 @@
+"""One segment of a line store: packed lines in an HDF5 file, hashed, written once."""
+
+from __future__ import annotations
+
+import hashlib
+from pathlib import Path
+from typing import Any
+
+import h5py
+import numpy as np
+
+from opacity.errors import LineListError, problem
+from opacity.line_list.packed import PackedLines, WidthClasses, used_classes
+from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, SAMPLE_EVERY, Segment
+from opacity.molecule.broadening import BroadenerColumns
+from opacity.provenance import file_sha256
+from opacity.tables.atomic import write_atomically
+
+_UNITS = {
+    "wavenumber": "cm-1",
+    "intensity": "steps of 500/2^32 of ln I, from -400; 0 for none",
+    "lower_energy": "steps of 2.5e-5 cm-1, from -1 cm-1",
+    "width_class": "row of classes",
+    "record": "line number in the file",
+}
+
+
+def write_segment(folder: Path, name: str, packed: PackedLines) -> Segment:
+    """Write sorted lines to a file of the folder.  Raises ResourceError where the file system refuses."""
+    packed = used_classes(packed)
+    data = _image(packed)
+    write_atomically(folder / name, data)
+    nu = packed.wavenumber
+    return Segment(
+        file=name,
+        lines=len(packed),
+        first=float(nu[0]),
+        last=float(nu[-1]),
+        sha256=hashlib.sha256(data).hexdigest(),
+        bytes=len(data),
+        sample=tuple(float(one) for one in (*nu[::SAMPLE_EVERY], nu[-1])),
+    )
+
+
+def _image(packed: PackedLines) -> bytes:
+    narrow = np.uint16 if len(packed.classes) <= 1 << 16 else np.uint32
+    with h5py.File("image", "w", driver="core", backing_store=False, libver=("v108", "v110")) as file:
+        file.attrs["format"] = np.bytes_(FORMAT_NAME)
+        file.attrs["format_version"] = FORMAT_VERSION
+        for name, unit in _UNITS.items():
+            values = getattr(packed, name)
+            stored = file.create_dataset(name, data=values.astype(narrow) if name == "width_class" else values)
+            stored.attrs["units"] = np.bytes_(unit)
+        classes = file.create_group("classes")
+        classes.create_dataset("isotopologue", data=packed.classes.isotopologue)
+        classes.create_dataset("file", data=packed.classes.file)
+        for name, one in sorted(packed.classes.broadeners.items()):
+            group = classes.create_group(f"broadeners/{name}")
+            for kind, unit in (("gamma", "cm-1 bar-1"), ("exponent", "1"), ("shift", "cm-1 bar-1")):
+                values = getattr(one, kind)
+                if not np.all(np.isnan(values)):
+                    group.create_dataset(kind, data=values).attrs["units"] = np.bytes_(unit)
+        file.flush()
+        return bytes(file.id.get_file_image())
+
+
+def verify_segment(folder: Path, segment: Segment) -> None:
+    """Raise LineListError naming a segment that is missing or not as it was written."""
+    path = folder / segment.file
+    if not path.is_file():
+        raise LineListError(problem(path, "segment of the line store is missing", remedy=_REMEDY))
+    if file_sha256(path) != segment.sha256:
+        raise LineListError(problem(path, "segment of the line store is damaged (sha256 differs)", remedy=_REMEDY))
+
+
+class SegmentReader:
+    """An open segment, read by stretches of wavenumber.  Its sha256 is the caller's to verify."""
+
+    def __init__(self, folder: Path, segment: Segment) -> None:
+        self._path = folder / segment.file
+        self._sample = np.asarray(segment.sample)
+        self._lines = segment.lines
+        try:
+            self._file = h5py.File(self._path, "r")
+            self._columns = {name: self._file[name] for name in _UNITS}
+            self._classes = _read_classes(self._file["classes"])
+        except (OSError, KeyError, RuntimeError, ValueError) as error:
+            raise LineListError(
+                problem(self._path, "segment of the line store cannot be read", remedy=_REMEDY)
+            ) from error
+
+    def close(self) -> None:
+        """Close the file."""
+        self._file.close()
+
+    def read(self, lower: float, upper: float) -> PackedLines:
+        """The lines with lower <= wavenumber < upper."""
+        first, last = self._place(lower), self._place(upper)
+        columns = {name: stored[first:last] for name, stored in self._columns.items()}
+        columns["width_class"] = columns["width_class"].astype(np.uint32)
+        return PackedLines(**columns, classes=self._classes)
+
+    def _place(self, value: float) -> int:
+        """Index of the first line with wavenumber >= value, from the sample and one short read."""
+        block = int(np.searchsorted(self._sample[:-1], value, side="left"))
+        if block == 0:
+            return 0
+        start = (block - 1) * SAMPLE_EVERY
+        stop = min(block * SAMPLE_EVERY, self._lines)
+        return start + int(np.searchsorted(self._columns["wavenumber"][start:stop], value, side="left"))
+
+
+_REMEDY = "remove the store's folder: it is made again from the line lists"
+
+
+def _read_classes(group: Any) -> WidthClasses:
+    isotopologue = group["isotopologue"][...]
+    nothing = np.full(isotopologue.size, np.nan)
+    broadeners = {}
+    for name, one in group.get("broadeners", {}).items():
+        kinds = [one[kind][...] if kind in one else nothing for kind in ("gamma", "exponent", "shift")]
+        broadeners[name] = BroadenerColumns(*kinds)
+    return WidthClasses(isotopologue, group["file"][...], broadeners)

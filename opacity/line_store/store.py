@@ -1,0 +1,141 @@
+"""An open line store: what it holds, and its lines by window."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterator
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from opacity.errors import LineListError, problem
+from opacity.line_list.ledger import Ledger
+from opacity.line_list.model import LineList, StrengthBasis
+from opacity.line_list.packed import join, unpack
+from opacity.line_store.ingest import InputFile, same_content
+from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, Segment
+from opacity.line_store.merge import OpenSegments
+from opacity.molecule.isotopologue import Isotopologue
+
+
+@dataclass(frozen=True)
+class StoreIndex:
+    """What `index.json` says: how the lines were read, from what, and where they lie."""
+
+    key: str
+    inputs: tuple[dict[str, Any], ...]
+    ledger: Ledger
+    isotopologues: tuple[Isotopologue, ...]
+    basis: tuple[StrengthBasis, ...]
+    broadeners: tuple[str, ...]
+    segments: tuple[Segment, ...]
+
+    @property
+    def lines(self) -> int:
+        """Number of lines kept."""
+        return sum(segment.lines for segment in self.segments)
+
+    @property
+    def bytes(self) -> int:
+        """Size of the segments on disk."""
+        return sum(segment.bytes for segment in self.segments)
+
+
+def read_index(folder: Path) -> StoreIndex | None:
+    """The index of a store, None where there is none.  Raises LineListError for one that this version can't read."""
+    path = folder / INDEX
+    try:
+        text = path.read_text(encoding="utf-8")
+    except OSError:
+        return None
+    remedy = "remove the folder: the store is made again from the line lists"
+    try:
+        values = json.loads(text)
+        if values["format"] != FORMAT_NAME or int(values["format_version"]) > FORMAT_VERSION:
+            raise LineListError(
+                problem(path, "a line store of another version", expected=f"version {FORMAT_VERSION}",
+                        found=values["format_version"], remedy=remedy)
+            )  # fmt: skip
+        account = values["ledger"]
+        return StoreIndex(
+            key=str(values["key"]),
+            inputs=tuple(values["inputs"]),
+            ledger=Ledger.from_dict(account),
+            isotopologues=tuple(Isotopologue(**one) for one in values["isotopologues"]),
+            basis=tuple(StrengthBasis(**one) for one in values["basis"]),
+            broadeners=tuple(str(name) for name in values["broadeners"]),
+            segments=tuple(Segment.from_dict(one) for one in values["segments"]),
+        )
+    except (KeyError, TypeError, ValueError) as error:
+        raise LineListError(problem(path, f"not the index of a line store ({error!r})", remedy=remedy)) from error
+
+
+def is_current(index: StoreIndex, inputs: list[InputFile], key: str) -> bool:
+    """Whether a store was made of these inputs as they are now, read in the way that `key` says."""
+    if index.key != key or len(index.inputs) != len(inputs):
+        return False
+    return all(same_content(one, known) for one, known in zip(inputs, index.inputs, strict=True))
+
+
+class LineStore:
+    """A line store on disk.  Use it in a `with` statement or close it; each segment is verified when first read."""
+
+    def __init__(self, folder: Path) -> None:
+        index = read_index(folder)
+        if index is None:
+            raise LineListError(problem(folder, "no line store here", expected=f"a folder with {INDEX}"))
+        self.folder, self.index = folder, index
+        self._segments = OpenSegments(folder)
+
+    def __enter__(self) -> LineStore:
+        return self
+
+    def __exit__(self, *error: object) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Close the files."""
+        self._segments.close()
+
+    def window(self, lower: float, upper: float) -> LineList:
+        """The lines with lower <= wavenumber <= upper (cm-1), sorted; the margin is the caller's to add."""
+        end = float(np.nextafter(upper, np.inf))
+        pieces = [
+            self._segments.get(segment).read(lower, end)
+            for segment in self.index.segments
+            if segment.first < end and segment.last >= lower
+        ]
+        pieces = [piece for piece in pieces if len(piece)]
+        empty = self._empty()
+        if not pieces:
+            return empty
+        packed = pieces[0] if len(pieces) == 1 else join(pieces)
+        return unpack(packed, empty, self.index.basis, self.index.broadeners)
+
+    def stretches(self, lower: float, upper: float) -> Iterator[LineList]:
+        """The same lines, segment by segment in order of wavenumber, so that few are held at a time."""
+        for segment in self.index.segments:
+            first, last = max(lower, segment.first), min(upper, segment.last)
+            if first <= last:
+                yield self.window(first, last)
+
+    def _empty(self) -> LineList:
+        nothing = np.empty(0)
+        return LineList(
+            wavenumber=nothing,
+            strength=nothing,
+            lower_energy=nothing,
+            einstein_a=nothing,
+            upper_weight=nothing,
+            lower_weight=nothing,
+            isotopologue=np.empty(0, dtype=np.int16),
+            isotopologues=self.index.isotopologues,
+            basis=self.index.basis,
+            broadeners={},
+            record=np.empty(0, dtype=np.int64),
+            file=np.empty(0, dtype=np.int16),
+            files=tuple(entry["files"][0]["file"] for entry in self.index.inputs),
+            ledger=self.index.ledger,
+        )
