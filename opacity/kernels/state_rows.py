@@ -43,7 +43,7 @@ def _read_row(text: Bytes, i: int, stop: int, ids: Index, numbers: Array, row: i
             value, good = 0, i - start <= _LONGEST_ID
             for k in range(start, i):
                 good = good and 48 <= text[k] <= 57
-                value = value * 10 + (text[k] - 48)
+                value = value * 10 + (int(text[k]) - 48)
             ids[row] = value
         else:
             number, what = read_number(text, start, i)

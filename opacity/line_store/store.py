@@ -17,6 +17,7 @@ from opacity.line_list.packed import join, unpack
 from opacity.line_store.ingest import InputFile, same_content
 from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, Segment
 from opacity.line_store.merge import OpenSegments
+from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
 
 
@@ -133,7 +134,7 @@ class LineStore:
             isotopologue=np.empty(0, dtype=np.int16),
             isotopologues=self.index.isotopologues,
             basis=self.index.basis,
-            broadeners={},
+            broadeners={name: BroadenerColumns(nothing, nothing, nothing) for name in self.index.broadeners},
             record=np.empty(0, dtype=np.int64),
             file=np.empty(0, dtype=np.int16),
             files=tuple(entry["files"][0]["file"] for entry in self.index.inputs),

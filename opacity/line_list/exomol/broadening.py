@@ -82,9 +82,25 @@ def match_rows(table: BroadeningTable, j_lower: ArrayLike, j_upper: ArrayLike) -
     For m0, |m| = J'' + 1 where J' = J'' + 1 and J'' where J' = J'' or J'' - 1; other lines have no m.
     """
     lower, upper = np.broadcast_arrays(_doubled(j_lower), _doubled(j_upper))
+    step = upper - lower
+    if lower.size == 0:
+        return _match(table, lower, step)
+    # Many lines share few quantum numbers: each pair is looked for once.
+    first_j, first_step = int(lower.min()), int(step.min())
+    n_j, n_step = int(lower.max()) - first_j + 1, int(step.max()) - first_step + 1
+    if n_j * n_step >= lower.size:
+        return _match(table, lower, step)
+    pairs = np.indices((n_j, n_step)).reshape(2, -1)
+    served = _match(table, pairs[0] + first_j, pairs[1] + first_step)
+    which = (lower - first_j) * n_step + (step - first_step)
+    return RowMatch(served.row[which], served.kind[which])
+
+
+def _match(table: BroadeningTable, lower: Index, step: Index) -> RowMatch:
+    """As `match_rows`, from 2 J'' (-1 for none) and 2 (J' - J'')."""
     row = np.full(lower.shape, -1, dtype=np.int64)
     kind = np.full(lower.shape, NONE, dtype=np.uint8)
-    found = [_find(table, number, *_wanted(code, lower, upper)) for number, code in enumerate(CODES)]
+    found = [_find(table, number, *_wanted(code, lower, step)) for number, code in enumerate(CODES)]
     for exact in (True, False):
         for candidate in found:
             take = (row < 0) & (candidate.row >= 0) & ((candidate.kind == EXACT) == exact)
@@ -100,10 +116,9 @@ def _doubled(j: ArrayLike) -> Index:
     return np.where(np.floor(double) == double, double, -1.0).astype(np.int64)
 
 
-def _wanted(code: str, lower: Index, upper: Index) -> tuple[Index, Index]:
+def _wanted(code: str, lower: Index, step: Index) -> tuple[Index, Index]:
     """Branch and value asked for; the value is -1 where there is none."""
-    step = upper - lower
-    good = (lower >= 0) & (upper >= 0)
+    good = (lower >= 0) & (lower + step >= 0)
     if code == "a1":
         return np.where(good, step, 0), np.where(good, lower, -1)
     branch = np.zeros_like(lower)

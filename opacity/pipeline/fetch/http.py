@@ -1,7 +1,7 @@
 """HTTP for downloads: one opener for http and https only, and every failure of it in words.
 
-The standard library does the transfer.  Of the packages that fetch data files none resumes a partial
-file under a condition (Range with If-Range), which is what lists of many gigabytes need.
+The standard library does the transfer: pooch (1.9.0) fetches whole files only, whereas lists of many
+gigabytes have to be resumed, and only if they are still the same (Range with If-Range).
 """
 
 from __future__ import annotations

@@ -104,11 +104,13 @@ def test_all_rows_against_a_slow_search(write):
             rows[(code, *quanta)] = (round(rng.uniform(0.01, 0.1), 4), round(rng.uniform(0.0, 1.0), 3))
     text = [f"{key[0]} {gamma} {n} {' '.join(map(str, key[1:]))}" for key, (gamma, n) in rows.items()]
     table = read_broadening(write("a.broad", text))
+    # So many lines that each pair of quantum numbers stands there several times.
     lower = rng.integers(0, 100, 2000)
     upper = np.maximum(lower + rng.integers(-1, 2, 2000), 0)
     gamma, exponent = widths(table, lower, upper)
     for i, (low, up) in enumerate(zip(lower.tolist(), upper.tolist(), strict=True)):
         assert (gamma[i], exponent[i]) == slow(rows, low, up)
+        assert widths(table, low, up) == ([gamma[i]], [exponent[i]])
 
 
 def slow(rows, low, up):

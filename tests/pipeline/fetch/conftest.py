@@ -13,7 +13,8 @@ from typing import Any
 import pytest
 
 from opacity.pipeline.fetch import transfer
-from opacity.pipeline.fetch.transfer import Patience
+from opacity.pipeline.fetch.transfer import Patience, download
+from opacity.recipe.downloads import UrlDownload
 
 LOOPBACK = ("127.0.0.1", "localhost")
 
@@ -189,3 +190,21 @@ def write_list(tmp_path: Path) -> Callable[[str], Path]:
         return path
 
     return write
+
+
+@pytest.fixture
+def get(server, tmp_path, hasty):
+    """Download /NAME of the server to lines/NAME, quietly."""
+
+    def run(
+        name: str = "x.trans.bz2", sha256: str | None = None, patience: Patience = hasty, quiet: bool = True
+    ) -> str:
+        wanted = UrlDownload(server.url(f"/{name}"), tmp_path / "lines" / name, sha256)
+        return download(wanted, patience, name, quiet)
+
+    return run
+
+
+@pytest.fixture
+def lines(tmp_path) -> Path:
+    return tmp_path / "lines"
