@@ -92,7 +92,7 @@ def read_number(text: Bytes, start: int, stop: int) -> tuple[float, int]:
         if 48 <= byte <= 57:
             digits += 1
             if mantissa < _MAX_MANTISSA:
-                mantissa = mantissa * 10 + (byte - 48)
+                mantissa = mantissa * 10 + (int(byte) - 48)
                 exponent -= 1 if after_point else 0
             elif not after_point:
                 exponent += 1
@@ -130,7 +130,7 @@ def _read_exponent(text: Bytes, i: int, stop: int) -> tuple[int, bool]:
     while i < stop:
         if not 48 <= text[i] <= 57:
             return 0, False
-        power = min(power * 10 + (text[i] - 48), 100_000)
+        power = min(power * 10 + (int(text[i]) - 48), 100_000)
         i += 1
     return (-power if negative else power), True
 
@@ -151,7 +151,7 @@ def _look_at(line: Bytes) -> tuple[bool, bool]:
     for byte in line:
         tab = np.uint8(byte == _TAB)
         filled |= np.uint8(byte != _SPACE) & np.uint8(1 - tab)
-        odd |= np.uint8(np.uint8(byte - 32) > 94) & np.uint8(1 - tab)
+        odd |= np.uint8((byte < 32) | (byte > 126)) & np.uint8(1 - tab)
     return filled != 0, odd != 0
 
 
@@ -281,7 +281,7 @@ def read_rows(
                 good = i - start <= 18
                 for k in range(start, i):
                     good = good and 48 <= text[k] <= 57
-                    value = value * 10 + (text[k] - 48)
+                    value = value * 10 + (int(text[k]) - 48)
                 integers[row, count] = value if good else -1
                 if not good:
                     count = 255

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import json
 import shutil
 from collections.abc import Callable, Iterator
@@ -48,7 +49,15 @@ def _file_identity(path: Path) -> dict[str, Any]:
         status = path.stat()
     except OSError as error:
         raise LineListError(problem(path, f"cannot be read ({error.strerror})")) from error
-    return {"file": path.name, "size": status.st_size, "mtime_ns": status.st_mtime_ns, "sha256": file_sha256(path)}
+    sha256 = _sha256(path, status.st_size, status.st_mtime_ns)
+    return {"file": path.name, "size": status.st_size, "mtime_ns": status.st_mtime_ns, "sha256": sha256}
+
+
+@functools.lru_cache(maxsize=256)
+def _sha256(path: Path, size: int, mtime_ns: int) -> str:
+    """A file's hash, once for all inputs that lie beside the same states."""
+    del size, mtime_ns
+    return file_sha256(path)
 
 
 def same_content(one: InputFile, known: dict[str, Any]) -> bool:
@@ -68,11 +77,19 @@ def same_content(one: InputFile, known: dict[str, Any]) -> bool:
     return True
 
 
-def ingest(folder: Path, inputs: list[InputFile], key: str, memory: int, progress: Progress) -> None:
+def ingest(
+    folder: Path,
+    inputs: list[InputFile],
+    key: str,
+    memory: int,
+    progress: Progress,
+    facts: Callable[[], dict[str, Any]] = dict,
+) -> None:
     """Make the store in `folder` from the inputs.
 
     `key` says how the inputs are read; `memory` bounds what is held, in bytes; `progress(records, bytes read)` is
-    called as records are read.  Raises LineListError for what can't be right, ResourceError where the disk refuses.
+    called as records are read; `facts` gives plain values to keep beside the lines, such as a partition function
+    summed over the states.  Raises LineListError for what can't be right, ResourceError where the disk refuses.
     """
     parts = folder / PARTS
     try:
@@ -81,7 +98,7 @@ def ingest(folder: Path, inputs: list[InputFile], key: str, memory: int, progres
         raise ResourceError(problem(parts, f"the line store's folder cannot be made ({error.strerror})")) from error
     lines_at_once = max(memory // 3 // BYTES_A_LINE, 1 << 14)
     manifests = [_ingest_file(parts, number, one, key, lines_at_once, progress) for number, one in enumerate(inputs)]
-    _finish(folder, manifests, key, lines_at_once)
+    _finish(folder, manifests, key, lines_at_once, facts())
     shutil.rmtree(parts, ignore_errors=True)
 
 
@@ -153,7 +170,7 @@ def _read_json(path: Path) -> dict[str, Any] | None:
     return value if isinstance(value, dict) else None
 
 
-def _finish(folder: Path, manifests: list[dict[str, Any]], key: str, lines_at_once: int) -> None:
+def _finish(folder: Path, manifests: list[dict[str, Any]], key: str, lines_at_once: int, facts: dict[str, Any]) -> None:
     """Merge all parts into the store's segments and write its index, which makes it a store."""
     known: list[dict[str, Any]] = []
     basis: list[dict[str, Any]] = []
@@ -181,6 +198,7 @@ def _finish(folder: Path, manifests: list[dict[str, Any]], key: str, lines_at_on
         "format": FORMAT_NAME,
         "format_version": FORMAT_VERSION,
         "key": key,
+        "facts": facts,
         "inputs": [manifest["identity"] for manifest in manifests],
         "ledger": ledger.as_dict(),
         "isotopologues": known,

@@ -26,6 +26,7 @@ class StoreIndex:
     """What `index.json` says: how the lines were read, from what, and where they lie."""
 
     key: str
+    facts: dict[str, Any]
     inputs: tuple[dict[str, Any], ...]
     ledger: Ledger
     isotopologues: tuple[Isotopologue, ...]
@@ -62,6 +63,7 @@ def read_index(folder: Path) -> StoreIndex | None:
         account = values["ledger"]
         return StoreIndex(
             key=str(values["key"]),
+            facts=dict(values["facts"]),
             inputs=tuple(values["inputs"]),
             ledger=Ledger.from_dict(account),
             isotopologues=tuple(Isotopologue(**one) for one in values["isotopologues"]),
