@@ -28,7 +28,7 @@ IN_FLIGHT = 4
 
 @dataclass(frozen=True)
 class Batch:
-    """Some lines of a file: packed, with the isotopologues that their classes point to, and the account of them.
+    """Some lines of a file in any order: packed, with the isotopologues of their classes, and the account of them.
 
     `read` is how many bytes of the file had been read by the end of the batch.
     """

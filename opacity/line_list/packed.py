@@ -24,6 +24,7 @@ from opacity.constants import SECOND_RADIATION
 from opacity.errors import LineListError, problem
 from opacity.grids import FloatArray
 from opacity.kernels.classes import classify
+from opacity.kernels.sort import order_of
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.molecule.broadening import BroadenerColumns
 
@@ -207,7 +208,7 @@ def join(parts: Sequence[PackedLines]) -> PackedLines:
     starts = np.cumsum([0, *(len(table) for table in tables)])
     width_class = np.concatenate([index[starts[i] + part.width_class] for i, part in enumerate(parts)])
     wavenumber = np.concatenate([part.wavenumber for part in parts])
-    order = np.argsort(wavenumber, kind="stable")
+    order = order_of(wavenumber)
     return PackedLines(
         wavenumber=wavenumber[order],
         intensity=np.concatenate([part.intensity for part in parts])[order],

@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 from opacity.errors import LineListError, problem
 from opacity.kernels.text import count_newlines, find_lines
 
-CHUNK = 16 << 20
+CHUNK = 4 << 20
 LONGEST_LINE = 1 << 20
 _BLOCK = 1 << 18
 WORTH_A_SECOND_CORE = 1 << 20

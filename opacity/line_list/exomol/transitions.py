@@ -107,8 +107,7 @@ def _batch(path: Path, chunk: TextChunk, join: StateJoin, leave_out: bool, range
         inside = (wavenumber >= range[0]) & (wavenumber <= range[1])
         ledger.leave_out("outside the range asked for", int(np.count_nonzero(good & ~inside)))
         good &= inside
-    rows = np.flatnonzero(good)
-    order = rows[np.argsort(wavenumber[rows], kind="stable")]
+    order = np.flatnonzero(good)
     packed = PackedLines(
         wavenumber=wavenumber[order],
         intensity=encode_intensity(log_intensity[order]),

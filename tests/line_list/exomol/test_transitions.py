@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -14,6 +15,7 @@ from opacity.line_list.exomol.states import read_states
 from opacity.line_list.exomol.transitions import StateJoin, default_names, state_join, transition_batches
 from opacity.line_list.model import LineList
 from opacity.line_list.packed import decode_energy, decode_intensity, log_population
+from opacity.line_list.packed import join as sorted_by_wavenumber
 from opacity.line_list.read import read_lines
 from opacity.molecule.isotopologue import isotopologue
 from opacity.molecule.partition_function import tips
@@ -66,7 +68,7 @@ def join(tmp_path: Path, lines: LineList) -> StateJoin:
 def all_of(path: Path, join: StateJoin, leave_out: bool = False, within: tuple[float, float] | None = None):
     (batch,) = transition_batches(path, join, leave_out, within, None)
     assert batch.ledger.adds_up()
-    return batch
+    return replace(batch, packed=sorted_by_wavenumber([batch.packed]))
 
 
 @pytest.mark.parametrize("columns", [3, 4])
