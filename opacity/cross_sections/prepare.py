@@ -6,7 +6,7 @@ Both the exact sum and the kernels take what `PreparedLines.at` gives, so that t
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -61,6 +61,24 @@ class PreparedLines:
 
     def __len__(self) -> int:
         return int(self.wavenumber.size)
+
+    def part(self, which: slice) -> PreparedLines:
+        """Some of the lines, with everything else as it is."""
+        broadening = self.broadening
+        return replace(
+            self,
+            wavenumber=self.wavenumber[which],
+            strength=self.strength[which],
+            lower_energy=self.lower_energy[which],
+            mass=self.mass[which],
+            isotopologue=self.isotopologue[which],
+            broadening=replace(
+                broadening,
+                gamma=np.ascontiguousarray(broadening.gamma[:, which]),
+                exponent=np.ascontiguousarray(broadening.exponent[:, which]),
+                shift=broadening.shift[which],
+            ),
+        )
 
     def strengths(self, temperature: float) -> FloatArray:
         """S(T) of all lines, cm/molecule, (n_lines,).  Raises MoleculeError where Q is not valid."""

@@ -100,6 +100,10 @@ class SegmentReader:
         columns["width_class"] = columns["width_class"].astype(np.uint32)
         return PackedLines(**columns, classes=self._classes)
 
+    def count(self, lower: float, upper: float) -> int:
+        """How many lines have lower <= wavenumber < upper."""
+        return self._place(upper) - self._place(lower)
+
     def _place(self, value: float) -> int:
         """Index of the first line with wavenumber >= value, from the sample and one short read."""
         block = int(np.searchsorted(self._sample[:-1], value, side="left"))

@@ -117,6 +117,21 @@ class LineStore:
         packed = pieces[0] if len(pieces) == 1 else join(pieces)
         return unpack(packed, empty, self.index.basis, self.index.broadeners)
 
+    def count(self, lower: float, upper: float) -> int:
+        """Number of lines with lower <= wavenumber <= upper."""
+        end = float(np.nextafter(upper, np.inf))
+        total = 0
+        for segment in self.index.segments:
+            if segment.first >= lower and segment.last < end:
+                total += segment.lines
+            elif segment.first < end and segment.last >= lower:
+                total += self._segments.get(segment).count(lower, end)
+        return total
+
+    def edges(self) -> list[float]:
+        """First wavenumbers of the segments."""
+        return [segment.first for segment in self.index.segments]
+
     def stretches(self, lower: float, upper: float) -> Iterator[LineList]:
         """The same lines, segment by segment in order of wavenumber, so that few are held at a time."""
         for segment in self.index.segments:
