@@ -57,6 +57,7 @@ def cross_section(
     # Late, so that importing the package does not load numba.
     from opacity.cross_sections.compute import spectrum
 
+    _check_workers(workers)
     limits = regions(tolerance, plinth)
     nu = as_wavenumbers(wavenumber)
     executor = ThreadPoolExecutor(workers) if workers > 1 else None
@@ -101,6 +102,12 @@ def exact_cross_section(
 
     prepared = _prepare(lines, partition_function, abundance, broadeners, default_widths, chi)
     return _all_nodes(prepared, nu, temperature, pressure, cutoff, one)
+
+
+def _check_workers(workers: object) -> None:
+    if not isinstance(workers, (int, np.integer)) or workers < 1:
+        expected = "a whole number of threads, 1 or more"
+        raise InputError(problem("workers", "impossible", expected=expected, found=repr(workers)))
 
 
 def _prepare(
@@ -172,4 +179,6 @@ def build(recipe: Recipe, folder: str | Path = "tables", *, workers: int | None 
     """
     from opacity.pipeline.build import build_table
 
+    if workers is not None:
+        _check_workers(workers)
     return (build_table(recipe, Path(folder), workers=workers, quiet=True).table,)

@@ -7,8 +7,10 @@ import contextlib
 import io
 import math
 import os
+import signal
 import sys
 from collections.abc import Sequence
+from types import FrameType
 from typing import NoReturn
 
 from opacity.cli import commands
@@ -109,19 +111,32 @@ def main(arguments: Sequence[str] | None = None) -> int:
         print(error, file=sys.stderr)
         return error.exit_code
     except KeyboardInterrupt:
-        print("interrupted: nothing half-written was left behind", file=sys.stderr)
-        return INTERRUPTED
+        return _interrupted()
     except BrokenPipeError:
         # Whoever read our output has gone.
         _silence_stdout()
         return FAILED
     except OSError as error:
-        _silence_stdout()
         print(f"{error.filename or 'output'}: {error.strerror or error}", file=sys.stderr)
         return FAILED
     except MemoryError:
         print("not enough memory: use fewer nodes, fewer points or a shorter line list", file=sys.stderr)
         return FAILED
+
+
+def _interrupted() -> int:
+    print("interrupted: nothing half-written was left behind", file=sys.stderr)
+    return INTERRUPTED
+
+
+class _Interrupts:
+    """Handler of Ctrl-C that remembers it: compiled modules turn it into errors of their own while they load."""
+
+    seen = False
+
+    def __call__(self, number: int, frame: FrameType | None) -> NoReturn:
+        self.seen = True
+        raise KeyboardInterrupt
 
 
 def _silence_stdout() -> None:
@@ -135,4 +150,13 @@ def run() -> NoReturn:
     # File names need not be text, and a terminal need not know every character.
     if isinstance(sys.stdout, io.TextIOWrapper) and sys.stdout.errors == "strict":
         sys.stdout.reconfigure(errors="backslashreplace")
-    sys.exit(main())
+    interrupts = _Interrupts()
+    if signal.getsignal(signal.SIGINT) is signal.default_int_handler:
+        signal.signal(signal.SIGINT, interrupts)
+    try:
+        code = main()
+    except Exception:
+        if not interrupts.seen:
+            raise
+        code = _interrupted()
+    sys.exit(code)

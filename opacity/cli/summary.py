@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from opacity.errors import TableError, problem
 from opacity.tables.read import Table
 
 
@@ -29,7 +30,15 @@ def summary(table: Table) -> dict[str, Any]:
 
 
 def summary_lines(table: Table) -> list[tuple[str, str]]:
-    """The same for people, as pairs of a word and its value."""
+    """The same for people, as pairs of a word and its value.  Raises TableError for texts of another make."""
+    try:
+        return _lines(table)
+    except (AttributeError, KeyError, TypeError, ValueError) as error:
+        what = f"provenance or checks are not as this version writes them ({type(error).__name__}: {error})"
+        raise TableError(problem(table.path, what, remedy="--json shows them as they are")) from error
+
+
+def _lines(table: Table) -> list[tuple[str, str]]:
     nu, provenance = table.wavenumber, table.provenance
     wavelength = "" if nu[0] <= 0.0 else f" ({1e4 / nu[-1]:.4g} to {1e4 / nu[0]:.4g} um)"
     kind = f"{table.temperature.size} nodes along a profile" if table.profile else "grid"

@@ -26,8 +26,13 @@ def results_table(results: Iterable[CheckResult]) -> str:
         value = "" if row.value is None else f"{row.value:+.2e}"
         limit = "" if row.limit is None else f"{row.limit:.1e}"
         lines.append(f"{row.check:{name_width}}  {row.verdict:12}  {value:>10}  {limit:>8}".rstrip())
-        lines += textwrap.wrap(row.detail, WIDTH, initial_indent="    ", subsequent_indent="    ")
+        lines += [f"    {part}" for part in _folded(row.detail, WIDTH - 4)]
     return "\n".join(lines)
+
+
+def _folded(text: str, width: int) -> list[str]:
+    """Lines broken between words only: a file name must stay one that can be copied."""
+    return textwrap.wrap(text, width, break_long_words=False, break_on_hyphens=False)
 
 
 def facts(pairs: Sequence[tuple[str, str]]) -> str:
@@ -36,7 +41,7 @@ def facts(pairs: Sequence[tuple[str, str]]) -> str:
     indent = " " * (width + 2)
     lines = []
     for name, value in pairs:
-        folded = textwrap.wrap(value, WIDTH - width, subsequent_indent="") or [""]
+        folded = _folded(value, WIDTH - width) or [""]
         lines.append(f"{name:{width}}  {folded[0]}")
         lines += [indent + part for part in folded[1:]]
     return "\n".join(lines)

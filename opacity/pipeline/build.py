@@ -83,8 +83,9 @@ def _still_good(path: Path, inputs: Inputs) -> dict[str, Any] | None:
 def _make_folder(folder: Path) -> None:
     try:
         folder.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise ResourceError(problem(folder, f"the folder for the tables cannot be made ({error.strerror})")) from error
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or str(error)
+        raise ResourceError(problem(folder, f"the folder for the tables cannot be made ({reason})")) from error
     if not os.access(folder, os.W_OK | os.X_OK):
         raise ResourceError(
             problem(folder, "nothing can be written here", remedy="choose a folder in which you may write")
@@ -106,7 +107,9 @@ def compute_spectra(recipe: Recipe, lines: PreparedLines, workers: int, quiet: b
     try:
         sigma = np.empty((len(nodes), grid.wavenumber.size))
     except MemoryError as error:
-        raise ResourceError(problem(recipe.path, "the spectra do not fit in memory", remedy="use fewer")) from error
+        raise ResourceError(
+            problem(recipe.path, "the spectra do not fit in memory", remedy="use fewer nodes or points")
+        ) from error
     executor = ThreadPoolExecutor(workers) if workers > 1 else None
     try:
         with Progress("spectra", len(nodes), "nodes", quiet) as progress:

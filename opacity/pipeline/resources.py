@@ -37,7 +37,7 @@ def free_disk(folder: Path) -> int | None:
     for place in (folder, *folder.absolute().parents):
         try:
             return shutil.disk_usage(place).free
-        except OSError:
+        except (OSError, ValueError):
             continue
     return None
 

@@ -58,6 +58,14 @@ def test_a_right_table_agrees(make_case, changes, judged):
     assert "too coarse" not in row.detail
 
 
+def test_a_predicted_sum_is_held_to_the_tolerance_itself(make_case):
+    case = make_case(wavenumber=EVEN, tolerance="1e-6")
+    row, accounts = closure_row(case)
+    assert abs(accounts[2]["sampling"]) > 2e-5
+    assert max(one["allowance"] for one in accounts) < 1e-6
+    assert row.limit < 2e-6
+
+
 @pytest.mark.parametrize("cutoff", ["0.3", "25.0"])
 def test_with_plinth_a_right_table_agrees(make_case, cutoff):
     plain = make_case(cutoff=cutoff)

@@ -77,7 +77,7 @@ def test_every_shape_of_grid_is_built_right(write_recipe, tmp_path, changes, sha
 
 
 def test_the_bits_do_not_depend_on_workers_time_or_folder(write_recipe, tmp_path, monkeypatch):
-    # More tiles than workers, so that they are really shared out.
+    # More tiles than workers, so that they are really dealt out.
     path = write_recipe(wavenumber=LONG, nodes="nodes = [[296.0, 0.1]]")
     hashes = set()
     for workers, folder in ((1, "a"), (2, "b"), (5, "c")):
