@@ -79,7 +79,8 @@ def sampling_offset(node: NodeLines, start: float, step: float) -> FloatArray:
     total = np.zeros(node.centre.size)
     for k in range(1, MAX_HARMONICS + 1):
         decay = _decay(node, steps, k)
-        if not np.any(decay < 40.0):
+        count = np.flatnonzero(decay < 40.0)
+        if not count.size:
             break
-        total += 2.0 * np.exp(-decay) * np.cos(k * phase)
+        total[count] += 2.0 * np.exp(-decay[count]) * np.cos(k * phase[count])
     return np.where(_decay(node, steps, MAX_HARMONICS) < 20.0, np.nan, total)
