@@ -19,6 +19,8 @@ from opacity.cross_sections.exact import voigt_derivatives, voigt_profile
 from opacity.cross_sections.prepare import NodeLines
 from opacity.grids import FloatArray, cell_widths
 
+OWN_ERROR = 6e-7
+"""What the expectation (profile shares, 2e-7) and the storage (f4, 6e-8 a value) may be off by themselves."""
 JUDGED_BELOW = 0.01
 """Above this much uncertainty of the expectation itself (relative) closure is not judged."""
 
@@ -158,6 +160,7 @@ def judge_closure(accounts: list[Closure], tolerance: float) -> CheckResult:
         )
     if not judged:
         return CheckResult("closure", CANNOT_JUDGE, "no node can be judged" + note)
+    tolerance += OWN_ERROR
     worst = max(judged, key=lambda one: abs(one.difference) / (tolerance + one.allowance))
     bad = [one for one in judged if abs(one.difference) > tolerance + one.allowance]
     detail = (

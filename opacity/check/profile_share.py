@@ -41,7 +41,11 @@ def share_between(node: NodeLines, lower: FloatArray, upper: FloatArray) -> Floa
     """Share of each line's profile between two wavenumbers, (n_lines,); 0 where `upper` <= `lower`."""
     scale = SQRT_LN2 / node.doppler
     y = node.lorentz * scale
-    share = upper_tail((lower - node.centre) * scale, y) - upper_tail((upper - node.centre) * scale, y)
+    start, stop = (lower - node.centre) * scale, (upper - node.centre) * scale
+    # The profile is even: below its centre the mirrored limits keep the digits that 1 - tail would lose.
+    mirrored = stop < 0.0
+    start, stop = np.where(mirrored, -stop, start), np.where(mirrored, -start, stop)
+    share = upper_tail(start, y) - upper_tail(stop, y)
     return np.where(upper > lower, np.maximum(share, 0.0), 0.0)
 
 

@@ -35,6 +35,11 @@ def _folded(text: str, width: int) -> list[str]:
     return textwrap.wrap(text, width, break_long_words=False, break_on_hyphens=False)
 
 
+def wrapped(text: str) -> str:
+    """A sentence in lines of at most `WIDTH` characters, all but the first indented."""
+    return textwrap.fill(text, WIDTH, subsequent_indent="    ", break_long_words=False, break_on_hyphens=False)
+
+
 def facts(pairs: Sequence[tuple[str, str]]) -> str:
     """Two columns: what, and its value; long values are folded."""
     width = max(len(name) for name, _ in pairs)
@@ -45,6 +50,33 @@ def facts(pairs: Sequence[tuple[str, str]]) -> str:
         lines.append(f"{name:{width}}  {folded[0]}")
         lines += [indent + part for part in folded[1:]]
     return "\n".join(lines)
+
+
+def counted(number: int, word: str) -> str:
+    """A number of things: 1 line, 2 lines."""
+    return f"{number} {word}" if number == 1 else f"{number} {word}s"
+
+
+def percent(share: float) -> str:
+    """A share in percent, to two digits."""
+    value = 100.0 * share
+    return f"{value:.0f} %" if value >= 9.95 else f"{value:.2g} %"
+
+
+def notes(ledger: Mapping[str, Any], assumptions: Iterable[Mapping[str, Any]]) -> list[tuple[str, str]]:
+    """What became of a list's records: (left out | assumed | note, what and for how many lines)."""
+    found = [("left out", f"{counted(count, 'line')}, {reason}") for reason, count in ledger["left_out"].items()]
+    found += [("assumed", f"for {counted(one['lines'], 'line')}: {one['what']}") for one in assumptions]
+    found += [("note", f"{counted(count, 'record')}, {what}") for what, count in ledger["notes"].items()]
+    return found
+
+
+def interpolation_line(between: Mapping[str, Any]) -> str:
+    """What interpolating between the table's nodes costs, in words."""
+    return (
+        f"interpolating at the middle of {counted(between['cells'], 'cell')}: half of the points within"
+        f" {percent(between['p50'])}, 99 % within {percent(between['p99'])}: not judged, it tells how fine the grid is"
+    )
 
 
 def size(n_bytes: float | None) -> str:

@@ -10,13 +10,14 @@ from numpy.typing import NDArray
 
 from opacity.errors import InputError, LineListError, problem
 from opacity.grids import FloatArray
+from opacity.line_list.duplicates import refuse_repeated_files
 from opacity.line_list.hapi_table import parse_hapi_table
 from opacity.line_list.hitran import parse_hitran
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
 from opacity.line_list.records import ParsedColumns, ReadOptions, judge
 from opacity.molecule.broadening import BroadenerColumns
-from opacity.molecule.isotopologue import Isotopologue
+from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
 
 READERS: dict[str, Callable[[Path], ParsedColumns]] = {"hitran": parse_hitran, "hapi": parse_hapi_table}
 
@@ -33,7 +34,8 @@ def read_lines(
 
     `format` is "hitran" (160-character records, .gz and .bz2 too) or "hapi" (.data with its .header); if it is
     None the file's ending decides.  `range` (cm-1) keeps the lines inside it, ends included.  `bad_records`
-    is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).
+    is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).  `options` are
+    what a recipe says of the list: its molecule, and the one isotopologue to take from it.
 
     Raises LineListError naming file and line, InputError for an unknown format or option.
     """
@@ -45,24 +47,52 @@ def read_lines(
     base = options or ReadOptions()
     if range is not None and not range[0] <= range[1]:
         raise InputError(problem("range", "not a range", expected="two wavenumbers, the lower first", found=range))
-    chosen = ReadOptions(bad_records == "leave-out", base.formula, base.mass, base.isotopologue)
-    lines = merge([_read_one(path, format, chosen) for path in paths])
+    lines = refuse_repeated_files(merge([_read_one(path, format, base, bad_records == "leave-out") for path in paths]))
+    if not len(lines):
+        reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(lines.ledger.left_out.items()))
+        raise LineListError(problem(paths[0], "every record was left out", found=reasons, remedy="mend the list"))
     formulas = sorted({one.molecule_formula for one in lines.isotopologues})
     if len(formulas) > 1:
         raise LineListError(
             problem(paths[0], "lines of several molecules", expected="one molecule", found=", ".join(formulas))
         )
+    if base.isotopologue is not None and len(lines):
+        lines = _only(lines, base.isotopologue)
     if range is not None:
         lower, upper = range
         lines = lines.select((lines.wavenumber >= lower) & (lines.wavenumber <= upper), "outside the range asked for")
+    return check_account(lines)
+
+
+def check_account(lines: LineList) -> LineList:
+    """The list itself.  Raises LineListError where its ledger and its lines do not agree."""
+    ledger = lines.ledger
+    if not ledger.adds_up() or ledger.kept != len(lines):
+        found = f"{ledger.kept} kept and {sum(ledger.left_out.values())} left out of {ledger.read}, {len(lines)} lines"
+        what = "the account of the records does not add up, a fault of this program"
+        raise LineListError(problem(", ".join(lines.files), what, found=found))
     return lines
 
 
-def _read_one(path: Path, format: str | None, options: ReadOptions) -> LineList:
+def _only(lines: LineList, name: str) -> LineList:
+    """The lines of one isotopologue, by formula or local number; InputError where there is none of that name."""
+    if not lines.isotopologues[0].known:
+        return lines
+    chosen = [number for number, one in enumerate(lines.isotopologues) if name in (one.formula, str(one.local))]
+    if not chosen:
+        exist = isotopologues_of(lines.molecule_formula)
+        known = any(name in (one.formula, str(one.local)) for one in exist)
+        what = f"the list holds no line of {name}" if known else f"{lines.molecule_formula} has no isotopologue {name}"
+        expected = ", ".join(f"{one.formula} ({one.local})" for one in (lines.isotopologues if known else exist))
+        raise InputError(problem("isotopologue", what, expected=expected)).about("isotopologue")
+    return lines.select(lines.isotopologue == chosen[0], "another isotopologue than the one chosen")
+
+
+def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: bool) -> LineList:
     columns = _reader(path, format)(path)
     if not columns.raw:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
-    return judge(columns, options)
+    return judge(columns, options, leave_out)
 
 
 def _reader(path: Path, format: str | None) -> Callable[[Path], ParsedColumns]:
@@ -78,11 +108,13 @@ def merge(lists: Sequence[LineList]) -> LineList:
     if len(lists) == 1:
         return lists[0]
     known: list[Isotopologue] = []
+    dropped: list[Isotopologue] = []
     files: list[str] = []
     index, file = [], []
     ledger = Ledger()
     for one in lists:
         known += [iso for iso in one.isotopologues if iso not in known]
+        dropped += [iso for iso in one.dropped if iso not in dropped]
         place = np.array([known.index(iso) for iso in one.isotopologues] or [0], dtype=np.int16)
         index.append(place[one.isotopologue] if len(one) else one.isotopologue)
         file.append((one.file + len(files)).astype(np.int16))
@@ -109,6 +141,7 @@ def merge(lists: Sequence[LineList]) -> LineList:
         file=np.concatenate(file)[order],
         files=tuple(files),
         ledger=ledger,
+        dropped=tuple(iso for iso in dropped if iso not in known),
     )
 
 

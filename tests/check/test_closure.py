@@ -62,7 +62,8 @@ def test_a_predicted_sum_is_held_to_the_tolerance_itself(make_case):
     row, accounts = closure_row(case)
     assert abs(accounts[2]["sampling"]) > 2e-5
     assert max(one["allowance"] for one in accounts) < 1e-6
-    assert row.limit < 2e-6
+    # The tolerance, the check's own error of 6e-7, and the ends.
+    assert row.limit < 1e-6 + 6e-7 + 1e-6
 
 
 @pytest.mark.parametrize("cutoff", ["0.3", "25.0"])

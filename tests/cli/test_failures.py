@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import json
 import os
 import signal
 import subprocess
@@ -125,14 +126,44 @@ def test_an_interrupt_while_modules_load_is_an_interrupt(monkeypatch, capsys, be
 
     monkeypatch.setattr(commands, "plan", loading)
     monkeypatch.setattr(sys, "argv", ["opacity", "plan", "co.toml"])
-    before = signal.getsignal(signal.SIGINT)
+    before = {number: signal.getsignal(number) for number in (signal.SIGINT, signal.SIGTERM)}
     try:
         with pytest.raises(SystemExit) as stop:
             entry_point()
     finally:
-        signal.signal(signal.SIGINT, before)
+        for number, handler in before.items():
+            signal.signal(number, handler)
     assert stop.value.code == 130
     assert capsys.readouterr() == ("", "interrupted: nothing half-written was left behind\n")
+
+
+@pytest.mark.parametrize("words", [["plan", "RECIPE", "--json"], ["build", "RECIPE", "--js"]], ids=str)
+def test_with_json_an_error_is_json_too(opacity, write_recipe, words):
+    path = write_recipe("co", ("{ air = 1.0 }", "{ H2 = 0.8, He = 0.2 }"))
+    code, out, err = opacity(*(path if word == "RECIPE" else word for word in words))
+    assert code == 2
+    assert len(err.splitlines()) == 2
+    assert json.loads(out) == {"error": err.splitlines()}
+
+
+@pytest.mark.parametrize(
+    "words, code",
+    [
+        (["show", "none.h5", "--json"], 1),
+        (["check", "none.h5", "--json"], 1),
+        (["plan", "none.toml", "--json"], 2),
+        (["build", "--json"], 2),
+        (["build", "co.toml", "--json", "--workers", "x"], 2),
+    ],
+    ids=str,
+)
+def test_every_command_with_json_tells_its_error_so(opacity, project, words, code):
+    found, out, err = opacity(*words)
+    assert found == code
+    assert json.loads(out) == {"error": [err.rstrip("\n")]}
+    # Without it stdout stays empty.
+    words.remove("--json")
+    assert opacity(*words)[1] == ""
 
 
 def test_an_error_without_an_interrupt_is_not_hidden(monkeypatch):
@@ -141,12 +172,54 @@ def test_an_error_without_an_interrupt_is_not_hidden(monkeypatch):
 
     monkeypatch.setattr(commands, "plan", broken)
     monkeypatch.setattr(sys, "argv", ["opacity", "plan", "co.toml"])
-    before = signal.getsignal(signal.SIGINT)
+    before = {number: signal.getsignal(number) for number in (signal.SIGINT, signal.SIGTERM)}
     try:
         with pytest.raises(ZeroDivisionError):
             entry_point()
     finally:
-        signal.signal(signal.SIGINT, before)
+        for number, handler in before.items():
+            signal.signal(number, handler)
+
+
+def test_sigterm_ends_a_build_cleanly(write_recipe, tmp_path):
+    # Every line at every one of three million points: work for seconds, of which a moment passes.
+    wavenumber = "{ start = 2000.0, stop = 2300.0, step = 0.0001 }"
+    recipe = write_recipe(wavenumber=wavenumber, cutoff="500.0", tolerance="1e-6")
+    out = tmp_path / "out"
+    command = [sys.executable, "-m", "opacity", "build", str(recipe), "-o", str(out), "--workers", "2", "--json"]
+    environment = {**os.environ, "PYTHONPATH": str(ROOT)}
+    pipes = {"stdout": subprocess.PIPE, "stderr": subprocess.PIPE}
+    with subprocess.Popen(command, env=environment, **pipes) as process:
+        deadline = time.monotonic() + 60.0
+        while not out.exists() and process.poll() is None and time.monotonic() < deadline:
+            time.sleep(0.01)
+        process.terminate()
+        stdout, stderr = process.communicate(timeout=60.0)
+    message = "terminated: nothing half-written was left behind; the same command starts again"
+    assert process.returncode == 75
+    assert stderr.decode().splitlines()[-1] == message
+    assert json.loads(stdout) == {"error": [message]}
+    assert list(out.iterdir()) == []
+
+
+def test_a_termination_while_modules_load_is_one_too(monkeypatch, capsys):
+    def loading(arguments):
+        with contextlib.suppress(KeyboardInterrupt):
+            os.kill(os.getpid(), signal.SIGTERM)
+            time.sleep(5.0)
+        raise ImportError("initialization failed")
+
+    monkeypatch.setattr(commands, "plan", loading)
+    monkeypatch.setattr(sys, "argv", ["opacity", "plan", "co.toml"])
+    before = {number: signal.getsignal(number) for number in (signal.SIGINT, signal.SIGTERM)}
+    try:
+        with pytest.raises(SystemExit) as stop:
+            entry_point()
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)
+    assert stop.value.code == 75
+    assert capsys.readouterr().err.startswith("terminated: nothing half-written")
 
 
 MISSING = "cannot be opened (No such file or directory)"
@@ -158,7 +231,11 @@ MISSING = "cannot be opened (No such file or directory)"
         (["show", "none.h5"], 1, f"none.h5: {MISSING}"),
         (["check", "none.h5"], 1, f"none.h5: {MISSING}"),
         (["check", ""], 1, ".: not a file; expected a table"),
-        (["check", "co.toml", "-o", "nowhere"], 1, f"nowhere/co.cross-section.h5: {MISSING}"),
+        (
+            ["check", "co.toml", "-o", "nowhere"],
+            1,
+            "nowhere/co.cross-section.h5: co.toml has no table here yet; build it first",
+        ),
         (["build", "none.toml"], 2, "none.toml: no such file; expected a recipe; `opacity new FORMULA` writes"),
         (["plan", ""], 2, ".: not a file; expected a recipe, found a folder"),
         (["build", "tables"], 2, "tables: not a file; expected a recipe, found a folder"),
@@ -166,10 +243,10 @@ MISSING = "cannot be opened (No such file or directory)"
         (["check", "tables"], 1, "tables: not a file; expected a table"),
         (["build", "/dev/null"], 2, "/dev/null: not a file; expected a recipe"),
         (["show", "/dev/zero"], 1, "/dev/zero: not a file; expected a table"),
-        (["show", "co.toml"], 1, "co.toml: not a readable HDF5 file"),
+        (["show", "co.toml"], 1, "co.toml: not a table: not a readable HDF5 file"),
         (["build", "tables/co.cross-section.h5"], 2, "tables/co.cross-section.h5:1: not UTF-8 text"),
         (["plan", "tables/co.log.json"], 2, "tables/co.log.json:1: not valid TOML"),
-        (["check", "tables/co.log.json"], 1, "tables/co.log.json: not a readable HDF5 file"),
+        (["check", "tables/co.log.json"], 1, "tables/co.log.json: not a table: not a readable HDF5 file"),
         (["check", "tables/co.cross-section.h5", "--recipe", "tables/co.cross-section.h5"], 2, "not UTF-8 text"),
         (["build", "co.toml", "-o", "co.toml"], 1, "co.toml: the folder for the tables cannot be made (File exists)"),
         (["build", "co.toml", "-o", "l" * 300], 1, "cannot be made (File name too long)"),
