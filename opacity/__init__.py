@@ -9,6 +9,7 @@ import importlib
 from typing import TYPE_CHECKING, Any
 
 from opacity.errors import (
+    AssumptionWarning,
     InputError,
     LineListError,
     MoleculeError,
@@ -23,10 +24,12 @@ __version__ = VERSION
 
 if TYPE_CHECKING:
     from opacity.api import build, cross_section, exact_cross_section, plan
+    from opacity.arguments import DefaultWidth
+    from opacity.line_list.model import LineList
     from opacity.line_list.read import read_lines
-    from opacity.molecule.broadening import DefaultWidth
     from opacity.recipe.load import load_recipe
-    from opacity.tables.read import open_table
+    from opacity.recipe.model import Cutoff, CutoffStep
+    from opacity.tables.read import Table, open_table
 
 _HOMES = {
     "build": "opacity.api",
@@ -34,19 +37,28 @@ _HOMES = {
     "exact_cross_section": "opacity.api",
     "plan": "opacity.api",
     "read_lines": "opacity.line_list.read",
-    "DefaultWidth": "opacity.molecule.broadening",
+    "LineList": "opacity.line_list.model",
+    "DefaultWidth": "opacity.arguments",
     "load_recipe": "opacity.recipe.load",
+    "Cutoff": "opacity.recipe.model",
+    "CutoffStep": "opacity.recipe.model",
     "open_table": "opacity.tables.read",
+    "Table": "opacity.tables.read",
 }
 
 __all__ = [
+    "AssumptionWarning",
+    "Cutoff",
+    "CutoffStep",
     "DefaultWidth",
     "InputError",
+    "LineList",
     "LineListError",
     "MoleculeError",
     "OpacityError",
     "RecipeError",
     "ResourceError",
+    "Table",
     "TableError",
     "__version__",
     "build",

@@ -2,27 +2,29 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from opacity.arguments import DefaultWidth, as_default_widths, as_fractions, as_number, shown
 from opacity.cross_sections.exact import exact_spectrum
 from opacity.cross_sections.prepare import NodeLines, PreparedLines, prepare
 from opacity.cross_sections.tolerance import regions
-from opacity.errors import InputError, problem
-from opacity.grids import FloatArray, as_axis, as_wavenumbers
+from opacity.errors import AssumptionWarning, InputError, LineListError, problem
+from opacity.grids import HIGHEST_PRESSURE, LOWEST_PRESSURE, FloatArray, as_axis, as_wavenumbers
 from opacity.line_list.model import LineList
-from opacity.molecule.broadening import DefaultWidth
 from opacity.recipe.model import Cutoff, CutoffStep, Recipe
 
-Numbers = float | Sequence[float] | NDArray[Any]
+if TYPE_CHECKING:
+    from opacity.pipeline.plan import Plan
 
-LOWEST_PRESSURE = 1e-15
-HIGHEST_PRESSURE = 1e6
+Numbers = float | Sequence[float] | NDArray[Any]
 
 
 def cross_section(
@@ -51,22 +53,24 @@ def cross_section(
     "terrestrial", "pure" or fractions by isotopologue; `default_widths` serve lines without widths.
     `workers` threads give the same bits as one.
 
-    Raises InputError for arguments that cannot be right, MoleculeError for widths or partition functions that
-    are not to be had.
+    What had to be assumed for some of the lines is told in one AssumptionWarning.  Raises InputError for arguments
+    that cannot be right, MoleculeError for widths or partition functions that are not to be had.
     """
     # Late, so that importing the package does not load numba.
     from opacity.cross_sections.compute import spectrum
 
-    limits = regions(tolerance, plinth)
-    nu = as_wavenumbers(wavenumber)
+    _check_workers(workers)
+    _check_flag("plinth", plinth)
+    limits = regions(as_number("tolerance", tolerance), plinth)
+    nodes = _nodes(wavenumber, temperature, pressure, cutoff)
+    prepared = _prepare(lines, partition_function, abundance, broadeners, default_widths, chi)
     executor = ThreadPoolExecutor(workers) if workers > 1 else None
 
     def one(node: NodeLines, reach: float) -> FloatArray:
-        return spectrum(node, nu, reach, limits, plinth, executor)
+        return spectrum(node, nodes.wavenumber, reach, limits, plinth, executor)
 
-    prepared = _prepare(lines, partition_function, abundance, broadeners, default_widths, chi)
     try:
-        return _all_nodes(prepared, nu, temperature, pressure, cutoff, one)
+        return _all_nodes(prepared, nodes, one)
     finally:
         if executor is not None:
             executor.shutdown(cancel_futures=True)
@@ -94,13 +98,56 @@ def exact_cross_section(
     nothing here.
     """
     del tolerance, workers
-    nu = as_wavenumbers(wavenumber)
+    _check_flag("plinth", plinth)
+    nodes = _nodes(wavenumber, temperature, pressure, cutoff)
 
     def one(node: NodeLines, reach: float) -> FloatArray:
-        return exact_spectrum(node, nu, reach, plinth)
+        return exact_spectrum(node, nodes.wavenumber, reach, plinth)
 
     prepared = _prepare(lines, partition_function, abundance, broadeners, default_widths, chi)
-    return _all_nodes(prepared, nu, temperature, pressure, cutoff, one)
+    return _all_nodes(prepared, nodes, one)
+
+
+@dataclass(frozen=True)
+class _Nodes:
+    """The axes asked for, and the cut-off by pressure."""
+
+    wavenumber: FloatArray
+    temperature: FloatArray
+    pressure: FloatArray
+    cutoff: Cutoff
+
+
+def _nodes(
+    wavenumber: Sequence[float] | NDArray[Any], temperature: Numbers, pressure: Numbers, cutoff: float | Cutoff
+) -> _Nodes:
+    nodes = _Nodes(
+        as_wavenumbers(wavenumber),
+        as_axis("temperature", "K", temperature),
+        as_axis("pressure", "bar", pressure),
+        _cutoff_rule(cutoff),
+    )
+    if nodes.pressure[0] < LOWEST_PRESSURE or nodes.pressure[-1] > HIGHEST_PRESSURE:
+        expected, found = f"{LOWEST_PRESSURE:g} to {HIGHEST_PRESSURE:g} bar", shown(nodes.pressure.tolist())
+        raise InputError(problem("pressure", "out of range", expected=expected, found=found))
+    return nodes
+
+
+def _check_workers(workers: object) -> None:
+    if not isinstance(workers, (int, np.integer)) or isinstance(workers, bool) or workers < 1:
+        expected = "a whole number of threads, 1 or more"
+        raise InputError(problem("workers", "impossible", expected=expected, found=shown(workers)))
+
+
+def _check_flag(name: str, value: object) -> None:
+    if not isinstance(value, (bool, np.bool_)):
+        raise InputError(problem(name, "not a boolean", expected="True or False", found=shown(value)))
+
+
+def _check_lines(lines: object) -> None:
+    if not isinstance(lines, LineList):
+        expected = "a LineList, such as opacity.read_lines gives"
+        raise InputError(problem("lines", "not a line list", expected=expected, found=shown(lines)))
 
 
 def _prepare(
@@ -111,52 +158,53 @@ def _prepare(
     default_widths: Mapping[str, DefaultWidth] | None,
     chi: str | None,
 ) -> PreparedLines:
+    _check_lines(lines)
     if chi is not None:
-        raise InputError(
-            problem("chi", "no set of chi factors is known to this version", expected="None", found=f'"{chi}"')
-        )
-    return prepare(
+        what = "no set of chi factors is known to this version"
+        raise InputError(problem("chi", what, expected="None", found=shown(chi)))
+    if not isinstance(abundance, str):
+        abundance = as_fractions("abundance", abundance, '"terrestrial", "pure" or fractions by isotopologue')
+    prepared = prepare(
         lines,
         partition_function=partition_function,
         abundance=abundance,
-        broadeners=broadeners,
-        defaults=default_widths,
+        broadeners=as_fractions("broadeners", broadeners, 'mole fractions such as {"H2": 0.85, "He": 0.15}'),
+        defaults=as_default_widths("default_widths", default_widths),
     )
+    if prepared.assumptions:
+        assumed = "; ".join(f"for {one.lines} of {len(prepared)} lines: {one.what}" for one in prepared.assumptions)
+        # The user's call stands two frames above.
+        warnings.warn(f"assumed {assumed}", AssumptionWarning, stacklevel=3)
+    return prepared
 
 
-def _all_nodes(
-    prepared: PreparedLines,
-    nu: FloatArray,
-    temperature: Numbers,
-    pressure: Numbers,
-    cutoff: float | Cutoff,
-    one: Callable[[NodeLines, float], FloatArray],
-) -> FloatArray:
-    temperatures, pressures = as_axis("temperature", "K", temperature), as_axis("pressure", "bar", pressure)
-    if pressures[0] < LOWEST_PRESSURE or pressures[-1] > HIGHEST_PRESSURE:
-        expected = f"{LOWEST_PRESSURE:g} to {HIGHEST_PRESSURE:g} bar"
-        raise InputError(problem("pressure", "out of range", expected=expected, found=f"{pressures}"))
-    rule = _cutoff_rule(cutoff)
-    sigma = np.empty((temperatures.size, pressures.size, nu.size))
-    for i, t in enumerate(temperatures):
+def _all_nodes(prepared: PreparedLines, nodes: _Nodes, one: Callable[[NodeLines, float], FloatArray]) -> FloatArray:
+    sigma = np.empty((nodes.temperature.size, nodes.pressure.size, nodes.wavenumber.size))
+    for i, t in enumerate(nodes.temperature):
         strength = prepared.strengths(float(t))
-        for j, p in enumerate(pressures):
-            sigma[i, j] = one(prepared.at(float(t), float(p), strength), rule.at(float(p)))
+        for j, p in enumerate(nodes.pressure):
+            sigma[i, j] = one(prepared.at(float(t), float(p), strength), nodes.cutoff.at(float(p)))
+            if not np.all(np.isfinite(sigma[i, j])):
+                where = f"node {t:g} K, {p:g} bar"
+                raise LineListError(problem(where, "the sum is not finite: a line has impossible values"))
     return sigma
 
 
 def _cutoff_rule(cutoff: float | Cutoff) -> Cutoff:
     if isinstance(cutoff, Cutoff):
         return cutoff
-    if not (np.isfinite(cutoff) and cutoff > 0.0):
-        raise InputError(problem("cutoff", "impossible", expected="a number above 0 cm-1", found=cutoff))
-    return Cutoff((CutoffStep(float(cutoff)),))
+    expected = "a number above 0 cm-1"
+    number = as_number("cutoff", cutoff, expected)
+    if number <= 0.0:
+        raise InputError(problem("cutoff", "impossible", expected=expected, found=shown(cutoff)))
+    return Cutoff((CutoffStep(number),))
 
 
-def plan(recipe: Recipe, folder: str | Path = "tables") -> Any:
-    """What a build of the recipe into a folder will do and need: an `opacity.pipeline.plan.Plan`.
+def plan(recipe: Recipe, folder: str | Path = "tables") -> Plan:
+    """What a build of the recipe into a folder will do and need.
 
-    Raises OpacityError of the kind that fits where the build could not be made.
+    Raises OpacityError of the kind that fits where the recipe's lines cannot be used; whether the build fits into
+    memory and disk is told by the plan's `obstacles`.
     """
     from opacity.pipeline.inputs import load_inputs
     from opacity.pipeline.plan import make_plan
@@ -168,8 +216,11 @@ def build(recipe: Recipe, folder: str | Path = "tables", *, workers: int | None 
     """Build the tables that a recipe asks for into a folder and return their paths.
 
     `workers` threads, by default as many as the CPUs allowed; the tables have the same bits for any number.
-    A table that is there already and was made from the same inputs is kept.  Raises OpacityError of the kind that fits.
+    A table that is there already and was made from the same inputs is kept.  What was assumed and what there is to be
+    warned of stands in the table's `checks`.  Raises OpacityError of the kind that fits.
     """
     from opacity.pipeline.build import build_table
 
+    if workers is not None:
+        _check_workers(workers)
     return (build_table(recipe, Path(folder), workers=workers, quiet=True).table,)

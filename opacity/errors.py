@@ -8,12 +8,23 @@ code of the error's class; nothing else ever reaches a user as a bare traceback.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import Self
 
 
 class OpacityError(Exception):
-    """Base of all errors of this package; `exit_code` is what the command line returns."""
+    """Base of all errors of this package; `exit_code` is what the command line returns.
+
+    `argument` names the argument of a Python call whose choice is at fault, where one is.  Each line of the message
+    then starts with that name, which a recipe's key can replace.
+    """
 
     exit_code = 1
+    argument: str | None = None
+
+    def about(self, argument: str) -> Self:
+        """The error itself, with the argument that it is about."""
+        self.argument = argument
+        return self
 
 
 class InputError(OpacityError, ValueError):
@@ -31,6 +42,9 @@ class RecipeError(OpacityError):
         self.problems: tuple[str, ...] = tuple(problems)
         super().__init__("\n".join(self.problems))
 
+    def __reduce__(self) -> tuple[type[RecipeError], tuple[tuple[str, ...]]]:
+        return type(self), (self.problems,)
+
 
 class LineListError(OpacityError):
     """A line list that cannot be read, or that holds what the recipe does not allow."""
@@ -46,6 +60,10 @@ class TableError(OpacityError):
 
 class ResourceError(OpacityError):
     """Memory, disk or permission that the work needs and does not have."""
+
+
+class AssumptionWarning(UserWarning):
+    """What a computation assumed because the line list does not give it, and for how many lines."""
 
 
 def problem(

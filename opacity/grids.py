@@ -9,12 +9,17 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from opacity.arguments import as_numbers
 from opacity.errors import InputError, problem
 
 FloatArray = NDArray[np.float64]
 
 SPACINGS = ("linear", "log")
 MAX_POINTS = 200_000_000
+
+LOWEST_PRESSURE = 1e-12
+HIGHEST_PRESSURE = 1e5
+"""Pressures (bar) that can be asked for, in a recipe as in a call."""
 
 
 def uniform_wavenumbers(start: float, stop: float, step: float) -> FloatArray:
@@ -101,7 +106,7 @@ def as_axis(name: str, unit: str, values: Sequence[float] | NDArray[Any] | float
 
     Raises InputError naming the axis where a value is not finite, not positive or out of order.
     """
-    axis = np.atleast_1d(np.asarray(values, dtype=np.float64))
+    axis = as_numbers(name, values, f"numbers in {unit}")
     if axis.ndim != 1 or axis.size == 0:
         raise InputError(problem(name, "not an axis", expected="one or more numbers", found=f"shape {axis.shape}"))
     bad = np.flatnonzero(~np.isfinite(axis) | (axis <= 0.0))
@@ -124,7 +129,7 @@ def as_axis(name: str, unit: str, values: Sequence[float] | NDArray[Any] | float
 
 def as_wavenumbers(values: Sequence[float] | NDArray[Any]) -> FloatArray:
     """A strictly rising wavenumber axis (cm-1) as contiguous f8, (n_nu,); 0 is allowed as the first point."""
-    axis = np.ascontiguousarray(np.atleast_1d(np.asarray(values, dtype=np.float64)))
+    axis = np.ascontiguousarray(as_numbers("wavenumber", values, "numbers in cm-1"))
     if axis.ndim == 1 and axis.size and axis[0] == 0.0:
         if axis.size > 1:
             as_axis("wavenumber", "cm-1", axis[1:])

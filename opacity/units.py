@@ -6,7 +6,7 @@ the unit's name here, because mixing up 273.15 K and 296 K is an error of 8.4 %.
 
 from __future__ import annotations
 
-from opacity.constants import AVOGADRO, LOSCHMIDT, STANDARD_ATMOSPHERE
+from opacity.constants import AVOGADRO, LOSCHMIDT
 from opacity.errors import InputError, problem
 
 _KM_PER_MOL = 1e5 / AVOGADRO
@@ -20,11 +20,6 @@ BAND_STRENGTH_UNITS: dict[str, float] = {
     "cm-2 amagat-1": 1.0 / LOSCHMIDT,
 }
 """Factor from each unit of integrated band strength to cm per molecule."""
-
-
-def per_atm_to_per_bar(value: float) -> float:
-    """A width or shift in cm-1/atm as cm-1/bar."""
-    return value / STANDARD_ATMOSPHERE
 
 
 def band_strength_to_cm_per_molecule(value: float, unit: str) -> float:

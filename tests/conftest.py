@@ -1,4 +1,4 @@
-"""Small recipes and lines of the sample lists, shared by the tests of checks, pipeline and command line."""
+"""Small recipes and lines of the sample lists, used by the tests of checks, pipeline and command line."""
 
 from __future__ import annotations
 

@@ -20,6 +20,7 @@ LEVELS = {
     "errors": 0,
     "constants": 0,
     "units": 0,
+    "arguments": 1,
     "grids": 1,
     "provenance": 1,
     "kernels": 1,
@@ -46,7 +47,7 @@ ONLY_IN = {
     "hapi": ("molecule/",),
     "matplotlib": ("tables/draw.py",),
 }
-SIDE_BY_SIDE = {"errors", "constants", "units", "grids", "provenance", "api", ""}
+SIDE_BY_SIDE = {"errors", "constants", "units", "arguments", "grids", "provenance", "api", ""}
 """Modules in the package itself: it is their own folder, so that those of one level may import each other."""
 
 LONGEST_FILE = 350

@@ -16,16 +16,17 @@ from numpy.typing import NDArray
 
 from opacity.check.result import CheckResult, judge
 from opacity.check.spectra import Spectra, interpolated, nodes_of
-from opacity.cross_sections.exact import exact_spectrum
-from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.exact import exact_at
+from opacity.cross_sections.prepare import NodeLines, PreparedLines
 from opacity.grids import FloatArray
 from opacity.recipe.model import Profile
 
 MOST_NODES = 16
 MOST_CELLS = 8
-POINTS = 200
 STORAGE_ROUNDING = 1.2e-7
 """Twice the rounding of f4, in which most tables are stored."""
+PLINTH_ROUNDING = 1e-13
+"""With plinth removal the truth itself is only as good as this, relative to the sum before subtraction."""
 NEGLIGIBLE = 1e-300
 """Values below this (cm2/molecule) lose digits in f8 itself and are held only to be as small."""
 
@@ -65,16 +66,26 @@ def choose_points(
             index = np.searchsorted(wavenumber, place)
             chosen += [index, index - 1]
     merged = np.concatenate(chosen)
-    return np.unique(np.clip(merged, 0, size - 1)).astype(np.intp)[: 2 * POINTS]
+    return np.unique(np.clip(merged, 0, size - 1)).astype(np.intp)
 
 
-def relative_errors(values: FloatArray, truth: FloatArray) -> FloatArray:
-    """|value - truth| / truth, (n,); where truth is 0 the error is 0 for 0 and infinite for all above `NEGLIGIBLE`."""
-    errors = np.abs(values - truth)
+def relative_errors(values: FloatArray, truth: FloatArray, rounding: FloatArray | float = 0.0) -> FloatArray:
+    """|value - truth| / truth, (n,); where truth is 0 the error is 0 for 0 and infinite for all above `NEGLIGIBLE`.
+
+    `rounding`, (n,) or a number, is what the truth itself may be off by; NaN is infinitely off.
+    """
+    errors = np.maximum(np.abs(values - truth) - rounding, 0.0)
+    errors = np.where(np.isnan(errors), np.inf, errors)
+    values = np.where(np.abs(values) <= rounding, 0.0, values)
     safe = np.where(truth > 0.0, truth, 1.0)
     errors = np.where(truth > 0.0, errors / safe, np.where(values == 0.0, 0.0, np.inf))
     negligible = (truth < NEGLIGIBLE) & (values < 2.0 * NEGLIGIBLE) & (values >= 0.0)
     return np.where(negligible, 0.0, errors)
+
+
+def plinth_rounding(node: NodeLines, points: FloatArray, cutoff: float, plinth: bool) -> FloatArray | float:
+    """What rounding leaves of a difference of two nearly equal values: 1e-13 of the sum before subtraction."""
+    return PLINTH_ROUNDING * exact_at(node, points, cutoff) if plinth else 0.0
 
 
 def audit(spectra: Spectra, lines: PreparedLines, profile: Profile, seed: int) -> Audit:
@@ -93,8 +104,9 @@ def audit(spectra: Spectra, lines: PreparedLines, profile: Profile, seed: int) -
         sigma = spectra.spectrum(*index)
         points = choose_points(rng, sigma, spectra.wavenumber, lines.wavenumber, cutoff)
         at = spectra.wavenumber[points]
-        truth = exact_spectrum(lines.at(temperature, pressure), at, cutoff, profile.plinth)
-        errors = relative_errors(sigma[points], truth)
+        node = lines.at(temperature, pressure)
+        truth = exact_at(node, at, cutoff, profile.plinth)
+        errors = relative_errors(sigma[points], truth, plinth_rounding(node, at, cutoff, profile.plinth))
         zeros += int(np.count_nonzero(truth == 0.0))
         all_errors.append(errors)
         top = int(np.argmax(errors))
@@ -147,7 +159,7 @@ def interpolation_errors(spectra: Spectra, lines: PreparedLines, profile: Profil
         cutoff = profile.cutoff.at(pressure)
         sigma = interpolated(spectra, temperature, pressure)
         points = choose_points(rng, sigma, spectra.wavenumber, lines.wavenumber, cutoff)
-        truth = exact_spectrum(lines.at(temperature, pressure), spectra.wavenumber[points], cutoff, profile.plinth)
+        truth = exact_at(lines.at(temperature, pressure), spectra.wavenumber[points], cutoff, profile.plinth)
         here = relative_errors(sigma[points], truth)[truth > 0.0]
         if here.size and np.percentile(here, 99.0) > worst["p99"]:
             p99 = float(np.percentile(here, 99.0))

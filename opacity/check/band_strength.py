@@ -9,13 +9,17 @@ import numpy as np
 from opacity.check.closure import JUDGED_BELOW, Closure, share_within
 from opacity.check.result import CANNOT_JUDGE, CheckResult, judge
 from opacity.check.spectra import Spectra, interpolated, nodes_of
+from opacity.cross_sections.exact import exact_at
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.grids import FloatArray
 from opacity.recipe.model import BandStrength, Profile
+from opacity.tables import interpolate
 from opacity.units import band_strength_to_cm_per_molecule
 
 STANDARD_DEVIATIONS = 2.0
 """A band agrees within this many of the published standard deviations."""
+SAMPLE = 400
+"""Points of a band at which the cost of interpolation is taken."""
 
 
 def integral_between(wavenumber: FloatArray, values: FloatArray, lower: float, upper: float) -> float:
@@ -50,7 +54,7 @@ def check_band(
     limit = STANDARD_DEVIATIONS * band.uncertainty
     between = ""
     if not np.any(spectra.temperature == band.temperature):
-        cost = found / _from_lines(band, pressure, lines, profile) - 1.0
+        cost = _interpolation_cost(band, spectra, pressure, lines, profile)
         between = f", interpolated at a cost of {cost:+.1e}"
         if not abs(cost) <= 0.5 * limit:
             detail = (
@@ -64,11 +68,22 @@ def check_band(
     return judge(name, value, limit, detail)
 
 
-def _from_lines(band: BandStrength, pressure: float, lines: PreparedLines, profile: Profile) -> float:
-    """The band's integral as a table with a node at its temperature would hold it, cm/molecule."""
-    node = lines.at(band.temperature, pressure)
-    share = share_within(node, *band.range, profile.cutoff.at(pressure), profile.plinth)
-    return max(float(np.sum(node.strength * share)), 1e-300)
+def _interpolation_cost(
+    band: BandStrength, spectra: Spectra, pressure: float, lines: PreparedLines, profile: Profile
+) -> float:
+    """How far interpolating in temperature moves the band's integral, relative; from the lines alone."""
+    nu = spectra.wavenumber
+    part = np.flatnonzero((nu >= band.range[0]) & (nu <= band.range[1]))
+    sample = nu[part[:: max(part.size // SAMPLE, 1)]]
+    cutoff = profile.cutoff.at(pressure)
+
+    def exact(temperature: float) -> FloatArray:
+        return exact_at(lines.at(temperature, pressure), sample, cutoff, profile.plinth)
+
+    at_nodes = np.array([[exact(float(t))] for t in spectra.temperature])
+    axes = spectra.temperature, np.array([pressure])
+    between = interpolate.interpolate(at_nodes, *axes, band.temperature, pressure)
+    return float(np.sum(between) / max(float(np.sum(exact(band.temperature))), 1e-300) - 1.0)
 
 
 def choose_pressure(

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import tomllib
 from collections.abc import Callable
+
+import numpy as np
 
 from opacity.check.result import AGREES, CheckResult
 from opacity.check.run import CheckReport, run_checks
@@ -15,8 +18,32 @@ from opacity.tables.read import Table
 def check_integrity(table: Table) -> CheckResult:
     """Read every block and compare it with its sha256.  Raises TableError naming the first damaged block."""
     table.verify()
+    formula = formula_of(table.recipe)
+    if formula is not None and table.formula != formula:
+        raise TableError(
+            problem(table.path, "its formula is not that of its recipe", expected=formula, found=table.formula)
+        )
     nodes = table.temperature.size if table.profile else table.temperature.size * table.pressure.size
     return CheckResult("integrity", AGREES, f"all blocks of {nodes} spectra match their sha256")
+
+
+def formula_of(recipe: str) -> str | None:
+    """The molecule that a recipe's text names, None where it is not to be read."""
+    try:
+        return str(tomllib.loads(recipe)["molecule"]["formula"])
+    except (tomllib.TOMLDecodeError, KeyError, TypeError):
+        return None
+
+
+def _has_axes_of(table: Table, recipe: Recipe) -> bool:
+    grid = recipe.grid
+    if (grid.nodes is not None) != table.profile:
+        return False
+    wanted = [grid.temperature, grid.pressure, grid.wavenumber]
+    if grid.nodes is not None:
+        wanted[:2] = [tuple(t for t, _ in grid.nodes), tuple(p for _, p in grid.nodes)]
+    found = (table.temperature, table.pressure, table.wavenumber)
+    return all(np.array_equal(axis, np.asarray(one)) for axis, one in zip(found, wanted, strict=True))
 
 
 def stored_results(table: Table) -> list[CheckResult]:
@@ -27,8 +54,10 @@ def stored_results(table: Table) -> list[CheckResult]:
         raise TableError(problem(table.path, f"checks are not as this version writes them ({error})")) from error
 
 
-def require_same_inputs(table: Table, recipe: Recipe, provenance: dict[str, object]) -> None:
-    """Raise TableError unless the table was built from this recipe and these line lists."""
+def require_same_recipe(table: Table, recipe: Recipe) -> None:
+    """Raise TableError unless the table was built from a recipe of this very text."""
+    if table.recipe == recipe.text and not _has_axes_of(table, recipe):
+        raise TableError(problem(table.path, "its axes are not those of its recipe", remedy="build it again"))
     if table.recipe != recipe.text:
         raise TableError(
             problem(
@@ -37,6 +66,10 @@ def require_same_inputs(table: Table, recipe: Recipe, provenance: dict[str, obje
                 remedy="build it again, or check it with the recipe it was built from",
             )
         )
+
+
+def require_same_inputs(table: Table, recipe: Recipe, provenance: dict[str, object]) -> None:
+    """Raise TableError unless the table was built from the line lists and partition functions that a recipe gives."""
     for key in ("line_lists", "partition_function"):
         if table.provenance.get(key) != provenance.get(key):
             raise TableError(

@@ -41,7 +41,11 @@ def share_between(node: NodeLines, lower: FloatArray, upper: FloatArray) -> Floa
     """Share of each line's profile between two wavenumbers, (n_lines,); 0 where `upper` <= `lower`."""
     scale = SQRT_LN2 / node.doppler
     y = node.lorentz * scale
-    share = upper_tail((lower - node.centre) * scale, y) - upper_tail((upper - node.centre) * scale, y)
+    start, stop = (lower - node.centre) * scale, (upper - node.centre) * scale
+    # The profile is even: below its centre the mirrored limits keep the digits that 1 - tail would lose.
+    mirrored = stop < 0.0
+    start, stop = np.where(mirrored, -stop, start), np.where(mirrored, -start, stop)
+    share = upper_tail(start, y) - upper_tail(stop, y)
     return np.where(upper > lower, np.maximum(share, 0.0), 0.0)
 
 
@@ -79,7 +83,8 @@ def sampling_offset(node: NodeLines, start: float, step: float) -> FloatArray:
     total = np.zeros(node.centre.size)
     for k in range(1, MAX_HARMONICS + 1):
         decay = _decay(node, steps, k)
-        if not np.any(decay < 40.0):
+        count = np.flatnonzero(decay < 40.0)
+        if not count.size:
             break
-        total += 2.0 * np.exp(-decay) * np.cos(k * phase)
+        total[count] += 2.0 * np.exp(-decay[count]) * np.cos(k * phase[count])
     return np.where(_decay(node, steps, MAX_HARMONICS) < 20.0, np.nan, total)

@@ -12,6 +12,7 @@ from opacity.check.closure import closure_of, judge_closure
 from opacity.check.result import CheckResult, finite
 from opacity.check.spectra import Spectra, is_uniform, nodes_of
 from opacity.cross_sections.prepare import PreparedLines
+from opacity.grids import FloatArray
 from opacity.recipe.model import Recipe
 
 
@@ -39,9 +40,12 @@ def run_checks(
     profile = recipe.profile
     uniform = is_uniform(spectra.wavenumber)
     accounts = []
+    strengths: dict[float, FloatArray] = {}
     for index, temperature, pressure in nodes_of(spectra):
         cutoff = profile.cutoff.at(pressure)
-        node = lines.at(temperature, pressure)
+        if temperature not in strengths:
+            strengths = {temperature: lines.strengths(temperature)}
+        node = lines.at(temperature, pressure, strengths[temperature])
         accounts.append(closure_of(node, spectra.wavenumber, spectra.spectrum(*index), cutoff, profile.plinth, uniform))
         progress()
     found = audit(spectra, lines, profile, seed)

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import sys
 from argparse import Namespace
+from collections.abc import Iterable, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -32,44 +33,56 @@ def new(arguments: Namespace) -> int:
     if path.exists():
         raise InputError(problem(path, "is there already", remedy="choose another name with -o"))
     write_atomically(path, recipe.encode("utf-8"))
+    if not known:
+        formula = arguments.formula
+        print(text.wrapped(f"{formula}: not in hapi's tables; give its mass and a partition-function file, or mend it"))
     print(f"{path}: fill in what is marked `decide`, then run `opacity plan {path}`")
     return DONE
 
 
 def plan(arguments: Namespace) -> int:
-    """`opacity plan RECIPE`: what a build will do and need."""
+    """`opacity plan RECIPE`: what a build will do and need; exit code 1 where it cannot fit here."""
     from opacity.api import plan as make_plan
     from opacity.recipe.load import load_recipe
 
     made = make_plan(load_recipe(arguments.recipe), arguments.output)
     if arguments.json:
         print(text.as_json(made.as_dict()))
-        return DONE
-    print(text.facts(_plan_facts(made)))
-    print_notes(made)
-    return DONE
+    else:
+        print(text.facts(_plan_facts(made)))
+        _print_notes(made.ledger, _assumptions(made))
+        for warning in made.warnings:
+            print(text.wrapped(f"warning: {warning}"))
+    for obstacle in made.obstacles:
+        print(f"warning: {obstacle}", file=sys.stderr)
+    return FAILED if made.obstacles else DONE
 
 
 def _plan_facts(made: Plan) -> list[tuple[str, str]]:
+    lines, read = text.counted(made.lines, "line"), text.counted(made.ledger["read"], "record")
     return [
         ("recipe", made.recipe),
         ("table", made.table),
-        ("grid", f"{made.nodes} nodes of {made.points} points"),
-        ("lines", f"{made.lines} in reach of the grid ({made.ledger['read']} records read)"),
+        ("grid", f"{text.counted(made.nodes, 'node')} of {text.counted(made.points, 'point')}"),
+        ("lines", f"{lines} in reach of the grid ({read} read)"),
         ("work", f"{made.profile_values:.2g} profile values, about {text.duration(made.seconds)} on one core"),
-        ("memory", f"{text.size(made.memory)} of {text.size(made.memory_available)} available"),
+        ("memory", f"up to {text.size(made.memory)} of {text.size(made.memory_available)} available"),
         ("disk", f"up to {text.size(made.disk)} of {text.size(made.disk_free)} free"),
     ]
 
 
-def print_notes(made: Plan) -> None:
-    """What was assumed for how many lines, what was left out, and warnings."""
-    for reason, count in made.ledger["left_out"].items():
-        print(f"left out: {count} lines, {reason}")
-    for what, lines in made.assumptions:
-        print(f"assumed for {lines} lines: {what}")
-    for warning in made.warnings:
-        print(f"warning: {warning}")
+def _assumptions(made: Plan) -> list[dict[str, Any]]:
+    return [{"what": what, "lines": lines} for what, lines in made.assumptions]
+
+
+def _print_notes(ledger: Mapping[str, Any], assumptions: Iterable[Mapping[str, Any]]) -> None:
+    for kind, what in text.notes(ledger, assumptions):
+        print(text.wrapped(f"{kind} {what}" if kind == "assumed" else f"{kind}: {what}"))
+
+
+def _warn(warnings: Iterable[str]) -> None:
+    for warning in warnings:
+        print(text.wrapped(f"warning: {warning}"), file=sys.stderr, flush=True)
 
 
 def build(arguments: Namespace) -> int:
@@ -79,9 +92,16 @@ def build(arguments: Namespace) -> int:
     from opacity.recipe.load import load_recipe
 
     made = build_table(
-        load_recipe(arguments.recipe), Path(arguments.output), workers=arguments.workers, quiet=arguments.quiet
+        load_recipe(arguments.recipe),
+        Path(arguments.output),
+        workers=arguments.workers,
+        quiet=arguments.quiet,
+        announce=lambda plan: _warn(plan.warnings),
     )
-    rows = [CheckResult(**row) for row in made.figures["results"]]
+    figures = made.figures
+    if made.reused:
+        _warn(figures["warnings"])
+    rows = [CheckResult(**row) for row in figures["results"]]
     failed = any(row.verdict == DIFFERS for row in rows)
     if arguments.json:
         content: dict[str, Any] = {
@@ -90,31 +110,28 @@ def build(arguments: Namespace) -> int:
             "reused": made.reused,
             "seconds": made.seconds,
             "passed": not failed,
+            "warnings": figures["warnings"],
+            "assumptions": figures["assumptions"],
+            "left_out": figures["ledger"]["left_out"],
             "results": [row.as_dict() for row in rows],
         }
         print(text.as_json(content))
         return FAILED if failed else DONE
     if not arguments.quiet:
-        print_notes(made.plan)
-        print(text.results_table(rows))
-        between = made.figures.get("interpolation")
-        if between:
-            print(interpolation_line(between))
-    if made.reused:
-        print(f"table: {made.table} is up to date: whole, and built from these inputs")
-    else:
-        print(f"table: {made.table} ({made.plan.nodes} nodes, {text.duration(made.seconds)})")
+        _print_notes(figures["ledger"], figures["assumptions"])
+        _print_results(rows, figures)
+    nodes = "up to date" if made.plan is None else text.counted(made.plan.nodes, "node")
     if failed:
         print("a check differs: do not use this table before you know why", file=sys.stderr)
+    print(f"table: {made.table} ({nodes}, {text.duration(made.seconds)})")
     return FAILED if failed else DONE
 
 
-def interpolation_line(between: dict[str, Any]) -> str:
-    """What interpolating between the table's nodes costs, in one line."""
-    return (
-        f"between nodes (middles of {between['cells']} cells): half of the points within {between['p50']:.1e},"
-        f" 99 % within {between['p99']:.1e}; not judged, it tells how fine the grid is"
-    )
+def _print_results(rows: Iterable[Any], figures: Mapping[str, Any]) -> None:
+    print(text.results_table(rows))
+    between = figures.get("interpolation")
+    if between:
+        print(text.wrapped(text.interpolation_line(between)))
 
 
 def check(arguments: Namespace) -> int:
@@ -122,11 +139,11 @@ def check(arguments: Namespace) -> int:
     from opacity.pipeline.recheck import check_table_file, find_table_and_recipe
 
     given = Path(arguments.recipe) if arguments.recipe else None
-    table, recipe = find_table_and_recipe(Path(arguments.target), given, Path(arguments.output))
-    report, basis = check_table_file(table, recipe, arguments.seed, arguments.quiet)
+    target = find_table_and_recipe(Path(arguments.target), given, Path(arguments.output))
+    report, basis = check_table_file(target, arguments.seed, arguments.quiet)
     if arguments.json:
         content = {
-            "table": str(table),
+            "table": str(target.table),
             "passed": report.passed,
             "basis": basis,
             "results": [row.as_dict() for row in report.results],
@@ -134,11 +151,8 @@ def check(arguments: Namespace) -> int:
         }
         print(text.as_json(content))
     else:
-        print(f"{table} ({basis})")
-        print(text.results_table(report.results))
-        between = report.figures.get("interpolation")
-        if between:
-            print(interpolation_line(between))
+        print(text.facts([("table", str(target.table)), ("basis", basis)]))
+        _print_results(report.results, report.figures)
     return DONE if report.passed else FAILED
 
 
@@ -155,9 +169,10 @@ def show(arguments: Namespace) -> int:
             print(text.as_json(summary(table)))
         else:
             print(text.facts(summary_lines(table)))
+            print(f"table: {table.path}")
         if arguments.plot:
             from opacity.tables.draw import draw_table
 
             picture = draw_table(table, Path(arguments.plot), zoom=arguments.zoom)
-            print(f"picture  {picture}", file=sys.stderr if arguments.json else sys.stdout)
+            print(f"picture: {picture}", file=sys.stderr if arguments.json else sys.stdout)
     return DONE

@@ -5,10 +5,13 @@ from __future__ import annotations
 import argparse
 import contextlib
 import io
+import json
 import math
 import os
+import signal
 import sys
 from collections.abc import Sequence
+from types import FrameType
 from typing import NoReturn
 
 from opacity.cli import commands
@@ -16,14 +19,25 @@ from opacity.errors import OpacityError
 from opacity.provenance import VERSION
 
 FAILED = 1
+WRONG_USE = 2
+TERMINATED = 75
+"""EX_TEMPFAIL of sysexits.h: stopped from outside, to be run again."""
 INTERRUPTED = 130
+
+
+class _UsageError(Exception):
+    """Arguments that are not those of a command."""
+
+
+class Terminated(KeyboardInterrupt):
+    """SIGTERM: whoever runs this asks it to stop."""
 
 
 class _Parser(argparse.ArgumentParser):
     """A parser whose errors are one line, as all failures here."""
 
     def error(self, message: str) -> NoReturn:
-        self.exit(2, f"{self.prog}: {message}; `{self.prog} --help` tells more\n")
+        raise _UsageError(f"{self.prog}: {message}; `{self.prog} --help` tells more")
 
 
 def parser() -> argparse.ArgumentParser:
@@ -31,7 +45,8 @@ def parser() -> argparse.ArgumentParser:
     top = _Parser(
         prog="opacity",
         description="Cross-section tables for model atmospheres from molecular line lists, with the proof inside.",
-        epilog="Exit codes: 0 done, 1 failed or a check differs, 2 wrong use or wrong recipe, 130 interrupted.",
+        epilog="Exit codes: 0 done, 1 failed or a check differs, 2 wrong use or wrong recipe, 75 terminated by SIGTERM,"
+        " 130 interrupted.",
     )
     top.add_argument("--version", action="version", version=f"opacity {VERSION}")
     commands_parser = top.add_subparsers(title="commands", metavar="COMMAND", required=True)
@@ -52,7 +67,7 @@ def parser() -> argparse.ArgumentParser:
     one = command("build", "build the table of a recipe, with its checks inside")
     one.add_argument("recipe", metavar="RECIPE")
     one.add_argument("--workers", type=_positive, metavar="N", help="threads (default: the CPUs allowed)")
-    one.add_argument("--quiet", action="store_true", help="no progress, and only the last line of the result")
+    one.add_argument("--quiet", action="store_true", help="only warnings and the last line of the result")
     _add_shared(one)
 
     one = command("check", "show a table right, or say what differs")
@@ -99,29 +114,61 @@ def _range(value: str) -> tuple[float, float]:
 
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run one command and return its exit code."""
-    parsed = parser().parse_args(arguments)
+    words = sys.argv[1:] if arguments is None else list(arguments)
     try:
+        parsed = parser().parse_args(words)
         code = int(parsed.run(parsed))
         if sys.stdout is not None:  # closed by whoever started us
             sys.stdout.flush()
         return code
-    except OpacityError as error:
-        print(error, file=sys.stderr)
-        return error.exit_code
-    except KeyboardInterrupt:
-        print("interrupted: nothing half-written was left behind", file=sys.stderr)
-        return INTERRUPTED
     except BrokenPipeError:
         # Whoever read our output has gone.
         _silence_stdout()
         return FAILED
-    except OSError as error:
-        _silence_stdout()
-        print(f"{error.filename or 'output'}: {error.strerror or error}", file=sys.stderr)
-        return FAILED
-    except MemoryError:
-        print("not enough memory: use fewer nodes, fewer points or a shorter line list", file=sys.stderr)
-        return FAILED
+    except (_UsageError, OpacityError, OSError, MemoryError, KeyboardInterrupt) as error:
+        code, lines = _failure(error)
+        return _tell(code, lines, _wants_json(words))
+
+
+def _failure(error: BaseException) -> tuple[int, list[str]]:
+    """Exit code and lines of an error that is told without a traceback."""
+    if isinstance(error, _UsageError):
+        return WRONG_USE, [str(error)]
+    if isinstance(error, OpacityError):
+        return error.exit_code, str(error).split("\n")
+    if isinstance(error, OSError):
+        return FAILED, [f"{error.filename or 'output'}: {error.strerror or error}"]
+    if isinstance(error, MemoryError):
+        return FAILED, ["not enough memory: use fewer nodes, fewer points or a shorter line list"]
+    if isinstance(error, Terminated):
+        return TERMINATED, ["terminated: nothing half-written was left behind; the same command starts again"]
+    return INTERRUPTED, ["interrupted: nothing half-written was left behind"]
+
+
+def _wants_json(words: Sequence[str]) -> bool:
+    """Options may be shortened."""
+    return any(len(word) > 2 and "--json".startswith(word) for word in words)
+
+
+def _tell(code: int, lines: Sequence[str], as_json: bool) -> int:
+    """Lines for people on stderr and, if asked for, the same as JSON on stdout, which may be what has failed."""
+    print("\n".join(lines), file=sys.stderr)
+    if as_json:
+        try:
+            print(json.dumps({"error": list(lines)}, indent=2), flush=True)
+        except (OSError, AttributeError):
+            _silence_stdout()
+    return code
+
+
+class _Signals:
+    """Handler of Ctrl-C and SIGTERM that remembers them: compiled modules, while they load, turn them into errors."""
+
+    seen: KeyboardInterrupt | None = None
+
+    def __call__(self, number: int, frame: FrameType | None) -> NoReturn:
+        self.seen = Terminated() if number == signal.SIGTERM else KeyboardInterrupt()
+        raise self.seen
 
 
 def _silence_stdout() -> None:
@@ -135,4 +182,15 @@ def run() -> NoReturn:
     # File names need not be text, and a terminal need not know every character.
     if isinstance(sys.stdout, io.TextIOWrapper) and sys.stdout.errors == "strict":
         sys.stdout.reconfigure(errors="backslashreplace")
-    sys.exit(main())
+    signals = _Signals()
+    if signal.getsignal(signal.SIGINT) is signal.default_int_handler:
+        signal.signal(signal.SIGINT, signals)
+    if signal.getsignal(signal.SIGTERM) is signal.SIG_DFL:
+        signal.signal(signal.SIGTERM, signals)
+    try:
+        code = main()
+    except Exception:
+        if signals.seen is None:
+            raise
+        code = _tell(*_failure(signals.seen), _wants_json(sys.argv))
+    sys.exit(code)

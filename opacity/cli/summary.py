@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from typing import Any
 
+from opacity.cli.text import notes
+from opacity.errors import TableError, problem
 from opacity.tables.read import Table
 
 
@@ -29,26 +31,63 @@ def summary(table: Table) -> dict[str, Any]:
 
 
 def summary_lines(table: Table) -> list[tuple[str, str]]:
-    """The same for people, as pairs of a word and its value."""
-    nu, provenance = table.wavenumber, table.provenance
+    """The same for people, as pairs of a word and its value.  Raises TableError for texts of another make."""
+    try:
+        return _lines(table)
+    except (AttributeError, KeyError, TypeError, ValueError) as error:
+        what = f"provenance or checks are not as this version writes them ({type(error).__name__}: {error})"
+        raise TableError(problem(table.path, what, remedy="--json shows them as they are")) from error
+
+
+def _lines(table: Table) -> list[tuple[str, str]]:
+    nu, provenance, checks = table.wavenumber, table.provenance, table.checks
     wavelength = "" if nu[0] <= 0.0 else f" ({1e4 / nu[-1]:.4g} to {1e4 / nu[0]:.4g} um)"
     kind = f"{table.temperature.size} nodes along a profile" if table.profile else "grid"
     program = provenance.get("program", {})
     lines = [
-        ("table", str(table.path)),
         ("what", f"{table.title}, cm2 per molecule, {kind}"),
         ("temperature", _axis(table.temperature.tolist(), "K")),
         ("pressure", _axis(table.pressure.tolist(), "bar")),
+        ("stored as", str(table.dtype)),
         ("wavenumber", f"{nu[0]:.8g} to {nu[-1]:.8g} cm-1{wavelength}, {nu.size} points"),
         ("line list", ", ".join(one["file"] for one in provenance.get("line_lists", []))),
-        ("partition", str(provenance.get("partition_function", {}).get("source", ""))),
+        *_isotopologues(provenance.get("isotopologues", [])),
+        *_partition(provenance.get("partition_function", {})),
         ("broadening", _mixture(provenance.get("broadening", {}).get("mixture", {}))),
+        *_profile(provenance.get("profile", {})),
         ("built by", f"{program.get('name', '')} {program.get('version', '')}"),
     ]
-    lines += [(row["check"], f"{row['verdict']}: {row['detail']}") for row in table.checks.get("results", [])]
-    lines += [("assumed", f"for {one['lines']} lines: {one['what']}") for one in table.checks.get("assumptions", [])]
+    lines += [(row["check"], f"{row['verdict']}: {row['detail']}") for row in checks.get("results", [])]
+    lines += [("warning", one) for one in checks.get("warnings", [])]
+    lines += notes({"left_out": {}, "notes": {}, **checks.get("ledger", {})}, checks.get("assumptions", []))
     lines += [("cite", one) for one in provenance.get("references", [])]
     return lines
+
+
+def _isotopologues(found: list[dict[str, Any]]) -> list[tuple[str, str]]:
+    named = (f"{one['formula']} {one['abundance']:.6g}" if "abundance" in one else one["formula"] for one in found)
+    return [("isotopologues", ", ".join(named))] if found else []
+
+
+def _partition(found: dict[str, Any]) -> list[tuple[str, str]]:
+    """The source, and the range (K) in which it holds for all isotopologues."""
+    ranges = list(found.get("valid", {}).values())
+    valid = f", valid {max(low for low, _ in ranges):g} to {min(high for _, high in ranges):g} K" if ranges else ""
+    return [("partition", f"{found.get('file') or found.get('source', '')}{valid}")]
+
+
+def _profile(found: dict[str, Any]) -> list[tuple[str, str]]:
+    if not found:
+        return []
+    steps = []
+    for step in found["cutoff"]:
+        limit = f" up to {step['to_pressure']:g} bar" if step["to_pressure"] is not None else ""
+        steps.append(f"{step['cutoff']:g} cm-1{limit}")
+    return [
+        ("cut-off", ", then ".join(steps)),
+        ("plinth", "removed" if found["plinth"] else "kept"),
+        ("tolerance", f"{found['tolerance']:g}"),
+    ]
 
 
 def _axis(values: list[float], unit: str) -> str:

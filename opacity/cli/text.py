@@ -26,8 +26,18 @@ def results_table(results: Iterable[CheckResult]) -> str:
         value = "" if row.value is None else f"{row.value:+.2e}"
         limit = "" if row.limit is None else f"{row.limit:.1e}"
         lines.append(f"{row.check:{name_width}}  {row.verdict:12}  {value:>10}  {limit:>8}".rstrip())
-        lines += textwrap.wrap(row.detail, WIDTH, initial_indent="    ", subsequent_indent="    ")
+        lines += [f"    {part}" for part in _folded(row.detail, WIDTH - 4)]
     return "\n".join(lines)
+
+
+def _folded(text: str, width: int) -> list[str]:
+    """Lines broken between words only: a file name must stay one that can be copied."""
+    return textwrap.wrap(text, width, break_long_words=False, break_on_hyphens=False)
+
+
+def wrapped(text: str) -> str:
+    """A sentence in lines of at most `WIDTH` characters, all but the first indented."""
+    return textwrap.fill(text, WIDTH, subsequent_indent="    ", break_long_words=False, break_on_hyphens=False)
 
 
 def facts(pairs: Sequence[tuple[str, str]]) -> str:
@@ -36,10 +46,37 @@ def facts(pairs: Sequence[tuple[str, str]]) -> str:
     indent = " " * (width + 2)
     lines = []
     for name, value in pairs:
-        folded = textwrap.wrap(value, WIDTH - width, subsequent_indent="") or [""]
+        folded = _folded(value, WIDTH - width) or [""]
         lines.append(f"{name:{width}}  {folded[0]}")
         lines += [indent + part for part in folded[1:]]
     return "\n".join(lines)
+
+
+def counted(number: int, word: str) -> str:
+    """A number of things: 1 line, 2 lines."""
+    return f"{number} {word}" if number == 1 else f"{number} {word}s"
+
+
+def percent(share: float) -> str:
+    """A share in percent, to two digits."""
+    value = 100.0 * share
+    return f"{value:.0f} %" if value >= 9.95 else f"{value:.2g} %"
+
+
+def notes(ledger: Mapping[str, Any], assumptions: Iterable[Mapping[str, Any]]) -> list[tuple[str, str]]:
+    """What became of a list's records: (left out | assumed | note, what and for how many lines)."""
+    found = [("left out", f"{counted(count, 'line')}, {reason}") for reason, count in ledger["left_out"].items()]
+    found += [("assumed", f"for {counted(one['lines'], 'line')}: {one['what']}") for one in assumptions]
+    found += [("note", f"{counted(count, 'record')}, {what}") for what, count in ledger["notes"].items()]
+    return found
+
+
+def interpolation_line(between: Mapping[str, Any]) -> str:
+    """What interpolating between the table's nodes costs, in words."""
+    return (
+        f"interpolating at the middle of {counted(between['cells'], 'cell')}: half of the points within"
+        f" {percent(between['p50'])}, 99 % within {percent(between['p99'])}: not judged, it tells how fine the grid is"
+    )
 
 
 def size(n_bytes: float | None) -> str:

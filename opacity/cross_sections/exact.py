@@ -42,3 +42,37 @@ def exact_spectrum(node: NodeLines, wavenumber: FloatArray, cutoff: float, plint
             profile = np.maximum(profile - edge, 0.0)
         sigma[near][within] += node.strength[line] * profile
     return sigma
+
+
+def exact_at(node: NodeLines, points: FloatArray, cutoff: float, plinth: bool = False) -> FloatArray:
+    """The same sum, (n_points,), point by point over the lines in reach: quicker for few points and many lines.
+
+    The lines of `node` must be sorted by unshifted wavenumber; the points may stand in any order.
+    """
+    sigma = np.zeros(points.size)
+    low = np.searchsorted(node.wavenumber, points - cutoff - 1e-6)
+    high = np.searchsorted(node.wavenumber, points + cutoff + 1e-6)
+    for i, point in enumerate(points):
+        lines = np.arange(low[i], high[i])
+        lines = lines[np.abs(point - node.wavenumber[lines]) <= cutoff]
+        widths = node.doppler[lines], node.lorentz[lines]
+        profile = voigt_profile(point - node.centre[lines], *widths)
+        if plinth:
+            profile = np.maximum(profile - voigt_profile(np.full(lines.size, cutoff), *widths), 0.0)
+        sigma[i] = np.sum(node.strength[lines] * profile)
+    return sigma
+
+
+def voigt_derivatives(distance: FloatArray, doppler: FloatArray, lorentz: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """First and third derivative of the Voigt profile with respect to wavenumber, cm2 and cm4, (n,) each.
+
+    From w' = -2 z w + 2i/sqrt(pi) and its derivatives (Abramowitz & Stegun 7.1.20), z = x + iy.
+    """
+    scale = SQRT_LN2 / doppler
+    z = scale * (distance + 1j * lorentz)
+    w = wofz(z)
+    first = -2.0 * z * w + 2j / math.sqrt(math.pi)
+    second = -2.0 * w - 2.0 * z * first
+    third = -4.0 * first - 2.0 * z * second
+    height = scale / math.sqrt(math.pi)
+    return height * scale * first.real, height * scale**3 * third.real

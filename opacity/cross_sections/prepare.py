@@ -8,10 +8,12 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from opacity.arguments import DefaultWidth
 from opacity.errors import InputError, MoleculeError, problem
 from opacity.grids import FloatArray
 from opacity.kernels.line_strength import strength_ratio
@@ -19,7 +21,7 @@ from opacity.kernels.line_width import doppler_half_width, pressure_half_width, 
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.molecule import partition_function as pf
-from opacity.molecule.broadening import Assumption, DefaultWidth, LineBroadening, resolve_broadening
+from opacity.molecule.broadening import Assumption, LineBroadening, resolve_broadening
 from opacity.molecule.isotopologue import Isotopologue
 
 
@@ -87,13 +89,15 @@ class PreparedLines:
         pairs = list(zip(self.partition, self.basis, strict=True))
         ratio = np.array([(q(one.temperature) if one.holds_partition else 1.0) / q(temperature) for q, one in pairs])
         reference = np.array([one.temperature for one in self.basis])
-        return self.strength * strength_ratio(
+        factor = strength_ratio(
             self.wavenumber,
             self.lower_energy,
             temperature,
             ratio[self.isotopologue],
             reference[self.isotopologue] if np.any(reference != reference[0]) else float(reference[0]),
         )
+        # A strength of 0 stays 0 however large the factor of its energy.
+        return np.where(self.strength > 0.0, self.strength * factor, 0.0)
 
     def at(self, temperature: float, pressure: float, strength: FloatArray | None = None) -> NodeLines:
         """The lines at one node (K, bar); `strength` spares computing S(T) again.
@@ -125,45 +129,38 @@ def prepare(
     Raises InputError for an unknown choice, MoleculeError for widths or partition functions that are not to be had.
     """
     _check_mixture(broadeners)
-    factors = abundance_factors(lines.isotopologues, lines.basis, abundance)
+    factors = abundance_factors(lines.isotopologues, lines.basis, abundance, lines.dropped)
     factor = np.array(factors or [0.0])[lines.isotopologue]
     if np.any(factor == 0.0):
         lines = lines.select(factor > 0.0, "isotopologue not in the mixture chosen")
         factor = factor[factor > 0.0]
-    used = [factor > 0.0 for factor in factors]
     masses = np.array([one.mass for one in lines.isotopologues] or [1.0])
-    if isinstance(partition_function, Path) and sum(used) > 1:
-        found = ", ".join(one.formula for one, keep in zip(lines.isotopologues, used, strict=True) if keep)
+    partition = tuple(partition_of(partition_function, one) for one in lines.isotopologues)
+    if isinstance(partition_function, Path) and len(partition) > 1:
         raise MoleculeError(
             problem(
-                f"partition function {partition_function}",
-                "one file serves one isotopologue",
-                found=found,
-                remedy="choose a TIPS edition, or one isotopologue under [isotopologues]",
+                "partition_function",
+                f"one file serves one isotopologue, and {partition_function.name} is to serve {len(partition)}",
+                found=", ".join(one.formula for one in lines.isotopologues),
+                remedy="choose a TIPS edition, or fractions or a line list of one isotopologue",
             )
-        )
+        ).about("partition_function")
     broadening = resolve_broadening(lines.broadeners, broadeners, defaults or {}, len(lines))
-    notes = tuple(Assumption(text, count) for text, count in sorted(lines.ledger.notes.items()))
+    unknown = int(np.count_nonzero(lines.lower_energy < 0.0))
+    notes = (Assumption("lower-state energy below 0 (unknown): used as it stands", unknown),) if unknown else ()
     return PreparedLines(
         wavenumber=lines.wavenumber,
         strength=lines.strength * factor,
         lower_energy=lines.lower_energy,
         mass=masses[lines.isotopologue],
-        isotopologue=_renumber(lines.isotopologue, used),
-        isotopologues=tuple(one for one, keep in zip(lines.isotopologues, used, strict=True) if keep),
-        basis=tuple(one for one, keep in zip(lines.basis, used, strict=True) if keep),
-        partition=tuple(
-            partition_of(partition_function, one) for one, keep in zip(lines.isotopologues, used, strict=True) if keep
-        ),
+        isotopologue=lines.isotopologue,
+        isotopologues=lines.isotopologues,
+        basis=lines.basis,
+        partition=partition,
         broadening=broadening,
         assumptions=notes + broadening.assumptions,
         ledger=lines.ledger,
     )
-
-
-def _renumber(index: NDArray[np.int16], used: list[bool]) -> NDArray[np.int16]:
-    place = (np.cumsum(used or [True]) - 1).astype(np.int16)
-    return np.asarray(place[index], dtype=np.int16)
 
 
 def _check_mixture(broadeners: Mapping[str, float]) -> None:
@@ -171,69 +168,70 @@ def _check_mixture(broadeners: Mapping[str, float]) -> None:
     if not broadeners or not all(0.0 < x <= 1.0 for x in broadeners.values()) or abs(total - 1.0) > 1e-6:
         raise InputError(
             problem("broadeners", "not mole fractions", expected="values above 0 with sum 1", found=dict(broadeners))
-        )
+        ).about("broadeners")
 
 
 def partition_of(choice: str | Path, isotopologue: Isotopologue) -> pf.PartitionFunction:
     """The partition function of an isotopologue: a TIPS edition by name, or a file of T and Q."""
     if isinstance(choice, Path):
         return pf.from_file(choice)
-    if choice in pf.TIPS_EDITIONS:
+    if isinstance(choice, str) and choice in pf.TIPS_EDITIONS:
         if not isotopologue.known:
             raise MoleculeError(
                 problem(
-                    f"partition function {choice}",
-                    f"hapi does not know {isotopologue.molecule_formula}",
-                    remedy='give source = "file"',
+                    "partition_function",
+                    f"{choice} does not hold {isotopologue.molecule_formula}",
+                    remedy="give a file of T and Q",
                 )
-            )
+            ).about("partition_function")
         return pf.tips(choice, isotopologue)
     expected = " or ".join([*(f'"{name}"' for name in pf.TIPS_EDITIONS), "a Path of a file of T and Q"])
     raise InputError(problem("partition_function", "unknown source", expected=expected, found=f'"{choice}"'))
 
 
 def abundance_factors(
-    isotopologues: tuple[Isotopologue, ...], basis: tuple[StrengthBasis, ...], abundance: str | Mapping[str, float]
+    isotopologues: tuple[Isotopologue, ...],
+    basis: tuple[StrengthBasis, ...],
+    abundance: str | Mapping[str, float],
+    dropped: tuple[Isotopologue, ...] = (),
 ) -> list[float]:
     """By what to multiply a list's strengths, isotopologue by isotopologue; 0 leaves its lines out.
 
     What abundance a list's strengths already hold (the terrestrial one in HITRAN format) is taken out before
-    another one is applied.
+    another one is applied.  Fractions may also name what was `dropped` for having no line left.
     """
-    if abundance == "terrestrial":
-        return [one.abundance / of.abundance for one, of in zip(isotopologues, basis, strict=True)]
-    if abundance == "pure":
-        if len(isotopologues) > 1:
-            found = ", ".join(one.formula for one in isotopologues)
-            raise InputError(
-                problem("abundance", '"pure" needs lines of one isotopologue', expected="one", found=found)
-            )
-        return [1.0 / of.abundance for of in basis]
+    if abundance == "pure" and len(isotopologues) > 1:
+        found = ", ".join(one.formula for one in isotopologues)
+        raise _wrong_abundance('"pure" needs lines of one isotopologue', expected="one", found=found)
     if isinstance(abundance, str):
-        raise InputError(
-            problem(
-                "abundance", "unknown", expected='"terrestrial", "pure" or fractions by isotopologue', found=abundance
-            )
-        )
+        if abundance not in ("terrestrial", "pure"):
+            expected = '"terrestrial", "pure" or fractions by isotopologue'
+            raise _wrong_abundance("unknown", expected=expected, found=abundance)
+    else:
+        _check_fractions((*isotopologues, *dropped), abundance)
+    return [fraction_of(one, abundance) / of.abundance for one, of in zip(isotopologues, basis, strict=True)]
+
+
+def _check_fractions(isotopologues: tuple[Isotopologue, ...], abundance: Mapping[str, float]) -> None:
     names = {name for one in isotopologues for name in (one.formula, str(one.local))}
     unknown = sorted(set(abundance) - names)
     if unknown:
         listed = ", ".join(f"{one.formula} ({one.local})" for one in isotopologues)
-        raise InputError(
-            problem("abundance", f"no lines of isotopologue {unknown[0]}", expected=listed or "a list with lines")
-        )
+        raise _wrong_abundance(f"no lines of isotopologue {unknown[0]}", expected=listed or "a list with lines")
+    for one in isotopologues:
+        if one.formula in abundance and str(one.local) in abundance:
+            raise _wrong_abundance(f"{one.formula} is given twice", remedy="name it by formula or by number")
     total = sum(abundance.values())
     if not abundance or not all(0.0 <= x <= 1.0 for x in abundance.values()) or not total <= 1.0 + 1e-6:
-        raise InputError(
-            problem("abundance", "not fractions", expected="0 to 1 each, sum at most 1", found=dict(abundance))
-        )
-    return [_fraction(one, abundance) / of.abundance for one, of in zip(isotopologues, basis, strict=True)]
+        raise _wrong_abundance("not fractions", expected="0 to 1 each, sum at most 1", found=dict(abundance))
 
 
-def _fraction(isotopologue: Isotopologue, abundance: Mapping[str, float]) -> float:
-    given = [abundance[key] for key in (isotopologue.formula, str(isotopologue.local)) if key in abundance]
-    if len(given) > 1:
-        raise InputError(
-            problem("abundance", f"{isotopologue.formula} is given twice", remedy="name it by formula or by number")
-        )
-    return given[0] if given else 0.0
+def _wrong_abundance(what: str, **parts: Any) -> InputError:
+    return InputError(problem("abundance", what, **parts)).about("abundance")
+
+
+def fraction_of(isotopologue: Isotopologue, abundance: str | Mapping[str, float]) -> float:
+    """The fraction of an isotopologue in the species chosen: "terrestrial", "pure" or one of fractions by name."""
+    if isinstance(abundance, str):
+        return 1.0 if abundance == "pure" else isotopologue.abundance
+    return abundance.get(isotopologue.formula, abundance.get(str(isotopologue.local), 0.0))

@@ -5,12 +5,17 @@ infinity undefined are left out, so that a NaN that gets in comes out.  Kernels 
 interpreter lock: the caller runs tiles side by side in threads, and results do not depend on their number.
 
 Machine code is kept on disk.  numba judges its age by the file of the function alone, not by the files of the
-functions that it calls: so it is kept in a folder named by a hash of all kernels' source.
+functions that it calls: so it is kept in a folder named by a hash of all kernels' source, in the first place that
+can be written to; where there is none it is not kept, since numba's own choice of place would not know the hash.
 """
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
+import os
+import shutil
+import tempfile
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -30,16 +35,50 @@ def _source_hash() -> str:
     return digest.hexdigest()[:16]
 
 
-_HASH = _source_hash()
 _CONFIG: Any = numba.config
+KEPT_VERSIONS = 8
+
+
+def _cache_folder() -> Path | None:
+    """Where machine code of exactly this source is kept: NUMBA_CACHE_DIR, the package itself, the user's cache."""
+    bases = [Path(__file__).parent / "__pycache__"]
+    if _CONFIG.CACHE_DIR:
+        bases.insert(0, Path(_CONFIG.CACHE_DIR))
+    user = os.environ.get("XDG_CACHE_HOME") or os.path.expanduser("~/.cache")
+    bases.append(Path(user) / "opacity")
+    name = f"kernels-{_source_hash()}"
+    for base in bases:
+        folder = base / name
+        try:
+            folder.mkdir(parents=True, exist_ok=True)
+            with tempfile.TemporaryFile(dir=folder):
+                pass
+        except OSError:
+            continue
+        _remove_old(base, name)
+        return folder
+    return None
+
+
+def _remove_old(base: Path, name: str) -> None:
+    """Leave the machine code of the last few versions only."""
+    with contextlib.suppress(OSError):
+        others = sorted(
+            (one for one in base.glob("kernels-*") if one.name != name), key=lambda one: one.stat().st_mtime
+        )
+        for one in others[:-KEPT_VERSIONS]:
+            shutil.rmtree(one, ignore_errors=True)
+
+
+_FOLDER = _cache_folder()
 
 
 @contextmanager
 def _cache_of_this_source() -> Iterator[None]:
     """While a function is decorated, point numba to the cache folder of exactly this source."""
     before = _CONFIG.CACHE_DIR
-    base = Path(before) if before else Path(__file__).parent / "__pycache__"
-    _CONFIG.CACHE_DIR = str(base / f"kernels-{_HASH}")
+    if _FOLDER is not None:
+        _CONFIG.CACHE_DIR = str(_FOLDER)
     try:
         yield
     finally:
@@ -58,5 +97,5 @@ def jit_exact(function: Function) -> Function:
 
 def _compile(function: Function, **options: Any) -> Function:
     with _cache_of_this_source():
-        compiled: Any = numba.njit(nogil=True, cache=True, error_model="numpy", **options)(function)
+        compiled: Any = numba.njit(nogil=True, cache=_FOLDER is not None, error_model="numpy", **options)(function)
     return cast(Function, compiled)

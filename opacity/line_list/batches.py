@@ -15,7 +15,7 @@ from opacity.errors import LineListError, problem
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
 from opacity.line_list.packed import PackedLines, pack
-from opacity.line_list.read import parser_of
+from opacity.line_list.read import only, parser_of
 from opacity.line_list.records import ReadOptions, judge
 from opacity.line_list.text import TextChunk, read_chunks
 from opacity.molecule.isotopologue import Isotopologue
@@ -44,6 +44,7 @@ def record_batches(
     path: Path,
     format: str,
     options: ReadOptions,
+    leave_out: bool,
     range: tuple[float, float] | None,
     executor: Executor | None,
 ) -> Iterator[Batch]:
@@ -54,7 +55,9 @@ def record_batches(
     parse = parser_of(path, format)
 
     def work(chunk: TextChunk) -> Batch:
-        lines = judge(parse(chunk), options)
+        lines = judge(parse(chunk), options, leave_out)
+        if options.isotopologue is not None and len(lines):
+            lines = only(lines, options.isotopologue)
         if range is not None:
             within = (lines.wavenumber >= range[0]) & (lines.wavenumber <= range[1])
             lines = lines.select(within, "outside the range asked for")

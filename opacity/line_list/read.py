@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 
 import numpy as np
@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from opacity.errors import InputError, LineListError, problem
 from opacity.grids import FloatArray
+from opacity.line_list.duplicates import refuse_repeated_files
 from opacity.line_list.hapi_table import hapi_parser
 from opacity.line_list.hitran import hitran_parser
 from opacity.line_list.ledger import Ledger
@@ -17,7 +18,7 @@ from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.records import ParsedColumns, ReadOptions, judge
 from opacity.line_list.text import TextChunk, read_chunks
 from opacity.molecule.broadening import BroadenerColumns
-from opacity.molecule.isotopologue import Isotopologue
+from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
 
 Parser = Callable[[TextChunk], ParsedColumns]
 
@@ -36,7 +37,8 @@ def read_lines(
 
     `format` is "hitran" (160-character records, .gz and .bz2 too) or "hapi" (.data with its .header); if it is
     None the file's ending decides.  `range` (cm-1) keeps the lines inside it, ends included.  `bad_records`
-    is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).
+    is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).  `options` are
+    what a recipe says of the list: its molecule, and the one isotopologue to take from it.
 
     Raises LineListError naming file and line, InputError for an unknown format or option.
     """
@@ -48,36 +50,54 @@ def read_lines(
     base = options or ReadOptions()
     if range is not None and not range[0] <= range[1]:
         raise InputError(problem("range", "not a range", expected="two wavenumbers, the lower first", found=range))
-    chosen = ReadOptions(bad_records == "leave-out", base.formula, base.mass, base.isotopologue)
-    lines = merge([_read_one(path, format, chosen) for path in paths])
+    lines = refuse_repeated_files(merge([_read_one(path, format, base, bad_records == "leave-out") for path in paths]))
+    if not len(lines):
+        reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(lines.ledger.left_out.items()))
+        raise LineListError(problem(paths[0], "every record was left out", found=reasons, remedy="mend the list"))
     formulas = sorted({one.molecule_formula for one in lines.isotopologues})
     if len(formulas) > 1:
         raise LineListError(
             problem(paths[0], "lines of several molecules", expected="one molecule", found=", ".join(formulas))
         )
+    if base.isotopologue is not None and len(lines):
+        lines = only(lines, base.isotopologue)
     if range is not None:
         lower, upper = range
         lines = lines.select((lines.wavenumber >= lower) & (lines.wavenumber <= upper), "outside the range asked for")
+    return check_account(lines)
+
+
+def check_account(lines: LineList) -> LineList:
+    """The list itself.  Raises LineListError where its ledger and its lines do not agree."""
+    ledger = lines.ledger
+    if not ledger.adds_up() or ledger.kept != len(lines):
+        found = f"{ledger.kept} kept and {sum(ledger.left_out.values())} left out of {ledger.read}, {len(lines)} lines"
+        what = "the account of the records does not add up, a fault of this program"
+        raise LineListError(problem(", ".join(lines.files), what, found=found))
     return lines
 
 
-def _read_one(path: Path, format: str | None, options: ReadOptions) -> LineList:
-    return merge(list(read_batches(path, format, options)))
+def only(lines: LineList, name: str) -> LineList:
+    """The lines of one isotopologue, by formula or local number; InputError where there is none of that name."""
+    if not lines.isotopologues[0].known:
+        return lines
+    chosen = [number for number, one in enumerate(lines.isotopologues) if name in (one.formula, str(one.local))]
+    if not chosen:
+        exist = isotopologues_of(lines.molecule_formula)
+        known = any(name in (one.formula, str(one.local)) for one in exist)
+        what = f"the list holds no line of {name}" if known else f"{lines.molecule_formula} has no isotopologue {name}"
+        expected = ", ".join(f"{one.formula} ({one.local})" for one in (lines.isotopologues if known else exist))
+        raise InputError(problem("isotopologue", what, expected=expected)).about("isotopologue")
+    return lines.select(lines.isotopologue == chosen[0], "another isotopologue than the one chosen")
 
 
-def read_batches(path: Path, format: str | None, options: ReadOptions) -> Iterator[LineList]:
-    """The lines of one file, batch by batch in the order of the file, each sorted by wavenumber.
-
-    Raises LineListError for a record that can't be right, or a file that holds none.
-    """
-    empty = True
+def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: bool) -> LineList:
+    """The lines of one file.  Raises LineListError for a record that can't be right, or a file that holds none."""
     parse = parser_of(path, format)
-    for chunk in read_chunks(path):
-        if len(chunk):
-            empty = False
-            yield judge(parse(chunk), options)
-    if empty:
+    batches = [judge(parse(chunk), options, leave_out) for chunk in read_chunks(path) if len(chunk)]
+    if not batches:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
+    return merge(batches)
 
 
 def parser_of(path: Path, format: str | None) -> Parser:
@@ -94,12 +114,14 @@ def merge(lists: Sequence[LineList]) -> LineList:
     if len(lists) == 1:
         return lists[0]
     known: list[tuple[Isotopologue, StrengthBasis]] = []
+    dropped: list[Isotopologue] = []
     files: list[str] = []
     index, file = [], []
     ledger = Ledger()
     for one in lists:
         pairs = list(zip(one.isotopologues, one.basis, strict=True))
         known += [pair for pair in pairs if pair not in known]
+        dropped += [iso for iso in one.dropped if iso not in dropped]
         place = np.array([known.index(pair) for pair in pairs] or [0], dtype=np.int16)
         index.append(place[one.isotopologue] if len(one) else one.isotopologue)
         files += [name for name in one.files if name not in files]
@@ -128,6 +150,7 @@ def merge(lists: Sequence[LineList]) -> LineList:
         file=np.concatenate(file)[order],
         files=tuple(files),
         ledger=ledger,
+        dropped=tuple(iso for iso in dropped if iso not in [one for one, _ in known]),
     )
 
 

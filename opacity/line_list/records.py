@@ -8,24 +8,35 @@ from __future__ import annotations
 import re
 from collections import Counter
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.constants import REFERENCE_TEMPERATURE, STANDARD_ATMOSPHERE
+from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION, STANDARD_ATMOSPHERE
 from opacity.errors import LineListError, MoleculeError, problem
 from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.text import TextChunk
 from opacity.molecule.broadening import BroadenerColumns
-from opacity.molecule.isotopologue import LOCAL_CODES, Isotopologue, isotopologue, molecule_is_known
+from opacity.molecule.isotopologue import (
+    LOCAL_CODES,
+    Isotopologue,
+    isotopologue,
+    isotopologues_of,
+    molecule_is_known,
+    molecule_name,
+)
 
 REQUIRED = ("molecule", "wavenumber", "strength", "lower_energy")
 MAX_EXPONENT = 10.0
 MAX_MOLECULE = 999
+MAX_WIDTH = 1000.0
+LOWEST_WAVENUMBER = 1e-6
+STRONGEST = 1e-6
+_CODES = "a code 1-9, 0, A, B of an isotopologue that hapi's tables hold"
 _NOT_TEXT = re.compile(rb"[^\t\x20-\x7e]")
 
 
@@ -46,20 +57,21 @@ class ParsedColumns:
     whole: NDArray[np.bool_]
     length_expected: str
     broadeners: tuple[str, ...]
-    faults: list[tuple[str, str, NDArray[np.bool_]]] = field(default_factory=list)
 
 
 @dataclass(frozen=True)
 class ReadOptions:
-    """How a reader treats its records; `formula` and `mass` are the recipe's molecule."""
+    """What a recipe says of a list: its molecule's `formula` and `mass`, and the one `isotopologue` to take from it.
 
-    leave_out_bad: bool = False
+    For a molecule that hapi does not know `isotopologue` is the name of the list's only one.
+    """
+
     formula: str | None = None
     mass: float | None = None
     isotopologue: str | None = None
 
 
-def judge(columns: ParsedColumns, options: ReadOptions) -> LineList:
+def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool = False) -> LineList:
     """The lines among some records.  Raises LineListError for the first record that can't be right, unless left out."""
     ledger = Ledger(read=len(columns.text))
     good = np.ones(len(columns.text), dtype=bool)
@@ -70,14 +82,16 @@ def judge(columns: ParsedColumns, options: ReadOptions) -> LineList:
             found.append((int(np.flatnonzero(fresh)[0]), reason, expected))
             ledger.left_out[reason] += int(fresh.sum())
             good &= ~bad
-    index, known, extra = _isotopologues(columns, good, options)
-    for reason, expected, bad in extra:
-        fresh = bad & good
-        if fresh.any():
-            found.append((int(np.flatnonzero(fresh)[0]), reason, expected))
-            ledger.left_out[reason] += int(fresh.sum())
-            good &= ~bad
-    if found and not options.leave_out_bad:
+    index, known, unknown, foreign = _isotopologues(columns, good, options)
+    if unknown.any():
+        found.append((int(np.flatnonzero(unknown)[0]), "unknown isotopologue", _CODES))
+        ledger.left_out["unknown isotopologue"] += int(unknown.sum())
+    if foreign.any():
+        if not (leave_out and (good & ~foreign).any()):
+            raise _foreign(columns, foreign, options)
+        ledger.left_out["record of another molecule"] += int(foreign.sum())
+    good &= ~(unknown | foreign)
+    if found and not leave_out:
         raise LineListError(_first_problem(columns, min(found), int((~good).sum())))
     ledger.kept = int(good.sum())
     ledger.notes.update(_notes(columns, good))
@@ -101,7 +115,6 @@ def _faults(columns: ParsedColumns) -> Iterator[tuple[str, str, NDArray[np.bool_
     numbers = columns.numbers
     yield "record of the wrong length", columns.length_expected, ~columns.whole
     yield "record with bytes that are no text", "printable ASCII characters", ~columns.text.plain
-    yield from columns.faults
     for name, unreadable in columns.unreadable.items():
         yield f"{_words(name)} is not a number", "digits", unreadable
     for name in REQUIRED:
@@ -111,17 +124,33 @@ def _faults(columns: ParsedColumns) -> Iterator[tuple[str, str, NDArray[np.bool_
     molecule = numbers["molecule"]
     impossible = (molecule < 1.0) | (molecule > MAX_MOLECULE) | (molecule != np.floor(molecule))
     yield "molecule number is impossible", f"a whole number from 1 to {MAX_MOLECULE}", impossible
-    yield "wavenumber is not above 0", "a positive wavenumber", ~(numbers["wavenumber"] > 0.0)
+    lowest = f"at least {LOWEST_WAVENUMBER:g} cm-1"
+    yield "wavenumber is not above 0", lowest, ~(numbers["wavenumber"] >= LOWEST_WAVENUMBER)
     yield "strength is negative", "0 or more", numbers["strength"] < 0.0
     # HITRAN writes -1 for an energy that is not known.
     yield "lower-state energy is impossible", "-1 or more", numbers["lower_energy"] < -1.0
+    yield (
+        "strength is impossible for its lower-state energy",
+        "at most 1e-6 cm/molecule before population",
+        _too_strong(numbers),
+    )
     if "einstein_a" in numbers:
         yield "Einstein A is negative", "0 or more", numbers["einstein_a"] < 0.0
     for broadener in columns.broadeners:
         gamma, exponent = numbers[f"gamma_{broadener}"], numbers[f"exponent_{broadener}"]
         yield f"{broadener} width is negative", "0 or more", gamma < 0.0
+        yield f"{broadener} width is impossible", f"at most {MAX_WIDTH:g} cm-1/atm", gamma > MAX_WIDTH
+        shift = np.abs(numbers[f"shift_{broadener}"])
+        yield f"{broadener} shift is impossible", f"at most {MAX_WIDTH:g} cm-1/atm", shift > MAX_WIDTH
         limit = f"-{MAX_EXPONENT:g} to {MAX_EXPONENT:g}"
         yield f"{broadener} temperature exponent is impossible", limit, np.abs(exponent) > MAX_EXPONENT
+
+
+def _too_strong(numbers: dict[str, FloatArray]) -> NDArray[np.bool_]:
+    """Lines whose S/exp(-c2 E''/T) is beyond any transition's: at high temperature they would swamp all others."""
+    with np.errstate(divide="ignore", invalid="ignore"):
+        log_intensity = np.log(numbers["strength"]) + SECOND_RADIATION / REFERENCE_TEMPERATURE * numbers["lower_energy"]
+    return np.asarray(log_intensity > np.log(STRONGEST))
 
 
 def _words(name: str) -> str:
@@ -130,30 +159,52 @@ def _words(name: str) -> str:
 
 def _isotopologues(
     columns: ParsedColumns, good: NDArray[np.bool_], options: ReadOptions
-) -> tuple[NDArray[np.int16], tuple[Isotopologue, ...], list[tuple[str, str, NDArray[np.bool_]]]]:
-    """Index into the isotopologues found (-1 where there is none), these, and the faults met."""
+) -> tuple[NDArray[np.int16], tuple[Isotopologue, ...], NDArray[np.bool_], NDArray[np.bool_]]:
+    """Index into the isotopologues found (-1 where there is none), these, and masks of unknown and foreign records."""
     index = np.full(good.size, -1, dtype=np.int16)
     molecules = np.where(good, np.nan_to_num(columns.numbers["molecule"]), 0.0).astype(np.int64)
     known: list[Isotopologue] = []
-    allowed = "a code 1-9, 0, A, B of an isotopologue that hapi's tables hold"
     unknown = np.zeros(good.size, dtype=bool)
     foreign = np.zeros(good.size, dtype=bool)
     for number in np.unique(molecules[good]):
         for code in np.unique(columns.code[good & (molecules == number)]):
             rows = good & (molecules == number) & (columns.code == code)
             one = _one_isotopologue(int(number), chr(code), options)
-            if one is None:
+            if one is None and _is_foreign(int(number), options):
+                foreign |= rows
+            elif one is None:
                 unknown |= rows
             elif options.formula is not None and one.molecule_formula != options.formula:
                 foreign |= rows
             else:
                 known.append(one)
                 index[rows] = len(known) - 1
-    faults = [
-        ("unknown isotopologue", allowed, unknown),
-        ("record of another molecule", f"records of {options.formula}", foreign),
-    ]
-    return index, tuple(known), faults
+    return index, tuple(known), unknown, foreign
+
+
+def _foreign(columns: ParsedColumns, foreign: NDArray[np.bool_], options: ReadOptions) -> LineListError:
+    """Whether the records or the formula are wrong is for the user to say: leaving records out would hide it."""
+    row = int(np.flatnonzero(foreign)[0])
+    numbers = np.unique(columns.numbers["molecule"][foreign]).astype(int)
+    names = [molecule_name(int(number)) for number in numbers]
+    return LineListError(
+        problem(
+            "formula",
+            f"{columns.path}:{columns.text.line[row]} is a record of another molecule",
+            expected=f"records of {options.formula}",
+            found=f"{', '.join(names)} in {int(foreign.sum())} of {len(columns.text)} records",
+            remedy="the formula or the list is wrong",
+        )
+    ).about("formula")
+
+
+def _is_foreign(molecule: int, options: ReadOptions) -> bool:
+    """Whether records without a known isotopologue are of another molecule than the recipe's."""
+    if options.formula is None:
+        return False
+    if molecule_is_known(molecule):
+        return molecule_name(molecule) != options.formula
+    return bool(isotopologues_of(options.formula))
 
 
 def _one_isotopologue(molecule: int, code: str, options: ReadOptions) -> Isotopologue | None:
@@ -174,15 +225,12 @@ def _one_isotopologue(molecule: int, code: str, options: ReadOptions) -> Isotopo
 def _notes(columns: ParsedColumns, good: NDArray[np.bool_]) -> Counter[str]:
     notes: Counter[str] = Counter()
     numbers = columns.numbers
-    for text, mask in (
-        ("lower-state energy below 0 (unknown): used as it stands", numbers["lower_energy"] < 0.0),
-        ("strength 0: contributes nothing", numbers["strength"] == 0.0),
+    for text, count in (
+        ("strength 0: contributes nothing", np.count_nonzero((numbers["strength"] == 0.0) & good)),
+        ("out of order in wavenumber: sorted", np.count_nonzero(np.diff(numbers["wavenumber"][good]) < 0.0)),
     ):
-        count = int(np.count_nonzero(mask & good))
         if count:
-            notes[text] = count
-    if np.any(np.diff(numbers["wavenumber"][good]) < 0.0):
-        notes["out of order in wavenumber: sorted"] = int(np.count_nonzero(np.diff(numbers["wavenumber"][good]) < 0.0))
+            notes[text] = int(count)
     return notes
 
 

@@ -12,6 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from opacity.arguments import DefaultWidth
 from opacity.errors import MoleculeError, problem
 from opacity.grids import FloatArray
 
@@ -26,15 +27,6 @@ class BroadenerColumns:
     gamma: FloatArray
     exponent: FloatArray
     shift: FloatArray
-
-
-@dataclass(frozen=True)
-class DefaultWidth:
-    """A half-width (cm-1/bar at 296 K) and exponent for lines for which the list gives none, with its source."""
-
-    gamma: float
-    exponent: float
-    source: str
 
 
 @dataclass(frozen=True)
@@ -88,7 +80,7 @@ def resolve_broadening(
             assumptions.append(Assumption(f"no pressure shift by {name} given: taken as 0", without))
         shift += fraction * np.nan_to_num(delta, nan=0.0)
     if problems:
-        raise MoleculeError("\n".join(problems))
+        raise MoleculeError("\n".join(problems)).about("broadeners")
     shape = (len(mixture), n_lines)
     return LineBroadening(
         tuple(mixture),
@@ -113,7 +105,7 @@ def _resolve_one(
     exponent[no_width] = np.nan
     if default is not None and no_width.any():
         gamma[no_width], exponent[no_width] = default.gamma, default.exponent
-        text = f"{name} width from the recipe's default {default.gamma:g} cm-1/bar, exponent {default.exponent:g}"
+        text = f"{name} width from the default {default.gamma:g} cm-1/bar, exponent {default.exponent:g}"
         notes.append(Assumption(f"{text} ({default.source})", int(no_width.sum())))
     no_exponent = np.isnan(exponent) & ~np.isnan(gamma)
     if name.lower() == "self" and air is not None:
@@ -125,7 +117,7 @@ def _resolve_one(
         no_exponent &= ~take
     if default is not None and no_exponent.any():
         exponent[no_exponent] = default.exponent
-        text = f"{name} temperature exponent from the recipe's default {default.exponent:g} ({default.source})"
+        text = f"{name} temperature exponent from the default {default.exponent:g} ({default.source})"
         notes.append(Assumption(text, int(no_exponent.sum())))
     return gamma, exponent, notes
 
@@ -133,8 +125,10 @@ def _resolve_one(
 def _missing(name: str, missing: int, n_lines: int, gamma: FloatArray, columns: Mapping[str, BroadenerColumns]) -> str:
     what = "half-width" if np.isnan(gamma).any() else "temperature exponent"
     return problem(
-        f"broadening by {name}",
-        f"{missing} of {n_lines} lines have no {what}",
+        "broadeners",
+        f"{missing} of {n_lines} lines have no {what} by {name}",
+        expected=f"columns for {name.lower()} in the list, or a default",
         found=f"columns for {', '.join(sorted(columns)) or 'no broadener'}",
-        remedy=f"give [broadening.default.{name}] with gamma, exponent and source, or a list with these columns",
+        remedy=f"give [broadening.default.{name}] with gamma, exponent and source in a recipe,"
+        f' default_widths={{"{name}": DefaultWidth(...)}} in Python',
     )

@@ -33,6 +33,12 @@ def molecule_is_known(molecule: int) -> bool:
     return any(key[0] == molecule for key in hapi().ISO)
 
 
+def molecule_name(molecule: int) -> str:
+    """Formula of a HITRAN molecule number, or the number itself where hapi's tables lack it."""
+    formulas = [str(row[4]) for key, row in hapi().ISO.items() if key[0] == molecule]
+    return formulas[0] if formulas else f"molecule number {molecule}"
+
+
 def isotopologue(molecule: int, local: int) -> Isotopologue:
     """The isotopologue with these HITRAN numbers.  Raises MoleculeError if hapi's tables lack it."""
     row = hapi().ISO.get((molecule, local))

@@ -27,8 +27,14 @@ TIPS_EDITIONS = {"TIPS-2021": 2021, "TIPS-2025": 2025}
 TIPS_LOWEST = 20.0
 """Below 20 K hapi's interpolation of the tables is wrong: CO +0.3 % at 9.4 K, +11 % at 2.7 K (measured)."""
 
+STEEPEST = 60.0
+"""d ln Q / d ln T is the mean energy over kT plus 3/2: no molecule with a line list comes near this."""
+
 STEP = 1.5e-3
 """A relative jump from its neighbours above which a tabulated Q counts as a step."""
+
+ROUGH_BELOW = 60.0
+"""Down there (K) rows 10 K apart are too far from each other for a cubic to follow ln Q: nothing can be said."""
 
 # Upper ends (K), the last tabulated temperature at which an edition is within 1 % of the other, for the edition
 # that is known to be wrong above: there its Q falls against that of a rigid rotor with harmonic oscillators, which
@@ -68,11 +74,15 @@ _UNUSABLE = {
 
 @dataclass(frozen=True)
 class PartitionFunction:
-    """Q(T) of one isotopologue.  `source` names where it came from; `lowest` and `highest` bound its use (K)."""
+    """Q(T) of one isotopologue.  `source` names where it came from; `lowest` and `highest` bound its use (K).
+
+    `steps`: temperatures (K) of a file's rows that do not lie smoothly between their neighbours.
+    """
 
     source: str
     lowest: float
     highest: float
+    steps: tuple[float, ...] = ()
     _spline: CubicSpline | None = None
     _tips: tuple[int, int, int] | None = None
 
@@ -108,11 +118,11 @@ def tips(edition: str, isotopologue: Isotopologue) -> PartitionFunction:
         kind = "values" if table is None else "trustworthy values"
         raise MoleculeError(
             problem(
-                f"partition function {edition}",
-                f"no {kind} for {isotopologue.formula} ({isotopologue.molecule_formula})",
-                remedy='choose another edition or source = "file"',
+                "partition_function",
+                f"{edition} has no {kind} for {isotopologue.formula} ({isotopologue.molecule_formula})",
+                remedy="choose another edition or a file of T and Q",
             )
-        )
+        ).about("partition_function")
     lowest, highest = _trusted_range(*table)
     highest = min(highest, _LIMITS.get((edition, isotopologue.molecule, isotopologue.local), highest))
     key = (year, isotopologue.molecule, isotopologue.local)
@@ -136,8 +146,7 @@ def _trusted_range(temperature: FloatArray, value: FloatArray) -> tuple[float, f
     lowest, highest = max(TIPS_LOWEST, float(temperature[0])), float(temperature[-1])
     bad = temperature[~(value > 0.0)]
     bad = np.concatenate([bad, temperature[2:-2][np.abs(neighbour_residuals(temperature, value)) > STEP]])
-    # Below 60 K the tables' 10 K spacing is too wide for a cubic to follow ln Q: nothing can be said there.
-    bad = bad[bad > 60.0]
+    bad = bad[bad > ROUGH_BELOW]
     above, below = bad[bad > REFERENCE_TEMPERATURE], bad[bad < REFERENCE_TEMPERATURE]
     if above.size:
         highest = float(temperature[temperature < above.min()][-1])
@@ -178,8 +187,8 @@ def editions_differ(isotopologue: Isotopologue, temperature: float) -> float:
 def from_file(path: Path) -> PartitionFunction:
     """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout).
 
-    Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.
-    Raises MoleculeError naming the line that can't be right.
+    Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.  Raises MoleculeError naming the line that
+    can't be right, or the file where it does not hold 296 K, to which the strengths of lists refer.
     """
     try:
         lines = path.read_text(encoding="ascii").splitlines()
@@ -193,8 +202,28 @@ def from_file(path: Path) -> PartitionFunction:
     if len(rows) < 4:
         raise MoleculeError(problem(path, "too few rows", expected="4 or more of T and Q", found=len(rows)))
     table = np.array(rows)
-    spline = CubicSpline(np.log(table[:, 0]), np.log(table[:, 1]))
-    return PartitionFunction(f"file {path.name}", float(table[0, 0]), float(table[-1, 0]), _spline=spline)
+    temperature, value = table[:, 0], table[:, 1]
+    lowest, highest = float(temperature[0]), float(temperature[-1])
+    if not lowest <= REFERENCE_TEMPERATURE <= highest:
+        what = "the partition function does not hold 296 K, to which the strengths refer"
+        found = f"{lowest:g} to {highest:g} K"
+        raise MoleculeError(problem(path, what, expected="rows from 296 K or below to 296 K or above", found=found))
+    slope = np.abs(np.diff(np.log(value)) / np.diff(np.log(temperature)))
+    steep = np.flatnonzero(slope > STEEPEST)
+    if steep.size:
+        ends = f"{temperature[steep[0]]:g} and {temperature[steep[0] + 1]:g} K"
+        raise MoleculeError(
+            problem(
+                path,
+                f"no partition function: it jumps between {ends}",
+                expected=f"no more than T^{STEEPEST:g}",
+                found=f"{value[steep[0]]:g} to {value[steep[0] + 1]:g}",
+            )
+        )
+    rough = temperature[2:-2][np.abs(neighbour_residuals(temperature, value)) > STEP]
+    steps = tuple(rough[rough > ROUGH_BELOW].tolist())
+    spline = CubicSpline(np.log(temperature), np.log(value))
+    return PartitionFunction(f"file {path.name}", lowest, highest, steps, _spline=spline)
 
 
 def _row(path: Path, number: int, line: str, previous: float) -> tuple[float, float]:

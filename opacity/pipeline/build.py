@@ -6,6 +6,7 @@ import json
 import os
 import platform
 import time
+from collections.abc import Callable
 from concurrent.futures import Executor, ThreadPoolExecutor
 from dataclasses import dataclass, replace
 from pathlib import Path
@@ -13,18 +14,19 @@ from typing import Any
 
 import numpy as np
 
-from opacity.check.run import CheckReport, run_checks
+from opacity.check.run import run_checks
 from opacity.cross_sections.compute import spectrum
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.cross_sections.tolerance import Regions, regions
 from opacity.errors import ResourceError, TableError, problem
 from opacity.grids import FloatArray
+from opacity.pipeline.fingerprint import Fingerprint, fingerprint
 from opacity.pipeline.inputs import Inputs, load_inputs
-from opacity.pipeline.plan import Plan, make_plan, table_name
+from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit, table_name
 from opacity.pipeline.progress import Progress
 from opacity.pipeline.resources import allowed_cpus
 from opacity.recipe.model import Recipe
-from opacity.tables.atomic import write_atomically
+from opacity.tables.atomic import remove_leftovers, write_atomically
 from opacity.tables.model import CrossSectionTable
 from opacity.tables.read import open_table
 from opacity.tables.write import check_table, write_cross_section_table
@@ -32,47 +34,64 @@ from opacity.tables.write import check_table, write_cross_section_table
 
 @dataclass(frozen=True)
 class BuildResult:
-    """What a build made: the table, the log beside it, the plan and the checks; `reused` if it was there already."""
+    """What a build made: the table, the log beside it, the checks, and the plan, None for a table that was kept."""
 
     table: Path
     log: Path
-    plan: Plan
+    plan: Plan | None
     figures: dict[str, Any]
     seconds: float
-    reused: bool = False
+
+    @property
+    def reused(self) -> bool:
+        """Whether the table was there already and was kept."""
+        return self.plan is None
 
 
-def build_table(recipe: Recipe, folder: Path, *, workers: int | None = None, quiet: bool = False) -> BuildResult:
+def build_table(
+    recipe: Recipe,
+    folder: Path,
+    *,
+    workers: int | None = None,
+    quiet: bool = False,
+    announce: Callable[[Plan], None] = lambda plan: None,
+) -> BuildResult:
     """Build a recipe's cross-section table into a folder, which is made if it is missing.
 
-    A table that is there already and was built from the very same inputs is verified and kept.
-    Raises OpacityError of the kind that fits; nothing half-written ever has the table's name.
+    A table that is there already and was built from the very same inputs is verified and kept, without a line being
+    read.  `announce` gets the plan before the work starts.  Raises OpacityError of the kind that fits; nothing
+    half-written ever has the table's name.
     """
     started = time.monotonic()
-    inputs = load_inputs(recipe)
-    plan = make_plan(recipe, inputs, folder)
     path, log = folder / table_name(recipe), folder / f"{recipe.name}.log.json"
-    kept = _still_good(path, inputs)
+    remove_leftovers(folder)
+    origin = fingerprint(recipe)
+    kept = _still_good(path, origin)
     if kept is not None:
-        return BuildResult(path, log, plan, kept, time.monotonic() - started, reused=True)
+        return BuildResult(path, log, None, kept, time.monotonic() - started)
+    inputs = load_inputs(recipe, origin)
+    plan = make_plan(recipe, inputs, folder)
+    announce(plan)
+    refuse_what_cannot_fit(plan)
     _make_folder(folder)
     _refuse_folders(path, log)
     count = allowed_cpus() if workers is None else workers
     sigma = compute_spectra(recipe, inputs.lines, count, quiet)
-    table, report = _checked_table(recipe, inputs, sigma, path, quiet)
+    table = _checked_table(recipe, inputs, sigma, path, quiet)
+    table = replace(table, checks={**table.checks, "warnings": list(plan.warnings)})
     write_cross_section_table(path, table)
     seconds = time.monotonic() - started
     _write_log(log, recipe, seconds, count)
-    return BuildResult(path, log, plan, report.figures, seconds)
+    return BuildResult(path, log, plan, table.checks, seconds)
 
 
-def _still_good(path: Path, inputs: Inputs) -> dict[str, Any] | None:
+def _still_good(path: Path, origin: Fingerprint) -> dict[str, Any] | None:
     """The checks of a table that is there, whole, and made from these inputs; otherwise None."""
     if not os.path.exists(path):
         return None
     try:
         with open_table(path) as table:
-            if table.provenance.get("inputs_sha256") != inputs.sha256:
+            if table.provenance.get("inputs_sha256") != origin.sha256:
                 return None
             table.verify()
             return table.checks
@@ -83,8 +102,9 @@ def _still_good(path: Path, inputs: Inputs) -> dict[str, Any] | None:
 def _make_folder(folder: Path) -> None:
     try:
         folder.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise ResourceError(problem(folder, f"the folder for the tables cannot be made ({error.strerror})")) from error
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or str(error)
+        raise ResourceError(problem(folder, f"the folder for the tables cannot be made ({reason})")) from error
     if not os.access(folder, os.W_OK | os.X_OK):
         raise ResourceError(
             problem(folder, "nothing can be written here", remedy="choose a folder in which you may write")
@@ -106,7 +126,9 @@ def compute_spectra(recipe: Recipe, lines: PreparedLines, workers: int, quiet: b
     try:
         sigma = np.empty((len(nodes), grid.wavenumber.size))
     except MemoryError as error:
-        raise ResourceError(problem(recipe.path, "the spectra do not fit in memory", remedy="use fewer")) from error
+        raise ResourceError(
+            problem(recipe.path, "the spectra do not fit in memory", remedy="use fewer nodes or points")
+        ) from error
     executor = ThreadPoolExecutor(workers) if workers > 1 else None
     try:
         with Progress("spectra", len(nodes), "nodes", quiet) as progress:
@@ -137,9 +159,7 @@ def _fill(
         progress.step()
 
 
-def _checked_table(
-    recipe: Recipe, inputs: Inputs, sigma: FloatArray, path: Path, quiet: bool
-) -> tuple[CrossSectionTable, CheckReport]:
+def _checked_table(recipe: Recipe, inputs: Inputs, sigma: FloatArray, path: Path, quiet: bool) -> CrossSectionTable:
     """The table with its checks, made of the values as they will be stored."""
     grid = recipe.grid
     nodes = grid.nodes
@@ -161,7 +181,7 @@ def _checked_table(
             sigma[node] = sigma[node].astype(np.float32)
     with Progress("checks", len(grid.node_list()), "nodes", quiet) as progress:
         report = run_checks(table, recipe, inputs.lines, inputs.seed, progress.step)
-    return replace(table, checks=report.figures), report
+    return replace(table, checks=report.figures)
 
 
 def _write_log(log: Path, recipe: Recipe, seconds: float, workers: int) -> None:

@@ -10,14 +10,30 @@ import numpy as np
 
 from opacity.check.profile_share import sampling_risk
 from opacity.cross_sections.prepare import PreparedLines
-from opacity.errors import MoleculeError, ResourceError, problem
-from opacity.molecule.partition_function import editions_differ
-from opacity.pipeline.inputs import Inputs, invalid_temperatures
+from opacity.errors import ResourceError, problem
+from opacity.molecule.partition_function import STEP, PartitionFunction, editions_differ
+from opacity.pipeline.inputs import Inputs, refuse_invalid_temperatures
 from opacity.pipeline.resources import available_memory, free_disk
 from opacity.recipe.model import Recipe
 
-EVALUATIONS_PER_SECOND = 5e8
-"""Profile values that one core of an ordinary machine adds in a second: for the estimate of time only."""
+# For the estimates of time and memory only; measured (DEVELOPERS.md).
+EVALUATIONS_PER_SECOND = 8e8
+"""Profile values that one core adds in a second."""
+VALUES_STORED_PER_SECOND = 5e6
+"""Values that are compressed, hashed, written and read back in a second."""
+LINES_CHECKED_PER_SECOND = 1e6
+"""Lines of one node that closure goes through in a second."""
+AUDIT_SECONDS = 0.015
+"""Time to recompute the points of one node or cell exactly."""
+MOST_AUDITED = 24
+BYTES_A_RECORD = 600
+"""Memory that reading a record takes at its peak."""
+BYTES_A_VALUE = 8
+"""A value in memory and, where four bytes cannot hold the table's range, on disk."""
+IMAGE_COPIES = 2
+"""The table's image, and as much again while it is handed over."""
+PROGRAM_BYTES = 400_000_000
+
 AT_RISK = 0.01
 HOT_FOR_296K_LIST = 700.0
 EDITIONS_AGREE = 0.01
@@ -35,7 +51,10 @@ class NodeResolution:
 
 @dataclass(frozen=True)
 class Plan:
-    """What a build of a recipe amounts to.  Memory and disk in bytes, time in seconds on one core."""
+    """What a build of a recipe amounts to.  Memory and disk in bytes at most, time in seconds on one core.
+
+    `obstacles` say why the build cannot fit here; it is refused then.
+    """
 
     recipe: str
     table: str
@@ -48,6 +67,7 @@ class Plan:
     memory_available: int | None
     disk: int
     disk_free: int | None
+    obstacles: tuple[str, ...]
     coarse_nodes: tuple[NodeResolution, ...]
     warnings: tuple[str, ...]
     assumptions: tuple[tuple[str, int], ...]
@@ -61,38 +81,44 @@ class Plan:
 def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
     """Plan a build into a folder.
 
-    Raises MoleculeError where a partition function does not hold, ResourceError where the build cannot fit.
+    Raises RecipeError where a partition function is not valid at the grid's temperatures.
     """
     lines, grid = inputs.lines, recipe.grid
+    refuse_invalid_temperatures(recipe, lines)
     node_list = grid.node_list()
     temperatures = sorted({t for t, _ in node_list})
-    problems = invalid_temperatures(lines, temperatures)
-    if problems:
-        raise MoleculeError("\n".join(problems))
     points, nodes = grid.wavenumber.size, len(node_list)
     coarse = _coarse_nodes(recipe, lines)
     values = _profile_values(recipe, lines)
-    # All spectra as f8, their f4 copy, the compressed image and as much again while it is written.
-    memory = nodes * points * (8 + 4 + 4 + 4) + len(lines) * 250 + 400_000_000
-    plan = Plan(
+    table_bytes = nodes * points * BYTES_A_VALUE
+    memory = table_bytes * (1 + IMAGE_COPIES) + lines.ledger.read * BYTES_A_RECORD + PROGRAM_BYTES
+    disk = table_bytes + 1_000_000
+    memory_available, disk_free = available_memory(), free_disk(folder)
+    needs = (("memory", memory, memory_available), ("disk", disk, disk_free))
+    return Plan(
         recipe=str(recipe.path),
         table=str(folder / table_name(recipe)),
         nodes=nodes,
         points=points,
         lines=len(lines),
         profile_values=values,
-        seconds=values / EVALUATIONS_PER_SECOND,
+        seconds=_seconds(values, nodes, points, len(lines)),
         memory=memory,
-        memory_available=available_memory(),
-        disk=nodes * points * 4 + 1_000_000,
-        disk_free=free_disk(folder),
+        memory_available=memory_available,
+        disk=disk,
+        disk_free=disk_free,
+        obstacles=tuple(_obstacle(recipe, *need) for need in needs if need[2] is not None and need[1] > need[2]),
         coarse_nodes=tuple(coarse),
         warnings=tuple(_warnings(recipe, lines, coarse, temperatures)),
         assumptions=tuple((one.what, one.lines) for one in lines.assumptions),
         ledger=lines.ledger.as_dict(),
     )
-    _refuse_what_cannot_fit(plan)
-    return plan
+
+
+def _seconds(values: float, nodes: int, points: int, lines: int) -> float:
+    """Time of spectra, checks and writing on one core."""
+    checks = nodes * lines / LINES_CHECKED_PER_SECOND + min(nodes, MOST_AUDITED) * AUDIT_SECONDS
+    return values / EVALUATIONS_PER_SECOND + nodes * points / VALUES_STORED_PER_SECOND + checks
 
 
 def table_name(recipe: Recipe) -> str:
@@ -100,21 +126,21 @@ def table_name(recipe: Recipe) -> str:
     return f"{recipe.name}.cross-section.h5"
 
 
-def _refuse_what_cannot_fit(plan: Plan) -> None:
-    for what, needed, free in (
-        ("memory", plan.memory, plan.memory_available),
-        ("disk", plan.disk, plan.disk_free),
-    ):
-        if free is not None and needed > free:
-            raise ResourceError(
-                problem(
-                    plan.recipe,
-                    f"the build does not fit in {what}",
-                    expected=f"at most {free / 1e6:.4g} MB",
-                    found=f"{needed / 1e6:.4g} MB for {plan.nodes} nodes of {plan.points} points",
-                    remedy="use fewer nodes, fewer points or a larger machine",
-                )
-            )
+def _obstacle(recipe: Recipe, what: str, needed: int, free: int | None) -> str:
+    nodes, points = len(recipe.grid.node_list()), recipe.grid.wavenumber.size
+    return problem(
+        recipe.path,
+        f"the build does not fit in {what}",
+        expected=f"at most {(free or 0) / 1e6:.4g} MB",
+        found=f"{needed / 1e6:.4g} MB for {nodes} x {points} values",
+        remedy="use fewer nodes, fewer points or a larger machine",
+    )
+
+
+def refuse_what_cannot_fit(plan: Plan) -> None:
+    """Raise ResourceError where the plan has found an obstacle."""
+    if plan.obstacles:
+        raise ResourceError("\n".join(plan.obstacles))
 
 
 def _profile_values(recipe: Recipe, lines: PreparedLines) -> float:
@@ -159,7 +185,7 @@ def _warnings(
         warnings.append("no line reaches the grid: every value will be 0")
     if coarse:
         worst = coarse[0]
-        share = f"{worst.at_risk:.0%} of the strength is in lines that it does not resolve"
+        share = f"{100.0 * worst.at_risk:.0f} % of the strength is in lines that it does not resolve"
         warnings.append(
             f"the step is too coarse at {len(coarse)} of {len(recipe.grid.node_list())} nodes: at"
             f" {worst.temperature:g} K, {worst.pressure:.3g} bar {share} (narrowest half-width"
@@ -167,9 +193,10 @@ def _warnings(
         )
     if temperatures and temperatures[-1] > HOT_FOR_296K_LIST:
         warnings.append(
-            f"a HITRAN-format list made for 296 K lacks hot lines, and the grid goes to {temperatures[-1]:g} K:"
+            f"a list made for 296 K lacks hot lines, and the grid goes to {temperatures[-1]:g} K:"
             " use a high-temperature list above about 700 K"
         )
+    warnings += [_rough(one) for one in lines.partition if one.steps]
     for one in lines.isotopologues:
         if recipe.partition_function.source == "file" or not one.known:
             continue
@@ -177,7 +204,15 @@ def _warnings(
         difference = editions_differ(one, worst_t)
         if abs(difference) > EDITIONS_AGREE:
             warnings.append(
-                f"partition function of {one.formula}: TIPS-2021 and TIPS-2025 differ by {difference:+.1%}"
+                f"partition function of {one.formula}: TIPS-2021 and TIPS-2025 differ by {100.0 * difference:+.1f} %"
                 f" at {worst_t:g} K"
             )
     return warnings
+
+
+def _rough(q: PartitionFunction) -> str:
+    at = ", ".join(f"{t:g}" for t in q.steps[:6]) + (f" and {len(q.steps) - 6} more" if len(q.steps) > 6 else "")
+    return (
+        f"partition function {q.source} is not smooth at {at} K: a value lies more than {100.0 * STEP:g} % off the"
+        " cubic through its neighbours; either it has a step or its rows are too far apart to interpolate"
+    )

@@ -4,33 +4,47 @@ from __future__ import annotations
 
 import json
 import os
+from dataclasses import dataclass
 from pathlib import Path
 
-from opacity.check.open_check import check_integrity, recheck, require_same_inputs, stored_results
+from opacity.check.open_check import check_integrity, recheck, require_same_inputs, require_same_recipe, stored_results
 from opacity.check.run import CheckReport
-from opacity.errors import InputError, problem
-from opacity.pipeline.inputs import load_inputs
+from opacity.errors import InputError, OpacityError, TableError, problem
+from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.plan import table_name
 from opacity.pipeline.progress import Progress
 from opacity.recipe.load import load_recipe
+from opacity.recipe.model import Recipe
 from opacity.tables.read import Table, open_table
 
 TABLE_ENDING = ".cross-section.h5"
 
 
-def find_table_and_recipe(target: Path, recipe: Path | None, folder: Path) -> tuple[Path, Path | None]:
+@dataclass(frozen=True)
+class Target:
+    """A table to check and its recipe; `asked_for` tells a recipe that the user named from one that a log names."""
+
+    table: Path
+    recipe: Path | None
+    asked_for: bool = False
+
+
+def find_table_and_recipe(target: Path, recipe: Path | None, folder: Path) -> Target:
     """The table to check and its recipe, from either of them.
 
-    A recipe's table is looked for in `folder`; a table's recipe is the one given, or the one that the log
-    beside the table names, None where there is none.
+    A recipe's table is looked for in `folder`, TableError where there is none; a table's recipe is the one given, or
+    the one that the log beside the table names, None where there is none.
     """
-    if target.suffix == ".toml":
-        if recipe is not None:
-            raise InputError(
-                problem("--recipe", f"{target} is a recipe itself", remedy="give the table, or no --recipe")
-            )
-        return folder / table_name(load_recipe(target)), target
-    return target, recipe if recipe is not None else _recipe_of_log(target)
+    if target.suffix != ".toml":
+        found = recipe if recipe is not None else _recipe_of_log(target)
+        return Target(target, found, recipe is not None)
+    if recipe is not None:
+        raise InputError(problem("--recipe", f"{target} is a recipe itself", remedy="give the table, or no --recipe"))
+    table = folder / table_name(load_recipe(target))
+    if not os.path.exists(table):
+        command = f"opacity build {target}" + ("" if folder == Path("tables") else f" -o {folder}")
+        raise TableError(problem(table, f"{target} has no table here yet", remedy=f"build it first: `{command}`"))
+    return Target(table, target, True)
 
 
 def _recipe_of_log(table: Path) -> Path | None:
@@ -42,29 +56,38 @@ def _recipe_of_log(table: Path) -> Path | None:
     return path if os.path.isfile(path) else None
 
 
-def check_table_file(
-    path: Path, recipe_path: Path | None, seed: int | None = None, quiet: bool = False
-) -> tuple[CheckReport, str]:
+def check_table_file(target: Target, seed: int | None = None, quiet: bool = False) -> tuple[CheckReport, str]:
     """Check a table on disk; the report and a word on what it rests on.
 
-    Without the recipe only integrity is checked, and the results that the build stored are repeated as such.
-    Raises TableError for a damaged table, or one that was not built from the recipe as it stands, RecipeError for a
-    recipe that cannot be used.
+    Without a recipe, or where the one that the log names is no longer what the table was built from, only integrity is
+    checked, and the results that the build stored are repeated as such.  Raises TableError for a damaged table, or
+    one that was not built from the recipe asked for, RecipeError for one that cannot be used.
     """
-    with open_table(path) as table:
-        if recipe_path is None:
-            rows = [check_integrity(table), *stored_results(table)]
-            note = "recipe not at hand: all but integrity as stored by the build; --recipe repeats them from the lines"
-            return CheckReport(tuple(rows), table.checks), note
-        return _with_recipe(table, recipe_path, seed, quiet)
+    with open_table(target.table) as table:
+        if target.recipe is None:
+            return _as_stored(table, "recipe not at hand")
+        try:
+            recipe = load_recipe(target.recipe)
+            require_same_recipe(table, recipe)
+            inputs = load_inputs(recipe)
+            require_same_inputs(table, recipe, inputs.provenance)
+        except OpacityError as error:
+            if target.asked_for:
+                raise
+            reason = str(error).split("\n")[0].removeprefix(f"{table.path}: ").partition("; ")[0]
+            return _as_stored(table, f"recipe of the log not used ({reason})")
+        return _again(table, recipe, inputs, seed, quiet)
 
 
-def _with_recipe(table: Table, recipe_path: Path, seed: int | None, quiet: bool) -> tuple[CheckReport, str]:
-    recipe = load_recipe(recipe_path)
-    inputs = load_inputs(recipe)
-    require_same_inputs(table, recipe, inputs.provenance)
+def _as_stored(table: Table, why: str) -> tuple[CheckReport, str]:
+    rows = [check_integrity(table), *stored_results(table)]
+    note = f"{why}: all but integrity as stored by the build; --recipe repeats them from the lines"
+    return CheckReport(tuple(rows), table.checks), note
+
+
+def _again(table: Table, recipe: Recipe, inputs: Inputs, seed: int | None, quiet: bool) -> tuple[CheckReport, str]:
     nodes = table.temperature.size if table.profile else table.temperature.size * table.pressure.size
     with Progress("checks", nodes, "nodes", quiet) as progress:
         chosen = inputs.seed if seed is None else seed
         report = recheck(table, recipe, inputs.lines, chosen, progress.step)
-    return report, f"recomputed from {recipe_path} with seed {chosen}"
+    return report, f"recomputed from {recipe.path} with seed {chosen}"

@@ -5,8 +5,9 @@ from __future__ import annotations
 import difflib
 from collections.abc import Iterable, Sequence
 
-from opacity.errors import InputError, problem
-from opacity.recipe.positions import KeyPath, line_of
+from opacity.errors import OpacityError, problem
+from opacity.recipe.model import Recipe
+from opacity.recipe.positions import KeyPath, key_lines, line_of
 
 _LONGEST_SHOWN = 60
 
@@ -33,14 +34,19 @@ class Faults:
         where = f"{self._file}:{line}: {dotted(key)}"
         self._problems.append((line, problem(where, what, expected=expected, found=found, remedy=remedy)))
 
-    def add_error(self, key: KeyPath, error: InputError) -> None:
-        """Add the fault that a lower layer found, with `key` in place of the place it names."""
-        what = str(error).partition(": ")[2]
-        self.add(key, what)
+    def add_error(self, key: KeyPath, error: OpacityError) -> None:
+        """Add the faults, one a line, that another layer found, with `key` in place of the place that each names."""
+        for line in str(error).split("\n"):
+            self.add(key, line.partition(": ")[2])
 
     def problems(self) -> tuple[str, ...]:
         """All faults so far as lines, in the order of the file."""
         return tuple(text for _, text in sorted(self._problems, key=lambda pair: pair[0]))
+
+
+def faults_of(recipe: Recipe) -> Faults:
+    """A collection for what is wrong with a recipe that has been read: its choices against the files it names."""
+    return Faults(str(recipe.path), key_lines(recipe.text.replace("\r\n", "\n")))
 
 
 def dotted(key: KeyPath) -> str:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
 import numpy as np
@@ -29,7 +30,7 @@ def read_grid(root: Table) -> Grid:
     """The section [grid]."""
     values = root.table("grid", "a section [grid] with wavenumber, temperature and pressure")
     if values is None:
-        return Grid(np.empty(0), "", (), ())
+        return Grid(np.empty(0), (), ())
     table = Table(
         root.faults,
         root.path("grid"),
@@ -37,22 +38,22 @@ def read_grid(root: Table) -> Grid:
         ("wavenumber", "temperature", "pressure", "nodes"),
         later=("interpolation_error",),
     )
-    wavenumber, spacing = _wavenumbers(table)
+    wavenumber = _wavenumbers(table)
     if "nodes" in table or table.misspelt("nodes"):
         nodes = _nodes(table) if "nodes" in table else ()
-        return Grid(wavenumber, spacing, tuple(t for t, _ in nodes), tuple(p for _, p in nodes), nodes)
+        return Grid(wavenumber, tuple(t for t, _ in nodes), tuple(p for _, p in nodes), nodes)
     temperature = _axis(table, "temperature", TEMPERATURE)
     pressure = _axis(table, "pressure", PRESSURE)
     if len(temperature) * len(pressure) > MAX_NODES:
         table.faults.add(
             table.key, "too many nodes", expected=f"at most {MAX_NODES}", found=len(temperature) * len(pressure)
         )
-    return Grid(wavenumber, spacing, temperature, pressure)
+    return Grid(wavenumber, temperature, pressure)
 
 
-def _wavenumbers(table: Table) -> tuple[grids.FloatArray, str]:
-    """The wavenumber axis and "linear" or "log"; an empty axis after a fault."""
-    none = np.empty(0), ""
+def _wavenumbers(table: Table) -> grids.FloatArray:
+    """The wavenumber axis, empty after a fault."""
+    none = np.empty(0)
     values = table.table("wavenumber", _WAVENUMBER_EXPECTED)
     if values is None:
         return none
@@ -61,17 +62,17 @@ def _wavenumbers(table: Table) -> tuple[grids.FloatArray, str]:
     if "step" in axis and "resolving_power" in axis:
         axis.faults.add(axis.key, "both step and resolving_power", expected="one of them")
         return none
+    make: Callable[[float, float, float], grids.FloatArray] = grids.uniform_wavenumbers
     if "resolving_power" in axis:
-        width, spacing = axis.number("resolving_power", _RESOLVING_POWER), "log"
+        width, make = axis.number("resolving_power", _RESOLVING_POWER), grids.log_wavenumbers
     elif axis.misspelt("resolving_power"):
         return none
     else:
-        width, spacing = axis.number("step", _STEP), "linear"
+        width = axis.number("step", _STEP)
     if np.isnan([start, stop, width]).any():
         return none
-    make = grids.log_wavenumbers if spacing == "log" else grids.uniform_wavenumbers
     try:
-        return grids.as_wavenumbers(make(start, stop, width)), spacing
+        return grids.as_wavenumbers(make(start, stop, width))
     except InputError as error:
         where = str(error).partition(": ")[0].split(".")
         axis.faults.add_error(table.path(*where), error)

@@ -8,6 +8,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from pathlib import Path
 
+from opacity.arguments import DefaultWidth
 from opacity.errors import InputError, problem
 from opacity.grids import FloatArray
 
@@ -44,20 +45,11 @@ class PartitionFunctionChoice:
 
 
 @dataclass(frozen=True)
-class BroadeningDefault:
-    """Width for lines for which the list gives none: `gamma` cm-1/bar at 296 K, temperature exponent, source."""
-
-    gamma: float
-    exponent: float
-    source: str
-
-
-@dataclass(frozen=True)
 class Broadening:
-    """`mixture`: mole fraction by broadener, sum 1."""
+    """`mixture`: mole fraction by broadener, sum 1; `default`: widths for lines for which the list gives none."""
 
     mixture: dict[str, float]
-    default: dict[str, BroadeningDefault] = field(default_factory=dict)
+    default: dict[str, DefaultWidth] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -103,7 +95,6 @@ class Grid:
     """Axes of the table.  With `nodes` the table is a profile: one spectrum for each (T, P) pair."""
 
     wavenumber: FloatArray
-    wavenumber_spacing: str
     temperature: tuple[float, ...]
     pressure: tuple[float, ...]
     nodes: tuple[tuple[float, float], ...] | None = None

@@ -8,12 +8,13 @@ from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
+from opacity.arguments import DefaultWidth
+from opacity.grids import HIGHEST_PRESSURE, LOWEST_PRESSURE
 from opacity.recipe.faults import Faults, listed, nearest, shown
 from opacity.recipe.line_lists import ISOTOPOLOGUE, WAVENUMBER, full_name
 from opacity.recipe.model import (
     BandStrength,
     Broadening,
-    BroadeningDefault,
     Cutoff,
     CutoffStep,
     Molecule,
@@ -30,7 +31,7 @@ BAND_STRENGTH_KEYS = ("name", "range", "strength", "unit", "temperature", "uncer
 SUM_TOLERANCE = 1e-6
 
 TEMPERATURE = Bounds(1.0, 20000.0, "K")
-PRESSURE = Bounds(1e-12, 1e5, "bar")
+PRESSURE = Bounds(LOWEST_PRESSURE, HIGHEST_PRESSURE, "bar")
 _MASS = Bounds(0.0, 1e4, "g/mol", open_low=True)
 _FRACTION = Bounds(0.0, 1.0, open_low=True)
 _GAMMA = Bounds(0.0, 10.0, "cm-1/bar", open_low=True)
@@ -38,6 +39,10 @@ _EXPONENT = Bounds(-2.0, 2.0)
 _CUTOFF = Bounds(0.0, 1e6, "cm-1", open_low=True)
 _TOLERANCE = Bounds(1e-6, 0.1)
 _STRENGTH = Bounds(0.0, 1e9, open_low=True)
+_BARE_ATMOSPHERE = ("cm-2 atm-1", "cm-2/atm", "cm^-2 atm^-1", "atm-1 cm-2")
+_WHICH_ATM = "say at which temperature the gas was: " + listed(
+    [unit for unit in BAND_STRENGTH_UNITS if unit.startswith("cm-2 atm-1 (")], quoted=True
+)
 _BROADENER = re.compile(r"[A-Za-z][A-Za-z0-9]*")
 
 
@@ -139,7 +144,7 @@ def _fractions(
     return fractions
 
 
-def _broadening_default(table: Table, name: str, entry: object, mixture: tuple[str, ...]) -> BroadeningDefault | None:
+def _broadening_default(table: Table, name: str, entry: object, mixture: tuple[str, ...]) -> DefaultWidth | None:
     key = table.path("default", name)
     if not isinstance(entry, dict):
         expected = "a table with gamma, exponent and source"
@@ -154,7 +159,7 @@ def _broadening_default(table: Table, name: str, entry: object, mixture: tuple[s
             remedy=f"did you mean {meant}?" if meant else None,
         )
     section = Table(table.faults, key, entry, ("gamma", "exponent", "source"))
-    return BroadeningDefault(
+    return DefaultWidth(
         gamma=section.number("gamma", _GAMMA),
         exponent=section.number("exponent", _EXPONENT),
         source=section.required_text("source", 'where the values come from, if need be "from memory"'),
@@ -223,7 +228,7 @@ def _band_strength(table: Table) -> BandStrength:
         name=table.required_text("name", "the band's name, such as 1-0"),
         range=table.interval("range", WAVENUMBER, required=True) or (0.0, 0.0),
         strength=table.number("strength", _STRENGTH),
-        unit=table.choice("unit", tuple(BAND_STRENGTH_UNITS)),
+        unit=table.choice("unit", tuple(BAND_STRENGTH_UNITS), remedies=dict.fromkeys(_BARE_ATMOSPHERE, _WHICH_ATM)),
         temperature=table.number("temperature", TEMPERATURE),
         uncertainty=table.number("uncertainty", _FRACTION),
         source=table.required_text("source", "the publication of the strength"),

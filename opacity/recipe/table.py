@@ -144,10 +144,11 @@ class Table:
         default: str | None = None,
         later: Sequence[str] = (),
         also: str | None = None,
+        remedies: Mapping[str, str] | None = None,
     ) -> str:
         """One of the allowed words, empty where it is none of them; required without default.
 
-        `also` says what else the caller takes, for the error line.
+        `also` says what else the caller takes, for the error line; `remedies` what to do about certain other words.
         """
         expected = listed(allowed, quoted=True) + (f", or {also}" if also else "")
         if name not in self.values:
@@ -162,6 +163,8 @@ class Table:
             return ""
         meant = nearest(value, allowed) if isinstance(value, str) else None
         remedy = f'did you mean "{meant}"?' if meant else None
+        if isinstance(value, str) and remedies and " ".join(value.split()) in remedies:
+            remedy = remedies[" ".join(value.split())]
         self.faults.add(self.path(name), "unknown value", expected=expected, found=shown(value), remedy=remedy)
         return ""
 

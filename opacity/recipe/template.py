@@ -52,13 +52,19 @@ def _molecule(formula: str, facts: MoleculeFacts | None) -> str:
 def _line_list(formula: str, facts: MoleculeFacts | None) -> str:
     section = _LINE_LIST.format(files=f'["lines/{formula}*.par"]')
     if facts is None:
-        section += '# isotopologue = "(12C)(16O)"         # decide: which isotopologue the list holds\n'
+        name = f'# isotopologue = "{formula}"'
+        section += f"{name:<38} # decide: a name for the one isotopologue that the list holds\n"
+    elif facts.isotopologues:
+        name = f'# isotopologue = "{facts.isotopologues[0][0]}"'
+        section += f"{name:<38} # to take this one alone from a list of several\n"
     return section
 
 
 def _isotopologues(facts: MoleculeFacts | None) -> str:
+    if facts is None:
+        return _ONE_ISOTOPOLOGUE
     section = _ISOTOPOLOGUES
-    if facts and facts.isotopologues:
+    if facts.isotopologues:
         section += "# Known here, by local number, with terrestrial abundance:\n"
         rows = enumerate(facts.isotopologues, start=1)
         section += "".join(f"#   {number:<3} {name:<24} {share:.6g}\n" for number, (name, share) in rows)
@@ -97,6 +103,11 @@ abundance = "terrestrial"              # "pure" for a single isotopologue, or fr
                                        # { "1" = 0.9, "2" = 0.1 }
 """
 
+_ONE_ISOTOPOLOGUE = """\
+[isotopologues]
+abundance = "pure"                     # the list's one isotopologue; its strengths must hold no abundance
+"""
+
 _PARTITION_FUNCTION_TIPS = """\
 [partition_function]
 source = "TIPS-2021"                   # or "TIPS-2025", or "file" with file = "name.pf" (columns T in K and Q)
@@ -121,12 +132,16 @@ mixture = { H2 = 0.85, He = 0.15 }
 # gamma = 0.07                         # half-width, cm-1/bar at 296 K
 # exponent = 0.5                       # of the half-width's fall with temperature
 # source = "publication of the values"
+# [broadening.default.He]
+# gamma = 0.05
+# exponent = 0.4
+# source = "publication of the values"
 """
 
 _PROFILE = """\
 [profile]
-# Lines count up to this distance from their centre.  25 cm-1 is common practice; Gharib-Nezhad et al.
-# 2024 recommend 25 cm-1 up to 200 bar and 100 cm-1 above.
+# Lines count up to this distance from their centre.  25 cm-1 is common practice; 25 cm-1 up to 200 bar and 100 cm-1
+# above are recommended (Gharib-Nezhad et al. 2024, as quoted; not read).
 cutoff = [{ to_pressure = 200.0, cutoff = 25.0 }, { cutoff = 100.0 }]
 tolerance = 1e-3                       # largest relative error of the sum of lines, 1e-6 to 0.1
 plinth = false                         # true subtracts the profile's value at the cut-off, for use with a continuum
@@ -134,13 +149,13 @@ plinth = false                         # true subtracts the profile's value at t
 
 _GRID = """\
 [grid]
-# decide: range and step.  With a step above the half-width of the narrowest lines some fall between the points;
-# `opacity plan` says at which nodes.  Instead of step, resolving_power = 100000.0 spaces points evenly in log.
-wavenumber = { start = 2000.0, stop = 2300.0, step = 0.01 }
-# decide: temperatures (K) and pressures (bar).  Interpolation in a table needs four nodes or more on each axis
-# to be cubic; with fewer it is linear.  A list made for 296 K misses hot lines: above 700 K take another.
-temperature = { start = 150.0, stop = 700.0, count = 9, spacing = "log" }
-pressure = { start = 1e-6, stop = 100.0, count = 9, spacing = "log" }
+# With a step above the half-width of the narrowest lines some fall between the points; `opacity plan` says at which
+# nodes.  Instead of step, resolving_power = 100000.0 spaces points evenly in log.
+wavenumber = { start = 1000.0, stop = 2000.0, step = 0.01 }                # decide: cm-1
+# Interpolation in a table needs four nodes or more on each axis to be cubic; with fewer it is linear.
+# A list made for 296 K misses hot lines: above about 700 K take another.
+temperature = { start = 150.0, stop = 700.0, count = 9, spacing = "log" }  # decide: K
+pressure = { start = 1e-6, stop = 100.0, count = 9, spacing = "log" }      # decide: bar
 # For one atmospheric profile instead of a grid: nodes = [[300.0, 0.01], [450.0, 0.1]]
 """
 
@@ -150,9 +165,9 @@ _TABLES = """\
 # decide: published band strengths that `opacity check` holds the table against; leave out if there are none.
 # [[band_strength]]
 # name = "1-0"
-# range = [2000.0, 2250.0]             # cm-1
+# range = [1100.0, 1900.0]             # cm-1
 # strength = 1.0e-17
-# unit = "cm/molecule"                 # or "km/mol", "cm-2 atm-1 (273.15 K)", "cm-2 atm-1 (296 K)"
+# unit = "cm/molecule"                 # or "km/mol", "cm-2 atm-1 (273.15 K)", "cm-2 atm-1 (296 K)", ...
 # temperature = 296.0                  # K
 # uncertainty = 0.02                   # relative, one standard deviation
 # source = "publication of the strength"

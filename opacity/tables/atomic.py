@@ -6,13 +6,18 @@ import contextlib
 import errno
 import hashlib
 import os
+import platform
+import re
 import secrets
+import time
 from collections.abc import Callable, Iterator
 from pathlib import Path
 
 from opacity.errors import InputError, ResourceError, problem
 
 _PIECE = 1 << 24
+_TEMPORARY = re.compile(r"\.opacity-([0-9a-f]{8})-(\d{1,10})-[0-9a-f]{16}\.part")
+_SECONDS_A_WEEK = 7 * 24 * 3600.0
 
 _REMEDIES = {
     errno.ENOSPC: "make room on the disk or choose another folder",
@@ -39,7 +44,7 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
     path = Path(path)
     if "\0" in str(path) or path.name in ("", ".."):
         raise InputError(problem("path", "not the name of a file", found=repr(str(path))))
-    temporary = path.parent / f".{secrets.token_hex(8)}.part"
+    temporary = path.parent / f".opacity-{_host()}-{os.getpid()}-{secrets.token_hex(8)}.part"
     with _as_resource_error(path):
         try:
             _write_synced(temporary, data)
@@ -52,6 +57,44 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
                 os.unlink(temporary)
         _sync_folder(path.parent)
     return path
+
+
+def remove_leftovers(folder: Path) -> None:
+    """Remove the temporary files of programs that were killed.
+
+    A file counts as left behind if its name says that a process of this host wrote it that no longer runs, or, since
+    nobody can ask another host, if nothing has been written to it for a week.
+    """
+    with contextlib.suppress(OSError, ValueError):
+        for path in folder.iterdir():
+            match = _TEMPORARY.fullmatch(path.name)
+            if match is not None and (_is_old(path) or (match[1] == _host() and not _runs(int(match[2])))):
+                with contextlib.suppress(OSError):
+                    path.unlink()
+
+
+def _host() -> str:
+    """A short name of this host that is fit for a file name."""
+    return hashlib.sha256(platform.node().encode("utf-8", "surrogateescape")).hexdigest()[:8]
+
+
+def _runs(process: int) -> bool:
+    if os.name == "nt":  # where asking would be a signal
+        return True
+    try:
+        os.kill(process, 0)
+    except (ProcessLookupError, OverflowError):
+        return False
+    except OSError:  # it runs, and is another user's
+        return True
+    return True
+
+
+def _is_old(path: Path) -> bool:
+    try:
+        return time.time() - path.stat().st_mtime > _SECONDS_A_WEEK
+    except OSError:
+        return False
 
 
 @contextlib.contextmanager

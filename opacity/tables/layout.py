@@ -47,7 +47,6 @@ F4_LARGEST = float(np.finfo(np.float32).max)
 """Values are stored as f4 when all that are not 0 lie between these, where f4 keeps its full precision."""
 
 AXES = ("temperature", "pressure", "wavenumber")
-TEXTS = ("recipe", "provenance", "checks")
 CROSS_SECTION = "cross_section"
 HASHES = "cross_section_sha256"
 

@@ -59,6 +59,11 @@ class Table:
         self._blocks = layout.block_slices(self.wavenumber.size)
         self._proved = np.zeros((*self.shape[:-1], len(self._blocks)), dtype=bool)
 
+    def __repr__(self) -> str:
+        nodes = " x ".join(str(size) for size in self.shape[:-1])
+        nu = self.wavenumber
+        return f"<Table {self.path}: {self.formula}, {nodes} nodes, {nu.size} points {nu[0]:.6g} to {nu[-1]:.6g} cm-1>"
+
     def __enter__(self) -> Table:
         return self
 

@@ -47,7 +47,12 @@ def open_file(path: Path) -> Any:
         return _open_hdf5(path)
     except Exception as error:
         raise TableError(
-            problem(path, f"not a readable HDF5 file ({_one_line(error)})", remedy=f"{_REMEDY}, if it is a table")
+            problem(
+                path,
+                f"not a table: not a readable HDF5 file ({_one_line(error)})",
+                expected="a table that this program built, such as NAME.cross-section.h5",
+                remedy=f"if it was one, {_REMEDY}",
+            )
         ) from error
 
 
@@ -138,6 +143,10 @@ def dataset(path: Path, file: Any, name: str) -> Any:
         found = file[name]
         if not isinstance(found, h5py.Dataset):
             raise damaged(path, f"{name} is not a dataset")
+        # Readers of netCDF would apply these to every value.
+        foreign = sorted({"scale_factor", "add_offset", "valid_range", "missing_value"} & set(found.attrs))
+        if foreign:
+            raise damaged(path, f"attribute {foreign[0]} of {name}", expected="none", found="one")
     if name in layout.UNITS:
         units = attribute(path, found, "units", default="")
         if units != layout.UNITS[name]:

@@ -129,7 +129,7 @@ def main(millions: float) -> None:
         count = 5000 * 202
         parse = parser_of(records, "hitran")
         read = seconds(lambda: [None for _ in in_order(parse, read_chunks(records), executor)])
-        judged = seconds(lambda: drain(record_batches(records, "hitran", ReadOptions(), None, executor)))
+        judged = seconds(lambda: drain(record_batches(records, "hitran", ReadOptions(), False, None, executor)))
         widths = [2, 1, 12, 10, 10, 5, 5, 10, 4, 8]
         pandas_rate = 20 * 202 / seconds(lambda: pd.read_fwf(records, widths=widths, header=None, nrows=20 * 202))
         print(f"records of 160 characters, 2 threads: {count / read / 1e6:.2f} M/s read and parsed,"

@@ -40,8 +40,7 @@ def closure_row(case, values=None):
         ({"cutoff": "0.05"}, 2),
         ({"cutoff": "500.0"}, 4),
         ({"cutoff": "[{ to_pressure = 0.1, cutoff = 0.3 }, { cutoff = 25.0 }]"}, 4),
-        # At 0.01 bar all turns on the few points at the end, where the line is highest.
-        ({"wavenumber": R0_CUT_IN_HALF}, 2),
+        ({"wavenumber": R0_CUT_IN_HALF}, 4),
         # No line's centre is inside: wings alone.
         ({"wavenumber": "{ start = 2148.0, stop = 2149.0, step = 0.004 }"}, 4),
         ({"nodes": "nodes = [[480.0, 0.01], [296.0, 1.0], [296.0, 0.01]]"}, 3),
@@ -56,6 +55,15 @@ def test_a_right_table_agrees(make_case, changes, judged):
     assert row.detail.startswith(f"{judged} of {len(case.nodes())} nodes;")
     assert abs(row.value) <= row.limit
     assert "too coarse" not in row.detail
+
+
+def test_a_predicted_sum_is_held_to_the_tolerance_itself(make_case):
+    case = make_case(wavenumber=EVEN, tolerance="1e-6")
+    row, accounts = closure_row(case)
+    assert abs(accounts[2]["sampling"]) > 2e-5
+    assert max(one["allowance"] for one in accounts) < 1e-6
+    # The tolerance, the check's own error of 6e-7, and the ends.
+    assert row.limit < 1e-6 + 6e-7 + 1e-6
 
 
 @pytest.mark.parametrize("cutoff", ["0.3", "25.0"])

@@ -3,19 +3,21 @@
 from __future__ import annotations
 
 import os
+from dataclasses import replace
 from pathlib import Path
 
 import mpmath
 import numpy as np
 import pytest
 
+from opacity.arguments import DefaultWidth
 from opacity.cross_sections.prepare import abundance_factors, prepare
 from opacity.errors import InputError, MoleculeError
 from opacity.kernels.line_strength import strength_from_einstein_a
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.read import read_lines
-from opacity.molecule.broadening import BroadenerColumns, DefaultWidth
+from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.hapi_tables import hapi
 from opacity.molecule.isotopologue import Isotopologue, isotopologue
 
@@ -226,7 +228,7 @@ def test_what_is_no_mixture(broadeners):
 
 
 def test_widths_that_are_not_to_be_had_and_their_default():
-    with pytest.raises(MoleculeError, match=r"^broadening by He: 6 of 6 lines have no half-width; found columns for"):
+    with pytest.raises(MoleculeError, match=r"^broadeners: 6 of 6 lines have no half-width by He; expected columns"):
         ready(broadeners={"He": 1.0})
     found = ready(broadeners={"He": 1.0}, defaults={"He": DefaultWidth(0.05, 0.5, "from memory")})
     np.testing.assert_allclose(found.at(1184.0, 2.0).lorentz, 2.0 * 0.05 * 0.5, rtol=1e-15)
@@ -247,7 +249,7 @@ def test_partition_functions_are_those_chosen(tmp_path):
     ):
         ready(partition_function="TIPS-2011")
     unknown = Isotopologue(99, 1, "X(2Y)", "XY", 50.0, 1.0, known=False)
-    with pytest.raises(MoleculeError, match=r'^partition function TIPS-2021: hapi does not know XY; give source = "f'):
+    with pytest.raises(MoleculeError, match=r"^partition_function: TIPS-2021 does not hold XY; give a file"):
         ready(made_list((unknown,), np.zeros(6)))
 
 
@@ -264,10 +266,29 @@ def test_no_lines():
     assert found.ledger.adds_up()
 
 
-def test_notes_of_the_list_come_first():
+def test_notes_of_the_list_are_no_assumptions_and_an_unknown_energy_is_one():
     lines = made_list()
     lines.ledger.notes["something seen"] = 2
-    assert [(one.what, one.lines) for one in ready(lines).assumptions] == [("something seen", 2)]
+    assert ready(lines).assumptions == ()
+    unknown = replace(lines, lower_energy=np.where(ISO == 0, -1.0, E))
+    (assumed,) = ready(unknown).assumptions
+    assert (assumed.what, assumed.lines) == ("lower-state energy below 0 (unknown): used as it stands", 3)
+
+
+def test_what_has_no_line_left_decides_nothing():
+    """An isotopologue that a selection drops is neither counted for "pure" nor given a partition function."""
+    lines = made_list().select(ISO == 1, "dropped")
+    assert (lines.isotopologues, lines.dropped) == ((CO[1],), (CO[0],))
+    assert lines.isotopologue.tolist() == [0, 0, 0]
+    found = ready(lines, abundance="pure")
+    np.testing.assert_array_equal(found.strength, S[ISO == 1] / CO[1].abundance)
+    np.testing.assert_array_equal(found.mass, CO[1].mass)
+    assert [one.source for one in found.partition] == ["TIPS-2021 (13C)(16O)"]
+    # What was dropped may still be named, and nothing else.
+    shared = ready(lines, abundance={"1": 0.9, "(13C)(16O)": 0.1})
+    np.testing.assert_allclose(shared.strength, 0.1 * found.strength, rtol=1e-15)
+    with pytest.raises(InputError, match=r"^abundance: no lines of isotopologue 3; expected \(13C\)\(16O\) \(2\), "):
+        ready(lines, abundance={"2": 0.5, "3": 0.5})
 
 
 @pytest.mark.real_lines

@@ -5,21 +5,31 @@ import subprocess
 import sys
 from pathlib import Path
 
+import pytest
+
 import opacity
 
 CALL = "from opacity.kernels.accumulate import voigt_value; print(voigt_value(50.0, 1.0, 1e-3, 5.0, 10.0))"
 
 
 def run(folder: Path) -> float:
+    environment = {"PYTHONPATH": str(folder), "HOME": str(folder)}
     done = subprocess.run(
-        [sys.executable, "-c", CALL], cwd=folder, env={"PYTHONPATH": str(folder)}, capture_output=True, check=True
+        [sys.executable, "-c", CALL], cwd=folder, env=environment, capture_output=True, text=True, check=True
     )
+    assert not done.stderr
     return float(done.stdout)
 
 
-def test_a_change_in_a_called_kernel_reaches_its_callers(tmp_path: Path) -> None:
-    """numba alone would go on with the old machine code: it looks at the caller's file only."""
+@pytest.mark.parametrize("unusable", [(), ("opacity/kernels/__pycache__",), ("opacity/kernels/__pycache__", ".cache")])
+def test_a_change_in_a_called_kernel_reaches_its_callers(tmp_path: Path, unusable: tuple[str, ...]) -> None:
+    """numba alone would go on with the old machine code: it looks at the caller's file only.
+
+    Also where machine code cannot be kept in the package, or nowhere at all.
+    """
     shutil.copytree(Path(opacity.__file__).parent, tmp_path / "opacity", ignore=shutil.ignore_patterns("__pycache__"))
+    for name in unusable:
+        (tmp_path / name).write_text("in the way of a folder", encoding="ascii")
     before = run(tmp_path)
     source = tmp_path / "opacity" / "kernels" / "voigt.py"
     changed = source.read_text(encoding="utf-8").replace("sums[i] += max(factor * a", "sums[i] += max(2.0 * factor * a")

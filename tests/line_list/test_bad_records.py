@@ -138,11 +138,34 @@ def test_a_record_with_several_faults_is_counted_once(record, write_par):
     assert lines.ledger.adds_up()
 
 
-def test_a_list_of_which_nothing_is_left_is_empty_and_accounted_for(record, write_par):
-    lines = read_lines(write_par([record(strength="x")] * 3), bad_records="leave-out")
-    assert len(lines) == 0
-    assert lines.molecule_formula == ""
-    assert lines.ledger.as_dict()["left_out"] == {"strength is not a number": 3}
+def test_a_list_of_which_nothing_is_left_is_refused(record, write_par):
+    path = write_par([record(strength="x")] * 3)
+    with pytest.raises(LineListError, match=r"every record was left out; found 3 strength is not a number; mend"):
+        read_lines(path, bad_records="leave-out")
+
+
+@pytest.mark.parametrize(
+    ("changes", "what"),
+    [
+        ({"strength": 1e-20, "lower_energy": 99999.9999}, "strength is impossible for its lower-state energy"),
+        ({"strength": 1e-5}, "strength is impossible for its lower-state energy"),
+        ({"lower_energy": -1.5}, "lower-state energy is impossible"),
+    ],
+)
+def test_values_no_line_can_have_are_refused(record, write_par, changes, what):
+    with pytest.raises(LineListError, match=rf"made\.par:1: {what}; expected"):
+        read_lines(write_par([record(**changes)]))
+
+
+def test_a_record_that_stands_in_two_files_is_refused(record, write_par, tmp_path):
+    path = write_par([record(wavenumber=2000.0), record(wavenumber=2001.0)])
+    copy = tmp_path / "copy.par"
+    copy.write_bytes(path.read_bytes())
+    with pytest.raises(LineListError, match=r"copy\.par:1: the same record stands in .*made\.par:1 too.*found 2 such"):
+        read_lines([path, copy])
+    twice = read_lines(write_par([record(), record(), record(wavenumber=2003.0)]))
+    assert len(twice) == 3
+    assert sum(count for note, count in twice.ledger.notes.items() if note.startswith("identical")) == 1
 
 
 def test_lines_of_several_molecules_are_refused(record, write_par):
@@ -154,11 +177,27 @@ def test_lines_of_several_molecules_are_refused(record, write_par):
 def test_the_recipe_says_which_molecule(record, write_par):
     path = write_par([record(), record(molecule=2), record()])
     options = ReadOptions(formula="CO")
-    with pytest.raises(LineListError, match=r":2: record of another molecule; expected records of CO, "):
+    with pytest.raises(LineListError) as caught:
         read_lines(path, options=options)
+    assert str(caught.value) == (
+        f"formula: {path}:2 is a record of another molecule; expected records of CO, found CO2 in 1 of 3 records;"
+        " the formula or the list is wrong"
+    )
+    assert caught.value.argument == "formula"
     lines = read_lines(path, bad_records="leave-out", options=options)
     assert dict(lines.ledger.left_out) == {"record of another molecule": 1}
     assert lines.record.tolist() == [1, 3]
+
+
+@pytest.mark.parametrize("code", ["1", "7"])
+@pytest.mark.parametrize("molecule", [2, 99])
+def test_a_list_all_of_another_molecule_is_refused_even_where_bad_records_are_left_out(
+    record, write_par, molecule, code
+):
+    path = write_par([record(molecule=molecule, code=code)] * 2)
+    found = {2: "CO2", 99: "molecule number 99"}[molecule]
+    with pytest.raises(LineListError, match=f"expected records of CO, found {found} in 2 of 2 records; the formula"):
+        read_lines(path, bad_records="leave-out", options=ReadOptions(formula="CO"))
 
 
 def test_a_molecule_that_is_not_known_needs_formula_and_mass(record, write_par):

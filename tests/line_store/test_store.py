@@ -32,7 +32,7 @@ def quiet(records: int, position: int) -> None:
 def sample(name: str = "carbon-monoxide.data") -> InputFile:
     path = SAMPLES / name
     format = "hapi" if path.suffix == ".data" else "hitran"
-    return InputFile(path, partial(record_batches, path, format, ReadOptions(), None, None))
+    return InputFile(path, partial(record_batches, path, format, ReadOptions(), False, None, None))
 
 
 def shuffled(lines: LineList, pieces: int, seed: int) -> list[LineList]:
@@ -139,7 +139,7 @@ def test_an_interrupted_ingest_goes_on_file_by_file(tmp_path: Path) -> None:
 def test_a_store_knows_whether_it_is_current(tmp_path: Path) -> None:
     path = tmp_path / "a.par"
     path.write_bytes((SAMPLES / "carbon-monoxide.par").read_bytes())
-    one = InputFile(path, partial(record_batches, path, "hitran", ReadOptions(), None, None))
+    one = InputFile(path, partial(record_batches, path, "hitran", ReadOptions(), False, None, None))
     ingest(tmp_path / "store", [one], "key", 10**9, quiet)
     index = read_index(tmp_path / "store")
     assert index is not None
@@ -176,7 +176,7 @@ def test_damage_is_named(tmp_path: Path) -> None:
 def test_a_bad_record_stops_the_ingest_and_leaves_no_store(tmp_path: Path) -> None:
     path = tmp_path / "bad.par"
     path.write_bytes((SAMPLES / "carbon-monoxide.par").read_bytes() + b" 51 short\n")
-    one = InputFile(path, partial(record_batches, path, "hitran", ReadOptions(), None, None))
+    one = InputFile(path, partial(record_batches, path, "hitran", ReadOptions(), False, None, None))
     with pytest.raises(LineListError, match=r"bad\.par:203: record of the wrong length"):
         ingest(tmp_path / "store", [one], "key", 10**9, quiet)
     assert read_index(tmp_path / "store") is None

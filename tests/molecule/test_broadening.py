@@ -5,8 +5,9 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from opacity.arguments import DefaultWidth
 from opacity.errors import MoleculeError
-from opacity.molecule.broadening import Assumption, BroadenerColumns, DefaultWidth, resolve_broadening
+from opacity.molecule.broadening import Assumption, BroadenerColumns, resolve_broadening
 
 NAN = np.nan
 DEFAULT = DefaultWidth(0.07, 0.5, "from memory")
@@ -58,7 +59,7 @@ def test_a_default_serves_only_lines_without_a_width_and_is_counted():
     np.testing.assert_array_equal(found.exponent, [[0.6, 0.5, 0.5]])
     np.testing.assert_array_equal(found.shift, [0.001, 0.001, 0.0])
     assert notes(found) == {
-        "H2 width from the recipe's default 0.07 cm-1/bar, exponent 0.5 (from memory)": 2,
+        "H2 width from the default 0.07 cm-1/bar, exponent 0.5 (from memory)": 2,
         "no pressure shift by H2 given: taken as 0": 1,
     }
 
@@ -68,7 +69,7 @@ def test_a_default_exponent_for_a_width_without_one():
     found = resolve_broadening(columns, {"H2": 1.0}, {"H2": DEFAULT}, 2)
     np.testing.assert_array_equal(found.gamma, [[0.05, 0.06]])
     np.testing.assert_array_equal(found.exponent, [[0.5, 0.7]])
-    assert notes(found) == {"H2 temperature exponent from the recipe's default 0.5 (from memory)": 1}
+    assert notes(found) == {"H2 temperature exponent from the default 0.5 (from memory)": 1}
 
 
 def test_a_broadener_the_list_does_not_know_takes_the_default_for_all_lines():
@@ -89,7 +90,7 @@ def test_the_exponent_of_self_is_its_own_where_given_else_that_of_air():
 
 def test_the_exponent_of_air_serves_self_alone():
     columns = {"air": FULL["air"], "h2": given([0.05, 0.06], [NAN, NAN], [0.0, 0.0])}
-    with pytest.raises(MoleculeError, match=r"^broadening by H2: 2 of 2 lines have no temperature exponent; found"):
+    with pytest.raises(MoleculeError, match=r"^broadeners: 2 of 2 lines have no temperature exponent by H2; expected"):
         resolve_broadening(columns, {"H2": 1.0}, {}, 2)
 
 
@@ -99,7 +100,7 @@ def test_self_without_any_exponent_takes_the_default_or_is_refused():
     assert found.exponent[0, 0] == 0.5
     assert found.gamma[0, 0] == 0.1
     for alone in (columns, {"self": columns["self"]}):
-        with pytest.raises(MoleculeError, match=r"^broadening by self: 1 of 1 lines have no temperature exponent"):
+        with pytest.raises(MoleculeError, match=r"^broadeners: 1 of 1 lines have no temperature exponent by self"):
             resolve_broadening(alone, {"self": 1.0}, {}, 1)
 
 
@@ -109,16 +110,18 @@ def test_every_broadener_that_is_missing_is_named():
         resolve_broadening(columns, {"H2": 0.5, "air": 0.2, "He": 0.3}, {}, 2)
     first, second = str(caught.value).splitlines()
     assert first == (
-        "broadening by H2: 1 of 2 lines have no half-width; found columns for air, h2;"
-        " give [broadening.default.H2] with gamma, exponent and source, or a list with these columns"
+        "broadeners: 1 of 2 lines have no half-width by H2; expected columns for h2 in the list, or a default, found"
+        " columns for air, h2; give [broadening.default.H2] with gamma, exponent and source in a recipe,"
+        ' default_widths={"H2": DefaultWidth(...)} in Python'
     )
-    assert second.startswith("broadening by He: 2 of 2 lines have no half-width; found columns for air, h2; give")
+    assert second.startswith("broadeners: 2 of 2 lines have no half-width by He; expected columns for he in the list")
+    assert caught.value.argument == "broadeners"
     with pytest.raises(MoleculeError, match="found columns for no broadener"):
         resolve_broadening({}, {"air": 1.0}, {}, 1)
 
 
 def test_a_default_of_another_broadener_does_not_serve():
-    with pytest.raises(MoleculeError, match=r"^broadening by N2: 2 of 2 lines"):
+    with pytest.raises(MoleculeError, match=r"^broadeners: 2 of 2 lines have no half-width by N2;"):
         resolve_broadening(FULL, {"N2": 1.0}, {"H2": DEFAULT}, 2)
 
 

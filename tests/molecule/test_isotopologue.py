@@ -2,10 +2,16 @@
 
 from __future__ import annotations
 
+import subprocess
+import sys
+from pathlib import Path
+
 import pytest
 
 from opacity.errors import MoleculeError
 from opacity.molecule.isotopologue import LOCAL_CODES, isotopologue, isotopologues_of, molecule_is_known
+
+ROOT = Path(__file__).parents[2]
 
 
 @pytest.mark.parametrize(
@@ -53,3 +59,17 @@ def test_what_is_not_known():
         isotopologue(5, 7)
     with pytest.raises(MoleculeError, match=r"^molecule 999, isotopologue 1: .* expected a molecule number of HITRAN$"):
         isotopologue(999, 1)
+
+
+def test_loading_hapi_leaves_the_caller_s_warnings_alone():
+    """hapi adds a filter of its own when it is imported, which would undo what the caller has chosen."""
+    code = """
+import warnings
+warnings.simplefilter("error")
+before = list(warnings.filters)
+from opacity.molecule.hapi_tables import hapi
+assert hapi().__name__ == "hapi"
+assert warnings.filters == before, warnings.filters
+"""
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, cwd=ROOT, check=False)
+    assert (done.returncode, done.stdout, done.stderr) == (0, "", "")

@@ -119,3 +119,29 @@ def test_a_file_that_cannot_be_read(tmp_path, write):
         ) as caught:
             from_file(path)
         assert len(str(caught.value).splitlines()) == 1
+
+
+@pytest.mark.parametrize(
+    ("rows", "found"),
+    [([*GOOD[2:], "600.0 140.0"], "300 to 600 K"), (["50.0 4.0", "80.0 8.0", *GOOD[:2]], "50 to 200 K")],
+)
+def test_a_file_without_296_kelvin_is_to_blame(write, rows, found):
+    path = write(rows)
+    message = (
+        f"{path}: the partition function does not hold 296 K, to which the strengths refer;"
+        f" expected rows from 296 K or below to 296 K or above, found {found}"
+    )
+    with pytest.raises(MoleculeError, match="^" + re.escape(message) + "$"):
+        from_file(path)
+
+
+def test_a_step_in_a_file_is_found_where_it_is(write):
+    temperature = np.arange(20.0, 1000.1, 10.0)
+    smooth = np.array([direct_sum(t) for t in temperature])
+    assert from_file(write([f"{t} {q}" for t, q in zip(temperature, smooth, strict=True)])).steps == ()
+    # Down to 60 K a cubic through rows 10 K apart can say nothing.
+    for place, found in ((700.0, True), (40.0, False)):
+        broken = np.where(temperature > place, 1.01, 1.0) * smooth
+        steps = from_file(write([f"{t} {q}" for t, q in zip(temperature, broken, strict=True)])).steps
+        assert bool(steps) is found
+        assert all(abs(t - place) <= 20.0 for t in steps)

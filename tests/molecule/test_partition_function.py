@@ -108,14 +108,14 @@ def test_an_edition_that_is_wrong_throughout_is_refused(key, modes, rotation):
         assert good(temperature) / good(296.0) == pytest.approx(model, rel=0.01)
     old = [hapi().partitionSum(*key, t, version=2021) for t in (1000.0, 296.0)]
     assert abs(old[0] / old[1] / rigid_harmonic_ratio(1000.0, modes, rotation) - 1.0) > 0.3
-    with pytest.raises(MoleculeError, match=r"^partition function TIPS-2021: no trustworthy values for .*; choose"):
+    with pytest.raises(MoleculeError, match=r"^partition_function: TIPS-2021 has no trustworthy values for .*; choose"):
         pf.tips("TIPS-2021", one)
 
 
 @pytest.mark.parametrize(("edition", "key"), [("TIPS-2021", (57, 1)), ("TIPS-2021", (34, 1)), ("TIPS-2025", (34, 1))])
 def test_an_edition_without_values_is_refused(edition, key):
     with pytest.raises(
-        MoleculeError, match=rf"^partition function {edition}: no values for .*; choose another edition"
+        MoleculeError, match=rf"^partition_function: {edition} has no values for .*; choose another edition or a file"
     ):
         pf.tips(edition, isotopologue(*key))
 

@@ -8,8 +8,9 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from opacity.arguments import DefaultWidth
 from opacity.recipe.load import load_recipe
-from opacity.recipe.model import BroadeningDefault, Cutoff, CutoffStep, Recipe
+from opacity.recipe.model import Cutoff, CutoffStep, Recipe
 
 
 def load(folder: Path, text: str, newline: str = "\n") -> Recipe:
@@ -33,7 +34,7 @@ def test_full_recipe_is_read_whole(folder: Path, full: str) -> None:
     assert recipe.partition_function.source == "file"
     assert recipe.partition_function.path == folder / "CO.pf"
     assert recipe.broadening.mixture == {"H2": 0.85, "He": 0.15}
-    assert recipe.broadening.default == {"H2": BroadeningDefault(0.07, 0.5, "from memory")}
+    assert recipe.broadening.default == {"H2": DefaultWidth(0.07, 0.5, "from memory")}
     assert recipe.profile.cutoff == Cutoff((CutoffStep(25.0, 200.0), CutoffStep(100.0)))
     assert (recipe.profile.tolerance, recipe.profile.plinth) == (1e-4, True)
 
@@ -50,7 +51,6 @@ def test_line_lists_of_the_full_recipe(folder: Path, full: str) -> None:
 def test_grid_of_the_full_recipe(folder: Path, full: str) -> None:
     grid = load(folder, full).grid
     np.testing.assert_array_equal(grid.wavenumber, np.arange(2000.0, 2010.5, 0.5))
-    assert grid.wavenumber_spacing == "linear"
     assert grid.temperature == (300.0, 1000.0)
     np.testing.assert_allclose(grid.pressure, np.logspace(-6, 2, 9), rtol=1e-14)
     assert len(grid.node_list()) == 18
@@ -80,7 +80,6 @@ def test_defaults_of_a_short_recipe(folder: Path) -> None:
     assert recipe.profile.cutoff == Cutoff((CutoffStep(25.0),))
     assert (recipe.profile.tolerance, recipe.profile.plinth) == (1e-3, False)
     assert (recipe.grid.temperature, recipe.grid.pressure) == ((300.0,), (1.0,))
-    assert recipe.grid.wavenumber_spacing == "log"
     assert recipe.grid.wavenumber.size == 51
     assert recipe.band_strengths == ()
 

@@ -19,6 +19,8 @@ FOLDER = os.environ.get("OPACITY_REAL_LINES", "")
 pytestmark = [
     pytest.mark.real_lines,
     pytest.mark.skipif(not FOLDER, reason="OPACITY_REAL_LINES names no folder of real lines"),
+    # HITRAN gives no shifts by H2 and He.
+    pytest.mark.filterwarnings("ignore::opacity.AssumptionWarning"),
 ]
 
 TEMPERATURES = [100.0, 296.0, 1000.0, 2500.0]

@@ -1,0 +1,57 @@
+"""What a table is made from, told by hashes: to know whether it is up to date no line needs to be read."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from opacity.provenance import VERSION, file_sha256, package_versions
+from opacity.recipe.model import LineListSource, Recipe
+
+
+@dataclass(frozen=True)
+class Fingerprint:
+    """Versions and files behind a table as plain values for JSON, and one hash of these and of the recipe's text."""
+
+    content: dict[str, Any]
+    sha256: str
+
+    @property
+    def seed(self) -> int:
+        """The audit's seed, made of the inputs."""
+        return int(self.sha256[:12], 16)
+
+
+def fingerprint(recipe: Recipe) -> Fingerprint:
+    """The fingerprint of a recipe's table.  Raises OpacityError for a file that cannot be read."""
+    choice = recipe.partition_function
+    content: dict[str, Any] = {
+        "program": {"name": "opacity", "version": VERSION},
+        "packages": package_versions(),
+        "line_lists": [_file_entry(path, source) for source in recipe.line_lists for path in _all_paths(source)],
+        "partition_file": None,
+    }
+    if choice.path is not None:
+        content["partition_file"] = {"file": _file_name(choice.path), "sha256": file_sha256(choice.path)}
+    text = json.dumps({**content, "recipe": recipe.text}, sort_keys=True)
+    return Fingerprint(content, hashlib.sha256(text.encode("utf-8")).hexdigest())
+
+
+def _all_paths(source: LineListSource) -> list[Path]:
+    paths = list(source.paths)
+    if source.format == "hapi":
+        paths += [path.with_suffix(".header") for path in source.paths]
+    return paths
+
+
+def _file_entry(path: Path, source: LineListSource) -> dict[str, Any]:
+    return {"file": _file_name(path), "sha256": file_sha256(path), "reference": source.reference}
+
+
+def _file_name(path: Path) -> str:
+    """A file name need not be text."""
+    return os.fsencode(path.name).decode("utf-8", "backslashreplace")
