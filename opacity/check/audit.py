@@ -15,9 +15,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.check.result import CheckResult, judge
-from opacity.check.spectra import Spectra, interpolated, nodes_of
-from opacity.cross_sections.exact import exact_at
-from opacity.cross_sections.prepare import NodeLines, PreparedLines
+from opacity.check.spectra import Node, Spectra, interpolated, nodes_of
+from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.source import LineSource, Request, as_source, exact_points
 from opacity.grids import FloatArray
 from opacity.recipe.model import Profile
 
@@ -83,13 +83,9 @@ def relative_errors(values: FloatArray, truth: FloatArray, rounding: FloatArray 
     return np.where(negligible, 0.0, errors)
 
 
-def plinth_rounding(node: NodeLines, points: FloatArray, cutoff: float, plinth: bool) -> FloatArray | float:
-    """What rounding leaves of a difference of two nearly equal values: 1e-13 of the sum before subtraction."""
-    return PLINTH_ROUNDING * exact_at(node, points, cutoff) if plinth else 0.0
-
-
-def audit(spectra: Spectra, lines: PreparedLines, profile: Profile, seed: int) -> Audit:
+def audit(spectra: Spectra, lines: LineSource | PreparedLines, profile: Profile, seed: int) -> Audit:
     """Recompute points of up to 16 nodes exactly; with all corners of the grid among them."""
+    source = as_source(lines)
     rng = np.random.default_rng(seed)
     nodes = nodes_of(spectra)
     if len(nodes) > MOST_NODES:
@@ -98,25 +94,25 @@ def audit(spectra: Spectra, lines: PreparedLines, profile: Profile, seed: int) -
         others = [i for i in range(len(nodes)) if i not in corners]
         picked = rng.choice(others, MOST_NODES - len(corners), replace=False).tolist()
         nodes = [nodes[i] for i in sorted([*corners, *picked])]
-    all_errors, zeros, worst = [], 0, {"error": -1.0}
-    for index, temperature, pressure in nodes:
-        cutoff = profile.cutoff.at(pressure)
-        sigma = spectra.spectrum(*index)
-        points = choose_points(rng, sigma, spectra.wavenumber, lines.wavenumber, cutoff)
-        at = spectra.wavenumber[points]
-        node = lines.at(temperature, pressure)
-        truth = exact_at(node, at, cutoff, profile.plinth)
-        errors = relative_errors(sigma[points], truth, plinth_rounding(node, at, cutoff, profile.plinth))
-        zeros += int(np.count_nonzero(truth == 0.0))
+    requests, values = _draw(rng, spectra, source, profile, nodes)
+    truths = exact_points(source, requests, profile.cutoff.at, profile.plinth)
+    roundings: list[FloatArray | float] = [0.0] * len(requests)
+    if profile.plinth:
+        # What rounding leaves of a difference of two nearly equal values.
+        whole = exact_points(source, requests, profile.cutoff.at, False)
+        roundings = [PLINTH_ROUNDING * one for one in whole]
+    all_errors, worst = [], {"error": -1.0}
+    for request, found, truth, rounding in zip(requests, values, truths, roundings, strict=True):
+        errors = relative_errors(found, truth, rounding)
         all_errors.append(errors)
         top = int(np.argmax(errors))
         if errors[top] > worst["error"]:
             worst = {
                 "error": float(errors[top]),
-                "wavenumber": float(at[top]),
-                "temperature": temperature,
-                "pressure": pressure,
-                "value": float(sigma[points[top]]),
+                "wavenumber": float(request[2][top]),
+                "temperature": request[0],
+                "pressure": request[1],
+                "value": float(found[top]),
                 "exact": float(truth[top]),
             }
     errors = np.concatenate(all_errors)
@@ -124,11 +120,25 @@ def audit(spectra: Spectra, lines: PreparedLines, profile: Profile, seed: int) -
         seed=seed,
         nodes=len(nodes),
         points=errors.size,
-        zeros=zeros,
+        zeros=sum(int(np.count_nonzero(truth == 0.0)) for truth in truths),
         largest_error=float(errors.max()),
         p99_error=float(np.percentile(errors, 99.0)) if np.all(np.isfinite(errors)) else math.inf,
         worst=worst,
     )
+
+
+def _draw(
+    rng: np.random.Generator, spectra: Spectra, source: LineSource, profile: Profile, nodes: list[Node]
+) -> tuple[list[Request], list[FloatArray]]:
+    """Points to audit at each node, and the table's values there."""
+    requests, values = [], []
+    places = source.sample()
+    for index, temperature, pressure in nodes:
+        sigma = spectra.spectrum(*index)
+        points = choose_points(rng, sigma, spectra.wavenumber, places, profile.cutoff.at(pressure))
+        requests.append((temperature, pressure, spectra.wavenumber[points]))
+        values.append(sigma[points])
+    return requests, values
 
 
 def judge_audit(found: Audit, tolerance: float) -> CheckResult:
@@ -141,7 +151,9 @@ def judge_audit(found: Audit, tolerance: float) -> CheckResult:
     return judge("audit against the exact sum", found.largest_error, tolerance + STORAGE_ROUNDING, detail)
 
 
-def interpolation_errors(spectra: Spectra, lines: PreparedLines, profile: Profile, seed: int) -> dict[str, Any] | None:
+def interpolation_errors(
+    spectra: Spectra, lines: LineSource | PreparedLines, profile: Profile, seed: int
+) -> dict[str, Any] | None:
     """Relative error of interpolating at the middle (in ln T and ln P) of up to 8 cells; None without cells.
 
     This measures the grid's spacing, not the table's values: it is reported and not judged.
@@ -154,13 +166,17 @@ def interpolation_errors(spectra: Spectra, lines: PreparedLines, profile: Profil
     rng = np.random.default_rng(seed + 1)
     cells = [(float(t), float(p)) for t in axes[0] for p in axes[1]]
     picked = rng.choice(len(cells), min(MOST_CELLS, len(cells)), replace=False)
-    errors, worst = [], {"p99": -1.0}
+    source = as_source(lines)
+    requests, values = [], []
     for temperature, pressure in (cells[i] for i in sorted(picked.tolist())):
-        cutoff = profile.cutoff.at(pressure)
         sigma = interpolated(spectra, temperature, pressure)
-        points = choose_points(rng, sigma, spectra.wavenumber, lines.wavenumber, cutoff)
-        truth = exact_at(lines.at(temperature, pressure), spectra.wavenumber[points], cutoff, profile.plinth)
-        here = relative_errors(sigma[points], truth)[truth > 0.0]
+        points = choose_points(rng, sigma, spectra.wavenumber, source.sample(), profile.cutoff.at(pressure))
+        requests.append((temperature, pressure, spectra.wavenumber[points]))
+        values.append(sigma[points])
+    errors, worst = [], {"p99": -1.0}
+    truths = exact_points(source, requests, profile.cutoff.at, profile.plinth)
+    for (temperature, pressure, _), found, truth in zip(requests, values, truths, strict=True):
+        here = relative_errors(found, truth)[truth > 0.0]
         if here.size and np.percentile(here, 99.0) > worst["p99"]:
             p99 = float(np.percentile(here, 99.0))
             worst = {"p99": p99, "temperature": temperature, "pressure": pressure}

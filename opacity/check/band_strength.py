@@ -9,8 +9,8 @@ import numpy as np
 from opacity.check.closure import JUDGED_BELOW, Closure, share_within
 from opacity.check.result import CANNOT_JUDGE, CheckResult, judge
 from opacity.check.spectra import Spectra, interpolated, nodes_of
-from opacity.cross_sections.exact import exact_at
 from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.source import LineSource, as_source, exact_points
 from opacity.grids import FloatArray
 from opacity.recipe.model import BandStrength, Profile
 from opacity.tables import interpolate
@@ -31,7 +31,11 @@ def integral_between(wavenumber: FloatArray, values: FloatArray, lower: float, u
 
 
 def check_band(
-    band: BandStrength, spectra: Spectra, pressure: float | None, lines: PreparedLines, profile: Profile
+    band: BandStrength,
+    spectra: Spectra,
+    pressure: float | None,
+    lines: LineSource | PreparedLines,
+    profile: Profile,
 ) -> CheckResult:
     """Judge one band at the published temperature and a pressure (bar) at which the table resolves it.
 
@@ -54,7 +58,7 @@ def check_band(
     limit = STANDARD_DEVIATIONS * band.uncertainty
     between = ""
     if not np.any(spectra.temperature == band.temperature):
-        cost = _interpolation_cost(band, spectra, pressure, lines, profile)
+        cost = _interpolation_cost(band, spectra, pressure, as_source(lines), profile)
         between = f", interpolated at a cost of {cost:+.1e}"
         if not abs(cost) <= 0.5 * limit:
             detail = (
@@ -69,25 +73,22 @@ def check_band(
 
 
 def _interpolation_cost(
-    band: BandStrength, spectra: Spectra, pressure: float, lines: PreparedLines, profile: Profile
+    band: BandStrength, spectra: Spectra, pressure: float, source: LineSource, profile: Profile
 ) -> float:
     """How far interpolating in temperature moves the band's integral, relative; from the lines alone."""
     nu = spectra.wavenumber
     part = np.flatnonzero((nu >= band.range[0]) & (nu <= band.range[1]))
     sample = nu[part[:: max(part.size // SAMPLE, 1)]]
-    cutoff = profile.cutoff.at(pressure)
-
-    def exact(temperature: float) -> FloatArray:
-        return exact_at(lines.at(temperature, pressure), sample, cutoff, profile.plinth)
-
-    at_nodes = np.array([[exact(float(t))] for t in spectra.temperature])
+    temperatures = [*(float(t) for t in spectra.temperature), band.temperature]
+    requests = [(temperature, pressure, sample) for temperature in temperatures]
+    *at_nodes, exact = exact_points(source, requests, profile.cutoff.at, profile.plinth)
     axes = spectra.temperature, np.array([pressure])
-    between = interpolate.interpolate(at_nodes, *axes, band.temperature, pressure)
-    return float(np.sum(between) / max(float(np.sum(exact(band.temperature))), 1e-300) - 1.0)
+    between = interpolate.interpolate(np.array(at_nodes)[:, None, :], *axes, band.temperature, pressure)
+    return float(np.sum(between) / max(float(np.sum(exact)), 1e-300) - 1.0)
 
 
 def choose_pressure(
-    band: BandStrength, accounts: Sequence[Closure], lines: PreparedLines, profile: Profile
+    band: BandStrength, accounts: Sequence[Closure], lines: LineSource | PreparedLines, profile: Profile
 ) -> float | None:
     """The pressure (bar) at which sampling and wings change a band least, near its temperature; None if all are coarse.
 
@@ -97,12 +98,17 @@ def choose_pressure(
     near = [one for one in accounts if abs(one.temperature - band.temperature) <= nearest * (1.0 + 1e-9)]
     resolved = [one for one in near if one.at_risk <= JUDGED_BELOW]
 
+    source = as_source(lines)
+
     def change(one: Closure) -> float:
-        node = lines.at(one.temperature, one.pressure)
-        share = share_within(node, *band.range, profile.cutoff.at(one.pressure), profile.plinth)
-        inside = (node.wavenumber >= band.range[0]) & (node.wavenumber <= band.range[1])
-        whole = max(float(np.sum(node.strength[inside])), 1e-300)
-        return one.at_risk + abs(float(np.sum(node.strength * share)) / whole - 1.0)
+        whole, within = 0.0, 0.0
+        for part in source.stretches():
+            node = part.at(one.temperature, one.pressure)
+            share = share_within(node, *band.range, profile.cutoff.at(one.pressure), profile.plinth)
+            inside = (node.wavenumber >= band.range[0]) & (node.wavenumber <= band.range[1])
+            whole += float(np.sum(node.strength[inside]))
+            within += float(np.sum(node.strength * share))
+        return one.at_risk + abs(within / max(whole, 1e-300) - 1.0)
 
     return min(resolved, key=change).pressure if resolved else None
 

@@ -67,28 +67,73 @@ class Closure:
         return {**asdict(self), "difference": self.difference}
 
 
+@dataclass(frozen=True)
+class ClosureSums:
+    """What the lines of a node add up to, cm/molecule; those of several stretches of lines can be added.
+
+    `strength`; `in_reach` of cut-off and grid; `inside` in lines centred inside the grid and `risk` what of it the step
+    does not resolve; `sampling` what sampling is predicted to add, None where it can't be; `allowance` for ends.
+    """
+
+    strength: float = 0.0
+    in_reach: float = 0.0
+    inside: float = 0.0
+    risk: float = 0.0
+    sampling: float | None = 0.0
+    allowance: float = 0.0
+
+    def plus(self, other: ClosureSums) -> ClosureSums:
+        """The sums of both."""
+        known = self.sampling is not None and other.sampling is not None
+        return ClosureSums(
+            self.strength + other.strength,
+            self.in_reach + other.in_reach,
+            self.inside + other.inside,
+            self.risk + other.risk,
+            (self.sampling or 0.0) + (other.sampling or 0.0) if known else None,
+            self.allowance + other.allowance,
+        )
+
+
 def closure_of(
     node: NodeLines, wavenumber: FloatArray, sigma: FloatArray, cutoff: float, plinth: bool, uniform: bool
 ) -> Closure:
     """The account of one spectrum (n_nu,) computed from the lines of `node`."""
+    sums = closure_sums(node, wavenumber, cutoff, plinth, uniform)
+    integral = float(np.sum(cell_widths(wavenumber) * sigma))
+    return closure_from(sums, node.temperature, node.pressure, integral)
+
+
+def closure_sums(node: NodeLines, wavenumber: FloatArray, cutoff: float, plinth: bool, uniform: bool) -> ClosureSums:
+    """What the lines of a node, or some of them, add up to on a grid."""
     share = share_within(node, float(wavenumber[0]), float(wavenumber[-1]), cutoff, plinth)
-    in_reach = float(np.sum(node.strength * share))
     weighed = node.strength * (share > 0.0)
     risk = sampling_risk(node, wavenumber)
     inside = (node.centre > wavenumber[0]) & (node.centre < wavenumber[-1])
-    at_risk = float(np.sum(weighed * risk * inside)) / max(float(np.sum(weighed * inside)), 1e-300)
-    sampling = _predicted_sampling(node, wavenumber, inside) if uniform else None
-    allowance = _ends_allowance(node, wavenumber, cutoff, risk)
-    if sampling is None and at_risk <= 0.1 * JUDGED_BELOW:
-        sampling, allowance = 0.0, allowance + float(np.sum(weighed * risk * inside))
-    relative = None if sampling is None else sampling / max(in_reach, 1e-300)
-    expected = in_reach * (1.0 + (relative or 0.0))
-    return Closure(
-        temperature=node.temperature,
-        pressure=node.pressure,
+    return ClosureSums(
         strength=float(np.sum(node.strength)),
-        in_reach=in_reach,
-        integral=float(np.sum(cell_widths(wavenumber) * sigma)),
+        in_reach=float(np.sum(node.strength * share)),
+        inside=float(np.sum(weighed * inside)),
+        risk=float(np.sum(weighed * risk * inside)),
+        sampling=_predicted_sampling(node, wavenumber, inside) if uniform else None,
+        allowance=_ends_allowance(node, wavenumber, cutoff, risk),
+    )
+
+
+def closure_from(sums: ClosureSums, temperature: float, pressure: float, integral: float) -> Closure:
+    """The account of a node from its lines' sums and the integral of its points (cm/molecule)."""
+    at_risk = sums.risk / max(sums.inside, 1e-300)
+    sampling, allowance = sums.sampling, sums.allowance
+    if sampling is None and at_risk <= 0.1 * JUDGED_BELOW:
+        sampling, allowance = 0.0, allowance + sums.risk
+    relative = None if sampling is None else sampling / max(sums.in_reach, 1e-300)
+    expected = sums.in_reach * (1.0 + (relative or 0.0))
+    return Closure(
+        temperature=temperature,
+        pressure=pressure,
+        strength=sums.strength,
+        in_reach=sums.in_reach,
+        integral=integral,
         sampling=relative,
         at_risk=at_risk,
         allowance=min(allowance / expected, 1.0) if expected > 0.0 else 1.0,

@@ -10,6 +10,7 @@ import numpy as np
 from opacity.check.result import AGREES, CheckResult
 from opacity.check.run import CheckReport, run_checks
 from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.source import LineSource
 from opacity.errors import TableError, problem
 from opacity.recipe.model import Recipe
 from opacity.tables.read import Table
@@ -82,7 +83,11 @@ def require_same_inputs(table: Table, recipe: Recipe, provenance: dict[str, obje
 
 
 def recheck(
-    table: Table, recipe: Recipe, lines: PreparedLines, seed: int, progress: Callable[[], None] = lambda: None
+    table: Table,
+    recipe: Recipe,
+    lines: LineSource | PreparedLines,
+    seed: int,
+    progress: Callable[[], None] = lambda: None,
 ) -> CheckReport:
     """Integrity and all checks of the physics, recomputed from the recipe's lines."""
     integrity = check_integrity(table)

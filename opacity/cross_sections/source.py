@@ -8,15 +8,29 @@ from typing import Protocol
 
 import numpy as np
 
+from opacity.cross_sections.exact import exact_at
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.grids import FloatArray
+from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
 from opacity.line_list.read import merge
 from opacity.line_store.store import LineStore
+from opacity.molecule.broadening import Assumption
+
+LINES_AT_ONCE = 2_000_000
+"""Lines that are prepared at the same time: about 1 GB with everything that is made of them."""
 
 
 class LineSource(Protocol):
     """Lines in reach of a grid, sorted by unshifted wavenumber."""
+
+    @property
+    def ledger(self) -> Ledger:
+        """The account of the lists."""
+
+    @property
+    def assumptions(self) -> tuple[Assumption, ...]:
+        """What was assumed for how many lines."""
 
     def __len__(self) -> int:
         """Number of lines."""
@@ -31,11 +45,56 @@ class LineSource(Protocol):
         """Wavenumbers of some of the lines (n,), spread as all are, rising."""
 
 
+Request = tuple[float, float, FloatArray]
+"""Temperature (K), pressure (bar) and wavenumbers (n,)."""
+
+
+def exact_points(
+    source: LineSource, requests: Sequence[Request], cutoff_at: Callable[[float], float], plinth: bool
+) -> list[FloatArray]:
+    """The exact sum at the points of each request, (n,) each, cm2/molecule; `cutoff_at` gives the cut-off (cm-1) at a
+    pressure (bar).  The lines are read window by window, once for all requests.
+    """
+    found = [np.zeros(points.size) for _, _, points in requests]
+    if not requests:
+        return found
+    margin = max(cutoff_at(pressure) for _, pressure, _ in requests)
+    everywhere = np.unique(np.concatenate([points for _, _, points in requests]))
+    for group in point_groups(everywhere, source):
+        lines = source.window(float(group[0]) - margin - 1e-6, float(group[-1]) + margin + 1e-6)
+        for number, (temperature, pressure, points) in enumerate(requests):
+            here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
+            if here.size:
+                node = lines.at(temperature, pressure)
+                found[number][here] = exact_at(node, points[here], cutoff_at(pressure), plinth)
+    return found
+
+
+def point_groups(points: FloatArray, source: LineSource) -> list[FloatArray]:
+    """Rising points in groups whose windows hold few enough lines to be read at once."""
+    if len(source) <= LINES_AT_ONCE:
+        return [points]
+    sample = source.sample()
+    place = np.searchsorted(sample, points) * (len(source) / sample.size)
+    number = np.floor(place / LINES_AT_ONCE)
+    return [group for group in np.split(points, np.flatnonzero(np.diff(number)) + 1) if group.size]
+
+
 @dataclass(frozen=True)
 class HeldLines:
     """Lines in memory."""
 
     lines: PreparedLines
+
+    @property
+    def ledger(self) -> Ledger:
+        """The account of the lists."""
+        return self.lines.ledger
+
+    @property
+    def assumptions(self) -> tuple[Assumption, ...]:
+        """What was assumed for how many lines."""
+        return self.lines.assumptions
 
     def __len__(self) -> int:
         return len(self.lines)
@@ -56,6 +115,11 @@ class HeldLines:
         return self.lines.wavenumber
 
 
+def as_source(lines: LineSource | PreparedLines) -> LineSource:
+    """Prepared lines as a source; a source as it is."""
+    return HeldLines(lines) if isinstance(lines, PreparedLines) else lines
+
+
 @dataclass(frozen=True)
 class StoredLines:
     """Lines of one or several line stores between `lower` and `upper` (cm-1), prepared when they are read."""
@@ -64,6 +128,8 @@ class StoredLines:
     lower: float
     upper: float
     prepare: Callable[[LineList], PreparedLines]
+    ledger: Ledger
+    assumptions: tuple[Assumption, ...]
 
     def __len__(self) -> int:
         return sum(store.count(self.lower, self.upper) for store in self.stores)
