@@ -209,7 +209,7 @@ def plan(recipe: Recipe, folder: str | Path = "tables") -> Plan:
     from opacity.pipeline.inputs import load_inputs
     from opacity.pipeline.plan import make_plan
 
-    return make_plan(recipe, load_inputs(recipe), Path(folder))
+    return make_plan(recipe, load_inputs(recipe, Path(folder)), Path(folder))
 
 
 def build(recipe: Recipe, folder: str | Path = "tables", *, workers: int | None = None) -> tuple[Path, ...]:

@@ -12,6 +12,9 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from opacity.cli import text
+from opacity.cli.fetch import fetch as fetch
+from opacity.cli.lists import check_list, is_list
+from opacity.cli.lists import ingest as ingest
 
 if TYPE_CHECKING:
     from opacity.pipeline.plan import Plan
@@ -95,6 +98,7 @@ def build(arguments: Namespace) -> int:
         load_recipe(arguments.recipe),
         Path(arguments.output),
         workers=arguments.workers,
+        memory=arguments.memory,
         quiet=arguments.quiet,
         announce=lambda plan: _warn(plan.warnings),
     )
@@ -136,6 +140,8 @@ def _print_results(rows: Iterable[Any], figures: Mapping[str, Any]) -> None:
 
 def check(arguments: Namespace) -> int:
     """`opacity check TABLE|RECIPE`: the table of results, exit code 1 where a check differs."""
+    if is_list(Path(arguments.target)):
+        return check_list(Path(arguments.target), arguments.json)
     from opacity.pipeline.recheck import check_table_file, find_table_and_recipe
 
     given = Path(arguments.recipe) if arguments.recipe else None

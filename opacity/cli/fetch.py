@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from opacity.pipeline.fetch.plan import FetchPlan, Item
 
 DONE, FAILED, INTERRUPTED = 0, 1, 130
+_STOPPED = "interrupted: what came so far is kept as .part, and the same command goes on from there"
 
 
 def fetch(arguments: Namespace) -> int:
@@ -32,11 +33,11 @@ def fetch(arguments: Namespace) -> int:
         return DONE
     try:
         fetched = fetch_files(plan, quiet=arguments.quiet)
-    except KeyboardInterrupt:
-        print(
-            "interrupted: what came so far is kept as .part, and the same command goes on from there", file=sys.stderr
-        )
-        return INTERRUPTED
+    except KeyboardInterrupt as stop:
+        print(_STOPPED, file=sys.stderr)
+        if arguments.json:
+            print(text.as_json({"error": [_STOPPED]}))
+        return int(getattr(stop, "exit_code", INTERRUPTED))
     passed = not fetched.failures and not plan.missing
     if arguments.json:
         content: dict[str, Any] = {

@@ -8,6 +8,7 @@ import io
 import json
 import math
 import os
+import re
 import signal
 import sys
 from collections.abc import Sequence
@@ -31,6 +32,8 @@ class _UsageError(Exception):
 
 class Terminated(KeyboardInterrupt):
     """SIGTERM: whoever runs this asks it to stop."""
+
+    exit_code = TERMINATED
 
 
 class _Parser(argparse.ArgumentParser):
@@ -60,6 +63,18 @@ def parser() -> argparse.ArgumentParser:
     one.add_argument("formula", metavar="FORMULA", help="the molecule, such as CO or H2O")
     one.add_argument("-o", "--output", metavar="FILE", help="where to write it (default: FORMULA.toml)")
 
+    one = command("fetch", "get the files that a recipe's line lists need")
+    one.add_argument("recipe", metavar="RECIPE")
+    one.add_argument("--yes", action="store_true", help="start without asking")
+    one.add_argument("--json", action="store_true", help="the result as JSON on stdout")
+    one.add_argument("--quiet", action="store_true", help="only the last line of the result, and what failed")
+
+    one = command("ingest", "read a recipe's line lists into stores, and account for every record")
+    one.add_argument("recipe", metavar="RECIPE")
+    one.add_argument("--quiet", action="store_true", help="no progress")
+    _add_memory(one)
+    _add_shared(one)
+
     one = command("plan", "say what a build will do and need, without computing")
     one.add_argument("recipe", metavar="RECIPE")
     _add_shared(one)
@@ -68,10 +83,11 @@ def parser() -> argparse.ArgumentParser:
     one.add_argument("recipe", metavar="RECIPE")
     one.add_argument("--workers", type=_positive, metavar="N", help="threads (default: the CPUs allowed)")
     one.add_argument("--quiet", action="store_true", help="only warnings and the last line of the result")
+    _add_memory(one)
     _add_shared(one)
 
-    one = command("check", "show a table right, or say what differs")
-    one.add_argument("target", metavar="TABLE|RECIPE")
+    one = command("check", "show a table right, or say what differs; or look at a line list")
+    one.add_argument("target", metavar="TABLE|RECIPE|LIST")
     one.add_argument("--recipe", metavar="RECIPE", help="the recipe that the table was built from")
     one.add_argument("--seed", type=_whole, metavar="N", help="audit with other points (default: those of the build)")
     one.add_argument("--quiet", action="store_true", help="no progress")
@@ -88,6 +104,20 @@ def parser() -> argparse.ArgumentParser:
 def _add_shared(one: argparse.ArgumentParser) -> None:
     one.add_argument("-o", "--output", metavar="DIR", default="tables", help="folder of the tables (default: tables)")
     one.add_argument("--json", action="store_true", help="the result as JSON on stdout")
+
+
+def _add_memory(one: argparse.ArgumentParser) -> None:
+    one.add_argument(
+        "--memory", type=_bytes, metavar="SIZE", default=2_000_000_000, help="for reading lists (default: 2GB)"
+    )
+
+
+def _bytes(value: str) -> int:
+    match = re.fullmatch(r"(\d{1,6}(?:\.\d{1,3})?) ?([MG]B)", value)
+    size = float(match[1]) * {"MB": 1e6, "GB": 1e9}[match[2]] if match else 0.0
+    if not 5e7 <= size <= 1e15:
+        raise argparse.ArgumentTypeError(f"expected a size such as 500MB or 2GB, 50MB or more, found {value!r}")
+    return int(size)
 
 
 def _positive(value: str) -> int:

@@ -119,7 +119,7 @@ class PreparedLines:
 def prepare(
     lines: LineList,
     *,
-    partition_function: str | Path,
+    partition_function: str | Path | pf.PartitionFunction,
     abundance: str | Mapping[str, float],
     broadeners: Mapping[str, float],
     defaults: Mapping[str, DefaultWidth] | None = None,
@@ -171,8 +171,10 @@ def _check_mixture(broadeners: Mapping[str, float]) -> None:
         ).about("broadeners")
 
 
-def partition_of(choice: str | Path, isotopologue: Isotopologue) -> pf.PartitionFunction:
+def partition_of(choice: str | Path | pf.PartitionFunction, isotopologue: Isotopologue) -> pf.PartitionFunction:
     """The partition function of an isotopologue: a TIPS edition by name, or a file of T and Q."""
+    if isinstance(choice, pf.PartitionFunction):
+        return choice
     if isinstance(choice, Path):
         return pf.from_file(choice)
     if isinstance(choice, str) and choice in pf.TIPS_EDITIONS:

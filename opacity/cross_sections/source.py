@@ -14,7 +14,6 @@ from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
 from opacity.line_list.read import merge
-from opacity.line_store.store import LineStore
 from opacity.molecule.broadening import Assumption
 
 LINES_AT_ONCE = 2_000_000
@@ -115,6 +114,47 @@ class HeldLines:
         return self.lines.wavenumber
 
 
+class Windows(Protocol):
+    """Lines of one list by window: a line store, or a list in memory."""
+
+    def window(self, lower: float, upper: float) -> LineList:
+        """The lines from one wavenumber to another (cm-1), ends included."""
+
+    def count(self, lower: float, upper: float) -> int:
+        """How many they are."""
+
+    def edges(self) -> list[float]:
+        """Wavenumbers at which it is natural to part the lines."""
+
+    def sample(self) -> FloatArray:
+        """Wavenumbers of some of the lines, rising."""
+
+
+@dataclass(frozen=True)
+class ListInMemory:
+    """A list in memory, by window."""
+
+    lines: LineList
+
+    def window(self, lower: float, upper: float) -> LineList:
+        """The lines from one wavenumber to another."""
+        nu = self.lines.wavenumber
+        return self.lines.select((nu >= lower) & (nu <= upper))
+
+    def count(self, lower: float, upper: float) -> int:
+        """How many they are."""
+        nu = self.lines.wavenumber
+        return int(np.count_nonzero((nu >= lower) & (nu <= upper)))
+
+    def edges(self) -> list[float]:
+        """The first wavenumber."""
+        return [float(self.lines.wavenumber[0])] if len(self.lines) else []
+
+    def sample(self) -> FloatArray:
+        """All wavenumbers."""
+        return self.lines.wavenumber
+
+
 def as_source(lines: LineSource | PreparedLines) -> LineSource:
     """Prepared lines as a source; a source as it is."""
     return HeldLines(lines) if isinstance(lines, PreparedLines) else lines
@@ -122,9 +162,9 @@ def as_source(lines: LineSource | PreparedLines) -> LineSource:
 
 @dataclass(frozen=True)
 class StoredLines:
-    """Lines of one or several line stores between `lower` and `upper` (cm-1), prepared when they are read."""
+    """Lines of one or several lists between `lower` and `upper` (cm-1), prepared when they are read."""
 
-    stores: Sequence[LineStore]
+    stores: Sequence[Windows]
     lower: float
     upper: float
     prepare: Callable[[LineList], PreparedLines]
@@ -152,7 +192,6 @@ class StoredLines:
 
     def sample(self) -> FloatArray:
         """Every 4096th wavenumber of the stores, and their ends."""
-        found = np.concatenate(
-            [np.asarray(segment.sample) for store in self.stores for segment in store.index.segments]
-        )
-        return np.sort(found[(found >= self.lower) & (found <= self.upper)])
+        found = np.concatenate([store.sample() for store in self.stores])
+        found = np.sort(found[(found >= self.lower) & (found <= self.upper)])
+        return found if found.size > 1 else self.window(self.lower, self.upper).wavenumber

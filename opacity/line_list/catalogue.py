@@ -24,7 +24,9 @@ from opacity.errors import InputError, LineListError, problem
 from opacity.grids import FloatArray
 from opacity.kernels.text import BLANK, READ, read_fixed_column
 from opacity.line_list.ledger import Ledger
+from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.text import TextChunk, read_chunks
+from opacity.molecule.isotopologue import named_isotopologue
 
 CATALOGUE_TEMPERATURE = 300.0
 """Temperature of the intensities, K."""
@@ -85,6 +87,42 @@ class CatalogueLines:
 
     def __len__(self) -> int:
         return int(self.wavenumber.size)
+
+
+def catalogue_lines(
+    path: Path, *, formula: str, isotopologue: str, mass: float | None, bad_records: str = "stop"
+) -> LineList:
+    """A catalogue file as a `LineList` of one isotopologue: strengths at 300 K, without abundance, no widths.
+
+    Raises LineListError as `read_catalogue`, and where hapi does not know the isotopologue and no `mass` is given.
+    """
+    found = read_catalogue(path, bad_records=bad_records)
+    one = named_isotopologue(formula, isotopologue, mass)
+    if one is None:
+        raise LineListError(
+            problem(
+                path,
+                f"no mass of {isotopologue} is known",
+                expected="an isotopologue by hapi's formula or number, or molecule.mass",
+            )
+        )
+    nothing = np.full(len(found), np.nan)
+    return LineList(
+        wavenumber=found.wavenumber,
+        strength=found.strength,
+        lower_energy=found.lower_energy,
+        einstein_a=nothing,
+        upper_weight=found.upper_weight,
+        lower_weight=nothing,
+        isotopologue=np.zeros(len(found), dtype=np.int16),
+        isotopologues=(one,),
+        basis=(StrengthBasis(CATALOGUE_TEMPERATURE, True, 1.0),),
+        broadeners={},
+        record=found.record,
+        file=np.zeros(len(found), dtype=np.int16),
+        files=(str(path),),
+        ledger=found.ledger,
+    )
 
 
 def read_catalogue(path: Path, *, bad_records: str = "stop") -> CatalogueLines:

@@ -219,6 +219,19 @@ def join(parts: Sequence[PackedLines]) -> PackedLines:
     )
 
 
+def count_identical(packed: PackedLines) -> int:
+    """How many of the sorted lines agree with another in wavenumber, intensity, energy and isotopologue."""
+    same = np.diff(packed.wavenumber) == 0.0
+    beside = np.flatnonzero(np.concatenate([same, [False]]) | np.concatenate([[False], same]))
+    isotopologue = packed.classes.isotopologue[packed.width_class[beside]]
+    columns = (packed.intensity[beside], packed.lower_energy[beside], isotopologue, packed.wavenumber[beside])
+    order = np.lexsort(columns)
+    equal = np.ones(max(order.size - 1, 0), dtype=bool)
+    for column in columns:
+        equal &= column[order][1:] == column[order][:-1]
+    return int(np.count_nonzero(equal))
+
+
 def used_classes(packed: PackedLines) -> PackedLines:
     """The same lines with the classes that none of them uses dropped."""
     used = np.zeros(len(packed.classes), dtype=bool)

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from opacity.errors import InputError, LineListError, problem
 from opacity.grids import FloatArray
+from opacity.line_list.catalogue import catalogue_lines
 from opacity.line_list.duplicates import refuse_repeated_files
 from opacity.line_list.hapi_table import hapi_parser
 from opacity.line_list.hitran import hitran_parser
@@ -35,8 +36,9 @@ def read_lines(
 ) -> LineList:
     """Read line lists into one `LineList` sorted by wavenumber.
 
-    `format` is "hitran" (160-character records, .gz and .bz2 too) or "hapi" (.data with its .header); if it is
-    None the file's ending decides.  `range` (cm-1) keeps the lines inside it, ends included.  `bad_records`
+    `format` is "hitran" (160-character records, .gz and .bz2 too), "hapi" (.data with its .header) or "catalogue"
+    (JPL/CDMS .cat); if it is None the file's ending decides.
+    `range` (cm-1) keeps the lines inside it, ends included.  `bad_records`
     is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).  `options` are
     what a recipe says of the list: its molecule, and the one isotopologue to take from it.
 
@@ -59,7 +61,7 @@ def read_lines(
         raise LineListError(
             problem(paths[0], "lines of several molecules", expected="one molecule", found=", ".join(formulas))
         )
-    if base.isotopologue is not None and len(lines):
+    if base.isotopologue is not None and len(lines) and not _is_catalogue(paths[0], format):
         lines = only(lines, base.isotopologue)
     if range is not None:
         lower, upper = range
@@ -93,11 +95,27 @@ def only(lines: LineList, name: str) -> LineList:
 
 def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: bool) -> LineList:
     """The lines of one file.  Raises LineListError for a record that can't be right, or a file that holds none."""
+    if _is_catalogue(path, format):
+        if options.formula is None or options.isotopologue is None:
+            raise InputError(
+                problem("options", "a catalogue does not name its molecule", expected="formula and isotopologue")
+            )
+        return catalogue_lines(
+            path,
+            formula=options.formula,
+            isotopologue=options.isotopologue,
+            mass=options.mass,
+            bad_records="leave-out" if leave_out else "stop",
+        )
     parse = parser_of(path, format)
     batches = [judge(parse(chunk), options, leave_out) for chunk in read_chunks(path) if len(chunk)]
     if not batches:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
     return merge(batches)
+
+
+def _is_catalogue(path: Path, format: str | None) -> bool:
+    return format == "catalogue" or (format is None and path.suffix.lower() == ".cat")
 
 
 def parser_of(path: Path, format: str | None) -> Parser:

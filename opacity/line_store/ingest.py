@@ -16,7 +16,7 @@ from opacity.errors import LineListError, ResourceError, problem
 from opacity.line_list.batches import Batch, renumbered
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
-from opacity.line_list.packed import PackedLines, join
+from opacity.line_list.packed import PackedLines, count_identical, join
 from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, PARTS, SEGMENT_LINES, Segment
 from opacity.line_store.merge import merged
 from opacity.line_store.segment import write_segment
@@ -185,10 +185,12 @@ def _finish(folder: Path, manifests: list[dict[str, Any]], key: str, lines_at_on
                 pairs.append((iso, of))
             numbers[number].append(pairs.index((iso, of)))
     parts = [Segment.from_dict(one) for manifest in manifests for one in manifest["segments"]]
-    segments = _merge(folder, parts, numbers, min(lines_at_once // 2, SEGMENT_LINES))
     ledger = Ledger()
     for manifest in manifests:
         ledger.add(Ledger.from_dict(manifest["ledger"]))
+    segments, repeated = _merge(folder, parts, numbers, min(lines_at_once // 2, SEGMENT_LINES))
+    if repeated:
+        ledger.notes["identical to another record: both count"] += repeated
     if sum(segment.lines for segment in segments) != ledger.kept:
         raise LineListError(
             problem(folder, "lines were lost on the way to the store", expected=ledger.kept,
@@ -209,13 +211,17 @@ def _finish(folder: Path, manifests: list[dict[str, Any]], key: str, lines_at_on
     write_atomically(folder / INDEX, json.dumps(index).encode("utf-8"))
 
 
-def _merge(folder: Path, parts: list[Segment], numbers: dict[int, list[int]], lines_at_once: int) -> list[Segment]:
-    if not parts:
-        return []
-    return [
-        write_segment(folder, f"{k:06d}.lines.h5", _number_isotopologues(stretch, numbers))
-        for k, stretch in enumerate(merged(folder / PARTS, parts, lines_at_once))
-    ]
+def _merge(
+    folder: Path, parts: list[Segment], numbers: dict[int, list[int]], lines_at_once: int
+) -> tuple[list[Segment], int]:
+    """The store's segments, and how many lines are identical to another."""
+    segments: list[Segment] = []
+    repeated = 0
+    for k, stretch in enumerate(merged(folder / PARTS, parts, lines_at_once) if parts else ()):
+        numbered = _number_isotopologues(stretch, numbers)
+        repeated += count_identical(numbered)
+        segments.append(write_segment(folder, f"{k:06d}.lines.h5", numbered))
+    return segments, repeated
 
 
 def _number_isotopologues(packed: PackedLines, numbers: dict[int, list[int]]) -> PackedLines:

@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 
 from opacity.errors import LineListError, problem
+from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.packed import join, unpack
@@ -48,6 +49,8 @@ class StoreIndex:
 def read_index(folder: Path) -> StoreIndex | None:
     """The index of a store, None where there is none.  Raises LineListError for one that this version can't read."""
     path = folder / INDEX
+    if "\0" in str(folder):  # no file system has such a name
+        return None
     try:
         text = path.read_text(encoding="utf-8")
     except OSError:
@@ -131,6 +134,10 @@ class LineStore:
     def edges(self) -> list[float]:
         """First wavenumbers of the segments."""
         return [segment.first for segment in self.index.segments]
+
+    def sample(self) -> FloatArray:
+        """Every 4096th wavenumber, and the last of each segment."""
+        return np.concatenate([np.empty(0), *(np.asarray(segment.sample) for segment in self.index.segments)])
 
     def stretches(self, lower: float, upper: float) -> Iterator[LineList]:
         """The same lines, segment by segment in order of wavenumber, so that few are held at a time."""

@@ -55,6 +55,17 @@ def isotopologue(molecule: int, local: int) -> Isotopologue:
     return Isotopologue(molecule, local, str(formula), str(molecule_formula), float(mass), float(abundance))
 
 
+def named_isotopologue(molecule_formula: str, name: str, mass: float | None) -> Isotopologue | None:
+    """The isotopologue of this name: by hapi's formula or local number, or one that hapi does not know, of this mass.
+
+    None where hapi does not know it and no mass (g/mol) is given.
+    """
+    for one in isotopologues_of(molecule_formula):
+        if name in (one.formula, str(one.local)):
+            return one
+    return None if mass is None else Isotopologue(0, 1, name, molecule_formula, mass, 1.0, known=False)
+
+
 def isotopologues_of(molecule_formula: str) -> list[Isotopologue]:
     """All isotopologues that hapi's tables hold of a molecule, by local number; empty if it is unknown."""
     found = [isotopologue(*key) for key, row in hapi().ISO.items() if row[4] == molecule_formula]

@@ -9,6 +9,8 @@ find, but a comparison of the two editions or with levels does, are listed in `_
 
 from __future__ import annotations
 
+import bz2
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import lru_cache
 from pathlib import Path
@@ -16,7 +18,7 @@ from pathlib import Path
 import numpy as np
 from scipy.interpolate import CubicSpline
 
-from opacity.constants import REFERENCE_TEMPERATURE
+from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION
 from opacity.errors import MoleculeError, problem
 from opacity.grids import FloatArray
 from opacity.molecule.hapi_tables import hapi
@@ -85,6 +87,10 @@ class PartitionFunction:
     steps: tuple[float, ...] = ()
     _spline: CubicSpline | None = None
     _tips: tuple[int, int, int] | None = None
+
+    def holds(self, temperature: float) -> bool:
+        """Whether the temperature (K) lies in the valid range."""
+        return self.lowest <= temperature <= self.highest
 
     def __call__(self, temperature: float) -> float:
         """Q at a temperature (K).  Raises MoleculeError outside the valid range."""
@@ -185,14 +191,15 @@ def editions_differ(isotopologue: Isotopologue, temperature: float) -> float:
 
 
 def from_file(path: Path) -> PartitionFunction:
-    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout).
+    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout), plain or .bz2.
 
     Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.  Raises MoleculeError naming the line that
     can't be right, or the file where it does not hold 296 K, to which the strengths of lists refer.
     """
     try:
-        lines = path.read_text(encoding="ascii").splitlines()
-    except (OSError, UnicodeDecodeError) as error:
+        data = path.read_bytes()
+        lines = (bz2.decompress(data) if path.suffix.lower() == ".bz2" else data).decode("ascii").splitlines()
+    except (OSError, ValueError) as error:
         raise MoleculeError(problem(path, f"partition function cannot be read ({error})")) from error
     rows: list[tuple[float, float]] = []
     for number, line in enumerate(lines, start=1):
@@ -224,6 +231,16 @@ def from_file(path: Path) -> PartitionFunction:
     steps = tuple(rough[rough > ROUGH_BELOW].tolist())
     spline = CubicSpline(np.log(temperature), np.log(value))
     return PartitionFunction(f"file {path.name}", lowest, highest, steps, _spline=spline)
+
+
+def from_states(temperature: Sequence[float], value: Sequence[float], highest_energy: float) -> PartitionFunction:
+    """A partition function summed over the states of a list, at some temperatures (K), as a spline of ln Q in ln T.
+
+    It is trusted up to where the Boltzmann factor of the highest state (cm-1) is e^-10: what lies above is not there.
+    """
+    t, q = np.asarray(temperature, dtype=np.float64), np.asarray(value, dtype=np.float64)
+    highest = min(float(t[-1]), SECOND_RADIATION * highest_energy / 10.0)
+    return PartitionFunction("sum over states", float(t[0]), highest, _spline=CubicSpline(np.log(t), np.log(q)))
 
 
 def _row(path: Path, number: int, line: str, previous: float) -> tuple[float, float]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import os
 import platform
 import time
@@ -17,6 +18,7 @@ import numpy as np
 from opacity.check.run import run_checks
 from opacity.cross_sections.compute import spectrum
 from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.source import LINES_AT_ONCE, LineSource, as_source
 from opacity.cross_sections.tolerance import Regions, regions
 from opacity.errors import ResourceError, TableError, problem
 from opacity.grids import FloatArray
@@ -25,8 +27,10 @@ from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit, table_name
 from opacity.pipeline.progress import Progress
 from opacity.pipeline.resources import allowed_cpus
+from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.recipe.model import Recipe
 from opacity.tables.atomic import remove_leftovers, write_atomically
+from opacity.tables.layout import BLOCK
 from opacity.tables.model import CrossSectionTable
 from opacity.tables.read import open_table
 from opacity.tables.write import check_table, write_cross_section_table
@@ -53,6 +57,7 @@ def build_table(
     folder: Path,
     *,
     workers: int | None = None,
+    memory: int = DEFAULT_MEMORY,
     quiet: bool = False,
     announce: Callable[[Plan], None] = lambda plan: None,
 ) -> BuildResult:
@@ -69,7 +74,7 @@ def build_table(
     kept = _still_good(path, origin)
     if kept is not None:
         return BuildResult(path, log, None, kept, time.monotonic() - started)
-    inputs = load_inputs(recipe, origin)
+    inputs = load_inputs(recipe, folder, origin, memory, quiet)
     plan = make_plan(recipe, inputs, folder)
     announce(plan)
     refuse_what_cannot_fit(plan)
@@ -118,9 +123,9 @@ def _refuse_folders(*paths: Path) -> None:
             raise ResourceError(problem(path, "is a folder", expected="a file or nothing", remedy="move it away"))
 
 
-def compute_spectra(recipe: Recipe, lines: PreparedLines, workers: int, quiet: bool) -> FloatArray:
+def compute_spectra(recipe: Recipe, lines: LineSource | PreparedLines, workers: int, quiet: bool) -> FloatArray:
     """All spectra of a recipe, (n_T, n_P, n_nu) or (n_node, n_nu)."""
-    grid, profile = recipe.grid, recipe.profile
+    grid, profile, source = recipe.grid, recipe.profile, as_source(lines)
     nodes = grid.node_list()
     limits = regions(profile.tolerance, profile.plinth)
     try:
@@ -131,8 +136,10 @@ def compute_spectra(recipe: Recipe, lines: PreparedLines, workers: int, quiet: b
         ) from error
     executor = ThreadPoolExecutor(workers) if workers > 1 else None
     try:
-        with Progress("spectra", len(nodes), "nodes", quiet) as progress:
-            _fill(sigma, recipe, lines, limits, executor, progress)
+        parts = windows(grid.wavenumber.size, source)
+        with Progress("spectra", len(nodes) * len(parts), "spectra of windows", quiet) as progress:
+            for part in parts:
+                _fill(sigma, part, recipe, source, limits, executor, progress)
     finally:
         if executor is not None:
             executor.shutdown(wait=True, cancel_futures=True)
@@ -141,21 +148,32 @@ def compute_spectra(recipe: Recipe, lines: PreparedLines, workers: int, quiet: b
     return sigma.reshape(len(grid.temperature), len(grid.pressure), -1)
 
 
+def windows(points: int, lines: LineSource) -> list[slice]:
+    """Stretches of the grid, multiples of 16384 points, so many that the lines of each can be held at once."""
+    count = 1 if len(lines) <= LINES_AT_ONCE else math.ceil(2.0 * len(lines) / LINES_AT_ONCE)
+    size = BLOCK * math.ceil(points / count / BLOCK)
+    return [slice(start, min(start + size, points)) for start in range(0, points, size)]
+
+
 def _fill(
     sigma: FloatArray,
+    part: slice,
     recipe: Recipe,
-    lines: PreparedLines,
+    source: LineSource,
     limits: Regions,
     executor: Executor | None,
     progress: Progress,
 ) -> None:
+    nu = np.ascontiguousarray(recipe.grid.wavenumber[part])
+    margin = max(step.cutoff for step in recipe.profile.cutoff.steps) + 1e-6
+    lines = source.window(float(nu[0]) - margin, float(nu[-1]) + margin)
     strengths: dict[float, FloatArray] = {}
     for row, (temperature, pressure) in enumerate(recipe.grid.node_list()):
         if temperature not in strengths:
             strengths = {temperature: lines.strengths(temperature)}
         node = lines.at(temperature, pressure, strengths[temperature])
         cutoff = recipe.profile.cutoff.at(pressure)
-        sigma[row] = spectrum(node, recipe.grid.wavenumber, cutoff, limits, recipe.profile.plinth, executor)
+        sigma[row, part] = spectrum(node, nu, cutoff, limits, recipe.profile.plinth, executor)
         progress.step()
 
 

@@ -3,19 +3,34 @@
 from __future__ import annotations
 
 import contextlib
+from collections import Counter
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from pathlib import Path
 from typing import Any
 
 import numpy as np
 
+from opacity.arguments import DefaultWidth
 from opacity.cross_sections.prepare import PreparedLines, fraction_of, prepare
+from opacity.cross_sections.source import (
+    LINES_AT_ONCE,
+    HeldLines,
+    LineSource,
+    ListInMemory,
+    StoredLines,
+    Windows,
+)
 from opacity.errors import LineListError, OpacityError, RecipeError, problem
+from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
 from opacity.line_list.read import check_account, merge, read_lines
 from opacity.line_list.records import ReadOptions
-from opacity.molecule.isotopologue import isotopologues_of
+from opacity.molecule.broadening import Assumption
+from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
+from opacity.molecule.partition_function import PartitionFunction, from_file, from_states
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
+from opacity.pipeline.sources import DEFAULT_MEMORY, ensure_store, find_store, is_small
 from opacity.recipe.faults import faults_of, shown
 from opacity.recipe.model import LineListSource, Recipe
 from opacity.recipe.positions import KeyPath
@@ -33,15 +48,20 @@ _KEYS: dict[str, KeyPath] = {
 }
 """The recipe's key that makes the choice of an argument."""
 _MOST_SHOWN = 6
+STATES_AGREE = 0.1
+"""Per cent by which a partition-function file may differ from the sum over the states without a word."""
 
 
 @dataclass(frozen=True)
 class Inputs:
     """Lines prepared for a recipe, and what they came from as plain values for JSON."""
 
-    lines: PreparedLines
+    lines: LineSource
+    isotopologues: tuple[Isotopologue, ...]
+    partition: tuple[PartitionFunction, ...]
     provenance: dict[str, Any]
     fingerprint: Fingerprint
+    warnings: tuple[str, ...] = ()
 
     @property
     def sha256(self) -> str:
@@ -54,31 +74,88 @@ class Inputs:
         return self.fingerprint.seed
 
 
-def load_inputs(recipe: Recipe, known: Fingerprint | None = None) -> Inputs:
-    """Read and prepare all lines of a recipe that can reach its grid; `known` spares hashing the files again.
+def load_inputs(
+    recipe: Recipe,
+    tables: Path = Path("tables"),
+    known: Fingerprint | None = None,
+    memory: int = DEFAULT_MEMORY,
+    quiet: bool = False,
+) -> Inputs:
+    """All lines of a recipe that can reach its grid, prepared now or when they are needed.
 
+    Small lists are read into memory; line stores of the others lie beside the tables and are made if they are missing.
+    `known` spares hashing the files again; `memory` bounds an ingest (bytes).
     Raises RecipeError for a choice of the recipe that does not fit the lines, LineListError or MoleculeError for a
     file that cannot be used.
     """
     origin = known or fingerprint(recipe)
     _check_molecule(recipe)
-    lists = [_read(recipe, number, source) for number, source in enumerate(recipe.line_lists)]
-    _refuse_overlap(recipe.line_lists, lists)
-    lines = merge(lists)
+    lists = [_open(recipe, number, tables, memory, quiet) for number in range(len(recipe.line_lists))]
+    _refuse_overlap(recipe.line_lists, [one.spans for one in lists])
     nu = recipe.grid.wavenumber
     margin = max(step.cutoff for step in recipe.profile.cutoff.steps)
-    within = (lines.wavenumber >= nu[0] - margin) & (lines.wavenumber <= nu[-1] + margin)
-    lines = check_account(lines.select(within, "beyond the reach of the grid"))
-    choice = recipe.partition_function
-    with _located(recipe, _KEYS):
-        prepared = prepare(
-            lines,
-            partition_function=choice.path if choice.path is not None else choice.source,
-            abundance=recipe.abundance,
-            broadeners=recipe.broadening.mixture,
-            defaults=recipe.broadening.default,
-        )
-    return Inputs(prepared, _provenance(recipe, lists, prepared, origin), origin)
+    lower, upper = max(float(nu[0]) - margin, 0.0), float(nu[-1]) + margin
+    choices = _choices(recipe, lists)
+    stores = [one.windows for one in lists]
+    ledger = Ledger()
+    for one in lists:
+        ledger.add(one.ledger)
+    in_reach = sum(store.count(lower, upper) for store in stores)
+    ledger.leave_out("beyond the reach of the grid", ledger.kept - in_reach)
+    if in_reach <= LINES_AT_ONCE:
+        lines = replace(merge([store.window(lower, upper) for store in stores]), ledger=ledger)
+        with _located(recipe, _KEYS):
+            prepared = prepare(check_account(lines), **choices)
+        source: LineSource = HeldLines(prepared)
+        used = prepared
+    else:
+        source, used = _stored(recipe, stores, lower, upper, choices, ledger)
+    provenance = _provenance(recipe, used.isotopologues, used.partition, ledger.read, lists, origin)
+    warnings = _states_against_file(recipe, lists)
+    return Inputs(source, used.isotopologues, used.partition, provenance, origin, warnings)
+
+
+def _states_against_file(recipe: Recipe, lists: Sequence[_OpenList]) -> tuple[str, ...]:
+    """What a partition-function file differs from the sum over the list's own states, at the grid's temperatures."""
+    path = recipe.partition_function.path
+    summed = [one.facts["states"] for one in lists if "states" in one.facts]
+    if path is None or not summed:
+        return ()
+    states = from_states(summed[0]["temperature"], summed[0]["partition"], summed[0]["highest_energy"])
+    file = from_file(path)
+    both = [t for t in {t for t, _ in recipe.grid.node_list()} if states.holds(t) and file.holds(t)]
+    if not both:
+        return ()
+    worst = max(both, key=lambda t: abs(file(t) / states(t) - 1.0))
+    difference = 100.0 * (file(worst) / states(worst) - 1.0)
+    if abs(difference) < STATES_AGREE:
+        return ()
+    return (f"{path.name} differs by {difference:+.2g} % from the sum over the list's states at {worst:g} K",)
+
+
+def _stored(
+    recipe: Recipe, stores: list[Windows], lower: float, upper: float, choices: dict[str, Any], ledger: Ledger
+) -> tuple[LineSource, PreparedLines]:
+    """Lines too many to hold: gone through once, to find what has to be assumed and what does not fit."""
+
+    def prepared(lines: LineList) -> PreparedLines:
+        with _located(recipe, _KEYS):
+            return prepare(lines, **choices)
+
+    counts: Counter[str] = Counter()
+    source = StoredLines(stores, lower, upper, prepared, ledger, ())
+    used: dict[str, tuple[Isotopologue, PartitionFunction]] = {}
+    last: PreparedLines | None = None
+    for last in source.stretches():
+        for one in last.assumptions:
+            counts[one.what] += one.lines
+        used |= {iso.formula: (iso, q) for iso, q in zip(last.isotopologues, last.partition, strict=True)}
+    assert last is not None
+    source = replace(source, assumptions=tuple(Assumption(what, lines) for what, lines in sorted(counts.items())))
+    found = replace(
+        last, isotopologues=tuple(iso for iso, _ in used.values()), partition=tuple(q for _, q in used.values())
+    )
+    return source, found
 
 
 @contextlib.contextmanager
@@ -113,6 +190,59 @@ def _check_molecule(recipe: Recipe) -> None:
         raise RecipeError(faults.problems())
 
 
+@dataclass(frozen=True)
+class _OpenList:
+    """One list: its lines by window, its account, the wavenumbers between which each isotopologue has lines, facts."""
+
+    windows: Windows
+    ledger: Ledger
+    spans: dict[str, tuple[float, float]]
+    facts: dict[str, Any]
+
+
+def _open(recipe: Recipe, number: int, tables: Path, memory: int, quiet: bool) -> _OpenList:
+    source = recipe.line_lists[number]
+    store = (
+        find_store(recipe, source, tables)
+        if is_small(source)
+        else ensure_store(recipe, source, tables, memory, quiet)[0]
+    )
+    if store is not None:
+        index = store.index
+        ends = (index.segments[0].first, index.segments[-1].last) if index.segments else (0.0, 0.0)
+        return _OpenList(store, index.ledger, {one.formula: ends for one in index.isotopologues}, index.facts)
+    lines = _read(recipe, number, source)
+    spans = {}
+    for place, one in enumerate(lines.isotopologues):
+        nu = lines.wavenumber[lines.isotopologue == place]
+        spans[one.formula] = (float(nu.min()), float(nu.max()))
+    ledger = Ledger()
+    ledger.add(lines.ledger)
+    return _OpenList(ListInMemory(lines), ledger, spans, {})
+
+
+def _choices(recipe: Recipe, lists: Sequence[_OpenList]) -> dict[str, Any]:
+    """The recipe's choices as arguments of `prepare`; a definition's default widths serve where nothing else does."""
+    choice = recipe.partition_function
+    partition: Any = choice.path if choice.path is not None else choice.source
+    if choice.source == "states":
+        states = next(one.facts["states"] for one in lists if "states" in one.facts)
+        partition = from_states(states["temperature"], states["partition"], states["highest_energy"])
+    defaults = dict(recipe.broadening.default)
+    for one in lists:
+        definition = one.facts.get("definition")
+        if definition and definition["gamma"] is not None and definition["exponent"] is not None:
+            for name in recipe.broadening.mixture:
+                words = f"default of the definition of {definition['dataset']}"
+                defaults.setdefault(name, DefaultWidth(definition["gamma"], definition["exponent"], words))
+    return {
+        "partition_function": partition,
+        "abundance": recipe.abundance,
+        "broadeners": recipe.broadening.mixture,
+        "defaults": defaults,
+    }
+
+
 def _read(recipe: Recipe, number: int, source: LineListSource) -> LineList:
     molecule = recipe.molecule
     options = ReadOptions(molecule.formula, molecule.mass, source.isotopologue)
@@ -122,38 +252,44 @@ def _read(recipe: Recipe, number: int, source: LineListSource) -> LineList:
         )
 
 
-def _refuse_overlap(sources: Sequence[LineListSource], lists: Sequence[LineList]) -> None:
+def _refuse_overlap(sources: Sequence[LineListSource], spans: Sequence[dict[str, tuple[float, float]]]) -> None:
     """The same isotopologue in overlapping ranges of two lists would count its lines twice."""
     seen: dict[str, list[tuple[float, float, str]]] = {}
-    for source, lines in zip(sources, lists, strict=True):
-        for number, one in enumerate(lines.isotopologues):
-            nu = lines.wavenumber[lines.isotopologue == number]
-            low, high = float(nu.min()), float(nu.max())
-            for other_low, other_high, other in seen.get(one.formula, []):
+    for source, span in zip(sources, spans, strict=True):
+        for formula, (low, high) in span.items():
+            for other_low, other_high, other in seen.get(formula, []):
                 if low <= other_high and other_low <= high:
                     raise LineListError(
                         problem(
                             ", ".join(source.files),
-                            f"holds lines of {one.formula} between {max(low, other_low):g} and"
+                            f"holds lines of {formula} between {max(low, other_low):g} and"
                             f" {min(high, other_high):g} cm-1, and so does {other}",
                             remedy="give each list a range of its own",
                         )
                     )
-            seen.setdefault(one.formula, []).append((low, high, ", ".join(source.files)))
+            seen.setdefault(formula, []).append((low, high, ", ".join(source.files)))
 
 
-def _provenance(recipe: Recipe, lists: Sequence[LineList], lines: PreparedLines, origin: Fingerprint) -> dict[str, Any]:
+def _provenance(
+    recipe: Recipe,
+    isotopologues: Sequence[Isotopologue],
+    partition_functions: Sequence[PartitionFunction],
+    records_read: int,
+    lists: Sequence[_OpenList],
+    origin: Fingerprint,
+) -> dict[str, Any]:
     choice, profile, made_from = recipe.partition_function, recipe.profile, dict(origin.content)
     partition: dict[str, Any] = {
         "source": choice.source,
-        "valid": {one.source: [one.lowest, one.highest] for one in lines.partition},
+        "valid": {one.source: [one.lowest, one.highest] for one in partition_functions},
         **(made_from.pop("partition_file") or {}),
     }
     references = [source.reference for source in recipe.line_lists]
     references += [_REFERENCES[choice.source]] if choice.source in _REFERENCES else []
     return {
         **made_from,
-        "records_read": sum(one.ledger.read for one in lists),
+        "records_read": records_read,
+        "data_sets": [one.facts["definition"] for one in lists if one.facts.get("definition")],
         "partition_function": partition,
         "isotopologues": [
             {
@@ -162,7 +298,7 @@ def _provenance(recipe: Recipe, lists: Sequence[LineList], lines: PreparedLines,
                 "terrestrial_abundance": one.abundance if one.known else None,
                 "abundance": fraction_of(one, recipe.abundance),
             }
-            for one in lines.isotopologues
+            for one in isotopologues
         ],
         "abundance": recipe.abundance,
         "broadening": {
@@ -182,11 +318,11 @@ def _provenance(recipe: Recipe, lists: Sequence[LineList], lines: PreparedLines,
     }
 
 
-def refuse_invalid_temperatures(recipe: Recipe, lines: PreparedLines) -> None:
+def refuse_invalid_temperatures(recipe: Recipe, partition: Sequence[PartitionFunction]) -> None:
     """Raise RecipeError, with a line for each partition function that is not valid at all temperatures of the grid."""
     faults = faults_of(recipe)
     temperatures = [t for t, _ in recipe.grid.node_list()]
-    for q in lines.partition:
+    for q in partition:
         outside = np.unique([t for t in temperatures if not q.lowest <= t <= q.highest])
         if outside.size:
             more = f" and {outside.size - _MOST_SHOWN} more" if outside.size > _MOST_SHOWN else ""

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Any
@@ -10,6 +11,7 @@ import numpy as np
 
 from opacity.check.profile_share import sampling_risk
 from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.source import LINES_AT_ONCE, LineSource
 from opacity.errors import ResourceError, problem
 from opacity.molecule.partition_function import STEP, PartitionFunction, editions_differ
 from opacity.pipeline.inputs import Inputs, refuse_invalid_temperatures
@@ -35,6 +37,7 @@ IMAGE_COPIES = 2
 PROGRAM_BYTES = 400_000_000
 
 AT_RISK = 0.01
+LOOKED_AT = 20
 HOT_FOR_296K_LIST = 700.0
 EDITIONS_AGREE = 0.01
 
@@ -84,14 +87,14 @@ def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
     Raises RecipeError where a partition function is not valid at the grid's temperatures.
     """
     lines, grid = inputs.lines, recipe.grid
-    refuse_invalid_temperatures(recipe, lines)
+    refuse_invalid_temperatures(recipe, inputs.partition)
     node_list = grid.node_list()
     temperatures = sorted({t for t, _ in node_list})
     points, nodes = grid.wavenumber.size, len(node_list)
     coarse = _coarse_nodes(recipe, lines)
     values = _profile_values(recipe, lines)
     table_bytes = nodes * points * BYTES_A_VALUE
-    memory = table_bytes * (1 + IMAGE_COPIES) + lines.ledger.read * BYTES_A_RECORD + PROGRAM_BYTES
+    memory = table_bytes * (1 + IMAGE_COPIES) + min(lines.ledger.read, LINES_AT_ONCE) * BYTES_A_RECORD + PROGRAM_BYTES
     disk = table_bytes + 1_000_000
     memory_available, disk_free = available_memory(), free_disk(folder)
     needs = (("memory", memory, memory_available), ("disk", disk, disk_free))
@@ -109,7 +112,7 @@ def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
         disk_free=disk_free,
         obstacles=tuple(_obstacle(recipe, *need) for need in needs if need[2] is not None and need[1] > need[2]),
         coarse_nodes=tuple(coarse),
-        warnings=tuple(_warnings(recipe, lines, coarse, temperatures)),
+        warnings=(*inputs.warnings, *_warnings(recipe, inputs, coarse, temperatures)),
         assumptions=tuple((one.what, one.lines) for one in lines.assumptions),
         ledger=lines.ledger.as_dict(),
     )
@@ -143,45 +146,66 @@ def refuse_what_cannot_fit(plan: Plan) -> None:
         raise ResourceError("\n".join(plan.obstacles))
 
 
-def _profile_values(recipe: Recipe, lines: PreparedLines) -> float:
+def _profile_values(recipe: Recipe, source: LineSource) -> float:
     nu = recipe.grid.wavenumber
+    places = source.sample()
+    share = len(source) / max(places.size, 1)
     total = 0.0
     counts: dict[float, float] = {}
     for _, pressure in recipe.grid.node_list():
         cutoff = recipe.profile.cutoff.at(pressure)
         if cutoff not in counts:
-            low = np.searchsorted(nu, lines.wavenumber - cutoff)
-            high = np.searchsorted(nu, lines.wavenumber + cutoff)
-            counts[cutoff] = float(np.sum(high - low))
+            low, high = np.searchsorted(nu, places - cutoff), np.searchsorted(nu, places + cutoff)
+            counts[cutoff] = float(np.sum(high - low)) * share
         total += counts[cutoff]
     return total
 
 
-def _coarse_nodes(recipe: Recipe, lines: PreparedLines) -> list[NodeResolution]:
-    """Nodes at which more than 1 % of the strength is in lines that the step does not resolve, worst first."""
-    coarse = []
-    nu = recipe.grid.wavenumber
-    strengths: dict[float, Any] = {}
-    for temperature, pressure in recipe.grid.node_list():
-        if temperature not in strengths:
-            strengths[temperature] = lines.strengths(temperature)
-        node = lines.at(temperature, pressure, strengths[temperature])
-        inside = (node.centre >= nu[0]) & (node.centre <= nu[-1])
-        total = float(np.sum(node.strength[inside]))
-        if total <= 0.0:
-            continue
-        at_risk = float(np.sum((node.strength * sampling_risk(node, nu))[inside])) / total
-        if at_risk > AT_RISK:
+def _coarse_nodes(recipe: Recipe, source: LineSource) -> list[NodeResolution]:
+    """Nodes at which more than 1 % of the strength is in lines that the step does not resolve, worst first.
+
+    Of a list too long to be held, a few stretches spread over the grid stand for all.
+    """
+    nu, nodes = recipe.grid.wavenumber, recipe.grid.node_list()
+    sums = np.zeros((len(nodes), 2))
+    narrowest = np.full(len(nodes), np.inf)
+    for lines in _some_stretches(source, float(nu[0]), float(nu[-1])):
+        strengths: dict[float, Any] = {}
+        for row, (temperature, pressure) in enumerate(nodes):
+            if temperature not in strengths:
+                strengths = {temperature: lines.strengths(temperature)}
+            node = lines.at(temperature, pressure, strengths[temperature])
+            inside = (node.centre >= nu[0]) & (node.centre <= nu[-1])
+            if not inside.any():
+                continue
             width = 0.5346 * node.lorentz + np.sqrt(0.2166 * node.lorentz**2 + node.doppler**2)
-            coarse.append(NodeResolution(temperature, pressure, at_risk, float(width[inside].min())))
+            narrowest[row] = min(narrowest[row], float(width[inside].min()))
+            risk = sampling_risk(node, nu)[inside]
+            sums[row] += np.sum(node.strength[inside]), np.sum(node.strength[inside] * risk)
+    shares = sums[:, 1] / np.maximum(sums[:, 0], 1e-300)
+    coarse = [
+        NodeResolution(*node, float(share), float(width))
+        for node, share, width in zip(nodes, shares, narrowest, strict=True)
+        if share > AT_RISK
+    ]
     return sorted(coarse, key=lambda one: -one.at_risk)
 
 
-def _warnings(
-    recipe: Recipe, lines: PreparedLines, coarse: list[NodeResolution], temperatures: list[float]
-) -> list[str]:
+def _some_stretches(source: LineSource, first: float, last: float) -> Iterator[PreparedLines]:
+    if len(source) <= LINES_AT_ONCE:
+        yield from source.stretches()
+        return
+    # Windows that hold about a hundredth of what can be held at once.
+    width = (last - first) * 0.01 * LINES_AT_ONCE / len(source)
+    for centre in np.linspace(first, last, LOOKED_AT):
+        lines = source.window(float(centre) - width, float(centre) + width)
+        if len(lines):
+            yield lines
+
+
+def _warnings(recipe: Recipe, inputs: Inputs, coarse: list[NodeResolution], temperatures: list[float]) -> list[str]:
     warnings = []
-    if not len(lines):
+    if not len(inputs.lines):
         warnings.append("no line reaches the grid: every value will be 0")
     if coarse:
         worst = coarse[0]
@@ -191,14 +215,15 @@ def _warnings(
             f" {worst.temperature:g} K, {worst.pressure:.3g} bar {share} (narrowest half-width"
             f" {worst.narrowest_half_width:.2g} cm-1); each value is right at its point, sums over points are not"
         )
-    if temperatures and temperatures[-1] > HOT_FOR_296K_LIST:
+    made_for_296_k = any(one.format in ("hitran", "hapi") for one in recipe.line_lists)
+    if made_for_296_k and temperatures and temperatures[-1] > HOT_FOR_296K_LIST:
         warnings.append(
             f"a list made for 296 K lacks hot lines, and the grid goes to {temperatures[-1]:g} K:"
             " use a high-temperature list above about 700 K"
         )
-    warnings += [_rough(one) for one in lines.partition if one.steps]
-    for one in lines.isotopologues:
-        if recipe.partition_function.source == "file" or not one.known:
+    warnings += [_rough(one) for one in inputs.partition if one.steps]
+    for one in inputs.isotopologues:
+        if not recipe.partition_function.source.startswith("TIPS") or not one.known:
             continue
         worst_t = max(temperatures, key=lambda t, iso=one: abs(editions_differ(iso, t)))  # type: ignore[misc]
         difference = editions_differ(one, worst_t)

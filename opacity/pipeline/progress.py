@@ -48,3 +48,49 @@ class Progress:
         self._printed = now
         left = (now - self._started) / self.done * (self.total - self.done)
         print(f"{self.stage}: {self.done} of {self.total} {self.unit}, {left:.0f} s left", file=sys.stderr, flush=True)
+
+
+class RecordProgress:
+    """Counts records while files of known size are read; use it in a `with` statement.  Rate and time left by bytes."""
+
+    def __init__(self, stage: str, total_bytes: int, quiet: bool = False) -> None:
+        self.stage, self.total = stage, total_bytes
+        self.records = self.position = 0
+        self._started = self._printed = time.monotonic()
+        self._quiet = quiet
+        self._bar: Any = None
+        if not quiet and sys.stderr.isatty():
+            self._bar = tqdm(total=total_bytes, desc=stage, unit="B", unit_scale=True, leave=False, file=sys.stderr)
+
+    def __enter__(self) -> RecordProgress:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        if self._bar is not None:
+            self._bar.close()
+
+    def add(self, records: int, n_bytes: int) -> None:
+        """So many records more, and so many bytes of their file."""
+        self.records += records
+        self.position += n_bytes
+        if self._bar is not None:
+            self._bar.update(n_bytes)
+            self._bar.set_postfix_str(f"{self.records:.3g} records")
+        elif not self._quiet:
+            self._print_line()
+
+    def _print_line(self) -> None:
+        now = time.monotonic()
+        if now - self._printed < SECONDS_BETWEEN_LINES:
+            return
+        self._printed = now
+        took = now - self._started
+        left = took / max(self.position, 1) * max(self.total - self.position, 0)
+        rate = self.records / took / 1e6
+        print(
+            f"{self.stage}: {self.records} records, {rate:.2f} million a second, {left:.0f} s left",
+            file=sys.stderr,
+            flush=True,
+        )

@@ -69,7 +69,7 @@ def check_table_file(target: Target, seed: int | None = None, quiet: bool = Fals
         try:
             recipe = load_recipe(target.recipe)
             require_same_recipe(table, recipe)
-            inputs = load_inputs(recipe)
+            inputs = load_inputs(recipe, table.path.parent, quiet=quiet)
             require_same_inputs(table, recipe, inputs.provenance)
         except OpacityError as error:
             if target.asked_for:

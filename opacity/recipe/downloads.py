@@ -9,16 +9,19 @@ Keys of a `[[line_list]]`, all optional:
 
 from __future__ import annotations
 
+import fnmatch
 import re
-import tomllib
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 from urllib.parse import unquote, urlsplit
 
-from opacity.errors import RecipeError, problem
-from opacity.recipe.faults import Faults, nearest, printable, shown
-from opacity.recipe.positions import KeyPath, key_lines
+from opacity.errors import RecipeError
+from opacity.recipe.document import parse, read_text
+from opacity.recipe.faults import Faults, nearest, shown
+from opacity.recipe.formats import FORMATS
+from opacity.recipe.positions import KeyPath
 from opacity.recipe.table import Bounds, Table, checked_text
 
 DOWNLOAD_KEYS = ("urls", "sha256", "hitran")
@@ -76,7 +79,7 @@ def load_downloads(path: str | Path) -> tuple[ListDownloads, ...]:
     Raises RecipeError with one line for each fault, as `load_recipe` does.
     """
     path = Path(path)
-    document, lines = _read(path)
+    document, lines = parse(path, read_text(path))
     faults = Faults(str(path), lines)
     tables = document.get("line_list")
     if not isinstance(tables, list) or not all(isinstance(one, dict) for one in tables):
@@ -84,38 +87,26 @@ def load_downloads(path: str | Path) -> tuple[ListDownloads, ...]:
         tables = []
     made = []
     for index, values in enumerate(tables):
-        table = Table(faults, ("line_list", index), values, tuple(values))
+        table = Table(faults, ("line_list", index), values, _watched(values))
+        if "hitran" in table and "urls" not in table:
+            table.choice("format", FORMATS)
         made.append(ListDownloads(_files(table), path.parent, read_downloads(table, path.parent)))
-    _refuse_twice(faults, made)
+    refuse_twice(faults, [one.downloads for one in made])
     problems = faults.problems()
     if problems:
         raise RecipeError(problems)
     return tuple(made)
 
 
-def _read(path: Path) -> tuple[dict[str, Any], dict[KeyPath, int]]:
-    try:
-        text = path.read_bytes().decode("utf-8-sig").replace("\r\n", "\n")
-        return tomllib.loads(text), key_lines(text)
-    except FileNotFoundError as error:
-        remedy = "`opacity new FORMULA` writes a recipe to fill in"
-        raise RecipeError(
-            [problem(printable(str(path)), "no such file", expected="a recipe", remedy=remedy)]
-        ) from error
-    except OSError as error:
-        what = f"cannot be read ({error.strerror})"
-        raise RecipeError([problem(printable(str(path)), what, expected="a recipe")]) from error
-    except (ValueError, RecursionError) as error:
-        what = f"not valid TOML: {printable(str(error))}"
-        raise RecipeError([problem(printable(str(path)), what)]) from error
+def _watched(values: Mapping[str, Any]) -> tuple[str, ...]:
+    """The keys that pass here: any but slips of the pen for a key of a download."""
+    absent = [key for key in DOWNLOAD_KEYS if key not in values]
+    return (*(name for name in values if name in DOWNLOAD_KEYS or nearest(name, absent) is None), *absent)
 
 
 def read_downloads(table: Table, folder: Path) -> tuple[Download, ...]:
     """The downloads of one `[[line_list]]` table; what does not fit becomes a fault of the table's."""
-    for name in table.values:
-        meant = nearest(name, DOWNLOAD_KEYS) if name not in DOWNLOAD_KEYS else None
-        if meant is not None and meant not in table:
-            table.faults.add(table.path(name), "unknown key", remedy=f"did you mean {meant}?")
+    before = len(table.faults)
     hashes = _hashes(table)
     if "urls" in table and "hitran" in table:
         table.faults.add(table.path("hitran"), "a second origin of the same files", expected="either urls or hitran")
@@ -125,8 +116,21 @@ def read_downloads(table: Table, folder: Path) -> tuple[Download, ...]:
         downloads = _url_downloads(table, folder, hashes)
     elif "hitran" in table:
         downloads = _hitran_download(table, folder, hashes)
-    _refuse_idle_hashes(table, hashes, {download.path.name for download in downloads})
+    # A file that only a fault keeps from being downloaded is no second fault.
+    if len(table.faults) == before and not (table.misspelt("urls") or table.misspelt("hitran")):
+        _refuse_idle_hashes(table, hashes, {download.path.name for download in downloads})
     return downloads
+
+
+def means(folder: Path, name: str, download: Download) -> bool:
+    """Whether an entry of `files`, a name or a pattern looked for from `folder`, means a file that is downloaded."""
+    path = folder / name
+    if path.parent != download.path.parent:
+        return False
+    try:
+        return path.name == download.path.name or fnmatch.fnmatchcase(download.path.name, path.name)
+    except re.error:  # a pattern with a range that is none
+        return False
 
 
 def _files(table: Table) -> tuple[str, ...]:
@@ -235,7 +239,7 @@ def _hitran_download(table: Table, folder: Path, hashes: dict[str, str]) -> tupl
         return ()
     asked = Table(table.faults, table.path("hitran"), values, _HITRAN_KEYS)
     form = table.values.get("format")
-    if form not in ("hitran", "hapi"):
+    if form in FORMATS and form not in ("hitran", "hapi"):
         asked.faults.add(
             asked.key, "no origin for a list of this format", expected='format "hitran" or "hapi"', found=shown(form)
         )
@@ -254,7 +258,7 @@ def _single_file(table: Table, folder: Path, ending: str) -> Path | None:
     files = table.values.get("files")
     name = _first_file(table)
     wanted = f"one file name{f' that ends in {ending}' if ending else ''}, where the lines are saved"
-    if name is None or not isinstance(files, list):
+    if name is None or not name.strip() or not isinstance(files, list):
         return None
     compressed = name.endswith((".gz", ".bz2"))
     if len(files) != 1 or _PATTERN & set(name) or not name.endswith(ending) or compressed or name.endswith(BESIDE):
@@ -291,11 +295,11 @@ def _parameters(asked: Table, form: object) -> tuple[str, ...]:
     return tuple(dict.fromkeys(names))
 
 
-def _refuse_twice(faults: Faults, lists: list[ListDownloads]) -> None:
-    """Two origins of one file: the second would overwrite the first."""
+def refuse_twice(faults: Faults, lists: Sequence[Sequence[Download]]) -> None:
+    """Add a fault where two origins, of one line list or of several, bring one file: the second would overwrite it."""
     seen: set[Path] = set()
-    for index, one in enumerate(lists):
-        for download in one.downloads:
+    for index, downloads in enumerate(lists):
+        for download in downloads:
             real = Path(str(download.path.resolve()).casefold())
             if real in seen:
                 key: KeyPath = ("line_list", index, "urls" if isinstance(download, UrlDownload) else "hitran")

@@ -20,6 +20,9 @@ class Faults:
         self._lines = lines
         self._problems: list[tuple[int, str]] = []
 
+    def __len__(self) -> int:
+        return len(self._problems)
+
     def add(
         self,
         key: KeyPath,

@@ -5,22 +5,28 @@ from __future__ import annotations
 import glob
 import os
 import re
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
-from opacity.recipe.faults import Faults, nearest, printable, shown
+from opacity.recipe.downloads import BESIDE, DOWNLOAD_KEYS, Download, means, read_downloads, refuse_twice
+from opacity.recipe.faults import Faults, listed, nearest, printable, shown
+from opacity.recipe.formats import EXOMOL_ENDINGS, FORMATS, NAMELESS, exomol_kind
 from opacity.recipe.model import LineListSource
 from opacity.recipe.positions import KeyPath
 from opacity.recipe.table import Bounds, Table, checked_text
 
-FORMATS = ("hitran", "hapi")
-LATER_FORMATS = ("exomol",)
 BAD_RECORDS = ("stop", "leave-out")
-KEYS = ("format", "files", "range", "isotopologue", "reference", "bad_records")
+KEYS = ("format", "files", "range", "isotopologue", "reference", "bad_records", *DOWNLOAD_KEYS)
 
 WAVENUMBER = Bounds(0.0, 1e6, "cm-1")
 ISOTOPOLOGUE = re.compile(r"[A-Za-z0-9()+-]+")
+FETCH = "`opacity fetch RECIPE` brings {}"
+_MOST_NAMED = 3
 _FILES = 'a list of file names or patterns such as ["lines/*.par"]'
+
+Seen = dict[str, tuple[KeyPath, str]]
+"""By a file's real name without the ending of compression: where it was named, and its real name."""
 
 
 def read_line_lists(root: Table, folder: Path) -> tuple[LineListSource, ...]:
@@ -35,34 +41,62 @@ def read_line_lists(root: Table, folder: Path) -> tuple[LineListSource, ...]:
         remedy = "write [[line_list]]" if isinstance(values, dict) else None
         faults.add(key, "not an array of tables", expected=expected, found=shown(values), remedy=remedy)
         return ()
-    seen: dict[str, KeyPath] = {}
-    return tuple(_read_one(faults, (*key, i), value, folder, seen) for i, value in enumerate(values))
+    seen: Seen = {}
+    read = [_read_one(faults, (*key, i), value, folder, seen) for i, value in enumerate(values)]
+    refuse_twice(faults, [downloads for _, downloads in read])
+    return tuple(source for source, _ in read)
 
 
 def _read_one(
-    faults: Faults, key: KeyPath, values: dict[str, Any], folder: Path, seen: dict[str, KeyPath]
-) -> LineListSource:
+    faults: Faults, key: KeyPath, values: dict[str, Any], folder: Path, seen: Seen
+) -> tuple[LineListSource, tuple[Download, ...]]:
     table = Table(faults, key, values, KEYS)
-    form = table.choice("format", FORMATS, later=LATER_FORMATS)
-    files = _file_names(table)
-    paths: list[Path] = []
-    for index, name in files:
-        for path in _find(faults, table.path("files", index), folder, name):
-            if _is_new(faults, table.path("files", index), path, seen):
-                paths.append(path)
-                if form == "hapi":
-                    _check_hapi(faults, table.path("files", index), path)
-    return LineListSource(
+    form = table.choice("format", FORMATS)
+    entries = _file_names(table)
+    before = len(faults)
+    downloads = read_downloads(table, folder)
+    # With a fault in where the files come from, their lack would be the same fault again.
+    paths = _find_all(table, form, entries, folder, downloads, seen) if len(faults) == before else []
+    source = LineListSource(
         format=form,
-        files=tuple(name for _, name in files),
+        files=tuple(name for _, name in entries),
         paths=tuple(paths),
         range=table.interval("range", WAVENUMBER, required=False),
         isotopologue=table.text(
-            "isotopologue", "an isotopologue such as (12C)(16O)", pattern=ISOTOPOLOGUE, required=False
+            "isotopologue", "an isotopologue such as (12C)(16O)", pattern=ISOTOPOLOGUE, required=form in NAMELESS
         ),
         reference=table.required_text("reference", "the publication of the list"),
         bad_records=table.choice("bad_records", BAD_RECORDS, default="stop"),
     )
+    return source, downloads
+
+
+def _find_all(
+    table: Table,
+    form: str,
+    entries: Sequence[tuple[int, str]],
+    folder: Path,
+    downloads: Sequence[Download],
+    seen: Seen,
+) -> list[Path]:
+    """The files of a list, each once, and the faults of their names and of their lack."""
+    faults, before, paths, found = table.faults, len(table.faults), [], []
+    for index, name in entries:
+        key = table.path("files", index)
+        comes = any(means(folder, name, download) for download in downloads)
+        matches = _find(faults, key, folder, name, comes)
+        new = [path for path in matches if _is_new(faults, key, path, seen)]
+        if form == "hapi":
+            for path in new:
+                _check_hapi(faults, key, path)
+        elif form == "exomol":
+            _check_endings(faults, key, new)
+        found += [name] if matches else []
+        paths += new
+    _check_all_fetched(table, found, folder, downloads)
+    if form == "exomol" and entries and len(faults) == before:
+        _check_data_set(table, paths)
+    return paths
 
 
 def _file_names(table: Table) -> list[tuple[int, str]]:
@@ -81,21 +115,31 @@ def _file_names(table: Table) -> list[tuple[int, str]]:
     return [(index, name) for index, name in names if name]
 
 
-def _find(faults: Faults, key: KeyPath, folder: Path, pattern: str) -> list[Path]:
-    """The files that a name or pattern stands for, sorted."""
+def _find(faults: Faults, key: KeyPath, folder: Path, pattern: str, comes: bool) -> list[Path]:
+    """The files that a name or pattern stands for, sorted; `comes` says that a download brings such a file."""
     literal = folder / pattern
     try:
         if os.path.isfile(literal):
-            return [literal]
+            if not pattern.endswith(BESIDE):
+                return [literal]
+            what = "what a download leaves beside a file, not a line list"
+            faults.add(key, what, expected=f"no file that ends in {listed(BESIDE)}", found=shown(pattern))
+            return []
         matches = sorted(Path(match) for match in glob.glob(os.path.join(glob.escape(str(folder)), pattern)))
-        found = [path for path in matches if os.path.isfile(path)]
+        found = [path for path in matches if os.path.isfile(path) and not path.name.endswith(BESIDE)]
     except (OSError, ValueError, re.error) as error:
         faults.add(key, "cannot be looked for", found=shown(pattern), remedy=shown(str(error)))
         return []
     if not found:
-        what = "a folder, not a file" if matches else "no such file"
+        is_folder = any(os.path.isdir(path) for path in matches)
         remedy = None if any(character in pattern for character in "*?[") else _near(literal)
-        faults.add(key, what, expected=f"a file in {full_name(folder)}", found=shown(pattern), remedy=remedy)
+        faults.add(
+            key,
+            "a folder, not a file" if is_folder else "no such file",
+            expected=f"a file in {full_name(folder)}",
+            found=shown(pattern),
+            remedy=FETCH.format("it") if comes and not is_folder else remedy,
+        )
     return found
 
 
@@ -114,15 +158,18 @@ def full_name(path: Path) -> str:
     return printable(os.path.abspath(path))
 
 
-def _is_new(faults: Faults, key: KeyPath, path: Path, seen: dict[str, KeyPath]) -> bool:
-    """Whether a file is named for the first time: read twice, its lines would count twice."""
+def _is_new(faults: Faults, key: KeyPath, path: Path, seen: Seen) -> bool:
+    """Whether a file is named for the first time: read twice, also plain and compressed, its lines count twice."""
     real = os.path.realpath(path)
-    if real in seen:
-        first = f"line_list[{seen[real][1]}]"
-        faults.add(key, f"file already named in {first}", expected="each file once", found=printable(str(path)))
-        return False
-    seen[real] = key
-    return True
+    plain = real.removesuffix(".bz2").removesuffix(".gz")
+    if plain not in seen:
+        seen[plain] = (key, real)
+        return True
+    first, other = seen[plain]
+    beside = "" if other == real else f" as {printable(os.path.basename(other))}"
+    what = f"file already named in line_list[{first[1]}]{beside}"
+    faults.add(key, what, expected="each file once", found=printable(str(path)))
+    return False
 
 
 def _check_hapi(faults: Faults, key: KeyPath, path: Path) -> None:
@@ -133,3 +180,41 @@ def _check_hapi(faults: Faults, key: KeyPath, path: Path) -> None:
     header = path.with_suffix(".header")
     if not os.path.isfile(header):
         faults.add(key, "no header beside the data file", expected=full_name(header))
+
+
+def _check_endings(faults: Faults, key: KeyPath, paths: Sequence[Path]) -> None:
+    """The files of a list in ExoMol format are told apart by their endings."""
+    other = [path.name for path in paths if exomol_kind(path.name) is None]
+    if other:
+        expected = f"files that end in {listed(EXOMOL_ENDINGS)}, plain or .bz2"
+        faults.add(key, "not a file of a list in ExoMol format", expected=expected, found=_first_of(other))
+
+
+def _check_data_set(table: Table, paths: Sequence[Path]) -> None:
+    """A list in ExoMol format has states, transitions, and no second file of what there is one of."""
+    kinds: dict[str, list[str]] = {"def": [], "states": [], "trans": [], "pf": [], "broad": []}
+    for path in paths:
+        kinds[exomol_kind(path.name) or ""].append(path.name)
+    lacking = [f".{kind}" for kind in ("states", "trans") if not kinds[kind]]
+    if lacking:
+        expected = "one .states file and one or more .trans files, plain or .bz2"
+        table.faults.add(table.path("files"), f"no {listed(lacking)} file", expected=expected)
+    for kind in ("def", "states", "pf"):
+        if len(kinds[kind]) > 1:
+            found = _first_of(kinds[kind])
+            table.faults.add(table.path("files"), f"several .{kind} files", expected="one data set", found=found)
+
+
+def _check_all_fetched(table: Table, found: Sequence[str], folder: Path, downloads: Sequence[Download]) -> None:
+    """A pattern is content with the files that are there: a list of which only a part came would be used as whole."""
+    meant = [download for download in downloads if any(means(folder, name, download) for name in found)]
+    absent = [download.path.name for download in meant if not os.path.isfile(download.path)]
+    if absent:
+        what = f"{len(absent)} of {len(meant)} files are not there yet"
+        remedy = FETCH.format("it" if len(absent) == 1 else "them")
+        table.faults.add(table.path("urls"), what, expected=_first_of(absent), remedy=remedy)
+
+
+def _first_of(names: Sequence[str]) -> str:
+    more = f" and {len(names) - _MOST_NAMED} more" if len(names) > _MOST_NAMED else ""
+    return printable(", ".join(names[:_MOST_NAMED])) + more

@@ -24,7 +24,10 @@ class Molecule:
 
 @dataclass(frozen=True)
 class LineListSource:
-    """One `[[line_list]]`: files as written in the recipe, `paths` as found beside it."""
+    """One `[[line_list]]`: files as written in the recipe, `paths` as found beside it.
+
+    `format` is "hitran", "hapi", "exomol" or "catalogue"; with the latter two there is an `isotopologue`.
+    """
 
     format: str
     files: tuple[str, ...]
@@ -37,7 +40,10 @@ class LineListSource:
 
 @dataclass(frozen=True)
 class PartitionFunctionChoice:
-    """`source` is "TIPS-2021", "TIPS-2025" or "file"; `path` is the file of T (K) and Q."""
+    """`source` is "TIPS-2021", "TIPS-2025", "file", or "states": the sum over the states of a list in ExoMol format.
+
+    `path` is the file of T (K) and Q; `file` its name in the recipe, None where it is the .pf among a list's files.
+    """
 
     source: str
     file: str | None = None
@@ -46,10 +52,15 @@ class PartitionFunctionChoice:
 
 @dataclass(frozen=True)
 class Broadening:
-    """`mixture`: mole fraction by broadener, sum 1; `default`: widths for lines for which the list gives none."""
+    """`mixture`: mole fraction by broadener, sum 1.
+
+    `files`: .broad files by broadener, for lists that give no widths by it; `default`: widths for lines for which
+    neither list nor file gives any.
+    """
 
     mixture: dict[str, float]
     default: dict[str, DefaultWidth] = field(default_factory=dict)
+    files: dict[str, Path] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import re
+from collections.abc import Sequence
 from itertools import pairwise
 from pathlib import Path
 from typing import Any
@@ -11,22 +12,25 @@ from typing import Any
 from opacity.arguments import DefaultWidth
 from opacity.grids import HIGHEST_PRESSURE, LOWEST_PRESSURE
 from opacity.recipe.faults import Faults, listed, nearest, shown
+from opacity.recipe.formats import exomol_kind
 from opacity.recipe.line_lists import ISOTOPOLOGUE, WAVENUMBER, full_name
 from opacity.recipe.model import (
     BandStrength,
     Broadening,
     Cutoff,
     CutoffStep,
+    LineListSource,
     Molecule,
     PartitionFunctionChoice,
     Profile,
 )
-from opacity.recipe.table import Bounds, Table, checked_number
+from opacity.recipe.positions import KeyPath
+from opacity.recipe.table import Bounds, Table, checked_number, checked_text
 from opacity.units import BAND_STRENGTH_UNITS
 
 FORMULA = re.compile(r"[A-Z(][A-Za-z0-9()]*[+-]*")
 ABUNDANCES = ("terrestrial", "pure")
-PARTITION_FUNCTIONS = ("TIPS-2021", "TIPS-2025", "file")
+PARTITION_FUNCTIONS = ("TIPS-2021", "TIPS-2025", "file", "states")
 BAND_STRENGTH_KEYS = ("name", "range", "strength", "unit", "temperature", "uncertainty", "source")
 SUM_TOLERANCE = 1e-6
 
@@ -43,6 +47,7 @@ _BARE_ATMOSPHERE = ("cm-2 atm-1", "cm-2/atm", "cm^-2 atm^-1", "atm-1 cm-2")
 _WHICH_ATM = "say at which temperature the gas was: " + listed(
     [unit for unit in BAND_STRENGTH_UNITS if unit.startswith("cm-2 atm-1 (")], quoted=True
 )
+_PARTITION_FILE = "the name of a file of temperature and partition function"
 _BROADENER = re.compile(r"[A-Za-z][A-Za-z0-9]*")
 
 
@@ -73,35 +78,58 @@ def read_abundance(root: Table) -> str | dict[str, float]:
     return fractions
 
 
-def read_partition_function(root: Table, folder: Path) -> PartitionFunctionChoice:
-    """The section [partition_function]; a file is looked for in the recipe's folder."""
+def read_partition_function(root: Table, folder: Path, line_lists: Sequence[LineListSource]) -> PartitionFunctionChoice:
+    """The section [partition_function]; a file is looked for in the recipe's folder, or among those of a list."""
     values = root.table("partition_function", "a section [partition_function] with source")
     if values is None:
         return PartitionFunctionChoice("")
     table = Table(root.faults, root.path("partition_function"), values, ("source", "file"))
-    source = table.choice("source", PARTITION_FUNCTIONS, later=("states",))
-    expected = "the name of a file of temperature and partition function"
-    if source != "file":
-        if "file" in table and source:
-            table.faults.add(
-                table.path("file"), "not read with this source", expected='source = "file"', found=shown(source)
-            )
-        return PartitionFunctionChoice(source)
-    file = table.required_text("file", expected)
+    source = table.choice("source", PARTITION_FUNCTIONS)
+    if source == "file":
+        return _partition_file(table, folder) if "file" in table else _partition_beside(table, line_lists)
+    if "file" in table and source:
+        table.faults.add(
+            table.path("file"), "not read with this source", expected='source = "file"', found=shown(source)
+        )
+    # A list whose format is not understood may have been meant to hold states.
+    if source == "states" and line_lists and all(one.format not in ("exomol", "") for one in line_lists):
+        expected = f'a line list of format "exomol", or {listed(PARTITION_FUNCTIONS[:-1], quoted=True)}'
+        table.faults.add(table.path("source"), "no line list has states", expected=expected, found=shown(source))
+    return PartitionFunctionChoice(source)
+
+
+def _partition_file(table: Table, folder: Path) -> PartitionFunctionChoice:
+    file = table.required_text("file", _PARTITION_FILE)
     path = folder / file
     if file and not os.path.isfile(path):
         table.faults.add(
             table.path("file"), "no such file", expected=f"a file in {full_name(folder)}", found=shown(file)
         )
-    return PartitionFunctionChoice(source, file, path)
+    return PartitionFunctionChoice("file", file, path)
 
 
-def read_broadening(root: Table) -> Broadening:
-    """The section [broadening]: the gas that broadens, and widths for lines that have none."""
+def _partition_beside(table: Table, line_lists: Sequence[LineListSource]) -> PartitionFunctionChoice:
+    """The .pf among the files of the one list in ExoMol format."""
+    exomol = [one for one in line_lists if one.format == "exomol"]
+    if len(exomol) == 1:
+        for path in exomol[0].paths:
+            if exomol_kind(path.name) == "pf":
+                return PartitionFunctionChoice("file", None, path)
+        # Where the files themselves are at fault, or the .pf among them, that has been said.
+        if not exomol[0].paths or any(exomol_kind(name) == "pf" for name in exomol[0].files):
+            return PartitionFunctionChoice("file")
+    if line_lists and all(one.format for one in line_lists):
+        remedy = 'a .pf among the files of the one list of format "exomol" would serve' if exomol else None
+        table.missing("file", _PARTITION_FILE, remedy)
+    return PartitionFunctionChoice("file")
+
+
+def read_broadening(root: Table, folder: Path) -> Broadening:
+    """The section [broadening]: the gas that broadens, files of widths, and widths for lines that have none."""
     values = root.table("broadening", "a section [broadening] with mixture")
     if values is None:
         return Broadening({})
-    table = Table(root.faults, root.path("broadening"), values, ("mixture", "default"), later=("files",))
+    table = Table(root.faults, root.path("broadening"), values, ("mixture", "files", "default"))
     mixture = _mixture(table)
     given = table.table("default", "tables [broadening.default.NAME]", required=False) or {}
     default = {}
@@ -109,7 +137,32 @@ def read_broadening(root: Table) -> Broadening:
         read = _broadening_default(table, name, entry, tuple(mixture))
         if read is not None:
             default[name] = read
-    return Broadening(mixture, default)
+    return Broadening(mixture, default, _broadening_files(table, tuple(mixture), folder))
+
+
+def _broadening_files(table: Table, mixture: tuple[str, ...], folder: Path) -> dict[str, Path]:
+    """Files of widths by broadener, looked for in the recipe's folder."""
+    expected = "a file that ends in .broad or .broad.bz2"
+    given = table.table("files", 'files by broadener, such as { H2 = "CO__H2.broad" }', required=False) or {}
+    files = {}
+    for name, value in given.items():
+        key = table.path("files", name)
+        _check_in_mixture(table, key, name, mixture)
+        file = checked_text(table.faults, key, value, expected)
+        if file and exomol_kind(file) != "broad":
+            table.faults.add(key, "not a broadening file", expected=expected, found=shown(file))
+        elif file and not os.path.isfile(folder / file):
+            table.faults.add(key, "no such file", expected=f"a file in {full_name(folder)}", found=shown(file))
+        elif file:
+            files[name] = folder / file
+    return files
+
+
+def _check_in_mixture(table: Table, key: KeyPath, name: str, mixture: tuple[str, ...]) -> None:
+    if mixture and name not in mixture:
+        meant = nearest(name, mixture)
+        remedy = f"did you mean {meant}?" if meant else None
+        table.faults.add(key, "not in broadening.mixture", expected=listed(mixture), remedy=remedy)
 
 
 def _mixture(table: Table) -> dict[str, float]:
@@ -150,14 +203,7 @@ def _broadening_default(table: Table, name: str, entry: object, mixture: tuple[s
         expected = "a table with gamma, exponent and source"
         table.faults.add(key, "not a table", expected=expected, found=shown(entry))
         return None
-    if mixture and name not in mixture:
-        meant = nearest(name, mixture)
-        table.faults.add(
-            key,
-            "not in broadening.mixture",
-            expected=listed(mixture),
-            remedy=f"did you mean {meant}?" if meant else None,
-        )
+    _check_in_mixture(table, key, name, mixture)
     section = Table(table.faults, key, entry, ("gamma", "exponent", "source"))
     return DefaultWidth(
         gamma=section.number("gamma", _GAMMA),

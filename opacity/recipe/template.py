@@ -50,13 +50,13 @@ def _molecule(formula: str, facts: MoleculeFacts | None) -> str:
 
 
 def _line_list(formula: str, facts: MoleculeFacts | None) -> str:
-    section = _LINE_LIST.format(files=f'["lines/{formula}*.par"]')
+    section = _LINE_LIST.format(formula=formula, files=f'["lines/{formula}*.par"]')
     if facts is None:
         name = f'# isotopologue = "{formula}"'
         section += f"{name:<38} # decide: a name for the one isotopologue that the list holds\n"
     elif facts.isotopologues:
         name = f'# isotopologue = "{facts.isotopologues[0][0]}"'
-        section += f"{name:<38} # to take this one alone from a list of several\n"
+        section += f"{name:<38} # the list's own; from a list of several, this alone\n"
     return section
 
 
@@ -90,8 +90,13 @@ _HEAD = """\
 
 _LINE_LIST = """\
 [[line_list]]                          # repeat the section for further lists of other ranges or isotopologues
-format = "hitran"                      # "hitran": records of 160 characters; "hapi": a .data file with its .header
+format = "hitran"                      # records of 160 characters; "hapi": a .data file with its .header; "exomol":
+                                       # .states, .trans, .pf, .broad, .def, also .bz2; "catalogue": JPL's and CDMS's
 files = {files:<30} # decide: the files you have; patterns are allowed
+# Where `opacity fetch` gets files that you do not have, saved beside the first of files: from URLs, or from HITRAN by
+# its numbers; there the format "hapi" can have parameters = ["gamma_h2", "n_h2", "gamma_he", "n_he"] too.
+# urls = ["https://host/{formula}.par"]
+# hitran = {{ molecule = 5, isotopologues = [1], range = [1000.0, 2000.0] }} # decide: 5 is CO
 # range = [0.0, 9000.0]                # cm-1, to read only a part
 reference = ""                         # decide: the publication to cite for this list; goes into the table
 bad_records = "stop"                   # "leave-out" counts and skips records that cannot be read
@@ -111,12 +116,14 @@ abundance = "pure"                     # the list's one isotopologue; its streng
 _PARTITION_FUNCTION_TIPS = """\
 [partition_function]
 source = "TIPS-2021"                   # or "TIPS-2025", or "file" with file = "name.pf" (columns T in K and Q)
+                                       # with format "exomol" also "states", or "file" alone for the .pf among its files
 """
 
 _PARTITION_FUNCTION_FILE = """\
 [partition_function]
 source = "file"                        # TIPS does not hold this molecule
 file = "partition-function.pf"         # decide: a file with columns T in K and Q
+                                       # with format "exomol": source = "states", or no file for the .pf among its files
 """
 
 _BROADENING = """\
@@ -125,8 +132,9 @@ _BROADENING = """\
 # solar composition, rounded (from memory); { air = 1.0 } and { self = 1.0 } are broadeners like any other.
 # Records of 160 characters hold widths for air and self only; the hapi format can hold H2, He and CO2 too.
 mixture = { H2 = 0.85, He = 0.15 }
+# files = { H2 = "H2.broad" }          # widths in ExoMol's .broad layout, for a list that has none by H2
 
-# Widths for lines for which the list gives none; such lines are counted and reported.
+# Widths for lines for which neither list nor file gives any; such lines are counted and reported.
 # decide: fill in for each broadener that your list lacks.
 # [broadening.default.H2]
 # gamma = 0.07                         # half-width, cm-1/bar at 296 K

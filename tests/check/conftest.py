@@ -64,7 +64,7 @@ def make_case(tmp_path_factory: pytest.TempPathFactory, recipe_text: Callable[..
         path: Path = tmp_path_factory.mktemp("check") / "co.toml"
         path.write_text(recipe_text(**changes), encoding="utf-8")
         recipe = load_recipe(path)
-        lines = load_inputs(recipe).lines
+        lines = load_inputs(recipe).lines.lines
         sigma = _stored(compute_spectra(recipe, lines, 1, True))
         grid = recipe.grid
         nodes = grid.nodes

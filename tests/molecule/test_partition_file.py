@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import bz2
 import re
 
 import numpy as np
@@ -52,6 +53,24 @@ def test_the_points_themselves_are_given_back_and_blank_lines_passed_over(write)
         t, value = map(float, row.split())
         assert q(t) == pytest.approx(value, rel=1e-14)
     assert (q.lowest, q.highest, q.source) == (100.0, 500.0, "file made.pf")
+
+
+def test_a_compressed_file_is_read_the_same(write):
+    path = write(GOOD)
+    packed = path.with_name("made.pf.bz2")
+    packed.write_bytes(bz2.compress(path.read_bytes()))
+    q, plain = from_file(packed), from_file(path)
+    assert [q(t) for t in (100.0, 296.0, 444.4)] == [plain(t) for t in (100.0, 296.0, 444.4)]
+    assert q.source == "file made.pf.bz2"
+
+
+def test_a_compressed_file_that_is_cut_or_none(write):
+    path = write(GOOD).with_name("made.pf.bz2")
+    packed = bz2.compress(b"\n".join(row.encode() for row in GOOD))
+    for damaged in (packed[:-5], b"100.0 10.0\n"):
+        path.write_bytes(damaged)
+        with pytest.raises(MoleculeError, match=r"made\.pf\.bz2: partition function cannot be read \("):
+            from_file(path)
 
 
 def test_further_columns_are_not_read(write):

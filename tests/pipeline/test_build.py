@@ -57,7 +57,7 @@ def test_every_shape_of_grid_is_built_right(write_recipe, tmp_path, changes, sha
     assert not made.reused
     assert made.table == tmp_path / "out" / "co.cross-section.h5"
     recipe = load_recipe(path)
-    lines = load_inputs(recipe).lines
+    lines = load_inputs(recipe).lines.lines
     with open_table(made.table) as table:
         table.verify()
         assert table.shape == shape

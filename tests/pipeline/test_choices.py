@@ -187,13 +187,13 @@ def test_the_isotopologue_of_a_list_is_selected_and_the_others_are_counted(sever
     write, others = several
     choice = ('reference = "', f'isotopologue = "{name}"\nreference = "')
     inputs = load_inputs(load_recipe(write(choice, wavenumber=WIDE)))
-    assert [one.local for one in inputs.lines.isotopologues] == [local]
-    left_out = inputs.lines.ledger.as_dict()["left_out"]
+    assert [one.local for one in inputs.lines.lines.isotopologues] == [local]
+    left_out = inputs.lines.lines.ledger.as_dict()["left_out"]
     assert left_out["another isotopologue than the one chosen"] == (others if local == 1 else 202 - others)
     everything = read_lines(tmp_path / "several.par")
     own = np.array([one.local for one in everything.isotopologues])[everything.isotopologue] == local
     near = (everything.wavenumber >= 2025.0) & (everything.wavenumber <= 2085.0)
-    np.testing.assert_array_equal(inputs.lines.wavenumber, everything.wavenumber[own & near])
+    np.testing.assert_array_equal(inputs.lines.lines.wavenumber, everything.wavenumber[own & near])
     assert len(inputs.lines) > 0
 
 
@@ -224,7 +224,7 @@ def test_an_isotopologue_beyond_the_reach_of_the_grid_decides_nothing(several, t
     )
     shared = load_inputs(load_recipe(path))
     assert shared.provenance["isotopologues"][0]["abundance"] == 0.75
-    assert shared.lines.strength == pytest.approx(0.75 * inputs.lines.strength, rel=1e-15)
+    assert shared.lines.lines.strength == pytest.approx(0.75 * inputs.lines.lines.strength, rel=1e-15)
     path = write(('abundance = "pure"', 'abundance = { "1" = 0.75, "3" = 0.25 }'))
     (line,) = message_of(path, tmp_path)
     assert line.startswith("isotopologues.abundance: no lines of isotopologue 3; expected (12C)(16O) (1), (13C)(16O)")

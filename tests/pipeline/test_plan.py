@@ -33,7 +33,7 @@ def test_the_numbers_of_a_plan(write_recipe, tmp_path):
     path = write_recipe(cutoff="0.3")
     plan = planned(path, tmp_path)
     recipe = load_recipe(path)
-    lines = load_inputs(recipe).lines
+    lines = load_inputs(recipe).lines.lines
     assert (plan.nodes, plan.points, plan.lines) == (4, 1001, len(lines))
     reached = np.abs(recipe.grid.wavenumber[:, None] - lines.wavenumber) <= 0.3
     # Points at just the cut-off may count or not.
@@ -54,7 +54,7 @@ def test_the_numbers_of_a_plan(write_recipe, tmp_path):
 def test_lines_beyond_reach_are_left_out_and_counted(write_recipe, tmp_path, samples):
     plan = planned(write_recipe(cutoff="[{ to_pressure = 0.1, cutoff = 0.3 }, { cutoff = 4.0 }]"), tmp_path)
     recipe = load_recipe(tmp_path / "co.toml")
-    lines = load_inputs(recipe).lines
+    lines = load_inputs(recipe).lines.lines
     # The widest cut-off decides who is in reach.
     everyone = read_lines(samples / "carbon-monoxide.par").wavenumber
     np.testing.assert_array_equal(lines.wavenumber, everyone[(everyone >= 2141.0) & (everyone <= 2153.0)])

@@ -11,14 +11,14 @@ LINE_LIST_FAULTS = [
     (
         'format = "hapi"',
         'format = "hpai"',
-        '14: line_list[1].format: unknown value; expected "hitran" or "hapi", found "hpai"; did you mean "hapi"?',
+        '14: line_list[1].format: unknown value; expected "hitran", "hapi", "exomol" or "catalogue", '
+        'found "hpai"; did you mean "hapi"?',
     ),
     (
         'format = "hapi"',
-        'format = "exomol"',
-        '14: line_list[1].format: not in this version; expected "hitran" or "hapi", found "exomol"',
+        "",
+        '13: line_list[1].format: missing; expected "hitran", "hapi", "exomol" or "catalogue"',
     ),
-    ('format = "hapi"', "", '13: line_list[1].format: missing; expected "hitran" or "hapi"'),
     (
         '    "lines/hot.data",',
         '\n    "lines/cold*.data",',

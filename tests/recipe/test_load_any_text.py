@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 
 from opacity import grids
 from opacity.errors import RecipeError
+from opacity.recipe.formats import NAMELESS
 from opacity.recipe.load import load_recipe
 from opacity.recipe.model import Recipe
 
@@ -39,6 +40,9 @@ def check(folder: Path, data: bytes) -> None:
         assert outcome.grid.wavenumber.size > 0
         assert len(outcome.grid.node_list()) > 0
         assert all(source.paths for source in outcome.line_lists)
+        assert all(source.isotopologue for source in outcome.line_lists if source.format in NAMELESS)
+        assert outcome.partition_function.source != "file" or outcome.partition_function.path.is_file()
+        assert all(path.is_file() for path in outcome.broadening.files.values())
         return
     assert outcome
     for line in outcome:
@@ -66,6 +70,38 @@ def short_axes() -> None:
 @settings(derandomize=True, max_examples=400, deadline=None)
 def test_mutated_recipe(session_folder: Path, full: str, edits: list[tuple[float, int, str]]) -> None:
     check(session_folder, mutated(full, edits).encode("utf-8", "surrogatepass"))
+
+
+EXOMOL = (
+    ('format = "hapi"', 'format = "exomol"'),
+    ('"lines/hot.data",', '"data/x*",'),
+    ('bad_records = "leave-out"', 'urls = ["https://a.example/x.pf"]'),
+    ('file = "CO.pf"', ""),
+    ("[broadening.default.H2]", '[broadening.files]\nH2 = "data/x.broad"\n[broadening.default.H2]'),
+)
+
+
+@pytest.fixture(scope="module")
+def exomol(session_folder: Path, full: str) -> str:
+    """The full recipe with a data set in ExoMol format that holds the partition function too."""
+    (session_folder / "data").mkdir()
+    for name in ("x.states", "x.trans", "x.pf", "x.broad", "x.trans.bz2.part"):
+        (session_folder / "data" / name).touch()
+    for old, new in EXOMOL:
+        assert full.count(old) == 1
+        full = full.replace(old, new)
+    return full
+
+
+def test_the_recipe_that_is_mutated_loads(session_folder: Path, exomol: str) -> None:
+    (session_folder / "co.toml").write_text(exomol)
+    assert load_recipe(session_folder / "co.toml").partition_function.path == session_folder / "data" / "x.pf"
+
+
+@given(edits=EDITS)
+@settings(derandomize=True, max_examples=400, deadline=None)
+def test_mutated_recipe_of_a_data_set(session_folder: Path, exomol: str, edits: list[tuple[float, int, str]]) -> None:
+    check(session_folder, mutated(exomol, edits).encode("utf-8", "surrogatepass"))
 
 
 VALUES = st.sampled_from(

@@ -71,7 +71,7 @@ ONE_FAULT = [
     (
         'source = "file"\nfile = "CO.pf"',
         'source = "tips2021"',
-        '26: partition_function.source: unknown value; expected "TIPS-2021", "TIPS-2025" or "file", '
+        '26: partition_function.source: unknown value; expected "TIPS-2021", "TIPS-2025", "file" or "states", '
         'found "tips2021"; did you mean "TIPS-2021"?',
     ),
     (
@@ -92,7 +92,7 @@ ONE_FAULT = [
     (
         'source = "file"\nfile = "CO.pf"',
         "",
-        '25: partition_function.source: missing; expected "TIPS-2021", "TIPS-2025" or "file"',
+        '25: partition_function.source: missing; expected "TIPS-2021", "TIPS-2025", "file" or "states"',
     ),
     # broadening
     ("He = 0.15", "He = 0.16", "30: broadening.mixture: mole fractions do not add up to 1; expected 1, found 1.01"),
@@ -126,11 +126,6 @@ ONE_FAULT = [
         'source = "from memory"',
         "",
         '32: broadening.default.H2.source: missing; expected where the values come from, if need be "from memory"',
-    ),
-    (
-        "mixture = { H2 = 0.85, He = 0.15 }",
-        'mixture = { H2 = 0.85, He = 0.15 }\nfiles = { H2 = "x" }',
-        "31: broadening.files: not in this version; expected mixture or default",
     ),
     # profile
     (

@@ -7,7 +7,7 @@ from pathlib import Path
 import pytest
 
 from opacity.errors import RecipeError
-from opacity.recipe import load
+from opacity.recipe import document
 from opacity.recipe.load import load_recipe
 
 
@@ -74,7 +74,7 @@ def test_nul_byte(tmp_path: Path) -> None:
 
 
 def test_too_long(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(load, "MAX_BYTES", 10)
+    monkeypatch.setattr(document, "MAX_BYTES", 10)
     assert problem_of_bytes(tmp_path, b"a = 1 # xxx") == "co.toml: too long for a recipe; expected at most 10 bytes"
 
 

@@ -20,7 +20,7 @@ from opacity.line_list.exomol.broadening import BroadeningTable, read_broadening
 from opacity.line_list.exomol.definition import Definition, read_definition
 from opacity.line_list.exomol.states import States, partition_sum, read_states
 from opacity.line_list.exomol.transitions import StateJoin, default_names, state_join, transition_batches
-from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
+from opacity.molecule.isotopologue import Isotopologue, named_isotopologue
 
 PARTITION_TEMPERATURES = np.geomspace(10.0, 10000.0, 400)
 """Temperatures (K) at which the sum over states is kept with the lines."""
@@ -114,11 +114,9 @@ class OpenDataSet:
     def isotopologue(self) -> Isotopologue:
         """The isotopologue: from hapi's tables by its formula there, otherwise from the definition or the recipe."""
         files = self.files
-        for one in isotopologues_of(files.formula):
-            if files.isotopologue in (one.formula, str(one.local)):
-                return one
         mass = self._mass if self.definition is None else self.definition.mass
-        if mass is None:
+        found = named_isotopologue(files.formula, files.isotopologue, mass)
+        if found is None:
             raise LineListError(
                 problem(
                     files.states,
@@ -126,7 +124,7 @@ class OpenDataSet:
                     expected="an isotopologue by hapi's formula, a .def file, or molecule.mass",
                 )
             )
-        return Isotopologue(0, 1, files.isotopologue, files.formula, mass, 1.0, known=False)
+        return found
 
     def batches(
         self, path: Path, leave_out: bool, range: tuple[float, float] | None, executor: Executor | None

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import fnmatch
 import glob
 import os
 import re
@@ -22,7 +21,7 @@ from opacity.pipeline.fetch.partial import part_length
 from opacity.pipeline.fetch.progress import in_bytes
 from opacity.pipeline.resources import free_disk
 from opacity.provenance import file_sha256
-from opacity.recipe.downloads import BESIDE, Download, HitranDownload, ListDownloads, UrlDownload, load_downloads
+from opacity.recipe.downloads import BESIDE, Download, HitranDownload, ListDownloads, UrlDownload, load_downloads, means
 from opacity.recipe.line_lists import full_name
 
 PRESENT, TO_FETCH, WRONG = "present", "to fetch", "wrong"
@@ -200,7 +199,7 @@ def _missing(lists: Sequence[ListDownloads]) -> list[str]:
         name
         for one in lists
         for name in one.files
-        if not any(_names(one, name, download) for download in one.downloads) and not _there(one.folder, name)
+        if not any(means(one.folder, name, download) for download in one.downloads) and not _there(one.folder, name)
     ]
 
 
@@ -212,21 +211,10 @@ def _there(folder: Path, name: str) -> bool:
     return (folder / name).is_file() or any(os.path.isfile(path) and not path.endswith(BESIDE) for path in found)
 
 
-def _names(one: ListDownloads, name: str, download: Download) -> bool:
-    """Whether an entry of `files`, a name or a pattern, means a file that is downloaded."""
-    path = one.folder / name
-    if path.parent != download.path.parent:
-        return False
-    try:
-        return path.name == download.path.name or fnmatch.fnmatchcase(download.path.name, path.name)
-    except re.error:
-        return False
-
-
 def _notes(lists: Sequence[ListDownloads]) -> list[str]:
     return [
         f"{download.path.name} is fetched, but no entry of `files` names it"
         for one in lists
         for download in one.downloads
-        if not any(_names(one, name, download) for name in one.files)
+        if not any(means(one.folder, name, download) for name in one.files)
     ]

@@ -109,7 +109,10 @@ def test_urls_that_are_refused(write_list, url, words):
         ("urls = []", "3: line_list[0].urls: no list of URLs"),
         ('urls = "https://a.example/x"', "3: line_list[0].urls: no list of URLs"),
         ("urls = [3]", "3: line_list[0].urls[0]: not text"),
-        ('url = ["https://a.example/x"]', "3: line_list[0].url: unknown key; did you mean urls?"),
+        (
+            'url = ["https://a.example/x"]',
+            '3: line_list[0].url: unknown key; expected files, urls, sha256 or hitran, found "url"; did you mean urls?',
+        ),
         (f'urls = ["https://a.example/x"]\n{QUERY}', "4: line_list[0].hitran: a second origin of the same files"),
         (
             'urls = ["https://a.example/x", "http://b.example/x"]',
@@ -167,6 +170,20 @@ def test_faults_of_a_query(write_list, old, new, expected):
     assert line.startswith(expected)
 
 
+def test_a_query_for_a_list_of_an_unknown_format(write_list):
+    (line,) = problems(write_list, HAPI.replace("hapi", "hpai") + QUERY)
+    assert line.startswith("2: line_list[0].format: unknown value")
+    (line,) = problems(write_list, f'files = ["CO.par"]\n{QUERY}')
+    assert line.startswith("1: line_list[0].format: missing")
+
+
+def test_a_checksum_for_a_file_that_a_fault_keeps_away(write_list):
+    sha256 = 'sha256 = { "CO.par" = "' + "0" * 64 + '" }'
+    for urls in ('urls = ["ftp://a.example/CO.par"]', 'url = ["https://a.example/CO.par"]'):
+        (line,) = problems(write_list, f'files = ["CO.par"]\n{urls}\n{sha256}')
+        assert line.startswith("3: line_list[0].url")
+
+
 def test_plain_records_have_no_further_columns_and_are_not_compressed(write_list):
     query = QUERY.replace(" }", ', parameters = ["gamma_h2"] }')
     lines = problems(write_list, f'format = "hitran"\nfiles = ["CO.par.gz"]\n{query}')
@@ -192,9 +209,10 @@ def test_two_lists_do_not_fetch_one_file(write_list):
     "content, words",
     [
         (b"[[line_list]\n", "not valid TOML"),
-        (b"\xff", "not valid TOML"),
+        (b"\xff", "not UTF-8 text"),
         (b"a = " + b"[" * 5000, "not valid TOML"),
-        (b"", "line_list: missing or not an array of tables"),
+        (b"", "empty file"),
+        (b"a = 1", "line_list: missing or not an array of tables"),
         (b"line_list = 3", "line_list: missing or not an array of tables"),
         (b"[line_list]\nurls = []", "line_list: missing or not an array of tables"),
     ],
@@ -213,5 +231,7 @@ def test_what_is_no_recipe(tmp_path: Path, content: bytes, words: str):
 def test_no_file_at_all(tmp_path: Path):
     with pytest.raises(RecipeError, match=r"no such file; expected a recipe; `opacity new FORMULA`"):
         load_downloads(tmp_path / "co.toml")
-    with pytest.raises(RecipeError, match="cannot be read"):
+    with pytest.raises(RecipeError, match="not a file"):
         load_downloads(tmp_path)
+    with pytest.raises(RecipeError, match="not a file"):
+        load_downloads("/dev/zero")

@@ -1,0 +1,115 @@
+"""A recipe's line lists as what an ingest takes, and the line stores made of them."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+from functools import partial
+from pathlib import Path
+from typing import Any
+
+from opacity.line_list.batches import record_batches
+from opacity.line_list.exomol.dataset import OpenDataSet, sort_files
+from opacity.line_list.records import ReadOptions
+from opacity.line_store.ingest import InputFile, ingest
+from opacity.line_store.store import LineStore, is_current, read_index
+from opacity.molecule.hapi_tables import hapi
+from opacity.pipeline.progress import RecordProgress
+from opacity.pipeline.resources import allowed_cpus
+from opacity.recipe.model import LineListSource, Recipe
+
+DEFAULT_MEMORY = 2_000_000_000
+SMALL_LIST = 64_000_000
+"""Lists of records below this size (bytes) are read again for each build; larger ones go through a line store."""
+
+
+@dataclass(frozen=True)
+class ListInputs:
+    """One `[[line_list]]` ready for ingest: its files, how they are read (`key`), and the facts kept with its lines."""
+
+    inputs: tuple[InputFile, ...]
+    key: str
+    facts: Callable[[], dict[str, Any]]
+
+    def folder(self, tables: Path, formula: str) -> Path:
+        """Where its line store lies: beside the tables, named by what it is made of and how."""
+        paths = [str(path.absolute()) for one in self.inputs for path in (one.path, *one.beside)]
+        digest = hashlib.sha256(json.dumps([self.key, paths]).encode("utf-8", "surrogateescape")).hexdigest()
+        return tables / "lines" / f"{formula}-{digest[:12]}"
+
+
+def is_small(source: LineListSource) -> bool:
+    """Whether a list is read into memory rather than kept in a store."""
+    return source.format in ("hitran", "hapi", "catalogue") and sum(_size(path) for path in source.paths) < SMALL_LIST
+
+
+def _size(path: Path) -> int:
+    try:
+        return path.stat().st_size
+    except OSError:  # said when it is read
+        return 0
+
+
+def list_inputs(recipe: Recipe, source: LineListSource, executor: ThreadPoolExecutor | None) -> ListInputs:
+    """What an ingest of one list takes.  Raises LineListError for files that do not make a list."""
+    leave_out = source.bad_records == "leave-out"
+    molecule = recipe.molecule
+    settings: dict[str, Any] = {
+        "format": source.format,
+        "range": source.range,
+        "leave_out": leave_out,
+        "isotopologue": source.isotopologue,
+        "formula": molecule.formula,
+        "mass": molecule.mass,
+    }
+    if source.format != "exomol":
+        options = ReadOptions(molecule.formula, molecule.mass, source.isotopologue)
+        inputs = [
+            InputFile(
+                path,
+                partial(record_batches, path, source.format, options, leave_out, source.range, executor),
+                (path.with_suffix(".header"),) if source.format == "hapi" else (),
+            )
+            for path in source.paths
+        ]
+        return ListInputs(tuple(inputs), json.dumps(settings), dict)
+    files = sort_files(
+        source.paths, str(recipe.path), molecule.formula, source.isotopologue or "", recipe.broadening.files
+    )
+    data = OpenDataSet(files, molecule.mass)
+    inputs = [
+        InputFile(path, data.batches(path, leave_out, source.range, executor), files.beside)
+        for path in files.transitions
+    ]
+    settings["broad"] = sorted(files.broad)
+    return ListInputs(tuple(inputs), json.dumps(settings), data.facts)
+
+
+def ensure_store(
+    recipe: Recipe, source: LineListSource, tables: Path, memory: int = DEFAULT_MEMORY, quiet: bool = False
+) -> tuple[LineStore, bool]:
+    """The line store of a list, made if it is missing or no longer what its files say; whether it was made now."""
+    hapi()  # before any thread asks for it
+    with ThreadPoolExecutor(allowed_cpus()) as executor:
+        made = list_inputs(recipe, source, executor)
+        folder = made.folder(tables, recipe.molecule.formula)
+        index = read_index(folder)
+        if index is not None and is_current(index, list(made.inputs), made.key):
+            return LineStore(folder), False
+        total = sum(_size(one.path) for one in made.inputs)
+        with RecordProgress(f"reading lines of {recipe.molecule.formula}", total, quiet) as progress:
+            ingest(folder, list(made.inputs), made.key, memory, progress.add, made.facts)
+    return LineStore(folder), True
+
+
+def find_store(recipe: Recipe, source: LineListSource, tables: Path) -> LineStore | None:
+    """The line store of a list if there is one that is current."""
+    made = list_inputs(recipe, source, None)
+    folder = made.folder(tables, recipe.molecule.formula)
+    index = read_index(folder)
+    if index is None or not is_current(index, list(made.inputs), made.key):
+        return None
+    return LineStore(folder)
