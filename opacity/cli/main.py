@@ -11,7 +11,7 @@ import os
 import re
 import signal
 import sys
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from types import FrameType
 from typing import NoReturn
 
@@ -86,6 +86,11 @@ def parser() -> argparse.ArgumentParser:
     _add_memory(one)
     _add_shared(one)
 
+    _add_reading_commands(command)
+    return top
+
+
+def _add_reading_commands(command: Callable[[str, str], argparse.ArgumentParser]) -> None:
     one = command("check", "show a table right, or say what differs; or look at a line list")
     one.add_argument("target", metavar="TABLE|RECIPE|LIST")
     one.add_argument("--recipe", metavar="RECIPE", help="the recipe that the table was built from")
@@ -98,7 +103,6 @@ def parser() -> argparse.ArgumentParser:
     one.add_argument("--plot", metavar="FILE.png", help="draw the table (needs the plot extra)")
     one.add_argument("--zoom", type=_range, metavar="FROM,TO", help="stretch (cm-1) to draw enlarged")
     one.add_argument("--json", action="store_true", help="the result as JSON on stdout")
-    return top
 
 
 def _add_shared(one: argparse.ArgumentParser) -> None:

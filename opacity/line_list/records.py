@@ -7,8 +7,8 @@ from __future__ import annotations
 
 import re
 from collections import Counter
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
 from pathlib import Path
 
 import numpy as np
@@ -17,7 +17,9 @@ from numpy.typing import NDArray
 from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION, STANDARD_ATMOSPHERE
 from opacity.errors import LineListError, MoleculeError, problem
 from opacity.grids import FloatArray
+from opacity.line_list.exomol.broadening import BroadeningTable
 from opacity.line_list.ledger import Ledger
+from opacity.line_list.lower_j import fill_widths
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.text import TextChunk
 from opacity.molecule.broadening import BroadenerColumns
@@ -63,12 +65,14 @@ class ParsedColumns:
 class ReadOptions:
     """What a recipe says of a list: its molecule's `formula` and `mass`, and the one `isotopologue` to take from it.
 
-    For a molecule that hapi does not know `isotopologue` is the name of the list's only one.
+    For a molecule that hapi does not know `isotopologue` is the name of the list's only one.  `widths` by J'', by
+    broadener, serve lines for which the list gives none.
     """
 
     formula: str | None = None
     mass: float | None = None
     isotopologue: str | None = None
+    widths: Mapping[str, BroadeningTable] = field(default_factory=dict)
 
 
 def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool = False) -> LineList:
@@ -94,6 +98,9 @@ def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool = False)
     if found and not leave_out:
         raise LineListError(_first_problem(columns, min(found), int((~good).sum())))
     ledger.kept = int(good.sum())
+    if options.widths:
+        added = fill_widths(columns.numbers, options.widths, columns.text, columns.whole, good)
+        columns.broadeners = tuple(dict.fromkeys((*columns.broadeners, *added)))
     ledger.notes.update(_notes(columns, good))
     return _build(columns, good, index, known, ledger)
 

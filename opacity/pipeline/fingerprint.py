@@ -34,6 +34,10 @@ def fingerprint(recipe: Recipe) -> Fingerprint:
         "packages": package_versions(),
         "line_lists": [_file_entry(path, source) for source in recipe.line_lists for path in _all_paths(source)],
         "partition_file": None,
+        "broadening_files": {
+            name: {"file": _file_name(path), "sha256": file_sha256(path)}
+            for name, path in sorted(recipe.broadening.files.items())
+        },
     }
     if choice.path is not None:
         content["partition_file"] = {"file": _file_name(choice.path), "sha256": file_sha256(choice.path)}

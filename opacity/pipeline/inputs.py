@@ -25,12 +25,11 @@ from opacity.errors import LineListError, OpacityError, RecipeError, problem
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
 from opacity.line_list.read import check_account, merge, read_lines
-from opacity.line_list.records import ReadOptions
 from opacity.molecule.broadening import Assumption
 from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
 from opacity.molecule.partition_function import PartitionFunction, from_file, from_states
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
-from opacity.pipeline.sources import DEFAULT_MEMORY, ensure_store, find_store, is_small
+from opacity.pipeline.sources import DEFAULT_MEMORY, ensure_store, find_store, is_small, read_options
 from opacity.recipe.faults import faults_of, shown
 from opacity.recipe.model import LineListSource, Recipe
 from opacity.recipe.positions import KeyPath
@@ -244,8 +243,7 @@ def _choices(recipe: Recipe, lists: Sequence[_OpenList]) -> dict[str, Any]:
 
 
 def _read(recipe: Recipe, number: int, source: LineListSource) -> LineList:
-    molecule = recipe.molecule
-    options = ReadOptions(molecule.formula, molecule.mass, source.isotopologue)
+    options = read_options(recipe, source)
     with _located(recipe, {**_KEYS, "isotopologue": ("line_list", number, "isotopologue")}):
         return read_lines(
             source.paths, source.format, range=source.range, bad_records=source.bad_records, options=options

@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import Any
 
 from opacity.line_list.batches import record_batches
+from opacity.line_list.exomol.broadening import read_broadening
 from opacity.line_list.exomol.dataset import OpenDataSet, sort_files
 from opacity.line_list.records import ReadOptions
 from opacity.line_store.ingest import InputFile, ingest
@@ -66,12 +67,13 @@ def list_inputs(recipe: Recipe, source: LineListSource, executor: ThreadPoolExec
         "mass": molecule.mass,
     }
     if source.format != "exomol":
-        options = ReadOptions(molecule.formula, molecule.mass, source.isotopologue)
+        options = read_options(recipe, source)
+        broad = [recipe.broadening.files[name] for name in sorted(recipe.broadening.files)]
         inputs = [
             InputFile(
                 path,
                 partial(record_batches, path, source.format, options, leave_out, source.range, executor),
-                (path.with_suffix(".header"),) if source.format == "hapi" else (),
+                (*([path.with_suffix(".header")] if source.format == "hapi" else []), *broad),
             )
             for path in source.paths
         ]
@@ -86,6 +88,13 @@ def list_inputs(recipe: Recipe, source: LineListSource, executor: ThreadPoolExec
     ]
     settings["broad"] = sorted(files.broad)
     return ListInputs(tuple(inputs), json.dumps(settings), data.facts)
+
+
+def read_options(recipe: Recipe, source: LineListSource) -> ReadOptions:
+    """What a recipe says of a list of records, widths by J'' among it."""
+    molecule = recipe.molecule
+    tables = {name: read_broadening(path) for name, path in recipe.broadening.files.items()}
+    return ReadOptions(molecule.formula, molecule.mass, source.isotopologue, tables)
 
 
 def ensure_store(

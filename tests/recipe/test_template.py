@@ -6,9 +6,11 @@ from pathlib import Path
 import pytest
 
 from opacity.errors import InputError, RecipeError
+from opacity.recipe.downloads import HitranDownload, load_downloads
 from opacity.recipe.load import load_recipe
 from opacity.recipe.template import MoleculeFacts, recipe_template
 
+RECIPES = Path(__file__).parents[2] / "recipes"
 CO = MoleculeFacts("Carbon Monoxide", (("(12C)(16O)", 0.986544), ("(13C)(16O)", 0.011084)))
 
 
@@ -65,6 +67,28 @@ def test_commented_parts_load_too(place: Path) -> None:
     assert recipe.line_lists[0].range == (0.0, 9000.0)
     assert recipe.broadening.default["H2"].gamma == 0.07
     assert recipe.band_strengths[0].name == "1-0"
+
+
+@pytest.mark.parametrize("key", ["urls", "hitran"])
+def test_a_commented_origin_loads_and_says_what_is_to_be_fetched(place: Path, key: str) -> None:
+    text = filled(recipe_template("CO", CO))
+    assert text.count(f"\n# {key} = ") == 1
+    text = text.replace(f"\n# {key} = ", f"\n{key} = ").replace("CO*.par", "CO.par")
+    place.write_text(text.replace("\n# files = ", "\nfiles = "))
+    (place.parent / "H2.broad").touch()
+    recipe = load_recipe(place)
+    (one,) = load_downloads(place)
+    assert [download.path for download in one.downloads] == list(recipe.line_lists[0].paths)
+    assert recipe.broadening.files == {"H2": place.parent / "H2.broad"}
+
+
+@pytest.mark.parametrize("name", ["carbon-monoxide", "water"])
+def test_recipes_on_lines_of_hitran_say_how_to_get_them(name: str) -> None:
+    (one,) = load_downloads(RECIPES / f"{name}.toml")
+    (query,) = one.downloads
+    assert isinstance(query, HitranDownload)
+    assert query.path == RECIPES / one.files[0]
+    assert query.isotopologues == (1,)
 
 
 def test_isotopologues_are_listed_by_local_number() -> None:

@@ -1,0 +1,74 @@
+"""J'' out of records, and widths by J'' for lists that have none of a broadener."""
+
+from __future__ import annotations
+
+import os
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from opacity.errors import LineListError
+from opacity.line_list.exomol.broadening import read_broadening
+from opacity.line_list.hitran import hitran_parser
+from opacity.line_list.lower_j import read_j
+from opacity.line_list.read import read_lines
+from opacity.line_list.records import ReadOptions
+from opacity.line_list.text import read_chunks
+
+SAMPLE = Path(__file__).parents[2] / "data-samples" / "carbon-monoxide.par"
+REAL = os.environ.get("OPACITY_REAL_LINES", "")
+
+
+def broad(tmp_path: Path, text: str):
+    path = tmp_path / "co__H2.broad"
+    path.write_text(text, encoding="ascii")
+    return {"H2": read_broadening(path)}
+
+
+def lower_j_of(path: Path, molecule: int) -> tuple[np.ndarray, np.ndarray]:
+    (chunk,) = read_chunks(path)
+    return read_j(chunk, hitran_parser(path)(chunk).whole, molecule)
+
+
+def test_widths_by_lower_j_serve_lists_without_columns(tmp_path: Path) -> None:
+    tables = broad(tmp_path, "".join(f"a0 {0.08 - 0.001 * j:.4f} {0.7 - 0.01 * j:.3f} {j}\n" for j in range(31)))
+    lines = read_lines(SAMPLE, options=ReadOptions(widths=tables))
+    j = np.minimum((lines.lower_weight - 1.0) / 2.0, 30.0)  # g'' = 2J'' + 1 for CO
+    np.testing.assert_allclose(lines.broadeners["h2"].gamma, 0.08 - 0.001 * j, rtol=1e-12)
+    np.testing.assert_allclose(lines.broadeners["h2"].exponent, 0.7 - 0.01 * j, rtol=1e-12)
+    assert np.all(np.isnan(lines.broadeners["h2"].shift))
+
+
+def test_columns_of_the_list_come_first(tmp_path: Path) -> None:
+    plain = read_lines(SAMPLE.with_suffix(".data"))
+    lines = read_lines(SAMPLE.with_suffix(".data"), options=ReadOptions(widths=broad(tmp_path, "a0 0.5 0.5 0\n")))
+    assert np.array_equal(lines.broadeners["h2"].gamma, plain.broadeners["h2"].gamma)
+
+
+def test_the_branch_tells_upper_j() -> None:
+    lower, upper = lower_j_of(SAMPLE, 5)
+    lines = read_lines(SAMPLE)
+    assert np.array_equal(np.sort(lower), np.sort((lines.lower_weight - 1.0) / 2.0))
+    assert set(np.unique(upper - lower)) == {-1.0, 1.0}
+
+
+def test_a_molecule_of_unknown_quanta_is_refused(tmp_path: Path) -> None:
+    with pytest.raises(LineListError, match="J'' is not read from its records"):
+        lower_j_of(SAMPLE, 8)
+
+
+@pytest.mark.real_lines
+@pytest.mark.skipif(not REAL, reason="OPACITY_REAL_LINES names no folder of real lists")
+@pytest.mark.parametrize(("name", "molecule"), [("CO.par", 5), ("H2O.par", 1)])
+def test_lower_j_of_real_records(name: str, molecule: int) -> None:
+    """CO: g'' = 2J'' + 1.  H2O: J' and J'' differ by at most 1, for every record (selection rule of a dipole)."""
+    (chunk,) = read_chunks(Path(REAL) / name)
+    columns = hitran_parser(Path(REAL) / name)(chunk)
+    lower, _ = read_j(chunk, columns.whole, molecule)
+    if name == "CO.par":
+        assert np.array_equal(columns.numbers["lower_weight"], 2.0 * lower + 1.0)
+    else:
+        upper = np.array([float(chunk.record(i)[97:100]) for i in range(len(chunk))])
+        assert np.all(np.abs(upper - lower) <= 1.0)
+        assert lower.max() > 15.0
