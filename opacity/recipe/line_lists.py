@@ -94,7 +94,7 @@ def _find_all(
         found += [name] if matches else []
         paths += new
     _check_all_fetched(table, found, folder, downloads)
-    if form == "exomol" and entries and len(faults) == before:
+    if form == "exomol" and entries and len(entries) == len(table.values["files"]) and len(faults) == before:
         _check_data_set(table, paths)
     return paths
 

@@ -143,6 +143,11 @@ def test_one_fault_of_a_data_set_gives_one_line(
     assert (place, text) == (f"co.toml:{16 if text.startswith('[') else 15}: ", expected)
 
 
+def test_an_entry_that_is_no_name_is_not_said_to_lack(faults: Faults) -> None:
+    (line,) = faults(exomol('"data/x.states.bz2", 7'))
+    assert line.startswith("co.toml:16: line_list[1].files[1]: not text")
+
+
 def test_records_plain_and_compressed_would_count_twice(faults: Faults, folder: Path) -> None:
     (folder / "lines" / "CO-a.par.gz").touch()
     assert faults(('["lines/CO-*.par"]', '["lines/CO-*"]')) == [
