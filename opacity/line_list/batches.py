@@ -17,7 +17,7 @@ from opacity.line_list.model import StrengthBasis
 from opacity.line_list.packed import PackedLines, pack
 from opacity.line_list.read import only, parser_of
 from opacity.line_list.records import ReadOptions, judge
-from opacity.line_list.text import TextChunk, read_chunks
+from opacity.line_list.text import RawText, read_raw
 from opacity.molecule.isotopologue import Isotopologue
 
 Item = TypeVar("Item")
@@ -54,7 +54,10 @@ def record_batches(
     """
     parse = parser_of(path, format)
 
-    def work(chunk: TextChunk) -> Batch:
+    def work(raw: RawText) -> Batch | None:
+        chunk = raw.lines()
+        if not len(chunk):
+            return None
         lines = judge(parse(chunk), options, leave_out)
         if options.isotopologue is not None and len(lines):
             lines = only(lines, options.isotopologue)
@@ -64,9 +67,10 @@ def record_batches(
         return Batch(pack(lines), lines.isotopologues, lines.basis, lines.ledger, chunk.read)
 
     empty = True
-    for batch in in_order(work, (chunk for chunk in read_chunks(path) if len(chunk)), executor):
-        empty = False
-        yield batch
+    for batch in in_order(work, read_raw(path), executor):
+        if batch is not None:
+            empty = False
+            yield batch
     if empty:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
 

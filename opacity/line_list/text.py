@@ -49,21 +49,40 @@ class TextChunk:
         return self.buffer[self.starts[i] : self.stops[i]].tobytes()
 
 
+@dataclass(frozen=True)
+class RawText:
+    """Bytes of whole lines: `newlines` of them ended, the first with line number `first`; `read` as in `TextChunk`."""
+
+    buffer: NDArray[np.uint8]
+    first: int
+    newlines: int
+    read: int
+
+    def lines(self) -> TextChunk:
+        """The lines that are not blank."""
+        room = self.newlines + 1
+        starts, stops, line = (np.empty(room, dtype=np.int64) for _ in range(3))
+        plain = np.empty(room, dtype=np.bool_)
+        count = find_lines(self.buffer, self.first, starts, stops, line, plain)
+        return TextChunk(self.buffer, starts[:count], stops[:count], line[:count], plain[:count], self.read)
+
+
 def read_chunks(path: Path, size: int = CHUNK) -> Iterator[TextChunk]:
     """The lines of a file, decompressed by its ending (.gz, .bz2), in chunks of about `size` bytes.
 
     Raises LineListError naming the file where it cannot be read, is damaged, or is no text of lines.
     """
+    return (raw.lines() for raw in read_raw(path, size))
+
+
+def read_raw(path: Path, size: int = CHUNK) -> Iterator[RawText]:
+    """The same bytes with the lines still to be found, so that several threads can do that."""
     number = 1
     for block, read in _whole_lines(path, size):
         buffer = np.frombuffer(block, dtype=np.uint8)
         newlines = count_newlines(buffer)
-        room = newlines + 1
-        starts, stops, line = (np.empty(room, dtype=np.int64) for _ in range(3))
-        plain = np.empty(room, dtype=np.bool_)
-        count = find_lines(buffer, number, starts, stops, line, plain)
+        yield RawText(buffer, number, newlines, read)
         number += newlines
-        yield TextChunk(buffer, starts[:count], stops[:count], line[:count], plain[:count], read)
 
 
 def read_text(path: Path) -> bytes:
@@ -71,7 +90,7 @@ def read_text(path: Path) -> bytes:
     return b"".join(block for block, _ in _blocks(path, CHUNK))
 
 
-def _whole_lines(path: Path, size: int) -> Iterator[tuple[bytes, int]]:
+def _whole_lines(path: Path, size: int) -> Iterator[tuple[bytes | memoryview, int]]:
     rest, read = b"", 0
     for block, read in _blocks(path, size):
         cut = block.rfind(b"\n") + 1
@@ -80,7 +99,9 @@ def _whole_lines(path: Path, size: int) -> Iterator[tuple[bytes, int]]:
             if len(rest) > max(size, LONGEST_LINE):
                 raise LineListError(problem(path, f"no line end in {len(rest)} bytes", expected="a text of lines"))
             continue
-        yield rest + block[:cut], read
+        # A view where nothing is left over from before, else one copy.
+        whole = memoryview(block)[:cut]
+        yield b"".join((rest, whole)) if rest else whole, read
         rest = block[cut:]
     if rest:
         yield rest, read

@@ -22,7 +22,7 @@ from opacity.line_list.exomol.states import States
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
 from opacity.line_list.packed import PackedLines, WidthClasses, encode_energy, encode_intensity
-from opacity.line_list.text import TextChunk, read_chunks
+from opacity.line_list.text import RawText, TextChunk, read_raw
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
 
@@ -74,13 +74,15 @@ def transition_batches(
     Raises LineListError for the first row that can't be right unless `leave_out`, or for a file without rows.
     """
 
-    def work(chunk: TextChunk) -> Batch:
-        return _batch(path, chunk, join, leave_out, range)
+    def work(raw: RawText) -> Batch | None:
+        chunk = raw.lines()
+        return _batch(path, chunk, join, leave_out, range) if len(chunk) else None
 
     empty = True
-    for batch in in_order(work, (chunk for chunk in read_chunks(path) if len(chunk)), executor):
-        empty = False
-        yield batch
+    for batch in in_order(work, read_raw(path), executor):
+        if batch is not None:
+            empty = False
+            yield batch
     if empty:
         raise LineListError(problem(path, "holds no transition", expected="rows", remedy="fetch the file again"))
 
