@@ -66,13 +66,18 @@ def record_batches(
             lines = lines.select(within, "outside the range asked for")
         return Batch(pack(lines), lines.isotopologues, lines.basis, lines.ledger, chunk.read)
 
+    yield from not_empty(in_order(work, read_raw(path), executor), path, "record")
+
+
+def not_empty(batches: Iterable[Batch | None], path: Path, what: str) -> Iterator[Batch]:
+    """The batches that are there.  Raises LineListError at the end if there was none."""
     empty = True
-    for batch in in_order(work, read_raw(path), executor):
+    for batch in batches:
         if batch is not None:
             empty = False
             yield batch
     if empty:
-        raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
+        raise LineListError(problem(path, f"holds no {what}", expected="lines", remedy="fetch the file again"))
 
 
 def in_order(work: Callable[[Item], Result], items: Iterable[Item], executor: Executor | None) -> Iterator[Result]:

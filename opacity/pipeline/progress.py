@@ -5,26 +5,24 @@ from __future__ import annotations
 import sys
 import time
 from types import TracebackType
-from typing import Any
+from typing import Any, Self
 
 from tqdm import tqdm
 
 SECONDS_BETWEEN_LINES = 30.0
 
 
-class Progress:
-    """Counts steps of one stage; use it in a `with` statement.  With `quiet` nothing is printed."""
+class Bar:
+    """A bar on a terminal, where there is one and it is wanted; use it in a `with` statement."""
 
-    def __init__(self, stage: str, total: int, unit: str, quiet: bool = False) -> None:
-        self.stage, self.total, self.unit = stage, total, unit
-        self.done = 0
-        self._started = self._printed = time.monotonic()
+    def __init__(self, quiet: bool, **look: Any) -> None:
         self._quiet = quiet
+        self._started = self._printed = time.monotonic()
         self._bar: Any = None
         if not quiet and sys.stderr.isatty():
-            self._bar = tqdm(total=total, desc=stage, unit=f" {unit}", leave=False, file=sys.stderr)
+            self._bar = tqdm(leave=False, file=sys.stderr, **look)
 
-    def __enter__(self) -> Progress:
+    def __enter__(self) -> Self:
         return self
 
     def __exit__(
@@ -32,6 +30,15 @@ class Progress:
     ) -> None:
         if self._bar is not None:
             self._bar.close()
+
+
+class Progress(Bar):
+    """Counts steps of one stage; use it in a `with` statement.  With `quiet` nothing is printed."""
+
+    def __init__(self, stage: str, total: int, unit: str, quiet: bool = False) -> None:
+        super().__init__(quiet, total=total, desc=stage, unit=f" {unit}")
+        self.stage, self.total, self.unit = stage, total, unit
+        self.done = 0
 
     def step(self) -> None:
         """One step is done."""
@@ -50,26 +57,13 @@ class Progress:
         print(f"{self.stage}: {self.done} of {self.total} {self.unit}, {left:.0f} s left", file=sys.stderr, flush=True)
 
 
-class RecordProgress:
+class RecordProgress(Bar):
     """Counts records while files of known size are read; use it in a `with` statement.  Rate and time left by bytes."""
 
     def __init__(self, stage: str, total_bytes: int, quiet: bool = False) -> None:
+        super().__init__(quiet, total=total_bytes, desc=stage, unit="B", unit_scale=True)
         self.stage, self.total = stage, total_bytes
         self.records = self.position = 0
-        self._started = self._printed = time.monotonic()
-        self._quiet = quiet
-        self._bar: Any = None
-        if not quiet and sys.stderr.isatty():
-            self._bar = tqdm(total=total_bytes, desc=stage, unit="B", unit_scale=True, leave=False, file=sys.stderr)
-
-    def __enter__(self) -> RecordProgress:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        if self._bar is not None:
-            self._bar.close()
 
     def add(self, records: int, n_bytes: int) -> None:
         """So many records more, and so many bytes of their file."""

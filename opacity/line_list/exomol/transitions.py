@@ -16,7 +16,7 @@ from opacity.constants import REFERENCE_TEMPERATURE
 from opacity.errors import LineListError, problem
 from opacity.kernels import transitions as kernel
 from opacity.kernels.text import read_rows
-from opacity.line_list.batches import Batch, in_order
+from opacity.line_list.batches import Batch, in_order, not_empty
 from opacity.line_list.exomol.broadening import BroadeningTable, widths
 from opacity.line_list.exomol.states import States
 from opacity.line_list.ledger import Ledger
@@ -78,13 +78,7 @@ def transition_batches(
         chunk = raw.lines()
         return _batch(path, chunk, join, leave_out, range) if len(chunk) else None
 
-    empty = True
-    for batch in in_order(work, read_raw(path), executor):
-        if batch is not None:
-            empty = False
-            yield batch
-    if empty:
-        raise LineListError(problem(path, "holds no transition", expected="rows", remedy="fetch the file again"))
+    yield from not_empty(in_order(work, read_raw(path), executor), path, "transition")
 
 
 def _batch(path: Path, chunk: TextChunk, join: StateJoin, leave_out: bool, range: tuple[float, float] | None) -> Batch:

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 import sys
 import time
-from types import TracebackType
-from typing import Any
 
 from tqdm import tqdm
+
+from opacity.pipeline.progress import Bar
 
 SECONDS_BETWEEN_LINES = 30.0
 
@@ -21,30 +21,17 @@ def in_bytes(count: float) -> str:
     return f"{count:.3g} TB"
 
 
-class ByteProgress:
+class ByteProgress(Bar):
     """Progress of one file; use it in a `with` statement.  With `quiet` nothing is printed.
 
     The rate counts what came over the line since the start, not what a former run had left.
     """
 
     def __init__(self, name: str, quiet: bool = False) -> None:
+        super().__init__(quiet, desc=name, unit="B", unit_scale=True)
         self._name = name
-        self._quiet = quiet
         self._position = self._received = 0
         self._total: int | None = None
-        self._started = self._printed = time.monotonic()
-        self._bar: Any = None
-        if not quiet and sys.stderr.isatty():
-            self._bar = tqdm(desc=name, unit="B", unit_scale=True, leave=False, file=sys.stderr)
-
-    def __enter__(self) -> ByteProgress:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        if self._bar is not None:
-            self._bar.close()
 
     def start(self, position: int, total: int | None) -> None:
         """The transfer begins, or begins anew, at a position (bytes) of a file of `total` bytes."""
