@@ -100,6 +100,14 @@ def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: b
             raise InputError(
                 problem("options", "a catalogue does not name its molecule", expected="formula and isotopologue")
             )
+        if options.widths:
+            raise LineListError(
+                problem(
+                    path,
+                    "J'' is not read from catalogues, so that broadening files cannot serve them",
+                    remedy="give [broadening.default] widths",
+                )
+            )
         return catalogue_lines(
             path,
             formula=options.formula,

@@ -110,26 +110,32 @@ def load_inputs(
     else:
         source, used = _stored(recipe, stores, lower, upper, choices, ledger)
     provenance = _provenance(recipe, used.isotopologues, used.partition, ledger.read, lists, origin)
-    warnings = _states_against_file(recipe, lists)
+    comparison, warnings = _states_against_file(recipe, lists)
+    provenance["partition_function"] |= comparison
     return Inputs(source, used.isotopologues, used.partition, provenance, origin, warnings)
 
 
-def _states_against_file(recipe: Recipe, lists: Sequence[_OpenList]) -> tuple[str, ...]:
-    """What a partition-function file differs from the sum over the list's own states, at the grid's temperatures."""
+def _states_against_file(recipe: Recipe, lists: Sequence[_OpenList]) -> tuple[dict[str, Any], tuple[str, ...]]:
+    """How a partition-function file compares with the sum over the list's own states at the grid's temperatures.
+
+    The largest relative difference for the provenance, and a warning where it is more than 0.1 %.
+    """
     path = recipe.partition_function.path
     summed = [one.facts["states"] for one in lists if "states" in one.facts]
     if path is None or not summed:
-        return ()
+        return {}, ()
     states = from_states(summed[0]["temperature"], summed[0]["partition"], summed[0]["highest_energy"])
     file = from_file(path)
     both = [t for t in {t for t, _ in recipe.grid.node_list()} if states.holds(t) and file.holds(t)]
     if not both:
-        return ()
+        return {}, ()
     worst = max(both, key=lambda t: abs(file(t) / states(t) - 1.0))
-    difference = 100.0 * (file(worst) / states(worst) - 1.0)
-    if abs(difference) < STATES_AGREE:
-        return ()
-    return (f"{path.name} differs by {difference:+.2g} % from the sum over the list's states at {worst:g} K",)
+    difference = file(worst) / states(worst) - 1.0
+    found = {"over_sum_of_states": {"largest_difference": difference, "temperature": worst}}
+    if 100.0 * abs(difference) < STATES_AGREE:
+        return found, ()
+    words = f"{path.name} differs by {100.0 * difference:+.2g} % from the sum over the list's states at {worst:g} K"
+    return found, (words,)
 
 
 def _stored(

@@ -163,3 +163,13 @@ def test_check_of_a_list_reports(capsys: pytest.CaptureFixture[str]) -> None:
     out = capsys.readouterr().out
     assert "202 of CO" in out
     assert "no pressure shift by h2" in out
+
+
+def test_a_partition_file_is_compared_with_the_states(tmp_path: Path, data_set: Path) -> None:
+    """The sample has two states for each line, so that the sum over them is far from Q of the molecule."""
+    path = write_recipe(tmp_path, "file", list=EXOMOL, partition='source = "file"')
+    (table,) = opacity.build(opacity.load_recipe(path), tmp_path / "out")
+    with opacity.open_table(table) as opened:
+        found = opened.provenance["partition_function"]["over_sum_of_states"]
+        assert abs(found["largest_difference"]) > 0.1
+        assert any("differs by" in warning and "co.pf" in warning for warning in opened.checks["warnings"])
