@@ -200,7 +200,7 @@ def _cutoff_rule(cutoff: float | Cutoff) -> Cutoff:
     return Cutoff((CutoffStep(number),))
 
 
-def plan(recipe: Recipe, folder: str | Path = "tables") -> Plan:
+def plan(recipe: Recipe, folder: str | Path = "tables", *, memory: int = 2_000_000_000, quiet: bool = True) -> Plan:
     """What a build of the recipe into a folder will do and need.
 
     Raises OpacityError of the kind that fits where the recipe's lines cannot be used; whether the build fits into
@@ -209,7 +209,7 @@ def plan(recipe: Recipe, folder: str | Path = "tables") -> Plan:
     from opacity.pipeline.inputs import load_inputs
     from opacity.pipeline.plan import make_plan
 
-    return make_plan(recipe, load_inputs(recipe, Path(folder)), Path(folder))
+    return make_plan(recipe, load_inputs(recipe, Path(folder), memory=memory, quiet=quiet), Path(folder))
 
 
 def build(recipe: Recipe, folder: str | Path = "tables", *, workers: int | None = None) -> tuple[Path, ...]:

@@ -48,7 +48,7 @@ def plan(arguments: Namespace) -> int:
     from opacity.api import plan as make_plan
     from opacity.recipe.load import load_recipe
 
-    made = make_plan(load_recipe(arguments.recipe), arguments.output)
+    made = make_plan(load_recipe(arguments.recipe), arguments.output, memory=arguments.memory, quiet=arguments.quiet)
     if arguments.json:
         print(text.as_json(made.as_dict()))
     else:

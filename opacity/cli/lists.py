@@ -24,6 +24,9 @@ def ingest(arguments: Namespace) -> int:
     recipe = load_recipe(arguments.recipe)
     stores: list[dict[str, Any]] = []
     for source in recipe.line_lists:
+        if source.format == "catalogue":
+            stores.append({"files": list(source.files), "store": None})
+            continue
         store, made = ensure_store(recipe, source, Path(arguments.output), arguments.memory, arguments.quiet)
         with store:
             index = store.index
@@ -46,6 +49,8 @@ def ingest(arguments: Namespace) -> int:
 
 
 def _store_facts(one: dict[str, Any]) -> list[tuple[str, str]]:
+    if one["store"] is None:
+        return [("list", ", ".join(one["files"])), ("store", "none: catalogues are read for each build")]
     ledger = one["ledger"]
     lines = [
         ("list", ", ".join(one["files"])),

@@ -75,8 +75,10 @@ def parser() -> argparse.ArgumentParser:
     _add_memory(one)
     _add_shared(one)
 
-    one = command("plan", "say what a build will do and need, without computing")
+    one = command("plan", "say what a build will do and need, without computing (large lists are read into stores)")
     one.add_argument("recipe", metavar="RECIPE")
+    one.add_argument("--quiet", action="store_true", help="no progress")
+    _add_memory(one)
     _add_shared(one)
 
     one = command("build", "build the table of a recipe, with its checks inside")

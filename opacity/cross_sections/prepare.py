@@ -24,6 +24,9 @@ from opacity.molecule import partition_function as pf
 from opacity.molecule.broadening import Assumption, LineBroadening, resolve_broadening
 from opacity.molecule.isotopologue import Isotopologue
 
+PartitionChoice = str | Path | Mapping[str, pf.PartitionFunction]
+"""A TIPS edition, a file of T and Q, or partition functions by isotopologue."""
+
 
 @dataclass(frozen=True)
 class NodeLines:
@@ -119,7 +122,7 @@ class PreparedLines:
 def prepare(
     lines: LineList,
     *,
-    partition_function: str | Path | pf.PartitionFunction,
+    partition_function: PartitionChoice,
     abundance: str | Mapping[str, float],
     broadeners: Mapping[str, float],
     defaults: Mapping[str, DefaultWidth] | None = None,
@@ -171,10 +174,19 @@ def _check_mixture(broadeners: Mapping[str, float]) -> None:
         ).about("broadeners")
 
 
-def partition_of(choice: str | Path | pf.PartitionFunction, isotopologue: Isotopologue) -> pf.PartitionFunction:
+def partition_of(choice: PartitionChoice, isotopologue: Isotopologue) -> pf.PartitionFunction:
     """The partition function of an isotopologue: a TIPS edition by name, or a file of T and Q."""
-    if isinstance(choice, pf.PartitionFunction):
-        return choice
+    if isinstance(choice, Mapping):
+        if isotopologue.formula not in choice:
+            raise MoleculeError(
+                problem(
+                    "partition_function",
+                    f"no states are there to sum for {isotopologue.formula}",
+                    expected=f"states of {', '.join(choice)} only",
+                    remedy="choose another source",
+                )
+            ).about("partition_function")
+        return choice[isotopologue.formula]
     if isinstance(choice, Path):
         return pf.from_file(choice)
     if isinstance(choice, str) and choice in pf.TIPS_EDITIONS:

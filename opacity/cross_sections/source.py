@@ -14,6 +14,7 @@ from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
 from opacity.line_list.read import merge
+from opacity.line_store.layout import SAMPLE_EVERY
 from opacity.molecule.broadening import Assumption
 
 LINES_AT_ONCE = 2_000_000
@@ -36,6 +37,9 @@ class LineSource(Protocol):
 
     def window(self, lower: float, upper: float) -> PreparedLines:
         """The lines from one wavenumber to another (cm-1), ends included; margins are the caller's to add."""
+
+    def count(self, lower: float, upper: float) -> int:
+        """How many lines that window holds."""
 
     def stretches(self) -> Iterator[PreparedLines]:
         """All lines, each once, some at a time in order of wavenumber."""
@@ -60,13 +64,26 @@ def exact_points(
     margin = max(cutoff_at(pressure) for _, pressure, _ in requests)
     everywhere = np.unique(np.concatenate([points for _, _, points in requests]))
     for group in point_groups(everywhere, source):
-        lines = source.window(float(group[0]) - margin - 1e-6, float(group[-1]) + margin + 1e-6)
-        for number, (temperature, pressure, points) in enumerate(requests):
-            here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
-            if here.size:
-                node = lines.at(temperature, pressure)
-                found[number][here] = exact_at(node, points[here], cutoff_at(pressure), plinth)
+        lower, upper = float(group[0]) - margin - 1e-6, float(group[-1]) + margin + 1e-6
+        for lines in pieces(source, lower, upper):
+            for number, (temperature, pressure, points) in enumerate(requests):
+                here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
+                if here.size:
+                    node = lines.at(temperature, pressure)
+                    found[number][here] += exact_at(node, points[here], cutoff_at(pressure), plinth)
     return found
+
+
+def pieces(source: LineSource, lower: float, upper: float) -> Iterator[PreparedLines]:
+    """The lines from one wavenumber to another, ends included, in parts that can be held at once."""
+    middle = 0.5 * (lower + upper)
+    if source.count(lower, upper) <= LINES_AT_ONCE or not lower < middle < upper:
+        lines = source.window(lower, upper)
+        if len(lines):
+            yield lines
+        return
+    yield from pieces(source, lower, middle)
+    yield from pieces(source, float(np.nextafter(middle, np.inf)), upper)
 
 
 def point_groups(points: FloatArray, source: LineSource) -> list[FloatArray]:
@@ -103,6 +120,11 @@ class HeldLines:
         low = int(np.searchsorted(self.lines.wavenumber, lower, side="left"))
         high = int(np.searchsorted(self.lines.wavenumber, upper, side="right"))
         return self.lines if high - low == len(self.lines) else self.lines.part(slice(low, high))
+
+    def count(self, lower: float, upper: float) -> int:
+        """How many lines that window holds."""
+        nu = self.lines.wavenumber
+        return int(np.searchsorted(nu, upper, side="right") - np.searchsorted(nu, lower, side="left"))
 
     def stretches(self) -> Iterator[PreparedLines]:
         """All lines at once."""
@@ -151,8 +173,9 @@ class ListInMemory:
         return [float(self.lines.wavenumber[0])] if len(self.lines) else []
 
     def sample(self) -> FloatArray:
-        """All wavenumbers."""
-        return self.lines.wavenumber
+        """As a line store gives them: every 4096th wavenumber and the last."""
+        nu = self.lines.wavenumber
+        return np.append(nu[::SAMPLE_EVERY], nu[-1:])
 
 
 def as_source(lines: LineSource | PreparedLines) -> LineSource:
@@ -177,7 +200,13 @@ class StoredLines:
     def window(self, lower: float, upper: float) -> PreparedLines:
         """The lines from one wavenumber to another, read from disk."""
         lower, upper = max(lower, self.lower), min(upper, self.upper)
-        return self.prepare(merge([store.window(lower, upper) for store in self.stores]))
+        # The selection drops isotopologues that have no line here.
+        return self.prepare(merge([store.window(lower, upper) for store in self.stores]).select(slice(None)))
+
+    def count(self, lower: float, upper: float) -> int:
+        """How many lines that window holds, before any is left out for its isotopologue."""
+        lower, upper = max(lower, self.lower), min(upper, self.upper)
+        return sum(store.count(lower, upper) for store in self.stores)
 
     def stretches(self) -> Iterator[PreparedLines]:
         """All lines, a segment's worth at a time."""
@@ -186,9 +215,7 @@ class StoredLines:
         # The end of a stretch belongs to it; the next one starts just above.
         tops = [*(float(np.nextafter(edge, -np.inf)) for edge in edges[1:]), self.upper]
         for low, high in zip(edges, tops, strict=True):
-            lines = self.window(low, high)
-            if len(lines):
-                yield lines
+            yield from pieces(self, low, high)
 
     def sample(self) -> FloatArray:
         """Every 4096th wavenumber of the stores, and their ends."""

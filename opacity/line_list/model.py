@@ -70,7 +70,7 @@ class LineList:
         """Formula of the molecule, empty for a list without lines."""
         return self.isotopologues[0].molecule_formula if self.isotopologues else ""
 
-    def select(self, which: NDArray[np.bool_] | NDArray[np.intp], reason: str | None = None) -> LineList:
+    def select(self, which: NDArray[np.bool_] | NDArray[np.intp] | slice, reason: str | None = None) -> LineList:
         """The lines picked by a mask or an index; with `reason` the others are entered in the ledger.
 
         Isotopologues of which no line is left are no longer among `isotopologues`.

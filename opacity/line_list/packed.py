@@ -219,17 +219,30 @@ def join(parts: Sequence[PackedLines]) -> PackedLines:
     )
 
 
-def count_identical(packed: PackedLines) -> int:
+@dataclass(frozen=True)
+class Identical:
+    """Lines identical to another: how many `within` one file, how many `across` files, and two such files' numbers."""
+
+    within: int
+    across: int
+    files: tuple[int, int] | None
+
+
+def count_identical(packed: PackedLines) -> Identical:
     """How many of the sorted lines agree with another in wavenumber, intensity, energy and isotopologue."""
     same = np.diff(packed.wavenumber) == 0.0
     beside = np.flatnonzero(np.concatenate([same, [False]]) | np.concatenate([[False], same]))
-    isotopologue = packed.classes.isotopologue[packed.width_class[beside]]
+    index = packed.width_class[beside]
+    isotopologue, file = packed.classes.isotopologue[index], packed.classes.file[index]
     columns = (packed.intensity[beside], packed.lower_energy[beside], isotopologue, packed.wavenumber[beside])
-    order = np.lexsort(columns)
+    order = np.lexsort((file, *columns))
     equal = np.ones(max(order.size - 1, 0), dtype=bool)
     for column in columns:
         equal &= column[order][1:] == column[order][:-1]
-    return int(np.count_nonzero(equal))
+    file = file[order]
+    across = np.flatnonzero(equal & (file[1:] != file[:-1]))
+    files = (int(file[across[0]]), int(file[across[0] + 1])) if across.size else None
+    return Identical(int(np.count_nonzero(equal)) - across.size, across.size, files)
 
 
 def used_classes(packed: PackedLines) -> PackedLines:

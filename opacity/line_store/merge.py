@@ -1,4 +1,4 @@
-"""Many sorted segments into one sequence of sorted segments, holding few lines at a time."""
+"""Many sorted segments into one sequence of sorted stretches, holding few lines at a time."""
 
 from __future__ import annotations
 
@@ -11,34 +11,77 @@ from pathlib import Path
 import numpy as np
 
 from opacity.grids import FloatArray
-from opacity.line_list.packed import PackedLines, join, used_classes
+from opacity.line_list.packed import PackedLines, join
 from opacity.line_store.layout import SAMPLE_EVERY, Segment
 from opacity.line_store.segment import SegmentReader, verify_segment
 
-MOST_OPEN = 400
+MOST_OPEN = 64
+_SHORTEST = 1e-6
 
 
-def merged(folder: Path, parts: Sequence[Segment], lines_at_once: int) -> Iterator[PackedLines]:
-    """All lines of the parts in order of wavenumber, in stretches of at most about `lines_at_once` lines.
+def merged(folder: Path, parts: Sequence[Segment], weight_at_once: int) -> Iterator[PackedLines]:
+    """All lines of the parts in order of wavenumber, in stretches that weigh about `weight_at_once` at most.
 
-    Lines of equal wavenumber keep the order of the parts and are never torn apart between stretches.
+    A line weighs 1, a class 2 and another 1 for each broadener.  Lines of equal wavenumber keep the order of the parts
+    and are never torn apart between stretches.
     """
-    edges = boundaries(parts, lines_at_once)
     with closing(OpenSegments(folder)) as segments:
-        for lower, upper in itertools.pairwise(edges):
+        for lower, upper in itertools.pairwise(boundaries(parts, weight_at_once)):
             reaching = [part for part in parts if part.first < upper and part.last >= lower]
-            pieces = [segments.get(part).read(float(lower), float(upper)) for part in reaching]
-            pieces = [used_classes(piece) for piece in pieces if len(piece)]
-            if pieces:
-                yield join(pieces)
+            for low, high in itertools.pairwise(_finer(segments, reaching, float(lower), float(upper), weight_at_once)):
+                within = [part for part in reaching if part.first < high and part.last >= low]
+                pieces = [segments.get(part).read(float(low), float(high)) for part in within]
+                pieces = [piece for piece in pieces if len(piece)]
+                if pieces:
+                    yield join(pieces)
+
+
+def _finer(
+    segments: OpenSegments, parts: Sequence[Segment], lower: float, upper: float, weight_at_once: int
+) -> FloatArray:
+    """The stretch's ends, and edges between where its lines and their classes weigh more than was estimated."""
+    lines = weight = 0
+    for part in parts:
+        reader = segments.get(part)
+        count = reader.count(lower, upper)
+        lines += count
+        weight += count + min(count, reader.classes) * reader.class_weight
+    pieces = -(-weight // weight_at_once)
+    if pieces <= 1 or 4 * weight <= 5 * weight_at_once:
+        return np.array([lower, upper])
+    values = np.sort(np.concatenate([segments.get(part).wavenumbers(lower, upper) for part in parts]))
+    step = max(-(-lines // pieces), 1)
+    inner = np.unique(values[step::step])
+    return np.concatenate([[lower], inner[inner > lower], [upper]])
 
 
 def boundaries(parts: Sequence[Segment], lines_at_once: int) -> FloatArray:
-    """Wavenumbers that part the lines into stretches of at most about `lines_at_once`, first and last beyond all."""
-    samples = np.sort(np.concatenate([np.asarray(part.sample) for part in parts]))
-    every = max(lines_at_once // SAMPLE_EVERY - len(parts), 1)
-    inner = np.unique(samples[every::every])
-    return np.concatenate([[-np.inf], inner, [np.inf]])
+    """Wavenumbers that part the lines into stretches of about `lines_at_once`, first and last beyond all.
+
+    Each sample stands for the lines up to the next one of its part, taken to be spread evenly between the two.
+    """
+    starts, ends, weights = (np.concatenate(column) for column in zip(*map(_blocks, parts), strict=True))
+    spread = ends - starts > _SHORTEST
+    rate = weights[spread] / (ends - starts)[spread]
+    place = np.concatenate([starts[spread], ends[spread], starts[~spread]])
+    change = np.concatenate([rate, -rate, np.zeros(int((~spread).sum()))])
+    jump = np.concatenate([np.zeros(2 * rate.size), weights[~spread]])
+    order = np.argsort(place, kind="stable")
+    place = place[order]
+    rates = np.cumsum(change[order])
+    total = np.cumsum(jump[order]) + np.concatenate([[0.0], np.cumsum(rates[:-1] * np.diff(place))])
+    total = np.maximum.accumulate(total)
+    pieces = max(int(np.ceil(float(weights.sum()) / lines_at_once)), 1)
+    inner = np.interp(float(total[-1]) * np.arange(1, pieces) / pieces, total, place)
+    return np.concatenate([[-np.inf], np.unique(inner), [np.inf]])
+
+
+def _blocks(part: Segment) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """First and last wavenumbers of a part's blocks, and how many lines each holds."""
+    sample = np.asarray(part.sample)
+    weights = np.full(sample.size - 1, float(SAMPLE_EVERY))
+    weights[-1] = part.lines - (sample.size - 2) * SAMPLE_EVERY
+    return sample[:-1], sample[1:], weights
 
 
 class OpenSegments:

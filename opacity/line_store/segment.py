@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import hashlib
+import os
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -10,11 +12,15 @@ import h5py
 import numpy as np
 
 from opacity.errors import LineListError, problem
-from opacity.line_list.packed import PackedLines, WidthClasses, used_classes
+from opacity.grids import FloatArray
+from opacity.line_list.packed import PackedLines, WidthClasses, classes_of, used_classes
 from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, SAMPLE_EVERY, Segment
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.provenance import file_sha256
 from opacity.tables.atomic import write_atomically
+
+HELD_CLASSES = 4096
+"""Tables of classes up to this length stay in memory while their segment is open."""
 
 _UNITS = {
     "wavenumber": "cm-1",
@@ -27,7 +33,10 @@ _UNITS = {
 
 def write_segment(folder: Path, name: str, packed: PackedLines) -> Segment:
     """Write sorted lines to a file of the folder.  Raises ResourceError where the file system refuses."""
-    packed = used_classes(packed)
+    # Classes in the order in which lines come to them, so that those of a stretch of lines lie together.
+    index, first = classes_of(np.ascontiguousarray(packed.width_class.astype(np.uint64)[:, np.newaxis]))
+    rows = packed.width_class[first].astype(np.int64)
+    packed = replace(packed, width_class=index, classes=packed.classes.select(rows))
     data = _image(packed)
     write_atomically(folder / name, data)
     nu = packed.wavenumber
@@ -67,38 +76,71 @@ def _image(packed: PackedLines) -> bytes:
 def verify_segment(folder: Path, segment: Segment) -> None:
     """Raise LineListError naming a segment that is missing or not as it was written."""
     path = folder / segment.file
-    if not path.is_file():
-        raise LineListError(problem(path, "segment of the line store is missing", remedy=_REMEDY))
+    try:
+        path.stat()
+    except FileNotFoundError as error:
+        raise LineListError(problem(path, "segment of the line store is missing", remedy=_REMEDY)) from error
+    except OSError as error:
+        raise _unreadable(path, error) from error
     if file_sha256(path) != segment.sha256:
         raise LineListError(problem(path, "segment of the line store is damaged (sha256 differs)", remedy=_REMEDY))
 
 
+def _unreadable(path: Path, error: Exception) -> LineListError:
+    """What to say of a segment that does not open: what the system said, or that the file is not one."""
+    if not isinstance(error, OSError):
+        return LineListError(problem(path, "segment of the line store cannot be read", remedy=_REMEDY))
+    reason = os.strerror(error.errno) if error.errno else " ".join(str(error).split())
+    return LineListError(problem(path, f"segment of the line store cannot be read ({reason})"))
+
+
+def _open(path: Path) -> Any:
+    """The file; without a lock where the file system has none, for a segment is never changed."""
+    try:
+        return h5py.File(path, "r")
+    except OSError:
+        return h5py.File(path, "r", locking=False)
+
+
 class SegmentReader:
-    """An open segment, read by stretches of wavenumber.  Its sha256 is the caller's to verify."""
+    """An open segment, read by stretches of wavenumber.  Its sha256 is the caller's to verify.
+
+    `classes` is how many classes it holds; `class_weight` what one of them weighs beside a line.
+    """
 
     def __init__(self, folder: Path, segment: Segment) -> None:
         self._path = folder / segment.file
         self._sample = np.asarray(segment.sample)
         self._lines = segment.lines
         try:
-            self._file = h5py.File(self._path, "r")
+            self._file = _open(self._path)
             self._columns = {name: self._file[name] for name in _UNITS}
-            self._classes = _read_classes(self._file["classes"])
+            self._table = self._file["classes"]
+            self.classes = int(self._table["isotopologue"].size)
+            self.class_weight = 2 + len(self._table.get("broadeners", ()))
+            self._held = _read_classes(self._table, 0, self.classes) if self.classes <= HELD_CLASSES else None
         except (OSError, KeyError, RuntimeError, ValueError) as error:
-            raise LineListError(
-                problem(self._path, "segment of the line store cannot be read", remedy=_REMEDY)
-            ) from error
+            raise _unreadable(self._path, error) from error
 
     def close(self) -> None:
         """Close the file."""
         self._file.close()
 
     def read(self, lower: float, upper: float) -> PackedLines:
-        """The lines with lower <= wavenumber < upper."""
+        """The lines with lower <= wavenumber < upper, with the classes that they use."""
         first, last = self._place(lower), self._place(upper)
         columns = {name: stored[first:last] for name, stored in self._columns.items()}
-        columns["width_class"] = columns["width_class"].astype(np.uint32)
-        return PackedLines(**columns, classes=self._classes)
+        index = columns["width_class"].astype(np.uint32)
+        start, table = 0, self._held
+        if table is None:
+            start, stop = (int(index.min()), int(index.max()) + 1) if index.size else (0, 0)
+            table = _read_classes(self._table, start, stop)
+        columns["width_class"] = index - np.uint32(start)
+        return used_classes(PackedLines(**columns, classes=table))
+
+    def wavenumbers(self, lower: float, upper: float) -> FloatArray:
+        """The wavenumbers with lower <= wavenumber < upper."""
+        return np.asarray(self._columns["wavenumber"][self._place(lower) : self._place(upper)])
 
     def count(self, lower: float, upper: float) -> int:
         """How many lines have lower <= wavenumber < upper."""
@@ -117,11 +159,12 @@ class SegmentReader:
 _REMEDY = "remove the store's folder: it is made again from the line lists"
 
 
-def _read_classes(group: Any) -> WidthClasses:
-    isotopologue = group["isotopologue"][...]
+def _read_classes(group: Any, start: int, stop: int) -> WidthClasses:
+    """Some rows of the table of classes."""
+    isotopologue = group["isotopologue"][start:stop]
     nothing = np.full(isotopologue.size, np.nan)
     broadeners = {}
     for name, one in group.get("broadeners", {}).items():
-        kinds = [one[kind][...] if kind in one else nothing for kind in ("gamma", "exponent", "shift")]
+        kinds = [one[kind][start:stop] if kind in one else nothing for kind in ("gamma", "exponent", "shift")]
         broadeners[name] = BroadenerColumns(*kinds)
-    return WidthClasses(isotopologue, group["file"][...], broadeners)
+    return WidthClasses(isotopologue, group["file"][start:stop], broadeners)

@@ -18,7 +18,7 @@ import numpy as np
 from opacity.check.run import run_checks
 from opacity.cross_sections.compute import spectrum
 from opacity.cross_sections.prepare import PreparedLines
-from opacity.cross_sections.source import LINES_AT_ONCE, LineSource, as_source
+from opacity.cross_sections.source import LINES_AT_ONCE, LineSource, as_source, pieces
 from opacity.cross_sections.tolerance import Regions, regions
 from opacity.errors import ResourceError, TableError, problem
 from opacity.grids import FloatArray
@@ -136,7 +136,7 @@ def compute_spectra(recipe: Recipe, lines: LineSource | PreparedLines, workers: 
         ) from error
     executor = ThreadPoolExecutor(workers) if workers > 1 else None
     try:
-        parts = windows(grid.wavenumber.size, source)
+        parts = windows(grid.wavenumber, _margin(recipe), source)
         with Progress("spectra", len(nodes) * len(parts), "spectra of windows", quiet) as progress:
             for part in parts:
                 _fill(sigma, part, recipe, source, limits, executor, progress)
@@ -148,11 +148,22 @@ def compute_spectra(recipe: Recipe, lines: LineSource | PreparedLines, workers: 
     return sigma.reshape(len(grid.temperature), len(grid.pressure), -1)
 
 
-def windows(points: int, lines: LineSource) -> list[slice]:
-    """Stretches of the grid, multiples of 16384 points, so many that the lines of each can be held at once."""
-    count = 1 if len(lines) <= LINES_AT_ONCE else math.ceil(2.0 * len(lines) / LINES_AT_ONCE)
-    size = BLOCK * math.ceil(points / count / BLOCK)
-    return [slice(start, min(start + size, points)) for start in range(0, points, size)]
+def windows(wavenumber: FloatArray, margin: float, lines: LineSource) -> list[slice]:
+    """Stretches of the grid, multiples of 16384 points, so short that the lines in reach of each can be held at once.
+
+    The shortest are one block of 16384 points, however many lines reach it.
+    """
+    found, waiting = [], [(0, wavenumber.size)]
+    while waiting:
+        start, stop = waiting.pop()
+        blocks = math.ceil((stop - start) / BLOCK)
+        lower, upper = float(wavenumber[start]) - margin, float(wavenumber[stop - 1]) + margin
+        if blocks == 1 or lines.count(lower, upper) <= LINES_AT_ONCE:
+            found.append(slice(start, stop))
+        else:
+            middle = start + BLOCK * (blocks // 2)
+            waiting += [(middle, stop), (start, middle)]
+    return found
 
 
 def _fill(
@@ -165,16 +176,21 @@ def _fill(
     progress: Progress,
 ) -> None:
     nu = np.ascontiguousarray(recipe.grid.wavenumber[part])
-    margin = max(step.cutoff for step in recipe.profile.cutoff.steps) + 1e-6
-    lines = source.window(float(nu[0]) - margin, float(nu[-1]) + margin)
-    strengths: dict[float, FloatArray] = {}
-    for row, (temperature, pressure) in enumerate(recipe.grid.node_list()):
-        if temperature not in strengths:
-            strengths = {temperature: lines.strengths(temperature)}
-        node = lines.at(temperature, pressure, strengths[temperature])
-        cutoff = recipe.profile.cutoff.at(pressure)
-        sigma[row, part] = spectrum(node, nu, cutoff, limits, recipe.profile.plinth, executor)
-        progress.step()
+    margin, nodes = _margin(recipe), recipe.grid.node_list()
+    sigma[:, part] = 0.0
+    for lines in pieces(source, float(nu[0]) - margin, float(nu[-1]) + margin):
+        strengths: dict[float, FloatArray] = {}
+        for row, (temperature, pressure) in enumerate(nodes):
+            if temperature not in strengths:
+                strengths = {temperature: lines.strengths(temperature)}
+            node = lines.at(temperature, pressure, strengths[temperature])
+            cutoff = recipe.profile.cutoff.at(pressure)
+            sigma[row, part] += spectrum(node, nu, cutoff, limits, recipe.profile.plinth, executor)
+            progress.step()
+
+
+def _margin(recipe: Recipe) -> float:
+    return max(step.cutoff for step in recipe.profile.cutoff.steps) + 1e-6
 
 
 def _checked_table(recipe: Recipe, inputs: Inputs, sigma: FloatArray, path: Path, quiet: bool) -> CrossSectionTable:

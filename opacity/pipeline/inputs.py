@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-import contextlib
 from collections import Counter
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -17,38 +16,37 @@ from opacity.cross_sections.source import (
     LINES_AT_ONCE,
     HeldLines,
     LineSource,
-    ListInMemory,
     StoredLines,
     Windows,
 )
-from opacity.errors import LineListError, OpacityError, RecipeError, problem
+from opacity.errors import LineListError, RecipeError, problem
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
-from opacity.line_list.read import check_account, merge, read_lines
+from opacity.line_list.read import check_account, merge
 from opacity.molecule.broadening import Assumption
 from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
-from opacity.molecule.partition_function import PartitionFunction, from_file, from_states
+from opacity.molecule.partition_function import PartitionFunction
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
-from opacity.pipeline.sources import DEFAULT_MEMORY, ensure_store, find_store, is_small, read_options
+from opacity.pipeline.open_lists import (
+    KEYS,
+    OpenList,
+    definition_warnings,
+    located,
+    open_list,
+    refuse_overlap,
+    states_against_file,
+    summed_states,
+)
+from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.recipe.faults import faults_of, shown
-from opacity.recipe.model import LineListSource, Recipe
-from opacity.recipe.positions import KeyPath
+from opacity.recipe.model import Recipe
 
 _REFERENCES = {
     "TIPS-2021": "Gamache et al. 2021, JQSRT 271, 107713, doi:10.1016/j.jqsrt.2021.107713",
     "TIPS-2025": "Gamache et al. 2025, JQSRT 345, 109568, doi:10.1016/j.jqsrt.2025.109568",
 }
 
-_KEYS: dict[str, KeyPath] = {
-    "formula": ("molecule", "formula"),
-    "broadeners": ("broadening", "mixture"),
-    "abundance": ("isotopologues", "abundance"),
-    "partition_function": ("partition_function", "source"),
-}
-"""The recipe's key that makes the choice of an argument."""
 _MOST_SHOWN = 6
-STATES_AGREE = 0.1
-"""Per cent by which a partition-function file may differ from the sum over the states without a word."""
 
 
 @dataclass(frozen=True)
@@ -89,8 +87,8 @@ def load_inputs(
     """
     origin = known or fingerprint(recipe)
     _check_molecule(recipe)
-    lists = [_open(recipe, number, tables, memory, quiet) for number in range(len(recipe.line_lists))]
-    _refuse_overlap(recipe.line_lists, [one.spans for one in lists])
+    lists = [open_list(recipe, number, tables, memory, quiet) for number in range(len(recipe.line_lists))]
+    refuse_overlap(recipe.line_lists, [one.spans for one in lists])
     nu = recipe.grid.wavenumber
     margin = max(step.cutoff for step in recipe.profile.cutoff.steps)
     lower, upper = max(float(nu[0]) - margin, 0.0), float(nu[-1]) + margin
@@ -102,40 +100,24 @@ def load_inputs(
     in_reach = sum(store.count(lower, upper) for store in stores)
     ledger.leave_out("beyond the reach of the grid", ledger.kept - in_reach)
     if in_reach <= LINES_AT_ONCE:
-        lines = replace(merge([store.window(lower, upper) for store in stores]), ledger=ledger)
-        with _located(recipe, _KEYS):
+        # The selection drops isotopologues that have no line in reach.
+        lines = merge([store.window(lower, upper) for store in stores]).select(slice(None))
+        lines = replace(lines, ledger=ledger)
+        with located(recipe, KEYS):
             prepared = prepare(check_account(lines), **choices)
         source: LineSource = HeldLines(prepared)
         used = prepared
     else:
         source, used = _stored(recipe, stores, lower, upper, choices, ledger)
     provenance = _provenance(recipe, used.isotopologues, used.partition, ledger.read, lists, origin)
-    comparison, warnings = _states_against_file(recipe, lists)
+    provenance["broadening"]["default"] = {
+        name: {"gamma": one.gamma, "exponent": one.exponent, "source": one.source}
+        for name, one in choices["defaults"].items()
+    }
+    comparison, warnings = states_against_file(recipe, lists)
+    warnings += definition_warnings(recipe, lists)
     provenance["partition_function"] |= comparison
     return Inputs(source, used.isotopologues, used.partition, provenance, origin, warnings)
-
-
-def _states_against_file(recipe: Recipe, lists: Sequence[_OpenList]) -> tuple[dict[str, Any], tuple[str, ...]]:
-    """How a partition-function file compares with the sum over the list's own states at the grid's temperatures.
-
-    The largest relative difference for the provenance, and a warning where it is more than 0.1 %.
-    """
-    path = recipe.partition_function.path
-    summed = [one.facts["states"] for one in lists if "states" in one.facts]
-    if path is None or not summed:
-        return {}, ()
-    states = from_states(summed[0]["temperature"], summed[0]["partition"], summed[0]["highest_energy"])
-    file = from_file(path)
-    both = [t for t in {t for t, _ in recipe.grid.node_list()} if states.holds(t) and file.holds(t)]
-    if not both:
-        return {}, ()
-    worst = max(both, key=lambda t: abs(file(t) / states(t) - 1.0))
-    difference = file(worst) / states(worst) - 1.0
-    found = {"over_sum_of_states": {"largest_difference": difference, "temperature": worst}}
-    if 100.0 * abs(difference) < STATES_AGREE:
-        return found, ()
-    words = f"{path.name} differs by {100.0 * difference:+.2g} % from the sum over the list's states at {worst:g} K"
-    return found, (words,)
 
 
 def _stored(
@@ -144,36 +126,32 @@ def _stored(
     """Lines too many to hold: gone through once, to find what has to be assumed and what does not fit."""
 
     def prepared(lines: LineList) -> PreparedLines:
-        with _located(recipe, _KEYS):
+        with located(recipe, KEYS):
             return prepare(lines, **choices)
 
     counts: Counter[str] = Counter()
     source = StoredLines(stores, lower, upper, prepared, ledger, ())
     used: dict[str, tuple[Isotopologue, PartitionFunction]] = {}
     last: PreparedLines | None = None
+    prepared_lines = 0
     for last in source.stretches():
+        prepared_lines += len(last)
         for one in last.assumptions:
             counts[one.what] += one.lines
         used |= {iso.formula: (iso, q) for iso, q in zip(last.isotopologues, last.partition, strict=True)}
-    assert last is not None
+    ledger.leave_out("isotopologue not in the mixture chosen", len(source) - prepared_lines)
+    if last is None:
+        raise LineListError(problem(recipe.path, "no line in reach of the grid is of an isotopologue chosen"))
+    if recipe.abundance == "pure" and len(used) > 1:
+        faults = faults_of(recipe)
+        what = '"pure" needs lines of one isotopologue'
+        faults.add(("isotopologues", "abundance"), what, expected="one", found=", ".join(used))
+        raise RecipeError(faults.problems())
     source = replace(source, assumptions=tuple(Assumption(what, lines) for what, lines in sorted(counts.items())))
     found = replace(
         last, isotopologues=tuple(iso for iso, _ in used.values()), partition=tuple(q for _, q in used.values())
     )
     return source, found
-
-
-@contextlib.contextmanager
-def _located(recipe: Recipe, keys: dict[str, KeyPath]) -> Iterator[None]:
-    """Turn an error about an argument into one of the recipe, at the line of the key that made the choice."""
-    try:
-        yield
-    except OpacityError as error:
-        if error.argument not in keys:
-            raise
-        faults = faults_of(recipe)
-        faults.add_error(keys[error.argument], error)
-        raise RecipeError(faults.problems()) from error
 
 
 def _check_molecule(recipe: Recipe) -> None:
@@ -195,46 +173,15 @@ def _check_molecule(recipe: Recipe) -> None:
         raise RecipeError(faults.problems())
 
 
-@dataclass(frozen=True)
-class _OpenList:
-    """One list: its lines by window, its account, the wavenumbers between which each isotopologue has lines, facts."""
-
-    windows: Windows
-    ledger: Ledger
-    spans: dict[str, tuple[float, float]]
-    facts: dict[str, Any]
-
-
-def _open(recipe: Recipe, number: int, tables: Path, memory: int, quiet: bool) -> _OpenList:
-    source = recipe.line_lists[number]
-    store = (
-        find_store(recipe, source, tables)
-        if is_small(source)
-        else ensure_store(recipe, source, tables, memory, quiet)[0]
-    )
-    if store is not None:
-        index = store.index
-        ends = (index.segments[0].first, index.segments[-1].last) if index.segments else (0.0, 0.0)
-        return _OpenList(store, index.ledger, {one.formula: ends for one in index.isotopologues}, index.facts)
-    lines = _read(recipe, number, source)
-    spans = {}
-    for place, one in enumerate(lines.isotopologues):
-        nu = lines.wavenumber[lines.isotopologue == place]
-        spans[one.formula] = (float(nu.min()), float(nu.max()))
-    ledger = Ledger()
-    ledger.add(lines.ledger)
-    return _OpenList(ListInMemory(lines), ledger, spans, {})
-
-
-def _choices(recipe: Recipe, lists: Sequence[_OpenList]) -> dict[str, Any]:
+def _choices(recipe: Recipe, lists: Sequence[OpenList]) -> dict[str, Any]:
     """The recipe's choices as arguments of `prepare`; a definition's default widths serve where nothing else does."""
     choice = recipe.partition_function
     partition: Any = choice.path if choice.path is not None else choice.source
     if choice.source == "states":
-        states = next(one.facts["states"] for one in lists if "states" in one.facts)
-        partition = from_states(states["temperature"], states["partition"], states["highest_energy"])
+        partition = {formula: summed_states(one) for one in lists if "states" in one.facts for formula in one.spans}
     defaults = dict(recipe.broadening.default)
-    for one in lists:
+    # A definition speaks of its own list only: beside another list its defaults would serve lines that are not its.
+    for one in lists if len(lists) == 1 else ():
         definition = one.facts.get("definition")
         if definition and definition["gamma"] is not None and definition["exponent"] is not None:
             for name in recipe.broadening.mixture:
@@ -248,38 +195,12 @@ def _choices(recipe: Recipe, lists: Sequence[_OpenList]) -> dict[str, Any]:
     }
 
 
-def _read(recipe: Recipe, number: int, source: LineListSource) -> LineList:
-    options = read_options(recipe, source)
-    with _located(recipe, {**_KEYS, "isotopologue": ("line_list", number, "isotopologue")}):
-        return read_lines(
-            source.paths, source.format, range=source.range, bad_records=source.bad_records, options=options
-        )
-
-
-def _refuse_overlap(sources: Sequence[LineListSource], spans: Sequence[dict[str, tuple[float, float]]]) -> None:
-    """The same isotopologue in overlapping ranges of two lists would count its lines twice."""
-    seen: dict[str, list[tuple[float, float, str]]] = {}
-    for source, span in zip(sources, spans, strict=True):
-        for formula, (low, high) in span.items():
-            for other_low, other_high, other in seen.get(formula, []):
-                if low <= other_high and other_low <= high:
-                    raise LineListError(
-                        problem(
-                            ", ".join(source.files),
-                            f"holds lines of {formula} between {max(low, other_low):g} and"
-                            f" {min(high, other_high):g} cm-1, and so does {other}",
-                            remedy="give each list a range of its own",
-                        )
-                    )
-            seen.setdefault(formula, []).append((low, high, ", ".join(source.files)))
-
-
 def _provenance(
     recipe: Recipe,
     isotopologues: Sequence[Isotopologue],
     partition_functions: Sequence[PartitionFunction],
     records_read: int,
-    lists: Sequence[_OpenList],
+    lists: Sequence[OpenList],
     origin: Fingerprint,
 ) -> dict[str, Any]:
     choice, profile, made_from = recipe.partition_function, recipe.profile, dict(origin.content)

@@ -20,9 +20,14 @@ from opacity.line_store.store import LineStore, is_current, read_index
 from opacity.molecule.hapi_tables import hapi
 from opacity.pipeline.progress import RecordProgress
 from opacity.pipeline.resources import allowed_cpus
+from opacity.provenance import package_versions
 from opacity.recipe.model import LineListSource, Recipe
 
 DEFAULT_MEMORY = 2_000_000_000
+COMPRESSION = 8
+"""How many bytes of text a compressed byte is taken to stand for."""
+READING_VERSION = 1
+"""To be raised when the rules of reading change: stores made by other rules are made again."""
 SMALL_LIST = 64_000_000
 """Lists of records below this size (bytes) are read again for each build; larger ones go through a line store."""
 
@@ -44,7 +49,8 @@ class ListInputs:
 
 def is_small(source: LineListSource) -> bool:
     """Whether a list is read into memory rather than kept in a store."""
-    return source.format in ("hitran", "hapi", "catalogue") and sum(_size(path) for path in source.paths) < SMALL_LIST
+    text = sum(_size(path) * (COMPRESSION if path.suffix in (".gz", ".bz2") else 1) for path in source.paths)
+    return source.format == "catalogue" or (source.format in ("hitran", "hapi") and text < SMALL_LIST)
 
 
 def _size(path: Path) -> int:
@@ -65,6 +71,9 @@ def list_inputs(recipe: Recipe, source: LineListSource, executor: ThreadPoolExec
         "isotopologue": source.isotopologue,
         "formula": molecule.formula,
         "mass": molecule.mass,
+        "broad": sorted(recipe.broadening.files),
+        "reading": READING_VERSION,
+        "hapi": package_versions()["hitran-api"],
     }
     if source.format != "exomol":
         options = read_options(recipe, source)
@@ -112,13 +121,3 @@ def ensure_store(
         with RecordProgress(f"reading lines of {recipe.molecule.formula}", total, quiet) as progress:
             ingest(folder, list(made.inputs), made.key, memory, progress.add, made.facts)
     return LineStore(folder), True
-
-
-def find_store(recipe: Recipe, source: LineListSource, tables: Path) -> LineStore | None:
-    """The line store of a list if there is one that is current."""
-    made = list_inputs(recipe, source, None)
-    folder = made.folder(tables, recipe.molecule.formula)
-    index = read_index(folder)
-    if index is None or not is_current(index, list(made.inputs), made.key):
-        return None
-    return LineStore(folder)

@@ -127,7 +127,7 @@ def test_a_second_build_reads_no_text(tmp_path: Path, data_set: Path, monkeypatc
 
 
 @pytest.mark.parametrize("at_once", [10, 60])
-def test_lines_too_many_to_hold_give_the_same_bits(
+def test_lines_too_many_to_hold_give_the_same_values(
     tmp_path: Path, data_set: Path, monkeypatch: pytest.MonkeyPatch, at_once: int
 ) -> None:
     path = write_recipe(tmp_path, "exomol", list=EXOMOL, partition=TIPS)

@@ -157,6 +157,8 @@ class OpenDataSet:
                 "gamma": definition.gamma,
                 "exponent": definition.exponent,
                 "max_temperature": definition.max_temperature,
+                "transitions": definition.transitions,
+                "formula": definition.formula,
                 "notes": list(definition.notes),
             },
             "broadening": {
