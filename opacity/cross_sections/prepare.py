@@ -22,7 +22,7 @@ from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.molecule import partition_function as pf
 from opacity.molecule.broadening import Assumption, LineBroadening, resolve_broadening
-from opacity.molecule.isotopologue import Isotopologue
+from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
 
 PartitionChoice = str | Path | Mapping[str, pf.PartitionFunction]
 """A TIPS edition, a file of T and Q, or partition functions by isotopologue."""
@@ -139,7 +139,7 @@ def prepare(
         factor = factor[factor > 0.0]
     masses = np.array([one.mass for one in lines.isotopologues] or [1.0])
     partition = tuple(partition_of(partition_function, one) for one in lines.isotopologues)
-    if isinstance(partition_function, Path) and len(partition) > 1:
+    if isinstance(partition_function, Path) and len({one.formula for one in lines.isotopologues}) > 1:
         raise MoleculeError(
             problem(
                 "partition_function",
@@ -214,9 +214,14 @@ def abundance_factors(
     What abundance a list's strengths already hold (the terrestrial one in HITRAN format) is taken out before
     another one is applied.  Fractions may also name what was `dropped` for having no line left.
     """
-    if abundance == "pure" and len(isotopologues) > 1:
-        found = ", ".join(one.formula for one in isotopologues)
+    formulas = list(dict.fromkeys(one.formula for one in isotopologues))
+    if abundance == "pure" and len(formulas) > 1:
+        found = ", ".join(formulas)
         raise _wrong_abundance('"pure" needs lines of one isotopologue', expected="one", found=found)
+    strangers = [one.formula for one in isotopologues if not one.known and isotopologues_of(one.molecule_formula)]
+    if abundance == "terrestrial" and strangers:
+        what = f"the terrestrial abundance of {strangers[0]} is not known"
+        raise _wrong_abundance(what, expected='"pure", or fractions by isotopologue')
     if isinstance(abundance, str):
         if abundance not in ("terrestrial", "pure"):
             expected = '"terrestrial", "pure" or fractions by isotopologue'

@@ -13,6 +13,7 @@ Array = NDArray[np.float64]
 Index = NDArray[np.int64]
 
 GOOD, NO_UPPER, NO_LOWER, NO_WAVENUMBER, SWAPPED, BAD_A = 0, 1, 2, 3, 4, 5
+BAD_ENERGY, BAD_STRENGTH = 6, 7
 
 BRANCHES = 9
 """Classes of J' - J'' told apart: from -2 to 2 in halves; what lies beyond counts as the last."""
@@ -28,6 +29,8 @@ def join_states(
     energy: Array,
     weight: Array,
     twice_j: NDArray[np.int32],
+    energies: tuple[float, float],
+    log_intensities: tuple[float, float],
     wavenumber: Array,
     log_intensity: Array,
     width_key: NDArray[np.int64],
@@ -37,7 +40,8 @@ def join_states(
 
     ln I = ln(g' A / (8 pi c nu^2)), c in cm/s: S = I exp(-c2 E''/T) [1 - exp(-c2 nu/T)] / Q(T) (Rothman et al. 1998,
     JQSRT 60, 665, appendix, without abundance).  `energy` cm-1, `weight` g and `twice_j` 2J are those of all states.
-    `width_key` is 2J'' times 9 plus the class of J' - J''.
+    Lower-state energies are to lie within `energies`, the second of which is beyond, and ln I (unless I is 0) within
+    `log_intensities`.  `width_key` is 2J'' times 9 plus the class of J' - J''.
     """
     for i in range(upper.size):
         u, low = upper[i], lower[i]
@@ -53,9 +57,17 @@ def join_states(
             status[i] = SWAPPED
         elif not (a >= 0.0 and a < np.inf):
             status[i] = BAD_A
+        elif not (energies[0] <= energy[low] < energies[1]):
+            status[i] = BAD_ENERGY
         if status[i] != GOOD:
             continue
         wavenumber[i] = nu
-        log_intensity[i] = math.log(weight[u] * a) - 2.0 * math.log(nu) - _LOG_8_PI_C if a > 0.0 else -np.inf
+        log_intensity[i] = -np.inf
+        if a > 0.0:
+            strength = math.log(weight[u]) + math.log(a) - 2.0 * math.log(nu) - _LOG_8_PI_C
+            if not (log_intensities[0] <= strength <= log_intensities[1]):
+                status[i] = BAD_STRENGTH
+                continue
+            log_intensity[i] = strength
         branch = min(max(twice_j[u] - twice_j[low] + 4, 0), BRANCHES - 1)
         width_key[i] = twice_j[low] * BRANCHES + branch

@@ -12,10 +12,11 @@ from typing import TypeVar
 import numpy as np
 
 from opacity.errors import LineListError, problem
+from opacity.line_list.foreign import ForeignRecords
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
 from opacity.line_list.packed import PackedLines, pack
-from opacity.line_list.read import only, parser_of
+from opacity.line_list.read import of_isotopologue, parser_of, refuse_unless_among
 from opacity.line_list.records import ReadOptions, judge
 from opacity.line_list.text import RawText, read_raw
 from opacity.molecule.isotopologue import Isotopologue
@@ -50,23 +51,31 @@ def record_batches(
 ) -> Iterator[Batch]:
     """The lines of a file of records ("hitran" or "hapi").
 
-    Raises LineListError for the first record that can't be right, or a file that holds none.
+    Raises LineListError for the first record that can't be right, or a file that holds none; InputError at the end of
+    a file without any line of the isotopologue chosen.
     """
     parse = parser_of(path, format)
+    others = ForeignRecords(path, options.formula)
+    # Filled by several threads, but asked only when all are done.
+    found: set[Isotopologue] = set()
 
     def work(raw: RawText) -> Batch | None:
         chunk = raw.lines()
         if not len(chunk):
             return None
-        lines = judge(parse(chunk), options, leave_out)
-        if options.isotopologue is not None and len(lines):
-            lines = only(lines, options.isotopologue)
+        lines = judge(parse(chunk), options, leave_out, others)
+        found.update(lines.isotopologues)
+        if options.isotopologue is not None:
+            lines = of_isotopologue(lines, options.isotopologue)
         if range is not None:
             within = (lines.wavenumber >= range[0]) & (lines.wavenumber <= range[1])
             lines = lines.select(within, "outside the range asked for")
         return Batch(pack(lines), lines.isotopologues, lines.basis, lines.ledger, chunk.read)
 
     yield from not_empty(in_order(work, read_raw(path), executor), path, "record")
+    others.refuse_if_all()
+    if options.isotopologue is not None:
+        refuse_unless_among(sorted(found, key=lambda one: (one.molecule, one.local)), options.isotopologue)
 
 
 def not_empty(batches: Iterable[Batch | None], path: Path, what: str) -> Iterator[Batch]:

@@ -5,7 +5,8 @@ JQSRT 60, 883.  Strengths are those of the isotopologue alone: no abundance is i
 
 A trap that no reader can see in one record: answers saved from the CDMS query page may hold log10 of the Einstein A in
 the place of the intensity.  As saved they have other columns, so that they are refused; turned into .cat records they
-look like a catalogue.  `looks_like_einstein_a` finds some of these.
+look like a catalogue.  Nothing here guards against these: `looks_like_einstein_a`, for callers that have the
+partition function of the same entry, finds some.
 """
 
 from __future__ import annotations

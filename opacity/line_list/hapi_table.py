@@ -1,4 +1,6 @@
-"""A local table of hapi: `<name>.data` with `<name>.header` beside it (the layout is hapi's own, hitran-api 1.3).
+"""A local table of hapi: `<name>.data`, plain, .gz or .bz2, with `<name>.header` beside it.
+
+The layout is hapi's own (hitran-api 1.3).
 
 Records of fixed width, then extra columns behind a separator; the header, in JSON, names and places them all.
 Extra columns gamma_x, n_x and delta_x are half-width (cm-1/atm), exponent and shift (cm-1/atm) for broadener x.
@@ -48,6 +50,20 @@ class _Header:
     width: int
     extra: tuple[str, ...]
     separator: bytes
+
+
+def is_hapi(path: Path) -> bool:
+    """Whether a file's name is that of a hapi table: it ends in .data, plain, .gz or .bz2."""
+    return _plain(path).suffix.lower() == ".data"
+
+
+def header_of(path: Path) -> Path:
+    """The header beside a hapi table, whose name has neither .data nor the ending of a compression."""
+    return path.parent / f"{_plain(path).stem}.header"
+
+
+def _plain(path: Path) -> Path:
+    return path.with_suffix("") if path.suffix.lower() in (".gz", ".bz2") else path
 
 
 def hapi_parser(path: Path) -> Callable[[TextChunk], ParsedColumns]:
@@ -102,7 +118,7 @@ def _complete_broadeners(columns: ParsedColumns) -> None:
 
 
 def _read_header(path: Path) -> _Header:
-    header_path = path.parent / f"{path.stem}.header"
+    header_path = header_of(path)
     if not header_path.is_file():
         raise LineListError(
             problem(path, "a hapi table needs its header beside it", expected=str(header_path), found="no such file")

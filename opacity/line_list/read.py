@@ -12,7 +12,8 @@ from opacity.errors import InputError, LineListError, problem
 from opacity.grids import FloatArray
 from opacity.line_list.catalogue import catalogue_lines
 from opacity.line_list.duplicates import refuse_repeated_files
-from opacity.line_list.hapi_table import hapi_parser
+from opacity.line_list.foreign import ForeignRecords
+from opacity.line_list.hapi_table import hapi_parser, is_hapi
 from opacity.line_list.hitran import hitran_parser
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
@@ -36,8 +37,8 @@ def read_lines(
 ) -> LineList:
     """Read line lists into one `LineList` sorted by wavenumber.
 
-    `format` is "hitran" (160-character records, .gz and .bz2 too), "hapi" (.data with its .header) or "catalogue"
-    (JPL/CDMS .cat); if it is None the file's ending decides.
+    `format` is "hitran" (160-character records, .gz and .bz2 too), "hapi" (.data, .gz and .bz2 too,
+    with its .header) or "catalogue" (JPL/CDMS .cat); if it is None the file's ending decides.
     `range` (cm-1) keeps the lines inside it, ends included.  `bad_records`
     is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).  `options` are
     what a recipe says of the list: its molecule, and the one isotopologue to take from it.
@@ -81,16 +82,32 @@ def check_account(lines: LineList) -> LineList:
 
 def only(lines: LineList, name: str) -> LineList:
     """The lines of one isotopologue, by formula or local number; InputError where there is none of that name."""
-    if not lines.isotopologues[0].known:
+    refuse_unless_among(lines.isotopologues, name)
+    return of_isotopologue(lines, name)
+
+
+def of_isotopologue(lines: LineList, name: str) -> LineList:
+    """The lines of one isotopologue, by formula or local number, which may be none; all of an unknown molecule."""
+    if not lines.isotopologues or not lines.isotopologues[0].known:
         return lines
-    chosen = [number for number, one in enumerate(lines.isotopologues) if name in (one.formula, str(one.local))]
-    if not chosen:
-        exist = isotopologues_of(lines.molecule_formula)
-        known = any(name in (one.formula, str(one.local)) for one in exist)
-        what = f"the list holds no line of {name}" if known else f"{lines.molecule_formula} has no isotopologue {name}"
-        expected = ", ".join(f"{one.formula} ({one.local})" for one in (lines.isotopologues if known else exist))
-        raise InputError(problem("isotopologue", what, expected=expected)).about("isotopologue")
-    return lines.select(lines.isotopologue == chosen[0], "another isotopologue than the one chosen")
+    chosen = np.array([_is_called(one, name) for one in lines.isotopologues])
+    return lines.select(chosen[lines.isotopologue], "another isotopologue than the one chosen")
+
+
+def refuse_unless_among(found: Sequence[Isotopologue], name: str) -> None:
+    """Raise InputError where none of a list's isotopologues has that name; those of an unknown molecule have any."""
+    if not found or not found[0].known or any(_is_called(one, name) for one in found):
+        return
+    molecule = found[0].molecule_formula
+    exist = isotopologues_of(molecule)
+    known = any(_is_called(one, name) for one in exist)
+    what = f"the list holds no line of {name}" if known else f"{molecule} has no isotopologue {name}"
+    expected = ", ".join(f"{one.formula} ({one.local})" for one in (found if known else exist))
+    raise InputError(problem("isotopologue", what, expected=expected)).about("isotopologue")
+
+
+def _is_called(one: Isotopologue, name: str) -> bool:
+    return name in (one.formula, str(one.local))
 
 
 def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: bool) -> LineList:
@@ -116,9 +133,11 @@ def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: b
             bad_records="leave-out" if leave_out else "stop",
         )
     parse = parser_of(path, format)
-    batches = [judge(parse(chunk), options, leave_out) for chunk in read_chunks(path) if len(chunk)]
+    others = ForeignRecords(path, options.formula)
+    batches = [judge(parse(chunk), options, leave_out, others) for chunk in read_chunks(path) if len(chunk)]
     if not batches:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
+    others.refuse_if_all()
     return merge(batches)
 
 
@@ -128,7 +147,7 @@ def _is_catalogue(path: Path, format: str | None) -> bool:
 
 def parser_of(path: Path, format: str | None) -> Parser:
     """The parser of a file's chunks, by format, or by the file's ending where it is None."""
-    chosen = format or ("hapi" if path.suffix == ".data" else "hitran")
+    chosen = format or ("hapi" if is_hapi(path) else "hitran")
     if chosen not in READERS:
         expected = " or ".join(f'"{name}"' for name in READERS)
         raise InputError(problem("format", "unknown line-list format", expected=expected, found=f'"{chosen}"'))

@@ -18,6 +18,7 @@ from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION, STANDARD_
 from opacity.errors import LineListError, MoleculeError, problem
 from opacity.grids import FloatArray
 from opacity.line_list.exomol.broadening import BroadeningTable
+from opacity.line_list.foreign import ForeignRecords
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.lower_j import fill_widths
 from opacity.line_list.model import LineList, StrengthBasis
@@ -38,6 +39,8 @@ MAX_MOLECULE = 999
 MAX_WIDTH = 1000.0
 LOWEST_WAVENUMBER = 1e-6
 STRONGEST = 1e-6
+WEAKEST = 1e-170
+HIGHEST_ENERGY = 100_000.0
 _CODES = "a code 1-9, 0, A, B of an isotopologue that hapi's tables hold"
 _NOT_TEXT = re.compile(rb"[^\t\x20-\x7e]")
 
@@ -75,8 +78,11 @@ class ReadOptions:
     widths: Mapping[str, BroadeningTable] = field(default_factory=dict)
 
 
-def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool = False) -> LineList:
-    """The lines among some records.  Raises LineListError for the first record that can't be right, unless left out."""
+def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool, others: ForeignRecords) -> LineList:
+    """The lines among some records of a file; its records of another molecule are entered in `others`.
+
+    Raises LineListError for the first record that can't be right, unless left out.
+    """
     ledger = Ledger(read=len(columns.text))
     good = np.ones(len(columns.text), dtype=bool)
     found: list[tuple[int, str, str]] = []
@@ -90,17 +96,17 @@ def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool = False)
     if unknown.any():
         found.append((int(np.flatnonzero(unknown)[0]), "unknown isotopologue", _CODES))
         ledger.left_out["unknown isotopologue"] += int(unknown.sum())
-    if foreign.any():
-        if not (leave_out and (good & ~foreign).any()):
-            raise _foreign(columns, foreign, options)
-        ledger.left_out["record of another molecule"] += int(foreign.sum())
     good &= ~(unknown | foreign)
+    others.add(columns.text, columns.numbers["molecule"], foreign, int(good.sum()), leave_out)
+    if foreign.any():
+        ledger.left_out["record of another molecule"] += int(foreign.sum())
     if found and not leave_out:
         raise LineListError(_first_problem(columns, min(found), int((~good).sum())))
     ledger.kept = int(good.sum())
     if options.widths:
-        added = fill_widths(columns.numbers, options.widths, columns.text, columns.whole, good)
+        added, served = fill_widths(columns.numbers, options.widths, columns.text, columns.whole, good)
         columns.broadeners = tuple(dict.fromkeys((*columns.broadeners, *added)))
+        ledger.notes.update(served)
     ledger.notes.update(_notes(columns, good))
     return _build(columns, good, index, known, ledger)
 
@@ -135,7 +141,11 @@ def _faults(columns: ParsedColumns) -> Iterator[tuple[str, str, NDArray[np.bool_
     yield "wavenumber is not above 0", lowest, ~(numbers["wavenumber"] >= LOWEST_WAVENUMBER)
     yield "strength is negative", "0 or more", numbers["strength"] < 0.0
     # HITRAN writes -1 for an energy that is not known.
-    yield "lower-state energy is impossible", "-1 or more", numbers["lower_energy"] < -1.0
+    energy = numbers["lower_energy"]
+    limits = f"-1 to {HIGHEST_ENERGY:g} cm-1"
+    yield "lower-state energy is impossible", limits, (energy < -1.0) | (energy > HIGHEST_ENERGY)
+    strength = numbers["strength"]
+    yield "strength is too small", f"0 or at least {WEAKEST:g}", (strength > 0.0) & (strength < WEAKEST)
     yield (
         "strength is impossible for its lower-state energy",
         "at most 1e-6 cm/molecule before population",
@@ -187,22 +197,6 @@ def _isotopologues(
                 known.append(one)
                 index[rows] = len(known) - 1
     return index, tuple(known), unknown, foreign
-
-
-def _foreign(columns: ParsedColumns, foreign: NDArray[np.bool_], options: ReadOptions) -> LineListError:
-    """Whether the records or the formula are wrong is for the user to say: leaving records out would hide it."""
-    row = int(np.flatnonzero(foreign)[0])
-    numbers = np.unique(columns.numbers["molecule"][foreign]).astype(int)
-    names = [molecule_name(int(number)) for number in numbers]
-    return LineListError(
-        problem(
-            "formula",
-            f"{columns.path}:{columns.text.line[row]} is a record of another molecule",
-            expected=f"records of {options.formula}",
-            found=f"{', '.join(names)} in {int(foreign.sum())} of {len(columns.text)} records",
-            remedy="the formula or the list is wrong",
-        )
-    ).about("formula")
 
 
 def _is_foreign(molecule: int, options: ReadOptions) -> bool:

@@ -6,19 +6,18 @@ import functools
 import json
 import shutil
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
-
-import numpy as np
 
 from opacity.errors import LineListError, ResourceError, problem
 from opacity.line_list.batches import Batch, renumbered
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
-from opacity.line_list.packed import PackedLines, count_identical, join
-from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, PARTS, SEGMENT_LINES, Segment
-from opacity.line_store.merge import merged
+from opacity.line_list.packed import PackedLines, join
+from opacity.line_store.assemble import assemble, weight
+from opacity.line_store.layout import PARTS, SEGMENT_LINES, Segment
+from opacity.line_store.lock import locked
 from opacity.line_store.segment import write_segment
 from opacity.molecule.isotopologue import Isotopologue
 from opacity.provenance import file_sha256
@@ -72,7 +71,9 @@ def same_content(one: InputFile, known: dict[str, Any]) -> bool:
             return False
         if path.name != entry.get("file") or status.st_size != entry.get("size"):
             return False
-        if status.st_mtime_ns != entry.get("mtime_ns") and file_sha256(path) != entry.get("sha256"):
+        if status.st_mtime_ns == entry.get("mtime_ns"):
+            continue
+        if _sha256(path, status.st_size, status.st_mtime_ns) != entry.get("sha256"):
             return False
     return True
 
@@ -91,26 +92,52 @@ def ingest(
     called as records are read; `facts` gives plain values to keep beside the lines, such as a partition function
     summed over the states.  Raises LineListError for what can't be right, ResourceError where the disk refuses.
     """
+    at_once = max(memory // 3 // BYTES_A_LINE, 1 << 14)
     parts = folder / PARTS
+    _make_folder(folder)
+    with locked(folder):
+        _make_folder(parts)
+        manifests = [_ingest_file(parts, number, one, key, at_once, progress) for number, one in enumerate(inputs)]
+        assemble(folder, manifests, key, at_once, facts())
+        shutil.rmtree(parts, ignore_errors=True)
+
+
+def _make_folder(path: Path) -> None:
     try:
-        parts.mkdir(parents=True, exist_ok=True)
+        path.mkdir(parents=True, exist_ok=True)
     except OSError as error:
-        raise ResourceError(problem(parts, f"the line store's folder cannot be made ({error.strerror})")) from error
-    lines_at_once = max(memory // 3 // BYTES_A_LINE, 1 << 14)
-    manifests = [_ingest_file(parts, number, one, key, lines_at_once, progress) for number, one in enumerate(inputs)]
-    _finish(folder, manifests, key, lines_at_once, facts())
-    shutil.rmtree(parts, ignore_errors=True)
+        raise ResourceError(problem(path, f"the line store's folder cannot be made ({error.strerror})")) from error
+
+
+def _kept(manifest_path: Path, one: InputFile, key: str) -> dict[str, Any] | None:
+    """The manifest of an interrupted ingest, if it is of the same input and all its parts are there."""
+    kept = _read_json(manifest_path)
+    if kept is None or kept.get("key") != key or not same_content(one, kept.get("identity", {})):
+        return None
+    for segment in kept["segments"]:
+        try:
+            whole = (manifest_path.parent / segment["file"]).stat().st_size == segment["bytes"]
+        except OSError:
+            whole = False
+        if not whole:
+            return None
+    return kept
 
 
 def _ingest_file(
-    parts: Path, number: int, one: InputFile, key: str, lines_at_once: int, progress: Progress
+    parts: Path, number: int, one: InputFile, key: str, weight_at_once: int, progress: Progress
 ) -> dict[str, Any]:
     """The manifest of one file's sorted parts, made anew unless it is there from an interrupted ingest."""
     manifest_path = parts / f"{number:05d}.json"
-    kept = _read_json(manifest_path)
-    if kept is not None and kept.get("key") == key and same_content(one, kept.get("identity", {})):
+    kept = _kept(manifest_path, one, key)
+    if kept is not None:
         progress(int(kept["ledger"]["read"]), one.path.stat().st_size)
         return kept
+    try:
+        manifest_path.unlink(missing_ok=True)
+    except OSError as error:
+        raise ResourceError(problem(manifest_path, f"cannot be removed ({error.strerror})")) from error
+    before = identity(one)
     known: list[tuple[Isotopologue, StrengthBasis]] = []
     segments: list[Segment] = []
     ledger = Ledger()
@@ -123,17 +150,19 @@ def _ingest_file(
         known += [pair for pair in pairs if pair not in known]
         waiting.append(renumbered(batch.packed, [known.index(pair) for pair in pairs], number))
         names |= set(batch.packed.classes.broadeners)
-        if sum(_weight(part) for part in waiting) >= lines_at_once:
+        if sum(weight(part) for part in waiting) >= weight_at_once:
             segments += _write_run(parts, f"{number:05d}-{len(segments):06d}", waiting)
             waiting = []
         progress(batch.ledger.read, max(batch.read - position, 0))
         position = max(batch.read, position)
     segments += _write_run(parts, f"{number:05d}-{len(segments):06d}", waiting)
+    if not same_content(one, before):
+        raise LineListError(problem(one.path, "changed while it was read", remedy="build again when it is at rest"))
     if not ledger.adds_up():
         raise LineListError(problem(one.path, "the account of its records does not add up", found=ledger.as_dict()))
     manifest = {
         "key": key,
-        "identity": identity(one),
+        "identity": before,
         "ledger": ledger.as_dict(),
         "isotopologues": [iso.__dict__ for iso, _ in known],
         "basis": [basis.__dict__ for _, basis in known],
@@ -142,11 +171,6 @@ def _ingest_file(
     }
     write_atomically(manifest_path, json.dumps(manifest).encode("utf-8"))
     return manifest
-
-
-def _weight(packed: PackedLines) -> int:
-    """Lines that the packed lines count for: a table of classes as long as the list weighs as much again."""
-    return len(packed) + len(packed.classes) * (2 + len(packed.classes.broadeners))
 
 
 def _write_run(parts: Path, name: str, waiting: list[PackedLines]) -> list[Segment]:
@@ -168,66 +192,3 @@ def _read_json(path: Path) -> dict[str, Any] | None:
     except (OSError, ValueError):
         return None
     return value if isinstance(value, dict) else None
-
-
-def _finish(folder: Path, manifests: list[dict[str, Any]], key: str, lines_at_once: int, facts: dict[str, Any]) -> None:
-    """Merge all parts into the store's segments and write its index, which makes it a store."""
-    known: list[dict[str, Any]] = []
-    basis: list[dict[str, Any]] = []
-    numbers: dict[int, list[int]] = {}
-    for number, manifest in enumerate(manifests):
-        numbers[number] = []
-        for iso, of in zip(manifest["isotopologues"], manifest["basis"], strict=True):
-            pairs = list(zip(known, basis, strict=True))
-            if (iso, of) not in pairs:
-                known.append(iso)
-                basis.append(of)
-                pairs.append((iso, of))
-            numbers[number].append(pairs.index((iso, of)))
-    parts = [Segment.from_dict(one) for manifest in manifests for one in manifest["segments"]]
-    ledger = Ledger()
-    for manifest in manifests:
-        ledger.add(Ledger.from_dict(manifest["ledger"]))
-    segments, repeated = _merge(folder, parts, numbers, min(lines_at_once // 2, SEGMENT_LINES))
-    if repeated:
-        ledger.notes["identical to another record: both count"] += repeated
-    if sum(segment.lines for segment in segments) != ledger.kept:
-        raise LineListError(
-            problem(folder, "lines were lost on the way to the store", expected=ledger.kept,
-                    found=sum(segment.lines for segment in segments))
-        )  # fmt: skip
-    index = {
-        "format": FORMAT_NAME,
-        "format_version": FORMAT_VERSION,
-        "key": key,
-        "facts": facts,
-        "inputs": [manifest["identity"] for manifest in manifests],
-        "ledger": ledger.as_dict(),
-        "isotopologues": known,
-        "basis": basis,
-        "broadeners": sorted({name for manifest in manifests for name in manifest["broadeners"]}),
-        "segments": [segment.as_dict() for segment in segments],
-    }
-    write_atomically(folder / INDEX, json.dumps(index).encode("utf-8"))
-
-
-def _merge(
-    folder: Path, parts: list[Segment], numbers: dict[int, list[int]], lines_at_once: int
-) -> tuple[list[Segment], int]:
-    """The store's segments, and how many lines are identical to another."""
-    segments: list[Segment] = []
-    repeated = 0
-    for k, stretch in enumerate(merged(folder / PARTS, parts, lines_at_once) if parts else ()):
-        numbered = _number_isotopologues(stretch, numbers)
-        repeated += count_identical(numbered)
-        segments.append(write_segment(folder, f"{k:06d}.lines.h5", numbered))
-    return segments, repeated
-
-
-def _number_isotopologues(packed: PackedLines, numbers: dict[int, list[int]]) -> PackedLines:
-    """From each file's own numbering of isotopologues to that of the store."""
-    classes = packed.classes
-    place = np.array(
-        [numbers[int(f)][int(i)] for f, i in zip(classes.file, classes.isotopologue, strict=True)], dtype=np.int16
-    )
-    return replace(packed, classes=replace(classes, isotopologue=place))

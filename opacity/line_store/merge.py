@@ -27,30 +27,51 @@ def merged(folder: Path, parts: Sequence[Segment], weight_at_once: int) -> Itera
     """
     with closing(OpenSegments(folder)) as segments:
         for lower, upper in itertools.pairwise(boundaries(parts, weight_at_once)):
-            reaching = [part for part in parts if part.first < upper and part.last >= lower]
-            for low, high in itertools.pairwise(_finer(segments, reaching, float(lower), float(upper), weight_at_once)):
-                within = [part for part in reaching if part.first < high and part.last >= low]
-                pieces = [segments.get(part).read(float(low), float(high)) for part in within]
-                pieces = [piece for piece in pieces if len(piece)]
-                if pieces:
-                    yield join(pieces)
+            found = _read(segments, parts, float(lower), float(upper), 1.25 * weight_at_once)
+            if found is not None:
+                if found:
+                    yield join(found)
+                continue
+            finer = _finer(segments, parts, float(lower), float(upper), weight_at_once)
+            for low, high in itertools.pairwise(finer):
+                found = _read(segments, parts, float(low), float(high), np.inf)
+                if found:
+                    yield join(found)
+
+
+def _reaching(parts: Sequence[Segment], lower: float, upper: float) -> list[Segment]:
+    return [part for part in parts if part.first < upper and part.last >= lower]
+
+
+def _read(
+    segments: OpenSegments, parts: Sequence[Segment], lower: float, upper: float, most: float
+) -> list[PackedLines] | None:
+    """What each part holds with lower <= wavenumber < upper; None if it weighs more than `most`."""
+    pieces: list[PackedLines] = []
+    total = 0
+    for part in _reaching(parts, lower, upper):
+        reader = segments.get(part)
+        total += reader.weight(lower, upper)
+        if total > most:
+            return None
+        piece = reader.read(lower, upper)
+        if len(piece):
+            pieces.append(piece)
+    return pieces
 
 
 def _finer(
     segments: OpenSegments, parts: Sequence[Segment], lower: float, upper: float, weight_at_once: int
 ) -> FloatArray:
-    """The stretch's ends, and edges between where its lines and their classes weigh more than was estimated."""
-    lines = weight = 0
-    for part in parts:
+    """The stretch's ends, and edges between for one whose lines and classes weigh more than was estimated."""
+    weight = 0
+    found = []
+    for part in _reaching(parts, lower, upper):
         reader = segments.get(part)
-        count = reader.count(lower, upper)
-        lines += count
-        weight += count + min(count, reader.classes) * reader.class_weight
-    pieces = -(-weight // weight_at_once)
-    if pieces <= 1 or 4 * weight <= 5 * weight_at_once:
-        return np.array([lower, upper])
-    values = np.sort(np.concatenate([segments.get(part).wavenumbers(lower, upper) for part in parts]))
-    step = max(-(-lines // pieces), 1)
+        weight += reader.weight(lower, upper)
+        found.append(reader.wavenumbers(lower, upper))
+    values = np.sort(np.concatenate(found))
+    step = max(values.size * weight_at_once // weight, 1)
     inner = np.unique(values[step::step])
     return np.concatenate([[lower], inner[inner > lower], [upper]])
 

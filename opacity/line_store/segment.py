@@ -103,10 +103,7 @@ def _open(path: Path) -> Any:
 
 
 class SegmentReader:
-    """An open segment, read by stretches of wavenumber.  Its sha256 is the caller's to verify.
-
-    `classes` is how many classes it holds; `class_weight` what one of them weighs beside a line.
-    """
+    """An open segment, read by stretches of wavenumber.  Its sha256 is the caller's to verify."""
 
     def __init__(self, folder: Path, segment: Segment) -> None:
         self._path = folder / segment.file
@@ -116,9 +113,9 @@ class SegmentReader:
             self._file = _open(self._path)
             self._columns = {name: self._file[name] for name in _UNITS}
             self._table = self._file["classes"]
-            self.classes = int(self._table["isotopologue"].size)
-            self.class_weight = 2 + len(self._table.get("broadeners", ()))
-            self._held = _read_classes(self._table, 0, self.classes) if self.classes <= HELD_CLASSES else None
+            self._n_classes = int(self._table["isotopologue"].size)
+            self._class_weight = 2 + len(self._table.get("broadeners", ()))
+            self._held = _read_classes(self._table, 0, self._n_classes) if self._n_classes <= HELD_CLASSES else None
         except (OSError, KeyError, RuntimeError, ValueError) as error:
             raise _unreadable(self._path, error) from error
 
@@ -145,6 +142,11 @@ class SegmentReader:
     def count(self, lower: float, upper: float) -> int:
         """How many lines have lower <= wavenumber < upper."""
         return self._place(upper) - self._place(lower)
+
+    def weight(self, lower: float, upper: float) -> int:
+        """What those lines weigh at most together with their classes: a class weighs 2, and 1 for each broadener."""
+        lines = self.count(lower, upper)
+        return lines + min(lines, self._n_classes) * self._class_weight
 
     def _place(self, value: float) -> int:
         """Index of the first line with wavenumber >= value, from the sample and one short read."""

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+from opacity.line_list.hapi_table import header_of
 from opacity.provenance import VERSION, file_sha256, package_versions
 from opacity.recipe.model import LineListSource, Recipe
 
@@ -19,6 +20,12 @@ class Fingerprint:
 
     content: dict[str, Any]
     sha256: str
+
+    @property
+    def hashes(self) -> frozenset[str]:
+        """The sha256 of every file behind the table."""
+        files = [*self.content["line_lists"], *self.content["broadening_files"].values()]
+        return frozenset(str(one["sha256"]) for one in files)
 
     @property
     def seed(self) -> int:
@@ -48,7 +55,7 @@ def fingerprint(recipe: Recipe) -> Fingerprint:
 def _all_paths(source: LineListSource) -> list[Path]:
     paths = list(source.paths)
     if source.format == "hapi":
-        paths += [path.with_suffix(".header") for path in source.paths]
+        paths += [header_of(path) for path in source.paths]
     return paths
 
 

@@ -87,7 +87,9 @@ def load_inputs(
     """
     origin = known or fingerprint(recipe)
     _check_molecule(recipe)
-    lists = [open_list(recipe, number, tables, memory, quiet) for number in range(len(recipe.line_lists))]
+    lists = [
+        open_list(recipe, number, tables, memory, quiet, origin.hashes) for number in range(len(recipe.line_lists))
+    ]
     refuse_overlap(recipe.line_lists, [one.spans for one in lists])
     nu = recipe.grid.wavenumber
     margin = max(step.cutoff for step in recipe.profile.cutoff.steps)

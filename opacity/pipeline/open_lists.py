@@ -56,10 +56,10 @@ class OpenList:
     facts: dict[str, Any]
 
 
-def open_list(recipe: Recipe, number: int, tables: Path, memory: int, quiet: bool) -> OpenList:
+def open_list(recipe: Recipe, number: int, tables: Path, memory: int, quiet: bool, hashes: frozenset[str]) -> OpenList:
     """One list of a recipe: a small one read into memory, another from its line store, made if it is missing."""
     source = recipe.line_lists[number]
-    store = None if is_small(source) else ensure_store(recipe, source, tables, memory, quiet)[0]
+    store = None if is_small(source) else ensure_store(recipe, source, tables, memory, quiet, hashes)[0]
     if store is not None:
         index = store.index
         ends = (index.segments[0].first, index.segments[-1].last) if index.segments else (0.0, 0.0)
@@ -117,6 +117,9 @@ def definition_warnings(recipe: Recipe, lists: Sequence[OpenList]) -> tuple[str,
         name, most = definition["dataset"], definition["max_temperature"]
         if most is not None and hottest > most:
             found.append(f"{name} is made for temperatures up to {most:g} K, and the grid goes to {hottest:g} K")
+        names = (definition["formula"], *one.spans)
+        if one.spans and definition["formula"] not in one.spans:
+            found.append(f"{name} is of {names[0]} by its definition, and is taken for {', '.join(one.spans)}")
         stated = definition["transitions"]
         if stated is not None and stated != one.ledger.read:
             found.append(f"{name} has {stated} transitions by its definition, and {one.ledger.read} were read")

@@ -14,6 +14,7 @@ from typing import Any
 from opacity.line_list.batches import record_batches
 from opacity.line_list.exomol.broadening import read_broadening
 from opacity.line_list.exomol.dataset import OpenDataSet, sort_files
+from opacity.line_list.hapi_table import header_of
 from opacity.line_list.records import ReadOptions
 from opacity.line_store.ingest import InputFile, ingest
 from opacity.line_store.store import LineStore, is_current, read_index
@@ -82,7 +83,7 @@ def list_inputs(recipe: Recipe, source: LineListSource, executor: ThreadPoolExec
             InputFile(
                 path,
                 partial(record_batches, path, source.format, options, leave_out, source.range, executor),
-                (*([path.with_suffix(".header")] if source.format == "hapi" else []), *broad),
+                (*([header_of(path)] if source.format == "hapi" else []), *broad),
             )
             for path in source.paths
         ]
@@ -107,16 +108,27 @@ def read_options(recipe: Recipe, source: LineListSource) -> ReadOptions:
 
 
 def ensure_store(
-    recipe: Recipe, source: LineListSource, tables: Path, memory: int = DEFAULT_MEMORY, quiet: bool = False
+    recipe: Recipe,
+    source: LineListSource,
+    tables: Path,
+    memory: int = DEFAULT_MEMORY,
+    quiet: bool = False,
+    hashes: frozenset[str] | None = None,
 ) -> tuple[LineStore, bool]:
-    """The line store of a list, made if it is missing or no longer what its files say; whether it was made now."""
+    """The line store of a list, made if it is missing or no longer what its files say; whether it was made now.
+
+    With the files' sha256 at hand (`hashes`) these decide, and not only sizes and times of change.
+    """
     hapi()  # before any thread asks for it
     with ThreadPoolExecutor(allowed_cpus()) as executor:
         made = list_inputs(recipe, source, executor)
         folder = made.folder(tables, recipe.molecule.formula)
         index = read_index(folder)
         if index is not None and is_current(index, list(made.inputs), made.key):
-            return LineStore(folder), False
+            known = {str(file["sha256"]) for one in index.inputs for file in one["files"]}
+            there = all((folder / segment.file).is_file() for segment in index.segments)
+            if there and (hashes is None or known <= hashes):
+                return LineStore(folder), False
         total = sum(_size(one.path) for one in made.inputs)
         with RecordProgress(f"reading lines of {recipe.molecule.formula}", total, quiet) as progress:
             ingest(folder, list(made.inputs), made.key, memory, progress.add, made.facts)

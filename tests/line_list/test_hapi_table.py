@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import bz2
+import gzip
 import json
 import re
 
@@ -9,6 +11,7 @@ import numpy as np
 import pytest
 
 from opacity.errors import LineListError
+from opacity.line_list.hapi_table import header_of, is_hapi
 from opacity.line_list.read import read_lines
 
 ATMOSPHERE = 1.01325
@@ -47,6 +50,16 @@ def test_a_table_without_extra_columns_reads_as_the_160_characters_do(record, he
             for kind in ("gamma", "exponent", "shift"):
                 np.testing.assert_array_equal(column(table, name, kind), column(plain, name, kind))
         assert table.isotopologues == plain.isotopologues
+
+
+@pytest.mark.parametrize(("ending", "pack"), [(".gz", gzip.compress), (".bz2", bz2.compress), (".GZ", gzip.compress)])
+def test_a_compressed_table_has_the_header_of_the_plain_one(record, header, write_table, ending, pack):
+    path = write_table([record() + ",0.069,0.62,-0.0011,0.0464,0.55,0.71,0.0022"], header(EXTRA))
+    packed = path.with_name(path.name + ending)
+    packed.write_bytes(pack(path.read_bytes()))
+    lines = read_lines(packed)
+    assert sorted(lines.broadeners) == ["air", "h2", "he", "self"]
+    assert (is_hapi(packed), header_of(packed)) == (True, path.with_suffix(".header"))
 
 
 @pytest.mark.parametrize("mark", ["#", "####", "      #", "", "   "])

@@ -16,6 +16,7 @@ from opacity.line_list.model import LineList
 from opacity.line_list.packed import pack
 from opacity.line_list.read import merge, read_lines
 from opacity.line_list.records import ReadOptions
+from opacity.line_store import assemble as assemble_module
 from opacity.line_store import ingest as ingest_module
 from opacity.line_store.ingest import InputFile, ingest
 from opacity.line_store.layout import INDEX, PARTS
@@ -88,6 +89,7 @@ def test_an_unsorted_list_comes_out_sorted(tmp_path: Path, monkeypatch: pytest.M
     """Many runs, merged in small stretches."""
     lines = read_lines(SAMPLES / "invented-molecule.par", options=ReadOptions(formula="Vl", mass=40.0))
     monkeypatch.setattr(ingest_module, "SEGMENT_LINES", at_once)
+    monkeypatch.setattr(assemble_module, "SEGMENT_LINES", at_once)
     monkeypatch.setattr(ingest_module, "BYTES_A_LINE", 3 * 10**9 // max(at_once, 1))
     parts = counted(shuffled(lines, 23, seed=2))
     ingest(tmp_path / "store", [of_batches(SAMPLES / "invented-molecule.par", parts)], "key", 10**9, quiet)
@@ -114,26 +116,29 @@ def test_a_store_takes_at_most_24_bytes_a_line_beside_its_classes(tmp_path: Path
 
 def test_an_interrupted_ingest_goes_on_file_by_file(tmp_path: Path) -> None:
     read: list[str] = []
+    records = (SAMPLES / "carbon-monoxide.par").read_bytes().splitlines(keepends=True)
+    paths = tmp_path / "a.par", tmp_path / "b.par"
+    for k, path in enumerate(paths):
+        path.write_bytes(b"".join(records[k::2]))
 
-    def watched(name: str, fails: bool) -> InputFile:
+    def watched(path: Path, fails: bool) -> InputFile:
         def batches() -> Iterator[Batch]:
-            read.append(name)
-            yield from sample(name).batches()
+            read.append(path.name)
+            yield from record_batches(path, "hitran", ReadOptions(), False, None, None)
             if fails:
                 raise KeyboardInterrupt
 
-        return InputFile(SAMPLES / name, batches)
+        return InputFile(path, batches)
 
-    names = ("carbon-monoxide.data", "carbon-monoxide.par")
+    store, again = tmp_path / "store", tmp_path / "again"
     with pytest.raises(KeyboardInterrupt):
-        ingest(tmp_path / "store", [watched(names[0], False), watched(names[1], True)], "key", 10**9, quiet)
-    assert read_index(tmp_path / "store") is None
-    ingest(tmp_path / "store", [watched(names[0], False), watched(names[1], False)], "key", 10**9, quiet)
-    assert read == [names[0], names[1], names[1]]
-    again = tmp_path / "again"
-    ingest(again, [sample(names[0]), sample(names[1])], "key", 10**9, quiet)
+        ingest(store, [watched(paths[0], False), watched(paths[1], True)], "key", 10**9, quiet)
+    assert read_index(store) is None
+    ingest(store, [watched(path, False) for path in paths], "key", 10**9, quiet)
+    assert read == ["a.par", "b.par", "b.par"]
+    ingest(again, [watched(path, False) for path in paths], "key", 10**9, quiet)
     for file in sorted(again.glob("*.h5")):
-        assert file.read_bytes() == (tmp_path / "store" / file.name).read_bytes()
+        assert file.read_bytes() == (store / file.name).read_bytes()
 
 
 def test_a_store_knows_whether_it_is_current(tmp_path: Path) -> None:

@@ -12,13 +12,17 @@ import opacity
 from opacity.cli.main import main
 from opacity.constants import SECOND_RADIATION
 from opacity.cross_sections import source as source_module
+from opacity.cross_sections.prepare import partition_of
+from opacity.cross_sections.source import ListInMemory
 from opacity.line_list import text as text_module
+from opacity.line_list.ledger import Ledger
 from opacity.line_list.packed import log_population
 from opacity.line_list.read import read_lines
 from opacity.molecule.isotopologue import isotopologue
 from opacity.molecule.partition_function import tips
 from opacity.pipeline import build as build_module
 from opacity.pipeline import inputs as inputs_module
+from opacity.pipeline import open_lists as open_lists_module
 from opacity.pipeline import sources as sources_module
 
 SAMPLES = Path(__file__).parents[2] / "data-samples"
@@ -173,3 +177,66 @@ def test_a_partition_file_is_compared_with_the_states(tmp_path: Path, data_set: 
         found = opened.provenance["partition_function"]["over_sum_of_states"]
         assert abs(found["largest_difference"]) > 0.1
         assert any("differs by" in warning and "co.pf" in warning for warning in opened.checks["warnings"])
+
+
+def test_each_isotopologue_has_the_sum_over_its_own_states() -> None:
+    heavy, light = isotopologue(5, 2), isotopologue(5, 1)
+    own = {light.formula: Q, heavy.formula: tips("TIPS-2021", heavy)}
+    assert partition_of(own, heavy)(300.0) == own[heavy.formula](300.0)
+    assert partition_of(own, light)(300.0) == Q(300.0)
+    with pytest.raises(
+        opacity.MoleculeError, match=r"no states are there to sum for \(12C\)\(18O\); expected states of"
+    ):
+        partition_of(own, isotopologue(5, 3))
+
+
+def test_a_broadening_file_for_another_gas_makes_another_store(tmp_path: Path) -> None:
+    broad = tmp_path / "x.broad"
+    broad.write_text("a0 0.05 0.5 0\n", encoding="ascii")
+    keys = set()
+    for gas in ("H2", "He"):
+        path = write_recipe(tmp_path, gas, list=HITRAN, partition=TIPS)
+        text = path.read_text(encoding="utf-8").replace("mixture = { H2 = 1.0 }", f"mixture = {{ {gas} = 1.0 }}")
+        text = text.replace("[broadening.default.H2]", f"[broadening.default.{gas}]")
+        path.write_text(
+            text.replace("[broadening]\n", f'[broadening]\nfiles = {{ {gas} = "x.broad" }}\n'), encoding="utf-8"
+        )
+        recipe = opacity.load_recipe(path)
+        keys.add(sources_module.list_inputs(recipe, recipe.line_lists[0], None).key)
+    assert len(keys) == 2
+
+
+def test_windows_are_as_short_as_their_lines_are_many(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    recipe = opacity.load_recipe(write_recipe(tmp_path, "hitran", list=HITRAN, partition=TIPS))
+    lines = inputs_module.load_inputs(recipe, tmp_path).lines
+    nu = np.linspace(2000.0, 2300.0, 10 * build_module.BLOCK)
+    assert build_module.windows(nu, 5.0, lines) == [slice(0, nu.size)]
+    monkeypatch.setattr(build_module, "LINES_AT_ONCE", 15)
+    parts = build_module.windows(nu, 5.0, lines)
+    assert [part.start for part in parts[1:]] == [part.stop for part in parts[:-1]]
+    assert all(part.start % build_module.BLOCK == 0 for part in parts)
+    assert all(lines.count(nu[p.start] - 5.0, nu[p.stop - 1] + 5.0) <= 15 for p in parts if p.stop - p.start > 16384)
+    assert len(parts) > 2
+
+
+def test_a_grid_beyond_what_a_definition_is_made_for_is_told(tmp_path: Path, data_set: Path) -> None:
+    facts = {
+        "definition": {
+            "dataset": "made up",
+            "formula": "(12C)(16O)",
+            "max_temperature": 500.0,
+            "transitions": 7,
+            "notes": ["a note"],
+        },
+        "states": {"notes": {}},
+    }
+    recipe = opacity.load_recipe(write_recipe(tmp_path, "exomol", list=EXOMOL, partition=TIPS))
+    one = open_lists_module.OpenList(
+        ListInMemory(read_lines(SAMPLES / "carbon-monoxide.par")), Ledger(202, 202), {}, facts
+    )
+    warnings = open_lists_module.definition_warnings(recipe, [one])
+    assert warnings == (
+        "made up is made for temperatures up to 500 K, and the grid goes to 900 K",
+        "made up has 7 transitions by its definition, and 202 were read",
+        "made up: a note",
+    )

@@ -28,7 +28,8 @@ Index = NDArray[np.int64]
 CODES = ("a1", "a0", "m0")
 """Codes of rows that are used; the earlier one goes first where several have a row for a line."""
 
-NONE, EXACT, NEIGHBOUR, BEYOND = 0, 1, 2, 3
+KINDS = 4
+NONE, EXACT, NEIGHBOUR, BEYOND = range(KINDS)
 """Why a line has the row it has: no row; its own; the next lower one (or the first); the last one."""
 
 _QUANTUM_NUMBERS = {"a1": 2, "a0": 1, "m0": 1}
@@ -69,16 +70,31 @@ class RowMatch:
 
 def widths(table: BroadeningTable, j_lower: ArrayLike, j_upper: ArrayLike) -> tuple[FloatArray, FloatArray]:
     """Half-width (cm-1/bar at 296 K) and exponent of lines with J'' and J', (k,) each; NaN where no row serves."""
-    row = match_rows(table, j_lower, j_upper).row
-    there = row >= 0
+    return widths_of(table, match_rows(table, j_lower, j_upper))
+
+
+def widths_of(table: BroadeningTable, match: RowMatch) -> tuple[FloatArray, FloatArray]:
+    """As `widths`, of rows that have been matched."""
+    row, there = match.row, match.row >= 0
     return np.where(there, table.gamma[row], np.nan), np.where(there, table.exponent[row], np.nan)
+
+
+def served_notes(name: str, path: str, counts: NDArray[np.int64]) -> Counter[str]:
+    """What a ledger says of lines whose width by a broadener comes from a file; `counts` (KINDS,) of lines by kind."""
+    text = f"{name} width by J'' from {printable(Path(path).name)}"
+    notes = {
+        text: counts[EXACT] + counts[NEIGHBOUR] + counts[BEYOND],
+        f"{text}, beyond its last J'': last row taken": counts[BEYOND],
+        f"{text}, between its rows: a neighbour taken": counts[NEIGHBOUR],
+    }
+    return Counter({note: int(count) for note, count in notes.items() if count})
 
 
 def match_rows(table: BroadeningTable, j_lower: ArrayLike, j_upper: ArrayLike) -> RowMatch:
     """The row that serves each line, from J'' (k,) and J' (k,).
 
-    A row made for exactly the line's quantum numbers goes first, in the order a1, a0, m0.  Then, in this order again, a
-    neighbour: the last row where the line lies beyond it, else the next lower row, else the first one.
+    A row made for exactly the line's quantum numbers goes first, in the order a1, a0, m0.  Then, in the order a0, m0,
+    a1, a neighbour: the last row where the line lies beyond it, else the next lower row, else the first one.
     For m0, |m| = J'' + 1 where J' = J'' + 1 and J'' where J' = J'' or J'' - 1; other lines have no m.
     """
     lower, upper = np.broadcast_arrays(_doubled(j_lower), _doubled(j_upper))
@@ -101,8 +117,10 @@ def _match(table: BroadeningTable, lower: Index, step: Index) -> RowMatch:
     row = np.full(lower.shape, -1, dtype=np.int64)
     kind = np.full(lower.shape, NONE, dtype=np.uint8)
     found = [_find(table, number, *_wanted(code, lower, step)) for number, code in enumerate(CODES)]
-    for exact in (True, False):
-        for candidate in found:
+    # A neighbour in a0, made for J'' alone, is nearer the line than one in a1, which may stand for one branch far away.
+    a1, a0, m0 = found
+    for exact, order in ((True, (a1, a0, m0)), (False, (a0, m0, a1))):
+        for candidate in order:
             take = (row < 0) & (candidate.row >= 0) & ((candidate.kind == EXACT) == exact)
             row[take], kind[take] = candidate.row[take], candidate.kind[take]
     return RowMatch(row, kind)

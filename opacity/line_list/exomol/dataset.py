@@ -1,6 +1,6 @@
 """One data set in ExoMol format: which of its files is what, and what they say together.
 
-Files are told apart by their endings, plain or .bz2: .def or .def.json, .states, .trans (many), .pf, .broad.
+Files are told apart by their endings, plain, .gz or .bz2: .def or .def.json, .states, .trans (many), .pf, .broad.
 """
 
 from __future__ import annotations
@@ -66,7 +66,8 @@ def sort_files(
         if len(kinds[kind]) > 1:
             found = ", ".join(path.name for path in kinds[kind])
             raise LineListError(problem(where, f"several .{kind} files", expected="one", found=found))
-    named = {**default_names(kinds["broad"]), **broad}
+    unnamed = [path for path in kinds["broad"] if path not in broad.values()]
+    named = {**default_names(unnamed), **broad}
     return DataSet(
         definition=kinds["def"][0] if kinds["def"] else None,
         states=kinds["states"][0],

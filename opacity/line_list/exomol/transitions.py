@@ -4,6 +4,9 @@
 
 from __future__ import annotations
 
+import math
+import re
+from collections import Counter
 from collections.abc import Iterator, Mapping, Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass
@@ -14,14 +17,24 @@ from numpy.typing import NDArray
 
 from opacity.constants import REFERENCE_TEMPERATURE
 from opacity.errors import LineListError, problem
+from opacity.grids import FloatArray
 from opacity.kernels import transitions as kernel
 from opacity.kernels.text import read_rows
 from opacity.line_list.batches import Batch, in_order, not_empty
-from opacity.line_list.exomol.broadening import BroadeningTable, widths
+from opacity.line_list.exomol.broadening import KINDS, BroadeningTable, match_rows, served_notes, widths_of
 from opacity.line_list.exomol.states import States
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
-from opacity.line_list.packed import PackedLines, WidthClasses, encode_energy, encode_intensity
+from opacity.line_list.packed import (
+    ENERGY_OFFSET,
+    HIGHEST_ENERGY,
+    LOG_OFFSET,
+    PackedLines,
+    WidthClasses,
+    encode_energy,
+    encode_intensity,
+)
+from opacity.line_list.records import STRONGEST
 from opacity.line_list.text import RawText, TextChunk, read_raw
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
@@ -32,7 +45,12 @@ _FAULTS = {
     kernel.NO_WAVENUMBER: ("both states have the same energy: wavenumber 0", "states of different energy"),
     kernel.SWAPPED: ("upper state lies below the lower one", "upper id, lower id"),
     kernel.BAD_A: ("Einstein A is impossible", "a finite number, 0 or more"),
+    kernel.BAD_ENERGY: ("lower-state energy out of range", f"{ENERGY_OFFSET:g} to {HIGHEST_ENERGY:.0f} cm-1"),
+    kernel.BAD_STRENGTH: ("strength out of range", f"1e-173 to {STRONGEST:g} cm/molecule before population and Q"),
 }
+_ENERGIES = (ENERGY_OFFSET, HIGHEST_ENERGY)
+_LOG_INTENSITIES = (LOG_OFFSET, math.log(STRONGEST))
+_ENDINGS = re.compile(r"\.broad(\.gz|\.bz2)?$", re.IGNORECASE)
 _UNREADABLE = ("row cannot be read", "upper id, lower id, A and perhaps the wavenumber")
 WAVENUMBER_AGREES = 0.01
 """A wavenumber given beside A may differ this much (cm-1) from the states' before it is noted."""
@@ -42,13 +60,15 @@ WAVENUMBER_AGREES = 0.01
 class StateJoin:
     """What all transition files of a data set share.
 
-    `twice_j` (n_states,) 2J; `classes` the widths of every (2J'', J' - J''), by `width_key` of the kernel.
+    `twice_j` (n_states,) 2J; `classes` the widths of every (2J'', J' - J''), by `width_key` of the kernel;
+    `served` by broadener the name of its file and, by `width_key` too, the kind of row that serves.
     """
 
     states: States
     twice_j: NDArray[np.int32]
     classes: WidthClasses
     isotopologue: Isotopologue
+    served: Mapping[str, tuple[str, NDArray[np.uint8]]]
 
 
 def state_join(states: States, broadening: Mapping[str, BroadeningTable], isotopologue: Isotopologue) -> StateJoin:
@@ -58,12 +78,14 @@ def state_join(states: States, broadening: Mapping[str, BroadeningTable], isotop
     lower = keys // kernel.BRANCHES
     upper = np.maximum(lower + keys % kernel.BRANCHES - 4, 0)
     nothing = np.full(keys.size, np.nan)
-    columns = {}
+    columns, served = {}, {}
     for name, table in broadening.items():
-        gamma, exponent = widths(table, 0.5 * lower, 0.5 * upper)
+        match = match_rows(table, 0.5 * lower, 0.5 * upper)
+        served[name] = (table.path, match.kind)
+        gamma, exponent = widths_of(table, match)
         columns[name.lower()] = BroadenerColumns(gamma, exponent, nothing)
     zeros = np.zeros(keys.size, dtype=np.int16)
-    return StateJoin(states, twice_j, WidthClasses(zeros, zeros, columns), isotopologue)
+    return StateJoin(states, twice_j, WidthClasses(zeros, zeros, columns), isotopologue, served)
 
 
 def transition_batches(
@@ -94,16 +116,17 @@ def _batch(path: Path, chunk: TextChunk, join: StateJoin, leave_out: bool, range
     states = join.states
     kernel.join_states(
         upper, lower, np.ascontiguousarray(numbers[:, 0]), states.energy, states.total_weight, join.twice_j,
-        wavenumber, log_intensity, key, status,
+        _ENERGIES, _LOG_INTENSITIES, wavenumber, log_intensity, key, status,
     )  # fmt: skip
     ledger = _account(path, chunk, readable, status, leave_out)
     good = readable & (status == kernel.GOOD)
-    ledger.notes.update(_notes(numbers[:, 1], wavenumber, good))
     if range is not None:
         inside = (wavenumber >= range[0]) & (wavenumber <= range[1])
         ledger.leave_out("outside the range asked for", int(np.count_nonzero(good & ~inside)))
         good &= inside
+    ledger.notes.update(_notes(numbers[:, 1], wavenumber, log_intensity, good))
     order = np.flatnonzero(good)
+    ledger.notes.update(_served(join, key[order]))
     packed = PackedLines(
         wavenumber=wavenumber[order],
         intensity=encode_intensity(log_intensity[order]),
@@ -116,11 +139,23 @@ def _batch(path: Path, chunk: TextChunk, join: StateJoin, leave_out: bool, range
     return Batch(packed, (join.isotopologue,), (basis,), ledger, chunk.read)
 
 
-def _notes(given: NDArray[np.float64], wavenumber: NDArray[np.float64], good: NDArray[np.bool_]) -> dict[str, int]:
+def _notes(
+    given: FloatArray, wavenumber: FloatArray, log_intensity: FloatArray, good: NDArray[np.bool_]
+) -> dict[str, int]:
     with np.errstate(invalid="ignore"):
         differ = int(np.count_nonzero(good & (np.abs(given - wavenumber) > WAVENUMBER_AGREES)))
     text = f"wavenumber given differs by over {WAVENUMBER_AGREES:g} cm-1 from the states' energies, which are used"
-    return {text: differ} if differ else {}
+    nothing = int(np.count_nonzero(good & np.isneginf(log_intensity)))
+    return {note: n for note, n in ((text, differ), ("strength 0: contributes nothing", nothing)) if n}
+
+
+def _served(join: StateJoin, key: NDArray[np.int64]) -> Counter[str]:
+    """How many of the lines have their widths from which file."""
+    notes: Counter[str] = Counter()
+    lines = np.bincount(key, minlength=len(join.classes))
+    for name, (path, kind) in join.served.items():
+        notes.update(served_notes(name, path, np.bincount(kind, lines, KINDS).astype(np.int64)))
+    return notes
 
 
 def _account(
@@ -154,10 +189,21 @@ def _account(
 
 
 def default_names(files: Sequence[Path]) -> dict[str, Path]:
-    """Broadener by name from files called <isotopologue>__<broadener>.broad, plain or .bz2."""
+    """Broadener by name from files called <isotopologue>__<broadener>.broad, plain, .gz or .bz2.
+
+    Raises LineListError for a file that names no broadener.
+    """
     names = {}
     for path in files:
-        stem = path.name.removesuffix(".bz2").removesuffix(".broad")
-        if "__" in stem:
-            names[stem.rsplit("__", 1)[1]] = path
+        name = _ENDINGS.sub("", path.name).rpartition("__")
+        if not (name[1] and name[2]):
+            raise LineListError(
+                problem(
+                    path,
+                    "no broadener in the name of the file",
+                    expected="a name like X__H2.broad",
+                    remedy="name it so, or use [broadening] files",
+                )
+            )
+        names[name[2]] = path
     return names

@@ -26,7 +26,7 @@ def test_precedence_of_codes(write, broad):
     assert one(table, 0, 1) == (0.0860, 0.096, EXACT)  # a0, though m0 has |m| = 1
     assert one(table, 2, 3) == (0.0800, 0.090, EXACT)  # a0's own row before a1's neighbour
     assert one(table, 3, 3) == (0.0800, 0.090, NEIGHBOUR)
-    assert one(table, 3, 4) == (0.0811, 0.111, BEYOND)  # nothing exact: a1's last row of the branch
+    assert one(table, 3, 4) == (0.0800, 0.090, NEIGHBOUR)  # nothing exact: a0's neighbour before a1's last row
     assert one(table, 50, 50) == (0.0700, 0.080, BEYOND)
     assert dict(table.skipped) == {"v1": 1}
     assert table.notes == {"quantum numbers without a row, between two that have one: the lower row serves": 1}
@@ -120,8 +120,8 @@ def slow(rows, low, up):
             return rows[wanted]
     branch = {key[1]: value for key, value in rows.items() if key[0] == "a1" and key[2] - key[1] == up - low}
     for table, value in (
-        (branch, low),
         *(({k[1]: v for k, v in rows.items() if k[0] == c}, x) for c, x in (("a0", low), ("m0", m))),
+        (branch, low),
     ):
         below = [key for key in table if key <= value]
         if table:

@@ -11,6 +11,7 @@ import pytest
 from opacity.errors import LineListError
 from opacity.kernels.line_strength import strength_ratio
 from opacity.line_list.exomol.broadening import read_broadening
+from opacity.line_list.exomol.dataset import sort_files
 from opacity.line_list.exomol.states import read_states
 from opacity.line_list.exomol.transitions import StateJoin, default_names, state_join, transition_batches
 from opacity.line_list.model import LineList
@@ -33,6 +34,7 @@ def write_states(folder: Path, lines: LineList) -> Path:
             ((low, lines.lower_weight[i]), (low + lines.wavenumber[i], lines.upper_weight[i]))
         ):
             rows.append(f"{2 * i + 1 + k:12d} {energy:14.6f} {weight:6.0f} {(weight - 1) / 2:7.1f}")
+    rows += ["900001 150000.0 1 0.0", "900002 151000.0 3 1.0"]  # an energy that no line can have
     path = folder / "co.states"
     path.write_text("\n".join(rows) + "\n", encoding="ascii")
     return path
@@ -113,6 +115,9 @@ def test_widths_by_lower_j_from_the_broad_file(tmp_path: Path, lines: LineList, 
         ("2 2 1.0", "both states have the same energy: wavenumber 0"),
         ("2 1 -1.0", "Einstein A is impossible"),
         ("2 1 9E999", "Einstein A is impossible"),
+        ("2 1 1.0E50", "strength out of range"),
+        ("2 1 1.0E-200", "strength out of range"),
+        ("900002 900001 1.0", "lower-state energy out of range"),
     ],
 )
 def test_bad_rows_are_named_or_counted(tmp_path: Path, lines: LineList, join: StateJoin, row: str, what: str) -> None:
@@ -126,6 +131,34 @@ def test_bad_rows_are_named_or_counted(tmp_path: Path, lines: LineList, join: St
     assert len(batch.packed) == len(lines) + 1
 
 
+def test_lines_served_by_the_file_and_those_of_strength_0_are_counted(
+    tmp_path: Path, lines: LineList, join: StateJoin
+) -> None:
+    path = write_transitions(tmp_path / "co.trans", lines)
+    path.write_text(path.read_text(encoding="ascii") + "2 1 0.0\n", encoding="ascii")
+    notes = all_of(path, join).ledger.notes
+    j = (np.append(lines.lower_weight, lines.lower_weight[0]) - 1.0) / 2.0
+    assert notes["H2 width by J'' from co__H2.broad"] == len(lines) + 1
+    beyond = notes["H2 width by J'' from co__H2.broad, beyond its last J'': last row taken"]
+    between = notes["H2 width by J'' from co__H2.broad, between its rows: a neighbour taken"]
+    assert beyond == np.count_nonzero(j > 10)
+    assert 0 < between < np.count_nonzero((j > 0) & (j < 10))  # the row of m0 serves two lines exactly
+    assert notes["strength 0: contributes nothing"] == 1
+
+
+def test_the_broadener_in_the_name_of_a_file() -> None:
+    names = ["CO__H2.broad", "CO__He.broad.gz", "CO__air.broad.bz2"]
+    assert list(default_names([Path(name) for name in names])) == ["H2", "He", "air"]
+    for name in ("CO.broad", "CO__.broad"):
+        with pytest.raises(LineListError, match=rf"^{name}: no broadener in the name of the file; .* \[broadening\]"):
+            default_names([Path(name)])
+
+
+def test_a_broad_file_that_the_recipe_names_needs_no_broadener_in_its_name() -> None:
+    files = [Path("co.states"), Path("co.trans"), Path("co.broad")]
+    assert sort_files(files, "recipe", "CO", "1", {"H2": Path("co.broad")}).broad == {"H2": Path("co.broad")}
+
+
 def test_range_notes_and_empty_files(tmp_path: Path, lines: LineList, join: StateJoin) -> None:
     path = write_transitions(tmp_path / "co.trans", lines, columns=4)
     batch = all_of(path, join, within=(2100.0, 2200.0))
@@ -133,7 +166,7 @@ def test_range_notes_and_empty_files(tmp_path: Path, lines: LineList, join: Stat
     assert batch.ledger.left_out["outside the range asked for"] == len(lines) - len(batch.packed)
     shifted = path.read_text(encoding="ascii").replace(f"{lines.wavenumber[0]:.6f}", "1.0", 1)
     path.write_text(shifted, encoding="ascii")
-    assert sum(all_of(path, join).ledger.notes.values()) == 1
+    assert sum(n for note, n in all_of(path, join).ledger.notes.items() if note.startswith("wavenumber given")) == 1
     path.write_text("\n\n", encoding="ascii")
     with pytest.raises(LineListError, match="holds no transition"):
         all_of(path, join)
