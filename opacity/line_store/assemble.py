@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 from collections.abc import Iterator
 from dataclasses import replace
 from pathlib import Path
@@ -13,7 +12,7 @@ import numpy as np
 from opacity.errors import LineListError, ResourceError, problem
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.packed import Identical, PackedLines, count_identical, join, used_classes
-from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, PARTS, SEGMENT_LINES, Segment
+from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, PARTS, SEGMENT_LINES, Segment, sealed
 from opacity.line_store.merge import merged
 from opacity.line_store.segment import write_segment
 from opacity.tables.atomic import write_atomically
@@ -69,7 +68,7 @@ def assemble(
         "broadeners": sorted({name for manifest in manifests for name in manifest["broadeners"]}),
         "segments": [segment.as_dict() for segment in segments],
     }
-    write_atomically(folder / INDEX, json.dumps(index).encode("utf-8"))
+    write_atomically(folder / INDEX, sealed(index))
 
 
 def _said_twice(names: list[str], repeated: Identical) -> str:

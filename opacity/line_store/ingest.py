@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import functools
-import json
 import shutil
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
@@ -16,7 +15,7 @@ from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
 from opacity.line_list.packed import PackedLines, join
 from opacity.line_store.assemble import assemble, weight
-from opacity.line_store.layout import PARTS, SEGMENT_LINES, Segment
+from opacity.line_store.layout import PARTS, SEGMENT_LINES, Segment, sealed, unsealed
 from opacity.line_store.lock import locked
 from opacity.line_store.segment import write_segment
 from opacity.molecule.isotopologue import Isotopologue
@@ -169,7 +168,7 @@ def _ingest_file(
         "broadeners": sorted(names),
         "segments": [segment.as_dict() for segment in segments],
     }
-    write_atomically(manifest_path, json.dumps(manifest).encode("utf-8"))
+    write_atomically(manifest_path, sealed(manifest))
     return manifest
 
 
@@ -187,8 +186,8 @@ def _write_run(parts: Path, name: str, waiting: list[PackedLines]) -> list[Segme
 
 
 def _read_json(path: Path) -> dict[str, Any] | None:
+    """A manifest as it was written; one that is damaged is no manifest."""
     try:
-        value = json.loads(path.read_text(encoding="utf-8"))
-    except (OSError, ValueError):
+        return unsealed(path.read_bytes())
+    except (OSError, ValueError, RecursionError):
         return None
-    return value if isinstance(value, dict) else None

@@ -8,6 +8,8 @@ who makes it.
 
 from __future__ import annotations
 
+import hashlib
+import json
 from dataclasses import dataclass
 from typing import Any
 
@@ -20,6 +22,26 @@ SAMPLE_EVERY = 4096
 INDEX = "index.json"
 PARTS = "parts"
 LOCK = "ingest.lock"
+
+
+def sealed(values: dict[str, Any]) -> bytes:
+    """Plain values as JSON with their own sha256 inside."""
+    return json.dumps({**values, "sha256": _digest(values)}).encode("utf-8")
+
+
+def unsealed(data: bytes) -> dict[str, Any]:
+    """What `sealed` wrote.  Raises ValueError where it is not as it was written."""
+    values = json.loads(data.decode("utf-8"))
+    if not isinstance(values, dict):
+        raise ValueError("not an object")
+    stated = values.pop("sha256", None)
+    if stated != _digest(values):
+        raise ValueError("sha256 differs")
+    return values
+
+
+def _digest(values: dict[str, Any]) -> str:
+    return hashlib.sha256(json.dumps(values, sort_keys=True).encode("utf-8")).hexdigest()
 
 
 @dataclass(frozen=True)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
@@ -16,7 +15,7 @@ from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.packed import join, unpack
 from opacity.line_store.ingest import InputFile, same_content
-from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, Segment
+from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, Segment, unsealed
 from opacity.line_store.merge import OpenSegments
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
@@ -52,12 +51,12 @@ def read_index(folder: Path) -> StoreIndex | None:
     if "\0" in str(folder):  # no file system has such a name
         return None
     try:
-        text = path.read_text(encoding="utf-8")
+        data = path.read_bytes()
     except OSError:
         return None
     remedy = "remove the folder: the store is made again from the line lists"
     try:
-        values = json.loads(text)
+        values = unsealed(data)
         if values["format"] != FORMAT_NAME or int(values["format_version"]) > FORMAT_VERSION:
             raise LineListError(
                 problem(path, "a line store of another version", expected=f"version {FORMAT_VERSION}",
@@ -74,7 +73,7 @@ def read_index(folder: Path) -> StoreIndex | None:
             broadeners=tuple(str(name) for name in values["broadeners"]),
             segments=tuple(Segment.from_dict(one) for one in values["segments"]),
         )
-    except (KeyError, TypeError, ValueError) as error:
+    except (KeyError, TypeError, ValueError, AttributeError, RecursionError) as error:
         raise LineListError(problem(path, f"not the index of a line store ({error!r})", remedy=remedy)) from error
 
 

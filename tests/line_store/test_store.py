@@ -172,7 +172,10 @@ def test_damage_is_named(tmp_path: Path) -> None:
     segment.unlink()
     with LineStore(folder) as store, pytest.raises(LineListError, match=rf"{segment.name}: segment .* missing"):
         store.window(0.0, 1e9)
-    for text in ("", "{}", "[1]", '{"format": "opacity line store", "format_version": 99}', "\x00"):
+    index = (folder / INDEX).read_text(encoding="utf-8")
+    changed = index.replace('"mass": 2', '"mass": 1', 1)
+    assert changed != index
+    for text in (changed, "", "{}", "[1]", '{"format": "opacity line store", "format_version": 99}', "\x00"):
         (folder / INDEX).write_text(text, encoding="utf-8")
         with pytest.raises(LineListError, match=r"^[^\n]*index\.json: [^\n]*$"):
             read_index(folder)
