@@ -52,9 +52,10 @@ def generate(folder: Path, millions: float) -> list[Path]:
             left = int(millions * 1e6 / FILES)
             while left > 0:
                 n = min(left, 200_000)
-                lower = rng.integers(0, STATES - 1, n)
-                upper = np.minimum(lower + 1 + rng.integers(0, STATES // 2, n), STATES - 1)
-                a = 10.0 ** rng.uniform(-10, 3, n)
+                lower = rng.integers(0, STATES // 2, n)
+                upper = lower + 1 + rng.integers(0, STATES // 2 - 1, n)
+                # A rises with the square of the wavenumber, so that no line is stronger than any can be.
+                a = 10.0 ** rng.uniform(-10, 0, n) * ((energy[upper] - energy[lower]) / 1000.0) ** 2
                 rows = (f"{u:12d} {low:12d} {x:10.4E}\n" for u, low, x in zip(upper + 1, lower + 1, a, strict=True))
                 file.writelines(rows)
                 left -= n
