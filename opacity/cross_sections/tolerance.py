@@ -6,7 +6,6 @@ relative error is within the largest of the lines' errors.
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 
 from opacity.errors import InputError, problem
@@ -46,11 +45,3 @@ def regions(tolerance: float, plinth: bool = False) -> Regions:
     near = max((2.0 * _NEAR_COEFFICIENT / inner) ** (1.0 / 12.0), _SMALLEST_NEAR)
     far = max((2.0 * _FAR_COEFFICIENT / inner) ** 0.25, _SMALLEST_FAR)
     return Regions(inner, near, max(far, near))
-
-
-def resolution_needed(doppler: float, pressure_width: float) -> float:
-    """Half-width at half maximum of a Voigt profile from both half-widths, in their unit.
-
-    Approximation with 0.02 % error: Olivero & Longbothum 1977, JQSRT 17, 233.
-    """
-    return 0.5346 * pressure_width + math.sqrt(0.2166 * pressure_width**2 + doppler**2)

@@ -5,9 +5,12 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION
+from opacity.constants import LIGHT_SPEED, REFERENCE_TEMPERATURE, SECOND_RADIATION
 
 Array = NDArray[np.float64]
+
+EIGHT_PI_C = 8.0 * np.pi * 100.0 * LIGHT_SPEED
+"""8 pi c, c in cm/s: S and A of a line are related by it."""
 
 
 def strength_ratio(
@@ -43,8 +46,7 @@ def strength_from_einstein_a(
     S = Ia g' A exp(-c2 E''/T) [1 - exp(-c2 nu/T)] / (8 pi c nu^2 Q(T)) (Rothman et al. 1998, appendix);
     A in s-1, c in cm/s, `partition` Q(T), `abundance` Ia; all (n_lines,).
     """
-    light_speed = 2.99792458e10
     population = np.exp(-SECOND_RADIATION * lower_energy / temperature) / partition
     emission = -np.expm1(-SECOND_RADIATION * wavenumber / temperature)
-    scale = 8.0 * np.pi * light_speed * wavenumber**2
+    scale = EIGHT_PI_C * wavenumber**2
     return np.asarray(abundance * upper_weight * einstein_a * population * emission / scale)

@@ -33,3 +33,11 @@ def pressure_half_width(gamma: Array, exponent: Array, temperature: float, press
     (Rothman et al. 1998, JQSRT 60, 665, appendix).
     """
     return np.asarray(pressure * np.sum(gamma * (REFERENCE_TEMPERATURE / temperature) ** exponent, axis=0))
+
+
+def voigt_half_width(doppler: Array, lorentz: Array) -> Array:
+    """Half-width at half maximum of Voigt profiles from both half-widths, in their unit, (n_lines,).
+
+    Approximation with 0.02 % error: Olivero & Longbothum 1977, JQSRT 17, 233.
+    """
+    return np.asarray(0.5346 * lorentz + np.sqrt(0.2166 * lorentz**2 + doppler**2))

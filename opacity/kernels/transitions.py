@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.kernels.jit import jit_exact
+from opacity.kernels.line_strength import EIGHT_PI_C
 
 Array = NDArray[np.float64]
 Index = NDArray[np.int64]
@@ -18,7 +19,7 @@ BAD_ENERGY, BAD_STRENGTH = 6, 7
 BRANCHES = 9
 """Classes of J' - J'' told apart: from -2 to 2 in halves; what lies beyond counts as the last."""
 
-_LOG_8_PI_C = math.log(8.0 * math.pi * 2.99792458e10)
+_LOG_8_PI_C = math.log(EIGHT_PI_C)
 
 
 @jit_exact

@@ -13,6 +13,7 @@ from pathlib import Path
 
 from opacity.errors import ResourceError, problem
 from opacity.line_store.layout import LOCK
+from opacity.tables.atomic import process_runs
 
 _SECONDS_A_WEEK = 7 * 24 * 3600.0
 _held: set[str] = set()
@@ -110,16 +111,4 @@ def _is_left_behind(path: Path, text: str) -> bool:
         return False
     if holder[1] == os.getpid():  # an earlier process of the same number, unless it is this one
         return os.path.abspath(path) not in _held
-    return not _runs(holder[1])
-
-
-def _runs(process: int) -> bool:
-    if os.name == "nt":  # where asking would be a signal
-        return True
-    try:
-        os.kill(process, 0)
-    except (ProcessLookupError, OverflowError):
-        return False
-    except OSError:  # it runs, and is another user's
-        return True
-    return True
+    return not process_runs(holder[1])

@@ -13,6 +13,7 @@ from opacity.check.profile_share import sampling_risk
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource
 from opacity.errors import ResourceError, problem
+from opacity.kernels.line_width import voigt_half_width
 from opacity.molecule.partition_function import STEP, PartitionFunction, editions_differ
 from opacity.pipeline.inputs import Inputs, refuse_invalid_temperatures
 from opacity.pipeline.resources import available_memory, free_disk
@@ -178,7 +179,7 @@ def _coarse_nodes(recipe: Recipe, source: LineSource) -> list[NodeResolution]:
             inside = (node.centre >= nu[0]) & (node.centre <= nu[-1])
             if not inside.any():
                 continue
-            width = 0.5346 * node.lorentz + np.sqrt(0.2166 * node.lorentz**2 + node.doppler**2)
+            width = voigt_half_width(node.doppler, node.lorentz)
             narrowest[row] = min(narrowest[row], float(width[inside].min()))
             risk = sampling_risk(node, nu)[inside]
             sums[row] += np.sum(node.strength[inside]), np.sum(node.strength[inside] * risk)

@@ -68,7 +68,7 @@ def remove_leftovers(folder: Path) -> None:
     with contextlib.suppress(OSError, ValueError):
         for path in folder.iterdir():
             match = _TEMPORARY.fullmatch(path.name)
-            if match is not None and (_is_old(path) or (match[1] == _host() and not _runs(int(match[2])))):
+            if match is not None and (_is_old(path) or (match[1] == _host() and not process_runs(int(match[2])))):
                 with contextlib.suppress(OSError):
                     path.unlink()
 
@@ -78,7 +78,8 @@ def _host() -> str:
     return hashlib.sha256(platform.node().encode("utf-8", "surrogateescape")).hexdigest()[:8]
 
 
-def _runs(process: int) -> bool:
+def process_runs(process: int) -> bool:
+    """Whether a process of this number runs on this host; true where that cannot be asked."""
     if os.name == "nt":  # where asking would be a signal
         return True
     try:
