@@ -13,8 +13,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.arguments import DefaultWidth, as_default_widths, as_fractions, as_number, shown
+from opacity.chi_factors import CHI_FACTORS, chi_table
 from opacity.cross_sections.exact import exact_spectrum
-from opacity.cross_sections.prepare import NodeLines, PreparedLines, prepare
+from opacity.cross_sections.prepare import PreparedLines, prepare
 from opacity.cross_sections.tolerance import regions
 from opacity.errors import AssumptionWarning, InputError, LineListError, problem
 from opacity.grids import HIGHEST_PRESSURE, LOWEST_PRESSURE, FloatArray, as_axis, as_wavenumbers
@@ -48,7 +49,8 @@ def cross_section(
     `wavenumber` (n_nu,) cm-1, rising; `temperature` K; `pressure` bar; `broadeners` mole fractions, sum 1;
     `cutoff` cm-1 from each line's unshifted wavenumber, one number or a `Cutoff` by pressure.  At every point
     |sigma - exact| <= `tolerance` exact, where exact is what `exact_cross_section` gives, and sigma is 0
-    where no line reaches.  With `plinth` the profile's value at the cut-off is subtracted inside it.
+    where no line reaches.  With `plinth` the profile's value at the cut-off is subtracted inside it; `chi` names a set
+    of factors of `opacity.chi_factors` for sub-Lorentzian wings.
     `partition_function` is "TIPS-2021", "TIPS-2025" or the Path of a file of T and Q; `abundance` is
     "terrestrial", "pure" or fractions by isotopologue; `default_widths` serve lines without widths.
     `workers` threads give the same bits as one.
@@ -57,17 +59,22 @@ def cross_section(
     that cannot be right, MoleculeError for widths or partition functions that are not to be had.
     """
     # Late, so that importing the package does not load numba.
-    from opacity.cross_sections.compute import spectrum
+    from opacity.cross_sections.compute import NodeSum, add_spectra
 
     _check_workers(workers)
     _check_flag("plinth", plinth)
     limits = regions(as_number("tolerance", tolerance), plinth)
     nodes = _nodes(wavenumber, temperature, pressure, cutoff)
-    prepared = _prepare(lines, partition_function, abundance, broadeners, default_widths, chi)
+    factors = _chi(chi)
+    prepared = _prepare(lines, partition_function, abundance, broadeners, default_widths)
     executor = ThreadPoolExecutor(workers) if workers > 1 else None
 
-    def one(node: NodeLines, reach: float) -> FloatArray:
-        return spectrum(node, nodes.wavenumber, reach, limits, plinth, executor)
+    def one(temperature: float, strength: FloatArray) -> FloatArray:
+        at_temperature = prepared.at_temperature(temperature, strength)
+        sums = [NodeSum(at_temperature, pressure, nodes.cutoff.at(pressure)) for pressure in nodes.pressure.tolist()]
+        sigma = np.zeros((len(sums), nodes.wavenumber.size))
+        add_spectra(list(sigma), sums, nodes.wavenumber, limits, plinth, factors, executor)
+        return sigma
 
     try:
         return _all_nodes(prepared, nodes, one)
@@ -101,10 +108,16 @@ def exact_cross_section(
     _check_flag("plinth", plinth)
     nodes = _nodes(wavenumber, temperature, pressure, cutoff)
 
-    def one(node: NodeLines, reach: float) -> FloatArray:
-        return exact_spectrum(node, nodes.wavenumber, reach, plinth)
+    factors = _chi(chi)
+    prepared = _prepare(lines, partition_function, abundance, broadeners, default_widths)
 
-    prepared = _prepare(lines, partition_function, abundance, broadeners, default_widths, chi)
+    def one(temperature: float, strength: FloatArray) -> FloatArray:
+        sums = []
+        for pressure in nodes.pressure.tolist():
+            node = prepared.at(temperature, pressure, strength)
+            sums.append(exact_spectrum(node, nodes.wavenumber, nodes.cutoff.at(pressure), plinth, factors))
+        return np.array(sums)
+
     return _all_nodes(prepared, nodes, one)
 
 
@@ -150,18 +163,21 @@ def _check_lines(lines: object) -> None:
         raise InputError(problem("lines", "not a line list", expected=expected, found=shown(lines)))
 
 
+def _chi(name: object) -> FloatArray:
+    if name is not None and (not isinstance(name, str) or name not in CHI_FACTORS):
+        expected = " or ".join(["None", *(f'"{one}"' for one in CHI_FACTORS)])
+        raise InputError(problem("chi", "no such set of chi factors", expected=expected, found=shown(name)))
+    return chi_table(name)
+
+
 def _prepare(
     lines: LineList,
     partition_function: str | Path,
     abundance: str | Mapping[str, float],
     broadeners: Mapping[str, float],
     default_widths: Mapping[str, DefaultWidth] | None,
-    chi: str | None,
 ) -> PreparedLines:
     _check_lines(lines)
-    if chi is not None:
-        what = "no set of chi factors is known to this version"
-        raise InputError(problem("chi", what, expected="None", found=shown(chi)))
     if not isinstance(abundance, str):
         abundance = as_fractions("abundance", abundance, '"terrestrial", "pure" or fractions by isotopologue')
     prepared = prepare(
@@ -178,12 +194,11 @@ def _prepare(
     return prepared
 
 
-def _all_nodes(prepared: PreparedLines, nodes: _Nodes, one: Callable[[NodeLines, float], FloatArray]) -> FloatArray:
+def _all_nodes(prepared: PreparedLines, nodes: _Nodes, one: Callable[[float, FloatArray], FloatArray]) -> FloatArray:
     sigma = np.empty((nodes.temperature.size, nodes.pressure.size, nodes.wavenumber.size))
-    for i, t in enumerate(nodes.temperature):
-        strength = prepared.strengths(float(t))
-        for j, p in enumerate(nodes.pressure):
-            sigma[i, j] = one(prepared.at(float(t), float(p), strength), nodes.cutoff.at(float(p)))
+    for i, t in enumerate(nodes.temperature.tolist()):
+        sigma[i] = one(t, prepared.strengths(t))
+        for j, p in enumerate(nodes.pressure.tolist()):
             if not np.all(np.isfinite(sigma[i, j])):
                 where = f"node {t:g} K, {p:g} bar"
                 raise LineListError(problem(where, "the sum is not finite: a line has impossible values"))

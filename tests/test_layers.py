@@ -21,6 +21,7 @@ LEVELS = {
     "constants": 0,
     "units": 0,
     "arguments": 1,
+    "chi_factors": 1,
     "grids": 1,
     "provenance": 1,
     "kernels": 1,
@@ -47,7 +48,7 @@ ONLY_IN = {
     "hapi": ("molecule/",),
     "matplotlib": ("tables/draw.py",),
 }
-SIDE_BY_SIDE = {"errors", "constants", "units", "arguments", "grids", "provenance", "api", ""}
+SIDE_BY_SIDE = {"errors", "constants", "units", "arguments", "chi_factors", "grids", "provenance", "api", ""}
 """Modules in the package itself: it is their own folder, so that those of one level may import each other."""
 
 LONGEST_FILE = 350

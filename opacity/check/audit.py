@@ -95,11 +95,11 @@ def audit(spectra: Spectra, lines: LineSource | PreparedLines, profile: Profile,
         picked = rng.choice(others, MOST_NODES - len(corners), replace=False).tolist()
         nodes = [nodes[i] for i in sorted([*corners, *picked])]
     requests, values = _draw(rng, spectra, source, profile, nodes)
-    truths = exact_points(source, requests, profile.cutoff.at, profile.plinth)
+    truths = exact_points(source, requests, profile.cutoff.at, profile.plinth, profile.chi_table)
     roundings: list[FloatArray | float] = [0.0] * len(requests)
     if profile.plinth:
         # What rounding leaves of a difference of two nearly equal values.
-        whole = exact_points(source, requests, profile.cutoff.at, False)
+        whole = exact_points(source, requests, profile.cutoff.at, False, profile.chi_table)
         roundings = [PLINTH_ROUNDING * one for one in whole]
     all_errors, worst = [], {"error": -1.0}
     for request, found, truth, rounding in zip(requests, values, truths, roundings, strict=True):
@@ -174,7 +174,7 @@ def interpolation_errors(
         requests.append((temperature, pressure, spectra.wavenumber[points]))
         values.append(sigma[points])
     errors, worst = [], {"p99": -1.0}
-    truths = exact_points(source, requests, profile.cutoff.at, profile.plinth)
+    truths = exact_points(source, requests, profile.cutoff.at, profile.plinth, profile.chi_table)
     for (temperature, pressure, _), found, truth in zip(requests, values, truths, strict=True):
         here = relative_errors(found, truth)[truth > 0.0]
         if here.size and np.percentile(here, 99.0) > worst["p99"]:

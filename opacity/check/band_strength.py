@@ -81,7 +81,7 @@ def _interpolation_cost(
     sample = nu[part[:: max(part.size // SAMPLE, 1)]]
     temperatures = [*(float(t) for t in spectra.temperature), band.temperature]
     requests = [(temperature, pressure, sample) for temperature in temperatures]
-    *at_nodes, exact = exact_points(source, requests, profile.cutoff.at, profile.plinth)
+    *at_nodes, exact = exact_points(source, requests, profile.cutoff.at, profile.plinth, profile.chi_table)
     axes = spectra.temperature, np.array([pressure])
     between = interpolate.interpolate(np.array(at_nodes)[:, None, :], *axes, band.temperature, pressure)
     return float(np.sum(between) / max(float(np.sum(exact)), 1e-300) - 1.0)
@@ -104,7 +104,7 @@ def choose_pressure(
         whole, within = 0.0, 0.0
         for part in source.stretches():
             node = part.at(one.temperature, one.pressure)
-            share = share_within(node, *band.range, profile.cutoff.at(one.pressure), profile.plinth)
+            share = share_within(node, *band.range, profile.cutoff.at(one.pressure), profile.plinth, profile.chi_table)
             inside = (node.wavenumber >= band.range[0]) & (node.wavenumber <= band.range[1])
             whole += float(np.sum(node.strength[inside]))
             within += float(np.sum(node.strength * share))

@@ -13,9 +13,15 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.check.profile_share import sampling_offset, sampling_risk, share_between, spacing_at
+from opacity.check.profile_share import (
+    sampling_offset,
+    sampling_risk,
+    share_between,
+    spacing_at,
+    weighted_share_between,
+)
 from opacity.check.result import AGREES, CANNOT_JUDGE, DIFFERS, CheckResult
-from opacity.cross_sections.exact import voigt_derivatives, voigt_profile
+from opacity.cross_sections.exact import chi_factors, voigt_derivatives, voigt_profile
 from opacity.cross_sections.prepare import NodeLines
 from opacity.grids import FloatArray, cell_widths
 
@@ -104,9 +110,16 @@ def closure_of(
     return closure_from(sums, node.temperature, node.pressure, integral)
 
 
-def closure_sums(node: NodeLines, wavenumber: FloatArray, cutoff: float, plinth: bool, uniform: bool) -> ClosureSums:
+def closure_sums(
+    node: NodeLines,
+    wavenumber: FloatArray,
+    cutoff: float,
+    plinth: bool,
+    uniform: bool,
+    chi: FloatArray | None = None,
+) -> ClosureSums:
     """What the lines of a node, or some of them, add up to on a grid."""
-    share = share_within(node, float(wavenumber[0]), float(wavenumber[-1]), cutoff, plinth)
+    share = share_within(node, float(wavenumber[0]), float(wavenumber[-1]), cutoff, plinth, chi)
     weighed = node.strength * (share > 0.0)
     risk = sampling_risk(node, wavenumber)
     inside = (node.centre > wavenumber[0]) & (node.centre < wavenumber[-1])
@@ -140,16 +153,24 @@ def closure_from(sums: ClosureSums, temperature: float, pressure: float, integra
     )
 
 
-def share_within(node: NodeLines, first: float, last: float, cutoff: float, plinth: bool) -> FloatArray:
-    """Share of each line's profile that lies inside its cut-off and between two wavenumbers, (n_lines,)."""
+def share_within(
+    node: NodeLines, first: float, last: float, cutoff: float, plinth: bool, chi: FloatArray | None = None
+) -> FloatArray:
+    """Share of each line's profile, times its chi factors, that lies inside its cut-off and between two wavenumbers,
+    (n_lines,).
+    """
     lower = np.maximum(node.wavenumber - cutoff, first)
     upper = np.minimum(node.wavenumber + cutoff, last)
     if plinth:
         # The cut-off counts from the unshifted wavenumber; further than it from the centre the floor holds.
         lower, upper = np.maximum(lower, node.centre - cutoff), np.minimum(upper, node.centre + cutoff)
-    share = share_between(node, lower, upper)
+    if chi is None or not len(chi):
+        share = share_between(node, lower, upper)
+    else:
+        share = weighted_share_between(node, lower, upper, chi)
     if plinth:
-        edge = _at_distance(node, np.full(node.centre.size, cutoff))
+        at = np.full(node.centre.size, cutoff)
+        edge = chi_factors(chi, at) * _at_distance(node, at)
         share = np.maximum(share - edge * np.maximum(upper - lower, 0.0), 0.0)
     return share
 

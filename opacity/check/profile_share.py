@@ -7,7 +7,7 @@ import math
 import numpy as np
 from scipy.special import wofz
 
-from opacity.cross_sections.exact import SQRT_LN2
+from opacity.cross_sections.exact import SQRT_LN2, voigt_profile
 from opacity.cross_sections.prepare import NodeLines
 from opacity.grids import FloatArray
 
@@ -47,6 +47,40 @@ def share_between(node: NodeLines, lower: FloatArray, upper: FloatArray) -> Floa
     start, stop = np.where(mirrored, -stop, start), np.where(mirrored, -start, stop)
     share = upper_tail(start, y) - upper_tail(stop, y)
     return np.where(upper > lower, np.maximum(share, 0.0), 0.0)
+
+
+def weighted_share_between(node: NodeLines, lower: FloatArray, upper: FloatArray, chi: FloatArray) -> FloatArray:
+    """As `share_between`, of the profile times chi factors, a table as in `kernels.chi`, (n_lines,).
+
+    A row without a rate is a share of the profile itself; the others are integrated in the logarithm of the distance.
+    """
+    total = np.zeros(node.centre.size)
+    inner = 0.0
+    for limit, factor, rate in chi:
+        for side in (-1.0, 1.0):
+            ends = side * (lower - node.centre), side * (upper - node.centre)
+            start = np.maximum(np.minimum(*ends), inner)
+            stop = np.minimum(np.maximum(*ends), limit)
+            if rate == 0.0:
+                between = np.sort(np.stack([node.centre + side * start, node.centre + side * stop]), axis=0)
+                total += factor * np.where(stop > start, share_between(node, *between), 0.0)
+            else:
+                total += factor * _decaying_share(node, start, stop, rate)
+        inner = limit
+    return np.where(upper > lower, total, 0.0)
+
+
+def _decaying_share(node: NodeLines, start: FloatArray, stop: FloatArray, rate: float) -> FloatArray:
+    """Integral of the profile times exp(-rate distance) between two distances above 0, by 48-point Gauss-Legendre."""
+    found = np.zeros(node.centre.size)
+    here = np.flatnonzero(stop > start)
+    if not here.size:
+        return found
+    span = np.log(stop[here] / start[here])[:, None]
+    distance = start[here][:, None] * np.exp(0.5 * span * (_NODES + 1.0))
+    profile = voigt_profile(distance, node.doppler[here][:, None], node.lorentz[here][:, None])
+    found[here] = (profile * np.exp(-rate * distance) * distance * 0.5 * span) @ _WEIGHTS
+    return found
 
 
 def spacing_at(wavenumber: FloatArray, at: FloatArray) -> FloatArray:

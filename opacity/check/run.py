@@ -71,7 +71,7 @@ def _closures(spectra: Spectra, source: LineSource, profile: Profile, progress: 
                 strengths = {temperature: lines.strengths(temperature)}
             node = lines.at(temperature, pressure, strengths[temperature])
             cutoff = profile.cutoff.at(pressure)
-            here = closure_sums(node, spectra.wavenumber, cutoff, profile.plinth, uniform)
+            here = closure_sums(node, spectra.wavenumber, cutoff, profile.plinth, uniform, profile.chi_table)
             sums[number] = sums[number].plus(here)
     accounts = []
     weights = cell_widths(spectra.wavenumber)

@@ -23,11 +23,22 @@ def voigt_profile(distance: FloatArray, doppler: FloatArray | float, lorentz: Fl
     return np.asarray(SQRT_LN2 / math.sqrt(math.pi) / doppler * wofz(x + 1j * y).real)
 
 
-def exact_spectrum(node: NodeLines, wavenumber: FloatArray, cutoff: float, plinth: bool = False) -> FloatArray:
+def chi_factors(chi: FloatArray | None, distance: FloatArray) -> FloatArray:
+    """The chi factor at distances (cm-1) from the centre, (n,), by a table as in `kernels.chi`; 1 without one."""
+    if chi is None or not len(chi):
+        return np.ones_like(distance)
+    row = np.searchsorted(chi[:, 0], np.abs(distance), side="left")
+    return np.asarray(chi[row, 1] * np.exp(-chi[row, 2] * np.abs(distance)))
+
+
+def exact_spectrum(
+    node: NodeLines, wavenumber: FloatArray, cutoff: float, plinth: bool = False, chi: FloatArray | None = None
+) -> FloatArray:
     """Cross-section (cm2/molecule) at each wavenumber, (n_nu,): each line within |nu - nu0| <= cutoff of its
     unshifted wavenumber nu0, its profile about the shifted centre.
 
-    With `plinth` the profile's value at the distance `cutoff` from its centre is subtracted inside it, floor 0.
+    `chi` is a table of chi factors, which multiply the profile at the distance from the shifted centre.  With `plinth`
+    the profile's value at the distance `cutoff` from its centre is subtracted inside it, floor 0.
     `wavenumber` must rise (it may have gaps).
     """
     sigma = np.zeros(wavenumber.size)
@@ -36,15 +47,19 @@ def exact_spectrum(node: NodeLines, wavenumber: FloatArray, cutoff: float, plint
     for line in np.flatnonzero(high > low):
         near = slice(low[line], high[line])
         within = np.abs(wavenumber[near] - node.wavenumber[line]) <= cutoff
-        profile = voigt_profile(wavenumber[near][within] - node.centre[line], node.doppler[line], node.lorentz[line])
+        distance = wavenumber[near][within] - node.centre[line]
+        profile = chi_factors(chi, distance) * voigt_profile(distance, node.doppler[line], node.lorentz[line])
         if plinth:
-            edge = voigt_profile(np.array([cutoff]), node.doppler[line], node.lorentz[line])
-            profile = np.maximum(profile - edge, 0.0)
+            edge = np.array([cutoff])
+            level = chi_factors(chi, edge) * voigt_profile(edge, node.doppler[line], node.lorentz[line])
+            profile = np.maximum(profile - level, 0.0)
         sigma[near][within] += node.strength[line] * profile
     return sigma
 
 
-def exact_at(node: NodeLines, points: FloatArray, cutoff: float, plinth: bool = False) -> FloatArray:
+def exact_at(
+    node: NodeLines, points: FloatArray, cutoff: float, plinth: bool = False, chi: FloatArray | None = None
+) -> FloatArray:
     """The same sum, (n_points,), point by point over the lines in reach: quicker for few points and many lines.
 
     The lines of `node` must be sorted by unshifted wavenumber; the points may stand in any order.
@@ -56,9 +71,11 @@ def exact_at(node: NodeLines, points: FloatArray, cutoff: float, plinth: bool = 
         lines = np.arange(low[i], high[i])
         lines = lines[np.abs(point - node.wavenumber[lines]) <= cutoff]
         widths = node.doppler[lines], node.lorentz[lines]
-        profile = voigt_profile(point - node.centre[lines], *widths)
+        distance = point - node.centre[lines]
+        profile = chi_factors(chi, distance) * voigt_profile(distance, *widths)
         if plinth:
-            profile = np.maximum(profile - voigt_profile(np.full(lines.size, cutoff), *widths), 0.0)
+            edge = np.full(lines.size, cutoff)
+            profile = np.maximum(profile - chi_factors(chi, edge) * voigt_profile(edge, *widths), 0.0)
         sigma[i] = np.sum(node.strength[lines] * profile)
     return sigma
 

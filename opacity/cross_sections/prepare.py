@@ -5,7 +5,7 @@ Both the exact sum and the kernels take what `PreparedLines.at` gives, so that t
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
@@ -16,8 +16,14 @@ from numpy.typing import NDArray
 from opacity.arguments import DefaultWidth
 from opacity.errors import InputError, MoleculeError, problem
 from opacity.grids import FloatArray
-from opacity.kernels.line_strength import strength_ratio
-from opacity.kernels.line_width import doppler_half_width, pressure_half_width, shifted_centre
+from opacity.kernels.line_strength import strengths_in_one_pass
+from opacity.kernels.line_width import (
+    LOWEST_SHIFTED,
+    doppler_half_width,
+    doppler_share,
+    pressure_half_width,
+    shifted_centre,
+)
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.molecule import partition_function as pf
@@ -42,6 +48,29 @@ class NodeLines:
     strength: FloatArray
     doppler: FloatArray
     lorentz: FloatArray
+
+    def per_bar(self) -> LinesAtTemperature:
+        """Columns that give these lines at 1 bar."""
+        reference = np.maximum(self.centre, LOWEST_SHIFTED * self.wavenumber)
+        share = self.doppler / np.where(reference > 0.0, reference, 1.0)
+        shift = self.centre - self.wavenumber
+        return LinesAtTemperature(self.temperature, self.wavenumber, shift, self.strength, self.lorentz, share)
+
+
+@dataclass(frozen=True)
+class LinesAtTemperature:
+    """Lines at a temperature and any pressure, each (n_lines,), sorted by `wavenumber`, cm-1.
+
+    `shift` cm-1/bar; `strength` cm/molecule; `lorentz` pressure half-width (HWHM), cm-1/bar; `doppler` Doppler
+    half-width (HWHM) as a share of the wavenumber.
+    """
+
+    temperature: float
+    wavenumber: FloatArray
+    shift: FloatArray
+    strength: FloatArray
+    lorentz: FloatArray
+    doppler: FloatArray
 
 
 @dataclass(frozen=True)
@@ -87,20 +116,43 @@ class PreparedLines:
 
     def strengths(self, temperature: float) -> FloatArray:
         """S(T) of all lines, cm/molecule, (n_lines,).  Raises MoleculeError where Q is not valid."""
+        return np.asarray(self.strengths_at([temperature])[0])
+
+    def strengths_at(self, temperatures: Sequence[float]) -> FloatArray:
+        """S(T) of all lines at several temperatures (K), cm/molecule, (n_T, n_lines), in one pass over the lines.
+
+        Raises MoleculeError where a partition function is not valid.
+        """
+        found = np.empty((len(temperatures), len(self)))
         if not len(self):
-            return np.empty(0)
+            return found
         pairs = list(zip(self.partition, self.basis, strict=True))
-        ratio = np.array([(q(one.temperature) if one.holds_partition else 1.0) / q(temperature) for q, one in pairs])
-        reference = np.array([one.temperature for one in self.basis])
-        factor = strength_ratio(
+        ratio = [
+            [(q(one.temperature) if one.holds_partition else 1.0) / q(temperature) for temperature in temperatures]
+            for q, one in pairs
+        ]
+        strengths_in_one_pass(
+            found,
+            np.array(temperatures, dtype=np.float64),
             self.wavenumber,
             self.lower_energy,
-            temperature,
-            ratio[self.isotopologue],
-            reference[self.isotopologue] if np.any(reference != reference[0]) else float(reference[0]),
+            self.strength,
+            self.isotopologue,
+            np.array([one.temperature for one in self.basis]),
+            np.array(ratio),
         )
-        # A strength of 0 stays 0 however large the factor of its energy.
-        return np.where(self.strength > 0.0, self.strength * factor, 0.0)
+        return found
+
+    def at_temperature(self, temperature: float, strength: FloatArray | None = None) -> LinesAtTemperature:
+        """The lines at a temperature (K) and any pressure; `strength` spares computing S(T) again."""
+        return LinesAtTemperature(
+            temperature,
+            self.wavenumber,
+            self.broadening.shift,
+            self.strengths(temperature) if strength is None else strength,
+            pressure_half_width(self.broadening.gamma, self.broadening.exponent, temperature, 1.0),
+            doppler_share(temperature, self.mass),
+        )
 
     def at(self, temperature: float, pressure: float, strength: FloatArray | None = None) -> NodeLines:
         """The lines at one node (K, bar); `strength` spares computing S(T) again.

@@ -53,10 +53,14 @@ Request = tuple[float, float, FloatArray]
 
 
 def exact_points(
-    source: LineSource, requests: Sequence[Request], cutoff_at: Callable[[float], float], plinth: bool
+    source: LineSource,
+    requests: Sequence[Request],
+    cutoff_at: Callable[[float], float],
+    plinth: bool,
+    chi: FloatArray | None = None,
 ) -> list[FloatArray]:
     """The exact sum at the points of each request, (n,) each, cm2/molecule; `cutoff_at` gives the cut-off (cm-1) at a
-    pressure (bar).  The lines are read window by window, once for all requests.
+    pressure (bar), `chi` is a table of chi factors.  The lines are read window by window, once for all requests.
     """
     found = [np.zeros(points.size) for _, _, points in requests]
     if not requests:
@@ -70,7 +74,7 @@ def exact_points(
                 here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
                 if here.size:
                     node = lines.at(temperature, pressure)
-                    found[number][here] += exact_at(node, points[here], cutoff_at(pressure), plinth)
+                    found[number][here] += exact_at(node, points[here], cutoff_at(pressure), plinth, chi)
     return found
 
 

@@ -1,14 +1,21 @@
-"""The direct sum over lines on one tile of the grid: where each formula of `voigt` serves, and the cut."""
+"""The direct sum over lines on one tile of the grid: the cut, and the points that each formula serves."""
 
 from __future__ import annotations
-
-import math
 
 import numpy as np
 from numpy.typing import NDArray
 
+from opacity.kernels.chi import chi_at, weigh
 from opacity.kernels.jit import jit, jit_exact
-from opacity.kernels.voigt import NARROW_X, NARROW_Y, add_core, add_far, add_narrow, add_near
+from opacity.kernels.node_line import (
+    SMALLEST_Y,
+    Formulas,
+    LineAtNode,
+    LineColumns,
+    add_pieces,
+    line_at_node,
+    with_plinth,
+)
 
 Array = NDArray[np.float64]
 
@@ -59,78 +66,29 @@ def reach(nu: Array, nu0: float, cutoff: float) -> tuple[int, int]:
 
 
 @jit
-def exponential_radius(y: float, tolerance: float) -> float:
-    """The x beyond which exp(-x2) is below tolerance times the Lorentz wing y / (sqrt(pi) x2)."""
-    level = math.log(4.0 / (y * tolerance)) + 0.6
-    u = max(level, 1.0)
-    for _ in range(4):
-        u = max(level + math.log(u), 1.0)
-    return math.sqrt(u)
-
-
-@jit
-def region_radii(y: float, tolerance: float, near_radius: float, far_radius: float) -> tuple[float, float]:
-    """Distances |x| up to which a core formula, and up to which `near`, is needed; -1 where not at all."""
-    y2 = y * y
-    core = -1.0
-    if y2 < near_radius * near_radius:
-        core = max(math.sqrt(near_radius * near_radius - y2), exponential_radius(y, tolerance))
-    near = core
-    if y2 < far_radius * far_radius:
-        near = max(core, math.sqrt(far_radius * far_radius - y2))
-    return core, near
-
-
-@jit
-def voigt_value(x: float, y: float, tolerance: float, near_radius: float, far_radius: float) -> float:
-    """K(x, y) by the formula that serves at this point."""
-    out = np.zeros(1)
-    at = np.full(1, x)
-    core, near = region_radii(y, tolerance, near_radius, far_radius)
-    if abs(x) > near:
-        add_far(out, at, 0, 1, 0.0, 1.0, y, 1.0, 0.0)
-    elif abs(x) > core:
-        add_near(out, at, 0, 1, 0.0, 1.0, y, 1.0, 0.0)
-    elif y < NARROW_Y:
-        add_narrow(out, at, 0, 1, 0.0, 1.0, y, 1.0, 0.0)
-    else:
-        add_core(out, at, 0, 1, 0.0, 1.0, y, 1.0, 0.0)
-    return float(out[0])
-
-
-@jit
-def add_line(
-    out: Array,
-    nu: Array,
-    first: int,
-    last: int,
-    centre: float,
-    scale: float,
-    y: float,
-    amplitude: float,
-    plinth: float,
-    core: float,
-    near: float,
-) -> None:
-    """One line on the points first..last - 1: far, near, core, near, far."""
-    left = min(max(first_not_below(nu, centre - near / scale), first), last)
-    right = min(max(first_not_below(nu, centre + near / scale), left), last)
-    if near < 0.0:
-        right = left
-    add_far(out, nu, first, left, centre, scale, y, amplitude, plinth)
-    add_far(out, nu, right, last, centre, scale, y, amplitude, plinth)
-    if right == left:
+def add_line(out: Array, nu: Array, first: int, last: int, line: LineAtNode) -> None:
+    """One line on the points first..last - 1."""
+    near, core = line.near / line.scale, line.core / line.scale
+    if line.near < 0.0:
+        add_pieces(out, nu, first, last, last, last, last, last, line)
         return
-    inner_left = min(max(first_not_below(nu, centre - core / scale), left), right)
-    inner_right = min(max(first_not_below(nu, centre + core / scale), inner_left), right)
-    if core < 0.0:
-        inner_right = inner_left
-    add_near(out, nu, left, inner_left, centre, scale, y, amplitude, plinth)
-    add_near(out, nu, inner_right, right, centre, scale, y, amplitude, plinth)
-    if y < NARROW_Y:
-        add_narrow(out, nu, inner_left, inner_right, centre, scale, y, amplitude, plinth)
-    else:
-        add_core(out, nu, inner_left, inner_right, centre, scale, y, amplitude, plinth)
+    near_left, near_right = first_not_below(nu, line.centre - near), first_not_below(nu, line.centre + near)
+    if line.core < 0.0:
+        add_pieces(out, nu, first, last, near_left, near_right, near_right, near_right, line)
+        return
+    core_left, core_right = first_not_below(nu, line.centre - core), first_not_below(nu, line.centre + core)
+    add_pieces(out, nu, first, last, near_left, core_left, core_right, near_right, line)
+
+
+@jit
+def add_weighted(out: Array, nu: Array, first: int, last: int, line: LineAtNode, factor: float, rate: float) -> None:
+    """One line on the points first..last - 1, times factor exp(-rate |nu - centre|)."""
+    if first >= last:
+        return
+    values = np.zeros(last - first)
+    bare = LineAtNode(line.centre, line.scale, line.y, line.amplitude, 0.0, line.core, line.near)
+    add_line(values, nu[first:last], 0, last - first, bare)
+    weigh(out[first:last], values, nu[first:last], line.centre, line.plinth, factor, rate)
 
 
 @jit
@@ -139,44 +97,41 @@ def add_lines(
     nu: Array,
     first_line: int,
     last_line: int,
-    nu0: Array,
-    centre: Array,
-    scale: Array,
-    y: Array,
-    amplitude: Array,
+    lines: LineColumns,
+    pressure: float,
     cutoff: float,
     subtract_plinth: bool,
-    tolerance: float,
-    near_radius: float,
-    far_radius: float,
-) -> None:
-    """Add lines first_line..last_line - 1 to a tile: `out`, `nu` (n_points,), the others (n_lines,).
+    chi: Array,
+    formulas: Formulas,
+) -> int:
+    """Add lines first_line..last_line - 1 to a tile: `out`, `nu` (n_points,); pressure in bar, cut-off in cm-1.
 
-    `nu0` is the unshifted wavenumber that the cut-off counts from, `centre` the shifted one; cm-1.
+    `chi` is the table of `chi`, without rows where there is none.  Returns the first line whose pressure width is
+    out of range, or -1.
     """
     for j in range(first_line, last_line):
-        if amplitude[j] == 0.0:
+        if lines.strength[j] == 0.0:
             continue
-        first, last = reach(nu, nu0[j], cutoff)
+        first, last = reach(nu, lines.wavenumber[j], cutoff)
         if first >= last:
             continue
-        core, near = region_radii(y[j], tolerance, near_radius, far_radius)
-        plinth = 0.0
+        line = line_at_node(lines, j, pressure, formulas)
+        if not SMALLEST_Y <= line.y < np.inf:
+            return j
         if subtract_plinth:
-            edge = cutoff * scale[j]
-            # The same formula must serve at the cut-off and near it, or the difference is all error.
-            if near > 0.5 * edge:
-                near = 2.0 * edge + 20.0 * near
-            if core > 0.5 * edge:
-                core = near
-            if core > NARROW_X and y[j] < NARROW_Y:
-                core = NARROW_X
-            plinth = amplitude[j] * _plinth_value(edge, y[j], core, near)
-        add_line(out, nu, first, last, centre[j], scale[j], y[j], amplitude[j], plinth, core, near)
-
-
-@jit
-def _plinth_value(edge: float, y: float, core: float, near: float) -> float:
-    out = np.zeros(1)
-    add_line(out, np.full(1, edge), 0, 1, 0.0, 1.0, y, 1.0, 0.0, core, near)
-    return float(out[0])
+            line = with_plinth(line, cutoff, chi_at(chi, cutoff))
+        if chi.shape[0] == 0:
+            add_line(out, nu, first, last, line)
+            continue
+        left, right = last, last
+        for row in range(chi.shape[0]):
+            # Within the same arithmetic as the exact sum; from the centre outwards.
+            low, high = reach(nu, line.centre, chi[row, 0])
+            low, high = min(max(low, first), last), min(max(high, first), last)
+            if row == 0:
+                add_weighted(out, nu, low, high, line, chi[row, 1], chi[row, 2])
+            else:
+                add_weighted(out, nu, low, left, line, chi[row, 1], chi[row, 2])
+                add_weighted(out, nu, right, high, line, chi[row, 1], chi[row, 2])
+            left, right = low, high
+    return -1

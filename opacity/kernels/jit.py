@@ -95,6 +95,11 @@ def jit_exact(function: Function) -> Function:
     return _compile(function, fastmath=False)
 
 
+def jit_inline(function: Function) -> Function:
+    """As `jit`, for small functions called for each line: made part of their callers."""
+    return _compile(function, fastmath=_FAST_MATH, forceinline=True)
+
+
 def _compile(function: Function, **options: Any) -> Function:
     with _cache_of_this_source():
         compiled: Any = numba.njit(nogil=True, cache=_FOLDER is not None, error_model="numpy", **options)(function)

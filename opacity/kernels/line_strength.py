@@ -2,12 +2,18 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 from numpy.typing import NDArray
 
 from opacity.constants import LIGHT_SPEED, REFERENCE_TEMPERATURE, SECOND_RADIATION
+from opacity.kernels.jit import jit
 
 Array = NDArray[np.float64]
+
+_NO_EMISSION = 40.0
+"""Beyond this c2 nu / T the factor of stimulated emission is 1 in f8."""
 
 EIGHT_PI_C = 8.0 * np.pi * 100.0 * LIGHT_SPEED
 """8 pi c, c in cm/s: S and A of a line are related by it."""
@@ -50,3 +56,36 @@ def strength_from_einstein_a(
     emission = -np.expm1(-SECOND_RADIATION * wavenumber / temperature)
     scale = EIGHT_PI_C * wavenumber**2
     return np.asarray(abundance * upper_weight * einstein_a * population * emission / scale)
+
+
+@jit
+def strengths_in_one_pass(
+    out: Array,
+    temperature: Array,
+    wavenumber: Array,
+    lower_energy: Array,
+    strength: Array,
+    isotopologue: NDArray[np.int16],
+    reference: Array,
+    ratio: Array,
+) -> None:
+    """S(T) of each line at each temperature into `out` (n_T, n_lines): the formula of `strength_ratio`, each line read
+    once.
+
+    `strength` is S0, `isotopologue` an index; by isotopologue the temperature T0 that S0 stands for, `reference`
+    (n_iso,), and Q(T0)/Q(T), `ratio` (n_iso, n_T).  A strength of 0 stays 0 however large the factor of its energy.
+    """
+    for j in range(wavenumber.size):
+        if strength[j] == 0.0:
+            out[:, j] = 0.0
+            continue
+        which = isotopologue[j]
+        start = reference[which]
+        at_start = SECOND_RADIATION * wavenumber[j] / start
+        emission_start = -1.0 if at_start > _NO_EMISSION else math.expm1(-at_start)
+        for i in range(temperature.size):
+            t = temperature[i]
+            at = SECOND_RADIATION * wavenumber[j] / t
+            emission = -1.0 if at > _NO_EMISSION else math.expm1(-at)
+            boltzmann = math.exp(-SECOND_RADIATION * lower_energy[j] * (1.0 / t - 1.0 / start))
+            out[i, j] = strength[j] * (ratio[which, i] * boltzmann * (emission / emission_start))

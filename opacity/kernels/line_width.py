@@ -23,7 +23,12 @@ def doppler_half_width(wavenumber: Array, centre: Array, temperature: float, mas
 
     nu is the shifted centre; at pressures so high that the linear shift has lost its meaning, half of `wavenumber`.
     """
-    return DOPPLER_HWHM * np.maximum(centre, LOWEST_SHIFTED * wavenumber) * np.sqrt(temperature / mass)
+    return doppler_share(temperature, mass) * np.maximum(centre, LOWEST_SHIFTED * wavenumber)
+
+
+def doppler_share(temperature: float, mass: Array) -> Array:
+    """Doppler half-width (HWHM) as a share of the wavenumber, (n_lines,); `mass` in g/mol."""
+    return np.asarray(DOPPLER_HWHM * np.sqrt(temperature / mass))
 
 
 def pressure_half_width(gamma: Array, exponent: Array, temperature: float, pressure: float) -> Array:

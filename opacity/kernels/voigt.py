@@ -10,7 +10,7 @@ narrow K = exp(y2 - x2) cos 2xy - 2/sqrt(pi) Im D(x + iy), with Dawson's functio
        order about the real axis from a table: 3e-8 for y <= 0.05, |x| <= 10, however small y
 The exponential that quadrature misses at small y is the caller's to avoid: `near` and `far` only beyond
 the x where exp(-x2) sqrt(pi) x2 / y is below the tolerance.  z = x + iy throughout.
-Each takes slices before its loop: with an offset in the index the loop does not vectorise (a factor of four).
+The loops count unsigned: with a signed index, which could be negative, they do not vectorise (a factor of four).
 """
 
 from __future__ import annotations
@@ -21,7 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import dawsn
 
-from opacity.kernels.jit import jit
+from opacity.kernels.jit import jit, jit_inline
 
 Array = NDArray[np.float64]
 
@@ -64,19 +64,18 @@ _T1, _T2, _T3 = (float(t * t) for t in _T[3:])
 _W1, _W2, _W3 = (float(2.0 * w / math.sqrt(math.pi)) for w in _W[3:])
 
 
-@jit
+@jit_inline
 def add_far(
     out: Array, nu: Array, first: int, last: int, centre: float, scale: float, y: float, amplitude: float, plinth: float
 ) -> None:
     """Gauss-Hermite with 2 points at t = +-1/sqrt(2): K = y/sqrt(pi) A / (A^2 - 2 x2), A = x2 + y2 + 1/2."""
     shift = y * y + 0.5
     factor = amplitude * y * INV_SQRT_PI
-    points, sums = nu[first:last], out[first:last]
-    for i in range(points.size):
-        x = (points[i] - centre) * scale
+    for i in range(np.uint64(first), np.uint64(last)):
+        x = (nu[i] - centre) * scale
         x2 = x * x
         a = x2 + shift
-        sums[i] += max(factor * a / (a * a - 2.0 * x2) - plinth, 0.0)
+        out[i] += max(factor * a / (a * a - 2.0 * x2) - plinth, 0.0)
 
 
 @jit
@@ -86,9 +85,8 @@ def add_near(
     """Gauss-Hermite with 6 points, +-t_k in pairs: w_k A_k / D_k, A_k = x2 + y2 + t2, D_k = A_k^2 - 4 t2 x2."""
     y2 = y * y
     factor = amplitude * y * INV_SQRT_PI
-    points, sums = nu[first:last], out[first:last]
-    for i in range(points.size):
-        x = (points[i] - centre) * scale
+    for i in range(np.uint64(first), np.uint64(last)):
+        x = (nu[i] - centre) * scale
         x2 = x * x
         r2 = x2 + y2
         a1 = r2 + _T1
@@ -99,7 +97,7 @@ def add_near(
         d3 = a3 * a3 - 4.0 * _T3 * x2
         d23 = d2 * d3
         value = (_W1 * a1 * d23 + d1 * (_W2 * a2 * d3 + _W3 * a3 * d2)) / (d1 * d23)
-        sums[i] += max(factor * value - plinth, 0.0)
+        out[i] += max(factor * value - plinth, 0.0)
 
 
 @jit
@@ -108,9 +106,8 @@ def add_core(
 ) -> None:
     """Weideman: w = 2 p(Z)/(L - iz)^2 + 1/(sqrt(pi)(L - iz)), Z = (L + iz)/(L - iz), p by Clenshaw's recurrence."""
     ly = _LENGTH + y
-    points, sums = nu[first:last], out[first:last]
-    for i in range(points.size):
-        x = (points[i] - centre) * scale
+    for i in range(np.uint64(first), np.uint64(last)):
+        x = (nu[i] - centre) * scale
         inverse = 1.0 / (ly * ly + x * x)
         z_re = ((_LENGTH - y) * ly - x * x) * inverse
         z_im = 2.0 * _LENGTH * x * inverse
@@ -127,7 +124,7 @@ def add_core(
         r_re = ly * inverse
         r_im = x * inverse
         value = 2.0 * (p_re * (r_re * r_re - r_im * r_im) - p_im * 2.0 * r_re * r_im) + INV_SQRT_PI * r_re
-        sums[i] += max(amplitude * value - plinth, 0.0)
+        out[i] += max(amplitude * value - plinth, 0.0)
 
 
 @jit
@@ -137,9 +134,8 @@ def add_narrow(
     """Small y: exp(y2 - x2) cos 2xy - 2/sqrt(pi) (y D' - y3 D'''/6 + y5 D^(5)/120) at |x|, D by Taylor from a table."""
     y2 = y * y
     top = _DAWSON.shape[0] - 1
-    points, sums = nu[first:last], out[first:last]
-    for i in range(points.size):
-        x = abs((points[i] - centre) * scale)
+    for i in range(np.uint64(first), np.uint64(last)):
+        x = abs((nu[i] - centre) * scale)
         k = min(int(x * _PER_UNIT + 0.5), top)
         h = x - k / _PER_UNIT
         d1, d2, d3, d4 = _DAWSON[k, 0], _DAWSON[k, 1], _DAWSON[k, 2], _DAWSON[k, 3]
@@ -149,4 +145,4 @@ def add_narrow(
         fifth_order = d5 + h * (d6 + 0.5 * h * d7)
         wing = y * (first_order - y2 * (third_order / 6.0 - y2 * fifth_order / 120.0))
         value = math.exp(y2 - x * x) * math.cos(2.0 * x * y) - 2.0 * INV_SQRT_PI * wing
-        sums[i] += max(amplitude * value - plinth, 0.0)
+        out[i] += max(amplitude * value - plinth, 0.0)

@@ -16,10 +16,10 @@ from typing import Any
 import numpy as np
 
 from opacity.check.run import run_checks
-from opacity.cross_sections.compute import spectrum
+from opacity.cross_sections.compute import NodeSum, Tally, add_spectra
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource, as_source, pieces
-from opacity.cross_sections.tolerance import Regions, regions
+from opacity.cross_sections.tolerance import regions
 from opacity.errors import ResourceError, TableError, problem
 from opacity.grids import FloatArray
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
@@ -34,6 +34,9 @@ from opacity.tables.layout import BLOCK
 from opacity.tables.model import CrossSectionTable
 from opacity.tables.read import open_table
 from opacity.tables.write import check_table, write_cross_section_table
+
+STRENGTHS_AT_ONCE = 16_000_000
+"""Strengths (lines times temperatures) that are made in one pass over the lines: 128 MB, and as much for the widths."""
 
 
 @dataclass(frozen=True)
@@ -81,13 +84,27 @@ def build_table(
     _make_folder(folder)
     _refuse_folders(path, log)
     count = allowed_cpus() if workers is None else workers
-    sigma = compute_spectra(recipe, inputs.lines, count, quiet)
-    table = _checked_table(recipe, inputs, sigma, path, quiet)
-    table = replace(table, checks={**table.checks, "warnings": list(plan.warnings)})
+    spectra = compute_spectra(recipe, inputs.lines, count, quiet)
+    table = _checked_table(recipe, inputs, spectra.sigma, path, quiet)
+    table = replace(
+        table, checks={**table.checks, "warnings": list(plan.warnings), "summation": _summation(recipe, spectra)}
+    )
     write_cross_section_table(path, table)
     seconds = time.monotonic() - started
     _write_log(log, recipe, seconds, count)
     return BuildResult(path, log, plan, table.checks, seconds)
+
+
+def _summation(recipe: Recipe, spectra: Spectra) -> dict[str, Any]:
+    """How each node was summed, tile by tile, and the largest error that is predicted of it."""
+    profile = recipe.profile
+    return {
+        "predicted_error": regions(profile.tolerance, profile.plinth).predicted_error,
+        "nodes": [
+            {"temperature": t, "pressure": p, "tiles_by_cells": one.by_cells, "tiles_by_points": one.by_points}
+            for (t, p), one in zip(recipe.grid.node_list(), spectra.tallies, strict=True)
+        ],
+    }
 
 
 def _still_good(path: Path, origin: Fingerprint) -> dict[str, Any] | None:
@@ -123,11 +140,18 @@ def _refuse_folders(*paths: Path) -> None:
             raise ResourceError(problem(path, "is a folder", expected="a file or nothing", remedy="move it away"))
 
 
-def compute_spectra(recipe: Recipe, lines: LineSource | PreparedLines, workers: int, quiet: bool) -> FloatArray:
-    """All spectra of a recipe, (n_T, n_P, n_nu) or (n_node, n_nu)."""
-    grid, profile, source = recipe.grid, recipe.profile, as_source(lines)
+@dataclass(frozen=True)
+class Spectra:
+    """All spectra of a recipe, (n_T, n_P, n_nu) or (n_node, n_nu), and how the tiles of each node were summed."""
+
+    sigma: FloatArray
+    tallies: tuple[Tally, ...]
+
+
+def compute_spectra(recipe: Recipe, lines: LineSource | PreparedLines, workers: int, quiet: bool) -> Spectra:
+    """All spectra of a recipe."""
+    grid, source = recipe.grid, as_source(lines)
     nodes = grid.node_list()
-    limits = regions(profile.tolerance, profile.plinth)
     try:
         sigma = np.empty((len(nodes), grid.wavenumber.size))
     except MemoryError as error:
@@ -135,17 +159,17 @@ def compute_spectra(recipe: Recipe, lines: LineSource | PreparedLines, workers: 
             problem(recipe.path, "the spectra do not fit in memory", remedy="use fewer nodes or points")
         ) from error
     executor = ThreadPoolExecutor(workers) if workers > 1 else None
+    tallies = [Tally() for _ in nodes]
     try:
         parts = windows(grid.wavenumber, _margin(recipe), source)
         with Progress("spectra", len(nodes) * len(parts), "spectra of windows", quiet) as progress:
             for part in parts:
-                _fill(sigma, part, recipe, source, limits, executor, progress)
+                _fill(sigma, part, recipe, source, tallies, executor, progress)
     finally:
         if executor is not None:
             executor.shutdown(wait=True, cancel_futures=True)
-    if grid.nodes is not None:
-        return sigma
-    return sigma.reshape(len(grid.temperature), len(grid.pressure), -1)
+    shape = (len(nodes),) if grid.nodes is not None else (len(grid.temperature), len(grid.pressure))
+    return Spectra(sigma.reshape(*shape, grid.wavenumber.size), tuple(tallies))
 
 
 def windows(wavenumber: FloatArray, margin: float, lines: LineSource) -> list[slice]:
@@ -171,22 +195,41 @@ def _fill(
     part: slice,
     recipe: Recipe,
     source: LineSource,
-    limits: Regions,
+    tallies: list[Tally],
     executor: Executor | None,
     progress: Progress,
 ) -> None:
+    profile = recipe.profile
     nu = np.ascontiguousarray(recipe.grid.wavenumber[part])
-    margin, nodes = _margin(recipe), recipe.grid.node_list()
+    margin, rows = _margin(recipe), _rows_by_temperature(recipe)
+    limits = regions(profile.tolerance, profile.plinth)
     sigma[:, part] = 0.0
     for lines in pieces(source, float(nu[0]) - margin, float(nu[-1]) + margin):
-        strengths: dict[float, FloatArray] = {}
-        for row, (temperature, pressure) in enumerate(nodes):
-            if temperature not in strengths:
-                strengths = {temperature: lines.strengths(temperature)}
-            node = lines.at(temperature, pressure, strengths[temperature])
-            cutoff = recipe.profile.cutoff.at(pressure)
-            sigma[row, part] += spectrum(node, nu, cutoff, limits, recipe.profile.plinth, executor)
-            progress.step()
+        block = max(STRENGTHS_AT_ONCE // max(len(lines), 1), 1)
+        for start in range(0, len(rows), block):
+            temperatures = list(rows)[start : start + block]
+            here: list[int] = []
+            nodes: list[NodeSum] = []
+            for temperature, strength in zip(temperatures, lines.strengths_at(temperatures), strict=True):
+                at_temperature = lines.at_temperature(temperature, strength)
+                for row, pressure in rows[temperature]:
+                    here.append(row)
+                    nodes.append(NodeSum(at_temperature, pressure, profile.cutoff.at(pressure)))
+
+            def done(number: int, tally: Tally, here: list[int] = here) -> None:
+                tallies[here[number]] = tallies[here[number]].plus(tally)
+                progress.step()
+
+            sums = [sigma[row, part] for row in here]
+            add_spectra(sums, nodes, nu, limits, profile.plinth, profile.chi_table, executor, done=done)
+
+
+def _rows_by_temperature(recipe: Recipe) -> dict[float, list[tuple[int, float]]]:
+    """Row and pressure of the nodes at each temperature."""
+    found: dict[float, list[tuple[int, float]]] = {}
+    for row, (temperature, pressure) in enumerate(recipe.grid.node_list()):
+        found.setdefault(temperature, []).append((row, pressure))
+    return found
 
 
 def _margin(recipe: Recipe) -> float:

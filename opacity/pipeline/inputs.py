@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 
 from opacity.arguments import DefaultWidth
+from opacity.chi_factors import CHI_FACTORS
 from opacity.cross_sections.prepare import PreparedLines, fraction_of, prepare
 from opacity.cross_sections.source import (
     LINES_AT_ONCE,
@@ -239,6 +240,7 @@ def _provenance(
             "cutoff": [{"cutoff": one.cutoff, "to_pressure": one.to_pressure} for one in profile.cutoff.steps],
             "tolerance": profile.tolerance,
             "plinth": profile.plinth,
+            "chi": None if profile.chi is None else {"name": profile.chi, "source": CHI_FACTORS[profile.chi].source},
         },
         "references": list(dict.fromkeys(references)),
         "inputs_sha256": origin.sha256,

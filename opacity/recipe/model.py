@@ -9,6 +9,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 from opacity.arguments import DefaultWidth
+from opacity.chi_factors import chi_table
 from opacity.errors import InputError, problem
 from opacity.grids import FloatArray
 
@@ -99,6 +100,12 @@ class Profile:
     cutoff: Cutoff
     tolerance: float = 1e-3
     plinth: bool = False
+    chi: str | None = None
+
+    @property
+    def chi_table(self) -> FloatArray:
+        """The rows of the chi factors chosen, (n_rows, 3); none where none are."""
+        return chi_table(self.chi)
 
 
 @dataclass(frozen=True)

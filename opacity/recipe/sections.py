@@ -10,6 +10,7 @@ from pathlib import Path
 from typing import Any
 
 from opacity.arguments import DefaultWidth
+from opacity.chi_factors import CHI_FACTORS
 from opacity.grids import HIGHEST_PRESSURE, LOWEST_PRESSURE
 from opacity.recipe.faults import Faults, listed, nearest, shown
 from opacity.recipe.formats import exomol_kind
@@ -217,12 +218,22 @@ def read_profile(root: Table) -> Profile:
     values = root.table("profile", "a section [profile] with cutoff")
     if values is None:
         return Profile(Cutoff(()))
-    table = Table(root.faults, root.path("profile"), values, ("cutoff", "tolerance", "plinth"), later=("chi",))
+    table = Table(root.faults, root.path("profile"), values, ("cutoff", "tolerance", "plinth", "chi"))
     return Profile(
         cutoff=_cutoff(table),
         tolerance=table.number("tolerance", _TOLERANCE, default=1e-3),
         plinth=table.flag("plinth", default=False),
+        chi=_chi(table),
     )
+
+
+def _chi(table: Table) -> str | None:
+    expected = " or ".join(f'"{one}"' for one in CHI_FACTORS)
+    name = table.text("chi", expected, required=False)
+    if name and name not in CHI_FACTORS:
+        table.faults.add(table.path("chi"), "no such set of chi factors", expected=expected, found=f'"{name}"')
+        return None
+    return name or None
 
 
 def _cutoff(table: Table) -> Cutoff:

@@ -6,8 +6,9 @@ import numpy as np
 import pytest
 
 import opacity
-from opacity.cross_sections.compute import TILE, spectrum
+from opacity.cross_sections.compute import spectrum
 from opacity.cross_sections.exact import exact_at, exact_spectrum
+from opacity.cross_sections.planner import SMALLEST_TILE
 from opacity.cross_sections.prepare import prepare
 from opacity.cross_sections.tolerance import regions
 from opacity.line_list.read import merge
@@ -142,7 +143,7 @@ def test_grids_even_in_log_and_uneven() -> None:
 
 def test_same_bits_for_any_number_of_workers() -> None:
     lines = random_list(300, 2000.0, 2100.0, seed=1)
-    nu = np.linspace(2000.0, 2100.0, 5 * TILE + 77)
+    nu = np.linspace(2000.0, 2100.0, 9 * SMALLEST_TILE + 77)
     choice = {"wavenumber": nu, "temperature": [300.0, 900.0], "pressure": [1e-3, 1.0], "cutoff": 25.0, **AIR}
     one = opacity.cross_section(lines, workers=1, **choice)
     for workers in (2, 7):

@@ -9,7 +9,10 @@ import pytest
 
 import opacity
 
-CALL = "from opacity.kernels.accumulate import voigt_value; print(voigt_value(50.0, 1.0, 1e-3, 5.0, 10.0))"
+CALL = (
+    "import numpy as np; from opacity.kernels.node_line import Formulas, voigt_value;"
+    " print(voigt_value(50.0, 1.0, Formulas(5.0, 10.0, np.full(120, 5.0))))"
+)
 
 
 def run(folder: Path) -> float:
@@ -32,6 +35,6 @@ def test_a_change_in_a_called_kernel_reaches_its_callers(tmp_path: Path, unusabl
         (tmp_path / name).write_text("in the way of a folder", encoding="ascii")
     before = run(tmp_path)
     source = tmp_path / "opacity" / "kernels" / "voigt.py"
-    changed = source.read_text(encoding="utf-8").replace("sums[i] += max(factor * a", "sums[i] += max(2.0 * factor * a")
+    changed = source.read_text(encoding="utf-8").replace("out[i] += max(factor * a", "out[i] += max(2.0 * factor * a")
     source.write_text(changed, encoding="utf-8")
     assert run(tmp_path) == 2.0 * before

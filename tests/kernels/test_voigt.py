@@ -9,9 +9,9 @@ import pytest
 from scipy.special import wofz
 
 from opacity.cross_sections.exact import SQRT_LN2, voigt_profile
-from opacity.cross_sections.tolerance import regions
+from opacity.cross_sections.tolerance import Regions, exponential_radius, regions
 from opacity.errors import InputError
-from opacity.kernels.accumulate import exponential_radius, region_radii, voigt_value
+from opacity.kernels.node_line import Formulas, region_radii, voigt_value
 
 REFERENCE = Path(__file__).parents[1] / "reference" / "data" / "voigt_function.csv"
 TOLERANCES = (1e-1, 1e-2, 1e-3, 1e-4, 1e-5, 1e-6)
@@ -25,8 +25,11 @@ def reference_values() -> np.ndarray:
 
 
 def kernel(x: float, y: float, tolerance: float) -> float:
-    limits = regions(tolerance)
-    return voigt_value(x, y, limits.tolerance, limits.near_radius, limits.far_radius)
+    return voigt_value(x, y, formulas(regions(tolerance)))
+
+
+def formulas(limits: Regions) -> Formulas:
+    return Formulas(limits.near_radius, limits.far_radius, limits.exponential)
 
 
 def test_reference_file_holds_what_mpmath_gives() -> None:
@@ -72,7 +75,7 @@ def test_kernel_against_wofz_over_the_plane(tolerance: float) -> None:
     n = 20_000
     y = 10.0 ** rng.uniform(-30, 5, n)
     limits = regions(tolerance)
-    edges = np.array([region_radii(one, limits.tolerance, limits.near_radius, limits.far_radius) for one in y])
+    edges = np.array([region_radii(one, formulas(limits)) for one in y])
     near_an_edge = edges[np.arange(n), rng.integers(0, 2, n)] * (1.0 + rng.normal(0.0, 1e-3, n))
     x = np.where(rng.random(n) < 0.5, rng.uniform(0.0, 12.0, n), np.abs(near_an_edge))
     found = np.array([kernel(a, b, tolerance) for a, b in zip(x, y, strict=True)])
