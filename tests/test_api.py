@@ -107,7 +107,7 @@ def test_default_widths_serve_where_the_list_has_none(lines):
         ({"broadeners": {}}, "broadeners: not mole fractions"),
         ({"abundance": "solar"}, "abundance: unknown"),
         ({"partition_function": "TIPS-1999"}, "partition_function: unknown source"),
-        ({"chi": "any"}, "chi: no set of chi factors is known to this version"),
+        ({"chi": "any"}, 'chi: no such set of chi factors; expected None or "Tonkov-1996"'),
     ],
     ids=str,
 )

@@ -69,6 +69,8 @@ def _plan_facts(made: Plan) -> list[tuple[str, str]]:
         ("grid", f"{text.counted(made.nodes, 'node')} of {text.counted(made.points, 'point')}"),
         ("lines", f"{lines} in reach of the grid ({read} read)"),
         ("work", f"{made.profile_values:.2g} profile values, about {text.duration(made.seconds)} on one core"),
+        ("summed", f"{100.0 * made.by_cells:.0f} % of tiles by cells, the rest point by point"),
+        ("accuracy", f"every value within {made.predicted_error:.1e} of the exact sum, predicted"),
         ("memory", f"up to {text.size(made.memory)} of {text.size(made.memory_available)} available"),
         ("disk", f"up to {text.size(made.disk)} of {text.size(made.disk_free)} free"),
     ]

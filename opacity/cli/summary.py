@@ -57,6 +57,7 @@ def _lines(table: Table) -> list[tuple[str, str]]:
         *_profile(provenance.get("profile", {})),
         ("built by", f"{program.get('name', '')} {program.get('version', '')}"),
     ]
+    lines += _summation(checks.get("summation", {}).get("nodes", []))
     lines += [(row["check"], f"{row['verdict']}: {row['detail']}") for row in checks.get("results", [])]
     lines += [("warning", one) for one in checks.get("warnings", [])]
     lines += notes({"left_out": {}, "notes": {}, **checks.get("ledger", {})}, checks.get("assumptions", []))
@@ -86,8 +87,14 @@ def _profile(found: dict[str, Any]) -> list[tuple[str, str]]:
     return [
         ("cut-off", ", then ".join(steps)),
         ("plinth", "removed" if found["plinth"] else "kept"),
+        *([("chi factors", f"{found['chi']['name']}: {found['chi']['source']}")] if found.get("chi") else []),
         ("tolerance", f"{found['tolerance']:g}"),
     ]
+
+
+def _summation(nodes: list[dict[str, Any]]) -> list[tuple[str, str]]:
+    cells, points = (sum(one[key] for one in nodes) for key in ("tiles_by_cells", "tiles_by_points"))
+    return [("summed", f"{cells} tiles by cells, {points} point by point")] if nodes else []
 
 
 def _axis(values: list[float], unit: str) -> str:

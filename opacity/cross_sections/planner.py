@@ -24,6 +24,7 @@ _PER_VALUE = 0.3e-9
 _PER_LINE = 100e-9
 _PER_LINE_AND_OCTAVE = 40e-9
 _PER_POINT = 6e-9
+_PER_CENTRE = 300e-9
 
 
 @dataclass(frozen=True)
@@ -90,6 +91,31 @@ def seconds(tiles: Tiles, lines: int, points: int) -> tuple[float, float]:
         return direct, math.inf
     octaves = math.log2(max(tiles.reach / CELL, 2.0))
     return direct, lines * (_PER_LINE + _PER_LINE_AND_OCTAVE * octaves) + _PER_POINT * points
+
+
+@dataclass(frozen=True)
+class Prediction:
+    """Seconds of one worker for the sum of a node, and how many of its tiles are summed by cells."""
+
+    seconds: float
+    by_cells: int
+    tiles: int
+
+
+def predict(nu: FloatArray, cutoff: float, places: FloatArray, lines_a_place: float) -> Prediction:
+    """What the sum of a node on a grid will take; `places` are rising wavenumbers that stand for so many lines each."""
+    tiles = plan_tiles(nu, even_spacing(nu), cutoff)
+    starts = np.arange(0, nu.size, tiles.points)
+    stops = np.minimum(starts + tiles.points, nu.size)
+    first = np.searchsorted(places, nu[starts] - cutoff)
+    last = np.searchsorted(places, nu[stops - 1] + cutoff)
+    total, cells = 0.0, 0
+    for lines, points in zip(np.rint((last - first) * lines_a_place), stops - starts, strict=True):
+        ways = seconds(tiles, int(lines), int(points))
+        total += min(ways)
+        cells += ways[1] < ways[0]
+    inside = np.searchsorted(places, nu[-1]) - np.searchsorted(places, nu[0])
+    return Prediction(total + _PER_CENTRE * float(inside) * lines_a_place, cells, starts.size)
 
 
 def by_cells(tiles: Tiles, lines: int, points: int) -> bool:

@@ -30,7 +30,9 @@ _NODES = 8
 FORMULA_SHARE = 0.5
 """The share of the tolerance that the formulas of the profile may take."""
 CELL_SHARE = 0.25
-"""The share that interpolation in cells may take; what is left is for the end of the exponential."""
+"""The share that interpolation in cells may take."""
+TAIL_SHARE = 0.25
+"""The share left for the end of the exponential, beyond which it is neglected."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -67,7 +69,7 @@ def _regions(tolerance: float, inner: float) -> Regions:
     far = max((_FAR_COEFFICIENT / FORMULA_SHARE / inner) ** 0.25, _SMALLEST_FAR, near)
     formula_error = max(_FAR_COEFFICIENT / far**4, _NEAR_COEFFICIENT / near**12)
     axis = axis_for(CELL_SHARE * inner)
-    predicted = formula_error + interpolation_error(axis)
+    predicted = formula_error + interpolation_error(axis) + TAIL_SHARE * inner
     return Regions(inner, near, far, exponential_radii(inner), axis, predicted * tolerance / inner)
 
 
@@ -82,8 +84,8 @@ def exponential_radii(tolerance: float) -> FloatArray:
 
 
 def exponential_radius(y: float, tolerance: float) -> float:
-    """The x beyond which exp(-x2) is below tolerance / 4 times the Lorentz wing y / (sqrt(pi) x2)."""
-    level = math.log(4.0 / (y * tolerance)) + 0.6
+    """The x beyond which exp(-x2) is below `TAIL_SHARE` of the tolerance times the Lorentz wing y / (sqrt(pi) x2)."""
+    level = math.log(1.0 / (y * TAIL_SHARE * tolerance)) + 0.6
     u = max(level, 1.0)
     for _ in range(4):
         u = max(level + math.log(u), 1.0)

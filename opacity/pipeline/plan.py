@@ -10,8 +10,11 @@ from typing import Any
 import numpy as np
 
 from opacity.check.profile_share import sampling_risk
+from opacity.chi_factors import CHI_FACTORS
+from opacity.cross_sections.planner import Prediction, predict
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource
+from opacity.cross_sections.tolerance import regions
 from opacity.errors import ResourceError, problem
 from opacity.kernels.line_width import voigt_half_width
 from opacity.molecule.partition_function import STEP, PartitionFunction, editions_differ
@@ -20,8 +23,6 @@ from opacity.pipeline.resources import available_memory, free_disk
 from opacity.recipe.model import Recipe
 
 # For the estimates of time and memory only; measured (DEVELOPERS.md).
-EVALUATIONS_PER_SECOND = 8e8
-"""Profile values that one core adds in a second."""
 VALUES_STORED_PER_SECOND = 5e6
 """Values that are compressed, hashed, written and read back in a second."""
 LINES_CHECKED_PER_SECOND = 1e6
@@ -57,6 +58,9 @@ class NodeResolution:
 class Plan:
     """What a build of a recipe amounts to.  Memory and disk in bytes at most, time in seconds on one core.
 
+    `profile_values` are the values of profiles at points that the sum stands for; of its tiles the share `by_cells`
+    gets most of them eight a cell.  `predicted_error` is the largest relative error of a value.
+
     `obstacles` say why the build cannot fit here; it is refused then.
     """
 
@@ -66,6 +70,8 @@ class Plan:
     points: int
     lines: int
     profile_values: float
+    by_cells: float
+    predicted_error: float
     seconds: float
     memory: int
     memory_available: int | None
@@ -93,7 +99,8 @@ def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
     temperatures = sorted({t for t, _ in node_list})
     points, nodes = grid.wavenumber.size, len(node_list)
     coarse = _coarse_nodes(recipe, lines)
-    values = _profile_values(recipe, lines)
+    values, sums, cells = _summation(recipe, lines)
+    limits = regions(recipe.profile.tolerance, recipe.profile.plinth)
     table_bytes = nodes * points * BYTES_A_VALUE
     memory = table_bytes * (1 + IMAGE_COPIES) + min(lines.ledger.read, LINES_AT_ONCE) * BYTES_A_RECORD + PROGRAM_BYTES
     disk = table_bytes + 1_000_000
@@ -106,7 +113,9 @@ def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
         points=points,
         lines=len(lines),
         profile_values=values,
-        seconds=_seconds(values, nodes, points, len(lines)),
+        by_cells=cells,
+        predicted_error=limits.predicted_error,
+        seconds=sums + _seconds(nodes, points, len(lines)),
         memory=memory,
         memory_available=memory_available,
         disk=disk,
@@ -119,10 +128,10 @@ def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
     )
 
 
-def _seconds(values: float, nodes: int, points: int, lines: int) -> float:
-    """Time of spectra, checks and writing on one core."""
+def _seconds(nodes: int, points: int, lines: int) -> float:
+    """Time of checks and writing on one core."""
     checks = nodes * lines / LINES_CHECKED_PER_SECOND + min(nodes, MOST_AUDITED) * AUDIT_SECONDS
-    return values / EVALUATIONS_PER_SECOND + nodes * points / VALUES_STORED_PER_SECOND + checks
+    return nodes * points / VALUES_STORED_PER_SECOND + checks
 
 
 def table_name(recipe: Recipe) -> str:
@@ -147,19 +156,22 @@ def refuse_what_cannot_fit(plan: Plan) -> None:
         raise ResourceError("\n".join(plan.obstacles))
 
 
-def _profile_values(recipe: Recipe, source: LineSource) -> float:
+def _summation(recipe: Recipe, source: LineSource) -> tuple[float, float, float]:
+    """Profile values that the spectra stand for, seconds on one core, and the share of tiles summed by cells."""
     nu = recipe.grid.wavenumber
     places = source.sample()
     share = len(source) / max(places.size, 1)
-    total = 0.0
-    counts: dict[float, float] = {}
+    values, seconds, cells, tiles = 0.0, 0.0, 0, 0
+    known: dict[float, tuple[float, Prediction]] = {}
     for _, pressure in recipe.grid.node_list():
         cutoff = recipe.profile.cutoff.at(pressure)
-        if cutoff not in counts:
+        if cutoff not in known:
             low, high = np.searchsorted(nu, places - cutoff), np.searchsorted(nu, places + cutoff)
-            counts[cutoff] = float(np.sum(high - low)) * share
-        total += counts[cutoff]
-    return total
+            known[cutoff] = float(np.sum(high - low)) * share, predict(nu, cutoff, places, share)
+        count, one = known[cutoff]
+        values, seconds = values + count, seconds + one.seconds
+        cells, tiles = cells + one.by_cells, tiles + one.tiles
+    return values, seconds, cells / max(tiles, 1)
 
 
 def _coarse_nodes(recipe: Recipe, source: LineSource) -> list[NodeResolution]:
@@ -222,6 +234,10 @@ def _warnings(recipe: Recipe, inputs: Inputs, coarse: list[NodeResolution], temp
             f"a list made for 296 K lacks hot lines, and the grid goes to {temperatures[-1]:g} K:"
             " use a high-temperature list above about 700 K"
         )
+    chi = recipe.profile.chi
+    if chi is not None and CHI_FACTORS[chi].molecule != recipe.molecule.formula:
+        made_for = CHI_FACTORS[chi].measured_for
+        warnings.append(f"the chi factors {chi} are for {made_for} and are used for {recipe.molecule.formula}")
     warnings += [_rough(one) for one in inputs.partition if one.steps]
     for one in inputs.isotopologues:
         if not recipe.partition_function.source.startswith("TIPS") or not one.known:

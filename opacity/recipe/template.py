@@ -153,6 +153,7 @@ _PROFILE = """\
 cutoff = [{ to_pressure = 200.0, cutoff = 25.0 }, { cutoff = 100.0 }]
 tolerance = 1e-3                       # largest relative error of the sum of lines, 1e-6 to 0.1
 plinth = false                         # true subtracts the profile's value at the cut-off, for use with a continuum
+# chi = "Tonkov-1996"                  # sub-Lorentzian wings: Tonkov-1996 (CO2) or Hartmann-2002 (CH4 in H2)
 """
 
 _GRID = """\

@@ -46,7 +46,7 @@ class Case:
     def computed_with(self, lines: PreparedLines, **changes: Any) -> Values:
         """The values that a build with other lines, or with fields of the profile changed, would have stored."""
         recipe = replace(self.recipe, profile=replace(self.recipe.profile, **changes))
-        return self.with_sigma(_stored(compute_spectra(recipe, lines, 1, True)))
+        return self.with_sigma(_stored(compute_spectra(recipe, lines, 1, True).sigma))
 
     def nodes(self) -> list[tuple[tuple[int, ...], float, float]]:
         return nodes_of(self.values)
@@ -65,7 +65,7 @@ def make_case(tmp_path_factory: pytest.TempPathFactory, recipe_text: Callable[..
         path.write_text(recipe_text(**changes), encoding="utf-8")
         recipe = load_recipe(path)
         lines = load_inputs(recipe).lines.lines
-        sigma = _stored(compute_spectra(recipe, lines, 1, True))
+        sigma = _stored(compute_spectra(recipe, lines, 1, True).sigma)
         grid = recipe.grid
         nodes = grid.nodes
         axes = (grid.temperature, grid.pressure) if nodes is None else tuple(zip(*nodes, strict=True))

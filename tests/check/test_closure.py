@@ -25,6 +25,20 @@ def closure_row(case, values=None):
     return report.results[0], report.figures["closure"]
 
 
+def test_chi_factors_are_in_the_values_and_in_the_expectation(make_case):
+    """A table with weaker wings agrees with its own account, and differs from the account without them."""
+    plain = make_case(wavenumber="{ start = 2100.0, stop = 2200.0, step = 0.004 }", cutoff="100.0")
+    profile = replace(plain.recipe.profile, chi="Tonkov-1996")
+    case = replace(plain, recipe=replace(plain.recipe, profile=profile))
+    values = plain.computed_with(plain.lines, chi="Tonkov-1996")
+    row, accounts = closure_row(case, values)
+    assert row.verdict == "agrees"
+    _, others = closure_row(plain)
+    assert all(one["in_reach"] < other["in_reach"] for one, other in zip(accounts, others, strict=True))
+    assert closure_row(case, plain.values)[0].verdict == "differs"
+    assert closure_row(plain, values)[0].verdict == "differs"
+
+
 @pytest.mark.parametrize(
     "changes, judged",
     [

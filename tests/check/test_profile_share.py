@@ -8,9 +8,17 @@ import math
 import mpmath
 import numpy as np
 import pytest
+from scipy.integrate import quad
 
-from opacity.check.profile_share import sampling_offset, sampling_risk, share_between, upper_tail
-from opacity.cross_sections.exact import voigt_profile
+from opacity.check.profile_share import (
+    sampling_offset,
+    sampling_risk,
+    share_between,
+    upper_tail,
+    weighted_share_between,
+)
+from opacity.chi_factors import CHI_FACTORS
+from opacity.cross_sections.exact import chi_factors, voigt_profile
 from opacity.cross_sections.prepare import NodeLines
 
 PROMISED = 2e-7
@@ -93,3 +101,27 @@ def test_a_hopeless_step_is_not_predicted():
     assert math.isnan(sampling_offset(line, 900.0, 1.0)[0])
     assert sampling_risk(line, np.array([900.0, 901.0, 1100.0]))[0] == 1.0
     assert sampling_risk(line, np.array([1000.0]))[0] == 1.0
+
+
+def test_a_share_weighted_by_chi_factors_agrees_with_quadrature():
+    """Against scipy's adaptive quadrature, row by row, on both sides of the centre and across it."""
+    chi = CHI_FACTORS["Tonkov-1996"].table()
+    line = one_line(2000.0, 2e-3, 0.08)
+    for lower, upper in ((1990.0, 2030.0), (2001.0, 2400.0), (1500.0, 1999.0), (2002.5, 2003.5)):
+        places = sorted(
+            {lower, upper, *(2000.0 + d for d in (-300, -150, -3, 3, 150, 300) if lower < 2000.0 + d < upper)}
+        )
+        expected = 0.0
+        for a, b in itertools.pairwise(places):
+            if a < 2000.0 < b:
+                expected += float(share_between(line, np.array([a]), np.array([b]))[0])
+                continue
+
+            def profile(nu: float) -> float:
+                distance = np.array([nu - 2000.0])
+                # Just inside the stretch, so that its ends fall into its own row.
+                return float(chi_factors(chi, distance)[0] * voigt_profile(distance, 2e-3, 0.08)[0])
+
+            expected += quad(profile, np.nextafter(a, b), np.nextafter(b, a), epsrel=1e-10)[0]
+        found = weighted_share_between(line, np.array([lower]), np.array([upper]), chi)[0]
+        assert found == pytest.approx(expected, rel=3e-7)

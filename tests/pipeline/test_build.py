@@ -126,11 +126,11 @@ def test_a_failing_write_leaves_what_was_there(write_recipe, tmp_path, monkeypat
 
 
 def test_an_interrupt_leaves_nothing_behind(write_recipe, tmp_path, monkeypatch):
-    def interrupted(*_):
+    def interrupted(*_, **__):
         raise KeyboardInterrupt
 
     path, out = write_recipe(wavenumber=SHORT), tmp_path / "out"
-    monkeypatch.setattr(build_module, "spectrum", interrupted)
+    monkeypatch.setattr(build_module, "add_spectra", interrupted)
     with pytest.raises(KeyboardInterrupt):
         built(path, out, workers=2)
     assert left_in(out) == []
@@ -193,7 +193,7 @@ def test_values_too_small_for_four_bytes_are_kept_in_eight(write_recipe, tmp_pat
 def test_a_wrong_engine_is_found_out_and_the_table_says_so(write_recipe, tmp_path, monkeypatch):
     """Even values where none may be, infinitely wrong, are reported and do not break the build."""
     real = build_module.compute_spectra
-    monkeypatch.setattr(build_module, "compute_spectra", lambda *a: real(*a) + 1e-30)
+    monkeypatch.setattr(build_module, "compute_spectra", lambda *a: replace(made := real(*a), sigma=made.sigma + 1e-30))
     made = built(write_recipe(wavenumber="{ start = 3000.0, stop = 3000.4, step = 0.004 }"), tmp_path)
     rows = {row["check"]: row for row in made.figures["results"]}
     assert rows["audit against the exact sum"]["verdict"] == "differs"
@@ -237,7 +237,7 @@ def test_provenance_names_inputs_and_hashes(write_recipe, tmp_path, samples):
     assert provenance["isotopologues"][0]["formula"] == "(12C)(16O)"
     assert provenance["isotopologues"][0]["abundance"] == 1.0
     steps = [{"cutoff": 25.0, "to_pressure": None}]
-    assert provenance["profile"] == {"cutoff": steps, "tolerance": 1e-3, "plinth": False}
+    assert provenance["profile"] == {"cutoff": steps, "tolerance": 1e-3, "plinth": False, "chi": None}
     assert provenance["references"][0] == "the sample list"
     assert "Gamache" in provenance["references"][1]
     inputs = load_inputs(load_recipe(write_recipe(wavenumber=SHORT)))

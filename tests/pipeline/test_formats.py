@@ -139,7 +139,7 @@ def test_lines_too_many_to_hold_give_the_same_values(
     for module in (source_module, build_module, inputs_module):
         monkeypatch.setattr(module, "LINES_AT_ONCE", at_once)
     monkeypatch.setattr(build_module, "BLOCK", 512)
-    monkeypatch.setattr("opacity.cross_sections.compute.TILE", 512)
+    monkeypatch.setattr("opacity.cross_sections.planner.LARGEST_TILE", 512)
     again = table_of(path, tmp_path / "stored")
     np.testing.assert_allclose(again, held, rtol=1e-12)
     with opacity.open_table(tmp_path / "stored" / "exomol.cross-section.h5") as table:

@@ -7,6 +7,7 @@ import json
 import numpy as np
 import pytest
 
+from opacity.cross_sections.planner import predict
 from opacity.errors import LineListError, OpacityError, ResourceError
 from opacity.line_list.read import read_lines
 from opacity.pipeline import plan as plan_module
@@ -38,10 +39,10 @@ def test_the_numbers_of_a_plan(write_recipe, tmp_path):
     reached = np.abs(recipe.grid.wavenumber[:, None] - lines.wavenumber) <= 0.3
     # Points at just the cut-off may count or not.
     assert plan.profile_values == pytest.approx(4 * np.count_nonzero(reached), abs=4 * 2 * len(lines))
-    sums, writing = (
-        plan.profile_values / plan_module.EVALUATIONS_PER_SECOND,
-        4004 / plan_module.VALUES_STORED_PER_SECOND,
-    )
+    one = predict(recipe.grid.wavenumber, 0.3, lines.wavenumber, 1.0)
+    sums, writing = 4 * one.seconds, 4004 / plan_module.VALUES_STORED_PER_SECOND
+    assert plan.by_cells == one.by_cells / one.tiles
+    assert 0.7 * recipe.profile.tolerance <= plan.predicted_error <= recipe.profile.tolerance
     assert plan.seconds > sums + writing
     assert plan.seconds == pytest.approx(sums + writing + 4 * plan_module.AUDIT_SECONDS, rel=0.01)
     assert plan.ledger["read"] == 202 == plan.ledger["kept"] + sum(plan.ledger["left_out"].values())

@@ -169,7 +169,7 @@ ONE_FAULT = [
     (
         "plinth = true",
         'chi = "x"',
-        "40: profile.chi: not in this version; expected cutoff, tolerance or plinth",
+        '40: profile.chi: no such set of chi factors; expected "Tonkov-1996" or "Hartmann-2002", found "x"',
     ),
     # wanted tables
     (
