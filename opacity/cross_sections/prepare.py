@@ -19,7 +19,6 @@ from opacity.grids import FloatArray
 from opacity.kernels.line_strength import strengths_in_one_pass
 from opacity.kernels.line_width import (
     LOWEST_SHIFTED,
-    doppler_half_width,
     doppler_share,
     pressure_half_width,
     shifted_centre,
@@ -71,6 +70,19 @@ class LinesAtTemperature:
     strength: FloatArray
     lorentz: FloatArray
     doppler: FloatArray
+
+    def at(self, pressure: float) -> NodeLines:
+        """The lines at a pressure (bar)."""
+        centre = shifted_centre(self.wavenumber, self.shift, pressure)
+        return NodeLines(
+            self.temperature,
+            pressure,
+            self.wavenumber,
+            centre,
+            self.strength,
+            self.doppler * np.maximum(centre, LOWEST_SHIFTED * self.wavenumber),
+            pressure * self.lorentz,
+        )
 
 
 @dataclass(frozen=True)
@@ -159,16 +171,7 @@ class PreparedLines:
 
         Raises MoleculeError where a partition function is not valid at the temperature.
         """
-        centre = shifted_centre(self.wavenumber, self.broadening.shift, pressure)
-        return NodeLines(
-            temperature,
-            pressure,
-            self.wavenumber,
-            centre,
-            self.strengths(temperature) if strength is None else strength,
-            doppler_half_width(self.wavenumber, centre, temperature, self.mass),
-            pressure_half_width(self.broadening.gamma, self.broadening.exponent, temperature, pressure),
-        )
+        return self.at_temperature(temperature, strength).at(pressure)
 
 
 def prepare(

@@ -18,16 +18,12 @@ def shifted_centre(wavenumber: Array, shift: Array, pressure: float) -> Array:
     return wavenumber + pressure * shift
 
 
-def doppler_half_width(wavenumber: Array, centre: Array, temperature: float, mass: Array) -> Array:
-    """alpha = nu/c sqrt(2 ln2 k T/m), HWHM in cm-1, (n_lines,); `mass` in g/mol.
-
-    nu is the shifted centre; at pressures so high that the linear shift has lost its meaning, half of `wavenumber`.
-    """
-    return doppler_share(temperature, mass) * np.maximum(centre, LOWEST_SHIFTED * wavenumber)
-
-
 def doppler_share(temperature: float, mass: Array) -> Array:
-    """Doppler half-width (HWHM) as a share of the wavenumber, (n_lines,); `mass` in g/mol."""
+    """1/c sqrt(2 ln2 k T/m): the Doppler half-width (HWHM) as a share of the wavenumber, (n_lines,); `mass` in g/mol.
+
+    The wavenumber is the shifted centre; at pressures so high that the linear shift has lost its meaning, half of the
+    unshifted one (`LOWEST_SHIFTED`).
+    """
     return np.asarray(DOPPLER_HWHM * np.sqrt(temperature / mass))
 
 

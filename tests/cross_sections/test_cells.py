@@ -213,3 +213,20 @@ def test_the_quicker_way_is_taken() -> None:
     log = even_spacing(np.geomspace(100.0, 10000.0, 5000))
     assert log is not None
     assert log.in_log
+
+
+@pytest.mark.nojit
+def test_a_small_sum_by_cells() -> None:
+    """Every way through the kernels on a few points: even in wavenumber and in log, chi factors, plinth removal."""
+    chi = CHI_FACTORS["Tonkov-1996"].table()
+    nu = np.linspace(1990.0, 2010.0, 401)
+    lines = node([1992.0, 2000.0, 2009.0], doppler=[0.002, 0.02, 0.002], lorentz=[1e-6, 0.5, 3.0])
+    for grid in (nu, np.exp(np.linspace(np.log(1990.0), np.log(2010.0), 401))):
+        for cutoff in (0.4, 5.0, 30.0):
+            for factors in (None, chi):
+                truth = exact_spectrum(lines, grid, cutoff, chi=factors)
+                found = spectrum(lines, grid, cutoff, regions(1e-4), chi=factors, cells=True)
+                assert margin(found, truth, 1e-4) <= 1.0
+                plain = exact_spectrum(lines, grid, cutoff, plinth=True, chi=factors)
+                found = spectrum(lines, grid, cutoff, regions(1e-4, plinth=True), True, factors, cells=True)
+                assert margin(found, plain, 1e-4, 1e-13 * truth) <= 1.0
