@@ -53,6 +53,8 @@ _ENERGIES = (ENERGY_OFFSET, HIGHEST_ENERGY)
 _LOG_INTENSITIES = (LOG_OFFSET, math.log(STRONGEST))
 _EVERYWHERE = (-math.inf, math.inf)
 _ENDINGS = re.compile(r"\.broad(\.gz|\.bz2)?$", re.IGNORECASE)
+_AT_A_TIME = 1 << 20
+"""Bytes of a chunk: its columns stay in the processor's cache, and its memory is had again for the next one."""
 WAVENUMBER_AGREES = 0.01
 """A wavenumber given beside A may differ this much (cm-1) from the states' before it is noted."""
 
@@ -102,7 +104,7 @@ def transition_batches(
     def work(raw: RawText) -> Batch | None:
         return _batch(path, raw, join, leave_out, range)
 
-    yield from not_empty(in_order(work, read_raw(path), executor), path, "transition")
+    yield from not_empty(in_order(work, read_raw(path, _AT_A_TIME), executor), path, "transition")
 
 
 def _batch(
