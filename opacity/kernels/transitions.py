@@ -72,35 +72,37 @@ def join_states(
     lower-state energies (cm-1), the second of which is beyond; ln I, unless I is 0; wavenumbers (cm-1) asked for.
     `width_key` is 2J'' times 9 plus the class of J' - J''.
     """
+    # What lies far apart in memory is fetched first, by a loop so short that many fetches are under way at once.
+    for i in range(upper.size):
+        u, low = upper[i], lower[i]
+        if status[i] == GOOD and (u < 0 or low < 0):
+            status[i] = NO_UPPER if u < 0 else NO_LOWER
+        if status[i] == GOOD:
+            lower_energy[i] = states[low, _ENERGY]
+            wavenumber[i] = states[u, _ENERGY] - states[low, _ENERGY]
+            log_intensity[i] = states[u, _LOG_WEIGHT]
+            branch = min(max(int(states[u, _TWICE_J]) - int(states[low, _TWICE_J]) + 4, 0), BRANCHES - 1)
+            width_key[i] = int(states[low, _TWICE_J]) * BRANCHES + branch
     for i in range(upper.size):
         if status[i] != GOOD:
             continue
-        u, low = upper[i], lower[i]
-        if u < 0 or low < 0:
-            status[i] = NO_UPPER if u < 0 else NO_LOWER
-            continue
-        energy = states[low, _ENERGY]
-        nu = states[u, _ENERGY] - energy
-        a = einstein_a[i]
+        nu, a = wavenumber[i], einstein_a[i]
         if nu == 0.0:
             status[i] = NO_WAVENUMBER
         elif nu < 0.0:
             status[i] = SWAPPED
         elif not (a >= 0.0 and a < np.inf):
             status[i] = BAD_A
-        elif not (limits[0] <= energy < limits[1]):
+        elif not (limits[0] <= lower_energy[i] < limits[1]):
             status[i] = BAD_ENERGY
         if status[i] != GOOD:
             continue
         strength = -np.inf
         if a > 0.0:
-            strength = states[u, _LOG_WEIGHT] + math.log(a) - 2.0 * math.log(nu) - _LOG_8_PI_C
+            strength = log_intensity[i] + math.log(a) - 2.0 * math.log(nu) - _LOG_8_PI_C
             if not (limits[2] <= strength <= limits[3]):
                 status[i] = BAD_STRENGTH
                 continue
+        log_intensity[i] = strength
         if not (limits[4] <= nu <= limits[5]):
             status[i] = OUTSIDE
-            continue
-        wavenumber[i], log_intensity[i], lower_energy[i] = nu, strength, energy
-        branch = min(max(int(states[u, _TWICE_J]) - int(states[low, _TWICE_J]) + 4, 0), BRANCHES - 1)
-        width_key[i] = int(states[low, _TWICE_J]) * BRANCHES + branch
