@@ -14,6 +14,7 @@ import numpy as np
 from opacity.errors import LineListError, problem
 from opacity.grids import FloatArray
 from opacity.line_list.packed import PackedLines, WidthClasses, classes_of, used_classes
+from opacity.line_store.aside import aside
 from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, SAMPLE_EVERY, Segment
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.provenance import file_sha256
@@ -38,6 +39,7 @@ def write_segment(folder: Path, name: str, packed: PackedLines) -> Segment:
     rows = packed.width_class[first].astype(np.int64)
     packed = replace(packed, width_class=index, classes=packed.classes.select(rows))
     data = _image(packed)
+    hashing = aside(lambda: hashlib.sha256(data).hexdigest())
     write_atomically(folder / name, data)
     nu = packed.wavenumber
     return Segment(
@@ -45,7 +47,7 @@ def write_segment(folder: Path, name: str, packed: PackedLines) -> Segment:
         lines=len(packed),
         first=float(nu[0]),
         last=float(nu[-1]),
-        sha256=hashlib.sha256(data).hexdigest(),
+        sha256=hashing(),
         bytes=len(data),
         sample=tuple(float(one) for one in (*nu[::SAMPLE_EVERY], nu[-1])),
     )
