@@ -20,7 +20,7 @@ from opacity.errors import LineListError, problem
 from opacity.kernels.text import count_newlines, find_lines
 
 CHUNK = 4 << 20
-LONGEST_LINE = 1 << 20
+LONGEST_LINE = 4 << 20
 _BLOCK = 1 << 18
 WORTH_A_SECOND_CORE = 1 << 20
 """Smaller .bz2 files (bytes) are left to the standard library."""

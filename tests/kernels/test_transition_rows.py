@@ -56,12 +56,12 @@ def agree(text: bytes, first: int = 1) -> int:
     """How many rows were read; the test fails where the kernel and the slow way differ."""
     found, expected = read(text, first), slowly(text, first)
     assert [row[4:] for row in found] == [row[2:] for row in expected]
-    for (upper, lower, a, given, _, status), (ids, values, _, _) in zip(found, expected, strict=True):
+    for (upper, lower, a, second, _, status), (ids, values, _, _) in zip(found, expected, strict=True):
         if status != READ:
             continue
         assert [upper, lower] == ids
-        assert math.isnan(given) == (len(values) == 1)
-        for value, true in zip((a, given), values, strict=False):
+        assert math.isnan(second) == (len(values) == 1)
+        for value, true in zip((a, second), values, strict=False):
             # Numbers of more than 15 digits come within one unit in the last place.
             assert value == true or abs(value - true) <= math.ulp(true)
     return sum(row[5] == READ for row in found)

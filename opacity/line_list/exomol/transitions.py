@@ -19,6 +19,7 @@ from opacity.constants import REFERENCE_TEMPERATURE
 from opacity.errors import LineListError, problem
 from opacity.grids import FloatArray
 from opacity.kernels import transitions as kernel
+from opacity.kernels.text import UNREADABLE
 from opacity.kernels.transition_rows import read_transition_rows
 from opacity.line_list.batches import Batch, in_order, not_empty
 from opacity.line_list.exomol.broadening import KINDS, BroadeningTable, match_rows, served_notes, widths_of
@@ -40,7 +41,7 @@ from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
 
 _FAULTS = {
-    kernel.UNREADABLE: ("row cannot be read", "upper id, lower id, A and perhaps the wavenumber"),
+    UNREADABLE: ("row cannot be read", "upper id, lower id, A and perhaps the wavenumber"),
     kernel.NO_UPPER: ("upper state is not in the states file", "an id of the states file"),
     kernel.NO_LOWER: ("lower state is not in the states file", "an id of the states file"),
     kernel.NO_WAVENUMBER: ("both states have the same energy: wavenumber 0", "states of different energy"),
@@ -88,9 +89,9 @@ def state_join(states: States, broadening: Mapping[str, BroadeningTable], isotop
         gamma, exponent = widths_of(table, match)
         columns[name.lower()] = BroadenerColumns(gamma, exponent, nothing)
     zeros = np.zeros(keys.size, dtype=np.int16)
-    table = np.empty((len(states), 3))
-    kernel.state_table(states.energy, states.total_weight, twice_j, table)
-    return StateJoin(states, table, WidthClasses(zeros, zeros, columns), isotopologue, served)
+    beside = np.empty((len(states), 3))
+    kernel.state_table(states.energy, states.total_weight, twice_j, beside)
+    return StateJoin(states, beside, WidthClasses(zeros, zeros, columns), isotopologue, served)
 
 
 def transition_batches(
@@ -112,7 +113,8 @@ def _batch(
 ) -> Batch | None:
     room = raw.newlines + 1
     upper, lower = np.empty(room, dtype=np.int64), np.empty(room, dtype=np.int64)
-    einstein_a, given, wavenumber, log_intensity, energy = (np.empty(room) for _ in "12345")
+    einstein_a, given = np.empty(room), np.empty(room)
+    wavenumber, log_intensity, energy = np.empty(room), np.empty(room), np.empty(room)
     number, key = np.empty(room, dtype=np.uint32), np.empty(room, dtype=np.uint32)
     status = np.empty(room, dtype=np.uint8)
     n = read_transition_rows(raw.buffer, raw.first, (upper, lower), (einstein_a, given), number, status)
