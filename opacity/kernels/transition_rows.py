@@ -16,6 +16,8 @@ from opacity.kernels.text import BLANK, READ, UNREADABLE, Array, Bytes, Index, r
 _NEWLINE, _RETURN, _SPACE, _TAB, _POINT = 10, 13, 32, 9, 46
 _LONGEST_ID = 18
 _MOST_DIGITS = 17
+# Positions in plain rows are unsigned: a signed one might count from the end, and every byte would cost a test of that.
+_ONE, _NOT_PLAIN = np.uint64(1), np.uint64(0)
 
 
 @jit_exact
@@ -59,88 +61,81 @@ def read_plain_row(text: Bytes, start: int) -> tuple[int, int, float, float, int
 
     There must be an LF at or behind `start`.
     """
-    upper, i = _plain_id(text, start)
-    if i < 0:
+    upper, i = _plain_id(text, np.uint64(start))
+    if i == _NOT_PLAIN:
         return -1, -1, np.nan, np.nan, 0
     lower, i = _plain_id(text, i)
-    if i < 0:
+    if i == _NOT_PLAIN:
         return -1, -1, np.nan, np.nan, 0
     a, i = _plain_number(text, _behind_spaces(text, i))
-    if i < 0:
+    if i == _NOT_PLAIN:
         return -1, -1, np.nan, np.nan, 0
     given = np.nan
     if text[i] == _SPACE:
         i = _behind_spaces(text, i)
         if text[i] != _NEWLINE and text[i] != _RETURN:
             given, i = _plain_number(text, i)
-            if i < 0:
+            if i == _NOT_PLAIN:
                 return -1, -1, np.nan, np.nan, 0
             i = _behind_spaces(text, i)
     if text[i] == _RETURN:
-        i += 1
-    return upper, lower, a, given, (i + 1 if text[i] == _NEWLINE else 0)
+        i += _ONE
+    return upper, lower, a, given, (_signed(i + _ONE) if text[i] == _NEWLINE else 0)
 
 
 @jit_exact
-def _behind_spaces(text: Bytes, i: int) -> int:
+def _signed(position: np.uint64) -> int:
+    return int(np.int64(position))
+
+
+@jit_exact
+def _behind_spaces(text: Bytes, i: np.uint64) -> np.uint64:
     while text[i] == _SPACE:
-        i += 1
+        i += _ONE
     return i
 
 
 @jit_exact
-def _plain_id(text: Bytes, i: int) -> tuple[int, int]:
-    """Spaces, then digits, then a space that is still to come: the whole number and where it ends, -1 for others."""
-    i = _behind_spaces(text, i)
-    first, value = i, 0
+def _digits(text: Bytes, i: np.uint64, value: int) -> tuple[int, np.uint64]:
+    """A whole number with the digits from here on behind it, and where they end."""
     while True:
         digit = int(text[i]) - 48
         if not 0 <= digit <= 9:
-            break
+            return value, i
         value = value * 10 + digit
-        i += 1
-    good = text[i] == _SPACE and 0 < i - first <= _LONGEST_ID
-    return value, (i if good else -1)
+        i += _ONE
 
 
 @jit_exact
-def _plain_number(text: Bytes, i: int) -> tuple[float, int]:
-    """Digits, perhaps with a point, perhaps with E and a signed power: the number and where it ends, -1 for others."""
-    first, mantissa, exponent = i, 0, 0
-    while True:
-        digit = int(text[i]) - 48
-        if not 0 <= digit <= 9:
-            break
-        mantissa = mantissa * 10 + digit
-        i += 1
-    digits = i - first
+def _plain_id(text: Bytes, i: np.uint64) -> tuple[int, np.uint64]:
+    """Spaces, then digits, then a space that is still to come: the whole number and where it ends, 0 for others."""
+    first = _behind_spaces(text, i)
+    value, i = _digits(text, first, 0)
+    good = text[i] == _SPACE and 0 < _signed(i - first) <= _LONGEST_ID
+    return value, (i if good else _NOT_PLAIN)
+
+
+@jit_exact
+def _plain_number(text: Bytes, i: np.uint64) -> tuple[float, np.uint64]:
+    """Digits, perhaps with a point, perhaps with E and a signed power: the number and where it ends, 0 for others."""
+    first, exponent = i, 0
+    mantissa, i = _digits(text, first, 0)
+    digits = _signed(i - first)
     if text[i] == _POINT:
-        i += 1
-        point = i
-        while True:
-            digit = int(text[i]) - 48
-            if not 0 <= digit <= 9:
-                break
-            mantissa = mantissa * 10 + digit
-            i += 1
-        exponent = point - i
+        first = i + _ONE
+        mantissa, i = _digits(text, first, mantissa)
+        exponent = -_signed(i - first)
         digits -= exponent
     good = 0 < digits <= _MOST_DIGITS
     if text[i] == 69 or text[i] == 101:
-        negative = text[i + 1] == 45
-        if not (negative or text[i + 1] == 43):
-            return np.nan, -1
-        i += 2
-        first, power = i, 0
-        while True:
-            digit = int(text[i]) - 48
-            if not 0 <= digit <= 9:
-                break
-            power = power * 10 + digit
-            i += 1
-        good = good and 0 < i - first <= 3
-        exponent += -power if negative else power
-    return (scale_by_power(float(mantissa), exponent), i) if good else (np.nan, -1)
+        sign = text[i + _ONE]
+        if sign != 43 and sign != 45:
+            return np.nan, _NOT_PLAIN
+        first = i + _ONE + _ONE
+        power, i = _digits(text, first, 0)
+        good = good and 0 < _signed(i - first) <= 3
+        exponent += -power if sign == 45 else power
+    return (scale_by_power(float(mantissa), exponent), i) if good else (np.nan, _NOT_PLAIN)
 
 
 @jit_exact
