@@ -61,9 +61,7 @@ def open_list(recipe: Recipe, number: int, tables: Path, memory: int, quiet: boo
     source = recipe.line_lists[number]
     store = None if is_small(source) else ensure_store(recipe, source, tables, memory, quiet, hashes)[0]
     if store is not None:
-        index = store.index
-        ends = (index.segments[0].first, index.segments[-1].last) if index.segments else (0.0, 0.0)
-        return OpenList(store, index.ledger, {one.formula: ends for one in index.isotopologues}, index.facts)
+        return OpenList(store, store.index.ledger, store.spans(), store.index.facts)
     lines = _read(recipe, number, source)
     spans = {}
     for place, one in enumerate(lines.isotopologues):
