@@ -4,16 +4,22 @@ from __future__ import annotations
 
 from argparse import Namespace
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from opacity.cli import text
 
-LIST_ENDINGS = (".par", ".data", ".par.gz", ".par.bz2", ".data.gz", ".data.bz2")
+if TYPE_CHECKING:
+    from opacity.pipeline.list_check import ListReport
+
+RECORDS = (".par", ".data", ".cat")
 
 
 def is_list(target: Path) -> bool:
     """Whether a file's name is that of a line list that can be read by itself."""
-    return target.name.lower().endswith(LIST_ENDINGS)
+    name = target.name.lower()
+    for ending in (".gz", ".bz2"):
+        name = name.removesuffix(ending)
+    return name.endswith(RECORDS)
 
 
 def ingest(arguments: Namespace) -> int:
@@ -65,27 +71,22 @@ def _store_facts(one: dict[str, Any]) -> list[tuple[str, str]]:
 
 def check_list(target: Path, as_json: bool) -> int:
     """`opacity check LIST`: what is worth knowing of a list before it is used."""
-    from opacity.line_list.examine import examine
-    from opacity.line_list.read import read_lines
+    from opacity.pipeline.list_check import check_records
 
-    lines = read_lines(target, bad_records="leave-out")
-    found = examine(lines)
-    if as_json:
-        content = {
-            "list": str(target),
-            "lines": len(lines),
-            "ledger": lines.ledger.as_dict(),
-            "findings": [one.as_dict() for one in found],
-        }
-        print(text.as_json(content))
-        return 0
-    reach = f"{lines.wavenumber[0]:.6f} to {lines.wavenumber[-1]:.6f} cm-1"
-    names = ", ".join(one.formula for one in lines.isotopologues)
-    facts = [("list", str(target)), ("lines", f"{len(lines)} of {lines.molecule_formula}, {reach}"), ("of", names)]
-    facts += [("left out", f"{count}: {reason}") for reason, count in sorted(lines.ledger.left_out.items())]
-    facts += [("note", f"{count}: {note}") for note, count in sorted(lines.ledger.notes.items())]
-    for one in found:
-        detail = f"; {one.detail}" if one.detail else ""
-        facts.append(("found", f"{one.lines} lines ({100.0 * one.share:.2g} % of the strength): {one.what}{detail}"))
-    print(text.facts(facts))
+    report = check_records(target)
+    print(text.as_json(report.as_dict()) if as_json else text.facts(_report_facts(report)))
     return 0
+
+
+def _report_facts(report: ListReport) -> list[tuple[str, str]]:
+    lines = f"{report.lines} of {report.molecule}"
+    if report.reach is not None:
+        lines += f", {report.reach[0]:.6f} to {report.reach[1]:.6f} cm-1"
+    facts = [("list", str(report.target)), ("lines", lines), ("of", ", ".join(report.isotopologues))]
+    facts += [("left out", f"{count}: {reason}") for reason, count in sorted(report.ledger.left_out.items())]
+    facts += [("note", f"{count}: {note}") for note, count in sorted(report.ledger.notes.items())]
+    facts += [("note", remark) for remark in report.remarks]
+    for one in report.findings:
+        detail = f"; {one.detail}" if one.detail else ""
+        facts.append(("found", f"{one.lines} lines ({text.percent(one.share)} of the strength): {one.what}{detail}"))
+    return facts

@@ -62,7 +62,7 @@ def read_lines(
         raise LineListError(
             problem(paths[0], "lines of several molecules", expected="one molecule", found=", ".join(formulas))
         )
-    if base.isotopologue is not None and len(lines) and not _is_catalogue(paths[0], format):
+    if base.isotopologue is not None and len(lines) and not is_catalogue(paths[0], format):
         lines = only(lines, base.isotopologue)
     if range is not None:
         lower, upper = range
@@ -112,7 +112,7 @@ def _is_called(one: Isotopologue, name: str) -> bool:
 
 def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: bool) -> LineList:
     """The lines of one file.  Raises LineListError for a record that can't be right, or a file that holds none."""
-    if _is_catalogue(path, format):
+    if is_catalogue(path, format):
         if options.formula is None or options.isotopologue is None:
             raise InputError(
                 problem("options", "a catalogue does not name its molecule", expected="formula and isotopologue")
@@ -141,8 +141,10 @@ def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: b
     return merge(batches)
 
 
-def _is_catalogue(path: Path, format: str | None) -> bool:
-    return format == "catalogue" or (format is None and path.suffix.lower() == ".cat")
+def is_catalogue(path: Path, format: str | None) -> bool:
+    """Whether a file is a catalogue, by format, or by its ending where that is None."""
+    name = path.name.lower().removesuffix(".gz").removesuffix(".bz2")
+    return format == "catalogue" or (format is None and name.endswith(".cat"))
 
 
 def parser_of(path: Path, format: str | None) -> Parser:
