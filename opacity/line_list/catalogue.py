@@ -21,7 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.constants import LIGHT_SPEED, SECOND_RADIATION
-from opacity.errors import InputError, LineListError, problem
+from opacity.errors import InputError, LineListError, excerpt, problem
 from opacity.grids import FloatArray
 from opacity.kernels.text import BLANK, READ, read_fixed_column
 from opacity.line_list.ledger import Ledger
@@ -278,13 +278,11 @@ def _faults(
 
 def _problem_of(path: Path, chunk: TextChunk, first: tuple[int, str, str], bad: int) -> str:
     row, reason, expected = first
-    text = chunk.record(row)[:70].decode("latin-1").replace("\t", " ")
-    shown = "".join(letter if " " <= letter <= "~" else "?" for letter in text)
     return problem(
         f"{path}:{chunk.line[row]}",
         reason,
         expected=expected,
-        found=f'"{shown}"',
+        found=f'"{excerpt(chunk.record(row), 70)}"',
         remedy=f'{bad} of {len(chunk)} records are unusable: mend the list, or set bad_records = "leave-out"',
     )
 

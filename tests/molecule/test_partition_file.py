@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import bz2
+import gzip
 import re
 
 import numpy as np
@@ -55,21 +56,26 @@ def test_the_points_themselves_are_given_back_and_blank_lines_passed_over(write)
     assert (q.lowest, q.highest, q.source) == (100.0, 500.0, "file made.pf")
 
 
-def test_a_compressed_file_is_read_the_same(write):
+COMPRESS = {"bz2": bz2.compress, "gz": gzip.compress}
+
+
+@pytest.mark.parametrize("ending", COMPRESS)
+def test_a_compressed_file_is_read_the_same(write, ending):
     path = write(GOOD)
-    packed = path.with_name("made.pf.bz2")
-    packed.write_bytes(bz2.compress(path.read_bytes()))
+    packed = path.with_name(f"made.pf.{ending}")
+    packed.write_bytes(COMPRESS[ending](path.read_bytes()))
     q, plain = from_file(packed), from_file(path)
     assert [q(t) for t in (100.0, 296.0, 444.4)] == [plain(t) for t in (100.0, 296.0, 444.4)]
-    assert q.source == "file made.pf.bz2"
+    assert q.source == f"file made.pf.{ending}"
 
 
-def test_a_compressed_file_that_is_cut_or_none(write):
-    path = write(GOOD).with_name("made.pf.bz2")
-    packed = bz2.compress(b"\n".join(row.encode() for row in GOOD))
-    for damaged in (packed[:-5], b"100.0 10.0\n"):
+@pytest.mark.parametrize("ending", COMPRESS)
+def test_a_compressed_file_that_is_cut_or_none(write, ending):
+    path = write(GOOD).with_name(f"made.pf.{ending}")
+    packed = COMPRESS[ending](b"\n".join(row.encode() for row in GOOD))
+    for damaged in (packed[:-5], packed[:15], packed[:12] + b"\xff\xff\xff" + packed[15:], b"100.0 10.0\n"):
         path.write_bytes(damaged)
-        with pytest.raises(MoleculeError, match=r"made\.pf\.bz2: partition function cannot be read \("):
+        with pytest.raises(MoleculeError, match=rf"made\.pf\.{ending}: partition function cannot be read \("):
             from_file(path)
 
 
