@@ -90,24 +90,20 @@ def of_isotopologue(lines: LineList, name: str) -> LineList:
     """The lines of one isotopologue, by formula or local number, which may be none; all of an unknown molecule."""
     if not lines.isotopologues or not lines.isotopologues[0].known:
         return lines
-    chosen = np.array([_is_called(one, name) for one in lines.isotopologues])
+    chosen = np.array([one.is_called(name) for one in lines.isotopologues])
     return lines.select(chosen[lines.isotopologue], "another isotopologue than the one chosen")
 
 
 def refuse_unless_among(found: Sequence[Isotopologue], name: str) -> None:
     """Raise InputError where none of a list's isotopologues has that name; those of an unknown molecule have any."""
-    if not found or not found[0].known or any(_is_called(one, name) for one in found):
+    if not found or not found[0].known or any(one.is_called(name) for one in found):
         return
     molecule = found[0].molecule_formula
     exist = isotopologues_of(molecule)
-    known = any(_is_called(one, name) for one in exist)
+    known = any(one.is_called(name) for one in exist)
     what = f"the list holds no line of {name}" if known else f"{molecule} has no isotopologue {name}"
     expected = ", ".join(f"{one.formula} ({one.local})" for one in (found if known else exist))
     raise InputError(problem("isotopologue", what, expected=expected)).about("isotopologue")
-
-
-def _is_called(one: Isotopologue, name: str) -> bool:
-    return name in (one.formula, str(one.local))
 
 
 def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: bool) -> LineList:

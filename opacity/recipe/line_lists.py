@@ -21,7 +21,7 @@ BAD_RECORDS = ("stop", "leave-out")
 KEYS = ("format", "files", "range", "isotopologue", "reference", "bad_records", *DOWNLOAD_KEYS)
 
 WAVENUMBER = Bounds(0.0, 1e6, "cm-1")
-ISOTOPOLOGUE = re.compile(r"[A-Za-z0-9()+-]+")
+ISOTOPOLOGUE = re.compile(r"[A-Za-z0-9()+_-]+")
 FETCH = "`opacity fetch RECIPE` brings {}"
 _MOST_NAMED = 3
 _FILES = 'a list of file names or patterns such as ["lines/*.par"]'

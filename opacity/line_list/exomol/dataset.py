@@ -151,6 +151,8 @@ class OpenDataSet:
                 "max_temperature": definition.max_temperature,
                 "transitions": definition.transitions,
                 "formula": definition.formula,
+                "slug": definition.slug,
+                "mass": definition.mass,
                 "notes": list(definition.notes),
             },
             "broadening": {
