@@ -14,6 +14,7 @@ from opacity.recipe.load import load_recipe
 
 STATES = ["1 0.0 1 0", "2 3.845 3 1", "3 2143.27 1 0", "4 2147.08 3 1"]
 TRANSITIONS = ["4 1 11.9", "3 2 34.0"]
+DEFAULT = '[broadening.default.H2]\ngamma = 0.07\nexponent = 0.5\nsource = "made up"'
 DEFINITION = """\
 EXOMOL.def # ID
 {formula} # IsoFormula
@@ -38,7 +39,7 @@ def recipe_of(tmp_path: Path, write_recipe):
             "co",
             (f'"{samples}/carbon-monoxide.par"', '"12C-16O__*"'),
             ('"hitran"', f'"exomol"\nisotopologue = "{name}"'),
-            ("{ air = 1.0 }", '{ H2 = 1.0 }\n[broadening.default.H2]\ngamma = 0.07\nexponent = 0.5\nsource = "made up"'),
+            ("{ air = 1.0 }", f"{{ H2 = 1.0 }}\n{DEFAULT}"),
         )
 
     return make
