@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from argparse import Namespace
+from collections.abc import Iterable
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from opacity.cli import text
 
 if TYPE_CHECKING:
+    from opacity.check.list_bands import ListBand
     from opacity.pipeline.list_check import ListReport
 
 RECORDS = (".par", ".data", ".cat")
@@ -24,6 +26,7 @@ def is_list(target: Path) -> bool:
 
 def ingest(arguments: Namespace) -> int:
     """`opacity ingest RECIPE`: the line stores of a recipe, and the account of every record."""
+    from opacity.pipeline.list_check import store_bands
     from opacity.pipeline.sources import ensure_store
     from opacity.recipe.load import load_recipe
 
@@ -45,10 +48,12 @@ def ingest(arguments: Namespace) -> int:
                     "bytes": index.bytes,
                     "ledger": index.ledger.as_dict(),
                     "facts": {key: value for key, value in index.facts.items() if key != "states"},
+                    "bands": store_bands(store, recipe),
                 }
             )
     if arguments.json:
-        print(text.as_json({"stores": stores}))
+        plain = [{**one, "bands": [band.as_dict() for band in one.get("bands", ())]} for one in stores]
+        print(text.as_json({"stores": plain}))
     else:
         print("\n".join(text.facts(_store_facts(one)) for one in stores))
     return 0
@@ -66,14 +71,15 @@ def _store_facts(one: dict[str, Any]) -> list[tuple[str, str]]:
     ]
     lines += [("left out", f"{count}: {reason}") for reason, count in ledger["left_out"].items()]
     lines += [("note", f"{count}: {note}") for note, count in ledger["notes"].items()]
-    return lines
+    return lines + _band_facts(one["bands"])
 
 
-def check_list(target: Path, as_json: bool) -> int:
+def check_list(target: Path, recipe: str | None, as_json: bool) -> int:
     """`opacity check LIST`: what is worth knowing of a list before it is used."""
     from opacity.pipeline.list_check import check_records
+    from opacity.recipe.load import load_recipe
 
-    report = check_records(target)
+    report = check_records(target, load_recipe(recipe) if recipe else None)
     print(text.as_json(report.as_dict()) if as_json else text.facts(_report_facts(report)))
     return 0
 
@@ -89,4 +95,8 @@ def _report_facts(report: ListReport) -> list[tuple[str, str]]:
     for one in report.findings:
         detail = f"; {one.detail}" if one.detail else ""
         facts.append(("found", f"{one.lines} lines ({text.percent(one.share)} of the strength): {one.what}{detail}"))
-    return facts
+    return facts + _band_facts(report.bands)
+
+
+def _band_facts(bands: Iterable[ListBand]) -> list[tuple[str, str]]:
+    return [("band", f"{one.name}: {one.verdict}; {one.detail}") for one in bands]

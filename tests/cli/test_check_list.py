@@ -54,3 +54,61 @@ def test_a_large_list_out_of_order_says_what_was_not_judged(opacity, samples, tm
     assert code == 0
     assert "the list is not in order of wavenumber: repeated records were looked for only among" in one_line(out)
     assert "`opacity ingest RECIPE`, which sorts the lines, counts them all" in one_line(out)
+
+
+def test_more_than_a_band_allows_is_told_and_stops_nothing(opacity, samples, tmp_path):
+    records = (samples / "carbon-monoxide.par").read_text().splitlines(keepends=True)
+    path = tmp_path / "co.par"
+    path.write_text("".join(f"{one[:15]}{1.1 * float(one[15:25]):10.3E}{one[25:]}" for one in records))
+    code, out, _ = opacity("check", path)
+    assert code == 0
+    words = "band 1-0: more than the band allows; 1.1143e-17 against 1.0130e-17 cm/molecule, +10.0"
+    assert words in one_line(out)
+    code, out, _ = opacity("check", path, "--json")
+    assert code == 0
+    bands = {one["name"]: one for one in json.loads(out)["bands"]}
+    assert bands["1-0"]["verdict"] == "more than the band allows"
+    assert bands["1-0"]["difference"] == pytest.approx(0.1, abs=2e-3)
+    assert bands["1-0"]["deviations"] == pytest.approx(0.1 / 0.007, abs=0.3)
+    assert bands["2-0"]["verdict"] == "cannot judge"
+
+
+def test_an_ingest_reports_bands_from_the_store(opacity, write_recipe, samples, tmp_path):
+    path = write_recipe(extra=BAND)
+    code, out, _ = opacity("ingest", path, "-o", tmp_path / "out", "--json", "--quiet")
+    assert code == 0
+    (store,) = json.loads(out)["stores"]
+    code, out, _ = opacity("check", samples / "carbon-monoxide.par", "--recipe", path, "--json")
+    assert code == 0
+    for stored, read in zip(store["bands"], json.loads(out)["bands"], strict=True):
+        assert (stored["name"], stored["verdict"]) == (read["name"], read["verdict"])
+        assert stored["found"] == pytest.approx(read["found"], rel=1e-7)
+    assert [one["name"] for one in store["bands"]] == ["1-0", "2-0", "half (recipe)"]
+    for _ in range(2):  # made now, and up to date
+        code, out, _ = opacity("ingest", path, "-o", tmp_path / "out", "--quiet")
+        assert code == 0
+        assert "band 1-0: agrees; 1.0130e-17 against 1.0130e-17 cm/molecule" in one_line(out)
+        assert "band half (recipe): less than the band; " in one_line(out)
+
+
+BAND = """
+[[band_strength]]
+name = "half"
+range = [2143.0, 2250.0]
+strength = 1.013e-17
+unit = "cm/molecule"
+temperature = 296.0
+uncertainty = 0.007
+source = "made up"
+"""
+
+
+def test_a_recipe_says_what_a_list_of_an_unknown_molecule_is_of(opacity, samples):
+    code, out, err = opacity("check", samples / "invented-molecule.par")
+    assert (code, out) == (1, "")
+    assert "every record was left out; found 1314 unknown isotopologue" in err
+    recipe = samples.parent / "recipes" / "invented.toml"
+    code, out, err = opacity("check", samples / "invented-molecule.par", "--recipe", recipe)
+    assert (code, err) == (0, "")
+    assert "lines 1314 of Vl, " in one_line(out)
+    assert "716 lines" in out
