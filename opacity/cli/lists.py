@@ -14,14 +14,19 @@ if TYPE_CHECKING:
     from opacity.pipeline.list_check import ListReport
 
 RECORDS = (".par", ".data", ".cat")
+DATA_SET = (".def", ".def.json", ".states", ".trans")
 
 
 def is_list(target: Path) -> bool:
-    """Whether a file's name is that of a line list that can be read by itself."""
+    """Whether a file's name is that of a line list, or of a file that leads to one."""
+    return _plain(target).endswith((*RECORDS, *DATA_SET))
+
+
+def _plain(target: Path) -> str:
     name = target.name.lower()
     for ending in (".gz", ".bz2"):
         name = name.removesuffix(ending)
-    return name.endswith(RECORDS)
+    return name
 
 
 def ingest(arguments: Namespace) -> int:
@@ -76,19 +81,23 @@ def _store_facts(one: dict[str, Any]) -> list[tuple[str, str]]:
 
 def check_list(target: Path, recipe: str | None, as_json: bool) -> int:
     """`opacity check LIST`: what is worth knowing of a list before it is used."""
+    from opacity.pipeline.data_set_check import check_data_set
     from opacity.pipeline.list_check import check_records
     from opacity.recipe.load import load_recipe
 
-    report = check_records(target, load_recipe(recipe) if recipe else None)
+    look = check_data_set if _plain(target).endswith(DATA_SET) else check_records
+    report = look(target, load_recipe(recipe) if recipe else None)
     print(text.as_json(report.as_dict()) if as_json else text.facts(_report_facts(report)))
     return 0
 
 
 def _report_facts(report: ListReport) -> list[tuple[str, str]]:
-    lines = f"{report.lines} of {report.molecule}"
-    if report.reach is not None:
-        lines += f", {report.reach[0]:.6f} to {report.reach[1]:.6f} cm-1"
-    facts = [("list", str(report.target)), ("lines", lines), ("of", ", ".join(report.isotopologues))]
+    facts = [("list", str(report.target))]
+    if report.ledger.read:
+        reach = f", {report.reach[0]:.6f} to {report.reach[1]:.6f} cm-1" if report.reach is not None else ""
+        facts.append(("lines", f"{report.lines} of {report.molecule}{reach}"))
+    facts.append(("of", ", ".join(report.isotopologues)))
+    facts += report.rows
     facts += [("left out", f"{count}: {reason}") for reason, count in sorted(report.ledger.left_out.items())]
     facts += [("note", f"{count}: {note}") for note, count in sorted(report.ledger.notes.items())]
     facts += [("note", remark) for remark in report.remarks]

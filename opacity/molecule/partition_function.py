@@ -239,8 +239,16 @@ def from_states(temperature: Sequence[float], value: Sequence[float], highest_en
     """A partition function summed over the states of a list, at some temperatures (K), as a spline of ln Q in ln T.
 
     It is trusted up to where the Boltzmann factor of the highest state (cm-1) is e^-10: what lies above is not there.
+    Raises MoleculeError where the sum is 0 at nearly all temperatures: states without weight, or without the lowest.
     """
     t, q = np.asarray(temperature, dtype=np.float64), np.asarray(value, dtype=np.float64)
+    # Without the ground state a sum is 0 when it is cold.
+    t, q = t[q > 0.0], q[q > 0.0]
+    if t.size < 4:
+        what = "the sum over the states is 0"
+        raise MoleculeError(problem("partition_function", what, remedy="fetch the states again")).about(
+            "partition_function"
+        )
     highest = min(float(t[-1]), SECOND_RADIATION * highest_energy / 10.0)
     return PartitionFunction("sum over states", float(t[0]), highest, _spline=CubicSpline(np.log(t), np.log(q)))
 

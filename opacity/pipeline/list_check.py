@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, field
@@ -9,6 +10,7 @@ from pathlib import Path
 from typing import Any
 
 from opacity.check.list_bands import BandSums, ListBand, bands_of
+from opacity.errors import MoleculeError
 from opacity.line_list.duplicates import IN_ONE_FILE
 from opacity.line_list.examine import Examination, Finding
 from opacity.line_list.ledger import Ledger
@@ -30,7 +32,8 @@ _INCOMPLETE = (
 class ListReport:
     """What a look at a list gave.
 
-    `reach` are the first and last wavenumber (cm-1), None without lines; `remarks` are whole sentences.
+    `reach` are the first and last wavenumber (cm-1), None without lines; `remarks` are whole sentences,
+    `rows` further ones with the word before each.
     """
 
     target: Path
@@ -42,6 +45,7 @@ class ListReport:
     findings: tuple[Finding, ...]
     remarks: tuple[str, ...] = ()
     bands: tuple[ListBand, ...] = ()
+    rows: tuple[tuple[str, str], ...] = ()
     facts: dict[str, Any] = field(default_factory=dict)
 
     def as_dict(self) -> dict[str, Any]:
@@ -114,9 +118,11 @@ def store_bands(store: LineStore, recipe: Recipe) -> list[ListBand]:
     wanted = bands_of(recipe.molecule.formula, recipe)
     states = store.index.facts.get("states")
     partition = {}
-    if states:
-        summed = from_states(states["temperature"], states["partition"], states["highest_energy"])
-        partition = {one.formula: summed for one in store.index.isotopologues}
+    # States without weight have no partition function; that is said where it is needed.
+    with contextlib.suppress(MoleculeError):
+        if states:
+            summed = from_states(states["temperature"], states["partition"], states["highest_energy"])
+            partition = {one.formula: summed for one in store.index.isotopologues}
     sums = BandSums(wanted, partition)
     spans = store.spans()
     for one in store.index.isotopologues:

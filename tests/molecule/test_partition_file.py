@@ -11,7 +11,7 @@ import pytest
 
 from opacity.constants import SECOND_RADIATION
 from opacity.errors import MoleculeError
-from opacity.molecule.partition_function import from_file
+from opacity.molecule.partition_function import from_file, from_states
 
 GOOD = ["100.0 10.0", "200.0 28.0", "300.0 52.0", "400.0 80.0", "500.0 112.0"]
 
@@ -170,3 +170,13 @@ def test_a_step_in_a_file_is_found_where_it_is(write):
         steps = from_file(write([f"{t} {q}" for t, q in zip(temperature, broken, strict=True)])).steps
         assert bool(steps) is found
         assert all(abs(t - place) <= 20.0 for t in steps)
+
+
+def test_a_sum_over_states_that_is_0_when_cold_serves_where_it_is_not():
+    t = np.geomspace(10.0, 5000.0, 40)
+    q = np.where(t < 100.0, 0.0, 0.3 * t**1.5)
+    summed = from_states(t.tolist(), q.tolist(), 20000.0)
+    assert summed.lowest == t[t >= 100.0][0]
+    assert summed(296.0) == pytest.approx(0.3 * 296.0**1.5, rel=1e-12)
+    with pytest.raises(MoleculeError, match=r"^partition_function: the sum over the states is 0; fetch the states"):
+        from_states(t.tolist(), np.zeros(t.size).tolist(), 20000.0)
