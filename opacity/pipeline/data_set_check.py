@@ -107,7 +107,8 @@ def _read(
             nu = batch.packed.wavenumber
             if nu.size:
                 low, high = min(low, float(nu.min())), max(high, float(nu.max()))
-                sums.add(_lines(batch, path))
+                if wanted:
+                    sums.add(_lines(batch, path))
     return ledger, (low, high) if low <= high else None, sums
 
 
