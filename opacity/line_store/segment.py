@@ -11,7 +11,7 @@ from typing import Any
 import h5py
 import numpy as np
 
-from opacity.errors import LineListError, problem
+from opacity.errors import LineListError, one_line, problem
 from opacity.grids import FloatArray
 from opacity.line_list.packed import PackedLines, WidthClasses, classes_of, used_classes
 from opacity.line_store.aside import aside
@@ -92,7 +92,7 @@ def _unreadable(path: Path, error: Exception) -> LineListError:
     """What to say of a segment that does not open: what the system said, or that the file is not one."""
     if not isinstance(error, OSError):
         return LineListError(problem(path, "segment of the line store cannot be read", remedy=_REMEDY))
-    reason = os.strerror(error.errno) if error.errno else " ".join(str(error).split())
+    reason = os.strerror(error.errno) if error.errno else one_line(error)
     return LineListError(problem(path, f"segment of the line store cannot be read ({reason})"))
 
 

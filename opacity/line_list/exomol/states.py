@@ -16,12 +16,11 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from opacity.constants import SECOND_RADIATION
-from opacity.errors import InputError, LineListError, problem
+from opacity.errors import InputError, LineListError, excerpt, problem
 from opacity.grids import FloatArray
 from opacity.kernels.state_rows import BAD_COLUMN, GOOD, SHORT_ROW, read_state_rows
 from opacity.kernels.transitions import find_rows
 from opacity.line_list.exomol.definition import Definition
-from opacity.line_list.exomol.definition_values import printable
 from opacity.line_list.text import CHUNK, TextChunk, read_chunks
 
 Index = NDArray[np.int64]
@@ -162,7 +161,7 @@ def _add_chunk(path: Path, chunk: TextChunk, columns: int, rows: _Rows) -> None:
     fault = _first_fault(numbers, status, chunk.plain)
     if fault is not None:
         row, reason, expected = fault
-        shown = printable(chunk.record(row).decode("latin-1"))
+        shown = excerpt(chunk.record(row).decode("latin-1"))
         raise LineListError(problem(f"{path}:{chunk.line[row]}", reason, expected=expected, found=f'"{shown}"'))
     first, last = int(chunk.line[0]), int(chunk.line[-1])
     rows.lines.append(_Lines(count, first, None if last - first + 1 == count else chunk.line))
