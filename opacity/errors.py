@@ -7,6 +7,7 @@ code of the error's class; nothing else ever reaches a user as a bare traceback.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from typing import Self
 
@@ -64,6 +65,23 @@ class ResourceError(OpacityError):
 
 class AssumptionWarning(UserWarning):
     """What a computation assumed because the line list does not give it, and for how many lines."""
+
+
+def one_line(error: BaseException) -> str:
+    """What an exception says, on one line; empty where it says nothing."""
+    return printable(" ".join(str(error).split()))
+
+
+def printable(text: str) -> str:
+    """Text on one line: whatever is not printable is written as an escape."""
+    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode("ascii") for c in text)
+
+
+def excerpt(text: str | bytes, most: int = 60) -> str:
+    """The start of a text of a data file for an error line: one line of printable ASCII, `?` for anything else."""
+    words = text.decode("latin-1") if isinstance(text, bytes) else text
+    shown = re.sub(r"[^\x20-\x7e]", "?", words[:most].replace("\t", " "))
+    return shown + "..." if len(words) > most else shown
 
 
 def problem(

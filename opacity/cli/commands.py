@@ -143,7 +143,7 @@ def _print_results(rows: Iterable[Any], figures: Mapping[str, Any]) -> None:
 def check(arguments: Namespace) -> int:
     """`opacity check TABLE|RECIPE`: the table of results, exit code 1 where a check differs."""
     if is_list(Path(arguments.target)):
-        return check_list(Path(arguments.target), arguments.json)
+        return check_list(Path(arguments.target), arguments.recipe, arguments.json)
     from opacity.pipeline.recheck import check_table_file, find_table_and_recipe
 
     given = Path(arguments.recipe) if arguments.recipe else None

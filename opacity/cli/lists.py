@@ -3,21 +3,35 @@
 from __future__ import annotations
 
 from argparse import Namespace
+from collections.abc import Iterable
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from opacity.cli import text
 
-LIST_ENDINGS = (".par", ".data", ".par.gz", ".par.bz2", ".data.gz", ".data.bz2")
+if TYPE_CHECKING:
+    from opacity.check.list_bands import ListBand
+    from opacity.pipeline.list_check import ListReport
+
+RECORDS = (".par", ".data", ".cat")
+DATA_SET = (".def", ".def.json", ".states", ".trans")
 
 
 def is_list(target: Path) -> bool:
-    """Whether a file's name is that of a line list that can be read by itself."""
-    return target.name.lower().endswith(LIST_ENDINGS)
+    """Whether a file's name is that of a line list, or of a file that leads to one."""
+    return _plain(target).endswith((*RECORDS, *DATA_SET))
+
+
+def _plain(target: Path) -> str:
+    name = target.name.lower()
+    for ending in (".gz", ".bz2"):
+        name = name.removesuffix(ending)
+    return name
 
 
 def ingest(arguments: Namespace) -> int:
     """`opacity ingest RECIPE`: the line stores of a recipe, and the account of every record."""
+    from opacity.pipeline.list_check import store_bands
     from opacity.pipeline.sources import ensure_store
     from opacity.recipe.load import load_recipe
 
@@ -39,10 +53,12 @@ def ingest(arguments: Namespace) -> int:
                     "bytes": index.bytes,
                     "ledger": index.ledger.as_dict(),
                     "facts": {key: value for key, value in index.facts.items() if key != "states"},
+                    "bands": store_bands(store, recipe),
                 }
             )
     if arguments.json:
-        print(text.as_json({"stores": stores}))
+        plain = [{**one, "bands": [band.as_dict() for band in one.get("bands", ())]} for one in stores]
+        print(text.as_json({"stores": plain}))
     else:
         print("\n".join(text.facts(_store_facts(one)) for one in stores))
     return 0
@@ -60,32 +76,36 @@ def _store_facts(one: dict[str, Any]) -> list[tuple[str, str]]:
     ]
     lines += [("left out", f"{count}: {reason}") for reason, count in ledger["left_out"].items()]
     lines += [("note", f"{count}: {note}") for note, count in ledger["notes"].items()]
-    return lines
+    return lines + _band_facts(one["bands"])
 
 
-def check_list(target: Path, as_json: bool) -> int:
+def check_list(target: Path, recipe: str | None, as_json: bool) -> int:
     """`opacity check LIST`: what is worth knowing of a list before it is used."""
-    from opacity.line_list.examine import examine
-    from opacity.line_list.read import read_lines
+    from opacity.pipeline.data_set_check import check_data_set
+    from opacity.pipeline.list_check import check_records
+    from opacity.recipe.load import load_recipe
 
-    lines = read_lines(target, bad_records="leave-out")
-    found = examine(lines)
-    if as_json:
-        content = {
-            "list": str(target),
-            "lines": len(lines),
-            "ledger": lines.ledger.as_dict(),
-            "findings": [one.as_dict() for one in found],
-        }
-        print(text.as_json(content))
-        return 0
-    reach = f"{lines.wavenumber[0]:.6f} to {lines.wavenumber[-1]:.6f} cm-1"
-    names = ", ".join(one.formula for one in lines.isotopologues)
-    facts = [("list", str(target)), ("lines", f"{len(lines)} of {lines.molecule_formula}, {reach}"), ("of", names)]
-    facts += [("left out", f"{count}: {reason}") for reason, count in sorted(lines.ledger.left_out.items())]
-    facts += [("note", f"{count}: {note}") for note, count in sorted(lines.ledger.notes.items())]
-    for one in found:
-        detail = f"; {one.detail}" if one.detail else ""
-        facts.append(("found", f"{one.lines} lines ({100.0 * one.share:.2g} % of the strength): {one.what}{detail}"))
-    print(text.facts(facts))
+    look = check_data_set if _plain(target).endswith(DATA_SET) else check_records
+    report = look(target, load_recipe(recipe) if recipe else None)
+    print(text.as_json(report.as_dict()) if as_json else text.facts(_report_facts(report)))
     return 0
+
+
+def _report_facts(report: ListReport) -> list[tuple[str, str]]:
+    facts = [("list", str(report.target))]
+    if report.ledger.read:
+        reach = f", {report.reach[0]:.6f} to {report.reach[1]:.6f} cm-1" if report.reach is not None else ""
+        facts.append(("lines", f"{report.lines} of {report.molecule}{reach}"))
+    facts.append(("of", ", ".join(report.isotopologues)))
+    facts += report.rows
+    facts += [("left out", f"{count}: {reason}") for reason, count in sorted(report.ledger.left_out.items())]
+    facts += [("note", f"{count}: {note}") for note, count in sorted(report.ledger.notes.items())]
+    facts += [("note", remark) for remark in report.remarks]
+    for one in report.findings:
+        detail = f"; {one.detail}" if one.detail else ""
+        facts.append(("found", f"{one.lines} lines ({text.percent(one.share)} of the strength): {one.what}{detail}"))
+    return facts + _band_facts(report.bands)
+
+
+def _band_facts(bands: Iterable[ListBand]) -> list[tuple[str, str]]:
+    return [("band", f"{one.name}: {one.verdict}; {one.detail}") for one in bands]

@@ -95,7 +95,9 @@ def parser() -> argparse.ArgumentParser:
 def _add_reading_commands(command: Callable[[str, str], argparse.ArgumentParser]) -> None:
     one = command("check", "show a table right, or say what differs; or look at a line list")
     one.add_argument("target", metavar="TABLE|RECIPE|LIST")
-    one.add_argument("--recipe", metavar="RECIPE", help="the recipe that the table was built from")
+    one.add_argument(
+        "--recipe", metavar="RECIPE", help="the recipe that the table was built from, or that says what a list is of"
+    )
     one.add_argument("--seed", type=_whole, metavar="N", help="audit with other points (default: those of the build)")
     one.add_argument("--quiet", action="store_true", help="no progress")
     _add_shared(one)

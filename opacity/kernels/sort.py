@@ -7,14 +7,20 @@ from numpy.typing import NDArray
 
 from opacity.kernels.jit import jit_exact
 
-_BITS = 11
+_BITS = 8
 _SIZE = 1 << _BITS
-_PASSES = 6
+_PASSES = 8
 
 
 @jit_exact
-def _order(keys: NDArray[np.uint64], order: NDArray[np.uint32], spare: NDArray[np.uint32]) -> bool:
-    """Sort row numbers by their keys, from the lowest digit of 11 bits up; whether the result lies in `spare`."""
+def _order(
+    keys: NDArray[np.uint64], spare_keys: NDArray[np.uint64], order: NDArray[np.uint32], spare: NDArray[np.uint32]
+) -> bool:
+    """Sort keys and their row numbers, from the lowest digit up; whether the result lies in the spare arrays.
+
+    Keys move along with their rows: looked up by row, they would come from all over memory.  Digits are of 8 bits,
+    since the cache has no room for the ends of many more stretches that grow at once.
+    """
     n = keys.size
     counts = np.zeros((_PASSES, _SIZE), dtype=np.int64)
     for i in range(n):
@@ -32,13 +38,14 @@ def _order(keys: NDArray[np.uint64], order: NDArray[np.uint32], spare: NDArray[n
             count = counts[digit, value]
             counts[digit, value] = place
             place += count
-        source = spare if swapped else order
-        target = order if swapped else spare
         for i in range(n):
-            row = source[i]
-            value = (keys[row] >> shift) & np.uint64(_SIZE - 1)
-            target[counts[digit, value]] = row
-            counts[digit, value] += 1
+            key = keys[i]
+            value = (key >> shift) & np.uint64(_SIZE - 1)
+            place = counts[digit, value]
+            counts[digit, value] = place + 1
+            spare_keys[place], spare[place] = key, order[i]
+        keys, spare_keys = spare_keys, keys
+        order, spare = spare, order
         swapped = not swapped
     return swapped
 
@@ -46,6 +53,6 @@ def _order(keys: NDArray[np.uint64], order: NDArray[np.uint32], spare: NDArray[n
 def order_of(values: NDArray[np.float64]) -> NDArray[np.uint32]:
     """Row numbers (n,) that put positive numbers in rising order; equal ones keep their order.  At most 2^32 rows."""
     # The bits of positive f8 rise with their values.
-    keys = np.ascontiguousarray(values).view(np.uint64)
+    keys = np.array(values, dtype=np.float64).view(np.uint64)
     order, spare = np.arange(keys.size, dtype=np.uint32), np.empty(keys.size, dtype=np.uint32)
-    return spare if _order(keys, order, spare) else order
+    return spare if _order(keys, np.empty_like(keys), order, spare) else order

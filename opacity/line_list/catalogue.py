@@ -21,13 +21,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.constants import LIGHT_SPEED, SECOND_RADIATION
-from opacity.errors import InputError, LineListError, problem
+from opacity.errors import InputError, LineListError, excerpt, problem
 from opacity.grids import FloatArray
 from opacity.kernels.text import BLANK, READ, read_fixed_column
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.text import TextChunk, read_chunks
-from opacity.molecule.isotopologue import named_isotopologue
+from opacity.molecule.isotopologue import Isotopologue, named_isotopologue
 
 CATALOGUE_TEMPERATURE = 300.0
 """Temperature of the intensities, K."""
@@ -98,6 +98,11 @@ def catalogue_lines(
     Raises LineListError as `read_catalogue`, and where hapi does not know the isotopologue and no `mass` is given.
     """
     found = read_catalogue(path, bad_records=bad_records)
+    return as_line_list(found, catalogue_isotopologue(path, formula, isotopologue, mass))
+
+
+def catalogue_isotopologue(path: Path, formula: str, isotopologue: str, mass: float | None) -> Isotopologue:
+    """The isotopologue that a catalogue is said to be of.  Raises LineListError where no mass of it is known."""
     one = named_isotopologue(formula, isotopologue, mass)
     if one is None:
         raise LineListError(
@@ -107,6 +112,11 @@ def catalogue_lines(
                 expected="an isotopologue by hapi's formula or number, or molecule.mass",
             )
         )
+    return one
+
+
+def as_line_list(found: CatalogueLines, one: Isotopologue) -> LineList:
+    """Lines of a catalogue as a `LineList` of an isotopologue."""
     nothing = np.full(len(found), np.nan)
     return LineList(
         wavenumber=found.wavenumber,
@@ -121,7 +131,7 @@ def catalogue_lines(
         broadeners={},
         record=found.record,
         file=np.zeros(len(found), dtype=np.int16),
-        files=(str(path),),
+        files=(found.path,),
         ledger=found.ledger,
     )
 
@@ -142,6 +152,12 @@ def read_catalogue(path: Path, *, bad_records: str = "stop") -> CatalogueLines:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
     columns = {name: np.concatenate([part[name] for part in parts]) for name in parts[0]}
     return _build(path, columns, ledger)
+
+
+def catalogue_part(path: Path, chunk: TextChunk, leave_out: bool) -> CatalogueLines:
+    """Some lines of a .cat file, with an account of their own; errors as those of `read_catalogue`."""
+    ledger = Ledger()
+    return _build(path, _read_chunk(path, chunk, leave_out, ledger), ledger)
 
 
 def einstein_a(lines: CatalogueLines, partition300: float) -> FloatArray:
@@ -262,13 +278,11 @@ def _faults(
 
 def _problem_of(path: Path, chunk: TextChunk, first: tuple[int, str, str], bad: int) -> str:
     row, reason, expected = first
-    text = chunk.record(row)[:70].decode("latin-1").replace("\t", " ")
-    shown = "".join(letter if " " <= letter <= "~" else "?" for letter in text)
     return problem(
         f"{path}:{chunk.line[row]}",
         reason,
         expected=expected,
-        found=f'"{shown}"',
+        found=f'"{excerpt(chunk.record(row), 70)}"',
         remedy=f'{bad} of {len(chunk)} records are unusable: mend the list, or set bad_records = "leave-out"',
     )
 

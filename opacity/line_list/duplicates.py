@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -13,14 +15,59 @@ IN_ONE_FILE = "identical to another record of its file: both count, as the list 
 
 def identical_pairs(lines: LineList) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     """Indices of lines, and of the line before each that agrees in wavenumber, isotopologue, strength, energy and A."""
+    return _pairs(_columns(lines, lines.isotopologue))
+
+
+def _columns(lines: LineList, isotopologue: NDArray[np.int16]) -> tuple[NDArray[Any], ...]:
+    """What two identical records agree in; wavenumbers last."""
     a = np.nan_to_num(lines.einstein_a, nan=-1.0)
-    columns = (a, lines.lower_energy, lines.strength, lines.isotopologue, lines.wavenumber)
+    return a, lines.lower_energy, lines.strength, isotopologue, lines.wavenumber
+
+
+def _pairs(columns: tuple[NDArray[Any], ...]) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     order = np.lexsort(columns)
     same = np.ones(max(order.size - 1, 0), dtype=bool)
     for column in columns:
         same &= np.diff(column[order]) == 0.0
     place = np.flatnonzero(same)
     return order[place + 1], order[place]
+
+
+class Repeats:
+    """The repeated records of a list that is read part by part, of which two parts are held.
+
+    `complete` says whether all were found: so it is where no part reaches back beyond the one before it, as in a list
+    in order of wavenumber.
+    """
+
+    def __init__(self) -> None:
+        self.complete = True
+        self._before: tuple[NDArray[Any], ...] | None = None
+        self._passed = -np.inf
+
+    def add(self, lines: LineList, isotopologue: NDArray[np.int16]) -> NDArray[np.bool_]:
+        """Which lines of the next part repeat an earlier one of it or of the part before, (n_lines,).
+
+        `isotopologue` (n_lines,) is numbered alike for all parts.
+        """
+        repeated = np.zeros(len(lines), dtype=bool)
+        if not len(lines):
+            return repeated
+        part = _columns(lines, isotopologue)
+        before = self._before
+        if before is None:
+            later, _ = _pairs(part)
+            repeated[later] = True
+        else:
+            self.complete &= bool(lines.wavenumber.min() > self._passed)
+            # Equal records keep their order, so that the later one of a pair is the newer one.
+            both = tuple(np.concatenate(pair) for pair in zip(before, part, strict=True))
+            later, _ = _pairs(both)
+            held = before[-1].size
+            repeated[later[later >= held] - held] = True
+            self._passed = max(self._passed, float(before[-1].max()))
+        self._before = part
+        return repeated
 
 
 def refuse_repeated_files(lines: LineList) -> LineList:

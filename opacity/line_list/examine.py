@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -11,8 +11,9 @@ from numpy.typing import NDArray
 from opacity.constants import REFERENCE_TEMPERATURE
 from opacity.errors import MoleculeError
 from opacity.kernels.line_strength import strength_from_einstein_a
-from opacity.line_list.duplicates import identical_pairs
+from opacity.line_list.duplicates import Repeats
 from opacity.line_list.model import LineList
+from opacity.molecule.isotopologue import Isotopologue
 from opacity.molecule.partition_function import tips
 
 STRENGTH_AGREES = 0.01
@@ -33,41 +34,101 @@ class Finding:
         return asdict(self)
 
 
-def examine(lines: LineList) -> list[Finding]:
-    """What is worth knowing of a list before it is used, in order of the share of strength concerned."""
-    total = max(float(np.sum(lines.strength)), 1e-300)
+@dataclass
+class _Tally:
+    """Lines of one finding: how many, their strength, and where they lie (cm-1, strongest in cm/molecule)."""
 
-    def finding(what: str, mask: NDArray[np.bool_], detail: str = "") -> Finding:
-        return Finding(what, int(np.count_nonzero(mask)), float(np.sum(lines.strength[mask])) / total, detail)
+    lines: int = 0
+    strength: float = 0.0
+    lowest: float = np.inf
+    highest: float = -np.inf
+    strongest: float = 0.0
 
-    later, _ = identical_pairs(lines)
-    repeated = np.zeros(len(lines), dtype=bool)
-    repeated[later] = True
-    found = [
-        finding("identical to another record", repeated),
-        finding("lower-state energy unknown (below 0)", lines.lower_energy < 0.0),
-        finding("strength 0", lines.strength == 0.0),
-    ]
-    differ, compared = strength_against_a(lines)
-    if compared.any():
-        where = _where(lines, differ)
-        words = (
-            f"S and the strength from A differ by over {100.0 * STRENGTH_AGREES:g} % (of {int(compared.sum())} lines)"
-        )
-        found.append(finding(words, differ, where))
-    for name, one in sorted(lines.broadeners.items()):
-        found.append(finding(f"no width by {name}", np.isnan(one.gamma)))
-        found.append(finding(f"no temperature exponent for {name}", np.isnan(one.exponent) & ~np.isnan(one.gamma)))
-        found.append(finding(f"no pressure shift by {name}", np.isnan(one.shift)))
-    return sorted((one for one in found if one.lines), key=lambda one: -one.share)
+    def add(self, lines: LineList, mask: NDArray[np.bool_] | None = None) -> None:
+        """Count the lines of a mask (n_lines,), or all."""
+        strength = lines.strength if mask is None else lines.strength[mask]
+        if strength.size:
+            nu = lines.wavenumber if mask is None else lines.wavenumber[mask]
+            self.lines += int(strength.size)
+            self.strength += float(np.sum(strength))
+            self.lowest, self.highest = min(self.lowest, float(nu.min())), max(self.highest, float(nu.max()))
+            self.strongest = max(self.strongest, float(strength.max()))
+
+    def where(self) -> str:
+        """Where the lines lie, empty where there are none."""
+        if not self.lines:
+            return ""
+        ends = f"between {self.lowest:.6g} and {self.highest:.6g} cm-1"
+        return f"{ends}, the strongest with S = {self.strongest:.2e}"
 
 
-def _where(lines: LineList, mask: NDArray[np.bool_]) -> str:
-    if not mask.any():
-        return ""
-    nu = lines.wavenumber[mask]
-    strongest = float(lines.strength[mask].max())
-    return f"between {nu.min():.6g} and {nu.max():.6g} cm-1, the strongest with S = {strongest:.2e}"
+class Examination:
+    """What is worth knowing of a list before it is used, from its parts in the order of its file.
+
+    `all` counts all lines; `isotopologues` are those found; `complete` says whether all repeated records were found.
+    """
+
+    def __init__(self) -> None:
+        self.all = _Tally()
+        self.isotopologues: list[Isotopologue] = []
+        self._repeats = Repeats()
+        self._repeated, self._unknown_energy, self._nothing, self._differ = (_Tally() for _ in range(4))
+        self._compared = 0
+        self._broadeners: dict[str, dict[str, _Tally]] = {}
+
+    @property
+    def complete(self) -> bool:
+        """Whether repeated records were looked for among all lines."""
+        return self._repeats.complete
+
+    @property
+    def repeated(self) -> int:
+        """How many lines are identical to one before them."""
+        return self._repeated.lines
+
+    def add(self, lines: LineList) -> None:
+        """Take in the next lines."""
+        self.isotopologues += [one for one in lines.isotopologues if one not in self.isotopologues]
+        number = np.array([self.isotopologues.index(one) for one in lines.isotopologues] or [0], dtype=np.int16)
+        self.all.add(lines)
+        self._repeated.add(lines, self._repeats.add(lines, number[lines.isotopologue]))
+        self._unknown_energy.add(lines, lines.lower_energy < 0.0)
+        self._nothing.add(lines, lines.strength == 0.0)
+        differ, compared = strength_against_a(lines)
+        self._compared += int(np.count_nonzero(compared))
+        self._differ.add(lines, differ)
+        for name, one in lines.broadeners.items():
+            of = self._broadeners.setdefault(name, {kind: _Tally() for kind in ("width", "exponent", "shift", "seen")})
+            of["width"].add(lines, np.isnan(one.gamma))
+            of["exponent"].add(lines, np.isnan(one.exponent) & ~np.isnan(one.gamma))
+            of["shift"].add(lines, np.isnan(one.shift))
+            of["seen"].add(lines)
+
+    def findings(self) -> list[Finding]:
+        """What was noticed, in order of the share of strength concerned."""
+        total = max(self.all.strength, 1e-300)
+
+        def finding(what: str, of: _Tally, detail: str = "") -> Finding:
+            return Finding(what, of.lines, of.strength / total, detail)
+
+        found = [
+            finding("identical to another record", self._repeated),
+            finding("lower-state energy unknown (below 0)", self._unknown_energy),
+            finding("strength 0", self._nothing),
+        ]
+        words = f"S and the strength from A differ by over {100.0 * STRENGTH_AGREES:g} % (of {self._compared} lines)"
+        found.append(finding(words, self._differ, self._differ.where()))
+        for name, one in sorted(self._broadeners.items()):
+            # A part without the broadener's columns gives none for any of its lines.
+            lines, strength = self.all.lines - one["seen"].lines, self.all.strength - one["seen"].strength
+            width, shift = (
+                replace(of, lines=of.lines + lines, strength=of.strength + strength)
+                for of in (one["width"], one["shift"])
+            )
+            found.append(finding(f"no width by {name}", width))
+            found.append(finding(f"no temperature exponent for {name}", one["exponent"]))
+            found.append(finding(f"no pressure shift by {name}", shift))
+        return sorted((one for one in found if one.lines), key=lambda one: -one.share)
 
 
 def strength_against_a(lines: LineList) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:

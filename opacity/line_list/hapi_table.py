@@ -19,7 +19,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.errors import LineListError, problem
+from opacity.errors import LineListError, one_line, problem
 from opacity.grids import FloatArray
 from opacity.kernels.text import BLANK, UNREADABLE, read_fields, split_fields
 from opacity.line_list.hitran import parse_fixed
@@ -128,7 +128,7 @@ def _read_header(path: Path) -> _Header:
         return _interpret(header)
     except (ValueError, KeyError, TypeError, AttributeError, OverflowError, RecursionError) as error:
         raise LineListError(
-            problem(header_path, f"not a header of a hapi table ({type(error).__name__}: {error})")
+            problem(header_path, f"not a header of a hapi table ({type(error).__name__}: {one_line(error)})")
         ) from error
 
 

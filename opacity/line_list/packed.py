@@ -16,6 +16,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -208,13 +209,18 @@ def join(parts: Sequence[PackedLines]) -> PackedLines:
     starts = np.cumsum([0, *(len(table) for table in tables)])
     width_class = np.concatenate([index[starts[i] + part.width_class] for i, part in enumerate(parts)])
     wavenumber = np.concatenate([part.wavenumber for part in parts])
-    order = order_of(wavenumber)
+    order = order_of(wavenumber).astype(np.intp)
+
+    def sort(column: NDArray[Any]) -> NDArray[Any]:
+        # All places exist, and a mode that cannot fail needs no buffer.
+        return np.take(column, order, mode="clip")
+
     return PackedLines(
-        wavenumber=wavenumber[order],
-        intensity=np.concatenate([part.intensity for part in parts])[order],
-        lower_energy=np.concatenate([part.lower_energy for part in parts])[order],
-        width_class=width_class[order],
-        record=np.concatenate([part.record for part in parts])[order],
+        wavenumber=sort(wavenumber),
+        intensity=sort(np.concatenate([part.intensity for part in parts])),
+        lower_energy=sort(np.concatenate([part.lower_energy for part in parts])),
+        width_class=sort(width_class),
+        record=sort(np.concatenate([part.record for part in parts])),
         classes=merged,
     )
 

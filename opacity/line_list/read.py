@@ -62,7 +62,7 @@ def read_lines(
         raise LineListError(
             problem(paths[0], "lines of several molecules", expected="one molecule", found=", ".join(formulas))
         )
-    if base.isotopologue is not None and len(lines) and not _is_catalogue(paths[0], format):
+    if base.isotopologue is not None and len(lines) and not is_catalogue(paths[0], format):
         lines = only(lines, base.isotopologue)
     if range is not None:
         lower, upper = range
@@ -90,29 +90,25 @@ def of_isotopologue(lines: LineList, name: str) -> LineList:
     """The lines of one isotopologue, by formula or local number, which may be none; all of an unknown molecule."""
     if not lines.isotopologues or not lines.isotopologues[0].known:
         return lines
-    chosen = np.array([_is_called(one, name) for one in lines.isotopologues])
+    chosen = np.array([one.is_called(name) for one in lines.isotopologues])
     return lines.select(chosen[lines.isotopologue], "another isotopologue than the one chosen")
 
 
 def refuse_unless_among(found: Sequence[Isotopologue], name: str) -> None:
     """Raise InputError where none of a list's isotopologues has that name; those of an unknown molecule have any."""
-    if not found or not found[0].known or any(_is_called(one, name) for one in found):
+    if not found or not found[0].known or any(one.is_called(name) for one in found):
         return
     molecule = found[0].molecule_formula
     exist = isotopologues_of(molecule)
-    known = any(_is_called(one, name) for one in exist)
+    known = any(one.is_called(name) for one in exist)
     what = f"the list holds no line of {name}" if known else f"{molecule} has no isotopologue {name}"
     expected = ", ".join(f"{one.formula} ({one.local})" for one in (found if known else exist))
     raise InputError(problem("isotopologue", what, expected=expected)).about("isotopologue")
 
 
-def _is_called(one: Isotopologue, name: str) -> bool:
-    return name in (one.formula, str(one.local))
-
-
 def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: bool) -> LineList:
     """The lines of one file.  Raises LineListError for a record that can't be right, or a file that holds none."""
-    if _is_catalogue(path, format):
+    if is_catalogue(path, format):
         if options.formula is None or options.isotopologue is None:
             raise InputError(
                 problem("options", "a catalogue does not name its molecule", expected="formula and isotopologue")
@@ -141,8 +137,10 @@ def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: b
     return merge(batches)
 
 
-def _is_catalogue(path: Path, format: str | None) -> bool:
-    return format == "catalogue" or (format is None and path.suffix.lower() == ".cat")
+def is_catalogue(path: Path, format: str | None) -> bool:
+    """Whether a file is a catalogue, by format, or by its ending where that is None."""
+    name = path.name.lower().removesuffix(".gz").removesuffix(".bz2")
+    return format == "catalogue" or (format is None and name.endswith(".cat"))
 
 
 def parser_of(path: Path, format: str | None) -> Parser:

@@ -5,7 +5,6 @@ This is the common second half of all readers; the first half only finds the col
 
 from __future__ import annotations
 
-import re
 from collections import Counter
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
@@ -15,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION, STANDARD_ATMOSPHERE
-from opacity.errors import LineListError, MoleculeError, problem
+from opacity.errors import LineListError, MoleculeError, excerpt, problem
 from opacity.grids import FloatArray
 from opacity.line_list.exomol.broadening import BroadeningTable
 from opacity.line_list.foreign import ForeignRecords
@@ -42,7 +41,6 @@ STRONGEST = 1e-6
 WEAKEST = 1e-170
 HIGHEST_ENERGY = 100_000.0
 _CODES = "a code 1-9, 0, A, B of an isotopologue that hapi's tables hold"
-_NOT_TEXT = re.compile(rb"[^\t\x20-\x7e]")
 
 
 @dataclass
@@ -113,13 +111,11 @@ def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool, others:
 
 def _first_problem(columns: ParsedColumns, first: tuple[int, str, str], bad: int) -> str:
     row, reason, expected = first
-    raw = columns.text.record(row)
-    text = _NOT_TEXT.sub(b"?", raw[:70]).decode("ascii").replace("\t", " ")
     return problem(
         f"{columns.path}:{columns.text.line[row]}",
         reason,
         expected=expected,
-        found=f'"{text}..."' if len(raw) > 70 else f'"{text}"',
+        found=f'"{excerpt(columns.text.record(row), 70)}"',
         remedy=f'{bad} of {len(columns.text)} records are unusable: mend the list, or set bad_records = "leave-out"',
     )
 

@@ -16,11 +16,11 @@ from typing import Any, BinaryIO
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.errors import LineListError, problem
+from opacity.errors import LineListError, one_line, problem
 from opacity.kernels.text import count_newlines, find_lines
 
 CHUNK = 4 << 20
-LONGEST_LINE = 1 << 20
+LONGEST_LINE = 4 << 20
 _BLOCK = 1 << 18
 WORTH_A_SECOND_CORE = 1 << 20
 """Smaller .bz2 files (bytes) are left to the standard library."""
@@ -116,15 +116,11 @@ def _blocks(path: Path, size: int) -> Iterator[tuple[bytes, int]]:
                 yield block, reader.tell() if suffix == ".bz2" else file.tell()
     except (EOFError, zlib.error, gzip.BadGzipFile, ValueError, RuntimeError) as error:
         raise LineListError(
-            problem(path, f"damaged or cut {path.suffix} file ({_one_line(error)})", remedy="fetch the file again")
+            problem(path, f"damaged or cut {path.suffix} file ({one_line(error)})", remedy="fetch the file again")
         ) from error
     except OSError as error:
-        reason = error.strerror or f"damaged {path.suffix} file ({_one_line(error)})"
+        reason = error.strerror or f"damaged {path.suffix} file ({one_line(error)})"
         raise LineListError(problem(path, f"cannot be read ({reason})")) from error
-
-
-def _one_line(error: Exception) -> str:
-    return "".join(letter if letter.isprintable() else "?" for letter in str(error))
 
 
 def _opened(path: Path, file: BinaryIO, suffix: str) -> AbstractContextManager[Any]:

@@ -8,8 +8,10 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from opacity.errors import LineListError, ResourceError, problem
+from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.packed import Identical, PackedLines, count_identical, join, used_classes
 from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, PARTS, SEGMENT_LINES, Segment, sealed
@@ -21,6 +23,9 @@ ASKED_FOR = ("outside the range asked for", "another isotopologue than the one c
 """Reasons for which a record is left out though nothing is wrong with it."""
 
 _ENDING = ".lines.h5"
+
+Spans = dict[int, tuple[float, float]]
+"""First and last wavenumber by number of the isotopologue."""
 
 
 def weight(packed: PackedLines) -> int:
@@ -45,7 +50,8 @@ def assemble(
         reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(ledger.left_out.items()))
         raise LineListError(problem(names[0], "every record was left out", found=reasons, remedy="mend the list"))
     _remove_store(folder)
-    segments, repeated = _merge(folder, parts, numbers, weight_at_once)
+    spans: Spans = {}
+    segments, repeated = _merge(folder, parts, numbers, weight_at_once, spans)
     if repeated.files is not None:
         _remove_store(folder)
         raise LineListError(_said_twice(names, repeated))
@@ -65,6 +71,7 @@ def assemble(
         "ledger": ledger.as_dict(),
         "isotopologues": known,
         "basis": basis,
+        "spans": [spans.get(number) for number in range(len(known))],
         "broadeners": sorted({name for manifest in manifests for name in manifest["broadeners"]}),
         "segments": [segment.as_dict() for segment in segments],
     }
@@ -105,14 +112,15 @@ def _remove_store(folder: Path) -> None:
 
 
 def _merge(
-    folder: Path, parts: list[Segment], numbers: list[list[int]], weight_at_once: int
+    folder: Path, parts: list[Segment], numbers: list[list[int]], weight_at_once: int, spans: Spans
 ) -> tuple[list[Segment], Identical]:
-    """The store's segments, and how many lines are identical to another."""
+    """The store's segments, and how many lines are identical to another; `spans` is filled."""
     segments: list[Segment] = []
     repeated = Identical(0, 0, None)
     waiting: list[PackedLines] = []
     for stretch in merged(folder / PARTS, parts, max(weight_at_once // 2, 1)) if parts else ():
         numbered = _number_isotopologues(stretch, numbers)
+        widen(spans, numbered.wavenumber, numbered.classes.isotopologue[numbered.width_class])
         found = count_identical(numbered)
         repeated = Identical(
             repeated.within + found.within, repeated.across + found.across, repeated.files or found.files
@@ -128,6 +136,15 @@ def _merge(
     for piece in pieces(join(waiting), SEGMENT_LINES) if waiting else ():
         segments.append(_segment(folder, len(segments), piece))
     return segments, repeated
+
+
+def widen(spans: Spans, wavenumber: FloatArray, isotopologue: NDArray[np.int16]) -> None:
+    """Widen the spans by some lines (n,), sorted by wavenumber, of the isotopologues of these numbers (n,)."""
+    for number in np.flatnonzero(np.bincount(isotopologue)).tolist():
+        own = isotopologue == number
+        first, last = float(wavenumber[own.argmax()]), float(wavenumber[own.size - 1 - own[::-1].argmax()])
+        low, high = spans.get(number, (first, last))
+        spans[number] = (min(low, first), max(high, last))
 
 
 def _segment(folder: Path, number: int, packed: PackedLines) -> Segment:

@@ -14,6 +14,7 @@ from opacity.line_list.batches import Batch, renumbered
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
 from opacity.line_list.packed import PackedLines, join
+from opacity.line_store.aside import aside
 from opacity.line_store.assemble import assemble, weight
 from opacity.line_store.layout import PARTS, SEGMENT_LINES, Segment, sealed, unsealed
 from opacity.line_store.lock import locked
@@ -38,17 +39,39 @@ class InputFile:
 
 
 def identity(one: InputFile) -> dict[str, Any]:
-    """Name, size, time of change and sha256 of an input and of what lies beside it."""
-    return {"files": [_file_identity(path) for path in (one.path, *one.beside)]}
+    """Name, size, time of change and sha256 of an input and of what lies beside it.
+
+    Raises LineListError for a file that cannot be read, or that changes meanwhile.
+    """
+    return _identity(_at_rest(one))
 
 
-def _file_identity(path: Path) -> dict[str, Any]:
+def _at_rest(one: InputFile) -> list[tuple[Path, int, int]]:
+    """Size and time of change of an input and of what lies beside it."""
+    return [(path, *_size_and_time(path)) for path in (one.path, *one.beside)]
+
+
+def _size_and_time(path: Path) -> tuple[int, int]:
     try:
         status = path.stat()
     except OSError as error:
         raise LineListError(problem(path, f"cannot be read ({error.strerror})")) from error
-    sha256 = _sha256(path, status.st_size, status.st_mtime_ns)
-    return {"file": path.name, "size": status.st_size, "mtime_ns": status.st_mtime_ns, "sha256": sha256}
+    return status.st_size, status.st_mtime_ns
+
+
+def _identity(files: list[tuple[Path, int, int]]) -> dict[str, Any]:
+    """The identity of files that had these sizes and times: a hash of anything else would vouch for other content."""
+    entries = []
+    for path, size, mtime_ns in files:
+        sha256 = _sha256(path, size, mtime_ns)
+        if _size_and_time(path) != (size, mtime_ns):
+            raise _changed(path)
+        entries.append({"file": path.name, "size": size, "mtime_ns": mtime_ns, "sha256": sha256})
+    return {"files": entries}
+
+
+def _changed(path: Path) -> LineListError:
+    return LineListError(problem(path, "changed while it was read", remedy="build again when it is at rest"))
 
 
 @functools.lru_cache(maxsize=256)
@@ -136,7 +159,7 @@ def _ingest_file(
         manifest_path.unlink(missing_ok=True)
     except OSError as error:
         raise ResourceError(problem(manifest_path, f"cannot be removed ({error.strerror})")) from error
-    before = identity(one)
+    hashing = aside(functools.partial(_identity, _at_rest(one)))
     known: list[tuple[Isotopologue, StrengthBasis]] = []
     segments: list[Segment] = []
     ledger = Ledger()
@@ -155,8 +178,9 @@ def _ingest_file(
         progress(batch.ledger.read, max(batch.read - position, 0))
         position = max(batch.read, position)
     segments += _write_run(parts, f"{number:05d}-{len(segments):06d}", waiting)
+    before = hashing()
     if not same_content(one, before):
-        raise LineListError(problem(one.path, "changed while it was read", remedy="build again when it is at rest"))
+        raise _changed(one.path)
     if not ledger.adds_up():
         raise LineListError(problem(one.path, "the account of its records does not add up", found=ledger.as_dict()))
     manifest = {

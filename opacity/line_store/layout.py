@@ -14,7 +14,8 @@ from dataclasses import dataclass
 from typing import Any
 
 FORMAT_NAME = "opacity line store"
-FORMAT_VERSION = 1
+FORMAT_VERSION = 2
+"""Version 2 says between which wavenumbers each isotopologue has lines; in an index of version 1 that is missing."""
 
 SEGMENT_LINES = 1 << 20
 SAMPLE_EVERY = 4096

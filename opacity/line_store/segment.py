@@ -11,9 +11,10 @@ from typing import Any
 import h5py
 import numpy as np
 
-from opacity.errors import LineListError, problem
+from opacity.errors import LineListError, one_line, problem
 from opacity.grids import FloatArray
 from opacity.line_list.packed import PackedLines, WidthClasses, classes_of, used_classes
+from opacity.line_store.aside import aside
 from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, SAMPLE_EVERY, Segment
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.provenance import file_sha256
@@ -38,6 +39,7 @@ def write_segment(folder: Path, name: str, packed: PackedLines) -> Segment:
     rows = packed.width_class[first].astype(np.int64)
     packed = replace(packed, width_class=index, classes=packed.classes.select(rows))
     data = _image(packed)
+    hashing = aside(lambda: hashlib.sha256(data).hexdigest())
     write_atomically(folder / name, data)
     nu = packed.wavenumber
     return Segment(
@@ -45,7 +47,7 @@ def write_segment(folder: Path, name: str, packed: PackedLines) -> Segment:
         lines=len(packed),
         first=float(nu[0]),
         last=float(nu[-1]),
-        sha256=hashlib.sha256(data).hexdigest(),
+        sha256=hashing(),
         bytes=len(data),
         sample=tuple(float(one) for one in (*nu[::SAMPLE_EVERY], nu[-1])),
     )
@@ -90,7 +92,7 @@ def _unreadable(path: Path, error: Exception) -> LineListError:
     """What to say of a segment that does not open: what the system said, or that the file is not one."""
     if not isinstance(error, OSError):
         return LineListError(problem(path, "segment of the line store cannot be read", remedy=_REMEDY))
-    reason = os.strerror(error.errno) if error.errno else " ".join(str(error).split())
+    reason = os.strerror(error.errno) if error.errno else one_line(error)
     return LineListError(problem(path, f"segment of the line store cannot be read ({reason})"))
 
 

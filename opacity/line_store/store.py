@@ -14,6 +14,7 @@ from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.line_list.packed import join, unpack
+from opacity.line_store.assemble import Spans, widen
 from opacity.line_store.ingest import InputFile, same_content
 from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, Segment, unsealed
 from opacity.line_store.merge import OpenSegments
@@ -23,7 +24,11 @@ from opacity.molecule.isotopologue import Isotopologue
 
 @dataclass(frozen=True)
 class StoreIndex:
-    """What `index.json` says: how the lines were read, from what, and where they lie."""
+    """What `index.json` says: how the lines were read, from what, and where they lie.
+
+    `spans` are first and last wavenumber (cm-1) by isotopologue, None for one without lines; an index of version 1
+    does not tell them.
+    """
 
     key: str
     facts: dict[str, Any]
@@ -33,6 +38,7 @@ class StoreIndex:
     basis: tuple[StrengthBasis, ...]
     broadeners: tuple[str, ...]
     segments: tuple[Segment, ...]
+    spans: tuple[tuple[float, float] | None, ...] | None = None
 
     @property
     def lines(self) -> int:
@@ -57,9 +63,10 @@ def read_index(folder: Path) -> StoreIndex | None:
     remedy = "remove the folder: the store is made again from the line lists"
     try:
         values = unsealed(data)
-        if values["format"] != FORMAT_NAME or int(values["format_version"]) > FORMAT_VERSION:
+        version = int(values["format_version"])
+        if values["format"] != FORMAT_NAME or not 1 <= version <= FORMAT_VERSION:
             raise LineListError(
-                problem(path, "a line store of another version", expected=f"version {FORMAT_VERSION}",
+                problem(path, "a line store of another version", expected=f"version 1 to {FORMAT_VERSION}",
                         found=values["format_version"], remedy=remedy)
             )  # fmt: skip
         account = values["ledger"]
@@ -72,9 +79,17 @@ def read_index(folder: Path) -> StoreIndex | None:
             basis=tuple(StrengthBasis(**one) for one in values["basis"]),
             broadeners=tuple(str(name) for name in values["broadeners"]),
             segments=tuple(Segment.from_dict(one) for one in values["segments"]),
+            spans=_spans(values["spans"], len(values["isotopologues"])) if version > 1 else None,
         )
-    except (KeyError, TypeError, ValueError, AttributeError, RecursionError) as error:
+    except (KeyError, IndexError, TypeError, ValueError, AttributeError, RecursionError) as error:
         raise LineListError(problem(path, f"not the index of a line store ({error!r})", remedy=remedy)) from error
+
+
+def _spans(values: list[list[float] | None], count: int) -> tuple[tuple[float, float] | None, ...]:
+    """The spans that an index names.  Raises ValueError unless there is one for each isotopologue."""
+    if len(values) != count:
+        raise ValueError(f"{len(values)} spans of {count} isotopologues")
+    return tuple(None if one is None else (float(one[0]), float(one[1])) for one in values)
 
 
 def is_current(index: StoreIndex, inputs: list[InputFile], key: str) -> bool:
@@ -129,6 +144,24 @@ class LineStore:
             elif segment.first < end and segment.last >= lower:
                 total += self._segments.get(segment).count(lower, end)
         return total
+
+    def spans(self) -> dict[str, tuple[float, float]]:
+        """First and last wavenumber (cm-1) of each isotopologue that has lines, by its formula.
+
+        A store of version 1, whose index does not tell, is gone through for it.
+        """
+        known = self.index.spans
+        if known is None:
+            spans: Spans = {}
+            for lines in self.stretches(-np.inf, np.inf):
+                widen(spans, lines.wavenumber, lines.isotopologue)
+            known = tuple(spans.get(number) for number in range(len(self.index.isotopologues)))
+        found: dict[str, tuple[float, float]] = {}
+        for one, span in zip(self.index.isotopologues, known, strict=True):
+            if span is not None:
+                low, high = found.get(one.formula, span)
+                found[one.formula] = (min(low, span[0]), max(high, span[1]))
+        return found
 
     def edges(self) -> list[float]:
         """First wavenumbers of the segments."""

@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 from opacity.errors import MoleculeError, problem
 from opacity.molecule.hapi_tables import hapi
+from opacity.molecule.names import molecule_of, same_isotopologue
 
 LOCAL_CODES = {str(n): n for n in range(1, 10)} | {"0": 10, "A": 11, "B": 12}
 """Isotopologue codes of 160-character records: '1'..'9', then '0', 'A', 'B' for 10, 11, 12 (HITRAN)."""
@@ -26,6 +27,10 @@ class Isotopologue:
     mass: float
     abundance: float
     known: bool = True
+
+    def is_called(self, name: str) -> bool:
+        """Whether a name stands for it: local number, formula, or another formula or slug of the same atoms."""
+        return name == str(self.local) or same_isotopologue(name, self.formula)
 
 
 def molecule_is_known(molecule: int) -> bool:
@@ -56,12 +61,12 @@ def isotopologue(molecule: int, local: int) -> Isotopologue:
 
 
 def named_isotopologue(molecule_formula: str, name: str, mass: float | None) -> Isotopologue | None:
-    """The isotopologue of this name: by hapi's formula or local number, or one that hapi does not know, of this mass.
+    """The isotopologue of this name: by formula, slug or local number, or one that hapi does not know, of this mass.
 
     None where hapi does not know it and no mass (g/mol) is given.
     """
     for one in isotopologues_of(molecule_formula):
-        if name in (one.formula, str(one.local)):
+        if one.is_called(name):
             return one
     return None if mass is None else Isotopologue(0, 1, name, molecule_formula, mass, 1.0, known=False)
 
@@ -70,3 +75,12 @@ def isotopologues_of(molecule_formula: str) -> list[Isotopologue]:
     """All isotopologues that hapi's tables hold of a molecule, by local number; empty if it is unknown."""
     found = [isotopologue(*key) for key, row in hapi().ISO.items() if row[4] == molecule_formula]
     return sorted(found, key=lambda one: one.local)
+
+
+def isotopologue_of_name(name: str, mass: float) -> Isotopologue:
+    """The isotopologue of a formula or slug, of whatever molecule; one of this mass (g/mol) where hapi lacks it."""
+    for key in hapi().ISO:
+        one = isotopologue(*key)
+        if same_isotopologue(name, one.formula):
+            return one
+    return Isotopologue(0, 1, name, molecule_of(name), mass, 1.0, known=False)

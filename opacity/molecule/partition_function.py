@@ -10,6 +10,8 @@ find, but a comparison of the two editions or with levels does, are listed in `_
 from __future__ import annotations
 
 import bz2
+import gzip
+import zlib
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import lru_cache
@@ -19,7 +21,7 @@ import numpy as np
 from scipy.interpolate import CubicSpline
 
 from opacity.constants import REFERENCE_TEMPERATURE, SECOND_RADIATION
-from opacity.errors import MoleculeError, problem
+from opacity.errors import MoleculeError, excerpt, one_line, problem
 from opacity.grids import FloatArray
 from opacity.molecule.hapi_tables import hapi
 from opacity.molecule.isotopologue import Isotopologue
@@ -191,16 +193,16 @@ def editions_differ(isotopologue: Isotopologue, temperature: float) -> float:
 
 
 def from_file(path: Path) -> PartitionFunction:
-    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout), plain or .bz2.
+    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout), .gz, .bz2 too.
 
     Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.  Raises MoleculeError naming the line that
     can't be right, or the file where it does not hold 296 K, to which the strengths of lists refer.
     """
     try:
-        data = path.read_bytes()
-        lines = (bz2.decompress(data) if path.suffix.lower() == ".bz2" else data).decode("ascii").splitlines()
-    except (OSError, ValueError) as error:
-        raise MoleculeError(problem(path, f"partition function cannot be read ({error})")) from error
+        unpack = {".bz2": bz2.decompress, ".gz": gzip.decompress}.get(path.suffix.lower(), bytes)
+        lines = unpack(path.read_bytes()).decode("ascii").splitlines()
+    except (OSError, ValueError, EOFError, zlib.error) as error:
+        raise MoleculeError(problem(path, f"partition function cannot be read ({one_line(error)})")) from error
     rows: list[tuple[float, float]] = []
     for number, line in enumerate(lines, start=1):
         if not line.strip():
@@ -237,8 +239,16 @@ def from_states(temperature: Sequence[float], value: Sequence[float], highest_en
     """A partition function summed over the states of a list, at some temperatures (K), as a spline of ln Q in ln T.
 
     It is trusted up to where the Boltzmann factor of the highest state (cm-1) is e^-10: what lies above is not there.
+    Raises MoleculeError where the sum is 0 at nearly all temperatures: states without weight, or without the lowest.
     """
     t, q = np.asarray(temperature, dtype=np.float64), np.asarray(value, dtype=np.float64)
+    # Without the ground state a sum is 0 when it is cold.
+    t, q = t[q > 0.0], q[q > 0.0]
+    if t.size < 4:
+        what = "the sum over the states is 0"
+        raise MoleculeError(problem("partition_function", what, remedy="fetch the states again")).about(
+            "partition_function"
+        )
     highest = min(float(t[-1]), SECOND_RADIATION * highest_energy / 10.0)
     return PartitionFunction("sum over states", float(t[0]), highest, _spline=CubicSpline(np.log(t), np.log(q)))
 
@@ -256,7 +266,7 @@ def _row(path: Path, number: int, line: str, previous: float) -> tuple[float, fl
                 f"{path}:{number}",
                 "not a row of a partition function",
                 expected=f"T above {previous:g} K and Q above 0",
-                found=f'"{line.strip()[:40]}"',
+                found=f'"{excerpt(line.strip(), 40)}"',
             )
         )
     return temperature, value

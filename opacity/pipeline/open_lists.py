@@ -13,9 +13,12 @@ from opacity.cross_sections.source import (
     Windows,
 )
 from opacity.errors import LineListError, OpacityError, RecipeError, problem
+from opacity.line_list.exomol.definition import mass_difference
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
 from opacity.line_list.read import read_lines
+from opacity.molecule.isotopologue import named_isotopologue
+from opacity.molecule.names import same_isotopologue
 from opacity.molecule.partition_function import PartitionFunction, from_file, from_states
 from opacity.pipeline.sources import ensure_store, is_small, read_options
 from opacity.recipe.faults import faults_of
@@ -61,9 +64,7 @@ def open_list(recipe: Recipe, number: int, tables: Path, memory: int, quiet: boo
     source = recipe.line_lists[number]
     store = None if is_small(source) else ensure_store(recipe, source, tables, memory, quiet, hashes)[0]
     if store is not None:
-        index = store.index
-        ends = (index.segments[0].first, index.segments[-1].last) if index.segments else (0.0, 0.0)
-        return OpenList(store, index.ledger, {one.formula: ends for one in index.isotopologues}, index.facts)
+        return OpenList(store, store.index.ledger, store.spans(), store.index.facts)
     lines = _read(recipe, number, source)
     spans = {}
     for place, one in enumerate(lines.isotopologues):
@@ -110,22 +111,34 @@ def definition_warnings(recipe: Recipe, lists: Sequence[OpenList]) -> tuple[str,
     """Where a data set is not what its definition says, or the grid goes beyond it."""
     found = []
     hottest = max(t for t, _ in recipe.grid.node_list())
-    for one in lists:
+    for source, one in zip(recipe.line_lists, lists, strict=True):
         definition = one.facts.get("definition")
         if not definition:
             continue
         name, most = definition["dataset"], definition["max_temperature"]
         if most is not None and hottest > most:
             found.append(f"{name} is made for temperatures up to {most:g} K, and the grid goes to {hottest:g} K")
-        names = (definition["formula"], *one.spans)
-        if one.spans and definition["formula"] not in one.spans:
-            found.append(f"{name} is of {names[0]} by its definition, and is taken for {', '.join(one.spans)}")
+        own = [definition[key] for key in ("formula", "slug") if key in definition]
+        if one.spans and not any(same_isotopologue(said, used) for said in own for used in one.spans):
+            found.append(f"{name} is of {own[0]} by its definition, and is taken for {', '.join(one.spans)}")
+        found += _mass_warning(recipe, source, definition)
         stated = definition["transitions"]
         if stated is not None and stated != one.ledger.read:
             found.append(f"{name} has {stated} transitions by its definition, and {one.ledger.read} were read")
         found += [f"{name}: {note}" for note in definition["notes"]]
         found += [f"{name}: {count}: {note}" for note, count in one.facts["states"]["notes"].items()]
     return tuple(found)
+
+
+def _mass_warning(recipe: Recipe, source: LineListSource, definition: dict[str, Any]) -> list[str]:
+    """Where a definition's mass is not that of hapi's tables, or of the recipe for what these lack."""
+    known = named_isotopologue(recipe.molecule.formula, source.isotopologue or "", recipe.molecule.mass)
+    if known is None or "mass" not in definition:
+        return []
+    # What hapi knows is taken from there, and else the definition goes before the recipe.
+    where, used = ("hapi's tables", "hapi's") if known.known else ("the recipe", "the definition's")
+    words = mass_difference(definition["mass"], known.mass, where)
+    return [f"{definition['dataset']}: {words}; {used} is used"] if words else []
 
 
 def states_against_file(recipe: Recipe, lists: Sequence[OpenList]) -> tuple[dict[str, Any], tuple[str, ...]]:

@@ -7,8 +7,7 @@ import tomllib
 from pathlib import Path
 from typing import Any
 
-from opacity.errors import RecipeError, problem
-from opacity.recipe.faults import printable
+from opacity.errors import RecipeError, printable, problem
 from opacity.recipe.positions import KeyPath, key_lines
 
 MAX_BYTES = 64_000_000

@@ -5,7 +5,7 @@ from __future__ import annotations
 import difflib
 from collections.abc import Iterable, Sequence
 
-from opacity.errors import OpacityError, problem
+from opacity.errors import OpacityError, printable, problem
 from opacity.recipe.model import Recipe
 from opacity.recipe.positions import KeyPath, key_lines, line_of
 
@@ -63,11 +63,6 @@ def dotted(key: KeyPath) -> str:
             name = part if plain else f'"{printable(part)}"'
             text += f".{name}" if text else name
     return text
-
-
-def printable(text: str) -> str:
-    """Text on one line: whatever is not printable is written as an escape."""
-    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode("ascii") for c in text)
 
 
 def shown(value: object) -> str:

@@ -8,12 +8,12 @@ NAMELESS = ("exomol", "catalogue")
 """Formats whose lines do not say which isotopologue they are of: the recipe has to."""
 
 EXOMOL_ENDINGS = (".def", ".def.json", ".states", ".trans", ".pf", ".broad")
-"""Endings of the files of a list in ExoMol format, each plain or with .bz2 behind it."""
+"""Endings of the files of a list in ExoMol format, each plain or with .gz or .bz2 behind it."""
 
 
 def exomol_kind(name: str) -> str | None:
     """What a file of a list in ExoMol format holds: def, states, trans, pf or broad; None for any other file."""
-    plain = name.lower().removesuffix(".bz2")
+    plain = name.lower().removesuffix(".bz2").removesuffix(".gz")
     for ending in EXOMOL_ENDINGS:
         if plain.endswith(ending):
             return ending.split(".")[1]

@@ -9,8 +9,9 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
+from opacity.errors import printable
 from opacity.recipe.downloads import BESIDE, DOWNLOAD_KEYS, Download, means, read_downloads, refuse_twice
-from opacity.recipe.faults import Faults, listed, nearest, printable, shown
+from opacity.recipe.faults import Faults, listed, nearest, shown
 from opacity.recipe.formats import EXOMOL_ENDINGS, FORMATS, NAMELESS, exomol_kind
 from opacity.recipe.model import LineListSource
 from opacity.recipe.positions import KeyPath
@@ -20,7 +21,7 @@ BAD_RECORDS = ("stop", "leave-out")
 KEYS = ("format", "files", "range", "isotopologue", "reference", "bad_records", *DOWNLOAD_KEYS)
 
 WAVENUMBER = Bounds(0.0, 1e6, "cm-1")
-ISOTOPOLOGUE = re.compile(r"[A-Za-z0-9()+-]+")
+ISOTOPOLOGUE = re.compile(r"[A-Za-z0-9()+_-]+")
 FETCH = "`opacity fetch RECIPE` brings {}"
 _MOST_NAMED = 3
 _FILES = 'a list of file names or patterns such as ["lines/*.par"]'
@@ -186,7 +187,7 @@ def _check_endings(faults: Faults, key: KeyPath, paths: Sequence[Path]) -> None:
     """The files of a list in ExoMol format are told apart by their endings."""
     other = [path.name for path in paths if exomol_kind(path.name) is None]
     if other:
-        expected = f"files that end in {listed(EXOMOL_ENDINGS)}, plain or .bz2"
+        expected = f"files that end in {listed(EXOMOL_ENDINGS)}, plain, .gz or .bz2"
         faults.add(key, "not a file of a list in ExoMol format", expected=expected, found=_first_of(other))
 
 
@@ -197,7 +198,7 @@ def _check_data_set(table: Table, paths: Sequence[Path]) -> None:
         kinds[exomol_kind(path.name) or ""].append(path.name)
     lacking = [f".{kind}" for kind in ("states", "trans") if not kinds[kind]]
     if lacking:
-        expected = "one .states file and one or more .trans files, plain or .bz2"
+        expected = "one .states file and one or more .trans files, plain, .gz or .bz2"
         table.faults.add(table.path("files"), f"no {listed(lacking)} file", expected=expected)
     for kind in ("def", "states", "pf"):
         if len(kinds[kind]) > 1:

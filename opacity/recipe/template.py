@@ -5,8 +5,7 @@ from __future__ import annotations
 import json
 from dataclasses import dataclass
 
-from opacity.errors import InputError, problem
-from opacity.recipe.faults import printable
+from opacity.errors import InputError, printable, problem
 from opacity.recipe.sections import FORMULA
 
 

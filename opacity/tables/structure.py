@@ -14,7 +14,7 @@ import h5py
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.errors import OpacityError, TableError, problem
+from opacity.errors import OpacityError, TableError, one_line, problem
 from opacity.grids import FloatArray
 from opacity.tables import layout
 
@@ -37,7 +37,7 @@ def reading(path: Path, what: str) -> Iterator[None]:
     except OpacityError:
         raise
     except Exception as error:
-        raise damaged(path, f"{what} cannot be read ({_one_line(error)})") from error
+        raise damaged(path, f"{what} cannot be read ({one_line(error) or type(error).__name__})") from error
 
 
 def open_file(path: Path) -> Any:
@@ -49,7 +49,7 @@ def open_file(path: Path) -> Any:
         raise TableError(
             problem(
                 path,
-                f"not a table: not a readable HDF5 file ({_one_line(error)})",
+                f"not a table: not a readable HDF5 file ({one_line(error) or type(error).__name__})",
                 expected="a table that this program built, such as NAME.cross-section.h5",
                 remedy=f"if it was one, {_REMEDY}",
             )
@@ -80,10 +80,6 @@ def _open_hdf5(path: Path) -> Any:
         if error.errno != errno.ENOLCK and f"errno = {errno.ENOLCK}," not in str(error):
             raise
         return h5py.File(path, "r", rdcc_nbytes=0, locking=False)
-
-
-def _one_line(error: Exception) -> str:
-    return " ".join(str(error).split()) or type(error).__name__
 
 
 def check_format(path: Path, file: Any) -> int:

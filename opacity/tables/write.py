@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from opacity.errors import InputError, OpacityError, ResourceError, TableError, problem
+from opacity.errors import InputError, OpacityError, ResourceError, TableError, one_line, problem
 from opacity.grids import FloatArray, as_axis, as_wavenumbers
 from opacity.tables import layout
 from opacity.tables.atomic import write_atomically
@@ -33,7 +33,7 @@ def write_cross_section_table(path: Path, table: CrossSectionTable) -> Path:
     try:
         image = table_image(table, dtype)
     except (MemoryError, OSError, RuntimeError) as error:
-        message = f"the table cannot be put together in memory ({_one_line(error) or 'no more of it'})"
+        message = f"the table cannot be put together in memory ({one_line(error) or 'no more of it'})"
         raise ResourceError(problem(path, message, remedy="use fewer nodes or points")) from error
     return write_atomically(path, image, lambda written: _verify(path, written))
 
@@ -55,10 +55,6 @@ def _verify(path: Path, written: Path) -> None:
             table.verify()
     except OpacityError as error:
         raise ResourceError(problem(path, f"what was written does not read back ({error})")) from error
-
-
-def _one_line(error: Exception) -> str:
-    return " ".join(str(error).split())
 
 
 def _check_label(path: Path, name: str, text: str) -> None:
@@ -106,7 +102,7 @@ def _check_texts(path: Path, table: CrossSectionTable) -> None:
         as_json(table.provenance).encode("utf-8")
         as_json(table.checks).encode("utf-8")
     except (TypeError, ValueError, RecursionError) as error:
-        raise TableError(problem(path, f"a text that cannot be stored ({_one_line(error)})")) from error
+        raise TableError(problem(path, f"a text that cannot be stored ({one_line(error)})")) from error
 
 
 def _extremes(path: Path, table: CrossSectionTable) -> tuple[float, float]:

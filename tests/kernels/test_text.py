@@ -9,7 +9,7 @@ import pytest
 
 from opacity.kernels.classes import classify
 from opacity.kernels.sort import order_of
-from opacity.kernels.text import BLANK, READ, UNREADABLE, count_newlines, find_lines, read_number, read_rows
+from opacity.kernels.text import BLANK, READ, UNREADABLE, count_newlines, find_lines, read_number
 
 
 def number(text: str) -> tuple[float, int]:
@@ -67,22 +67,6 @@ def test_lines_are_found_whatever_their_ends() -> None:
     assert found == [b"one", b"two", b"th\x01ree", b"last \xe9"]
     assert line[:count].tolist() == [11, 14, 15, 16]
     assert plain[:count].tolist() == [True, True, False, False]
-
-
-@pytest.mark.nojit
-def test_rows_of_ids_and_numbers() -> None:
-    text = b" 12 7\t1.5E-3\n1 2 3 4\n1 2\n1 x 3\n1 2 3 4 5\n1234567890123456789 1 2\n"
-    buffer = np.frombuffer(text, dtype=np.uint8)
-    room = count_newlines(buffer) + 1
-    starts, stops, line = (np.empty(room, dtype=np.int64) for _ in range(3))
-    count = find_lines(buffer, 1, starts, stops, line, np.empty(room, dtype=np.bool_))
-    ids, numbers = np.zeros((count, 2), dtype=np.int64), np.empty((count, 2))
-    fields = np.empty(count, dtype=np.uint8)
-    read_rows(buffer, starts[:count], stops[:count], ids, numbers, fields)
-    assert fields.tolist() == [3, 4, 2, 255, 5, 255]
-    assert ids[:2].tolist() == [[12, 7], [1, 2]]
-    assert numbers[0, 0] == 1.5e-3
-    assert math.isnan(numbers[0, 1])
 
 
 @pytest.mark.parametrize("n", [0, 1, 2, 1000, 50_000])

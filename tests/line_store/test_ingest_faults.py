@@ -16,7 +16,7 @@ import h5py
 import numpy as np
 import pytest
 
-from opacity.errors import LineListError, ResourceError
+from opacity.errors import LineListError, OpacityError, ResourceError
 from opacity.line_list.batches import Batch, record_batches
 from opacity.line_list.records import ReadOptions
 from opacity.line_store import assemble as assemble_module
@@ -138,6 +138,38 @@ def test_files_beside_many_inputs_are_hashed_once(tmp_path: Path, monkeypatch: p
     monkeypatch.setattr(ingest_module, "file_sha256", lambda path: (hashed.append(path), sha256(path))[1])
     assert all(same_content(one, known) for _ in range(20))
     assert len(hashed) == 1
+
+
+@pytest.mark.parametrize("beside", [False, True])
+def test_a_file_that_changes_while_it_is_hashed_is_refused(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, beside: bool
+) -> None:
+    states = tmp_path / "a.states"
+    states.write_bytes(b"states")
+    written_one = written(tmp_path / "a.par", RECORDS)
+    one = InputFile(written_one.path, written_one.batches, (states,))
+    changing = states if beside else one.path
+    sha256 = ingest_module.file_sha256
+
+    def changed_then_hashed(path: Path) -> str:
+        if path == changing:
+            path.write_bytes(path.read_bytes() + RECORDS[0])
+        return sha256(path)
+
+    monkeypatch.setattr(ingest_module, "file_sha256", changed_then_hashed)
+    with pytest.raises(LineListError, match=rf"^[^\n]*{changing.name}: changed while it was read; [^\n]*at rest$"):
+        ingest(tmp_path / "store", [one], "key", 10**9, quiet)
+    assert read_index(tmp_path / "store") is None
+
+
+def test_a_fault_found_by_the_hashing_thread_is_raised(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    def refused(path: Path) -> str:
+        raise OpacityError(f"{path}: cannot be read (invented)")
+
+    monkeypatch.setattr(ingest_module, "file_sha256", refused)
+    with pytest.raises(OpacityError, match=r"a\.par: cannot be read \(invented\)$"):
+        ingest(tmp_path / "store", [written(tmp_path / "a.par", RECORDS)], "key", 10**9, quiet)
+    assert read_index(tmp_path / "store") is None
 
 
 def locked_by(folder: Path, host: str, process: int) -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import bz2
+import gzip
 import re
 
 import numpy as np
@@ -10,7 +11,7 @@ import pytest
 
 from opacity.constants import SECOND_RADIATION
 from opacity.errors import MoleculeError
-from opacity.molecule.partition_function import from_file
+from opacity.molecule.partition_function import from_file, from_states
 
 GOOD = ["100.0 10.0", "200.0 28.0", "300.0 52.0", "400.0 80.0", "500.0 112.0"]
 
@@ -55,21 +56,26 @@ def test_the_points_themselves_are_given_back_and_blank_lines_passed_over(write)
     assert (q.lowest, q.highest, q.source) == (100.0, 500.0, "file made.pf")
 
 
-def test_a_compressed_file_is_read_the_same(write):
+COMPRESS = {"bz2": bz2.compress, "gz": gzip.compress}
+
+
+@pytest.mark.parametrize("ending", COMPRESS)
+def test_a_compressed_file_is_read_the_same(write, ending):
     path = write(GOOD)
-    packed = path.with_name("made.pf.bz2")
-    packed.write_bytes(bz2.compress(path.read_bytes()))
+    packed = path.with_name(f"made.pf.{ending}")
+    packed.write_bytes(COMPRESS[ending](path.read_bytes()))
     q, plain = from_file(packed), from_file(path)
     assert [q(t) for t in (100.0, 296.0, 444.4)] == [plain(t) for t in (100.0, 296.0, 444.4)]
-    assert q.source == "file made.pf.bz2"
+    assert q.source == f"file made.pf.{ending}"
 
 
-def test_a_compressed_file_that_is_cut_or_none(write):
-    path = write(GOOD).with_name("made.pf.bz2")
-    packed = bz2.compress(b"\n".join(row.encode() for row in GOOD))
-    for damaged in (packed[:-5], b"100.0 10.0\n"):
+@pytest.mark.parametrize("ending", COMPRESS)
+def test_a_compressed_file_that_is_cut_or_none(write, ending):
+    path = write(GOOD).with_name(f"made.pf.{ending}")
+    packed = COMPRESS[ending](b"\n".join(row.encode() for row in GOOD))
+    for damaged in (packed[:-5], packed[:15], packed[:12] + b"\xff\xff\xff" + packed[15:], b"100.0 10.0\n"):
         path.write_bytes(damaged)
-        with pytest.raises(MoleculeError, match=r"made\.pf\.bz2: partition function cannot be read \("):
+        with pytest.raises(MoleculeError, match=rf"made\.pf\.{ending}: partition function cannot be read \("):
             from_file(path)
 
 
@@ -164,3 +170,13 @@ def test_a_step_in_a_file_is_found_where_it_is(write):
         steps = from_file(write([f"{t} {q}" for t, q in zip(temperature, broken, strict=True)])).steps
         assert bool(steps) is found
         assert all(abs(t - place) <= 20.0 for t in steps)
+
+
+def test_a_sum_over_states_that_is_0_when_cold_serves_where_it_is_not():
+    t = np.geomspace(10.0, 5000.0, 40)
+    q = np.where(t < 100.0, 0.0, 0.3 * t**1.5)
+    summed = from_states(t.tolist(), q.tolist(), 20000.0)
+    assert summed.lowest == t[t >= 100.0][0]
+    assert summed(296.0) == pytest.approx(0.3 * 296.0**1.5, rel=1e-12)
+    with pytest.raises(MoleculeError, match=r"^partition_function: the sum over the states is 0; fetch the states"):
+        from_states(t.tolist(), np.zeros(t.size).tolist(), 20000.0)

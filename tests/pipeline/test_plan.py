@@ -11,6 +11,7 @@ from opacity.cross_sections.planner import predict
 from opacity.errors import LineListError, OpacityError, ResourceError
 from opacity.line_list.read import read_lines
 from opacity.pipeline import plan as plan_module
+from opacity.pipeline import sources as sources_module
 from opacity.pipeline.inputs import load_inputs
 from opacity.pipeline.plan import make_plan, refuse_what_cannot_fit, table_name
 from opacity.recipe.load import load_recipe
@@ -116,6 +117,26 @@ def test_overlapping_lists_of_an_isotopologue_are_refused(write_recipe, tmp_path
     (line,) = message_of(path, tmp_path, LineListError)
     assert line.startswith("copy.par: holds lines of (12C)(16O) between 2142.47 and 2159.74 cm-1")
     assert f" cm-1, and so does {samples}/carbon-monoxide.par; give each list a range of its own" in line
+
+
+def test_stores_whose_isotopologues_do_not_overlap_are_not_refused(write_recipe, tmp_path, samples, monkeypatch):
+    """Each list holds lines of both isotopologues over its whole range, but no isotopologue overlaps with itself."""
+    monkeypatch.setattr(sources_module, "SMALL_LIST", 0)
+    records = (samples / "carbon-monoxide.par").read_text().splitlines(keepends=True)
+    # First list: (13C)(16O) below 2100, (12C)(16O) above 2170; second list: between, the other way round.
+    first = [line.replace(" 51", " 52", 1) if float(line[3:15]) < 2100.0 else line for line in records]
+    first = [line for line in first if not 2100.0 <= float(line[3:15]) <= 2170.0]
+    between = [line for line in records if 2100.0 <= float(line[3:15]) <= 2170.0]
+    second = [line.replace(" 51", " 52", 1) if float(line[3:15]) > 2140.0 else line for line in between]
+    (tmp_path / "first.par").write_text("".join(first))
+    (tmp_path / "second.par").write_text("".join(second))
+    other = '[[line_list]]\nformat = "hitran"\nfiles = ["second.par"]\nreference = "r"\n\n[isotopologues]'
+    changes = (f"{samples}/carbon-monoxide.par", "first.par"), ("[isotopologues]", other), ('"pure"', '"terrestrial"')
+    assert planned(write_recipe("co", *changes), tmp_path).lines > 0
+    # One line of (12C)(16O) more, and it overlaps.
+    (tmp_path / "second.par").write_text("".join([*second, first[-1].replace(first[-1][15:25], " 1.000E-30")]))
+    (line,) = message_of(tmp_path / "co.toml", tmp_path, LineListError)
+    assert line.startswith("second.par: holds lines of (12C)(16O) between 2172.76 and 2289.72 cm-1, and so does")
 
 
 def test_a_coarse_step_is_named_with_node_and_share(write_recipe, tmp_path):

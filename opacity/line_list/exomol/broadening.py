@@ -16,10 +16,10 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from opacity.errors import LineListError, problem
+from opacity.errors import LineListError, excerpt, problem
 from opacity.grids import FloatArray
 from opacity.line_list.exomol.definition import MAX_EXPONENT, MAX_WIDTH
-from opacity.line_list.exomol.definition_values import printable, to_number
+from opacity.line_list.exomol.definition_values import to_number
 from opacity.line_list.exomol.states import HIGHEST_J
 from opacity.line_list.text import read_chunks
 
@@ -81,7 +81,7 @@ def widths_of(table: BroadeningTable, match: RowMatch) -> tuple[FloatArray, Floa
 
 def served_notes(name: str, path: str, counts: NDArray[np.int64]) -> Counter[str]:
     """What a ledger says of lines whose width by a broadener comes from a file; `counts` (KINDS,) of lines by kind."""
-    text = f"{name} width by J'' from {printable(Path(path).name)}"
+    text = f"{name} width by J'' from {excerpt(Path(path).name)}"
     notes = {
         text: counts[EXACT] + counts[NEIGHBOUR] + counts[BEYOND],
         f"{text}, beyond its last J'': last row taken": counts[BEYOND],
@@ -244,4 +244,4 @@ def _records(path: Path) -> Iterator[tuple[int, str, bool]]:
 
 
 def _fault(where: str, reason: str, expected: str, record: str) -> LineListError:
-    return LineListError(problem(where, reason, expected=expected, found=f'"{printable(record)}"'))
+    return LineListError(problem(where, reason, expected=expected, found=f'"{excerpt(record)}"'))

@@ -21,6 +21,7 @@ from opacity.line_list.exomol.definition import Definition, read_definition
 from opacity.line_list.exomol.states import States, partition_sum, read_states
 from opacity.line_list.exomol.transitions import StateJoin, default_names, state_join, transition_batches
 from opacity.molecule.isotopologue import Isotopologue, named_isotopologue
+from opacity.recipe.formats import EXOMOL_ENDINGS, exomol_kind
 
 PARTITION_TEMPERATURES = np.geomspace(10.0, 10000.0, 400)
 """Temperatures (K) at which the sum over states is kept with the lines."""
@@ -54,9 +55,9 @@ def sort_files(
     """
     kinds: dict[str, list[Path]] = {"def": [], "states": [], "trans": [], "pf": [], "broad": []}
     for path in files:
-        kind = _kind(path)
+        kind = exomol_kind(path.name)
         if kind is None:
-            expected = ".def, .def.json, .states, .trans, .pf, .broad, plain or .bz2"
+            expected = f"{', '.join(EXOMOL_ENDINGS)}, plain, .gz or .bz2"
             raise LineListError(problem(path, "not a file of a list in ExoMol format", expected=expected))
         kinds[kind].append(path)
     for kind in ("states", "trans"):
@@ -77,16 +78,6 @@ def sort_files(
         formula=formula,
         isotopologue=isotopologue,
     )
-
-
-def _kind(path: Path) -> str | None:
-    name = path.name.lower()
-    for ending in (".bz2", ".gz"):
-        name = name.removesuffix(ending)
-    if name.endswith(".def.json"):
-        return "def"
-    ending = name.rsplit(".", 1)[-1]
-    return ending if ending in ("def", "states", "trans", "pf", "broad") else None
 
 
 class OpenDataSet:
@@ -160,6 +151,8 @@ class OpenDataSet:
                 "max_temperature": definition.max_temperature,
                 "transitions": definition.transitions,
                 "formula": definition.formula,
+                "slug": definition.slug,
+                "mass": definition.mass,
                 "notes": list(definition.notes),
             },
             "broadening": {

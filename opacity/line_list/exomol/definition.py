@@ -15,6 +15,8 @@ MAX_WIDTH = 100.0
 """No half-width is larger, cm-1/bar at 296 K (typical: 0.01 to 1)."""
 
 MAX_EXPONENT = 10.0
+MASS_AGREES = 1e-3
+"""A definition's mass may differ this much, relative, from that of elsewhere without a word."""
 _LIGHTEST, _HEAVIEST = 0.9, 1e5
 _HOTTEST = 1e6
 _HIGHEST_WAVENUMBER = 1e7
@@ -57,6 +59,14 @@ class Definition:
     state_columns: tuple[str, ...]
     broadeners: tuple[BroadenerFile, ...]
     notes: tuple[str, ...] = ()
+
+
+def mass_difference(mass: float, other: float, where: str) -> str:
+    """What to say of a definition's mass (g/mol) and that of elsewhere, empty where they agree."""
+    off = mass / other - 1.0
+    if abs(off) <= MASS_AGREES:
+        return ""
+    return f"mass {mass:.8g} g/mol in the definition, {other:.8g} g/mol in {where} ({100.0 * off:+.2g} %)"
 
 
 def read_definition(path: Path) -> Definition:

@@ -13,8 +13,8 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
-from opacity.errors import LineListError, problem
-from opacity.line_list.exomol.definition_values import Values, checked_word, printable
+from opacity.errors import LineListError, excerpt, problem
+from opacity.line_list.exomol.definition_values import Values, checked_word
 
 # By key of a definition: name in this document, with the section in which alone it means that, where there is one.
 _KEYS = {
@@ -54,7 +54,7 @@ def json_values(path: Path, data: bytes) -> Values:
     try:
         tree = json.loads(data, parse_constant=_refuse_constant)
     except (ValueError, RecursionError) as error:
-        reason = printable(str(error)) or type(error).__name__
+        reason = excerpt(str(error)) or type(error).__name__
         raise LineListError(problem(path, f"not a definition in JSON ({reason})")) from error
     if not isinstance(tree, dict):
         raise LineListError(
@@ -125,7 +125,7 @@ def _take_columns(values: Values, tree: Any) -> None:
                 values.path,
                 "columns of the .states file not understood",
                 expected="ID, E, gtot, J first",
-                found=printable(found),
+                found=excerpt(found),
             )
         )
     where = str(values.path)

@@ -9,8 +9,8 @@ from __future__ import annotations
 import re
 from pathlib import Path
 
-from opacity.errors import LineListError, problem
-from opacity.line_list.exomol.definition_values import Values, checked_word, printable
+from opacity.errors import LineListError, excerpt, problem
+from opacity.line_list.exomol.definition_values import Values, checked_word
 
 _RECORDS = {
     "isotopologue formula": r"iso-? ?formula",
@@ -49,12 +49,12 @@ def text_values(path: Path, data: bytes) -> Values:
         value, mark, comment = (part.strip() for part in line.partition("#"))
         if not mark:
             raise LineListError(
-                problem(where, "not a record of a definition", expected="value # comment", found=f'"{printable(line)}"')
+                problem(where, "not a record of a definition", expected="value # comment", found=f'"{excerpt(line)}"')
             )
         if not started:
             if not value.upper().startswith("EXOMOL"):
                 raise LineListError(
-                    problem(where, "not a definition", expected='"EXOMOL.def # ID"', found=f'"{printable(line)}"')
+                    problem(where, "not a definition", expected='"EXOMOL.def # ID"', found=f'"{excerpt(line)}"')
                 )
             started = True
         elif _COLUMN.match(comment):
@@ -65,7 +65,7 @@ def text_values(path: Path, data: bytes) -> Values:
         elif _BROADENER_FILE.match(comment):
             if broadener is None:
                 raise LineListError(
-                    problem(where, "a broadener's file without its broadener", found=f'"{printable(value)}"')
+                    problem(where, "a broadener's file without its broadener", found=f'"{excerpt(value)}"')
                 )
             values.broadeners.append((broadener, checked_word(value, "name of a broadener's file", where), where))
             broadener = None

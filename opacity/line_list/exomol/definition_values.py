@@ -7,7 +7,7 @@ import re
 from dataclasses import dataclass, field
 from pathlib import Path
 
-from opacity.errors import LineListError, problem
+from opacity.errors import LineListError, excerpt, problem
 
 _WORD = re.compile(r"[\x21-\x7e]([\x20-\x7e]{0,198}[\x21-\x7e])?")
 _NUMBER = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?")
@@ -30,7 +30,7 @@ class Values:
     def state(self, key: str, text: str, where: str) -> None:
         """Enter a statement.  Raises LineListError if there is one for this key already."""
         if key in self.scalars:
-            raise LineListError(problem(where, f"{key} given twice", expected="one", found=f'"{printable(text)}"'))
+            raise LineListError(problem(where, f"{key} given twice", expected="one", found=f'"{excerpt(text)}"'))
         self.scalars[key] = (text, where)
 
     def text(self, key: str) -> str:
@@ -52,7 +52,7 @@ class Values:
         value = to_number((text.split() or [""])[0])
         if not lowest <= value <= highest:
             expected = f"a number from {lowest:g} to {highest:g}"
-            raise LineListError(problem(where, f"{key} is impossible", expected=expected, found=f'"{printable(text)}"'))
+            raise LineListError(problem(where, f"{key} is impossible", expected=expected, found=f'"{excerpt(text)}"'))
         return value
 
     def count(self, key: str, highest: int = _LARGEST_COUNT) -> int | None:
@@ -61,7 +61,7 @@ class Values:
         if value is not None and value != math.floor(value):
             text, where = self.scalars[key]
             raise LineListError(
-                problem(where, f"{key} is no count", expected="a whole number", found=f'"{printable(text)}"')
+                problem(where, f"{key} is no count", expected="a whole number", found=f'"{excerpt(text)}"')
             )
         return None if value is None else int(value)
 
@@ -84,9 +84,7 @@ def checked_word(text: str, key: str, where: str) -> str:
     word = text.strip()
     if not _WORD.fullmatch(word):
         raise LineListError(
-            problem(
-                where, f"{key} is impossible", expected="1 to 200 printable characters", found=f'"{printable(word)}"'
-            )
+            problem(where, f"{key} is impossible", expected="1 to 200 printable characters", found=f'"{excerpt(word)}"')
         )
     return word
 
@@ -94,9 +92,3 @@ def checked_word(text: str, key: str, where: str) -> str:
 def to_number(word: str) -> float:
     """A decimal number, infinite where it is beyond the range of f8; NaN for anything else."""
     return float(word) if _NUMBER.fullmatch(word) else math.nan
-
-
-def printable(text: str) -> str:
-    """A text for an error line: short, one line, no control characters."""
-    shown = re.sub(r"[^\x20-\x7e]", "?", text[:60])
-    return shown + "..." if len(text) > 60 else shown

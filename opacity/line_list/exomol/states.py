@@ -16,11 +16,11 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from opacity.constants import SECOND_RADIATION
-from opacity.errors import InputError, LineListError, problem
+from opacity.errors import InputError, LineListError, excerpt, problem
 from opacity.grids import FloatArray
 from opacity.kernels.state_rows import BAD_COLUMN, GOOD, SHORT_ROW, read_state_rows
+from opacity.kernels.transitions import find_rows
 from opacity.line_list.exomol.definition import Definition
-from opacity.line_list.exomol.definition_values import printable
 from opacity.line_list.text import CHUNK, TextChunk, read_chunks
 
 Index = NDArray[np.int64]
@@ -35,6 +35,7 @@ _COLUMNS = ("id", "energy", "total weight", "J", "uncertainty")
 _NEGATIVE = "energy below 0: used as it stands"
 _AT_A_TIME = 1 << 18
 _COLDEST = 1.0
+_NO_TABLE = np.empty(0, dtype=np.int32)
 
 
 @dataclass(frozen=True)
@@ -52,10 +53,9 @@ class IdIndex:
         if self.sorted_ids is not None and self.order is not None:
             place = np.minimum(np.searchsorted(self.sorted_ids, ids), self.sorted_ids.size - 1)
             return np.where(self.sorted_ids[place] == ids, self.order[place], -1)
-        inside = (ids >= self.first) & (ids < self.first + self.count)
-        offset = np.where(inside, ids - self.first, 0)
-        rows = offset if self.table is None else self.table[offset].astype(np.int64)
-        return np.where(inside, rows, -1)
+        rows = np.empty(ids.size, dtype=np.int64)
+        find_rows(ids, self.first, self.count, _NO_TABLE if self.table is None else self.table, rows)
+        return rows
 
 
 @dataclass(frozen=True)
@@ -161,7 +161,7 @@ def _add_chunk(path: Path, chunk: TextChunk, columns: int, rows: _Rows) -> None:
     fault = _first_fault(numbers, status, chunk.plain)
     if fault is not None:
         row, reason, expected = fault
-        shown = printable(chunk.record(row).decode("latin-1"))
+        shown = excerpt(chunk.record(row).decode("latin-1"))
         raise LineListError(problem(f"{path}:{chunk.line[row]}", reason, expected=expected, found=f'"{shown}"'))
     first, last = int(chunk.line[0]), int(chunk.line[-1])
     rows.lines.append(_Lines(count, first, None if last - first + 1 == count else chunk.line))

@@ -19,7 +19,8 @@ from opacity.constants import REFERENCE_TEMPERATURE
 from opacity.errors import LineListError, problem
 from opacity.grids import FloatArray
 from opacity.kernels import transitions as kernel
-from opacity.kernels.text import read_rows
+from opacity.kernels.text import UNREADABLE
+from opacity.kernels.transition_rows import read_transition_rows
 from opacity.line_list.batches import Batch, in_order, not_empty
 from opacity.line_list.exomol.broadening import KINDS, BroadeningTable, match_rows, served_notes, widths_of
 from opacity.line_list.exomol.states import States
@@ -35,11 +36,12 @@ from opacity.line_list.packed import (
     encode_intensity,
 )
 from opacity.line_list.records import STRONGEST
-from opacity.line_list.text import RawText, TextChunk, read_raw
+from opacity.line_list.text import RawText, read_raw
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue
 
 _FAULTS = {
+    UNREADABLE: ("row cannot be read", "upper id, lower id, A and perhaps the wavenumber"),
     kernel.NO_UPPER: ("upper state is not in the states file", "an id of the states file"),
     kernel.NO_LOWER: ("lower state is not in the states file", "an id of the states file"),
     kernel.NO_WAVENUMBER: ("both states have the same energy: wavenumber 0", "states of different energy"),
@@ -50,8 +52,10 @@ _FAULTS = {
 }
 _ENERGIES = (ENERGY_OFFSET, HIGHEST_ENERGY)
 _LOG_INTENSITIES = (LOG_OFFSET, math.log(STRONGEST))
+_EVERYWHERE = (-math.inf, math.inf)
 _ENDINGS = re.compile(r"\.broad(\.gz|\.bz2)?$", re.IGNORECASE)
-_UNREADABLE = ("row cannot be read", "upper id, lower id, A and perhaps the wavenumber")
+_AT_A_TIME = 1 << 20
+"""Bytes of a chunk: its columns stay in the processor's cache, and its memory is had again for the next one."""
 WAVENUMBER_AGREES = 0.01
 """A wavenumber given beside A may differ this much (cm-1) from the states' before it is noted."""
 
@@ -60,12 +64,12 @@ WAVENUMBER_AGREES = 0.01
 class StateJoin:
     """What all transition files of a data set share.
 
-    `twice_j` (n_states,) 2J; `classes` the widths of every (2J'', J' - J''), by `width_key` of the kernel;
+    `table` (n_states, 3) of the kernel; `classes` the widths of every (2J'', J' - J''), by `width_key` of the kernel;
     `served` by broadener the name of its file and, by `width_key` too, the kind of row that serves.
     """
 
     states: States
-    twice_j: NDArray[np.int32]
+    table: FloatArray
     classes: WidthClasses
     isotopologue: Isotopologue
     served: Mapping[str, tuple[str, NDArray[np.uint8]]]
@@ -85,7 +89,9 @@ def state_join(states: States, broadening: Mapping[str, BroadeningTable], isotop
         gamma, exponent = widths_of(table, match)
         columns[name.lower()] = BroadenerColumns(gamma, exponent, nothing)
     zeros = np.zeros(keys.size, dtype=np.int16)
-    return StateJoin(states, twice_j, WidthClasses(zeros, zeros, columns), isotopologue, served)
+    beside = np.empty((len(states), 3))
+    kernel.state_table(states.energy, states.total_weight, twice_j, beside)
+    return StateJoin(states, beside, WidthClasses(zeros, zeros, columns), isotopologue, served)
 
 
 def transition_batches(
@@ -97,59 +103,55 @@ def transition_batches(
     """
 
     def work(raw: RawText) -> Batch | None:
-        chunk = raw.lines()
-        return _batch(path, chunk, join, leave_out, range) if len(chunk) else None
+        return _batch(path, raw, join, leave_out, range)
 
-    yield from not_empty(in_order(work, read_raw(path), executor), path, "transition")
+    yield from not_empty(in_order(work, read_raw(path, _AT_A_TIME), executor), path, "transition")
 
 
-def _batch(path: Path, chunk: TextChunk, join: StateJoin, leave_out: bool, range: tuple[float, float] | None) -> Batch:
-    n = len(chunk)
-    ids, numbers = np.empty((n, 2), dtype=np.int64), np.empty((n, 2))
-    fields = np.empty(n, dtype=np.uint8)
-    read_rows(chunk.buffer, chunk.starts, chunk.stops, ids, numbers, fields)
-    readable = (fields == 3) | (fields == 4)
-    wavenumber, log_intensity = np.zeros(n), np.zeros(n)
-    key, status = np.zeros(n, dtype=np.int64), np.empty(n, dtype=np.uint8)
-    upper = join.states.rows_of(np.where(readable, ids[:, 0], -1))
-    lower = join.states.rows_of(np.where(readable, ids[:, 1], -1))
-    states = join.states
+def _batch(
+    path: Path, raw: RawText, join: StateJoin, leave_out: bool, range: tuple[float, float] | None
+) -> Batch | None:
+    room = raw.newlines + 1
+    upper, lower = np.empty(room, dtype=np.int64), np.empty(room, dtype=np.int64)
+    einstein_a, given = np.empty(room), np.empty(room)
+    wavenumber, log_intensity, energy = np.empty(room), np.empty(room), np.empty(room)
+    number, key = np.empty(room, dtype=np.uint32), np.empty(room, dtype=np.uint32)
+    status = np.empty(room, dtype=np.uint8)
+    n = read_transition_rows(raw.buffer, raw.first, (upper, lower), (einstein_a, given), number, status)
+    if not n:
+        return None
+    status = status[:n]
     kernel.join_states(
-        upper, lower, np.ascontiguousarray(numbers[:, 0]), states.energy, states.total_weight, join.twice_j,
-        _ENERGIES, _LOG_INTENSITIES, wavenumber, log_intensity, key, status,
+        join.states.rows_of(upper[:n]), join.states.rows_of(lower[:n]), einstein_a, join.table,
+        (*_ENERGIES, *_LOG_INTENSITIES, *(range or _EVERYWHERE)), wavenumber, log_intensity, energy, key, status,
     )  # fmt: skip
-    ledger = _account(path, chunk, readable, status, leave_out)
-    good = readable & (status == kernel.GOOD)
-    if range is not None:
-        inside = (wavenumber >= range[0]) & (wavenumber <= range[1])
-        ledger.leave_out("outside the range asked for", int(np.count_nonzero(good & ~inside)))
-        good &= inside
-    ledger.notes.update(_notes(numbers[:, 1], wavenumber, log_intensity, good))
-    order = np.flatnonzero(good)
-    ledger.notes.update(_served(join, key[order]))
+    ledger = _account(path, raw, status, leave_out)
+    # No copies where every line is a transition kept.  Else copies, as a view would hold all of a longer array.
+    whole = ledger.kept == n >= raw.newlines
+    kept: slice | NDArray[np.intp] = slice(n) if whole else np.flatnonzero(status == kernel.GOOD)
     packed = PackedLines(
-        wavenumber=wavenumber[order],
-        intensity=encode_intensity(log_intensity[order]),
-        lower_energy=encode_energy(states.energy[lower[order]]),
-        width_class=key[order].astype(np.uint32),
-        record=(chunk.line[order] % 2**32).astype(np.uint32),
+        wavenumber=wavenumber[kept],
+        intensity=encode_intensity(log_intensity[kept]),
+        lower_energy=encode_energy(energy[kept]),
+        width_class=key[kept],
+        record=number[kept],
         classes=join.classes,
     )
+    ledger.notes.update(_notes(given[kept], packed))
+    ledger.notes.update(_served(join, packed.width_class))
     basis = StrengthBasis(REFERENCE_TEMPERATURE, False, 1.0)
-    return Batch(packed, (join.isotopologue,), (basis,), ledger, chunk.read)
+    return Batch(packed, (join.isotopologue,), (basis,), ledger, raw.read)
 
 
-def _notes(
-    given: FloatArray, wavenumber: FloatArray, log_intensity: FloatArray, good: NDArray[np.bool_]
-) -> dict[str, int]:
+def _notes(given: FloatArray, packed: PackedLines) -> dict[str, int]:
     with np.errstate(invalid="ignore"):
-        differ = int(np.count_nonzero(good & (np.abs(given - wavenumber) > WAVENUMBER_AGREES)))
+        differ = int(np.count_nonzero(np.abs(given - packed.wavenumber) > WAVENUMBER_AGREES))
     text = f"wavenumber given differs by over {WAVENUMBER_AGREES:g} cm-1 from the states' energies, which are used"
-    nothing = int(np.count_nonzero(good & np.isneginf(log_intensity)))
+    nothing = packed.intensity.size - int(np.count_nonzero(packed.intensity))
     return {note: n for note, n in ((text, differ), ("strength 0: contributes nothing", nothing)) if n}
 
 
-def _served(join: StateJoin, key: NDArray[np.int64]) -> Counter[str]:
+def _served(join: StateJoin, key: NDArray[np.uint32]) -> Counter[str]:
     """How many of the lines have their widths from which file."""
     notes: Counter[str] = Counter()
     lines = np.bincount(key, minlength=len(join.classes))
@@ -158,23 +160,18 @@ def _served(join: StateJoin, key: NDArray[np.int64]) -> Counter[str]:
     return notes
 
 
-def _account(
-    path: Path, chunk: TextChunk, readable: NDArray[np.bool_], status: NDArray[np.uint8], leave_out: bool
-) -> Ledger:
+def _account(path: Path, raw: RawText, status: NDArray[np.uint8], leave_out: bool) -> Ledger:
     """The account of a chunk; LineListError for the first bad row unless they are to be left out."""
-    ledger = Ledger(read=len(chunk), kept=int(np.count_nonzero(readable & (status == kernel.GOOD))))
+    counts = np.bincount(status, minlength=kernel.OUTSIDE + 1)
+    ledger = Ledger(read=status.size, kept=int(counts[kernel.GOOD]))
     found: list[tuple[int, tuple[str, str]]] = []
-    unreadable = np.flatnonzero(~readable)
-    if unreadable.size:
-        found.append((int(unreadable[0]), _UNREADABLE))
-        ledger.left_out[_UNREADABLE[0]] += int(unreadable.size)
     for code, fault in _FAULTS.items():
-        rows = np.flatnonzero(readable & (status == code))
-        if rows.size:
-            found.append((int(rows[0]), fault))
-            ledger.left_out[fault[0]] += int(rows.size)
+        if counts[code]:
+            found.append((int(np.argmax(status == code)), fault))
+            ledger.left_out[fault[0]] += int(counts[code])
     if found and not leave_out:
         row, (what, expected) = min(found)
+        chunk = raw.lines()
         text = "".join(chr(byte) if 32 <= byte < 127 else "?" for byte in chunk.record(row)[:60])
         raise LineListError(
             problem(
@@ -185,6 +182,8 @@ def _account(
                 remedy='mend the list, or set bad_records = "leave-out"',
             )
         )
+    if counts[kernel.OUTSIDE]:
+        ledger.left_out["outside the range asked for"] += int(counts[kernel.OUTSIDE])
     return ledger
 
 

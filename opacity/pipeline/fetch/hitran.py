@@ -13,14 +13,14 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
-from opacity.errors import LineListError, MoleculeError, OpacityError, problem
+from opacity.errors import LineListError, MoleculeError, OpacityError, printable, problem
 from opacity.molecule.hapi_tables import hapi
 from opacity.molecule.isotopologue import isotopologue
 from opacity.pipeline.fetch.checksum import record_sha256
 from opacity.pipeline.fetch.partial import disk_work, sync_folder
 from opacity.provenance import file_sha256
 from opacity.recipe.downloads import HitranDownload
-from opacity.recipe.faults import nearest, printable
+from opacity.recipe.faults import nearest
 from opacity.recipe.line_lists import full_name
 
 SILENCE = 300.0

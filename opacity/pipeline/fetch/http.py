@@ -16,9 +16,9 @@ from collections.abc import Iterator, Mapping
 from typing import Any
 from urllib.parse import urlsplit
 
+from opacity.errors import printable
 from opacity.provenance import VERSION
 from opacity.recipe.downloads import url_fault
-from opacity.recipe.faults import printable
 
 PROBE_SECONDS = 15.0
 """How long a server may take to say a file's size (s)."""
