@@ -10,6 +10,9 @@ find, but a comparison of the two editions or with levels does, are listed in `_
 from __future__ import annotations
 
 import bz2
+import gzip
+import re
+import zlib
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import lru_cache
@@ -31,6 +34,11 @@ TIPS_LOWEST = 20.0
 
 STEEPEST = 60.0
 """d ln Q / d ln T is the mean energy over kT plus 3/2: no molecule with a line list comes near this."""
+
+CLOSEST = 1e-9
+"""Rows nearer to each other than this in ln T are no table."""
+
+_NOT_TEXT = re.compile(r"[^\x20-\x7e]")
 
 STEP = 1.5e-3
 """A relative jump from its neighbours above which a tabulated Q counts as a step."""
@@ -191,18 +199,13 @@ def editions_differ(isotopologue: Isotopologue, temperature: float) -> float:
 
 
 def from_file(path: Path) -> PartitionFunction:
-    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout), plain or .bz2.
+    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout).
 
-    Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.  Raises MoleculeError naming the line that
+    The file is plain, .gz or .bz2.  Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.  Raises MoleculeError naming the line that
     can't be right, or the file where it does not hold 296 K, to which the strengths of lists refer.
     """
-    try:
-        data = path.read_bytes()
-        lines = (bz2.decompress(data) if path.suffix.lower() == ".bz2" else data).decode("ascii").splitlines()
-    except (OSError, ValueError) as error:
-        raise MoleculeError(problem(path, f"partition function cannot be read ({error})")) from error
     rows: list[tuple[float, float]] = []
-    for number, line in enumerate(lines, start=1):
+    for number, line in enumerate(_text(path).split("\n"), start=1):
         if not line.strip():
             continue
         rows.append(_row(path, number, line, rows[-1][0] if rows else 0.0))
@@ -215,18 +218,7 @@ def from_file(path: Path) -> PartitionFunction:
         what = "the partition function does not hold 296 K, to which the strengths refer"
         found = f"{lowest:g} to {highest:g} K"
         raise MoleculeError(problem(path, what, expected="rows from 296 K or below to 296 K or above", found=found))
-    slope = np.abs(np.diff(np.log(value)) / np.diff(np.log(temperature)))
-    steep = np.flatnonzero(slope > STEEPEST)
-    if steep.size:
-        ends = f"{temperature[steep[0]]:g} and {temperature[steep[0] + 1]:g} K"
-        raise MoleculeError(
-            problem(
-                path,
-                f"no partition function: it jumps between {ends}",
-                expected=f"no more than T^{STEEPEST:g}",
-                found=f"{value[steep[0]]:g} to {value[steep[0] + 1]:g}",
-            )
-        )
+    _refuse_jumps(path, temperature, value)
     rough = temperature[2:-2][np.abs(neighbour_residuals(temperature, value)) > STEP]
     steps = tuple(rough[rough > ROUGH_BELOW].tolist())
     spline = CubicSpline(np.log(temperature), np.log(value))
@@ -243,6 +235,49 @@ def from_states(temperature: Sequence[float], value: Sequence[float], highest_en
     return PartitionFunction("sum over states", float(t[0]), highest, _spline=CubicSpline(np.log(t), np.log(q)))
 
 
+def _refuse_jumps(path: Path, temperature: FloatArray, value: FloatArray) -> None:
+    """Raise MoleculeError where Q changes faster than any can, or rows are too near to each other to tell."""
+    apart = np.diff(np.log(temperature))
+    slope = np.abs(np.diff(np.log(value))) / np.maximum(apart, CLOSEST)
+    steep = np.flatnonzero((slope > STEEPEST) | (apart < CLOSEST))
+    if steep.size:
+        ends = f"{temperature[steep[0]]:.12g} and {temperature[steep[0] + 1]:.12g} K"
+        raise MoleculeError(
+            problem(
+                path,
+                f"no partition function: it jumps between {ends}",
+                expected=f"no more than T^{STEEPEST:g}",
+                found=f"{value[steep[0]]:g} to {value[steep[0] + 1]:g}",
+            )
+        )
+
+
+def _text(path: Path) -> str:
+    """The text of a file, decompressed by its ending."""
+    try:
+        data = path.read_bytes()
+        if path.suffix.lower() == ".gz":
+            data = gzip.decompress(data)
+        elif path.suffix.lower() == ".bz2":
+            data = _bunzip2(data)
+        return data.decode("ascii")
+    except (OSError, ValueError, EOFError, zlib.error) as error:
+        reason = getattr(error, "strerror", None) or error
+        raise MoleculeError(problem(path, f"partition function cannot be read ({reason})")) from error
+
+
+def _bunzip2(data: bytes) -> bytes:
+    """All streams; the standard library's `bz2.decompress` passes over damage behind the first."""
+    parts = []
+    while data:
+        stream = bz2.BZ2Decompressor()
+        parts.append(stream.decompress(data))
+        if not stream.eof:
+            raise EOFError("it ends before its end mark")
+        data = stream.unused_data
+    return b"".join(parts)
+
+
 def _row(path: Path, number: int, line: str, previous: float) -> tuple[float, float]:
     fields = line.split()
     try:
@@ -256,7 +291,7 @@ def _row(path: Path, number: int, line: str, previous: float) -> tuple[float, fl
                 f"{path}:{number}",
                 "not a row of a partition function",
                 expected=f"T above {previous:g} K and Q above 0",
-                found=f'"{line.strip()[:40]}"',
+                found=f'"{_NOT_TEXT.sub("?", line.strip()[:40])}"',
             )
         )
     return temperature, value
