@@ -44,9 +44,7 @@ def j_columns(molecule: int) -> tuple[int, int] | None:
     return (112, 115) if molecule in ASYMMETRIC | SYMMETRIC else None
 
 
-def read_j(
-    path: Path, text: TextChunk, whole: NDArray[np.bool_], molecule: int
-) -> tuple[FloatArray, FloatArray]:
+def read_j(path: Path, text: TextChunk, whole: NDArray[np.bool_], molecule: int) -> tuple[FloatArray, FloatArray]:
     """J'' and J' of records (n,), NaN where they cannot be read; J' is J'' where it cannot be read.
 
     J' is told by the branch for linear molecules and stands in the record of the others.

@@ -201,8 +201,9 @@ def editions_differ(isotopologue: Isotopologue, temperature: float) -> float:
 def from_file(path: Path) -> PartitionFunction:
     """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout).
 
-    The file is plain, .gz or .bz2.  Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.  Raises MoleculeError naming the line that
-    can't be right, or the file where it does not hold 296 K, to which the strengths of lists refer.
+    The file is plain, .gz or .bz2.  Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.
+    Raises MoleculeError naming the line that can't be right, or the file where it does not hold 296 K, to which the
+    strengths of lists refer.
     """
     rows: list[tuple[float, float]] = []
     for number, line in enumerate(_text(path).split("\n"), start=1):

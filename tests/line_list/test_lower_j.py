@@ -55,7 +55,9 @@ def test_the_branch_tells_upper_j() -> None:
 
 
 def test_a_molecule_of_unknown_quanta_is_refused(tmp_path: Path) -> None:
-    with pytest.raises(LineListError, match=rf"^{re.escape(str(SAMPLE))}: J'' is not read from records of molecule 8, "):
+    with pytest.raises(
+        LineListError, match=rf"^{re.escape(str(SAMPLE))}: J'' is not read from records of molecule 8, "
+    ):
         lower_j_of(SAMPLE, 8)
 
 
