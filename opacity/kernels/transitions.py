@@ -64,7 +64,7 @@ def join_states(
             continue
         wavenumber[i] = nu
         log_intensity[i] = -np.inf
-        if a > 0.0:
+        if a > 0.0 and weight[u] > 0.0:
             strength = math.log(weight[u]) + math.log(a) - 2.0 * math.log(nu) - _LOG_8_PI_C
             if not (log_intensities[0] <= strength <= log_intensities[1]):
                 status[i] = BAD_STRENGTH

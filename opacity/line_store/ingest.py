@@ -20,7 +20,7 @@ from opacity.line_store.lock import locked
 from opacity.line_store.segment import write_segment
 from opacity.molecule.isotopologue import Isotopologue
 from opacity.provenance import file_sha256
-from opacity.tables.atomic import remove_leftovers, write_atomically
+from opacity.tables.atomic import write_atomically
 
 BYTES_A_LINE = 120
 """Packed lines being joined, sorted and written: columns, their sorted copy, the file's image, and room to spare."""
@@ -95,7 +95,6 @@ def ingest(
     parts = folder / PARTS
     _make_folder(folder)
     with locked(folder) as lock:
-        remove_leftovers(folder)
         _make_folder(parts)
         manifests = [_ingest_file(parts, number, one, key, at_once, progress) for number, one in enumerate(inputs)]
         assemble(folder, manifests, key, at_once, facts(), lock.check)

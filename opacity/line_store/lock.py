@@ -15,7 +15,7 @@ from typing import Any
 
 from opacity.errors import ResourceError, problem
 from opacity.line_store.layout import LOCK
-from opacity.tables.atomic import process_runs
+from opacity.tables.atomic import process_namespace, process_runs, remove_leftovers, temporary_path
 
 REFRESH = 30.0
 """Seconds between two touches of the lock."""
@@ -72,13 +72,13 @@ def locked(folder: Path) -> Iterator[Lock]:
     try:
         if not _create(path, text):
             _take_over(path, text)
-        _remove_leftovers(path)
     except OSError as error:
         raise ResourceError(problem(path, f"cannot be written ({error.strerror or error})")) from error
     lock, stop = Lock(path, text), threading.Event()
     thread = threading.Thread(target=lock.keep, args=(stop,), daemon=True)
     _held.add(text)
     thread.start()
+    remove_leftovers(folder)
     try:
         yield lock
     finally:
@@ -89,15 +89,12 @@ def locked(folder: Path) -> Iterator[Lock]:
 
 
 def _this_process() -> dict[str, Any]:
-    return {"host": platform.node(), "namespace": _namespace(), "pid": os.getpid(), "started": _started(os.getpid())}
-
-
-def _namespace() -> str:
-    """Within what the number of a process means something: containers of one host each have their own."""
-    try:
-        return os.readlink("/proc/self/ns/pid")
-    except OSError:
-        return ""
+    return {
+        "host": platform.node(),
+        "namespace": process_namespace(),
+        "pid": os.getpid(),
+        "started": _started(os.getpid()),
+    }
 
 
 def _started(process: int) -> str:
@@ -109,13 +106,9 @@ def _started(process: int) -> str:
         return ""
 
 
-def _beside(path: Path) -> Path:
-    return path.with_name(f"{path.name}-{os.getpid()}-{secrets.token_hex(8)}")
-
-
 def _create(path: Path, text: str) -> bool:
     """Make the lock with its text in it at once, whoever looks; whether it was not there."""
-    own = _beside(path)
+    own = temporary_path(path.parent)
     try:
         own.write_text(text, encoding="utf-8")
         try:
@@ -140,7 +133,7 @@ def _take_over(path: Path, own: str) -> None:
     if text is not None and not _is_left_behind(path, text):
         raise _in_use(path, text)
     # Renamed first: of several that take over, one gets what it looked at, and what another made meanwhile goes back.
-    aside = _beside(path)
+    aside = temporary_path(path.parent)
     with contextlib.suppress(FileNotFoundError):
         os.rename(path, aside)
         if _text(aside) != text:
@@ -180,7 +173,7 @@ def _in_use(path: Path, text: str) -> ResourceError:
 
 def _is_left_behind(path: Path, text: str) -> bool:
     try:
-        if _is_silent(path, path):
+        if _is_silent(path):
             return True
     except FileNotFoundError:
         return True
@@ -195,22 +188,14 @@ def _is_left_behind(path: Path, text: str) -> bool:
     return bool(known) and _started(holder["pid"]) not in ("", known)
 
 
-def _is_silent(path: Path, lock: Path) -> bool:
-    """Whether a file was last touched too long ago, or far in the future as after a clock was set right.
+def _is_silent(path: Path) -> bool:
+    """Whether a lock was last touched too long ago, or far in the future as after a clock was set right.
 
     Asked by the clock of the file system, since that of another host may be wrong.
     """
-    probe = _beside(lock)
+    probe = temporary_path(path.parent)
     try:
         probe.touch(exist_ok=False)
         return abs(probe.stat().st_mtime - path.stat().st_mtime) > LONGEST_SILENCE
     finally:
         probe.unlink(missing_ok=True)
-
-
-def _remove_leftovers(path: Path) -> None:
-    """Remove what processes that were killed while they asked for the lock left beside it."""
-    for other in path.parent.glob(f"{path.name}-*"):
-        with contextlib.suppress(OSError):
-            if _is_silent(other, path):
-                other.unlink()

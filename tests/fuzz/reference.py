@@ -250,8 +250,8 @@ def _joined(place: int, upper: State | None, lower: State | None, a: float) -> R
     if nu <= 0.0 or not 0.0 <= a < math.inf or not -1.0 <= lower[0] < 2**32 * 2.5e-5 - 2.0:
         return Record(place, "impossible", {})
     log = -math.inf
-    if a > 0.0:
-        log = (math.log(upper[1]) if upper[1] > 0.0 else -math.inf) + math.log(a) - 2.0 * math.log(nu)
+    if a > 0.0 and upper[1] > 0.0:
+        log = math.log(upper[1]) + math.log(a) - 2.0 * math.log(nu)
         log -= math.log(8.0 * math.pi * 2.99792458e10)
         if not -400.0 <= log <= math.log(1e-6):
             return Record(place, "strength", {})

@@ -21,7 +21,7 @@ from opacity.line_store.ingest import InputFile, ingest
 from opacity.line_store.layout import INDEX, LOCK
 from opacity.line_store.lock import LONGEST_SILENCE, locked
 from opacity.line_store.store import LineStore
-from opacity.tables.atomic import _host
+from opacity.tables.atomic import temporary_path
 
 SAMPLE = Path(__file__).parents[2] / "data-samples" / "carbon-monoxide.par"
 
@@ -99,15 +99,6 @@ def test_a_lock_with_any_text_is_respected_for_its_time(tmp_path: Path, text: st
         pass
 
 
-def test_what_a_killed_process_left_beside_the_lock_is_removed(tmp_path: Path) -> None:
-    old, young = tmp_path / f"{LOCK}-12-ab", tmp_path / f"{LOCK}-13-ab"
-    for path in (old, young):
-        path.touch()
-    os.utime(old, (1e9, 1e9))
-    with locked(tmp_path):
-        assert sorted(tmp_path.iterdir()) == [tmp_path / LOCK, young]
-
-
 def test_a_holder_that_lost_its_lock_makes_no_store(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """Silent for long, as after a suspension, it may find another process at work when it wakes."""
     folder = tmp_path / "store"
@@ -126,12 +117,14 @@ def test_a_holder_that_lost_its_lock_makes_no_store(tmp_path: Path, monkeypatch:
     assert [path for path in folder.iterdir() if path.name.startswith(".opacity-")] == []
 
 
-def test_half_written_segments_of_a_killed_process_are_removed(tmp_path: Path) -> None:
+def test_half_written_files_of_a_killed_process_are_removed(tmp_path: Path) -> None:
     folder = tmp_path / "store"
     folder.mkdir()
-    half = folder / f".opacity-{_host()}-{2**22 + 1}-{'0' * 16}.part"
-    half.write_bytes(b"half a segment")
+    own = temporary_path(folder).name
+    half, others = folder / own.replace(f"-{os.getpid()}-", f"-{2**22 + 1}-"), folder / own
+    for path in (half, others):
+        path.write_bytes(b"half a segment")
     ingest(folder, [sample()], "key", 10**9, quiet)
-    assert sorted(path.name for path in folder.iterdir()) == ["000000.lines.h5", INDEX]
+    assert sorted(path.name for path in folder.iterdir()) == [others.name, "000000.lines.h5", INDEX]
     with LineStore(folder) as store:
         assert len(store.window(0.0, 1e9)) == 202
