@@ -15,7 +15,7 @@ from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import StrengthBasis
 from opacity.line_list.packed import PackedLines, join
 from opacity.line_store.assemble import assemble, weight
-from opacity.line_store.layout import PARTS, SEGMENT_LINES, Segment, sealed, unsealed
+from opacity.line_store.layout import FORMAT_VERSION, PARTS, SEGMENT_LINES, Segment, sealed, unsealed
 from opacity.line_store.lock import locked
 from opacity.line_store.segment import write_segment
 from opacity.molecule.isotopologue import Isotopologue
@@ -111,7 +111,9 @@ def _make_folder(path: Path) -> None:
 def _kept(manifest_path: Path, one: InputFile, key: str) -> dict[str, Any] | None:
     """The manifest of an interrupted ingest, if it is of the same input and all its parts are there."""
     kept = _read_json(manifest_path)
-    if kept is None or kept.get("key") != key or not same_content(one, kept.get("identity", {})):
+    if kept is None or (kept.get("format_version"), kept.get("key")) != (FORMAT_VERSION, key):
+        return None
+    if not same_content(one, kept.get("identity", {})):
         return None
     for segment in kept["segments"]:
         try:
@@ -160,6 +162,7 @@ def _ingest_file(
     if not ledger.adds_up():
         raise LineListError(problem(one.path, "the account of its records does not add up", found=ledger.as_dict()))
     manifest = {
+        "format_version": FORMAT_VERSION,
         "key": key,
         "identity": before,
         "ledger": ledger.as_dict(),

@@ -1,8 +1,8 @@
 """Coverage-guided fuzzing of one format's readers, by hand: `python tests/fuzz/run.py FORMAT SECONDS`.
 
 Needs the package atheris.  The JIT is off, so that the branches of the kernels are seen too, and an index beyond an
-array's end is an error.  Starts from `corpus/FORMAT`; what it learns and what it finds lies in the folder named at its
-end.  `--minimise` puts the inputs that together cover what all learnt ones do into `corpus/FORMAT`.
+array's end is an error.  Starts from `corpus/FORMAT`; what it learns and what it finds lies in the folder that it names
+first, from where `minimise.py` brings into the corpus what is new.
 """
 
 from __future__ import annotations
@@ -92,9 +92,9 @@ def main() -> None:
     arguments.add_argument("format", choices=sorted(targets.TARGETS))
     arguments.add_argument("seconds", type=int)
     arguments.add_argument("--folder", type=Path, help="where to go on from an earlier run")
-    arguments.add_argument("--minimise", action="store_true")
     given = arguments.parse_args()
     warnings.simplefilter("error")
+    warnings.filterwarnings("ignore", category=RuntimeWarning, module=r"opacity\.kernels")  # silent when compiled
     folder = given.folder or Path(tempfile.mkdtemp(prefix=f"fuzz-{given.format}-"))
     found, learnt = folder / "found", folder / "learnt"
     for one in (found, learnt):
@@ -103,8 +103,6 @@ def main() -> None:
     seeds.mkdir(parents=True, exist_ok=True)
     options = [sys.argv[0], f"-max_len={LONGEST}", f"-timeout={SLOWEST}", f"-artifact_prefix={found}/"]
     print(f"learnt and found inputs: {folder}", flush=True)
-    if given.minimise:
-        raise SystemExit("see minimise.py")
     options += [f"-max_total_time={given.seconds}", "-print_final_stats=1", str(learnt), str(seeds)]
     atheris.Setup(options, Harness(given.format, found), custom_mutator=mutate)
     atheris.Fuzz()

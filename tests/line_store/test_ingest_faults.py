@@ -85,6 +85,23 @@ def test_parts_left_half_removed_are_made_again(tmp_path: Path, monkeypatch: pyt
         assert len(store.window(0.0, 1e9)) == 202
 
 
+def test_parts_of_another_format_are_made_again(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    folder, first = tmp_path / "store", written(tmp_path / "a.par", RECORDS)
+    bad = written(tmp_path / "b.par", [*RECORDS[:50], b" 51 short\n"])
+    manifest, read = folder / PARTS / "00000.json", []
+
+    def batches() -> Iterator[Batch]:
+        read.append(1)
+        yield from first.batches()
+
+    for version, times in ((1, 1), (1, 1), (2, 2)):
+        monkeypatch.setattr(ingest_module, "FORMAT_VERSION", version)
+        with pytest.raises(LineListError, match=r"b\.par"):
+            ingest(folder, [InputFile(first.path, batches), bad], "key", 10**9, quiet)
+        assert len(read) == times
+        assert json.loads(manifest.read_bytes())["format_version"] == version
+
+
 def test_parts_that_were_overwritten_are_not_taken_for_those_of_before(tmp_path: Path) -> None:
     folder, first = tmp_path / "store", written(tmp_path / "a.par", RECORDS)
     bad = [*RECORDS[:50], b" 51 short\n"]
