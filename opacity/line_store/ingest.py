@@ -97,6 +97,8 @@ def ingest(
     with locked(folder) as lock:
         _make_folder(parts)
         manifests = [_ingest_file(parts, number, one, key, at_once, progress) for number, one in enumerate(inputs)]
+        for one, manifest in zip(inputs, manifests, strict=True):  # files beside several may have changed between them
+            _refuse_changed(one, manifest["identity"])
         assemble(folder, manifests, key, at_once, facts(), lock.check)
         shutil.rmtree(parts, ignore_errors=True)
 
@@ -157,8 +159,7 @@ def _ingest_file(
         progress(batch.ledger.read, max(batch.read - position, 0))
         position = max(batch.read, position)
     segments += _write_run(parts, f"{number:05d}-{len(segments):06d}", waiting)
-    if not same_content(one, before):
-        raise LineListError(problem(one.path, "changed while it was read", remedy="build again when it is at rest"))
+    _refuse_changed(one, before)
     if not ledger.adds_up():
         raise LineListError(problem(one.path, "the account of its records does not add up", found=ledger.as_dict()))
     manifest = {
@@ -173,6 +174,11 @@ def _ingest_file(
     }
     write_atomically(manifest_path, sealed(manifest))
     return manifest
+
+
+def _refuse_changed(one: InputFile, before: dict[str, Any]) -> None:
+    if not same_content(one, before):
+        raise LineListError(problem(one.path, "changed while it was read", remedy="build again when it is at rest"))
 
 
 def _write_run(parts: Path, name: str, waiting: list[PackedLines]) -> list[Segment]:

@@ -49,6 +49,26 @@ def test_an_input_that_changes_while_it_is_read_is_refused(tmp_path: Path) -> No
     assert read_index(tmp_path / "store") is None
 
 
+def test_a_file_beside_several_inputs_that_changes_between_them_is_refused(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """States are read once for all transition files, whose identities are taken one after the other."""
+    beside = tmp_path / "a.states"
+    beside.write_bytes(b"as read for both")
+    parts = [written(tmp_path / name, rows) for name, rows in (("a.par", RECORDS[:9]), ("b.par", RECORDS[9:]))]
+    inputs = [InputFile(one.path, one.batches, (beside,)) for one in parts]
+
+    def changed_before_the_second(one: InputFile) -> object:
+        if one is inputs[1]:
+            beside.write_bytes(b"another content")
+        return identity(one)
+
+    monkeypatch.setattr(ingest_module, "identity", changed_before_the_second)
+    with pytest.raises(LineListError, match=r"^[^\n]*a\.par: changed while it was read[^\n]*$"):
+        ingest(tmp_path / "store", inputs, "key", 10**9, quiet)
+    assert read_index(tmp_path / "store") is None
+
+
 def test_an_ingest_anew_leaves_no_store_until_it_is_done(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     folder = tmp_path / "store"
     ingest(folder, [written(tmp_path / "a.par", RECORDS)], "key", 10**9, quiet)
