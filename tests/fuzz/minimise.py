@@ -1,6 +1,7 @@
 """Bring what `run.py` learnt into the corpus: `python tests/fuzz/minimise.py FORMAT FOLDER`, the folder that it named.
 
-Of all inputs, shortest first, those stay that take a step from line to line of the package that none before took.
+Of all inputs, shortest first, those stay that take a step from line to line of the package that none before took, or
+took as often: once, a few times, many times.
 """
 
 from __future__ import annotations
@@ -10,9 +11,11 @@ import os
 os.environ["NUMBA_DISABLE_JIT"] = "1"
 
 import argparse
+import bisect
 import hashlib
 import sys
 import warnings
+from collections import Counter
 from pathlib import Path
 from types import FrameType
 from typing import Any
@@ -26,9 +29,13 @@ PACKAGE = str(Path(opacity.__file__).parent)
 CORPUS = Path(__file__).parent / "corpus"
 
 
-def steps_of(name: str, data: bytes) -> set[tuple[str, int, int]]:
-    """Pairs of lines that follow each other in the package while a target runs."""
-    found: set[tuple[str, int, int]] = set()
+Step = tuple[str, int, int, int]
+OFTEN = (1, 2, 8)
+
+
+def steps_of(name: str, data: bytes) -> set[Step]:
+    """Pairs of lines that follow each other in the package while a target runs, and how often."""
+    found: Counter[tuple[str, int, int]] = Counter()
 
     def trace(frame: FrameType, event: str, argument: Any) -> Any:
         file, last = frame.f_code.co_filename, 0
@@ -37,7 +44,7 @@ def steps_of(name: str, data: bytes) -> set[tuple[str, int, int]]:
 
         def step(frame: FrameType, event: str, argument: Any) -> Any:
             nonlocal last
-            found.add((file, last, frame.f_lineno))
+            found[file, last, frame.f_lineno] += 1
             last = frame.f_lineno
             return step
 
@@ -48,7 +55,7 @@ def steps_of(name: str, data: bytes) -> set[tuple[str, int, int]]:
         targets.TARGETS[name](data)
     finally:
         sys.settrace(None)
-    return found
+    return {(*step, bisect.bisect(OFTEN, count)) for step, count in found.items()}
 
 
 def main() -> None:
@@ -60,7 +67,7 @@ def main() -> None:
     corpus = CORPUS / given.format
     learnt = [path for path in given.folder.rglob("*") if path.is_file() and path.suffix != ".txt"]
     inputs = {path.read_bytes() for path in (*corpus.iterdir(), *learnt)}
-    taken: set[tuple[str, int, int]] = set()
+    taken: set[Step] = set()
     kept: set[bytes] = set()
     for data in sorted(inputs, key=lambda one: (len(one), one)):
         fresh = steps_of(given.format, data) - taken
