@@ -92,7 +92,10 @@ def problem(
     found: object = None,
     remedy: str | None = None,
 ) -> str:
-    """Put one error line together: ``where: what; expected ..., found ...; remedy``."""
+    """Put one error line together: ``where: what; expected ..., found ...; remedy``.
+
+    Characters that do not print, which names of files may hold, are written as escapes.
+    """
     line = f"{where}: {what}" if str(where) else what
     parts = []
     if expected is not None:
@@ -103,4 +106,6 @@ def problem(
         line += "; " + ", ".join(parts)
     if remedy:
         line += f"; {remedy}"
-    return line
+    if line.isprintable():
+        return line
+    return "".join(one if one.isprintable() else one.encode("unicode_escape").decode("ascii") for one in line)

@@ -44,7 +44,7 @@ def _read_row(text: Bytes, i: int, stop: int, ids: Index, numbers: Array, row: i
             for k in range(start, i):
                 good = good and 48 <= text[k] <= 57
                 value = value * 10 + (int(text[k]) - 48)
-            ids[row] = value
+            ids[row] = value if good else -1
         else:
             number, what = read_number(text, start, i)
             numbers[row, column - 1] = number

@@ -98,7 +98,7 @@ def join_states(
         if status[i] != GOOD:
             continue
         strength = -np.inf
-        if a > 0.0:
+        if a > 0.0 and log_intensity[i] > -np.inf:
             strength = log_intensity[i] + math.log(a) - 2.0 * math.log(nu) - _LOG_8_PI_C
             if not (limits[2] <= strength <= limits[3]):
                 status[i] = BAD_STRENGTH

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Mapping
+from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
@@ -43,7 +44,7 @@ def j_columns(molecule: int) -> tuple[int, int] | None:
     return (112, 115) if molecule in ASYMMETRIC | SYMMETRIC else None
 
 
-def read_j(text: TextChunk, whole: NDArray[np.bool_], molecule: int) -> tuple[FloatArray, FloatArray]:
+def read_j(path: Path, text: TextChunk, whole: NDArray[np.bool_], molecule: int) -> tuple[FloatArray, FloatArray]:
     """J'' and J' of records (n,), NaN where they cannot be read; J' is J'' where it cannot be read.
 
     J' is told by the branch for linear molecules and stands in the record of the others.
@@ -54,8 +55,8 @@ def read_j(text: TextChunk, whole: NDArray[np.bool_], molecule: int) -> tuple[Fl
     if span is None:
         raise LineListError(
             problem(
-                f"molecule {molecule}",
-                "J'' is not read from its records, so that widths by J'' cannot serve them",
+                path,
+                f"J'' is not read from records of molecule {molecule}, so that widths by J'' cannot serve them",
                 remedy="use a list with columns for the broadener, or a default width",
             )
         )
@@ -84,6 +85,7 @@ def _read_column(text: TextChunk, whole: NDArray[np.bool_], span: tuple[int, int
 
 
 def fill_widths(
+    path: Path,
     numbers: dict[str, FloatArray],
     tables: Mapping[str, BroadeningTable],
     text: TextChunk,
@@ -98,7 +100,7 @@ def fill_widths(
     if not rows.size:
         return (), Counter()
     notes: Counter[str] = Counter()
-    lower, upper = read_j(text, whole, int(numbers["molecule"][rows[0]]))
+    lower, upper = read_j(path, text, whole, int(numbers["molecule"][rows[0]]))
     known = good & np.isfinite(lower)
     for name, table in tables.items():
         key = name.lower()

@@ -102,7 +102,7 @@ def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool, others:
         raise LineListError(_first_problem(columns, min(found), int((~good).sum())))
     ledger.kept = int(good.sum())
     if options.widths:
-        added, served = fill_widths(columns.numbers, options.widths, columns.text, columns.whole, good)
+        added, served = fill_widths(columns.path, columns.numbers, options.widths, columns.text, columns.whole, good)
         columns.broadeners = tuple(dict.fromkeys((*columns.broadeners, *added)))
         ledger.notes.update(served)
     ledger.notes.update(_notes(columns, good))

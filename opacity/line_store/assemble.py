@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import replace
 from pathlib import Path
 from typing import Any
@@ -34,10 +34,16 @@ def weight(packed: PackedLines) -> int:
 
 
 def assemble(
-    folder: Path, manifests: list[dict[str, Any]], key: str, weight_at_once: int, facts: dict[str, Any]
+    folder: Path,
+    manifests: list[dict[str, Any]],
+    key: str,
+    weight_at_once: int,
+    facts: dict[str, Any],
+    still_ours: Callable[[], None],
 ) -> None:
     """Merge all parts into the store's segments and write its index, which makes it a store.
 
+    `still_ours` raises where another process has taken the folder over.
     Raises LineListError where every record was left out as bad, or where files of the list hold the same records.
     """
     known, basis, numbers = _isotopologues(manifests)
@@ -49,10 +55,12 @@ def assemble(
     if not ledger.kept and ledger.left_out and not set(ledger.left_out).intersection(ASKED_FOR):
         reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(ledger.left_out.items()))
         raise LineListError(problem(names[0], "every record was left out", found=reasons, remedy="mend the list"))
+    still_ours()
     _remove_store(folder)
     spans: Spans = {}
     segments, repeated = _merge(folder, parts, numbers, weight_at_once, spans)
     if repeated.files is not None:
+        still_ours()
         _remove_store(folder)
         raise LineListError(_said_twice(names, repeated))
     if repeated.within:
@@ -75,7 +83,7 @@ def assemble(
         "broadeners": sorted({name for manifest in manifests for name in manifest["broadeners"]}),
         "segments": [segment.as_dict() for segment in segments],
     }
-    write_atomically(folder / INDEX, sealed(index))
+    write_atomically(folder / INDEX, sealed(index), check=lambda _: still_ours())
 
 
 def _said_twice(names: list[str], repeated: Identical) -> str:

@@ -16,7 +16,7 @@ from opacity.line_list.model import StrengthBasis
 from opacity.line_list.packed import PackedLines, join
 from opacity.line_store.aside import aside
 from opacity.line_store.assemble import assemble, weight
-from opacity.line_store.layout import PARTS, SEGMENT_LINES, Segment, sealed, unsealed
+from opacity.line_store.layout import FORMAT_VERSION, PARTS, SEGMENT_LINES, Segment, sealed, unsealed
 from opacity.line_store.lock import locked
 from opacity.line_store.segment import write_segment
 from opacity.molecule.isotopologue import Isotopologue
@@ -117,10 +117,12 @@ def ingest(
     at_once = max(memory // 3 // BYTES_A_LINE, 1 << 14)
     parts = folder / PARTS
     _make_folder(folder)
-    with locked(folder):
+    with locked(folder) as lock:
         _make_folder(parts)
         manifests = [_ingest_file(parts, number, one, key, at_once, progress) for number, one in enumerate(inputs)]
-        assemble(folder, manifests, key, at_once, facts())
+        for one, manifest in zip(inputs, manifests, strict=True):  # files beside several may have changed between them
+            _refuse_changed(one, manifest["identity"])
+        assemble(folder, manifests, key, at_once, facts(), lock.check)
         shutil.rmtree(parts, ignore_errors=True)
 
 
@@ -134,7 +136,9 @@ def _make_folder(path: Path) -> None:
 def _kept(manifest_path: Path, one: InputFile, key: str) -> dict[str, Any] | None:
     """The manifest of an interrupted ingest, if it is of the same input and all its parts are there."""
     kept = _read_json(manifest_path)
-    if kept is None or kept.get("key") != key or not same_content(one, kept.get("identity", {})):
+    if kept is None or (kept.get("format_version"), kept.get("key")) != (FORMAT_VERSION, key):
+        return None
+    if not same_content(one, kept.get("identity", {})):
         return None
     for segment in kept["segments"]:
         try:
@@ -179,11 +183,11 @@ def _ingest_file(
         position = max(batch.read, position)
     segments += _write_run(parts, f"{number:05d}-{len(segments):06d}", waiting)
     before = hashing()
-    if not same_content(one, before):
-        raise _changed(one.path)
+    _refuse_changed(one, before)
     if not ledger.adds_up():
         raise LineListError(problem(one.path, "the account of its records does not add up", found=ledger.as_dict()))
     manifest = {
+        "format_version": FORMAT_VERSION,
         "key": key,
         "identity": before,
         "ledger": ledger.as_dict(),
@@ -194,6 +198,11 @@ def _ingest_file(
     }
     write_atomically(manifest_path, sealed(manifest))
     return manifest
+
+
+def _refuse_changed(one: InputFile, before: dict[str, Any]) -> None:
+    if not same_content(one, before):
+        raise _changed(one.path)
 
 
 def _write_run(parts: Path, name: str, waiting: list[PackedLines]) -> list[Segment]:

@@ -1,4 +1,4 @@
-"""One ingest at a time in a store's folder: a lock file that says who is at work."""
+"""One ingest at a time in a store's folder: a lock file that says who is at work, touched while the work goes on."""
 
 from __future__ import annotations
 
@@ -7,44 +7,110 @@ import json
 import os
 import platform
 import secrets
-import time
+import threading
 from collections.abc import Iterator
+from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 from opacity.errors import ResourceError, problem
 from opacity.line_store.layout import LOCK
-from opacity.tables.atomic import process_runs
+from opacity.tables.atomic import process_namespace, process_runs, remove_leftovers, temporary_path
 
-_SECONDS_A_WEEK = 7 * 24 * 3600.0
+REFRESH = 30.0
+"""Seconds between two touches of the lock."""
+
+LONGEST_SILENCE = 3600.0
+"""Seconds after which a lock that nobody touches counts as left behind, whoever made it."""
+
+
+@dataclass(frozen=True)
+class Lock:
+    """A lock that is held; `text` is what this holder wrote into it, unlike any other's."""
+
+    path: Path
+    text: str
+
+    def check(self) -> None:
+        """Raise ResourceError where another process took the lock over, as it may after a long silence."""
+        try:
+            found = _text(self.path)
+        except OSError as error:
+            raise ResourceError(problem(self.path, f"cannot be read ({error.strerror or error})")) from error
+        if found != self.text:
+            who = "nobody" if found is None else _named(found)
+            what = "this process no longer holds the lock of the line store"
+            raise ResourceError(problem(self.path.parent, what, found=who, remedy="the same command starts again"))
+
+    def keep(self, stop: threading.Event) -> None:
+        """Touch the lock until `stop` is set or it is another's."""
+        while not stop.wait(REFRESH):
+            with contextlib.suppress(OSError):
+                if _text(self.path) != self.text:
+                    return
+                os.utime(self.path)
+
+    def release(self) -> None:
+        """Remove the lock unless it is another's."""
+        with contextlib.suppress(OSError):
+            if _text(self.path) == self.text:
+                self.path.unlink()
+
+
 _held: set[str] = set()
 
 
 @contextlib.contextmanager
-def locked(folder: Path) -> Iterator[None]:
+def locked(folder: Path) -> Iterator[Lock]:
     """Hold the folder's lock.  Raises ResourceError saying who holds it.
 
-    A lock of a process of this host that no longer runs, or one older than a week, is taken over.
+    A lock of a process of this host that no longer runs, or one that was not touched for an hour, is taken over.  What
+    a holder that was silent for so long has made must not count: it calls `Lock.check` before it makes its work final.
     """
     path = folder / LOCK
+    text = json.dumps({**_this_process(), "token": secrets.token_hex(8)})
     try:
-        if not _create(path):
-            _take_over(path)
+        if not _create(path, text):
+            _take_over(path, text)
     except OSError as error:
         raise ResourceError(problem(path, f"cannot be written ({error.strerror or error})")) from error
-    _held.add(os.path.abspath(path))
+    lock, stop = Lock(path, text), threading.Event()
+    thread = threading.Thread(target=lock.keep, args=(stop,), daemon=True)
+    _held.add(text)
+    thread.start()
+    remove_leftovers(folder)
     try:
-        yield
+        yield lock
     finally:
-        _held.discard(os.path.abspath(path))
-        with contextlib.suppress(OSError):
-            path.unlink()
+        stop.set()
+        thread.join()
+        _held.discard(text)
+        lock.release()
 
 
-def _create(path: Path) -> bool:
-    """Make the lock with its text in it at once, whoever looks; whether it was not there."""
-    own = path.with_name(f"{path.name}-{os.getpid()}-{secrets.token_hex(8)}")
+def _this_process() -> dict[str, Any]:
+    return {
+        "host": platform.node(),
+        "namespace": process_namespace(),
+        "pid": os.getpid(),
+        "started": _started(os.getpid()),
+    }
+
+
+def _started(process: int) -> str:
+    """When a process was started, in the system's own count; empty where that cannot be asked."""
     try:
-        own.write_text(json.dumps({"host": platform.node(), "pid": os.getpid()}), encoding="utf-8")
+        with open(f"/proc/{process}/stat", encoding="utf-8", errors="replace") as stream:
+            return stream.read().rpartition(")")[2].split()[19]
+    except (OSError, IndexError):
+        return ""
+
+
+def _create(path: Path, text: str) -> bool:
+    """Make the lock with its text in it at once, whoever looks; whether it was not there."""
+    own = temporary_path(path.parent)
+    try:
+        own.write_text(text, encoding="utf-8")
         try:
             os.link(own, path)
             return True
@@ -56,25 +122,25 @@ def _create(path: Path) -> bool:
             except FileExistsError:
                 return False
             with os.fdopen(descriptor, "wb") as stream:
-                stream.write(own.read_bytes())
+                stream.write(text.encode("utf-8"))
             return True
     finally:
         own.unlink(missing_ok=True)
 
 
-def _take_over(path: Path) -> None:
+def _take_over(path: Path, own: str) -> None:
     text = _text(path)
     if text is not None and not _is_left_behind(path, text):
         raise _in_use(path, text)
     # Renamed first: of several that take over, one gets what it looked at, and what another made meanwhile goes back.
-    aside = path.with_name(f"{path.name}-old-{secrets.token_hex(8)}")
+    aside = temporary_path(path.parent)
     with contextlib.suppress(FileNotFoundError):
         os.rename(path, aside)
         if _text(aside) != text:
             with contextlib.suppress(OSError):
                 os.link(aside, path)
         aside.unlink()
-    if not _create(path):
+    if not _create(path, own):
         raise _in_use(path, _text(path) or "")
 
 
@@ -85,30 +151,51 @@ def _text(path: Path) -> str | None:
         return None
 
 
-def _holder(text: str) -> tuple[str, int] | None:
+def _holder(text: str) -> dict[str, Any] | None:
     try:
         values = json.loads(text)
-        return str(values["host"]), int(values["pid"])
-    except (KeyError, TypeError, ValueError):
+        return {**values, "host": str(values["host"]), "pid": int(values["pid"])}
+    except (KeyError, TypeError, ValueError, OverflowError, RecursionError):
         return None
 
 
-def _in_use(path: Path, text: str) -> ResourceError:
+def _named(text: str) -> str:
     holder = _holder(text)
-    who = "another process" if holder is None else f"process {holder[1]} on {holder[0]}"
+    if holder is None or not holder["host"].isprintable():
+        return "another process"
+    return f"process {holder['pid']} on {holder['host']}"
+
+
+def _in_use(path: Path, text: str) -> ResourceError:
     remedy = f"wait for it, or remove {path.name} if it no longer runs"
-    return ResourceError(problem(path.parent, f"this line store is being made by {who}", remedy=remedy))
+    return ResourceError(problem(path.parent, f"this line store is being made by {_named(text)}", remedy=remedy))
 
 
 def _is_left_behind(path: Path, text: str) -> bool:
     try:
-        if time.time() - path.stat().st_mtime > _SECONDS_A_WEEK:
+        if _is_silent(path):
             return True
     except FileNotFoundError:
         return True
-    holder = _holder(text)
-    if holder is None or holder[0] != platform.node():
+    holder, own = _holder(text), _this_process()
+    if holder is None or holder["host"] != own["host"] or holder.get("namespace", own["namespace"]) != own["namespace"]:
         return False
-    if holder[1] == os.getpid():  # an earlier process of the same number, unless it is this one
-        return os.path.abspath(path) not in _held
-    return not process_runs(holder[1])
+    if holder["pid"] == own["pid"]:  # an earlier process of the same number, unless it is this one
+        return text not in _held
+    if not process_runs(holder["pid"]):
+        return True
+    known = holder.get("started")
+    return bool(known) and _started(holder["pid"]) not in ("", known)
+
+
+def _is_silent(path: Path) -> bool:
+    """Whether a lock was last touched too long ago, or far in the future as after a clock was set right.
+
+    Asked by the clock of the file system, since that of another host may be wrong.
+    """
+    probe = temporary_path(path.parent)
+    try:
+        probe.touch(exist_ok=False)
+        return abs(probe.stat().st_mtime - path.stat().st_mtime) > LONGEST_SILENCE
+    finally:
+        probe.unlink(missing_ok=True)

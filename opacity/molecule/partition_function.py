@@ -34,6 +34,9 @@ TIPS_LOWEST = 20.0
 STEEPEST = 60.0
 """d ln Q / d ln T is the mean energy over kT plus 3/2: no molecule with a line list comes near this."""
 
+CLOSEST = 1e-9
+"""Rows nearer to each other than this in ln T are no table."""
+
 STEP = 1.5e-3
 """A relative jump from its neighbours above which a tabulated Q counts as a step."""
 
@@ -193,18 +196,14 @@ def editions_differ(isotopologue: Isotopologue, temperature: float) -> float:
 
 
 def from_file(path: Path) -> PartitionFunction:
-    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout), .gz, .bz2 too.
+    """A partition function from a text file of two columns, T (K) rising and Q (the ExoMol .pf layout).
 
-    Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.  Raises MoleculeError naming the line that
-    can't be right, or the file where it does not hold 296 K, to which the strengths of lists refer.
+    The file is plain, .gz or .bz2.  Interpolated as a cubic spline of ln Q in ln T, never beyond its ends.
+    Raises MoleculeError naming the line that can't be right, or the file where it does not hold 296 K, to which the
+    strengths of lists refer.
     """
-    try:
-        unpack = {".bz2": bz2.decompress, ".gz": gzip.decompress}.get(path.suffix.lower(), bytes)
-        lines = unpack(path.read_bytes()).decode("ascii").splitlines()
-    except (OSError, ValueError, EOFError, zlib.error) as error:
-        raise MoleculeError(problem(path, f"partition function cannot be read ({one_line(error)})")) from error
     rows: list[tuple[float, float]] = []
-    for number, line in enumerate(lines, start=1):
+    for number, line in enumerate(_text(path).split("\n"), start=1):
         if not line.strip():
             continue
         rows.append(_row(path, number, line, rows[-1][0] if rows else 0.0))
@@ -217,18 +216,7 @@ def from_file(path: Path) -> PartitionFunction:
         what = "the partition function does not hold 296 K, to which the strengths refer"
         found = f"{lowest:g} to {highest:g} K"
         raise MoleculeError(problem(path, what, expected="rows from 296 K or below to 296 K or above", found=found))
-    slope = np.abs(np.diff(np.log(value)) / np.diff(np.log(temperature)))
-    steep = np.flatnonzero(slope > STEEPEST)
-    if steep.size:
-        ends = f"{temperature[steep[0]]:g} and {temperature[steep[0] + 1]:g} K"
-        raise MoleculeError(
-            problem(
-                path,
-                f"no partition function: it jumps between {ends}",
-                expected=f"no more than T^{STEEPEST:g}",
-                found=f"{value[steep[0]]:g} to {value[steep[0] + 1]:g}",
-            )
-        )
+    _refuse_jumps(path, temperature, value)
     rough = temperature[2:-2][np.abs(neighbour_residuals(temperature, value)) > STEP]
     steps = tuple(rough[rough > ROUGH_BELOW].tolist())
     spline = CubicSpline(np.log(temperature), np.log(value))
@@ -251,6 +239,48 @@ def from_states(temperature: Sequence[float], value: Sequence[float], highest_en
         )
     highest = min(float(t[-1]), SECOND_RADIATION * highest_energy / 10.0)
     return PartitionFunction("sum over states", float(t[0]), highest, _spline=CubicSpline(np.log(t), np.log(q)))
+
+
+def _refuse_jumps(path: Path, temperature: FloatArray, value: FloatArray) -> None:
+    """Raise MoleculeError where Q changes faster than any can, or rows are too near to each other to tell."""
+    apart = np.diff(np.log(temperature))
+    slope = np.abs(np.diff(np.log(value))) / np.maximum(apart, CLOSEST)
+    steep = np.flatnonzero((slope > STEEPEST) | (apart < CLOSEST))
+    if steep.size:
+        ends = f"{temperature[steep[0]]:.12g} and {temperature[steep[0] + 1]:.12g} K"
+        raise MoleculeError(
+            problem(
+                path,
+                f"no partition function: it jumps between {ends}",
+                expected=f"no more than T^{STEEPEST:g}",
+                found=f"{value[steep[0]]:g} to {value[steep[0] + 1]:g}",
+            )
+        )
+
+
+def _text(path: Path) -> str:
+    """The text of a file, decompressed by its ending."""
+    try:
+        data = path.read_bytes()
+        if path.suffix.lower() == ".gz":
+            data = gzip.decompress(data)
+        elif path.suffix.lower() == ".bz2":
+            data = _bunzip2(data)
+        return data.decode("ascii")
+    except (OSError, ValueError, EOFError, zlib.error) as error:
+        raise MoleculeError(problem(path, f"partition function cannot be read ({one_line(error)})")) from error
+
+
+def _bunzip2(data: bytes) -> bytes:
+    """All streams; the standard library's `bz2.decompress` passes over damage behind the first."""
+    parts = []
+    while data:
+        stream = bz2.BZ2Decompressor()
+        parts.append(stream.decompress(data))
+        if not stream.eof:
+            raise EOFError("it ends before its end mark")
+        data = stream.unused_data
+    return b"".join(parts)
 
 
 def _row(path: Path, number: int, line: str, previous: float) -> tuple[float, float]:

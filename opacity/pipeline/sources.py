@@ -126,7 +126,7 @@ def ensure_store(
         index = read_index(folder)
         if index is not None and is_current(index, list(made.inputs), made.key):
             known = {str(file["sha256"]) for one in index.inputs for file in one["files"]}
-            there = all((folder / segment.file).is_file() for segment in index.segments)
+            there = all(_size(folder / segment.file) == segment.bytes for segment in index.segments)
             if there and (hashes is None or known <= hashes):
                 return LineStore(folder), False
         total = sum(_size(one.path) for one in made.inputs)

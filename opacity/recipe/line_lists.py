@@ -131,7 +131,10 @@ def _find(faults: Faults, key: KeyPath, folder: Path, pattern: str, comes: bool)
     except (OSError, ValueError, re.error) as error:
         faults.add(key, "cannot be looked for", found=shown(pattern), remedy=shown(str(error)))
         return []
-    if not found:
+    broken = [path for path in matches if os.path.islink(path) and not os.path.exists(path)]
+    if broken:  # passed over, it would be a list that lacks a part
+        faults.add(key, "a link to no file", expected="files", found=full_name(broken[0]), remedy="mend or remove it")
+    elif not found:
         is_folder = any(os.path.isdir(path) for path in matches)
         remedy = None if any(character in pattern for character in "*?[") else _near(literal)
         faults.add(

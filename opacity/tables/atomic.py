@@ -44,7 +44,7 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
     path = Path(path)
     if "\0" in str(path) or path.name in ("", ".."):
         raise InputError(problem("path", "not the name of a file", found=repr(str(path))))
-    temporary = path.parent / f".opacity-{_host()}-{os.getpid()}-{secrets.token_hex(8)}.part"
+    temporary = temporary_path(path.parent)
     with _as_resource_error(path):
         try:
             _write_synced(temporary, data)
@@ -57,6 +57,11 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
                 os.unlink(temporary)
         _sync_folder(path.parent)
     return path
+
+
+def temporary_path(folder: Path) -> Path:
+    """A name in the folder that nothing has and that `remove_leftovers` knows."""
+    return folder / f".opacity-{_host()}-{os.getpid()}-{secrets.token_hex(8)}.part"
 
 
 def remove_leftovers(folder: Path) -> None:
@@ -74,8 +79,17 @@ def remove_leftovers(folder: Path) -> None:
 
 
 def _host() -> str:
-    """A short name of this host that is fit for a file name."""
-    return hashlib.sha256(platform.node().encode("utf-8", "surrogateescape")).hexdigest()[:8]
+    """A short name of this host, or of a container on it, that is fit for a file name."""
+    name = f"{platform.node()} {process_namespace()}"
+    return hashlib.sha256(name.encode("utf-8", "surrogateescape")).hexdigest()[:8]
+
+
+def process_namespace() -> str:
+    """Within what the number of a process means something: containers of one host each have their own."""
+    try:
+        return os.readlink("/proc/self/ns/pid")
+    except OSError:
+        return ""
 
 
 def process_runs(process: int) -> bool:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 from pathlib import Path
 
 import numpy as np
@@ -28,7 +29,7 @@ def broad(tmp_path: Path, text: str):
 
 def lower_j_of(path: Path, molecule: int) -> tuple[np.ndarray, np.ndarray]:
     (chunk,) = read_chunks(path)
-    return read_j(chunk, hitran_parser(path)(chunk).whole, molecule)
+    return read_j(path, chunk, hitran_parser(path)(chunk).whole, molecule)
 
 
 def test_widths_by_lower_j_serve_lists_without_columns(tmp_path: Path) -> None:
@@ -54,7 +55,9 @@ def test_the_branch_tells_upper_j() -> None:
 
 
 def test_a_molecule_of_unknown_quanta_is_refused(tmp_path: Path) -> None:
-    with pytest.raises(LineListError, match="J'' is not read from its records"):
+    with pytest.raises(
+        LineListError, match=rf"^{re.escape(str(SAMPLE))}: J'' is not read from records of molecule 8, "
+    ):
         lower_j_of(SAMPLE, 8)
 
 
@@ -105,7 +108,7 @@ def test_lower_j_of_real_records(name: str, molecule: int) -> None:
     """CO: g'' = 2J'' + 1.  H2O: J' and J'' differ by at most 1, for every record (selection rule of a dipole)."""
     (chunk,) = read_chunks(Path(REAL) / name)
     columns = hitran_parser(Path(REAL) / name)(chunk)
-    lower, upper = read_j(chunk, columns.whole, molecule)
+    lower, upper = read_j(Path(REAL) / name, chunk, columns.whole, molecule)
     if name == "CO.par":
         assert np.array_equal(columns.numbers["lower_weight"], 2.0 * lower + 1.0)
     else:

@@ -49,6 +49,28 @@ def test_an_input_that_changes_while_it_is_read_is_refused(tmp_path: Path) -> No
     assert read_index(tmp_path / "store") is None
 
 
+def test_a_file_beside_several_inputs_that_changes_between_them_is_refused(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """States are read once for all transition files, whose identities are taken one after the other."""
+    beside = tmp_path / "a.states"
+    beside.write_bytes(b"as read for both")
+    parts = [written(tmp_path / name, rows) for name, rows in (("a.par", RECORDS[:9]), ("b.par", RECORDS[9:]))]
+    inputs = [InputFile(one.path, one.batches, (beside,)) for one in parts]
+
+    at_rest = ingest_module._at_rest
+
+    def changed_before_the_second(one: InputFile) -> object:
+        if one is inputs[1]:
+            beside.write_bytes(b"another content")
+        return at_rest(one)
+
+    monkeypatch.setattr(ingest_module, "_at_rest", changed_before_the_second)
+    with pytest.raises(LineListError, match=r"^[^\n]*a\.par: changed while it was read[^\n]*$"):
+        ingest(tmp_path / "store", inputs, "key", 10**9, quiet)
+    assert read_index(tmp_path / "store") is None
+
+
 def test_an_ingest_anew_leaves_no_store_until_it_is_done(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     folder = tmp_path / "store"
     ingest(folder, [written(tmp_path / "a.par", RECORDS)], "key", 10**9, quiet)
@@ -83,6 +105,23 @@ def test_parts_left_half_removed_are_made_again(tmp_path: Path, monkeypatch: pyt
     assert not (folder / PARTS).exists()
     with LineStore(folder) as store:
         assert len(store.window(0.0, 1e9)) == 202
+
+
+def test_parts_of_another_format_are_made_again(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    folder, first = tmp_path / "store", written(tmp_path / "a.par", RECORDS)
+    bad = written(tmp_path / "b.par", [*RECORDS[:50], b" 51 short\n"])
+    manifest, read = folder / PARTS / "00000.json", []
+
+    def batches() -> Iterator[Batch]:
+        read.append(1)
+        yield from first.batches()
+
+    for version, times in ((1, 1), (1, 1), (2, 2)):
+        monkeypatch.setattr(ingest_module, "FORMAT_VERSION", version)
+        with pytest.raises(LineListError, match=r"b\.par"):
+            ingest(folder, [InputFile(first.path, batches), bad], "key", 10**9, quiet)
+        assert len(read) == times
+        assert json.loads(manifest.read_bytes())["format_version"] == version
 
 
 def test_parts_that_were_overwritten_are_not_taken_for_those_of_before(tmp_path: Path) -> None:
@@ -207,8 +246,8 @@ def test_a_lock_left_behind_is_taken_over(tmp_path: Path) -> None:
     locked_by(folder, platform.node(), os.getpid())  # of an earlier process of the same number
     ingest(folder, [one], "key", 10**9, quiet)
     locked_by(folder, "another host", 1)
-    week = time.time() - 8 * 24 * 3600
-    os.utime(folder / LOCK, (week, week))
+    long_ago = time.time() - 2 * 3600
+    os.utime(folder / LOCK, (long_ago, long_ago))
     ingest(folder, [one], "key", 10**9, quiet)
     assert sorted(path.name for path in folder.iterdir()) == ["000000.lines.h5", INDEX]
 

@@ -62,18 +62,29 @@ COMPRESS = {"bz2": bz2.compress, "gz": gzip.compress}
 @pytest.mark.parametrize("ending", COMPRESS)
 def test_a_compressed_file_is_read_the_same(write, ending):
     path = write(GOOD)
+    data = path.read_bytes()
     packed = path.with_name(f"made.pf.{ending}")
-    packed.write_bytes(COMPRESS[ending](path.read_bytes()))
+    # In two streams.
+    packed.write_bytes(COMPRESS[ending](data[:30]) + COMPRESS[ending](data[30:]))
     q, plain = from_file(packed), from_file(path)
     assert [q(t) for t in (100.0, 296.0, 444.4)] == [plain(t) for t in (100.0, 296.0, 444.4)]
     assert q.source == f"file made.pf.{ending}"
+
+
+@pytest.mark.parametrize("value", ["52.0", "52.1", "52.000000000000007"])
+def test_rows_too_near_to_each_other_are_refused(write, value):
+    near = [f"{float(np.nextafter(300.0, 400.0))!r} {value}"]
+    with pytest.raises(MoleculeError, match=r"^[^\n]*made\.pf: no partition function: it jumps between 300 and 300 K"):
+        from_file(write([*GOOD[:3], *near, *GOOD[3:]]))
 
 
 @pytest.mark.parametrize("ending", COMPRESS)
 def test_a_compressed_file_that_is_cut_or_none(write, ending):
     path = write(GOOD).with_name(f"made.pf.{ending}")
     packed = COMPRESS[ending](b"\n".join(row.encode() for row in GOOD))
-    for damaged in (packed[:-5], packed[:15], packed[:12] + b"\xff\xff\xff" + packed[15:], b"100.0 10.0\n"):
+    behind = packed + COMPRESS[ending](b"\n600.0 140.0")[:-5]
+    garbage = packed[:12] + b"\xff\xff\xff" + packed[15:]
+    for damaged in (packed[:-5], packed[:15], garbage, b"100.0 10.0\n", behind, packed + b"\n600.0 140.0"):
         path.write_bytes(damaged)
         with pytest.raises(MoleculeError, match=rf"made\.pf\.{ending}: partition function cannot be read \("):
             from_file(path)
@@ -126,7 +137,7 @@ def test_a_bad_row_is_named(write, row, place):
     with pytest.raises(MoleculeError, match="^" + re.escape(f"{path}:{place + 1}: not a row of a")) as caught:
         from_file(path)
     assert "expected T above" in str(caught.value)
-    assert len(str(caught.value).splitlines()) == 1
+    assert str(caught.value).isprintable()
 
 
 @pytest.mark.parametrize("count", [0, 1, 3])

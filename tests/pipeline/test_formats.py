@@ -159,6 +159,12 @@ def test_a_large_list_of_records_goes_through_a_store(
     out = " ".join(capsys.readouterr().out.split())
     assert "up to date: no text was read" in out
     assert "202 lines" in out
+    (segment,) = (tmp_path / "stored").rglob("*.lines.h5")
+    whole = segment.read_bytes()
+    segment.write_bytes(whole[:-1])  # a copy that was cut
+    assert main(["ingest", str(path), "-o", str(tmp_path / "stored")]) == 0
+    assert "made now" in capsys.readouterr().out
+    assert segment.read_bytes() == whole
     assert main(["ingest", str(path), "-o", str(tmp_path / "new"), "--memory", "100MB", "--json"]) == 0
 
 

@@ -118,3 +118,9 @@ def test_the_same_file_in_two_lists(faults: Faults, folder: Path) -> None:
         "co.toml:16: line_list[1].files[0]: file already named in line_list[0]; expected each file once, "
         "found FOLDER/link.data"
     ]
+
+
+def test_a_link_to_no_file_is_not_passed_over(faults: Faults, folder: Path) -> None:
+    (folder / "lines" / "CO-c.par").symlink_to("nowhere")
+    what = "9: line_list[0].files[0]: a link to no file; expected files, found FOLDER/lines/CO-c.par; mend or remove it"
+    assert faults() == [f"co.toml:{what}"]

@@ -146,6 +146,22 @@ def test_lines_served_by_the_file_and_those_of_strength_0_are_counted(
     assert notes["strength 0: contributes nothing"] == 1
 
 
+def test_an_upper_state_of_weight_0_gives_a_line_of_strength_0(
+    tmp_path: Path, lines: LineList, join: StateJoin
+) -> None:
+    """Levels that nuclear spin forbids may stand in a list: a line from them has no strength, and is no fault."""
+    states = write_states(tmp_path, lines)
+    states.write_text(states.read_text(encoding="ascii") + "900003 99000.0 0 3.0\n", encoding="ascii")
+    path = tmp_path / "co.trans"
+    path.write_text("900003 1 1.0\n1 900003 1.0\n", encoding="ascii")
+    more = read_states(states)
+    wider = replace(join, states=more, table=state_join(more, {}, isotopologue(5, 1)).table)
+    batch = all_of(path, wider, leave_out=True)
+    assert batch.ledger.notes["strength 0: contributes nothing"] == 1
+    assert decode_intensity(batch.packed.intensity).tolist() == [-np.inf]
+    assert batch.ledger.left_out == {"upper state lies below the lower one": 1}
+
+
 def test_the_broadener_in_the_name_of_a_file() -> None:
     names = ["CO__H2.broad", "CO__He.broad.gz", "CO__air.broad.bz2"]
     assert list(default_names([Path(name) for name in names])) == ["H2", "He", "air"]
