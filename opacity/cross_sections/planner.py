@@ -12,12 +12,14 @@ from dataclasses import dataclass
 import numpy as np
 
 from opacity.grids import FloatArray
-from opacity.kernels.cells import CELL, RATIO
+from opacity.kernels.cells import CELL, RATIO, unevenness
 
 SMALLEST_TILE = 4096
 LARGEST_TILE = 65536
 WIDEST_IN_LOG = 0.1
 """A cell of a grid even in log spans no more than this in ln nu: the profile is not quite a pole there."""
+MOST_UNEVEN = 1e-6
+"""By this share of a step points may lie off their even places: a profile's value there changes by less than 1e-7."""
 
 # Seconds, measured with one worker (DEVELOPERS.md): they decide which way is taken, never what comes out.
 _PER_VALUE = 0.3e-9
@@ -47,16 +49,15 @@ class Tiles:
 
 
 def even_spacing(nu: FloatArray) -> Spacing | None:
-    """The spacing of a grid's points if they are even to a part in 10^6 of the step, else None."""
+    """The spacing of a grid's points if they are even, else None."""
     if nu.size < 2 * CELL:
         return None
     for in_log in (False, True):
         if in_log and nu[0] <= 0.0:
             continue
-        at = np.log(nu) if in_log else nu
-        step = float(at[-1] - at[0]) / (nu.size - 1)
-        if np.max(np.abs(at - (at[0] + step * np.arange(nu.size)))) <= 1e-6 * step:
-            return Spacing(step, in_log)
+        if unevenness(nu, in_log) <= MOST_UNEVEN:
+            span = math.log(float(nu[-1]) / float(nu[0])) if in_log else float(nu[-1] - nu[0])
+            return Spacing(span / (nu.size - 1), in_log)
     return None
 
 

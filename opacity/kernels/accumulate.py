@@ -109,13 +109,17 @@ def add_lines(
     `chi` is the table of `chi`, without rows where there is none.  Returns the first line whose pressure width is
     out of range, or -1.
     """
+    wavenumber, shift, strength, lorentz, doppler = lines
+    near_radius, far_radius, exponential = formulas
     for j in range(first_line, last_line):
-        if lines.strength[j] == 0.0:
+        if strength[j] == 0.0:
             continue
-        first, last = reach(nu, lines.wavenumber[j], cutoff)
+        first, last = reach(nu, wavenumber[j], cutoff)
         if first >= last:
             continue
-        line = line_at_node(lines, j, pressure, formulas)
+        line = line_at_node(
+            wavenumber[j], shift[j], strength[j], lorentz[j], doppler[j], pressure, near_radius, far_radius, exponential
+        )
         if not SMALLEST_Y <= line.y < np.inf:
             return j
         if subtract_plinth:

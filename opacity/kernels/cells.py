@@ -13,6 +13,7 @@ that nothing is lost on the way.
 from __future__ import annotations
 
 import math
+from itertools import accumulate
 from typing import NamedTuple
 
 import numpy as np
@@ -30,19 +31,24 @@ RATIO_BITS = 2
 RATIO = 1 << RATIO_BITS
 
 
-class Tree(NamedTuple):
-    """Cells of a tile: `places` (cm-1) of all nodes, level by level; `offsets` (n_levels + 1,) first cell of each.
+class Frame(NamedTuple):
+    """How the points of a tile lie: `first` and `step` in cm-1 where evenly spaced, in ln of it where even `in_log`.
 
-    `first` and `step` place the points: cm-1 where evenly spaced, ln of it where evenly spaced `in_log`.  A pole that
-    lies outside the ellipse about a cell with half-axis `axis` along it is far enough.
+    A pole that lies outside the ellipse about a cell with half-axis `axis` along it is far enough.
     """
 
-    places: Array
-    offsets: Index
     first: float
     step: float
     in_log: bool
     axis: float
+
+
+class Tree(NamedTuple):
+    """Cells of a tile: `places` (cm-1) of all nodes, level by level; `offsets` (n_levels + 1,) first cell of each."""
+
+    places: Array
+    offsets: Index
+    frame: Frame
 
 
 def roots() -> Array:
@@ -67,15 +73,36 @@ _TO_POINTS = interpolation_weights((2.0 * np.arange(CELL) + 1.0) / CELL - 1.0)
 
 def grow_tree(n_points: int, levels: int, first: float, step: float, in_log: bool, axis: float) -> Tree:
     """The tree of a tile of `n_points`; the last cell of a level may reach beyond them."""
-    widths = [CELL << (RATIO_BITS * level) for level in range(levels)]
-    counts = [-(-n_points // width) for width in widths]
-    middles = [(np.arange(count) + 0.5) * width - 0.5 for count, width in zip(counts, widths, strict=True)]
-    at = [
-        first + step * (middle[:, None] + 0.5 * width * _ROOTS) for middle, width in zip(middles, widths, strict=True)
-    ]
-    places = np.concatenate([one.ravel() for one in at])
-    offsets = np.concatenate([[0], np.cumsum(counts)]).astype(np.int64)
-    return Tree(np.exp(places) if in_log else places, offsets, first, step, in_log, axis)
+    counts = [-(-n_points // (CELL << (RATIO_BITS * level))) for level in range(levels)]
+    offsets = np.array([0, *accumulate(counts)], dtype=np.int64)
+    places = np.empty(NODES * offsets[-1])
+    place_nodes(places, offsets, first, step, in_log)
+    return Tree(places, offsets, Frame(first, step, in_log, axis))
+
+
+@jit
+def place_nodes(places: Array, offsets: Index, first: float, step: float, in_log: bool) -> None:
+    """Fill the places of a tree's nodes."""
+    for level in range(offsets.size - 1):
+        width = CELL << (RATIO_BITS * level)
+        for cell in range(offsets[level + 1] - offsets[level]):
+            middle = (cell + 0.5) * width - 0.5
+            for k in range(NODES):
+                at = first + step * (middle + 0.5 * width * _ROOTS[k])
+                places[NODES * (offsets[level] + cell) + k] = math.exp(at) if in_log else at
+
+
+@jit
+def unevenness(nu: Array, in_log: bool) -> float:
+    """How far the farthest point is from where even steps from the first to the last would put it, in steps."""
+    first = math.log(nu[0]) if in_log else nu[0]
+    last = math.log(nu[nu.size - 1]) if in_log else nu[nu.size - 1]
+    step = (last - first) / (nu.size - 1)
+    farthest = 0.0
+    for i in range(nu.size):
+        at = math.log(nu[i]) if in_log else nu[i]
+        farthest = max(farthest, abs(at - (first + step * i)))
+    return farthest / step
 
 
 @jit

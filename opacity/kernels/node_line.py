@@ -1,4 +1,8 @@
-"""One line at a node: from its columns at a temperature to where each formula of the profile serves."""
+"""One line at a node: from its columns at a temperature to where each formula of the profile serves.
+
+Arrays are taken out of tuples once a tile and handed on by themselves: each time a kernel takes one out of a tuple it
+counts references, which for small functions is most of their time.
+"""
 
 from __future__ import annotations
 
@@ -57,14 +61,13 @@ class LineAtNode(NamedTuple):
 
 
 @jit_inline
-def region_radii(y: float, formulas: Formulas) -> tuple[float, float]:
+def region_radii(y: float, near_radius: float, far_radius: float, exponential: Array) -> tuple[float, float]:
     """Distances |x| up to which a core formula, and up to which `near`, is needed; -1 where not at all."""
     y2 = y * y
-    near_radius, far_radius = formulas.near_radius, formulas.far_radius
     core = -1.0
     if y2 < near_radius * near_radius:
         exponent = min(max(math.frexp(y)[1], SMALLEST_EXPONENT), LARGEST_EXPONENT)
-        core = max(math.sqrt(near_radius * near_radius - y2), formulas.exponential[exponent - SMALLEST_EXPONENT])
+        core = max(math.sqrt(near_radius * near_radius - y2), exponential[exponent - SMALLEST_EXPONENT])
     near = core
     if y2 < far_radius * far_radius:
         near = max(core, math.sqrt(far_radius * far_radius - y2))
@@ -72,14 +75,23 @@ def region_radii(y: float, formulas: Formulas) -> tuple[float, float]:
 
 
 @jit_inline
-def line_at_node(lines: LineColumns, j: int, pressure: float, formulas: Formulas) -> LineAtNode:
-    """Line j at a pressure (bar), without plinth."""
-    nu0 = lines.wavenumber[j]
-    centre = nu0 + pressure * lines.shift[j]
-    scale = SQRT_LN2 / (lines.doppler[j] * max(centre, LOWEST_SHIFTED * nu0))
-    y = pressure * lines.lorentz[j] * scale
-    core, near = region_radii(y, formulas)
-    return LineAtNode(centre, scale, y, lines.strength[j] * scale * INV_SQRT_PI, 0.0, core, near)
+def line_at_node(
+    nu0: float,
+    shift: float,
+    strength: float,
+    lorentz: float,
+    doppler: float,
+    pressure: float,
+    near_radius: float,
+    far_radius: float,
+    exponential: Array,
+) -> LineAtNode:
+    """A line of `LineColumns` at a pressure (bar), without plinth."""
+    centre = nu0 + pressure * shift
+    scale = SQRT_LN2 / (doppler * max(centre, LOWEST_SHIFTED * nu0))
+    y = pressure * lorentz * scale
+    core, near = region_radii(y, near_radius, far_radius, exponential)
+    return LineAtNode(centre, scale, y, strength * scale * INV_SQRT_PI, 0.0, core, near)
 
 
 @jit
@@ -118,7 +130,7 @@ def profile_value(x: float, y: float, core: float, near: float) -> float:
 @jit
 def voigt_value(x: float, y: float, formulas: Formulas) -> float:
     """K(x, y) within the tolerance that `formulas` follow from."""
-    core, near = region_radii(y, formulas)
+    core, near = region_radii(y, formulas.near_radius, formulas.far_radius, formulas.exponential)
     return profile_value(x, y, core, near)
 
 

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.kernels.accumulate import add_line, add_weighted, reach
-from opacity.kernels.cells import CELL_BITS, NODES, RATIO_BITS, Tree, sums_to_points
+from opacity.kernels.cells import CELL_BITS, NODES, RATIO_BITS, Frame, Tree, sums_to_points
 from opacity.kernels.chi import chi_at, weigh
 from opacity.kernels.jit import jit, jit_inline
 from opacity.kernels.node_line import (
@@ -29,6 +29,7 @@ from opacity.kernels.node_line import (
 from opacity.kernels.voigt import add_far
 
 Array = NDArray[np.float64]
+Index = NDArray[np.int64]
 
 SPREAD = 2.3507
 """Largest root of H_6: the poles of the 6-point formula lie this far beside the centre, in units of x."""
@@ -67,34 +68,38 @@ def add_lines_by_cells(
     formulas: Formulas,
 ) -> int:
     """As `accumulate.add_lines`, for an evenly spaced tile with its tree."""
-    sums = np.zeros(tree.places.size)
+    places, offsets, frame = tree
+    sums = np.zeros(places.size)
+    wavenumber, shift, strength, lorentz, doppler = lines
+    near_radius, far_radius, exponential = formulas
     for j in range(first_line, last_line):
-        if lines.strength[j] == 0.0:
+        if strength[j] == 0.0:
             continue
-        nu0 = lines.wavenumber[j]
-        first, last = reach(nu, nu0, cutoff)
+        first, last = reach(nu, wavenumber[j], cutoff)
         if first >= last:
             continue
-        line = line_at_node(lines, j, pressure, formulas)
+        line = line_at_node(
+            wavenumber[j], shift[j], strength[j], lorentz[j], doppler[j], pressure, near_radius, far_radius, exponential
+        )
         if not SMALLEST_Y <= line.y < np.inf:
             return j
         if subtract_plinth:
             line = with_plinth(line, cutoff, chi_at(chi, cutoff))
-        place = _place(tree, line, nu0, cutoff, subtract_plinth)
+        place = _place(frame, line, wavenumber[j], cutoff, subtract_plinth)
         if chi.shape[0] == 0:
-            _add_line(out, nu, sums, tree, first, last, line, place, 1.0, -1.0)
+            _add_line(out, nu, sums, places, offsets, frame, first, last, line, place, 1.0, -1.0)
             continue
         left, right = last, last
         for row in range(chi.shape[0]):
             low, high = reach(nu, line.centre, chi[row, 0])
             low, high = min(max(low, first), last), min(max(high, first), last)
             if row == 0:
-                _add_line(out, nu, sums, tree, low, high, line, place, chi[row, 1], chi[row, 2])
+                _add_line(out, nu, sums, places, offsets, frame, low, high, line, place, chi[row, 1], chi[row, 2])
             else:
-                _add_line(out, nu, sums, tree, low, left, line, place, chi[row, 1], chi[row, 2])
-                _add_line(out, nu, sums, tree, right, high, line, place, chi[row, 1], chi[row, 2])
+                _add_line(out, nu, sums, places, offsets, frame, low, left, line, place, chi[row, 1], chi[row, 2])
+                _add_line(out, nu, sums, places, offsets, frame, right, high, line, place, chi[row, 1], chi[row, 2])
             left, right = low, high
-    sums_to_points(sums, tree.offsets, out)
+    sums_to_points(sums, offsets, out)
     return -1
 
 
@@ -115,9 +120,9 @@ def _not_above(value: float, low: int, high: int) -> int:
 
 
 @jit_inline
-def _place(tree: Tree, line: LineAtNode, nu0: float, cutoff: float, subtract_plinth: bool) -> Place:
+def _place(frame: Frame, line: LineAtNode, nu0: float, cutoff: float, subtract_plinth: bool) -> Place:
     gamma, unit = line.y / line.scale, 1.0 / line.scale
-    if tree.in_log:
+    if frame.in_log:
         centre = math.log(max(line.centre, 1e-300))
         height = math.atan2(gamma, line.centre)
         if line.centre > 0.0:
@@ -125,12 +130,12 @@ def _place(tree: Tree, line: LineAtNode, nu0: float, cutoff: float, subtract_pli
             unit /= line.centre
     else:
         centre, height = line.centre, gamma
-    centre = (centre - tree.first) / tree.step + 0.5
-    unit /= tree.step
+    centre = (centre - frame.first) / frame.step + 0.5
+    unit /= frame.step
     # In ln nu a distance below the centre is longer by its share of the centre, at most.
     uneven = 1.0
-    if tree.in_log:
-        inner = max(line.near, SPREAD) * unit * tree.step
+    if frame.in_log:
+        inner = max(line.near, SPREAD) * unit * frame.step
         if line.centre <= 0.0 or inner > MOST_UNEVEN:
             unit = np.inf
         uneven = 1.0 + inner
@@ -139,10 +144,10 @@ def _place(tree: Tree, line: LineAtNode, nu0: float, cutoff: float, subtract_pli
     left_end, right_end = -np.inf, np.inf
     if subtract_plinth:
         low, high = max(nu0, line.centre) - cutoff, min(nu0, line.centre) + cutoff
-        if tree.in_log:
+        if frame.in_log:
             low, high = math.log(max(low, 1e-300)), math.log(max(high, 1e-300))
-        left_end, right_end = (low - tree.first) / tree.step + 0.5, (high - tree.first) / tree.step + 0.5
-    return Place(centre, height / tree.step, SPREAD * unit * uneven, core, near, left_end, right_end)
+        left_end, right_end = (low - frame.first) / frame.step + 0.5, (high - frame.first) / frame.step + 0.5
+    return Place(centre, height / frame.step, SPREAD * unit * uneven, core, near, left_end, right_end)
 
 
 class Level(NamedTuple):
@@ -159,7 +164,7 @@ class Level(NamedTuple):
 
 
 @jit_inline
-def _level(tree: Tree, bits: int, low: int, high: int, place: Place, decay: float) -> Level:
+def _level(frame: Frame, bits: int, low: int, high: int, place: Place, decay: float) -> Level:
     """What a level of cells 2^bits points wide can do for a line; `decay` is the chi factor's rate per point, or 0."""
     per_width = 1.0 / (1 << bits)
     if place.left_end > -np.inf:
@@ -167,7 +172,7 @@ def _level(tree: Tree, bits: int, low: int, high: int, place: Place, decay: floa
         high = _not_above(place.right_end * per_width - 1.0, low, high)
     half = 0.5 * (1 << bits)
     # At its pole a chi factor is larger than in the cell, which T_8 has to make up for.
-    axis = tree.axis if decay == 0.0 else tree.axis * math.exp(decay * half * (2.0 * tree.axis + 1.0) / NODES)
+    axis = frame.axis if decay == 0.0 else frame.axis * math.exp(decay * half * (2.0 * frame.axis + 1.0) / NODES)
     up = (place.height / half) ** 2 / (axis * axis - 1.0)
     limit = half * axis * math.sqrt(1.0 - up) + place.spread if up < 1.0 else -1.0
     if place.core >= 0.0 or decay > 0.0:
@@ -190,7 +195,9 @@ def _add_line(
     out: Array,
     nu: Array,
     sums: Array,
-    tree: Tree,
+    places: Array,
+    offsets: Index,
+    frame: Frame,
     first: int,
     last: int,
     line: LineAtNode,
@@ -204,15 +211,15 @@ def _add_line(
     """
     left, left_gap, right_gap, right = first, first, last, last
     has_left = has_right = False
-    decay = max(rate, 0.0) * tree.step * (tree.places[tree.places.size - 1] if tree.in_log else 1.0)
-    for level in range(tree.offsets.size - 2, -1, -1):
+    decay = max(rate, 0.0) * frame.step * (places[places.size - 1] if frame.in_log else 1.0)
+    for level in range(offsets.size - 2, -1, -1):
         bits = CELL_BITS + RATIO_BITS * level
         low = (first + (1 << bits) - 1) >> bits
         # The last cell may reach beyond the tile, where there is no point to go wrong.
         high = (last + (1 << bits) - 1) >> bits if last == nu.size else last >> bits
         if low >= high or decay * (1 << bits) > MOST_DECAY:
             continue
-        cells = _level(tree, bits, low, high, place, decay)
+        cells = _level(frame, bits, low, high, place, decay)
         gap_low, gap_high = cells.gap_low, cells.gap_high
         if has_right:
             gap_high = min(gap_high, right_gap >> bits)
@@ -220,17 +227,15 @@ def _add_line(
         if has_left:
             gap_low = max(gap_low, left_gap >> bits)
             gap_high = max(gap_high, gap_low)
-        base = tree.offsets[level]
+        base = offsets[level]
         if has_left:
-            _add_cells(sums, tree.places, base, cells.low, left >> bits, cells, line, factor, rate)
+            _add_cells(sums, places, base, cells.low, left >> bits, cells, line, factor, rate)
+        _add_cells(sums, places, base, left_gap >> bits if has_left else cells.low, gap_low, cells, line, factor, rate)
         _add_cells(
-            sums, tree.places, base, left_gap >> bits if has_left else cells.low, gap_low, cells, line, factor, rate
-        )
-        _add_cells(
-            sums, tree.places, base, gap_high, right_gap >> bits if has_right else cells.high, cells, line, factor, rate
+            sums, places, base, gap_high, right_gap >> bits if has_right else cells.high, cells, line, factor, rate
         )
         if has_right:
-            _add_cells(sums, tree.places, base, right >> bits, cells.high, cells, line, factor, rate)
+            _add_cells(sums, places, base, right >> bits, cells.high, cells, line, factor, rate)
         if has_left or cells.low < gap_low:
             has_left, left, left_gap = True, cells.low << bits, gap_low << bits
         if has_right or gap_high < cells.high:

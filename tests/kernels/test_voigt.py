@@ -75,7 +75,7 @@ def test_kernel_against_wofz_over_the_plane(tolerance: float) -> None:
     n = 20_000
     y = 10.0 ** rng.uniform(-30, 5, n)
     limits = regions(tolerance)
-    edges = np.array([region_radii(one, formulas(limits)) for one in y])
+    edges = np.array([region_radii(one, *formulas(limits)) for one in y])
     near_an_edge = edges[np.arange(n), rng.integers(0, 2, n)] * (1.0 + rng.normal(0.0, 1e-3, n))
     x = np.where(rng.random(n) < 0.5, rng.uniform(0.0, 12.0, n), np.abs(near_an_edge))
     found = np.array([kernel(a, b, tolerance) for a, b in zip(x, y, strict=True)])
