@@ -227,15 +227,25 @@ def plan(recipe: Recipe, folder: str | Path = "tables", *, memory: int = 2_000_0
     return make_plan(recipe, load_inputs(recipe, Path(folder), memory=memory, quiet=quiet), Path(folder))
 
 
-def build(recipe: Recipe, folder: str | Path = "tables", *, workers: int | None = None) -> tuple[Path, ...]:
+def build(
+    recipe: Recipe,
+    folder: str | Path = "tables",
+    *,
+    workers: int | None = None,
+    processes: bool = False,
+    memory: int = 2_000_000_000,
+) -> tuple[Path, ...]:
     """Build the tables that a recipe asks for into a folder and return their paths.
 
-    `workers` threads, by default as many as the CPUs allowed; the tables have the same bits for any number.
+    `workers` threads, or processes, by default as many as the CPUs and `memory` (bytes) allow; the tables have the
+    same bits for any number.  What a build that was stopped has finished is kept, and not computed again.
     A table that is there already and was made from the same inputs is kept.  What was assumed and what there is to be
     warned of stands in the table's `checks`.  Raises OpacityError of the kind that fits.
     """
-    from opacity.pipeline.build import build_table
+    from opacity.pipeline.build import Crew, build_table
 
     if workers is not None:
         _check_workers(workers)
-    return (build_table(recipe, Path(folder), workers=workers, quiet=True).table,)
+    _check_flag("processes", processes)
+    crew = Crew(workers, "processes" if processes else "threads")
+    return (build_table(recipe, Path(folder), crew=crew, memory=memory, quiet=True).table,)

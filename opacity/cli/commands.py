@@ -17,6 +17,7 @@ from opacity.cli.lists import check_list, is_list
 from opacity.cli.lists import ingest as ingest
 
 if TYPE_CHECKING:
+    from opacity.pipeline.build import BuildResult
     from opacity.pipeline.plan import Plan
 
 DONE, FAILED = 0, 1
@@ -71,7 +72,9 @@ def _plan_facts(made: Plan) -> list[tuple[str, str]]:
         ("work", f"{made.profile_values:.2g} profile values, about {text.duration(made.seconds)} on one core"),
         ("summed", f"{100.0 * made.by_cells:.0f} % of tiles by cells, the rest point by point"),
         ("accuracy", f"every value within {made.predicted_error:.1e} of the exact sum, predicted"),
-        ("memory", f"up to {text.size(made.memory)} of {text.size(made.memory_available)} available"),
+        ("units", f"{made.units}, of up to {text.counted(made.lines_per_unit, 'line')} each"),
+        ("workers", f"{made.workers}, {text.size(made.memory_per_worker)} each at most"),
+        ("memory", f"up to {text.size(made.memory)} of {text.size(made.memory_available)} allowed"),
         ("disk", f"up to {text.size(made.disk)} of {text.size(made.disk_free)} free"),
     ]
 
@@ -93,17 +96,19 @@ def _warn(warnings: Iterable[str]) -> None:
 def build(arguments: Namespace) -> int:
     """`opacity build RECIPE`: the table, with its checks inside."""
     from opacity.check.result import DIFFERS, CheckResult
-    from opacity.pipeline.build import build_table
+    from opacity.pipeline.build import Crew, build_table
     from opacity.recipe.load import load_recipe
 
     made = build_table(
         load_recipe(arguments.recipe),
         Path(arguments.output),
-        workers=arguments.workers,
+        crew=Crew(arguments.workers, arguments.using, arguments.task, arguments.scheduler),
         memory=arguments.memory,
         quiet=arguments.quiet,
         announce=lambda plan: _warn(plan.warnings),
     )
+    if made.missing:
+        return _tell_of_task(made, arguments)
     figures = made.figures
     if made.reused:
         _warn(figures["warnings"])
@@ -131,6 +136,16 @@ def build(arguments: Namespace) -> int:
         print("a check differs: do not use this table before you know why", file=sys.stderr)
     print(f"table: {made.table} ({nodes}, {text.duration(made.seconds)})")
     return FAILED if failed else DONE
+
+
+def _tell_of_task(made: BuildResult, arguments: Namespace) -> int:
+    """A share of a build is done, and other shares are not."""
+    done = made.units - made.missing
+    if arguments.json:
+        print(text.as_json({"table": None, "units": made.units, "done": done, "seconds": made.seconds}))
+    else:
+        print(f"{done} of {made.units} units done; the table is made when all are, by the last task or `opacity build`")
+    return DONE
 
 
 def _print_results(rows: Iterable[Any], figures: Mapping[str, Any]) -> None:

@@ -83,7 +83,10 @@ def parser() -> argparse.ArgumentParser:
 
     one = command("build", "build the table of a recipe, with its checks inside")
     one.add_argument("recipe", metavar="RECIPE")
-    one.add_argument("--workers", type=_positive, metavar="N", help="threads (default: the CPUs allowed)")
+    one.add_argument("--workers", type=_positive, metavar="N", help="so many side by side (default: the CPUs allowed)")
+    one.add_argument("--using", choices=("threads", "processes"), default="threads", help="what workers are")
+    one.add_argument("--task", type=_task, metavar="K/N", help="only the K-th of N shares, as a task of a batch array")
+    one.add_argument("--scheduler", metavar="ADDR|FILE", help="a dask scheduler's address or file, or local")
     one.add_argument("--quiet", action="store_true", help="only warnings and the last line of the result")
     _add_memory(one)
     _add_shared(one)
@@ -116,7 +119,11 @@ def _add_shared(one: argparse.ArgumentParser) -> None:
 
 def _add_memory(one: argparse.ArgumentParser) -> None:
     one.add_argument(
-        "--memory", type=_bytes, metavar="SIZE", default=2_000_000_000, help="for reading lists (default: 2GB)"
+        "--memory",
+        type=_bytes,
+        metavar="SIZE",
+        default=2_000_000_000,
+        help="for lists and workers (default: 2GB)",
     )
 
 
@@ -132,6 +139,14 @@ def _positive(value: str) -> int:
     if not (value.isdecimal() and len(value) <= 4 and 1 <= int(value) <= 1024):
         raise argparse.ArgumentTypeError(f"expected a whole number, 1 to 1024, found {value!r}")
     return int(value)
+
+
+def _task(value: str) -> tuple[int, int]:
+    match = re.fullmatch(r"(\d{1,6})/(\d{1,6})", value)
+    k, n = (int(match[1]), int(match[2])) if match else (0, 0)
+    if not 1 <= k <= n:
+        raise argparse.ArgumentTypeError(f"expected K/N with K from 1 to N, such as 3/20, found {value!r}")
+    return k, n
 
 
 def _whole(value: str) -> int:
@@ -179,8 +194,13 @@ def _failure(error: BaseException) -> tuple[int, list[str]]:
     if isinstance(error, MemoryError):
         return FAILED, ["not enough memory: use fewer nodes, fewer points or a shorter line list"]
     if isinstance(error, Terminated):
-        return TERMINATED, ["terminated: nothing half-written was left behind; the same command starts again"]
-    return INTERRUPTED, ["interrupted: nothing half-written was left behind"]
+        return TERMINATED, [f"terminated: nothing half-written was left behind; {_kept(error)}"]
+    return INTERRUPTED, [f"interrupted: nothing half-written was left behind; {_kept(error)}"]
+
+
+def _kept(error: BaseException) -> str:
+    """What a stopped command has told of what is done."""
+    return str(error) or "the same command starts again"
 
 
 def _wants_json(words: Sequence[str]) -> bool:
@@ -205,6 +225,9 @@ class _Signals:
     seen: KeyboardInterrupt | None = None
 
     def __call__(self, number: int, frame: FrameType | None) -> NoReturn:
+        if self.seen is not None and number == signal.SIGINT:
+            # Asked twice: what runs is not waited for; what it was writing has no final name.
+            os._exit(INTERRUPTED)
         self.seen = Terminated() if number == signal.SIGTERM else KeyboardInterrupt()
         raise self.seen
 

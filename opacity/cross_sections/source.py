@@ -17,8 +17,8 @@ from opacity.line_list.read import merge
 from opacity.line_store.layout import SAMPLE_EVERY
 from opacity.molecule.broadening import Assumption
 
-LINES_AT_ONCE = 2_000_000
-"""Lines that are prepared at the same time: about 1 GB with everything that is made of them."""
+LINES_AT_ONCE = 1_000_000
+"""Lines that are prepared at the same time: about 400 MB with everything that is made of them."""
 
 
 class LineSource(Protocol):

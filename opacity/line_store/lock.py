@@ -39,7 +39,7 @@ class Lock:
             raise ResourceError(problem(self.path, f"cannot be read ({error.strerror or error})")) from error
         if found != self.text:
             who = "nobody" if found is None else _named(found)
-            what = "this process no longer holds the lock of the line store"
+            what = "this process no longer holds the lock of this folder"
             raise ResourceError(problem(self.path.parent, what, found=who, remedy="the same command starts again"))
 
     def keep(self, stop: threading.Event) -> None:
@@ -61,8 +61,8 @@ _held: set[str] = set()
 
 
 @contextlib.contextmanager
-def locked(folder: Path) -> Iterator[Lock]:
-    """Hold the folder's lock.  Raises ResourceError saying who holds it.
+def locked(folder: Path, what: str = "line store") -> Iterator[Lock]:
+    """Hold the folder's lock; `what` is what is made in it.  Raises ResourceError saying who holds it.
 
     A lock of a process of this host that no longer runs, or one that was not touched for an hour, is taken over.  What
     a holder that was silent for so long has made must not count: it calls `Lock.check` before it makes its work final.
@@ -71,7 +71,7 @@ def locked(folder: Path) -> Iterator[Lock]:
     text = json.dumps({**_this_process(), "token": secrets.token_hex(8)})
     try:
         if not _create(path, text):
-            _take_over(path, text)
+            _take_over(path, text, what)
     except OSError as error:
         raise ResourceError(problem(path, f"cannot be written ({error.strerror or error})")) from error
     lock, stop = Lock(path, text), threading.Event()
@@ -128,10 +128,10 @@ def _create(path: Path, text: str) -> bool:
         own.unlink(missing_ok=True)
 
 
-def _take_over(path: Path, own: str) -> None:
+def _take_over(path: Path, own: str, what: str) -> None:
     text = _text(path)
     if text is not None and not _is_left_behind(path, text):
-        raise _in_use(path, text)
+        raise _in_use(path, text, what)
     # Renamed first: of several that take over, one gets what it looked at, and what another made meanwhile goes back.
     aside = temporary_path(path.parent)
     with contextlib.suppress(FileNotFoundError):
@@ -141,7 +141,7 @@ def _take_over(path: Path, own: str) -> None:
                 os.link(aside, path)
         aside.unlink()
     if not _create(path, own):
-        raise _in_use(path, _text(path) or "")
+        raise _in_use(path, _text(path) or "", what)
 
 
 def _text(path: Path) -> str | None:
@@ -166,9 +166,9 @@ def _named(text: str) -> str:
     return f"process {holder['pid']} on {holder['host']}"
 
 
-def _in_use(path: Path, text: str) -> ResourceError:
+def _in_use(path: Path, text: str, what: str) -> ResourceError:
     remedy = f"wait for it, or remove {path.name} if it no longer runs"
-    return ResourceError(problem(path.parent, f"this line store is being made by {_named(text)}", remedy=remedy))
+    return ResourceError(problem(path.parent, f"this {what} is being made by {_named(text)}", remedy=remedy))
 
 
 def _is_left_behind(path: Path, text: str) -> bool:

@@ -1,53 +1,67 @@
-"""A build: from a recipe to a table whose checks are inside it."""
+"""A build: from a recipe to a table whose checks are inside it, by units that are never done twice."""
 
 from __future__ import annotations
 
+import contextlib
 import json
-import math
 import os
 import platform
+import shutil
 import time
-from collections.abc import Callable
-from concurrent.futures import Executor, ThreadPoolExecutor
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
 from opacity.check.run import run_checks
-from opacity.cross_sections.compute import NodeSum, Tally, add_spectra
-from opacity.cross_sections.prepare import PreparedLines
-from opacity.cross_sections.source import LINES_AT_ONCE, LineSource, as_source, pieces
 from opacity.cross_sections.tolerance import regions
 from opacity.errors import ResourceError, TableError, problem
-from opacity.grids import FloatArray
+from opacity.line_store.lock import locked
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
 from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit, table_name
 from opacity.pipeline.progress import Progress
-from opacity.pipeline.resources import allowed_cpus
 from opacity.pipeline.sources import DEFAULT_MEMORY
+from opacity.pipeline.units import Unit, parted
+from opacity.pipeline.workers import Origin, Work, in_processes, in_threads
 from opacity.recipe.model import Recipe
+from opacity.tables.assemble import Assembly, assemble_table, stored_type_of
 from opacity.tables.atomic import remove_leftovers, write_atomically
-from opacity.tables.layout import BLOCK
-from opacity.tables.model import CrossSectionTable
+from opacity.tables.model import TableFrame
 from opacity.tables.read import open_table
-from opacity.tables.write import check_table, write_cross_section_table
+from opacity.tables.shard import Shard, is_whole, read_shard
 
-STRENGTHS_AT_ONCE = 16_000_000
-"""Strengths (lines times temperatures) that are made in one pass over the lines: 128 MB, and as much for the widths."""
+
+@dataclass(frozen=True)
+class Crew:
+    """Who computes: `workers` (None: the CPUs allowed) "threads" or "processes" of this machine, or a cluster's.
+
+    `task` (k, n) is the k-th of n shares of the units, as the tasks of a batch array take them; `scheduler` the
+    address or file of a dask scheduler, or "local" for one started here.
+    """
+
+    workers: int | None = None
+    kind: str = "threads"
+    task: tuple[int, int] | None = None
+    scheduler: str | None = None
 
 
 @dataclass(frozen=True)
 class BuildResult:
-    """What a build made: the table, the log beside it, the checks, and the plan, None for a table that was kept."""
+    """What a build made: the table, the log beside it, the checks, and the plan, None for a table that was kept.
+
+    `missing` units are left to other tasks; until they are done there is no table and there are no checks.
+    """
 
     table: Path
     log: Path
     plan: Plan | None
     figures: dict[str, Any]
     seconds: float
+    units: int = 0
+    missing: int = 0
 
     @property
     def reused(self) -> bool:
@@ -59,7 +73,7 @@ def build_table(
     recipe: Recipe,
     folder: Path,
     *,
-    workers: int | None = None,
+    crew: Crew | None = None,
     memory: int = DEFAULT_MEMORY,
     quiet: bool = False,
     announce: Callable[[Plan], None] = lambda plan: None,
@@ -67,10 +81,11 @@ def build_table(
     """Build a recipe's cross-section table into a folder, which is made if it is missing.
 
     A table that is there already and was built from the very same inputs is verified and kept, without a line being
-    read.  `announce` gets the plan before the work starts.  Raises OpacityError of the kind that fits; nothing
-    half-written ever has the table's name.
+    read; finished units of a build that was stopped are kept too.  `announce` gets the plan before the work starts.
+    Raises OpacityError of the kind that fits; nothing half-written ever has a final name.
     """
     started = time.monotonic()
+    crew = crew or Crew()
     path, log = folder / table_name(recipe), folder / f"{recipe.name}.log.json"
     remove_leftovers(folder)
     origin = fingerprint(recipe)
@@ -78,31 +93,142 @@ def build_table(
     if kept is not None:
         return BuildResult(path, log, None, kept, time.monotonic() - started)
     inputs = load_inputs(recipe, folder, origin, memory, quiet)
-    plan = make_plan(recipe, inputs, folder)
+    plan = make_plan(recipe, inputs, folder, crew.workers, memory, crew.kind == "processes")
     announce(plan)
     refuse_what_cannot_fit(plan)
+    job = _Job(recipe, inputs, plan, folder, path, memory, quiet)
     _make_folder(folder)
     _refuse_folders(path, log)
-    count = allowed_cpus() if workers is None else workers
-    spectra = compute_spectra(recipe, inputs.lines, count, quiet)
-    table = _checked_table(recipe, inputs, spectra.sigma, path, quiet)
-    table = replace(
-        table, checks={**table.checks, "warnings": list(plan.warnings), "summation": _summation(recipe, spectra)}
-    )
-    write_cross_section_table(path, table)
+    _make_folder(job.shards)
+    units = parted(recipe, inputs.lines, inputs.sha256)
+    try:
+        figures, missing = (_build_alone if crew.task is None else _build_task)(job, units, crew)
+    finally:
+        with contextlib.suppress(OSError):
+            job.shards.rmdir()  # unless shards are kept in it
     seconds = time.monotonic() - started
-    _write_log(log, recipe, seconds, count)
-    return BuildResult(path, log, plan, table.checks, seconds)
+    if not missing:
+        _write_log(log, recipe, seconds, plan.workers)
+    return BuildResult(path, log, plan, figures, seconds, len(units), missing)
 
 
-def _summation(recipe: Recipe, spectra: Spectra) -> dict[str, Any]:
+@dataclass(frozen=True)
+class _Job:
+    recipe: Recipe
+    inputs: Inputs
+    plan: Plan
+    folder: Path
+    path: Path
+    memory: int
+    quiet: bool
+
+    @property
+    def shards(self) -> Path:
+        return self.folder / f"{self.recipe.name}.shards"
+
+    @property
+    def work(self) -> Work:
+        return Work(self.recipe, self.inputs.lines, self.shards)
+
+    @property
+    def origin(self) -> Origin:
+        return Origin(self.recipe.path, self.folder, self.shards, self.inputs.sha256, self.memory)
+
+
+def _build_alone(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[str, Any], int]:
+    with locked(job.shards, "table") as lock:
+        _compute(job, units, crew)
+        figures = _assemble(job, units, lock.check)
+        shutil.rmtree(job.shards, ignore_errors=True)
+    shutil.rmtree(job.shards, ignore_errors=True)
+    return figures, 0
+
+
+def _build_task(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[str, Any], int]:
+    """A share of the units; whoever finds all of them done puts the table together."""
+    assert crew.task is not None
+    k, n = crew.task
+    remove_leftovers(job.shards)
+    _compute(job, tuple(unit for unit in units if unit.number % n == k - 1), crew)
+    missing = sum(not unit.path(job.shards).exists() for unit in units)
+    if missing:
+        return {}, missing
+    return _build_alone(job, units, crew)
+
+
+def _compute(job: _Job, units: tuple[Unit, ...], crew: Crew) -> None:
+    """Compute the units whose shards are not there."""
+    left = [unit for unit in units if not is_whole(unit.path(job.shards))]
+    nodes = sum(len(unit.rows) for unit in left)
+    with Progress("spectra", nodes, "spectra of windows", job.quiet) as progress:
+
+        def finished(unit: Unit) -> None:
+            progress.step(len(unit.rows))
+
+        try:
+            if crew.scheduler is not None:
+                from opacity.pipeline.cluster import on_cluster
+
+                on_cluster(crew.scheduler, job.origin, left, job.plan.workers, finished)
+            elif crew.kind == "processes":
+                in_processes(job.origin, left, job.plan.workers, finished)
+            else:
+                in_threads(job.work, left, job.plan.workers, finished)
+        except KeyboardInterrupt as stop:
+            done = sum(unit.path(job.shards).exists() for unit in units)
+            stop.args = (f"{done} of {len(units)} units are done and kept; the same command goes on",)
+            raise
+
+
+def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]) -> dict[str, Any]:
+    """The table from all shards; its checks."""
+    recipe, grid = job.recipe, job.recipe.grid
+    nodes = grid.node_list()
+    extremes, tiles = [], np.zeros((len(nodes), 2), dtype=np.int64)
+    for shard in _shards(job, units):
+        extremes.append((shard.smallest, shard.largest))
+        tiles[list(shard.rows)] += np.array(shard.notes["tiles"])
+    axes = (grid.temperature, grid.pressure) if grid.nodes is None else zip(*grid.nodes, strict=True)
+    temperature, pressure = (np.array(axis, dtype=np.float64) for axis in axes)
+    frame = TableFrame(
+        title=f"Absorption cross-section of {recipe.molecule.name} ({recipe.molecule.formula})",
+        formula=recipe.molecule.formula,
+        temperature=temperature,
+        pressure=pressure,
+        wavenumber=grid.wavenumber,
+        recipe=recipe.text,
+        provenance=job.inputs.provenance,
+        profile=grid.nodes is not None,
+    )
+
+    def check(table: Assembly) -> dict[str, Any]:
+        with Progress("checks", len(nodes), "nodes", job.quiet) as progress:
+            report = run_checks(table, recipe, job.inputs.lines, job.inputs.seed, progress.step)
+        still_ours()
+        return {**report.figures, "warnings": list(job.plan.warnings), "summation": _summation(recipe, tiles)}
+
+    return assemble_table(job.path, frame, stored_type_of(extremes), _shards(job, units), check)
+
+
+def _shards(job: _Job, units: tuple[Unit, ...]) -> Iterator[Shard]:
+    """All shards in order; one that was damaged since is computed again."""
+    for unit in units:
+        try:
+            shard = read_shard(unit.path(job.shards))
+        except TableError:
+            job.work.do(unit)
+            shard = read_shard(unit.path(job.shards))
+        yield shard
+
+
+def _summation(recipe: Recipe, tiles: np.ndarray[Any, Any]) -> dict[str, Any]:
     """How each node was summed, tile by tile, and the largest error that is predicted of it."""
     profile = recipe.profile
     return {
         "predicted_error": regions(profile.tolerance, profile.plinth).predicted_error,
         "nodes": [
-            {"temperature": t, "pressure": p, "tiles_by_cells": one.by_cells, "tiles_by_points": one.by_points}
-            for (t, p), one in zip(recipe.grid.node_list(), spectra.tallies, strict=True)
+            {"temperature": t, "pressure": p, "tiles_by_cells": int(cells), "tiles_by_points": int(points)}
+            for (t, p), (cells, points) in zip(recipe.grid.node_list(), tiles, strict=True)
         ],
     }
 
@@ -138,127 +264,6 @@ def _refuse_folders(*paths: Path) -> None:
     for path in paths:
         if path.is_dir():
             raise ResourceError(problem(path, "is a folder", expected="a file or nothing", remedy="move it away"))
-
-
-@dataclass(frozen=True)
-class Spectra:
-    """All spectra of a recipe, (n_T, n_P, n_nu) or (n_node, n_nu), and how the tiles of each node were summed."""
-
-    sigma: FloatArray
-    tallies: tuple[Tally, ...]
-
-
-def compute_spectra(recipe: Recipe, lines: LineSource | PreparedLines, workers: int, quiet: bool) -> Spectra:
-    """All spectra of a recipe."""
-    grid, source = recipe.grid, as_source(lines)
-    nodes = grid.node_list()
-    try:
-        sigma = np.empty((len(nodes), grid.wavenumber.size))
-    except MemoryError as error:
-        raise ResourceError(
-            problem(recipe.path, "the spectra do not fit in memory", remedy="use fewer nodes or points")
-        ) from error
-    executor = ThreadPoolExecutor(workers) if workers > 1 else None
-    tallies = [Tally() for _ in nodes]
-    try:
-        parts = windows(grid.wavenumber, _margin(recipe), source)
-        with Progress("spectra", len(nodes) * len(parts), "spectra of windows", quiet) as progress:
-            for part in parts:
-                _fill(sigma, part, recipe, source, tallies, executor, progress)
-    finally:
-        if executor is not None:
-            executor.shutdown(wait=True, cancel_futures=True)
-    shape = (len(nodes),) if grid.nodes is not None else (len(grid.temperature), len(grid.pressure))
-    return Spectra(sigma.reshape(*shape, grid.wavenumber.size), tuple(tallies))
-
-
-def windows(wavenumber: FloatArray, margin: float, lines: LineSource) -> list[slice]:
-    """Stretches of the grid, multiples of 16384 points, so short that the lines in reach of each can be held at once.
-
-    The shortest are one block of 16384 points, however many lines reach it.
-    """
-    found, waiting = [], [(0, wavenumber.size)]
-    while waiting:
-        start, stop = waiting.pop()
-        blocks = math.ceil((stop - start) / BLOCK)
-        lower, upper = float(wavenumber[start]) - margin, float(wavenumber[stop - 1]) + margin
-        if blocks == 1 or lines.count(lower, upper) <= LINES_AT_ONCE:
-            found.append(slice(start, stop))
-        else:
-            middle = start + BLOCK * (blocks // 2)
-            waiting += [(middle, stop), (start, middle)]
-    return found
-
-
-def _fill(
-    sigma: FloatArray,
-    part: slice,
-    recipe: Recipe,
-    source: LineSource,
-    tallies: list[Tally],
-    executor: Executor | None,
-    progress: Progress,
-) -> None:
-    profile = recipe.profile
-    nu = np.ascontiguousarray(recipe.grid.wavenumber[part])
-    margin, rows = _margin(recipe), _rows_by_temperature(recipe)
-    limits = regions(profile.tolerance, profile.plinth)
-    sigma[:, part] = 0.0
-    for lines in pieces(source, float(nu[0]) - margin, float(nu[-1]) + margin):
-        block = max(STRENGTHS_AT_ONCE // max(len(lines), 1), 1)
-        for start in range(0, len(rows), block):
-            temperatures = list(rows)[start : start + block]
-            here: list[int] = []
-            nodes: list[NodeSum] = []
-            for temperature, strength in zip(temperatures, lines.strengths_at(temperatures), strict=True):
-                at_temperature = lines.at_temperature(temperature, strength)
-                for row, pressure in rows[temperature]:
-                    here.append(row)
-                    nodes.append(NodeSum(at_temperature, pressure, profile.cutoff.at(pressure)))
-
-            def done(number: int, tally: Tally, here: list[int] = here) -> None:
-                tallies[here[number]] = tallies[here[number]].plus(tally)
-                progress.step()
-
-            sums = [sigma[row, part] for row in here]
-            add_spectra(sums, nodes, nu, limits, profile.plinth, profile.chi_table, executor, done=done)
-
-
-def _rows_by_temperature(recipe: Recipe) -> dict[float, list[tuple[int, float]]]:
-    """Row and pressure of the nodes at each temperature."""
-    found: dict[float, list[tuple[int, float]]] = {}
-    for row, (temperature, pressure) in enumerate(recipe.grid.node_list()):
-        found.setdefault(temperature, []).append((row, pressure))
-    return found
-
-
-def _margin(recipe: Recipe) -> float:
-    return max(step.cutoff for step in recipe.profile.cutoff.steps) + 1e-6
-
-
-def _checked_table(recipe: Recipe, inputs: Inputs, sigma: FloatArray, path: Path, quiet: bool) -> CrossSectionTable:
-    """The table with its checks, made of the values as they will be stored."""
-    grid = recipe.grid
-    nodes = grid.nodes
-    axes = (grid.temperature, grid.pressure) if nodes is None else ([t for t, _ in nodes], [p for _, p in nodes])
-    table = CrossSectionTable(
-        title=f"Absorption cross-section of {recipe.molecule.name} ({recipe.molecule.formula})",
-        formula=recipe.molecule.formula,
-        temperature=np.array(axes[0], dtype=np.float64),
-        pressure=np.array(axes[1], dtype=np.float64),
-        wavenumber=grid.wavenumber,
-        cross_section=sigma,
-        recipe=recipe.text,
-        provenance=inputs.provenance,
-        checks={},
-        profile=nodes is not None,
-    )
-    if check_table(path, table) == np.dtype("<f4"):
-        for node in np.ndindex(sigma.shape[:-1]):
-            sigma[node] = sigma[node].astype(np.float32)
-    with Progress("checks", len(grid.node_list()), "nodes", quiet) as progress:
-        report = run_checks(table, recipe, inputs.lines, inputs.seed, progress.step)
-    return replace(table, checks=report.figures)
 
 
 def _write_log(log: Path, recipe: Recipe, seconds: float, workers: int) -> None:

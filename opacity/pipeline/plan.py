@@ -11,7 +11,6 @@ import numpy as np
 
 from opacity.check.profile_share import sampling_risk
 from opacity.chi_factors import CHI_FACTORS
-from opacity.cross_sections.planner import Prediction, predict
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource
 from opacity.cross_sections.tolerance import regions
@@ -19,24 +18,11 @@ from opacity.errors import ResourceError, problem
 from opacity.kernels.line_width import voigt_half_width
 from opacity.molecule.partition_function import STEP, PartitionFunction, editions_differ
 from opacity.pipeline.inputs import Inputs, refuse_invalid_temperatures
-from opacity.pipeline.resources import available_memory, free_disk
+from opacity.pipeline.needs import amount_of, needs_of, seconds_besides, workers_that_fit
+from opacity.pipeline.resources import allowed_cpus, available_memory, free_disk
+from opacity.pipeline.sources import DEFAULT_MEMORY
+from opacity.pipeline.units import parted
 from opacity.recipe.model import Recipe
-
-# For the estimates of time and memory only; measured (DEVELOPERS.md).
-VALUES_STORED_PER_SECOND = 5e6
-"""Values that are compressed, hashed, written and read back in a second."""
-LINES_CHECKED_PER_SECOND = 1e6
-"""Lines of one node that closure goes through in a second."""
-AUDIT_SECONDS = 0.015
-"""Time to recompute the points of one node or cell exactly."""
-MOST_AUDITED = 24
-BYTES_A_RECORD = 600
-"""Memory that reading a record takes at its peak."""
-BYTES_A_VALUE = 8
-"""A value in memory and, where four bytes cannot hold the table's range, on disk."""
-IMAGE_COPIES = 2
-"""The table's image, and as much again while it is handed over."""
-PROGRAM_BYTES = 400_000_000
 
 AT_RISK = 0.01
 LOOKED_AT = 20
@@ -69,12 +55,16 @@ class Plan:
     nodes: int
     points: int
     lines: int
+    units: int
+    lines_per_unit: int
+    workers: int
     profile_values: float
     by_cells: float
     predicted_error: float
     seconds: float
     memory: int
-    memory_available: int | None
+    memory_per_worker: int
+    memory_available: int
     disk: int
     disk_free: int | None
     obstacles: tuple[str, ...]
@@ -88,8 +78,15 @@ class Plan:
         return asdict(self)
 
 
-def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
-    """Plan a build into a folder.
+def make_plan(
+    recipe: Recipe,
+    inputs: Inputs,
+    folder: Path,
+    workers: int | None = None,
+    memory: int = DEFAULT_MEMORY,
+    processes: bool = False,
+) -> Plan:
+    """Plan a build into a folder by so many workers (None: the CPUs allowed), fewer where memory (bytes) asks for it.
 
     Raises RecipeError where a partition function is not valid at the grid's temperatures.
     """
@@ -99,39 +96,39 @@ def make_plan(recipe: Recipe, inputs: Inputs, folder: Path) -> Plan:
     temperatures = sorted({t for t, _ in node_list})
     points, nodes = grid.wavenumber.size, len(node_list)
     coarse = _coarse_nodes(recipe, lines)
-    values, sums, cells = _summation(recipe, lines)
-    limits = regions(recipe.profile.tolerance, recipe.profile.plinth)
-    table_bytes = nodes * points * BYTES_A_VALUE
-    memory = table_bytes * (1 + IMAGE_COPIES) + min(lines.ledger.read, LINES_AT_ONCE) * BYTES_A_RECORD + PROGRAM_BYTES
-    disk = table_bytes + 1_000_000
-    memory_available, disk_free = available_memory(), free_disk(folder)
-    needs = (("memory", memory, memory_available), ("disk", disk, disk_free))
+    units = parted(recipe, lines, inputs.sha256)
+    wanted = allowed_cpus() if workers is None else workers
+    available, disk_free = available_memory(), free_disk(folder)
+    budget = memory if available is None else min(memory, available)
+    count = max(min(wanted, workers_that_fit(recipe, lines, units, budget, processes), len(units) or 1), 1)
+    needs = needs_of(recipe, lines, units, count, processes)
+    amount = amount_of(recipe, lines)
+    fitted = [f"memory allows {count} of {wanted} workers"] if count < min(wanted, len(units)) else []
+    limits = (("memory", needs.memory, budget), ("disk", needs.disk, disk_free))
     return Plan(
         recipe=str(recipe.path),
         table=str(folder / table_name(recipe)),
         nodes=nodes,
         points=points,
         lines=len(lines),
-        profile_values=values,
-        by_cells=cells,
-        predicted_error=limits.predicted_error,
-        seconds=sums + _seconds(nodes, points, len(lines)),
-        memory=memory,
-        memory_available=memory_available,
-        disk=disk,
+        units=len(units),
+        lines_per_unit=needs.lines_per_unit,
+        workers=count,
+        profile_values=amount.values,
+        by_cells=amount.by_cells,
+        predicted_error=regions(recipe.profile.tolerance, recipe.profile.plinth).predicted_error,
+        seconds=amount.seconds + seconds_besides(nodes, points, len(lines)),
+        memory=needs.memory,
+        memory_per_worker=needs.memory_per_worker,
+        memory_available=budget,
+        disk=needs.disk,
         disk_free=disk_free,
-        obstacles=tuple(_obstacle(recipe, *need) for need in needs if need[2] is not None and need[1] > need[2]),
+        obstacles=tuple(_obstacle(recipe, *one) for one in limits if one[2] is not None and one[1] > one[2]),
         coarse_nodes=tuple(coarse),
-        warnings=(*inputs.warnings, *_warnings(recipe, inputs, coarse, temperatures)),
+        warnings=(*inputs.warnings, *_warnings(recipe, inputs, coarse, temperatures), *fitted),
         assumptions=tuple((one.what, one.lines) for one in lines.assumptions),
         ledger=lines.ledger.as_dict(),
     )
-
-
-def _seconds(nodes: int, points: int, lines: int) -> float:
-    """Time of checks and writing on one core."""
-    checks = nodes * lines / LINES_CHECKED_PER_SECOND + min(nodes, MOST_AUDITED) * AUDIT_SECONDS
-    return nodes * points / VALUES_STORED_PER_SECOND + checks
 
 
 def table_name(recipe: Recipe) -> str:
@@ -146,7 +143,7 @@ def _obstacle(recipe: Recipe, what: str, needed: int, free: int | None) -> str:
         f"the build does not fit in {what}",
         expected=f"at most {(free or 0) / 1e6:.4g} MB",
         found=f"{needed / 1e6:.4g} MB for {nodes} x {points} values",
-        remedy="use fewer nodes, fewer points or a larger machine",
+        remedy="allow more with --memory, or use a larger machine" if what == "memory" else "make room on the disk",
     )
 
 
@@ -154,24 +151,6 @@ def refuse_what_cannot_fit(plan: Plan) -> None:
     """Raise ResourceError where the plan has found an obstacle."""
     if plan.obstacles:
         raise ResourceError("\n".join(plan.obstacles))
-
-
-def _summation(recipe: Recipe, source: LineSource) -> tuple[float, float, float]:
-    """Profile values that the spectra stand for, seconds on one core, and the share of tiles summed by cells."""
-    nu = recipe.grid.wavenumber
-    places = source.sample()
-    share = len(source) / max(places.size, 1)
-    values, seconds, cells, tiles = 0.0, 0.0, 0, 0
-    known: dict[float, tuple[float, Prediction]] = {}
-    for _, pressure in recipe.grid.node_list():
-        cutoff = recipe.profile.cutoff.at(pressure)
-        if cutoff not in known:
-            low, high = np.searchsorted(nu, places - cutoff), np.searchsorted(nu, places + cutoff)
-            known[cutoff] = float(np.sum(high - low)) * share, predict(nu, cutoff, places, share)
-        count, one = known[cutoff]
-        values, seconds = values + count, seconds + one.seconds
-        cells, tiles = cells + one.by_cells, tiles + one.tiles
-    return values, seconds, cells / max(tiles, 1)
 
 
 def _coarse_nodes(recipe: Recipe, source: LineSource) -> list[NodeResolution]:

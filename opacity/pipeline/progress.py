@@ -40,11 +40,11 @@ class Progress(Bar):
         self.stage, self.total, self.unit = stage, total, unit
         self.done = 0
 
-    def step(self) -> None:
-        """One step is done."""
-        self.done += 1
+    def step(self, steps: int = 1) -> None:
+        """One step is done, or several."""
+        self.done += steps
         if self._bar is not None:
-            self._bar.update()
+            self._bar.update(steps)
         elif not self._quiet:
             self._print_line()
 

@@ -12,6 +12,7 @@ import secrets
 import time
 from collections.abc import Callable, Iterator
 from pathlib import Path
+from typing import Any
 
 from opacity.errors import InputError, ResourceError, problem
 
@@ -42,21 +43,122 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
     the file system refuses, InputError for a path that can't be one.
     """
     path = Path(path)
+    with renamed_when_done(path) as temporary:
+        _write_synced(temporary, data)
+        _compare(temporary, data, path)
+        if check is not None:
+            check(temporary)
+    return path
+
+
+@contextlib.contextmanager
+def renamed_when_done(path: Path) -> Iterator[Path]:
+    """A temporary name beside `path`; what was written to it and synced inside the `with` becomes `path` at its end.
+
+    On any failure it is removed.  Raises ResourceError for what the file system refuses, InputError for a path that
+    can't be one.
+    """
     if "\0" in str(path) or path.name in ("", ".."):
         raise InputError(problem("path", "not the name of a file", found=repr(str(path))))
     temporary = temporary_path(path.parent)
     with _as_resource_error(path):
         try:
-            _write_synced(temporary, data)
-            _compare(temporary, data, path)
-            if check is not None:
-                check(temporary)
+            yield temporary
             os.replace(temporary, path)
         finally:
             with contextlib.suppress(FileNotFoundError, NotADirectoryError):
                 os.unlink(temporary)
         _sync_folder(path.parent)
-    return path
+
+
+class CarefulFile:
+    """A file that HDF5 writes through (as h5py's `fileobj` driver takes it) and that remembers the first failure.
+
+    HDF5 that cannot write what it holds when it is closed takes the process down.  So after a failure, such as a full
+    disk, whatever is still written is passed over, and whoever made the file asks `failure` before it counts.
+    """
+
+    def __init__(self, path: Path) -> None:
+        flags = os.O_RDWR | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0)
+        self._descriptor = os.open(path, flags, 0o666)
+        self._position = 0
+        self.failure: OSError | None = None
+
+    def write(self, data: Any) -> int:
+        """Write at the position."""
+        rest = memoryview(data).cast("B")
+        size = len(rest)
+        while rest and self.failure is None:
+            try:
+                os.lseek(self._descriptor, self._position, os.SEEK_SET)
+                written = os.write(self._descriptor, rest[:_PIECE])
+            except OSError as error:
+                self.failure = error
+                break
+            self._position += written
+            rest = rest[written:]
+        self._position += len(rest)
+        return size
+
+    def readinto(self, buffer: Any) -> int:
+        """Fill a buffer from the position; beyond the end with zeros."""
+        view = memoryview(buffer).cast("B")
+        os.lseek(self._descriptor, self._position, os.SEEK_SET)
+        done = 0
+        while done < len(view) and (data := os.read(self._descriptor, len(view) - done)):
+            view[done : done + len(data)] = data
+            done += len(data)
+        view[done:] = bytes(len(view) - done)
+        self._position += len(view)
+        return len(view)
+
+    def read(self, size: int = -1) -> bytes:
+        """Bytes from the position."""
+        wanted = os.fstat(self._descriptor).st_size - self._position if size < 0 else size
+        buffer = bytearray(max(wanted, 0))
+        self.readinto(buffer)
+        return bytes(buffer)
+
+    def seek(self, offset: int, whence: int = os.SEEK_SET) -> int:
+        """Set the position."""
+        start = {os.SEEK_SET: 0, os.SEEK_CUR: self._position, os.SEEK_END: os.fstat(self._descriptor).st_size}
+        self._position = start[whence] + offset
+        return self._position
+
+    def tell(self) -> int:
+        """The position."""
+        return self._position
+
+    def truncate(self, size: int | None = None) -> int:
+        """Set the file's length."""
+        length = self._position if size is None else size
+        if self.failure is None:
+            try:
+                os.ftruncate(self._descriptor, length)
+            except OSError as error:
+                self.failure = error
+        return length
+
+    def flush(self) -> None:
+        """Nothing is held back."""
+
+    def raise_failure(self) -> None:
+        """Raise the first failure, if there was one."""
+        if self.failure is not None:
+            raise self.failure
+
+    def finish(self) -> None:
+        """Make what was written last, and close.  Raises OSError for the first failure."""
+        self.raise_failure()
+        os.fsync(self._descriptor)
+        _drop_cached_pages(self._descriptor)
+        self.close()
+
+    def close(self) -> None:
+        """Close the file."""
+        if self._descriptor >= 0:
+            os.close(self._descriptor)
+            self._descriptor = -1
 
 
 def temporary_path(folder: Path) -> Path:

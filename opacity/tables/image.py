@@ -12,7 +12,8 @@ from numpy.typing import NDArray
 
 from opacity.provenance import VERSION
 from opacity.tables import layout
-from opacity.tables.model import CrossSectionTable
+from opacity.tables.blocks import pack_block
+from opacity.tables.model import CrossSectionTable, TableFrame
 
 _GROWTH = 1 << 22
 _DIMENSION_ONLY = "This is a netCDF dimension but not a netCDF variable. {:9d}"
@@ -21,16 +22,38 @@ _DIMENSION_ONLY = "This is a netCDF dimension but not a netCDF variable. {:9d}"
 
 def table_image(table: CrossSectionTable, dtype: np.dtype[Any]) -> bytes:
     """The HDF5 file of `table`, with the cross-section stored as `dtype` (f4 or f8)."""
+    frame = table.frame
     with h5py.File(
         "image", "w", driver="core", backing_store=False, block_size=_GROWTH, libver=layout.LIBVER, track_order=True
     ) as file:
-        _set_attributes(file, _global_attributes(table))
-        _write_axes(file, table)
-        _write_cross_section(file, table, dtype)
-        for name, text in _texts(table).items():
-            _write_text(file, name, text)
+        dataset = write_frame(file, frame, dtype)
+        write_hashes(file, _fill(dataset, table, dtype), frame.profile)
+        write_texts(file, frame, table.checks)
         file.flush()
         return bytes(file.id.get_file_image())
+
+
+def write_frame(file: Any, frame: TableFrame, dtype: np.dtype[Any]) -> Any:
+    """Attributes and axes, and the dataset of the cross-section, still without values, which is returned."""
+    _set_attributes(file, _global_attributes(frame))
+    _write_axes(file, frame)
+    return _create_cross_section(file, frame, dtype)
+
+
+def write_hashes(file: Any, hashes: NDArray[np.bytes_], profile: bool) -> None:
+    """The sha256 of every block as characters, (..., n_block, 64)."""
+    _add_dimension(file, "block", hashes.shape[-2])
+    _add_dimension(file, "hex_digit", layout.HEX_DIGITS)
+    dataset = file.create_dataset(layout.HASHES, data=hashes, track_order=True)
+    _set_attributes(dataset, layout.ATTRIBUTES[layout.HASHES])
+    _attach(file, dataset, (*layout.node_dimensions(profile), "block", "hex_digit"))
+
+
+def write_texts(file: Any, frame: TableFrame, checks: Mapping[str, Any]) -> None:
+    """Recipe, provenance and checks."""
+    texts = {"recipe": frame.recipe, "provenance": as_json(frame.provenance), "checks": as_json(checks)}
+    for name, text in texts.items():
+        _write_text(file, name, text)
 
 
 def node_indices(table: CrossSectionTable) -> Iterator[tuple[int, ...]]:
@@ -43,11 +66,7 @@ def as_json(value: Mapping[str, Any]) -> str:
     return json.dumps(value, sort_keys=True, indent=1, ensure_ascii=False, allow_nan=False)
 
 
-def _texts(table: CrossSectionTable) -> dict[str, str]:
-    return {"recipe": table.recipe, "provenance": as_json(table.provenance), "checks": as_json(table.checks)}
-
-
-def _global_attributes(table: CrossSectionTable) -> dict[str, Any]:
+def _global_attributes(table: TableFrame) -> dict[str, Any]:
     return {
         **layout.GLOBAL_ATTRIBUTES,
         "title": table.title,
@@ -72,7 +91,7 @@ def _fixed(text: str) -> Any:
     return np.array(data, dtype=h5py.string_dtype("utf-8", len(data)))
 
 
-def _write_axes(file: Any, table: CrossSectionTable) -> None:
+def _write_axes(file: Any, table: TableFrame) -> None:
     if table.profile:
         _add_dimension(file, "node", table.temperature.size)
     for name in layout.AXES:
@@ -98,8 +117,8 @@ def _attach(file: Any, dataset: Any, dimensions: tuple[str, ...]) -> None:
         dataset.dims[position].attach_scale(file[name])
 
 
-def _write_cross_section(file: Any, table: CrossSectionTable, dtype: np.dtype[Any]) -> None:
-    shape = table.cross_section.shape
+def _create_cross_section(file: Any, table: TableFrame, dtype: np.dtype[Any]) -> Any:
+    shape = table.shape
     dataset = file.create_dataset(
         layout.CROSS_SECTION,
         shape=shape,
@@ -117,7 +136,7 @@ def _write_cross_section(file: Any, table: CrossSectionTable, dtype: np.dtype[An
     _set_attributes(dataset, {**attributes, "_FillValue": np.full(1, np.nan, dtype)})
     dimensions = layout.node_dimensions(table.profile)
     _attach(file, dataset, (*dimensions, "wavenumber"))
-    _write_hashes(file, _fill(dataset, table, dtype), dimensions)
+    return dataset
 
 
 def _fill(dataset: Any, table: CrossSectionTable, dtype: np.dtype[Any]) -> NDArray[np.bytes_]:
@@ -128,21 +147,14 @@ def _fill(dataset: Any, table: CrossSectionTable, dtype: np.dtype[Any]) -> NDArr
     for node in node_indices(table):
         # Adding 0 turns a negative zero into the plain one.
         spectrum = np.add(table.cross_section[node], 0.0).astype(dtype)
-        dataset[node] = spectrum
         for number, block in enumerate(blocks):
-            hashes[(*node, number)] = _characters(layout.sha256_of(spectrum[block]))
+            dataset.id.write_direct_chunk((*node, block.start), pack_block(spectrum[block], dataset.chunks[-1]))
+            hashes[(*node, number)] = characters(layout.sha256_of(spectrum[block]))
     return hashes
 
 
-def _write_hashes(file: Any, hashes: NDArray[np.bytes_], dimensions: tuple[str, ...]) -> None:
-    _add_dimension(file, "block", hashes.shape[-2])
-    _add_dimension(file, "hex_digit", layout.HEX_DIGITS)
-    dataset = file.create_dataset(layout.HASHES, data=hashes, track_order=True)
-    _set_attributes(dataset, layout.ATTRIBUTES[layout.HASHES])
-    _attach(file, dataset, (*dimensions, "block", "hex_digit"))
-
-
-def _characters(text: str) -> NDArray[np.bytes_]:
+def characters(text: str) -> NDArray[np.bytes_]:
+    """Text as single bytes, (n,)."""
     return np.frombuffer(text.encode("utf-8"), dtype="S1")
 
 
@@ -151,9 +163,9 @@ def _write_text(file: Any, name: str, text: str) -> None:
 
     An empty text is one NUL, because netCDF takes a dimension of size 0 for an unlimited one.
     """
-    characters = _characters(text or "\0")
-    _add_dimension(file, f"{name}_length", characters.size)
-    dataset = file.create_dataset(name, data=characters, track_order=True)
-    attributes = {**layout.ATTRIBUTES[name], "_Encoding": "utf-8", "sha256": layout.sha256_of(characters)}
+    letters = characters(text or "\0")
+    _add_dimension(file, f"{name}_length", letters.size)
+    dataset = file.create_dataset(name, data=letters, track_order=True)
+    attributes = {**layout.ATTRIBUTES[name], "_Encoding": "utf-8", "sha256": layout.sha256_of(letters)}
     _set_attributes(dataset, attributes)
     _attach(file, dataset, (f"{name}_length",))

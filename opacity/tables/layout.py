@@ -93,6 +93,11 @@ def spectra_shape(temperatures: int, pressures: int, profile: bool) -> tuple[int
     return (temperatures,) if profile else (temperatures, pressures)
 
 
+def stored_type(smallest: float, largest: float) -> np.dtype[Any]:
+    """The type of values from the smallest that is not 0 to the largest: f4 where it keeps its full precision."""
+    return np.dtype("<f4" if smallest > F4_SMALLEST and largest < F4_LARGEST else "<f8")
+
+
 def block_count(points: int) -> int:
     """Blocks in a spectrum of `points` wavenumbers."""
     return -(-points // BLOCK)

@@ -12,6 +12,26 @@ from opacity.grids import FloatArray
 
 
 @dataclass(frozen=True)
+class TableFrame:
+    """A table without its values and checks; fields as those of `CrossSectionTable`."""
+
+    title: str
+    formula: str
+    temperature: FloatArray
+    pressure: FloatArray
+    wavenumber: FloatArray
+    recipe: str
+    provenance: dict[str, Any]
+    profile: bool = False
+
+    @property
+    def shape(self) -> tuple[int, ...]:
+        """Shape of the cross-section."""
+        sizes = self.temperature.size, self.pressure.size
+        return ((sizes[0],) if self.profile else sizes) + (self.wavenumber.size,)
+
+
+@dataclass(frozen=True)
 class CrossSectionTable:
     """Everything that goes into `<name>.cross-section.h5`.
 
@@ -31,6 +51,12 @@ class CrossSectionTable:
     provenance: dict[str, Any]
     checks: dict[str, Any]
     profile: bool = False
+
+    @property
+    def frame(self) -> TableFrame:
+        """The table without its values and checks."""
+        axes = self.temperature, self.pressure, self.wavenumber
+        return TableFrame(self.title, self.formula, *axes, self.recipe, self.provenance, self.profile)
 
     def spectrum(self, *node: int) -> FloatArray:
         """Cross-section (cm2/molecule) of one node by its indices, (n_nu,)."""

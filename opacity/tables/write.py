@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -13,7 +14,7 @@ from opacity.grids import FloatArray, as_axis, as_wavenumbers
 from opacity.tables import layout
 from opacity.tables.atomic import write_atomically
 from opacity.tables.image import as_json, node_indices, table_image
-from opacity.tables.model import CrossSectionTable
+from opacity.tables.model import CrossSectionTable, TableFrame
 from opacity.tables.read import open_table
 
 _LONGEST_LABEL = 1000
@@ -35,21 +36,33 @@ def write_cross_section_table(path: Path, table: CrossSectionTable) -> Path:
     except (MemoryError, OSError, RuntimeError) as error:
         message = f"the table cannot be put together in memory ({one_line(error) or 'no more of it'})"
         raise ResourceError(problem(path, message, remedy="use fewer nodes or points")) from error
-    return write_atomically(path, image, lambda written: _verify(path, written))
+    return write_atomically(path, image, lambda written: verify_written(path, written))
 
 
 def check_table(path: Path, table: CrossSectionTable) -> np.dtype[Any]:
     """The type, f4 or f8, in which `table` is to be stored; TableError where it may not be."""
-    for name in ("title", "formula"):
-        _check_label(path, name, getattr(table, name))
-    _check_axes(path, table)
-    _check_texts(path, table)
+    check_frame(path, table.frame)
+    if table.cross_section.shape != table.frame.shape:
+        expected, found = table.frame.shape, table.cross_section.shape
+        raise TableError(problem(path, "cross_section does not fit its axes", expected=expected, found=found))
+    _check_text(path, lambda: as_json(table.checks))
     smallest, largest = _extremes(path, table)
-    fits = smallest > layout.F4_SMALLEST and largest < layout.F4_LARGEST
-    return np.dtype("<f4" if fits else "<f8")
+    return layout.stored_type(smallest, largest)
 
 
-def _verify(path: Path, written: Path) -> None:
+def check_frame(path: Path, frame: TableFrame) -> None:
+    """Raise TableError where a table's axes, names or texts may not be stored."""
+    for name in ("title", "formula"):
+        _check_label(path, name, getattr(frame, name))
+    _check_axes(path, frame)
+    if "\0" in frame.recipe:
+        raise TableError(problem(path, "the recipe holds a NUL character"))
+    for text in (lambda: frame.recipe, lambda: as_json(frame.provenance)):
+        _check_text(path, text)
+
+
+def verify_written(path: Path, written: Path) -> None:
+    """Read a table under its temporary name back from the disk.  Raises ResourceError where it does not read back."""
     try:
         with open_table(written) as table:
             table.verify()
@@ -63,7 +76,7 @@ def _check_label(path: Path, name: str, text: str) -> None:
         raise TableError(problem(path, f"unusable {name}", expected=expected, found=repr(text[:80])))
 
 
-def _check_axes(path: Path, table: CrossSectionTable) -> None:
+def _check_axes(path: Path, table: TableFrame) -> None:
     try:
         as_wavenumbers(table.wavenumber)
         for name in ("temperature", "pressure"):
@@ -74,11 +87,6 @@ def _check_axes(path: Path, table: CrossSectionTable) -> None:
     if table.profile and sizes[0] != sizes[1]:
         raise TableError(
             problem(path, "a profile needs one pressure a temperature", found=f"{sizes[0]} and {sizes[1]}")
-        )
-    expected = (*layout.spectra_shape(*sizes, table.profile), table.wavenumber.size)
-    if table.cross_section.shape != expected:
-        raise TableError(
-            problem(path, "cross_section does not fit its axes", expected=expected, found=table.cross_section.shape)
         )
 
 
@@ -94,13 +102,9 @@ def _check_node_axis(name: str, values: FloatArray, profile: bool) -> None:
         as_axis(name, unit, value)
 
 
-def _check_texts(path: Path, table: CrossSectionTable) -> None:
-    if "\0" in table.recipe:
-        raise TableError(problem(path, "the recipe holds a NUL character"))
+def _check_text(path: Path, text: Callable[[], str]) -> None:
     try:
-        table.recipe.encode("utf-8")
-        as_json(table.provenance).encode("utf-8")
-        as_json(table.checks).encode("utf-8")
+        text().encode("utf-8")
     except (TypeError, ValueError, RecursionError) as error:
         raise TableError(problem(path, f"a text that cannot be stored ({one_line(error)})")) from error
 

@@ -12,8 +12,9 @@ import pytest
 
 from opacity.check.spectra import nodes_of
 from opacity.cross_sections.prepare import PreparedLines
-from opacity.pipeline.build import compute_spectra
+from opacity.cross_sections.source import as_source
 from opacity.pipeline.inputs import load_inputs
+from opacity.pipeline.units import spectra_in_memory
 from opacity.recipe.load import load_recipe
 from opacity.recipe.model import Recipe
 
@@ -46,7 +47,7 @@ class Case:
     def computed_with(self, lines: PreparedLines, **changes: Any) -> Values:
         """The values that a build with other lines, or with fields of the profile changed, would have stored."""
         recipe = replace(self.recipe, profile=replace(self.recipe.profile, **changes))
-        return self.with_sigma(_stored(compute_spectra(recipe, lines, 1, True).sigma))
+        return self.with_sigma(_stored(spectra_in_memory(recipe, as_source(lines))))
 
     def nodes(self) -> list[tuple[tuple[int, ...], float, float]]:
         return nodes_of(self.values)
@@ -65,7 +66,7 @@ def make_case(tmp_path_factory: pytest.TempPathFactory, recipe_text: Callable[..
         path.write_text(recipe_text(**changes), encoding="utf-8")
         recipe = load_recipe(path)
         lines = load_inputs(recipe).lines.lines
-        sigma = _stored(compute_spectra(recipe, lines, 1, True).sigma)
+        sigma = _stored(spectra_in_memory(recipe, as_source(lines)))
         grid = recipe.grid
         nodes = grid.nodes
         axes = (grid.temperature, grid.pressure) if nodes is None else tuple(zip(*nodes, strict=True))

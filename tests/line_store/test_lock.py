@@ -109,7 +109,7 @@ def test_a_holder_that_lost_its_lock_makes_no_store(tmp_path: Path, monkeypatch:
         return merge(*given)
 
     monkeypatch.setattr(assemble_module, "_merge", interrupted)
-    what = rf"no longer holds the lock of the line store; found process 7 on {platform.node()}; the same command"
+    what = rf"no longer holds the lock of this folder; found process 7 on {platform.node()}; the same command"
     with pytest.raises(ResourceError, match=rf"^[^\n]*: this process {what}[^\n]*$"):
         ingest(folder, [sample()], "key", 10**9, quiet)
     assert not (folder / INDEX).exists()

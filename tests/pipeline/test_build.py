@@ -15,7 +15,8 @@ import pytest
 from opacity.cross_sections.exact import exact_spectrum
 from opacity.errors import ResourceError
 from opacity.pipeline import build as build_module
-from opacity.pipeline.build import build_table
+from opacity.pipeline import units as units_module
+from opacity.pipeline.build import Crew, build_table
 from opacity.pipeline.inputs import load_inputs
 from opacity.recipe.load import load_recipe
 from opacity.tables.read import open_table
@@ -24,8 +25,8 @@ SHORT = "{ start = 2146.9, stop = 2147.3, step = 0.004 }"
 LONG = "{ start = 2145.0, stop = 2149.0, step = 0.0001 }"
 
 
-def built(path: Path, folder: Path, **options):
-    return build_table(load_recipe(path), folder, quiet=True, **options)
+def built(path: Path, folder: Path, workers: int | None = None, **options):
+    return build_table(load_recipe(path), folder, quiet=True, crew=Crew(workers), **options)
 
 
 def sha256(path: Path) -> str:
@@ -130,14 +131,14 @@ def test_an_interrupt_leaves_nothing_behind(write_recipe, tmp_path, monkeypatch)
         raise KeyboardInterrupt
 
     path, out = write_recipe(wavenumber=SHORT), tmp_path / "out"
-    monkeypatch.setattr(build_module, "add_spectra", interrupted)
+    monkeypatch.setattr(units_module, "add_spectra", interrupted)
     with pytest.raises(KeyboardInterrupt):
         built(path, out, workers=2)
     assert left_in(out) == []
 
 
 def fail_if_computed(monkeypatch):
-    monkeypatch.setattr(build_module, "compute_spectra", lambda *a: pytest.fail("found out too late"))
+    monkeypatch.setattr(units_module, "compute", lambda *a: pytest.fail("found out too late"))
 
 
 def test_a_folder_that_cannot_be_is_refused_before_the_work(write_recipe, tmp_path, monkeypatch):
@@ -192,8 +193,12 @@ def test_values_too_small_for_four_bytes_are_kept_in_eight(write_recipe, tmp_pat
 
 def test_a_wrong_engine_is_found_out_and_the_table_says_so(write_recipe, tmp_path, monkeypatch):
     """Even values where none may be, infinitely wrong, are reported and do not break the build."""
-    real = build_module.compute_spectra
-    monkeypatch.setattr(build_module, "compute_spectra", lambda *a: replace(made := real(*a), sigma=made.sigma + 1e-30))
+    real = units_module.make_shard
+
+    def wrong(rows, start, chunk, spectra, notes):
+        return real(rows, start, chunk, spectra + 1e-30, notes)
+
+    monkeypatch.setattr(units_module, "make_shard", wrong)
     made = built(write_recipe(wavenumber="{ start = 3000.0, stop = 3000.4, step = 0.004 }"), tmp_path)
     rows = {row["check"]: row for row in made.figures["results"]}
     assert rows["audit against the exact sum"]["verdict"] == "differs"

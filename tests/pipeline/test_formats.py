@@ -20,10 +20,10 @@ from opacity.line_list.packed import log_population
 from opacity.line_list.read import read_lines
 from opacity.molecule.isotopologue import isotopologue
 from opacity.molecule.partition_function import tips
-from opacity.pipeline import build as build_module
 from opacity.pipeline import inputs as inputs_module
 from opacity.pipeline import open_lists as open_lists_module
 from opacity.pipeline import sources as sources_module
+from opacity.pipeline import units as units_module
 
 SAMPLES = Path(__file__).parents[2] / "data-samples"
 Q = tips("TIPS-2021", isotopologue(5, 1))
@@ -136,9 +136,11 @@ def test_lines_too_many_to_hold_give_the_same_values(
 ) -> None:
     path = write_recipe(tmp_path, "exomol", list=EXOMOL, partition=TIPS)
     held = table_of(path, tmp_path / "held")
-    for module in (source_module, build_module, inputs_module):
+    for module in (source_module, units_module, inputs_module):
         monkeypatch.setattr(module, "LINES_AT_ONCE", at_once)
-    monkeypatch.setattr(build_module, "BLOCK", 512)
+    monkeypatch.setattr(units_module, "BLOCK", 512)
+    monkeypatch.setattr("opacity.tables.layout.BLOCK", 512)
+    monkeypatch.setattr(units_module, "WINDOW", 2048)
     monkeypatch.setattr("opacity.cross_sections.planner.LARGEST_TILE", 512)
     again = table_of(path, tmp_path / "stored")
     np.testing.assert_allclose(again, held, rtol=1e-12)
@@ -215,12 +217,12 @@ def test_a_broadening_file_for_another_gas_makes_another_store(tmp_path: Path) -
 def test_windows_are_as_short_as_their_lines_are_many(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     recipe = opacity.load_recipe(write_recipe(tmp_path, "hitran", list=HITRAN, partition=TIPS))
     lines = inputs_module.load_inputs(recipe, tmp_path).lines
-    nu = np.linspace(2000.0, 2300.0, 10 * build_module.BLOCK)
-    assert build_module.windows(nu, 5.0, lines) == [slice(0, nu.size)]
-    monkeypatch.setattr(build_module, "LINES_AT_ONCE", 15)
-    parts = build_module.windows(nu, 5.0, lines)
+    nu = np.linspace(2000.0, 2300.0, 10 * units_module.BLOCK)
+    assert units_module.windows(nu, 5.0, lines) == [slice(0, units_module.WINDOW), slice(units_module.WINDOW, nu.size)]
+    monkeypatch.setattr(units_module, "LINES_AT_ONCE", 15)
+    parts = units_module.windows(nu, 5.0, lines)
     assert [part.start for part in parts[1:]] == [part.stop for part in parts[:-1]]
-    assert all(part.start % build_module.BLOCK == 0 for part in parts)
+    assert all(part.start % units_module.BLOCK == 0 for part in parts)
     assert all(lines.count(nu[p.start] - 5.0, nu[p.stop - 1] + 5.0) <= 15 for p in parts if p.stop - p.start > 16384)
     assert len(parts) > 2
 

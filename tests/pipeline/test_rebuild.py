@@ -13,15 +13,17 @@ import pytest
 
 from opacity.errors import ResourceError
 from opacity.pipeline import build as build_module
-from opacity.pipeline.build import build_table
+from opacity.pipeline import units as units_module
+from opacity.pipeline import workers as workers_module
+from opacity.pipeline.build import Crew, build_table
 from opacity.recipe.load import load_recipe
 from opacity.tables.read import open_table
 
 SHORT = "{ start = 2146.9, stop = 2147.3, step = 0.004 }"
 
 
-def built(path: Path, folder: Path, **options):
-    return build_table(load_recipe(path), folder, quiet=True, **options)
+def built(path: Path, folder: Path, workers: int | None = None, **options):
+    return build_table(load_recipe(path), folder, quiet=True, crew=Crew(workers), **options)
 
 
 def sha256(path: Path) -> str:
@@ -78,7 +80,7 @@ def test_a_changed_list_and_other_packages_build_again(write_recipe, tmp_path, s
 
 
 def test_what_does_not_fit_is_refused_before_the_work(write_recipe, tmp_path, monkeypatch):
-    monkeypatch.setattr(build_module, "compute_spectra", lambda *a: pytest.fail("found out too late"))
+    monkeypatch.setattr(units_module, "compute", lambda *a: pytest.fail("found out too late"))
     monkeypatch.setattr("opacity.pipeline.plan.free_disk", lambda folder: 1000)
     announced = []
     with pytest.raises(ResourceError, match="the build does not fit in disk"):
@@ -89,13 +91,13 @@ def test_what_does_not_fit_is_refused_before_the_work(write_recipe, tmp_path, mo
 
 def test_warnings_come_before_the_work_and_stay_in_the_table(write_recipe, tmp_path, monkeypatch):
     told = []
-    real = build_module.compute_spectra
+    real = workers_module.compute
 
     def compute(*arguments):
         assert len(told) == 1
         return real(*arguments)
 
-    monkeypatch.setattr(build_module, "compute_spectra", compute)
+    monkeypatch.setattr(workers_module, "compute", compute)
     path = write_recipe(wavenumber="{ start = 2145.0, stop = 2149.0, step = 0.01 }")
     made = built(path, tmp_path, announce=lambda plan: told.extend(plan.warnings))
     assert told[0].startswith("the step is too coarse at 2 of 4 nodes")

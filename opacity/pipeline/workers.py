@@ -1,0 +1,140 @@
+"""Units of work done by one process, by threads or by processes of this machine, or by those of a cluster.
+
+Whoever does a unit writes its shard; only that it is done comes back.  A unit is done once its shard has its name.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import multiprocessing
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import FIRST_COMPLETED, Executor, Future, ProcessPoolExecutor, ThreadPoolExecutor, wait
+from concurrent.futures.process import BrokenProcessPool
+from dataclasses import dataclass
+from pathlib import Path
+
+from opacity.cross_sections.source import LineSource
+from opacity.errors import ResourceError, problem
+from opacity.pipeline.units import Unit, compute, parted
+from opacity.recipe.model import Recipe
+from opacity.tables.shard import write_shard
+
+KINDS = ("threads", "processes")
+MOST_RESTARTS = 5
+"""So often lost worker processes are replaced before a build gives up."""
+
+
+@dataclass(frozen=True)
+class Work:
+    """What units are computed from, and where their shards go."""
+
+    recipe: Recipe
+    source: LineSource
+    shards: Path
+
+    def do(self, unit: Unit, executor: Executor | None = None) -> None:
+        """Compute a unit and write its shard."""
+        write_shard(unit.path(self.shards), compute(self.recipe, self.source, unit, executor))
+
+
+@dataclass(frozen=True)
+class Origin:
+    """What a process of its own needs to come to the same work: where recipe and tables lie, and the inputs' hash."""
+
+    recipe: Path
+    tables: Path
+    shards: Path
+    inputs_sha256: str
+    memory: int
+
+
+Done = Callable[[Unit], None]
+
+
+def in_threads(work: Work, units: Sequence[Unit], workers: int, done: Done) -> None:
+    """Units side by side in threads; tiles of one unit after the other where units are fewer than threads."""
+    if workers == 1:
+        for unit in units:
+            work.do(unit)
+            done(unit)
+        return
+    with _ended(ThreadPoolExecutor(workers)) as executor:
+        if len(units) < 2 * workers:
+            for unit in units:
+                work.do(unit, executor)
+                done(unit)
+            return
+        _all_done({executor.submit(work.do, unit): unit for unit in units}, done)
+
+
+def in_processes(origin: Origin, units: Sequence[Unit], workers: int, done: Done) -> None:
+    """Units side by side in processes; those of a process that was killed are done by another."""
+    left = {unit.number: unit for unit in units}
+
+    def finished(unit: Unit) -> None:
+        left.pop(unit.number, None)
+        done(unit)
+
+    for _ in range(MOST_RESTARTS + 1):
+        context = multiprocessing.get_context("spawn")
+        count = max(min(workers, len(left)), 1)
+        pool = ProcessPoolExecutor(count, mp_context=context, initializer=prepare_process, initargs=(origin,))
+        try:
+            with _ended(pool) as executor:
+                _all_done({executor.submit(do_in_process, number): unit for number, unit in left.items()}, finished)
+            return
+        except BrokenProcessPool:
+            continue
+    raise ResourceError(
+        problem(origin.shards, f"worker processes were killed {MOST_RESTARTS + 1} times", remedy="try fewer workers")
+    )
+
+
+def _all_done(waiting: dict[Future[None], Unit], done: Done) -> None:
+    """Tell of each unit when it is done; the first failure ends the wait."""
+    pending = set(waiting)
+    while pending:
+        ready, pending = wait(pending, return_when=FIRST_COMPLETED)
+        failed = [one for one in ready if one.exception() is not None]
+        for one in ready.difference(failed):
+            done(waiting[one])
+        for one in failed:
+            one.result()
+
+
+@contextlib.contextmanager
+def _ended(executor: ThreadPoolExecutor | ProcessPoolExecutor) -> Iterator[Executor]:
+    """An executor that, whatever happens, begins nothing more and ends what it is at."""
+    try:
+        yield executor
+    finally:
+        executor.shutdown(wait=True, cancel_futures=True)
+
+
+_process: dict[str, object] = {}
+
+
+def prepare_process(origin: Origin, signals: bool = True) -> None:
+    """Load a recipe and its lines once in a worker process, which leaves Ctrl-C (`signals`) to its parent."""
+    import signal
+
+    from opacity.pipeline.inputs import load_inputs
+    from opacity.recipe.load import load_recipe
+
+    if signals:
+        signal.signal(signal.SIGINT, signal.SIG_IGN)
+    recipe = load_recipe(origin.recipe)
+    inputs = load_inputs(recipe, origin.tables, memory=origin.memory, quiet=True)
+    if inputs.sha256 != origin.inputs_sha256:
+        what = "the recipe or its files changed while the build ran"
+        raise ResourceError(problem(origin.recipe, what, remedy="build again when they are at rest"))
+    _process["work"] = Work(recipe, inputs.lines, origin.shards)
+    _process["units"] = parted(recipe, inputs.lines, inputs.sha256)
+
+
+def do_in_process(number: int) -> None:
+    """Do a unit in a worker process."""
+    work, units = _process["work"], _process["units"]
+    assert isinstance(work, Work)
+    assert isinstance(units, tuple)
+    work.do(units[number])
