@@ -69,23 +69,25 @@ def locked(folder: Path, what: str = "line store") -> Iterator[Lock]:
     """
     path = folder / LOCK
     text = json.dumps({**_this_process(), "token": secrets.token_hex(8)})
-    try:
-        if not _create(path, text):
-            _take_over(path, text, what)
-    except OSError as error:
-        raise ResourceError(problem(path, f"cannot be written ({error.strerror or error})")) from error
     lock, stop = Lock(path, text), threading.Event()
     thread = threading.Thread(target=lock.keep, args=(stop,), daemon=True)
+    # Known before it is made, so that no other thread of this process takes it for one that was left behind.
     _held.add(text)
-    thread.start()
-    remove_leftovers(folder)
     try:
+        try:
+            if not _create(path, text):
+                _take_over(path, text, what)
+        except OSError as error:
+            raise ResourceError(problem(path, f"cannot be written ({error.strerror or error})")) from error
+        thread.start()
+        remove_leftovers(folder)
         yield lock
     finally:
         stop.set()
-        thread.join()
-        _held.discard(text)
+        if thread.ident is not None:
+            thread.join()
         lock.release()
+        _held.discard(text)
 
 
 def _this_process() -> dict[str, Any]:

@@ -20,6 +20,7 @@ from opacity.provenance import VERSION
 from opacity.tables.shard import read_shard
 
 ROOT = Path(__file__).parents[2]
+INTERRUPTED = "interrupted: nothing half-written was left behind; the same command starts again\n"
 
 
 def run(*arguments: object, **options):
@@ -106,7 +107,7 @@ def test_bad_data_is_one(opacity, write_recipe, tmp_path, samples, command):
         (
             KeyboardInterrupt(),
             130,
-            "interrupted: nothing half-written was left behind; the same command starts again\n",
+            INTERRUPTED,
         ),
         (MemoryError(), 1, "not enough memory: use fewer nodes, fewer points or a shorter line list\n"),
         (OSError(5, "Input/output error", "/a/file"), 1, "/a/file: Input/output error\n"),
@@ -142,7 +143,7 @@ def test_an_interrupt_while_modules_load_is_an_interrupt(monkeypatch, capsys, be
     assert stop.value.code == 130
     assert capsys.readouterr() == (
         "",
-        "interrupted: nothing half-written was left behind; the same command starts again\n",
+        INTERRUPTED,
     )
 
 
