@@ -2,7 +2,7 @@
 
 A store is a folder: `index.json` (written last: without it there is no store) and segments, each an HDF5 file of
 up to 2^20 lines sorted by wavenumber.  Segments follow each other in wavenumber.  While it is made, `parts/` holds
-sorted parts by input file, so that an interrupted ingest goes on where it was, and `ingest.lock` says
+sorted parts by input file, so that an interrupted ingest goes on where it was, and `at-work.lock` says
 who makes it.
 """
 
@@ -22,7 +22,7 @@ SAMPLE_EVERY = 4096
 
 INDEX = "index.json"
 PARTS = "parts"
-LOCK = "ingest.lock"
+LOCK = "at-work.lock"
 
 
 def sealed(values: dict[str, Any]) -> bytes:

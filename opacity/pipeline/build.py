@@ -6,7 +6,6 @@ import contextlib
 import json
 import os
 import platform
-import shutil
 import time
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
@@ -31,7 +30,7 @@ from opacity.tables.assemble import Assembly, assemble_table, stored_type_of
 from opacity.tables.atomic import remove_leftovers, write_atomically
 from opacity.tables.model import TableFrame
 from opacity.tables.read import open_table
-from opacity.tables.shard import Shard, is_whole, read_shard
+from opacity.tables.shard import ENDING, Shard, is_whole, read_shard
 
 
 @dataclass(frozen=True)
@@ -91,6 +90,10 @@ def build_table(
     origin = fingerprint(recipe)
     kept = _still_good(path, origin)
     if kept is not None:
+        _remove_shards(folder / f"{recipe.name}.shards")
+        if not log.exists():
+            with contextlib.suppress(ResourceError):
+                _write_log(log, recipe, time.monotonic() - started, 0)
         return BuildResult(path, log, None, kept, time.monotonic() - started)
     inputs = load_inputs(recipe, folder, origin, memory, quiet)
     plan = make_plan(recipe, inputs, folder, crew.workers, memory, crew.kind == "processes")
@@ -103,6 +106,10 @@ def build_table(
     units = parted(recipe, inputs.lines, inputs.sha256)
     try:
         figures, missing = (_build_alone if crew.task is None else _build_task)(job, units, crew)
+    except KeyboardInterrupt as stop:
+        done = sum(unit.path(job.shards).exists() for unit in units)
+        stop.args = (f"{done} of {len(units)} units are done and kept; the same command goes on",)
+        raise
     finally:
         with contextlib.suppress(OSError):
             job.shards.rmdir()  # unless shards are kept in it
@@ -139,9 +146,18 @@ def _build_alone(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[s
     with locked(job.shards, "table") as lock:
         _compute(job, units, crew)
         figures = _assemble(job, units, lock.check)
-        shutil.rmtree(job.shards, ignore_errors=True)
-    shutil.rmtree(job.shards, ignore_errors=True)
+    _remove_shards(job.shards)
     return figures, 0
+
+
+def _remove_shards(folder: Path) -> None:
+    """Remove the shards of a table that is made, unless somebody works with them."""
+    if folder.exists():
+        with contextlib.suppress(ResourceError), locked(folder, "table"):
+            for path in folder.glob(f"*{ENDING}"):
+                path.unlink(missing_ok=True)
+        with contextlib.suppress(OSError):
+            folder.rmdir()
 
 
 def _build_task(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[str, Any], int]:
@@ -165,19 +181,14 @@ def _compute(job: _Job, units: tuple[Unit, ...], crew: Crew) -> None:
         def finished(unit: Unit) -> None:
             progress.step(len(unit.rows))
 
-        try:
-            if crew.scheduler is not None:
-                from opacity.pipeline.cluster import on_cluster
+        if crew.scheduler is not None:
+            from opacity.pipeline.cluster import on_cluster
 
-                on_cluster(crew.scheduler, job.origin, left, job.plan.workers, finished)
-            elif crew.kind == "processes":
-                in_processes(job.origin, left, job.plan.workers, finished)
-            else:
-                in_threads(job.work, left, job.plan.workers, finished)
-        except KeyboardInterrupt as stop:
-            done = sum(unit.path(job.shards).exists() for unit in units)
-            stop.args = (f"{done} of {len(units)} units are done and kept; the same command goes on",)
-            raise
+            on_cluster(crew.scheduler, job.origin, left, job.plan.workers, finished)
+        elif crew.kind == "processes":
+            in_processes(job.origin, left, job.plan.workers, finished)
+        else:
+            in_threads(job.work, left, job.plan.workers, finished)
 
 
 def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]) -> dict[str, Any]:
