@@ -13,6 +13,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from opacity.errors import InputError, problem
 from opacity.grids import FloatArray
 
 
@@ -27,7 +28,7 @@ class ChiFactors:
 
     def table(self) -> FloatArray:
         """Rows as an array, (n_rows, 3)."""
-        return np.array(self.rows)
+        return checked_rows(np.array(self.rows))
 
 
 CHI_FACTORS = {
@@ -55,7 +56,31 @@ CHI_FACTORS = {
 }
 """Sets by the name that a recipe gives."""
 
+MOST_UPWARD = 1e-3
+"""Published constants are rounded: where rows meet a factor may jump upwards by so much of itself."""
 NO_CHI = np.zeros((0, 3))
+
+
+def checked_rows(rows: FloatArray) -> FloatArray:
+    """Rows that sums can be made with, (n_rows, 3), or none.
+
+    Raises InputError unless distances rise to infinity, the first row has no rate (which would be a kink at the
+    centre), no rate is below 0 and no factor jumps upwards: wings fall.
+    """
+    if not len(rows):
+        return rows
+    if rows.ndim != 2 or rows.shape[1] != 3 or not _fall(rows):
+        expected = "distances that rise to infinity, factors that fall, and no rate in the first row"
+        raise InputError(problem("chi", "impossible rows", expected=expected, found=rows.tolist()))
+    return rows
+
+
+def _fall(rows: FloatArray) -> bool:
+    at = rows[:-1, 0]
+    before, after = (part[:, 1] * np.exp(-part[:, 2] * at) for part in (rows[:-1], rows[1:]))
+    rises = rows[0, 0] > 0.0 and np.all(np.diff(rows[:, 0]) > 0.0) and rows[-1, 0] == np.inf
+    falls = np.all(rows[:, 1:] >= 0.0) and np.all(after <= before * (1.0 + MOST_UPWARD))
+    return bool(rises and falls and rows[0, 2] == 0.0)
 
 
 def chi_table(name: str | None) -> FloatArray:

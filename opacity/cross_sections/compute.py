@@ -6,14 +6,15 @@ result has the same bits for any number of workers.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import Executor
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
-from opacity.chi_factors import NO_CHI
-from opacity.cross_sections.planner import Spacing, Tiles, by_cells, even_spacing, plan_tiles
+from opacity.chi_factors import NO_CHI, checked_rows
+from opacity.cross_sections.planner import SMALLEST_TILE, Spacing, Tiles, by_cells, even_spacing, plan_tiles
 from opacity.cross_sections.prepare import LinesAtTemperature, NodeLines
 from opacity.cross_sections.tolerance import Regions
 from opacity.errors import InputError, problem
@@ -22,9 +23,6 @@ from opacity.kernels.accumulate import add_lines
 from opacity.kernels.cells import Tree, grow_tree
 from opacity.kernels.node_line import SMALLEST_Y, Formulas, LineColumns
 from opacity.kernels.wings import add_lines_by_cells
-
-DIRECT_TILE = 4096
-"""Points that are summed at once where points are added to one by one: they stay in the fastest memory."""
 
 
 @dataclass(frozen=True)
@@ -66,7 +64,8 @@ def add_spectra(
     predicted to be quicker.  With an executor of threads tiles and nodes are computed side by side.  `done` is told of
     each node when it is whole, in their order, and how its tiles were summed.
     """
-    work = _Work(wavenumber, regions, plinth, NO_CHI if chi is None else chi, even_spacing(wavenumber), cells)
+    table = NO_CHI if chi is None else checked_rows(chi)
+    work = _Work(wavenumber, regions, plinth, table, even_spacing(wavenumber), cells)
     jobs = list(_jobs(nodes, wavenumber, work.spacing))
 
     def do(job: _Job) -> bool:
@@ -118,25 +117,33 @@ class _Work:
     chi: FloatArray
     spacing: Spacing | None
     cells: bool | None
+    trees: dict[tuple[int, int, int], Tree] = field(default_factory=dict)
 
     def tile(self, out: FloatArray, part: slice, node: NodeSum, tiles: Tiles) -> bool:
         """Fill one tile, (n_points,); whether it was done by cells."""
         nu = self.wavenumber[part]
         first, last = _in_reach(node, nu)
         if tiles.spacing is not None and tiles.levels and self._chosen(tiles, last - first, nu.size):
-            self._sum(out, nu, first, last, node, self._tree(nu, tiles, tiles.spacing))
+            self._sum(out, nu, first, last, node, self._tree(part, tiles, tiles.spacing))
             return True
-        for start in range(0, nu.size, DIRECT_TILE):
-            piece = slice(start, start + DIRECT_TILE)
+        # Few enough points to stay in the fastest memory.
+        for start in range(0, nu.size, SMALLEST_TILE):
+            piece = slice(start, start + SMALLEST_TILE)
             self._sum(out[piece], nu[piece], *_in_reach(node, nu[piece]), node, None)
         return False
 
     def _chosen(self, tiles: Tiles, lines: int, points: int) -> bool:
         return by_cells(tiles, lines, points) if self.cells is None else self.cells
 
-    def _tree(self, nu: FloatArray, tiles: Tiles, spacing: Spacing) -> Tree:
-        start = float(np.log(nu[0]) if spacing.in_log else nu[0])
-        return grow_tree(nu.size, tiles.levels, start, spacing.step, spacing.in_log, self.regions.axis)
+    def _tree(self, part: slice, tiles: Tiles, spacing: Spacing) -> Tree:
+        """The tree of a tile, which all nodes share."""
+        key = (part.start, part.stop, tiles.levels)
+        if key not in self.trees:
+            first = float(self.wavenumber[part.start])
+            start, axis = (math.log(first), self.regions.axis_in_log) if spacing.in_log else (first, self.regions.axis)
+            size = part.stop - part.start
+            self.trees[key] = grow_tree(size, tiles.levels, start, spacing.step, spacing.in_log, axis)
+        return self.trees[key]
 
     def _sum(self, out: FloatArray, nu: FloatArray, first: int, last: int, node: NodeSum, tree: Tree | None) -> None:
         if first >= last:

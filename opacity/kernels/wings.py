@@ -35,7 +35,7 @@ SPREAD = 2.3507
 """Largest root of H_6: the poles of the 6-point formula lie this far beside the centre, in units of x."""
 MOST_DECAY = 1.0
 """A chi factor falls by no more than e within a cell."""
-MOST_UNEVEN = 0.02
+WIDEST_INNER = 0.02
 """On a grid even in log a line is added point by point where its inner part is wider than this share of its centre."""
 
 
@@ -136,7 +136,7 @@ def _place(frame: Frame, line: LineAtNode, nu0: float, cutoff: float, subtract_p
     uneven = 1.0
     if frame.in_log:
         inner = max(line.near, SPREAD) * unit * frame.step
-        if line.centre <= 0.0 or inner > MOST_UNEVEN:
+        if line.centre <= 0.0 or inner > WIDEST_INNER:
             unit = np.inf
         uneven = 1.0 + inner
     core = line.core * unit * uneven if line.core >= 0.0 else -1.0
@@ -176,7 +176,7 @@ def _level(frame: Frame, bits: int, low: int, high: int, place: Place, decay: fl
     up = (place.height / half) ** 2 / (axis * axis - 1.0)
     limit = half * axis * math.sqrt(1.0 - up) + place.spread if up < 1.0 else -1.0
     if place.core >= 0.0 or decay > 0.0:
-        limit = max(limit, half + place.core)
+        limit = max(limit, half + max(place.core, 0.0))
     at = place.centre * per_width
     if limit < 0.0:
         gap_low = gap_high = _not_above(at, low, high)

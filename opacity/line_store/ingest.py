@@ -119,7 +119,10 @@ def ingest(
     _make_folder(folder)
     with locked(folder) as lock:
         _make_folder(parts)
-        manifests = [_ingest_file(parts, number, one, key, at_once, progress) for number, one in enumerate(inputs)]
+        manifests = []
+        for number, one in enumerate(inputs):
+            manifests.append(_ingest_file(parts, number, one, key, at_once, progress))
+            lock.check()
         for one, manifest in zip(inputs, manifests, strict=True):  # files beside several may have changed between them
             _refuse_changed(one, manifest["identity"])
         assemble(folder, manifests, key, at_once, facts(), lock.check)

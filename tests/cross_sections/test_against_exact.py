@@ -150,10 +150,11 @@ def test_same_bits_for_any_number_of_workers() -> None:
         assert np.array_equal(one, opacity.cross_section(lines, workers=workers, **choice))
     with ThreadPoolExecutor(3) as executor:
         prepared = node([2050.0])
-        limits = regions(1e-3)
-        assert np.array_equal(
-            spectrum(prepared, nu, 25.0, limits), spectrum(prepared, nu, 25.0, limits, executor=executor)
-        )
+        for cells in (True, False):
+            alone, shared = (
+                spectrum(prepared, nu, 25.0, regions(1e-3), executor=one, cells=cells) for one in (None, executor)
+            )
+            assert np.array_equal(alone, shared)
 
 
 def test_sum_of_two_lists_is_the_list_of_both() -> None:

@@ -7,12 +7,13 @@ from itertools import pairwise
 import numpy as np
 import pytest
 
+import opacity
 from opacity.chi_factors import CHI_FACTORS
 from opacity.cross_sections.compute import spectrum
 from opacity.cross_sections.exact import exact_spectrum
-from opacity.cross_sections.planner import by_cells, even_spacing, plan_tiles
+from opacity.cross_sections.planner import WIDEST_IN_LOG, by_cells, even_spacing, plan_tiles
 from opacity.cross_sections.prepare import NodeLines
-from opacity.cross_sections.tolerance import axis_for, interpolation_error, regions
+from opacity.cross_sections.tolerance import CELL_SHARE, axis_for, interpolation_error, regions
 from opacity.kernels.cells import CELL, NODES, RATIO, grow_tree, interpolation_weights, roots, sums_to_points
 
 from .lists import node
@@ -58,6 +59,22 @@ def test_parts_of_a_cell_carry_the_same_polynomial() -> None:
         out = np.zeros(points)
         sums_to_points(sums, tree.offsets, out)
         np.testing.assert_allclose(out, polynomial(np.arange(float(points))), rtol=1e-11, atol=1e-11)
+
+
+def test_error_of_interpolation_in_log_is_within_its_share() -> None:
+    """Lorentz profiles in a cell even in ln nu, as wide as such cells may be, with the pole on the ellipse."""
+    x = np.linspace(-1.0, 1.0, 401)
+    weights = interpolation_weights(x)
+    for tolerance in (1e-2, 1e-4, 1e-6):
+        axis = regions(tolerance).axis_in_log
+        worst = 0.0
+        for angle in np.linspace(0.001, np.pi - 0.001, 200):
+            pole = axis * np.cos(angle) + 1j * np.sqrt(axis * axis - 1.0) * np.sin(angle)
+            z = np.exp(0.5 * WIDEST_IN_LOG * pole)
+            profile = [z.imag / ((np.exp(0.5 * WIDEST_IN_LOG * at) - z.real) ** 2 + z.imag**2) for at in (roots(), x)]
+            worst = max(worst, float(np.max(np.abs(profile[0] @ weights / profile[1] - 1.0))))
+        print(f"tolerance {tolerance:g}: {worst / tolerance:.3f} of it by interpolation in log")
+        assert worst <= CELL_SHARE * tolerance
 
 
 def test_error_of_interpolation_is_as_predicted() -> None:
@@ -159,8 +176,26 @@ def test_published_chi_factors_are_chains_of_falling_exponentials() -> None:
         assert table[-1, 0] == np.inf
         for inner, outer in pairwise(table):
             before, after = (row[1] * np.exp(-row[2] * inner[0]) for row in (inner, outer))
-            assert abs(after / before - 1.0) < 0.025
+            assert -0.02 < after / before - 1.0 < 1e-4
         assert np.all(table[1:, 2] > 0.0)
+
+
+@pytest.mark.parametrize(
+    "rows",
+    [
+        [[np.inf, 1.0, 0.3]],
+        [[3.0, 1.0, 0.0], [np.inf, 1.0, -0.05]],
+        [[3.0, 1.0, 0.0], [2.0, 1.0, 0.1], [np.inf, 1.0, 0.1]],
+        [[3.0, 1.0, 0.0], [10.0, 0.9, 0.1]],
+        [[3.0, 0.5, 0.0], [np.inf, 0.9, 0.0]],
+        [[np.inf, np.nan, 0.0]],
+    ],
+    ids=str,
+)
+def test_chi_factors_that_cannot_be_are_refused(rows: list[list[float]]) -> None:
+    nu = np.linspace(1990.0, 2010.0, 401)
+    with pytest.raises(opacity.InputError, match=r"^chi: impossible rows; expected distances that rise to infinity"):
+        spectrum(node([2000.0]), nu, 5.0, regions(1e-3), chi=np.array(rows))
 
 
 def test_nothing_leaks_beyond_a_cut_off() -> None:
