@@ -22,6 +22,8 @@ SQRT_LN2 = math.sqrt(math.log(2.0))
 SMALLEST_Y = 1e-30
 SMALLEST_EXPONENT = -100
 LARGEST_EXPONENT = 12
+FLAT = 2.0
+"""A profile changes by less than a factor of five within a cut-off of this many pressure widths."""
 
 
 class LineColumns(NamedTuple):
@@ -98,10 +100,11 @@ def line_at_node(
 def with_plinth(line: LineAtNode, cutoff: float, weight: float) -> LineAtNode:
     """The line with its value at the cut-off as plinth; `weight` is the chi factor there.
 
-    The same formula must serve at the cut-off and near it, or the difference is all error: regions are widened.
+    The same formula must serve at the cut-off and near it, or the difference is all error: regions are widened.  Where
+    the profile is broader than the cut-off it is flat all over, and one formula must serve throughout.
     """
     edge, core, near = cutoff * line.scale, line.core, line.near
-    if near > 0.5 * edge:
+    if near > 0.5 * edge or (near >= 0.0 and edge < FLAT * line.y):
         near = 2.0 * edge + 20.0 * near
     if core > 0.5 * edge:
         core = near

@@ -209,6 +209,9 @@ def _add_line(
 
     On either side of the centre the cells in use are one stretch: left..left_gap - 1 and right_gap..right - 1.
     """
+    if not place.spread < np.inf:
+        _add_points(out, nu, first, last, line, place, factor, rate)
+        return
     left, left_gap, right_gap, right = first, first, last, last
     has_left = has_right = False
     decay = max(rate, 0.0) * frame.step * (places[places.size - 1] if frame.in_log else 1.0)

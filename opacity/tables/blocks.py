@@ -13,8 +13,6 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.tables import layout
-
 _SAMPLE = 2048
 _WORTH_IT = 0.95
 """A sample of bytes that deflates to less than this share is worth deflating."""
@@ -27,14 +25,21 @@ def pack_block(values: NDArray[Any], chunk: int) -> bytes:
         values = np.concatenate([values, np.full(chunk - values.size, np.nan, values.dtype)])
     little = np.ascontiguousarray(values, dtype=values.dtype.newbyteorder("<"))
     planes = np.ascontiguousarray(little.view(np.uint8).reshape(little.size, little.itemsize).T)
-    parts = [_ZLIB_HEADER]
-    for plane in planes[:-1]:
+    # The highest bytes, sign and exponent, come in long runs; each plane below is noisier than the one above it.
+    streams = [_deflated(planes[-1].tobytes(), zlib.Z_RLE, zlib.Z_FINISH)]
+    shrinks = True
+    for plane in planes[-2::-1]:
         data = plane.tobytes()
-        stream = zlib.compressobj(layout.GZIP_LEVEL if _shrinks(data) else 0, zlib.DEFLATED, -zlib.MAX_WBITS)
-        parts += [stream.compress(data), stream.flush(zlib.Z_FULL_FLUSH)]
-    stream = zlib.compressobj(layout.GZIP_LEVEL, zlib.DEFLATED, -zlib.MAX_WBITS)
-    parts += [stream.compress(planes[-1].tobytes()), stream.flush()]
-    return b"".join([*parts, zlib.adler32(planes.tobytes()).to_bytes(4, "big")])
+        shrinks = shrinks and _shrinks(data)
+        streams.append(_deflated(data, zlib.Z_DEFAULT_STRATEGY if shrinks else None, zlib.Z_FULL_FLUSH))
+    return b"".join([_ZLIB_HEADER, *reversed(streams), zlib.adler32(planes.tobytes()).to_bytes(4, "big")])
+
+
+def _deflated(data: bytes, strategy: int | None, end: int) -> bytes:
+    """A part of a deflate stream; without a strategy the bytes are stored as they are."""
+    level = 0 if strategy is None else 1
+    stream = zlib.compressobj(level, zlib.DEFLATED, -zlib.MAX_WBITS, 9, strategy or zlib.Z_DEFAULT_STRATEGY)
+    return stream.compress(data) + stream.flush(end)
 
 
 def unpack_block(data: bytes, size: int, dtype: np.dtype[Any]) -> NDArray[Any]:

@@ -3,8 +3,8 @@
     python tests/bench/builds.py FOLDER_OF_REAL_LINES
 
 A build of 200 nodes of real H2O (3400-4900 cm-1, step 0.01 cm-1, cut-off 25 cm-1): the time of its sums, of making
-shards (packing, hashing, writing), of assembly (reading, writing, reading back) and of the checks, with one worker; then
-spectra and shards with 1 and 2 workers, threads and processes, and the peak of memory against the budget.
+shards (packing, hashing, writing), of assembly (reading, writing, reading back) and of the checks, with one worker;
+then spectra and shards with 1 and 2 workers, threads and processes, and the peak of memory against the budget.
 """
 
 from __future__ import annotations

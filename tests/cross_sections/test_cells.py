@@ -10,7 +10,7 @@ import pytest
 import opacity
 from opacity.chi_factors import CHI_FACTORS
 from opacity.cross_sections.compute import spectrum
-from opacity.cross_sections.exact import exact_spectrum
+from opacity.cross_sections.exact import SQRT_LN2, exact_spectrum
 from opacity.cross_sections.planner import WIDEST_IN_LOG, by_cells, even_spacing, plan_tiles
 from opacity.cross_sections.prepare import NodeLines
 from opacity.cross_sections.tolerance import CELL_SHARE, axis_for, interpolation_error, regions
@@ -146,6 +146,35 @@ def test_plinth_removal(tolerance: float) -> None:
         worst = max(worst, margin(found, truth, tolerance, 1e-13 * exact_spectrum(lines, nu, cutoff)))
     print(f"tolerance {tolerance:g} with plinth removal: largest error {worst:.2f} of it")
     assert worst <= 1.0
+
+
+@pytest.mark.parametrize("tolerance", [1e-2, 1e-3, 1e-4, 1e-5, 2e-6])
+def test_plinth_removal_where_a_formula_has_just_begun_to_serve(tolerance: float) -> None:
+    """A profile that is flat within its cut-off, y at the borders of the regions: what is left is a difference."""
+    limits = regions(tolerance, plinth=True)
+    worst = 0.0
+    for border in (limits.near_radius, limits.far_radius):
+        for below in (1e-2, 1e-4, 1e-6, -1e-6):
+            for width in (0.005, 0.0284, 0.09, 0.5, 1.9, 2.1):
+                lorentz = 0.01 * border * (1.0 - below) / SQRT_LN2
+                lines = node([2000.0], doppler=0.01, lorentz=lorentz)
+                cutoff = width * lorentz
+                nu = 2000.0 + cutoff / 40.0 * np.arange(-60, 61)
+                truth = exact_spectrum(lines, nu, cutoff, plinth=True)
+                for cells in (True, False):
+                    found = spectrum(lines, nu, cutoff, limits, plinth=True, cells=cells)
+                    worst = max(worst, margin(found, truth, tolerance, 1e-13 * exact_spectrum(lines, nu, cutoff)))
+    print(f"tolerance {tolerance:g}: largest error {worst:.2f} of it")
+    assert worst <= 1.0
+
+
+def test_plinth_removal_on_grids_in_log_with_lines_as_wide_as_their_wavenumber() -> None:
+    for step in (1e-6, 1e-5, 1e-4):
+        nu = 36.2 * np.exp(step * np.arange(4000))
+        lines = node([76.2], doppler=4.0, lorentz=78.0)
+        truth = exact_spectrum(lines, nu, 40.0, plinth=True)
+        found = spectrum(lines, nu, 40.0, regions(1e-3, plinth=True), plinth=True, cells=True)
+        assert margin(found, truth, 1e-3, 1e-13 * exact_spectrum(lines, nu, 40.0)) <= 1.0
 
 
 @pytest.mark.parametrize("cells", [True, False])
