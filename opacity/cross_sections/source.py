@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import Executor
 from dataclasses import dataclass
 from typing import Protocol
 
 import numpy as np
+from numpy.typing import NDArray
 
 from opacity.cross_sections.exact import exact_at
-from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.prepare import LinesAtTemperature, PreparedLines
 from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
@@ -19,6 +22,10 @@ from opacity.molecule.broadening import Assumption
 
 LINES_AT_ONCE = 2_000_000
 """Lines that are prepared at the same time: about 1 GB with everything that is made of them."""
+POINTS_AT_ONCE = 128
+"""Points of a request whose exact sum is one job."""
+
+IndexArray = NDArray[np.intp]
 
 
 class LineSource(Protocol):
@@ -58,9 +65,11 @@ def exact_points(
     cutoff_at: Callable[[float], float],
     plinth: bool,
     chi: FloatArray | None = None,
+    executor: Executor | None = None,
 ) -> list[FloatArray]:
     """The exact sum at the points of each request, (n,) each, cm2/molecule; `cutoff_at` gives the cut-off (cm-1) at a
-    pressure (bar), `chi` is a table of chi factors.  The lines are read window by window, once for all requests.
+    pressure (bar), `chi` is a table of chi factors.  The lines are read window by window, once for all requests; with
+    an executor of threads points are computed side by side.
     """
     found = [np.zeros(points.size) for _, _, points in requests]
     if not requests:
@@ -70,12 +79,27 @@ def exact_points(
     for group in point_groups(everywhere, source):
         lower, upper = float(group[0]) - margin - 1e-6, float(group[-1]) + margin + 1e-6
         for lines in pieces(source, lower, upper):
-            for number, (temperature, pressure, points) in enumerate(requests):
-                here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
-                if here.size:
-                    node = lines.at(temperature, pressure)
+            for temperature in dict.fromkeys(temperature for temperature, _, _ in requests):
+                columns = lines.at_temperature(temperature)
+
+                def add(job: tuple[int, IndexArray], columns: LinesAtTemperature = columns) -> None:
+                    number, here = job
+                    _, pressure, points = requests[number]
+                    node = columns.at(pressure)
                     found[number][here] += exact_at(node, points[here], cutoff_at(pressure), plinth, chi)
+
+                jobs = _jobs(requests, temperature, group)
+                for _ in map(add, jobs) if executor is None else executor.map(add, jobs):
+                    pass
     return found
+
+
+def _jobs(requests: Sequence[Request], temperature: float, group: FloatArray) -> Iterator[tuple[int, IndexArray]]:
+    """Numbers of the requests at a temperature and indices of their points in a group, some points at a time."""
+    for number, (at, _, points) in enumerate(requests):
+        here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
+        if at == temperature and here.size:
+            yield from ((number, some) for some in np.array_split(here, math.ceil(here.size / POINTS_AT_ONCE)))
 
 
 def pieces(source: LineSource, lower: float, upper: float) -> Iterator[PreparedLines]:
