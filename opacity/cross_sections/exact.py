@@ -78,18 +78,3 @@ def exact_at(
             profile = np.maximum(profile - chi_factors(chi, edge) * voigt_profile(edge, *widths), 0.0)
         sigma[i] = np.sum(node.strength[lines] * profile)
     return sigma
-
-
-def voigt_derivatives(distance: FloatArray, doppler: FloatArray, lorentz: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """First and third derivative of the Voigt profile with respect to wavenumber, cm2 and cm4, (n,) each.
-
-    From w' = -2 z w + 2i/sqrt(pi) and its derivatives (Abramowitz & Stegun 7.1.20), z = x + iy.
-    """
-    scale = SQRT_LN2 / doppler
-    z = scale * (distance + 1j * lorentz)
-    w = wofz(z)
-    first = -2.0 * z * w + 2j / math.sqrt(math.pi)
-    second = -2.0 * w - 2.0 * z * first
-    third = -4.0 * first - 2.0 * z * second
-    height = scale / math.sqrt(math.pi)
-    return height * scale * first.real, height * scale**3 * third.real

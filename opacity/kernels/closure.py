@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from opacity.kernels.accumulate import first_not_below
 from opacity.kernels.chi import chi_at
 from opacity.kernels.jit import jit, jit_exact, jit_inline
-from opacity.kernels.line_width import LOWEST_SHIFTED
+from opacity.kernels.line_width import LOWEST_SHIFTED, voigt_half_width
 from opacity.kernels.node_line import SQRT_LN2, LineColumns
 from opacity.kernels.profile_tail import derivatives, share, tail, value
 from opacity.kernels.voigt import INV_SQRT_PI
@@ -247,7 +247,7 @@ def strength_in_reach(lines: LineColumns, pressure: float, reach: Reach, chi: Ar
 @jit
 def resolution(nu: Array, lines: LineColumns, pressure: float) -> tuple[float, float, float]:
     """Of the lines centred on the grid: their strength, what of it the step does not resolve, and the narrowest
-    half-width (cm-1; Olivero & Longbothum 1977, as in `line_width`), infinite without lines.
+    half-width (cm-1), infinite without lines.
     """
     wavenumber, shift, strength, lorentz, doppler = lines
     total, unresolved, narrowest, gap = 0.0, 0.0, np.inf, 0
@@ -261,6 +261,5 @@ def resolution(nu: Array, lines: LineColumns, pressure: float) -> tuple[float, f
             risk = _risk((nu[gap + 1] - nu[gap]) * line.scale, line.y)
         total += strength[j]
         unresolved += strength[j] * risk
-        width = 0.5346 * line.y + math.sqrt(0.2166 * line.y**2 + SQRT_LN2**2)
-        narrowest = min(narrowest, width / line.scale)
+        narrowest = min(narrowest, voigt_half_width(SQRT_LN2, line.y) / line.scale)
     return total, unresolved, narrowest
