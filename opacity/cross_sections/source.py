@@ -9,10 +9,9 @@ from dataclasses import dataclass
 from typing import Protocol
 
 import numpy as np
-from numpy.typing import NDArray
 
 from opacity.cross_sections.exact import exact_at
-from opacity.cross_sections.prepare import LinesAtTemperature, PreparedLines
+from opacity.cross_sections.prepare import NodeLines, PreparedLines
 from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
@@ -22,10 +21,8 @@ from opacity.molecule.broadening import Assumption
 
 LINES_AT_ONCE = 2_000_000
 """Lines that are prepared at the same time: about 1 GB with everything that is made of them."""
-POINTS_AT_ONCE = 128
-"""Points of a request whose exact sum is one job."""
-
-IndexArray = NDArray[np.intp]
+POINTS_AT_ONCE = 32
+"""Points whose exact sum is one job of a thread."""
 
 
 class LineSource(Protocol):
@@ -81,25 +78,24 @@ def exact_points(
         for lines in pieces(source, lower, upper):
             for temperature in dict.fromkeys(temperature for temperature, _, _ in requests):
                 columns = lines.at_temperature(temperature)
-
-                def add(job: tuple[int, IndexArray], columns: LinesAtTemperature = columns) -> None:
-                    number, here = job
-                    _, pressure, points = requests[number]
-                    node = columns.at(pressure)
-                    found[number][here] += exact_at(node, points[here], cutoff_at(pressure), plinth, chi)
-
-                jobs = _jobs(requests, temperature, group)
-                for _ in map(add, jobs) if executor is None else executor.map(add, jobs):
-                    pass
+                for number, (at, pressure, points) in enumerate(requests):
+                    here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
+                    if at == temperature and here.size:
+                        choice = cutoff_at(pressure), plinth, chi
+                        found[number][here] += _exact_here(columns.at(pressure), points[here], choice, executor)
     return found
 
 
-def _jobs(requests: Sequence[Request], temperature: float, group: FloatArray) -> Iterator[tuple[int, IndexArray]]:
-    """Numbers of the requests at a temperature and indices of their points in a group, some points at a time."""
-    for number, (at, _, points) in enumerate(requests):
-        here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
-        if at == temperature and here.size:
-            yield from ((number, some) for some in np.array_split(here, math.ceil(here.size / POINTS_AT_ONCE)))
+def _exact_here(
+    node: NodeLines, points: FloatArray, choice: tuple[float, bool, FloatArray | None], executor: Executor | None
+) -> FloatArray:
+    """The exact sum at some points, (n,), a few of them at a time; `choice` is cut-off, plinth and chi factors."""
+    groups = np.array_split(points, math.ceil(points.size / POINTS_AT_ONCE))
+
+    def one(group: FloatArray) -> FloatArray:
+        return exact_at(node, group, *choice)
+
+    return np.concatenate(list(map(one, groups) if executor is None else executor.map(one, groups)))
 
 
 def pieces(source: LineSource, lower: float, upper: float) -> Iterator[PreparedLines]:
