@@ -28,6 +28,7 @@ _NEGLIGIBLE = 32.0
 """A harmonic with a larger exponent is below 3e-14 and left out."""
 _HOPELESS = 20.0
 """Where the last harmonic's exponent is smaller than this the sum is not predicted."""
+_FAR2 = 1e4
 _AT_ONCE = 512
 """Lines that are added up before they are added to the rest, which keeps rounding below 1e-12."""
 _LOG_NODES, _LOG_WEIGHTS = np.polynomial.legendre.leggauss(48)
@@ -132,18 +133,21 @@ def sampled(s: float, y: float, phase: float) -> Sampled:
     risk = min(2.0 * height, 1.0)
     if rate * MAX_HARMONICS + square * MAX_HARMONICS**2 < _HOPELESS:
         return Sampled(risk, np.nan)
+    cosine = math.cos(2.0 * math.pi * (phase - math.floor(phase)))
+    offset = 2.0 * height * cosine
+    if 2.0 * rate + 4.0 * square > _NEGLIGIBLE:
+        return Sampled(risk, offset)
     # Each height is the last one times a ratio, which itself falls by one factor; cosines by their recurrence.
     fall = math.exp(-2.0 * square)
     ratio = height * fall
-    cosine = math.cos(2.0 * math.pi * (phase - math.floor(phase)))
-    twice, before, now, offset = 2.0 * cosine, 1.0, cosine, 0.0
-    for _ in range(MAX_HARMONICS):
-        offset += 2.0 * height * now
+    before, now = 1.0, cosine
+    for _ in range(MAX_HARMONICS - 1):
         height *= ratio
         ratio *= fall
         if height < 1e-14:
             break
-        before, now = now, twice * now - before
+        before, now = now, 2.0 * cosine * now - before
+        offset += 2.0 * height * now
     return Sampled(risk, offset)
 
 
@@ -168,8 +172,14 @@ def _ends(line: Centred, reach: Reach, step: float, risk: float) -> float:
         if reach.first <= edge <= reach.last:
             found += 0.5 * s * INV_SQRT_PI * value((edge - line.centre) * line.scale, line.y)
     core = 5.0 * max(SQRT_LN2 + line.y, s)
+    # So far out the profile is Lorentz's and the third derivative adds nothing; no line so broad is unresolved.
+    far = _FAR2 * max(1.0, s * s)
     for end in (reach.first, reach.last):
         x = abs(end - line.centre) * line.scale
+        r2 = x * x + line.y * line.y
+        if r2 > far:
+            found += 1.1 / (6.0 * math.pi) * s * s * x * line.y / (r2 * r2)
+            continue
         first, third = derivatives(x, line.y)
         found += min(1.1 * INV_SQRT_PI * s * s * (abs(first) / 12.0 + s * s * abs(third) / 360.0), 1.0)
         if x < core:

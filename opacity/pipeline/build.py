@@ -85,7 +85,7 @@ def build_table(
     _refuse_folders(path, log)
     count = allowed_cpus() if workers is None else workers
     spectra = compute_spectra(recipe, inputs.lines, count, quiet)
-    table = _checked_table(recipe, inputs, spectra.sigma, path, quiet)
+    table = _checked_table(recipe, inputs, spectra.sigma, path, count, quiet)
     table = replace(
         table, checks={**table.checks, "warnings": list(plan.warnings), "summation": _summation(recipe, spectra)}
     )
@@ -236,7 +236,9 @@ def _margin(recipe: Recipe) -> float:
     return max(step.cutoff for step in recipe.profile.cutoff.steps) + 1e-6
 
 
-def _checked_table(recipe: Recipe, inputs: Inputs, sigma: FloatArray, path: Path, quiet: bool) -> CrossSectionTable:
+def _checked_table(
+    recipe: Recipe, inputs: Inputs, sigma: FloatArray, path: Path, workers: int, quiet: bool
+) -> CrossSectionTable:
     """The table with its checks, made of the values as they will be stored."""
     grid = recipe.grid
     nodes = grid.nodes
@@ -257,7 +259,7 @@ def _checked_table(recipe: Recipe, inputs: Inputs, sigma: FloatArray, path: Path
         for node in np.ndindex(sigma.shape[:-1]):
             sigma[node] = sigma[node].astype(np.float32)
     with Progress("checks", len(grid.node_list()), "nodes", quiet) as progress:
-        report = run_checks(table, recipe, inputs.lines, inputs.seed, progress.step)
+        report = run_checks(table, recipe, inputs.lines, inputs.seed, progress.step, workers)
     return replace(table, checks=report.figures)
 
 

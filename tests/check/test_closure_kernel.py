@@ -110,6 +110,7 @@ def test_many_lines_add_up_to_the_sum_of_each():
                 assert found == pytest.approx(truth, rel=limit, abs=1e-8 * whole.in_reach), name
 
 
+@pytest.mark.nojit
 @pytest.mark.parametrize("y", [1e-10, 1e-4, 0.049, 0.051, 1.0, 5.9, 6.1, 1e3])
 @pytest.mark.parametrize("x", [0.0, 0.7, 3.0, 5.99, 6.01, 40.0, 99.0, 101.0, 1e4])
 def test_value_and_derivatives_agree_with_arbitrary_precision(x: float, y: float):
