@@ -18,7 +18,7 @@ from opacity.kernels.chi import chi_at
 from opacity.kernels.jit import jit, jit_exact, jit_inline
 from opacity.kernels.line_width import LOWEST_SHIFTED, voigt_half_width
 from opacity.kernels.node_line import SQRT_LN2, LineColumns
-from opacity.kernels.profile_tail import derivatives, share, tail, value
+from opacity.kernels.profile_tail import VERY_FAR, derivatives, share, tail, value, very_far
 from opacity.kernels.voigt import INV_SQRT_PI
 
 Array = NDArray[np.float64]
@@ -53,6 +53,13 @@ class Centred(NamedTuple):
     centre: float
     scale: float
     y: float
+
+
+class Part(NamedTuple):
+    """What of a profile is in reach, and the sum of K where the cut-off cuts it inside the grid."""
+
+    share: float
+    at_cut: float
 
 
 class Sampled(NamedTuple):
@@ -158,19 +165,33 @@ def _risk(s: float, y: float) -> float:
 
 
 @jit_inline
-def _ends(line: Centred, reach: Reach, step: float, risk: float) -> float:
+def _part(line: Centred, reach: Reach, chi: Array) -> Part:
+    """What of a profile is in reach, and its K at the cuts."""
+    low, high = line.nu0 - reach.cutoff, line.nu0 + reach.cutoff
+    left = (line.centre - max(low, reach.first)) * line.scale
+    right = (min(high, reach.last) - line.centre) * line.scale
+    if min(left, right) >= VERY_FAR and chi.shape[0] == 0 and not reach.plinth:
+        left_tail, left_value = very_far(left, line.y)
+        right_tail, right_value = very_far(right, line.y)
+        at_cut = (left_value if low >= reach.first else 0.0) + (right_value if high <= reach.last else 0.0)
+        return Part(1.0 - left_tail - right_tail, at_cut)
+    at_cut = 0.0
+    for edge in (low, high):
+        if reach.first <= edge <= reach.last:
+            at_cut += value((edge - line.centre) * line.scale, line.y)
+    return Part(share_within(line, reach, chi), at_cut)
+
+
+@jit_inline
+def _ends(line: Centred, reach: Reach, at_cut: float, step: float, risk: float) -> float:
     """How far the trapezoid sum of a profile may be off at the cut-off's steps and across the grid's ends.
 
-    Half a cell of the profile's value at each cut.  At the grid's ends the terms of Euler and Maclaurin's formula,
-    h^2/12 of the first and h^4/720 of the third derivative, with room to spare; lines of which an end cuts the
-    unresolved core count whole.
+    Half a cell of the profile's value at each cut, `at_cut`.  At the grid's ends the terms of Euler and Maclaurin's
+    formula, h^2/12 of the first and h^4/720 of the third derivative, with room to spare; lines of which an end cuts
+    the unresolved core count whole.
     """
     s = step * line.scale
-    found = 0.0
-    for side in (-1.0, 1.0):
-        edge = line.nu0 + side * reach.cutoff
-        if reach.first <= edge <= reach.last:
-            found += 0.5 * s * INV_SQRT_PI * value((edge - line.centre) * line.scale, line.y)
+    found = 0.5 * s * INV_SQRT_PI * at_cut
     core = 5.0 * max(SQRT_LN2 + line.y, s)
     # So far out the profile is Lorentz's and the third derivative adds nothing; no line so broad is unresolved.
     far = _FAR2 * max(1.0, s * s)
@@ -216,7 +237,7 @@ def add_closure(
             if weight == 0.0:
                 continue
             line = centred(wavenumber[j], shift[j], lorentz[j], doppler[j], pressure)
-            part = share_within(line, reach, chi)
+            part = _part(line, reach, chi)
             within = reach.first < line.centre < reach.last
             if even and within:
                 found = sampled(step * line.scale, line.y, (line.centre - reach.first) / step)
@@ -227,11 +248,11 @@ def add_closure(
                     gap = gap_at(nu, line.centre, gap)
                     step = nu[gap + 1] - nu[gap]
                 risk = _risk(step * line.scale, line.y)
-            in_reach += weight * part
-            if within and part > 0.0:
+            in_reach += weight * part.share
+            if within and part.share > 0.0:
                 inside += weight
                 unresolved += weight * risk
-            allowance += weight * _ends(line, reach, step, risk)
+            allowance += weight * _ends(line, reach, part.at_cut, step, risk)
         sums[0] += in_reach
         sums[1] += inside
         sums[2] += unresolved

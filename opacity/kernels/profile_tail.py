@@ -24,8 +24,9 @@ Array = NDArray[np.float64]
 
 FAR = 6.0
 _FAR2 = FAR * FAR
-_VERY_FAR2 = 1e4
-"""|z|^2 beyond which two terms of the series are good to 1e-11."""
+VERY_FAR = 100.0
+"""|z| beyond which two terms of the series are good to 2e-11."""
+_VERY_FAR2 = VERY_FAR * VERY_FAR
 _FLAT = 0.05
 """y/x below which arg z is its series, cut after the ninth power: 1e-14."""
 _M6 = 162.421875
@@ -123,6 +124,16 @@ def value(x: float, y: float) -> float:
     else:
         series = 1.0 + u * (0.5 + u * (0.75 + u * (1.875 + u * (6.5625 + u * (29.53125 + u * _M6 * (1.0 + 6.5 * u))))))
     return INV_SQRT_PI * (y * series.real - x * series.imag) / r2
+
+
+@jit_inline
+def very_far(x: float, y: float) -> tuple[float, float]:
+    """T and K for x >= VERY_FAR, both from one division."""
+    r2 = x * x + y * y
+    u = _inverse_square(x, y, r2)
+    series = 1.0 + u * (0.5 + u * 0.75)
+    integral = _angle(x, y) - (u * (0.25 + 0.1875 * u)).imag
+    return integral * _INV_PI, INV_SQRT_PI * (y * series.real - x * series.imag) / r2
 
 
 @jit

@@ -16,7 +16,7 @@ from opacity.check.run import run_checks
 from opacity.chi_factors import CHI_FACTORS, NO_CHI
 from opacity.cross_sections.exact import SQRT_LN2
 from opacity.cross_sections.prepare import LinesAtTemperature, NodeLines
-from opacity.kernels.profile_tail import derivatives, value
+from opacity.kernels.profile_tail import VERY_FAR, derivatives, tail, value, very_far
 
 from . import slow_closure as slow
 
@@ -134,6 +134,13 @@ def test_value_and_derivatives_agree_with_arbitrary_precision(x: float, y: float
     first, third = derivatives(x, y)
     assert first == pytest.approx(expected[1], rel=1e-12 if near else 2e-4, abs=1e-9 if near else 2.0 * x * left_out)
     assert third == pytest.approx(expected[2], rel=1e-12 if near else 2e-4, abs=1e-9 if near else 8.0 * x**3 * left_out)
+
+
+@pytest.mark.nojit
+def test_very_far_out_tail_and_value_are_those_of_the_whole_series():
+    for x in (VERY_FAR, 101.0, 3e3, 1e7):
+        for y in (0.0, 1e-12, 0.1, 4.9, 5.1, 99.0, 1e5):
+            assert very_far(x, y) == pytest.approx((tail(x, y), value(x, y)), rel=2e-11, abs=0.0)
 
 
 def test_the_plan_sees_lines_as_the_slow_account_does():
