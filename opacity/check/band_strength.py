@@ -110,11 +110,9 @@ def choose_pressure(
         return resolved[0].pressure if resolved else None
     whole, within = np.zeros(len(resolved)), np.zeros(len(resolved))
     for part in as_source(lines).stretches():
-        first, last = (
-            np.searchsorted(part.wavenumber, band.range[0]),
-            np.searchsorted(part.wavenumber, band.range[1], side="right"),
-        )
-        for temperature in {one.temperature for one in resolved}:
+        first = np.searchsorted(part.wavenumber, band.range[0])
+        last = np.searchsorted(part.wavenumber, band.range[1], side="right")
+        for temperature in dict.fromkeys(one.temperature for one in resolved):
             columns = part.at_temperature(temperature)
             for i, one in enumerate(resolved):
                 if one.temperature == temperature:
