@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from concurrent.futures import Executor
 
 import numpy as np
 
-from opacity.check.closure import JUDGED_BELOW, Closure, share_within
+from opacity.check.closure import JUDGED_BELOW, Closure, strength_between
 from opacity.check.result import CANNOT_JUDGE, CheckResult, judge
 from opacity.check.spectra import Spectra, interpolated, nodes_of
 from opacity.cross_sections.prepare import PreparedLines
@@ -36,6 +37,7 @@ def check_band(
     pressure: float | None,
     lines: LineSource | PreparedLines,
     profile: Profile,
+    executor: Executor | None = None,
 ) -> CheckResult:
     """Judge one band at the published temperature and a pressure (bar) at which the table resolves it.
 
@@ -58,7 +60,7 @@ def check_band(
     limit = STANDARD_DEVIATIONS * band.uncertainty
     between = ""
     if not np.any(spectra.temperature == band.temperature):
-        cost = _interpolation_cost(band, spectra, pressure, as_source(lines), profile)
+        cost = _interpolation_cost(band, spectra, pressure, as_source(lines), profile, executor)
         between = f", interpolated at a cost of {cost:+.1e}"
         if not abs(cost) <= 0.5 * limit:
             detail = (
@@ -73,7 +75,12 @@ def check_band(
 
 
 def _interpolation_cost(
-    band: BandStrength, spectra: Spectra, pressure: float, source: LineSource, profile: Profile
+    band: BandStrength,
+    spectra: Spectra,
+    pressure: float,
+    source: LineSource,
+    profile: Profile,
+    executor: Executor | None,
 ) -> float:
     """How far interpolating in temperature moves the band's integral, relative; from the lines alone."""
     nu = spectra.wavenumber
@@ -81,7 +88,8 @@ def _interpolation_cost(
     sample = nu[part[:: max(part.size // SAMPLE, 1)]]
     temperatures = [*(float(t) for t in spectra.temperature), band.temperature]
     requests = [(temperature, pressure, sample) for temperature in temperatures]
-    *at_nodes, exact = exact_points(source, requests, profile.cutoff.at, profile.plinth, profile.chi_table)
+    choice = profile.cutoff.at, profile.plinth, profile.chi_table
+    *at_nodes, exact = exact_points(source, requests, *choice, executor)
     axes = spectra.temperature, np.array([pressure])
     between = interpolate.interpolate(np.array(at_nodes)[:, None, :], *axes, band.temperature, pressure)
     return float(np.sum(between) / max(float(np.sum(exact)), 1e-300) - 1.0)
@@ -98,19 +106,20 @@ def choose_pressure(
     near = [one for one in accounts if abs(one.temperature - band.temperature) <= nearest * (1.0 + 1e-9)]
     resolved = [one for one in near if one.at_risk <= JUDGED_BELOW]
 
-    source = as_source(lines)
-
-    def change(one: Closure) -> float:
-        whole, within = 0.0, 0.0
-        for part in source.stretches():
-            node = part.at(one.temperature, one.pressure)
-            share = share_within(node, *band.range, profile.cutoff.at(one.pressure), profile.plinth, profile.chi_table)
-            inside = (node.wavenumber >= band.range[0]) & (node.wavenumber <= band.range[1])
-            whole += float(np.sum(node.strength[inside]))
-            within += float(np.sum(node.strength * share))
-        return one.at_risk + abs(within / max(whole, 1e-300) - 1.0)
-
-    return min(resolved, key=change).pressure if resolved else None
+    if len(resolved) < 2:
+        return resolved[0].pressure if resolved else None
+    whole, within = np.zeros(len(resolved)), np.zeros(len(resolved))
+    for part in as_source(lines).stretches():
+        first = np.searchsorted(part.wavenumber, band.range[0])
+        last = np.searchsorted(part.wavenumber, band.range[1], side="right")
+        for temperature in dict.fromkeys(one.temperature for one in resolved):
+            columns = part.at_temperature(temperature)
+            for i, one in enumerate(resolved):
+                if one.temperature == temperature:
+                    whole[i] += np.sum(columns.strength[first:last])
+                    within[i] += strength_between(columns, one.pressure, band.range, profile)
+    change = [one.at_risk for one in resolved] + np.abs(within / np.maximum(whole, 1e-300) - 1.0)
+    return resolved[int(np.argmin(change))].pressure
 
 
 def _spectrum_at(spectra: Spectra, temperature: float, pressure: float) -> FloatArray | None:

@@ -7,23 +7,19 @@ for the lines is told apart from a wrong table.
 
 from __future__ import annotations
 
+import math
 from dataclasses import asdict, dataclass
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
-from opacity.check.profile_share import (
-    sampling_offset,
-    sampling_risk,
-    share_between,
-    spacing_at,
-    weighted_share_between,
-)
 from opacity.check.result import AGREES, CANNOT_JUDGE, DIFFERS, CheckResult
-from opacity.cross_sections.exact import chi_factors, voigt_derivatives, voigt_profile
-from opacity.cross_sections.prepare import NodeLines
+from opacity.chi_factors import NO_CHI
+from opacity.cross_sections.prepare import LinesAtTemperature, NodeLines
 from opacity.grids import FloatArray, cell_widths
+from opacity.kernels.closure import Reach, add_closure, resolution, strength_in_reach
+from opacity.kernels.node_line import LineColumns
+from opacity.recipe.model import Profile
 
 OWN_ERROR = 6e-7
 """What the expectation (profile shares, 2e-7) and the storage (f4, 6e-8 a value) may be off by themselves."""
@@ -105,32 +101,52 @@ def closure_of(
     node: NodeLines, wavenumber: FloatArray, sigma: FloatArray, cutoff: float, plinth: bool, uniform: bool
 ) -> Closure:
     """The account of one spectrum (n_nu,) computed from the lines of `node`."""
-    sums = closure_sums(node, wavenumber, cutoff, plinth, uniform)
+    sums = closure_sums(node.per_bar(), 1.0, wavenumber, cutoff, plinth, uniform)
     integral = float(np.sum(cell_widths(wavenumber) * sigma))
     return closure_from(sums, node.temperature, node.pressure, integral)
 
 
 def closure_sums(
-    node: NodeLines,
+    lines: LinesAtTemperature,
+    pressure: float,
     wavenumber: FloatArray,
     cutoff: float,
     plinth: bool,
     uniform: bool,
     chi: FloatArray | None = None,
 ) -> ClosureSums:
-    """What the lines of a node, or some of them, add up to on a grid."""
-    share = share_within(node, float(wavenumber[0]), float(wavenumber[-1]), cutoff, plinth, chi)
-    weighed = node.strength * (share > 0.0)
-    risk = sampling_risk(node, wavenumber)
-    inside = (node.centre > wavenumber[0]) & (node.centre < wavenumber[-1])
-    return ClosureSums(
-        strength=float(np.sum(node.strength)),
-        in_reach=float(np.sum(node.strength * share)),
-        inside=float(np.sum(weighed * inside)),
-        risk=float(np.sum(weighed * risk * inside)),
-        sampling=_predicted_sampling(node, wavenumber, inside) if uniform else None,
-        allowance=_ends_allowance(node, wavenumber, cutoff, risk),
-    )
+    """What the lines of a node, or some of them, add up to on a grid; `pressure` in bar."""
+    strength = float(np.sum(lines.strength))
+    if wavenumber.size < 2:
+        return ClosureSums(strength, sampling=None, allowance=strength)
+    nu = np.ascontiguousarray(wavenumber)
+    reach = Reach(float(nu[0]), float(nu[-1]), cutoff, plinth)
+    sums = np.zeros(5)
+    add_closure(sums, nu, _columns(lines), pressure, reach, uniform, NO_CHI if chi is None else chi)
+    in_reach, inside, risk, sampling, allowance = (float(one) for one in sums)
+    known = uniform and not math.isnan(sampling)
+    return ClosureSums(strength, in_reach, inside, risk, sampling if known else None, allowance)
+
+
+def strength_between(
+    lines: LinesAtTemperature, pressure: float, between: tuple[float, float], profile: Profile
+) -> float:
+    """Sum of the lines' strengths times what of their profiles lies in their cut-off and between two wavenumbers,
+    cm/molecule; `pressure` in bar.
+    """
+    reach = Reach(*between, profile.cutoff.at(pressure), profile.plinth)
+    return float(strength_in_reach(_columns(lines), pressure, reach, profile.chi_table))
+
+
+def resolution_of(lines: LinesAtTemperature, pressure: float, wavenumber: FloatArray) -> tuple[float, float, float]:
+    """Of the lines centred on a grid: strength, what of it the step does not resolve (cm/molecule), and the narrowest
+    half-width (HWHM, cm-1), infinite without lines; `pressure` in bar.
+    """
+    return resolution(np.ascontiguousarray(wavenumber), _columns(lines), pressure)
+
+
+def _columns(lines: LinesAtTemperature) -> LineColumns:
+    return LineColumns(lines.wavenumber, lines.shift, lines.strength, lines.lorentz, lines.doppler)
 
 
 def closure_from(sums: ClosureSums, temperature: float, pressure: float, integral: float) -> Closure:
@@ -151,66 +167,6 @@ def closure_from(sums: ClosureSums, temperature: float, pressure: float, integra
         at_risk=at_risk,
         allowance=min(allowance / expected, 1.0) if expected > 0.0 else 1.0,
     )
-
-
-def share_within(
-    node: NodeLines, first: float, last: float, cutoff: float, plinth: bool, chi: FloatArray | None = None
-) -> FloatArray:
-    """Share of each line's profile, times its chi factors, that lies inside its cut-off and between two wavenumbers,
-    (n_lines,).
-    """
-    lower = np.maximum(node.wavenumber - cutoff, first)
-    upper = np.minimum(node.wavenumber + cutoff, last)
-    if plinth:
-        # The cut-off counts from the unshifted wavenumber; further than it from the centre the floor holds.
-        lower, upper = np.maximum(lower, node.centre - cutoff), np.minimum(upper, node.centre + cutoff)
-    if chi is None or not len(chi):
-        share = share_between(node, lower, upper)
-    else:
-        share = weighted_share_between(node, lower, upper, chi)
-    if plinth:
-        at = np.full(node.centre.size, cutoff)
-        edge = chi_factors(chi, at) * _at_distance(node, at)
-        share = np.maximum(share - edge * np.maximum(upper - lower, 0.0), 0.0)
-    return share
-
-
-def _predicted_sampling(node: NodeLines, wavenumber: FloatArray, inside: NDArray[np.bool_]) -> float | None:
-    """What sampling on an even grid adds to the sum, cm/molecule; None where it can't be predicted for some line."""
-    offset = sampling_offset(node, float(wavenumber[0]), float(wavenumber[1] - wavenumber[0]))[inside]
-    if not np.all(np.isfinite(offset[node.strength[inside] > 0.0])):
-        return None
-    return float(np.sum(node.strength[inside] * np.nan_to_num(offset)))
-
-
-def _at_distance(node: NodeLines, distance: FloatArray) -> FloatArray:
-    """Each line's profile (per cm-1) at a distance from its centre, (n_lines,)."""
-    return voigt_profile(distance, node.doppler, node.lorentz)
-
-
-def _ends_allowance(node: NodeLines, wavenumber: FloatArray, cutoff: float, risk: FloatArray) -> float:
-    """How far the trapezoid sum may be off at the cut-off's steps and at lines across the grid's ends, cm/molecule.
-
-    Half a cell of the profile's value at each cut.  At the grid's ends the terms of Euler and Maclaurin's formula,
-    h^2/12 of the first and h^4/720 of the third derivative, with room to spare; lines of which an end cuts the
-    unresolved core count whole.
-    """
-    if wavenumber.size < 2:
-        return float(np.sum(node.strength))
-    step = spacing_at(wavenumber, node.centre)
-    at_cut = np.zeros(node.centre.size)
-    for side in (-1.0, 1.0):
-        edge = node.wavenumber + side * cutoff
-        within = (edge >= wavenumber[0]) & (edge <= wavenumber[-1])
-        at_cut += np.where(within, 0.5 * step * _at_distance(node, np.abs(edge - node.centre)), 0.0)
-    near_end = np.zeros(node.centre.size)
-    for end in (wavenumber[0], wavenumber[-1]):
-        distance = np.abs(node.centre - end)
-        first, third = voigt_derivatives(distance, node.doppler, node.lorentz)
-        term = step**2 / 12.0 * np.abs(first) + step**4 / 360.0 * np.abs(third)
-        near_end += np.minimum(1.1 * term, 1.0)
-        near_end += np.where(distance < 5.0 * np.maximum(node.doppler + node.lorentz, step), risk, 0.0)
-    return float(np.sum(node.strength * (at_cut + near_end)))
 
 
 def judge_closure(accounts: list[Closure], tolerance: float) -> CheckResult:

@@ -11,6 +11,8 @@ from opacity.cross_sections.prepare import NodeLines
 from opacity.grids import FloatArray
 
 SQRT_LN2 = math.sqrt(math.log(2.0))
+PAIRS_AT_ONCE = 20_000
+"""Pairs of a point and a line that are computed at once."""
 
 
 def voigt_profile(distance: FloatArray, doppler: FloatArray | float, lorentz: FloatArray | float) -> FloatArray:
@@ -60,36 +62,26 @@ def exact_spectrum(
 def exact_at(
     node: NodeLines, points: FloatArray, cutoff: float, plinth: bool = False, chi: FloatArray | None = None
 ) -> FloatArray:
-    """The same sum, (n_points,), point by point over the lines in reach: quicker for few points and many lines.
+    """The same sum, (n_points,), over pairs of a point and a line in its reach: quicker for few points and many lines.
 
     The lines of `node` must be sorted by unshifted wavenumber; the points may stand in any order.
     """
     sigma = np.zeros(points.size)
     low = np.searchsorted(node.wavenumber, points - cutoff - 1e-6)
-    high = np.searchsorted(node.wavenumber, points + cutoff + 1e-6)
-    for i, point in enumerate(points):
-        lines = np.arange(low[i], high[i])
-        lines = lines[np.abs(point - node.wavenumber[lines]) <= cutoff]
-        widths = node.doppler[lines], node.lorentz[lines]
-        distance = point - node.centre[lines]
+    count = np.searchsorted(node.wavenumber, points + cutoff + 1e-6) - low
+    # Points together that make long enough arrays of pairs: numpy's work on each array is worth its start then.
+    batch = np.cumsum(count) // PAIRS_AT_ONCE
+    for group in np.split(np.arange(points.size), np.flatnonzero(np.diff(batch)) + 1):
+        point = np.repeat(group, count[group])
+        place = np.arange(point.size) - np.repeat(np.cumsum(count[group]) - count[group], count[group])
+        line = low[point] + place
+        within = np.abs(points[point] - node.wavenumber[line]) <= cutoff
+        point, line = point[within], line[within]
+        widths = node.doppler[line], node.lorentz[line]
+        distance = points[point] - node.centre[line]
         profile = chi_factors(chi, distance) * voigt_profile(distance, *widths)
         if plinth:
-            edge = np.full(lines.size, cutoff)
+            edge = np.full(line.size, cutoff)
             profile = np.maximum(profile - chi_factors(chi, edge) * voigt_profile(edge, *widths), 0.0)
-        sigma[i] = np.sum(node.strength[lines] * profile)
+        sigma += np.bincount(point, node.strength[line] * profile, points.size)
     return sigma
-
-
-def voigt_derivatives(distance: FloatArray, doppler: FloatArray, lorentz: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """First and third derivative of the Voigt profile with respect to wavenumber, cm2 and cm4, (n,) each.
-
-    From w' = -2 z w + 2i/sqrt(pi) and its derivatives (Abramowitz & Stegun 7.1.20), z = x + iy.
-    """
-    scale = SQRT_LN2 / doppler
-    z = scale * (distance + 1j * lorentz)
-    w = wofz(z)
-    first = -2.0 * z * w + 2j / math.sqrt(math.pi)
-    second = -2.0 * w - 2.0 * z * first
-    third = -4.0 * first - 2.0 * z * second
-    height = scale / math.sqrt(math.pi)
-    return height * scale * first.real, height * scale**3 * third.real

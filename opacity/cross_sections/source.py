@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import Executor
 from dataclasses import dataclass
 from typing import Protocol
 
 import numpy as np
 
 from opacity.cross_sections.exact import exact_at
-from opacity.cross_sections.prepare import PreparedLines
+from opacity.cross_sections.prepare import NodeLines, PreparedLines
 from opacity.grids import FloatArray
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
@@ -19,6 +21,8 @@ from opacity.molecule.broadening import Assumption
 
 LINES_AT_ONCE = 1_000_000
 """Lines that are prepared at the same time: about 400 MB with everything that is made of them."""
+POINTS_AT_ONCE = 32
+"""Points whose exact sum is one job of a thread."""
 
 
 class LineSource(Protocol):
@@ -58,9 +62,11 @@ def exact_points(
     cutoff_at: Callable[[float], float],
     plinth: bool,
     chi: FloatArray | None = None,
+    executor: Executor | None = None,
 ) -> list[FloatArray]:
     """The exact sum at the points of each request, (n,) each, cm2/molecule; `cutoff_at` gives the cut-off (cm-1) at a
-    pressure (bar), `chi` is a table of chi factors.  The lines are read window by window, once for all requests.
+    pressure (bar), `chi` is a table of chi factors.  The lines are read window by window, once for all requests; with
+    an executor of threads points are computed side by side.
     """
     found = [np.zeros(points.size) for _, _, points in requests]
     if not requests:
@@ -70,12 +76,26 @@ def exact_points(
     for group in point_groups(everywhere, source):
         lower, upper = float(group[0]) - margin - 1e-6, float(group[-1]) + margin + 1e-6
         for lines in pieces(source, lower, upper):
-            for number, (temperature, pressure, points) in enumerate(requests):
-                here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
-                if here.size:
-                    node = lines.at(temperature, pressure)
-                    found[number][here] += exact_at(node, points[here], cutoff_at(pressure), plinth, chi)
+            for temperature in dict.fromkeys(temperature for temperature, _, _ in requests):
+                columns = lines.at_temperature(temperature)
+                for number, (at, pressure, points) in enumerate(requests):
+                    here = np.flatnonzero((points >= group[0]) & (points <= group[-1]))
+                    if at == temperature and here.size:
+                        choice = cutoff_at(pressure), plinth, chi
+                        found[number][here] += _exact_here(columns.at(pressure), points[here], choice, executor)
     return found
+
+
+def _exact_here(
+    node: NodeLines, points: FloatArray, choice: tuple[float, bool, FloatArray | None], executor: Executor | None
+) -> FloatArray:
+    """The exact sum at some points, (n,), a few of them at a time; `choice` is cut-off, plinth and chi factors."""
+    groups = np.array_split(points, math.ceil(points.size / POINTS_AT_ONCE))
+
+    def one(group: FloatArray) -> FloatArray:
+        return exact_at(node, group, *choice)
+
+    return np.concatenate(list(map(one, groups) if executor is None else executor.map(one, groups)))
 
 
 def pieces(source: LineSource, lower: float, upper: float) -> Iterator[PreparedLines]:

@@ -2,10 +2,13 @@
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 from numpy.typing import NDArray
 
 from opacity.constants import DOPPLER_HWHM, REFERENCE_TEMPERATURE
+from opacity.kernels.jit import jit_inline
 
 Array = NDArray[np.float64]
 
@@ -36,9 +39,10 @@ def pressure_half_width(gamma: Array, exponent: Array, temperature: float, press
     return np.asarray(pressure * np.sum(gamma * (REFERENCE_TEMPERATURE / temperature) ** exponent, axis=0))
 
 
-def voigt_half_width(doppler: Array, lorentz: Array) -> Array:
-    """Half-width at half maximum of Voigt profiles from both half-widths, in their unit, (n_lines,).
+@jit_inline
+def voigt_half_width(doppler: float, lorentz: float) -> float:
+    """Half-width at half maximum of a Voigt profile from both half-widths, in their unit.
 
     Approximation with 0.02 % error: Olivero & Longbothum 1977, JQSRT 17, 233.
     """
-    return np.asarray(0.5346 * lorentz + np.sqrt(0.2166 * lorentz**2 + doppler**2))
+    return 0.5346 * lorentz + math.sqrt(0.2166 * lorentz**2 + doppler**2)

@@ -214,7 +214,7 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
 
     def check(table: Assembly) -> dict[str, Any]:
         with Progress("checks", len(nodes), "nodes", job.quiet) as progress:
-            report = run_checks(table, recipe, job.inputs.lines, job.inputs.seed, progress.step)
+            report = run_checks(table, recipe, job.inputs.lines, job.inputs.seed, progress.step, job.plan.workers)
         still_ours()
         return {**report.figures, "warnings": list(job.plan.warnings), "summation": _summation(recipe, tiles)}
 

@@ -17,10 +17,13 @@ from opacity.recipe.model import Recipe
 # For the estimates of time and memory only; measured (DEVELOPERS.md).
 VALUES_STORED_PER_SECOND = 2e7
 """Values that are packed, hashed, written and read back in a second."""
-LINES_CHECKED_PER_SECOND = 1e6
+LINES_CHECKED_PER_SECOND = 1e7
 """Lines of one node that closure goes through in a second."""
-AUDIT_SECONDS = 0.015
-"""Time to recompute the points of one node or cell exactly."""
+AUDIT_SECONDS = 0.01
+"""Time to choose points of one node or cell and to go through them, their profiles apart."""
+POINTS_AUDITED = 200
+EXACT_PROFILES_PER_SECOND = 1.5e7
+"""Profile values of the exact sum in a second."""
 MOST_AUDITED = 24
 BYTES_A_RECORD = 600
 """Memory that reading a record takes at its peak."""
@@ -124,7 +127,8 @@ def _calibration(recipe: Recipe, source: LineSource) -> float:
     return float(np.clip(took / predicted, 0.1, 30.0)) if predicted > 0.0 else 1.0
 
 
-def seconds_besides(nodes: int, points: int, lines: int) -> float:
-    """Time of checks and writing on one core."""
-    checks = nodes * lines / LINES_CHECKED_PER_SECOND + min(nodes, MOST_AUDITED) * AUDIT_SECONDS
+def seconds_besides(nodes: int, points: int, lines: int, in_reach: float) -> float:
+    """Time of checks and writing on one core; `in_reach` lines reach a point."""
+    one_audit = AUDIT_SECONDS + POINTS_AUDITED * in_reach / EXACT_PROFILES_PER_SECOND
+    checks = nodes * lines / LINES_CHECKED_PER_SECOND + min(nodes, MOST_AUDITED) * one_audit
     return nodes * points / VALUES_STORED_PER_SECOND + checks

@@ -9,13 +9,12 @@ from typing import Any
 
 import numpy as np
 
-from opacity.check.profile_share import sampling_risk
+from opacity.check.closure import resolution_of
 from opacity.chi_factors import CHI_FACTORS
 from opacity.cross_sections.prepare import PreparedLines
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource
 from opacity.cross_sections.tolerance import regions
 from opacity.errors import ResourceError, problem
-from opacity.kernels.line_width import voigt_half_width
 from opacity.molecule.partition_function import STEP, PartitionFunction, editions_differ
 from opacity.pipeline.inputs import Inputs, refuse_invalid_temperatures
 from opacity.pipeline.needs import amount_of, needs_of, seconds_besides, workers_that_fit
@@ -117,7 +116,7 @@ def make_plan(
         profile_values=amount.values,
         by_cells=amount.by_cells,
         predicted_error=regions(recipe.profile.tolerance, recipe.profile.plinth).predicted_error,
-        seconds=amount.seconds + seconds_besides(nodes, points, len(lines)),
+        seconds=amount.seconds + seconds_besides(nodes, points, len(lines), amount.values / (nodes * points)),
         memory=needs.memory,
         memory_per_worker=needs.memory_per_worker,
         memory_available=budget,
@@ -161,19 +160,16 @@ def _coarse_nodes(recipe: Recipe, source: LineSource) -> list[NodeResolution]:
     nu, nodes = recipe.grid.wavenumber, recipe.grid.node_list()
     sums = np.zeros((len(nodes), 2))
     narrowest = np.full(len(nodes), np.inf)
+    rows: dict[float, list[int]] = {}
+    for row, (temperature, _) in enumerate(nodes):
+        rows.setdefault(temperature, []).append(row)
     for lines in _some_stretches(source, float(nu[0]), float(nu[-1])):
-        strengths: dict[float, Any] = {}
-        for row, (temperature, pressure) in enumerate(nodes):
-            if temperature not in strengths:
-                strengths = {temperature: lines.strengths(temperature)}
-            node = lines.at(temperature, pressure, strengths[temperature])
-            inside = (node.centre >= nu[0]) & (node.centre <= nu[-1])
-            if not inside.any():
-                continue
-            width = voigt_half_width(node.doppler, node.lorentz)
-            narrowest[row] = min(narrowest[row], float(width[inside].min()))
-            risk = sampling_risk(node, nu)[inside]
-            sums[row] += np.sum(node.strength[inside]), np.sum(node.strength[inside] * risk)
+        for temperature, here in rows.items():
+            columns = lines.at_temperature(temperature)
+            for row in here:
+                strength, unresolved, width = resolution_of(columns, nodes[row][1], nu)
+                sums[row] += strength, unresolved
+                narrowest[row] = min(narrowest[row], width)
     shares = sums[:, 1] / np.maximum(sums[:, 0], 1e-300)
     coarse = [
         NodeResolution(*node, float(share), float(width))

@@ -3,7 +3,8 @@
     python tests/bench/engine.py FOLDER_OF_REAL_LINES
 
 By cells against point by point on real lines of H2O: over cut-offs, pressures and grids even in log; with 1 and 2
-workers; then a generated list of 10^6 lines on 10^6 points, and what of a node's time is the making of line columns.
+workers; then a generated list of 10^6 lines on 10^6 points, what of a node's time is the making of line columns, and
+the account of a node's lines beside their sum.
 Each is repeated and the best time counts, since other work on the machine only ever adds to it.
 """
 
@@ -17,6 +18,7 @@ from pathlib import Path
 
 import numpy as np
 
+from opacity.check.closure import closure_sums
 from opacity.cross_sections.compute import NodeSum, add_spectra
 from opacity.cross_sections.exact import exact_at
 from opacity.cross_sections.prepare import LinesAtTemperature, PreparedLines, prepare
@@ -118,6 +120,16 @@ def setup(prepared: PreparedLines) -> None:
     )
 
 
+def closure(prepared: PreparedLines) -> None:
+    """A node's account beside its sum, ns a line, at pressures that do and do not resolve the lines."""
+    nu, lines = np.linspace(3400.0, 4900.0, 150001), prepared.at_temperature(TEMPERATURE)
+    for pressure in (1e-4, 0.1, 10.0):
+        account = best(lambda: closure_sums(lines, pressure, nu, 25.0, False, True))  # noqa: B023
+        node = timed(lines, nu, pressure, 25.0, 1e-3)["one"]
+        per_line = 1e9 / len(prepared)
+        print(f"closure at {pressure:g} bar: {account * per_line:.0f} ns a line, its sum {node * per_line:.0f}")
+
+
 if __name__ == "__main__":
     water = read_lines(Path(sys.argv[1]) / "H2O.par")
     made = prepare(water, partition_function="TIPS-2021", abundance="terrestrial", broadeners={"air": 1.0})
@@ -125,3 +137,4 @@ if __name__ == "__main__":
     real_lines(made)
     generated_lines(1_000_000, 1_000_000)
     setup(made)
+    closure(made)

@@ -19,6 +19,7 @@ from opacity.check.audit import (
 )
 from opacity.check.spectra import interpolated
 from opacity.cross_sections.exact import exact_spectrum
+from opacity.cross_sections.prepare import LinesAtTemperature
 
 
 def audit_of(case, seed, values=None):
@@ -65,13 +66,13 @@ def test_a_large_grid_is_audited_at_its_corners_too(make_case, monkeypatch):
         "pressure = { start = 1e-3, stop = 1.0, count = 4, spacing = 'log' }",
     )
     seen = []
-    real = type(case.lines).at
+    real = LinesAtTemperature.at
 
-    def watched(self, temperature, pressure, strength=None):
-        seen.append((temperature, pressure))
-        return real(self, temperature, pressure, strength)
+    def watched(self, pressure):
+        seen.append((self.temperature, pressure))
+        return real(self, pressure)
 
-    monkeypatch.setattr(type(case.lines), "at", watched)
+    monkeypatch.setattr(LinesAtTemperature, "at", watched)
     assert audit_of(case, 7).nodes == MOST_NODES
     assert len(seen) == len(set(seen)) == MOST_NODES
     assert {(200.0, 1e-3), (200.0, 1.0), (600.0, 1e-3), (600.0, 1.0)} <= set(seen)
