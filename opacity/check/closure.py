@@ -98,10 +98,16 @@ class ClosureSums:
 
 
 def closure_of(
-    node: NodeLines, wavenumber: FloatArray, sigma: FloatArray, cutoff: float, plinth: bool, uniform: bool
+    node: NodeLines,
+    wavenumber: FloatArray,
+    sigma: FloatArray,
+    cutoff: float,
+    plinth: bool,
+    uniform: bool,
+    chi: FloatArray | None = None,
 ) -> Closure:
     """The account of one spectrum (n_nu,) computed from the lines of `node`."""
-    sums = closure_sums(node.per_bar(), 1.0, wavenumber, cutoff, plinth, uniform)
+    sums = closure_sums(node.per_bar(), 1.0, wavenumber, cutoff, plinth, uniform, chi)
     integral = float(np.sum(cell_widths(wavenumber) * sigma))
     return closure_from(sums, node.temperature, node.pressure, integral)
 

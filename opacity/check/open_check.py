@@ -88,8 +88,9 @@ def recheck(
     lines: LineSource | PreparedLines,
     seed: int,
     progress: Callable[[], None] = lambda: None,
+    workers: int = 1,
 ) -> CheckReport:
-    """Integrity and all checks of the physics, recomputed from the recipe's lines."""
+    """Integrity and all checks of the physics, recomputed from the recipe's lines by so many threads."""
     integrity = check_integrity(table)
-    report = run_checks(table, recipe, lines, seed, progress)
+    report = run_checks(table, recipe, lines, seed, progress, workers)
     return CheckReport((integrity, *report.results), report.figures)

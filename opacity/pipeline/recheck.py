@@ -13,6 +13,7 @@ from opacity.errors import InputError, OpacityError, TableError, problem
 from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.plan import table_name
 from opacity.pipeline.progress import Progress
+from opacity.pipeline.resources import allowed_cpus
 from opacity.recipe.load import load_recipe
 from opacity.recipe.model import Recipe
 from opacity.tables.read import Table, open_table
@@ -89,5 +90,5 @@ def _again(table: Table, recipe: Recipe, inputs: Inputs, seed: int | None, quiet
     nodes = table.temperature.size if table.profile else table.temperature.size * table.pressure.size
     with Progress("checks", nodes, "nodes", quiet) as progress:
         chosen = inputs.seed if seed is None else seed
-        report = recheck(table, recipe, inputs.lines, chosen, progress.step)
+        report = recheck(table, recipe, inputs.lines, chosen, progress.step, allowed_cpus())
     return report, f"recomputed from {recipe.path} with seed {chosen}"

@@ -6,6 +6,7 @@ The kernels of `opacity.kernels.closure` are held against it.
 from __future__ import annotations
 
 import math
+from itertools import pairwise
 
 import numpy as np
 from scipy.special import wofz
@@ -147,7 +148,7 @@ def closure_sums(
         inside=float(np.sum(weighed * inside)),
         risk=float(np.sum(weighed * risk * inside)),
         sampling=_predicted_sampling(node, wavenumber, inside) if uniform else None,
-        allowance=_ends_allowance(node, wavenumber, cutoff, risk),
+        allowance=_ends_allowance(node, wavenumber, cutoff, risk, chi),
     )
 
 
@@ -186,7 +187,9 @@ def _at_distance(node: NodeLines, distance: FloatArray) -> FloatArray:
     return voigt_profile(distance, node.doppler, node.lorentz)
 
 
-def _ends_allowance(node: NodeLines, wavenumber: FloatArray, cutoff: float, risk: FloatArray) -> float:
+def _ends_allowance(
+    node: NodeLines, wavenumber: FloatArray, cutoff: float, risk: FloatArray, chi: FloatArray | None
+) -> float:
     """How far the trapezoid sum may be off at the cut-off's steps and at lines across the grid's ends, cm/molecule.
 
     Half a cell of the profile's value at each cut.  At the grid's ends the terms of Euler and Maclaurin's formula,
@@ -200,7 +203,8 @@ def _ends_allowance(node: NodeLines, wavenumber: FloatArray, cutoff: float, risk
     for side in (-1.0, 1.0):
         edge = node.wavenumber + side * cutoff
         within = (edge >= wavenumber[0]) & (edge <= wavenumber[-1])
-        at_cut += np.where(within, 0.5 * step * _at_distance(node, np.abs(edge - node.centre)), 0.0)
+        distance = np.abs(edge - node.centre)
+        at_cut += np.where(within, 0.5 * step * chi_factors(chi, distance) * _at_distance(node, distance), 0.0)
     near_end = np.zeros(node.centre.size)
     for end in (wavenumber[0], wavenumber[-1]):
         distance = np.abs(node.centre - end)
@@ -208,7 +212,24 @@ def _ends_allowance(node: NodeLines, wavenumber: FloatArray, cutoff: float, risk
         term = step**2 / 12.0 * np.abs(first) + step**4 / 360.0 * np.abs(third)
         near_end += np.minimum(1.1 * term, 1.0)
         near_end += np.where(distance < 5.0 * np.maximum(node.doppler + node.lorentz, step), risk, 0.0)
-    return float(np.sum(node.strength * (at_cut + near_end)))
+    return float(np.sum(node.strength * (at_cut + near_end + _chi_steps(node, wavenumber, cutoff, step, chi))))
+
+
+def _chi_steps(
+    node: NodeLines, wavenumber: FloatArray, cutoff: float, step: FloatArray, chi: FloatArray | None
+) -> FloatArray:
+    """Jumps and bends where rows of chi factors meet, inside grid and cut-off, (n_lines,)."""
+    found = np.zeros(node.centre.size)
+    for inner, outer in pairwise([] if chi is None else chi):
+        limit = inner[0]
+        before, after = (row[1] * np.exp(-row[2] * limit) for row in (inner, outer))
+        bend = abs(outer[2] * after - inner[2] * before)
+        height = _at_distance(node, np.full(node.centre.size, limit))
+        for side in (-1.0, 1.0):
+            place = node.centre + side * limit
+            within = (place >= wavenumber[0]) & (place <= wavenumber[-1]) & (np.abs(place - node.wavenumber) <= cutoff)
+            found += np.where(within, step * height * (0.6 * abs(after - before) + 0.1 * step * bend), 0.0)
+    return found
 
 
 def voigt_derivatives(distance: FloatArray, doppler: FloatArray, lorentz: FloatArray) -> tuple[FloatArray, FloatArray]:

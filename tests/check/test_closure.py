@@ -11,6 +11,9 @@ import pytest
 from opacity.check.closure import closure_of, judge_closure
 from opacity.check.run import run_checks
 from opacity.check.spectra import is_uniform
+from opacity.chi_factors import CHI_FACTORS
+from opacity.cross_sections.exact import exact_spectrum
+from opacity.cross_sections.prepare import NodeLines
 from opacity.grids import cell_widths
 
 EVEN = "{ start = 2145.0, stop = 2149.0, step = 0.004 }"
@@ -23,6 +26,26 @@ COLD_AND_THIN = "temperature = [30.0, 296.0]\npressure = [1e-9, 1e-6]"
 def closure_row(case, values=None):
     report = run_checks(values or case.values, case.recipe, case.lines, 1)
     return report.results[0], report.figures["closure"]
+
+
+@pytest.mark.parametrize("name", sorted(CHI_FACTORS))
+def test_right_spectra_with_chi_factors_agree(name):
+    """The exact sum itself, wherever jumps and bends of the factors fall: within tolerance and allowance."""
+    rng = np.random.default_rng(2)
+    chi = CHI_FACTORS[name].table()
+    accounts = []
+    for case in range(60):
+        step = 10.0 ** rng.uniform(-0.5, 0.3)
+        nu = 2000.0 + step * np.arange(1001)
+        place = np.sort(rng.uniform(nu[0], nu[-1], 2)) if case else np.array([2500.0])
+        lines = [place, place, np.full(place.size, 1e-20), np.full(place.size, 0.05), np.full(place.size, step * 1.2)]
+        node = NodeLines(296.0, 1.0, *lines)
+        cutoff = 1e4 if case % 2 else 10.0 ** rng.uniform(1.0, 3.0)
+        sigma = exact_spectrum(node, nu, cutoff, chi=chi)
+        accounts.append(closure_of(node, nu, sigma, cutoff, False, True, chi))
+    judged = [one for one in accounts if one.can_be_judged]
+    assert len(judged) > 40
+    assert judge_closure(judged, 1e-6).verdict == "agrees"
 
 
 def test_chi_factors_are_in_the_values_and_in_the_expectation(make_case):
