@@ -28,7 +28,8 @@ Function = TypeVar("Function", bound=Callable[..., Any])
 _FAST_MATH = {"contract", "reassoc", "arcp", "nsz"}
 
 
-def _source_hash() -> str:
+def source_hash() -> str:
+    """A hash of the source of all kernels: what was computed by others has other bits."""
     digest = hashlib.sha256()
     for path in sorted(Path(__file__).parent.glob("*.py")):
         digest.update(path.read_bytes())
@@ -46,7 +47,7 @@ def _cache_folder() -> Path | None:
         bases.insert(0, Path(_CONFIG.CACHE_DIR))
     user = os.environ.get("XDG_CACHE_HOME") or os.path.expanduser("~/.cache")
     bases.append(Path(user) / "opacity")
-    name = f"kernels-{_source_hash()}"
+    name = f"kernels-{source_hash()}"
     for base in bases:
         folder = base / name
         try:

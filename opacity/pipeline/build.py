@@ -22,6 +22,7 @@ from opacity.pipeline.fingerprint import Fingerprint, fingerprint
 from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit, table_name
 from opacity.pipeline.progress import Progress
+from opacity.pipeline.resources import processor
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.pipeline.units import Unit, parted
 from opacity.pipeline.workers import Origin, Work, in_processes, in_threads
@@ -195,10 +196,15 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
     """The table from all shards; its checks."""
     recipe, grid = job.recipe, job.recipe.grid
     nodes = grid.node_list()
-    extremes, tiles = [], np.zeros((len(nodes), 2), dtype=np.int64)
+    extremes, tiles, warnings = [], np.zeros((len(nodes), 2), dtype=np.int64), list(job.plan.warnings)
+    processors: set[str] = set()
     for shard in _shards(job, units):
         extremes.append((shard.smallest, shard.largest))
         tiles[list(shard.rows)] += np.array(shard.notes["tiles"])
+        processors.add(shard.notes["processor"])
+    if len(processors) > 1:
+        kinds = "; ".join(sorted(processors))
+        warnings.append(f"units were computed on several types of processor, whose last bits may differ: {kinds}")
     axes = (grid.temperature, grid.pressure) if grid.nodes is None else zip(*grid.nodes, strict=True)
     temperature, pressure = (np.array(axis, dtype=np.float64) for axis in axes)
     frame = TableFrame(
@@ -216,7 +222,7 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
         with Progress("checks", len(nodes), "nodes", job.quiet) as progress:
             report = run_checks(table, recipe, job.inputs.lines, job.inputs.seed, progress.step, job.plan.workers)
         still_ours()
-        return {**report.figures, "warnings": list(job.plan.warnings), "summation": _summation(recipe, tiles)}
+        return {**report.figures, "warnings": warnings, "summation": _summation(recipe, tiles)}
 
     return assemble_table(job.path, frame, stored_type_of(extremes), _shards(job, units), check)
 
@@ -285,7 +291,7 @@ def _write_log(log: Path, recipe: Recipe, seconds: float, workers: int) -> None:
         "seconds": round(seconds, 3),
         "workers": workers,
         "host": platform.node(),
-        "processor": platform.processor() or platform.machine(),
+        "processor": processor(),
         "python": platform.python_version(),
     }
     write_atomically(log, (json.dumps(entry, indent=2) + "\n").encode("utf-8"))

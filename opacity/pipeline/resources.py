@@ -8,11 +8,21 @@ where the system's files are looked for; tests put another tree there.
 from __future__ import annotations
 
 import os
+import platform
 import shutil
 from collections.abc import Iterator
 from pathlib import Path
 
 ROOT = Path("/")
+
+
+def processor(root: Path = ROOT) -> str:
+    """The type of processor: on another one the last bits of a sum may differ."""
+    for line in _lines(root / "proc/cpuinfo"):
+        name, _, value = line.partition(":")
+        if name.strip() == "model name":
+            return f"{platform.machine()}, {value.strip()}"
+    return platform.processor() or platform.machine()
 
 
 def allowed_cpus(root: Path = ROOT) -> int:

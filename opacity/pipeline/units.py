@@ -21,6 +21,8 @@ from opacity.cross_sections.source import LINES_AT_ONCE, LineSource, pieces
 from opacity.cross_sections.tolerance import regions
 from opacity.errors import LineListError, problem
 from opacity.grids import FloatArray
+from opacity.kernels.jit import source_hash
+from opacity.pipeline.resources import processor
 from opacity.recipe.model import Recipe
 from opacity.tables.layout import BLOCK, block_slices
 from opacity.tables.shard import ENDING, Shard, make_shard
@@ -61,7 +63,7 @@ def parted(recipe: Recipe, source: LineSource, inputs_sha256: str) -> tuple[Unit
         size = _nodes_at_once(recipe, source, window)
         for first in range(0, nodes, size):
             rows = tuple(range(first, min(first + size, nodes)))
-            text = json.dumps([inputs_sha256, window.start, window.stop, rows[0], rows[-1]])
+            text = json.dumps([inputs_sha256, source_hash(), window.start, window.stop, rows[0], rows[-1]])
             name = hashlib.sha256(text.encode("ascii")).hexdigest()[:32]
             found.append(Unit(len(found), window.start, window.stop, rows, name))
     return tuple(found)
@@ -128,7 +130,7 @@ def compute(recipe: Recipe, source: LineSource, unit: Unit, executor: Executor |
         if not np.all(np.isfinite(spectrum)):
             where = f"node {temperature:g} K, {pressure:g} bar"
             raise LineListError(problem(where, "the sum is not finite: a line has impossible values"))
-    notes = {"tiles": [[one.by_cells, one.by_points] for one in tallies]}
+    notes = {"tiles": [[one.by_cells, one.by_points] for one in tallies], "processor": processor()}
     return make_shard(unit.rows, unit.start, min(BLOCK, recipe.grid.wavenumber.size), sums, notes)
 
 

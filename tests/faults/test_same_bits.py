@@ -101,3 +101,16 @@ def test_units_are_as_many_as_the_tests_say(recipe: Path) -> None:
 
     loaded = load_recipe(recipe)
     assert len(parted(loaded, load_inputs(loaded).lines, "")) == UNITS
+
+
+def test_units_of_several_processors_are_named(tmp_path: Path, monkeypatch: pytest.MonkeyPatch, recipe: Path) -> None:
+    """The last bits of a sum may differ from one type to another: a table made on both says so."""
+    import opacity
+    from opacity.pipeline import units as units_module
+    from opacity.pipeline.build import Crew, build_table
+
+    loaded, kinds = opacity.load_recipe(recipe), iter(["one type", "another type"] * 5)
+    monkeypatch.setattr(units_module, "processor", lambda: next(kinds))
+    made = build_table(loaded, tmp_path, crew=Crew(1), quiet=True)
+    told = "units were computed on several types of processor, whose last bits may differ: another type; one type"
+    assert told in made.figures["warnings"]
