@@ -21,6 +21,7 @@ from opacity.line_list.records import ParsedColumns, ReadOptions, judge
 from opacity.line_list.text import TextChunk, read_chunks
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
+from opacity.recipe.formats import plain_name
 
 Parser = Callable[[TextChunk], ParsedColumns]
 
@@ -54,9 +55,7 @@ def read_lines(
     if range is not None and not range[0] <= range[1]:
         raise InputError(problem("range", "not a range", expected="two wavenumbers, the lower first", found=range))
     lines = refuse_repeated_files(merge([_read_one(path, format, base, bad_records == "leave-out") for path in paths]))
-    if not len(lines):
-        reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(lines.ledger.left_out.items()))
-        raise LineListError(problem(paths[0], "every record was left out", found=reasons, remedy="mend the list"))
+    lines.ledger.refuse_nothing_kept(paths[0])
     formulas = sorted({one.molecule_formula for one in lines.isotopologues})
     if len(formulas) > 1:
         raise LineListError(
@@ -139,8 +138,7 @@ def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: b
 
 def is_catalogue(path: Path, format: str | None) -> bool:
     """Whether a file is a catalogue, by format, or by its ending where that is None."""
-    name = path.name.lower().removesuffix(".gz").removesuffix(".bz2")
-    return format == "catalogue" or (format is None and name.endswith(".cat"))
+    return format == "catalogue" or (format is None and plain_name(path.name).lower().endswith(".cat"))
 
 
 def parser_of(path: Path, format: str | None) -> Parser:
