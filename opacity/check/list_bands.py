@@ -189,10 +189,10 @@ class BandSums:
 
         def result(verdict: str, detail: str, *numbers: float | None) -> ListBand:
             words = f"{detail}; {band.temperature:g} K; {_source(band)}"
-            figures = (*numbers, *[None] * (3 - len(numbers)))
+            found, difference, deviations = (*numbers, None, None, None)[:3]
             return ListBand(
-                band.name, verdict, words, band.source, band.status, band.temperature, published, *figures,
-                rough=band.sanity_only,
+                band.name, verdict, words, band.source, band.status, band.temperature, published, found,
+                difference, deviations, band.sanity_only,
             )  # fmt: skip
 
         fractions = {one: wanted.fraction(one) for one in self._reach}

@@ -33,14 +33,20 @@ def new(arguments: Namespace) -> int:
     known = isotopologues_of(arguments.formula)
     facts = MoleculeFacts(None, tuple((one.formula, one.abundance) for one in known)) if known else None
     recipe = recipe_template(arguments.formula, facts)
+    to_stdout = arguments.output == "-"
     path = Path(arguments.output or f"{arguments.formula}.toml")
-    if path.exists():
+    if to_stdout:
+        print(recipe, end="")
+    elif path.exists():
         raise InputError(problem(path, "is there already", remedy="choose another name with -o"))
-    write_atomically(path, recipe.encode("utf-8"))
+    else:
+        write_atomically(path, recipe.encode("utf-8"))
     if not known:
         formula = arguments.formula
-        print(text.wrapped(f"{formula}: not in hapi's tables; give its mass and a partition-function file, or mend it"))
-    print(f"{path}: fill in what is marked `decide`, then run `opacity plan {path}`")
+        note = f"{formula}: not in hapi's tables; give its mass and a partition-function file, or mend it"
+        print(text.wrapped(note), file=sys.stderr if to_stdout else sys.stdout)
+    if not to_stdout:
+        print(f"{path}: fill in what is marked `decide`, then run `opacity plan {path}`")
     return DONE
 
 

@@ -15,7 +15,7 @@ from opacity.line_list.duplicates import IN_ONE_FILE
 from opacity.line_list.examine import Examination, Finding
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.records import ReadOptions
-from opacity.line_list.stream import list_parts
+from opacity.line_list.stream import UNNAMED, list_parts
 from opacity.line_store.store import LineStore
 from opacity.molecule.hapi_tables import hapi
 from opacity.molecule.partition_function import from_states
@@ -26,6 +26,7 @@ _INCOMPLETE = (
     "the list is not in order of wavenumber: repeated records were looked for only among some thousand records that"
     " follow each other; `opacity ingest RECIPE`, which sorts the lines, counts them all"
 )
+_NAMELESS = "a catalogue does not name its molecule: with `--recipe RECIPE` it is held against published bands too"
 
 
 @dataclass(frozen=True)
@@ -83,6 +84,9 @@ def check_records(target: Path, recipe: Recipe | None = None) -> ListReport:
                 sums.add(lines)
     if seen.repeated:
         ledger.notes[IN_ONE_FILE] += seen.repeated
+    remarks = [] if seen.complete else [_INCOMPLETE]
+    if UNNAMED in seen.isotopologues:
+        remarks.append(_NAMELESS)
     return ListReport(
         target=target,
         lines=seen.all.lines,
@@ -91,7 +95,7 @@ def check_records(target: Path, recipe: Recipe | None = None) -> ListReport:
         reach=(seen.all.lowest, seen.all.highest),
         ledger=ledger,
         findings=tuple(seen.findings()),
-        remarks=() if seen.complete else (_INCOMPLETE,),
+        remarks=tuple(remarks),
         bands=tuple(sums.results()) if sums is not None else (),
     )
 

@@ -260,6 +260,11 @@ def test_new_overwrites_nothing(opacity, project):
     assert err == "co.toml: is there already; choose another name with -o\n"
     assert (project / "co.toml").read_bytes() == before
     assert opacity("new", "CO", "-o", "other.toml")[0] == 0
+    assert opacity("new", "CO", "-o", "-") == (0, Path("other.toml").read_text(), "")
+    assert not Path("-").exists()
+    code, out, err = opacity("new", "FeH", "-o", "-")
+    assert (code, tomllib.loads(out)["molecule"]["formula"]) == (0, "FeH")
+    assert err.startswith("FeH: not in hapi's tables; ")
     assert (project / "other.toml").is_file()
 
 
