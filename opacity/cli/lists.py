@@ -61,12 +61,12 @@ def ingest(arguments: Namespace) -> int:
 def _store_facts(one: dict[str, Any]) -> list[tuple[str, str]]:
     if one["store"] is None:
         return [("list", ", ".join(one["files"])), ("store", "none: catalogues are read for each build")]
-    ledger = one["ledger"]
+    ledger, size = one["ledger"], one["bytes"] / max(one["lines"], 1)
     lines = [
         ("list", ", ".join(one["files"])),
         ("store", f"{one['store']} ({'made now' if one['made_now'] else 'up to date: no text was read'})"),
         ("read", f"{ledger['read']} records"),
-        ("kept", f"{ledger['kept']} lines, {one['bytes'] / max(one['lines'], 1):.1f} bytes each"),
+        ("kept", f"{ledger['kept']} lines, {size:.1f} bytes each, widths included"),
     ]
     lines += [("left out", f"{count}: {reason}") for reason, count in ledger["left_out"].items()]
     lines += [("note", f"{count}: {note}") for note, count in ledger["notes"].items()]
@@ -93,6 +93,7 @@ def _report_facts(report: ListReport) -> list[tuple[str, str]]:
     facts.append(("of", ", ".join(report.isotopologues)))
     facts += report.rows
     facts += [("left out", f"{count}: {reason}") for reason, count in sorted(report.ledger.left_out.items())]
+    facts += [("problem", one) for one in report.problems]
     facts += [("note", f"{count}: {note}") for note, count in sorted(report.ledger.notes.items())]
     facts += [("note", remark) for remark in report.remarks]
     for one in report.findings:

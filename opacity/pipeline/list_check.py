@@ -33,8 +33,8 @@ _NAMELESS = "a catalogue does not name its molecule: with `--recipe RECIPE` it i
 class ListReport:
     """What a look at a list gave.
 
-    `reach` are the first and last wavenumber (cm-1), None without lines; `remarks` are whole sentences,
-    `rows` further ones with the word before each.
+    `reach` are the first and last wavenumber (cm-1), None without lines; `problems` and `remarks` are whole sentences,
+    of what seems wrong and of what else to know; `rows` further ones with the word before each.
     """
 
     target: Path
@@ -44,6 +44,7 @@ class ListReport:
     reach: tuple[float, float] | None
     ledger: Ledger
     findings: tuple[Finding, ...]
+    problems: tuple[str, ...] = ()
     remarks: tuple[str, ...] = ()
     bands: tuple[ListBand, ...] = ()
     rows: tuple[tuple[str, str], ...] = ()
@@ -59,6 +60,7 @@ class ListReport:
             "reach": self.reach,
             "ledger": self.ledger.as_dict(),
             "findings": [one.as_dict() for one in self.findings],
+            "problems": list(self.problems),
             "remarks": list(self.remarks),
             "bands": [one.as_dict() for one in self.bands],
             **self.facts,
