@@ -25,6 +25,7 @@ __version__ = VERSION
 if TYPE_CHECKING:
     from opacity.api import build, cross_section, exact_cross_section, plan
     from opacity.arguments import DefaultWidth
+    from opacity.chi_factors import CHI_FACTORS
     from opacity.line_list.model import LineList
     from opacity.line_list.read import read_lines
     from opacity.recipe.load import load_recipe
@@ -39,6 +40,7 @@ _HOMES = {
     "read_lines": "opacity.line_list.read",
     "LineList": "opacity.line_list.model",
     "DefaultWidth": "opacity.arguments",
+    "CHI_FACTORS": "opacity.chi_factors",
     "load_recipe": "opacity.recipe.load",
     "Cutoff": "opacity.recipe.model",
     "CutoffStep": "opacity.recipe.model",
@@ -47,6 +49,7 @@ _HOMES = {
 }
 
 __all__ = [
+    "CHI_FACTORS",
     "AssumptionWarning",
     "Cutoff",
     "CutoffStep",

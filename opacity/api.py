@@ -49,8 +49,10 @@ def cross_section(
     `wavenumber` (n_nu,) cm-1, rising; `temperature` K; `pressure` bar; `broadeners` mole fractions, sum 1;
     `cutoff` cm-1 from each line's unshifted wavenumber, one number or a `Cutoff` by pressure.  At every point
     |sigma - exact| <= `tolerance` exact, where exact is what `exact_cross_section` gives, and sigma is 0
-    where no line reaches.  With `plinth` the profile's value at the cut-off is subtracted inside it; `chi` names a set
-    of factors of `opacity.chi_factors` for sub-Lorentzian wings.
+    where no line reaches.  `tolerance` is from 1e-6, with `plinth` from 2e-6, to 0.1.
+    With `plinth` each profile counts less its value at the distance `cutoff` from its shifted centre, not below 0,
+    inside the cut-off, which counts from the unshifted one.  `chi` names a set of `opacity.CHI_FACTORS` for
+    sub-Lorentzian wings, whose constants are from memory.
     `partition_function` is "TIPS-2021", "TIPS-2025" or the Path of a file of T and Q; `abundance` is
     "terrestrial", "pure" or fractions by isotopologue; `default_widths` serve lines without widths.
     `workers` threads give the same bits as one.
@@ -206,13 +208,38 @@ def _all_nodes(prepared: PreparedLines, nodes: _Nodes, one: Callable[[float, Flo
 
 
 def _cutoff_rule(cutoff: float | Cutoff) -> Cutoff:
-    if isinstance(cutoff, Cutoff):
-        return cutoff
-    expected = "a number above 0 cm-1"
-    number = as_number("cutoff", cutoff, expected)
+    if not isinstance(cutoff, Cutoff):
+        return Cutoff((CutoffStep(_above_zero("cutoff", cutoff, "cm-1")),))
+    steps = cutoff.steps
+    if not isinstance(steps, (tuple, list)) or not steps or not all(isinstance(one, CutoffStep) for one in steps):
+        expected = "steps such as Cutoff((CutoffStep(25.0, to_pressure=200.0), CutoffStep(100.0)))"
+        raise InputError(problem("cutoff.steps", "not steps of a cut-off", expected=expected, found=shown(steps)))
+    before = 0.0
+    for index, step in enumerate(steps):
+        name = f"cutoff.steps[{index}]"
+        _above_zero(f"{name}.cutoff", step.cutoff, "cm-1")
+        if (step.to_pressure is None) != (index == len(steps) - 1):
+            expected = "to_pressure in every step but the last, which holds for all higher pressures"
+            raise InputError(
+                problem(f"{name}.to_pressure", "out of place", expected=expected, found=shown(step.to_pressure))
+            )
+        if step.to_pressure is not None:
+            limit = _above_zero(f"{name}.to_pressure", step.to_pressure, "bar")
+            if limit <= before:
+                expected = f"above {before:g} bar"
+                raise InputError(
+                    problem(f"{name}.to_pressure", "not in rising order", expected=expected, found=f"{limit:g}")
+                )
+            before = limit
+    return cutoff
+
+
+def _above_zero(name: str, value: object, unit: str) -> float:
+    expected = f"a number above 0 {unit}"
+    number = as_number(name, value, expected)
     if number <= 0.0:
-        raise InputError(problem("cutoff", "impossible", expected=expected, found=shown(cutoff)))
-    return Cutoff((CutoffStep(number),))
+        raise InputError(problem(name, "impossible", expected=expected, found=shown(value)))
+    return number
 
 
 def plan(recipe: Recipe, folder: str | Path = "tables", *, memory: int = 2_000_000_000, quiet: bool = True) -> Plan:

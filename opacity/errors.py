@@ -106,6 +106,4 @@ def problem(
         line += "; " + ", ".join(parts)
     if remedy:
         line += f"; {remedy}"
-    if line.isprintable():
-        return line
-    return "".join(one if one.isprintable() else one.encode("unicode_escape").decode("ascii") for one in line)
+    return line if line.isprintable() else printable(line)

@@ -25,6 +25,10 @@ ARGUMENTS = {
 }
 
 
+def cutoff_of(*steps):
+    return {"cutoff": opacity.Cutoff(tuple(opacity.CutoffStep(*one) for one in steps))}
+
+
 @pytest.fixture(scope="module")
 def lines(samples):
     return opacity.read_lines(samples / "carbon-monoxide.par")
@@ -137,6 +141,19 @@ def test_temperatures_beyond_the_partition_function_are_refused(lines):
         ({"cutoff": True}, "cutoff: not a number; expected a number above 0 cm-1, found True"),
         ({"cutoff": [25.0]}, "cutoff: not a number; expected a number above 0 cm-1, found [25.0]"),
         ({"cutoff": 10**400}, "cutoff: impossible; expected a number above 0 cm-1, found 1000"),
+        ({"cutoff": opacity.Cutoff(())}, "cutoff.steps: not steps of a cut-off; expected steps such as Cutoff("),
+        ({"cutoff": opacity.Cutoff(25.0)}, "cutoff.steps: not steps of a cut-off; "),
+        ({"cutoff": opacity.Cutoff((25.0,))}, "cutoff.steps: not steps of a cut-off; "),
+        (cutoff_of((-5.0,)), "cutoff.steps[0].cutoff: impossible; expected a number above 0 cm-1, found -5.0"),
+        (cutoff_of((None,)), "cutoff.steps[0].cutoff: not a number; expected a number above 0 cm-1, found None"),
+        (cutoff_of((5.0, 1.0)), "cutoff.steps[0].to_pressure: out of place; expected to_pressure in every step but"),
+        (cutoff_of((5.0,), (9.0,)), "cutoff.steps[0].to_pressure: out of place; expected to_pressure in every step"),
+        (cutoff_of((5.0, -1.0), (9.0,)), "cutoff.steps[0].to_pressure: impossible; expected a number above 0 bar"),
+        (cutoff_of((5.0, "1"), (9.0,)), "cutoff.steps[0].to_pressure: not a number; expected a number above 0 bar"),
+        (
+            cutoff_of((5.0, 1.0), (6.0, 1.0), (9.0,)),
+            "cutoff.steps[1].to_pressure: not in rising order; expected above 1 bar, found 1",
+        ),
         ({"tolerance": "x"}, "tolerance: not a number; expected a number, found 'x'"),
         ({"tolerance": None}, "tolerance: not a number; expected a number, found None"),
         ({"temperature": "abc"}, "temperature: not numbers; expected numbers in K, found 'abc'"),

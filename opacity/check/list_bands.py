@@ -19,7 +19,7 @@ from opacity.kernels.line_strength import strength_ratio
 from opacity.line_list.model import LineList, StrengthBasis
 from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
 from opacity.molecule.partition_function import PartitionFunction, tips
-from opacity.molecule.published_bands import PUBLISHED, PublishedBand, published_bands
+from opacity.molecule.published_bands import FROM_MEMORY, PUBLISHED, PublishedBand, published_bands
 from opacity.recipe.model import BandStrength, Recipe
 
 MORE = "more than the band allows"
@@ -29,6 +29,8 @@ SANITY_FACTOR = 1.5
 """A strength from memory, or one published without an uncertainty, agrees within this factor."""
 
 _EDITION = "TIPS-2021"
+_STRETCHES, _GAP = 64, 8
+"""A band's range is looked at in so many stretches; so many without a line, between others with lines, are a gap."""
 
 
 @dataclass(frozen=True)
@@ -57,7 +59,9 @@ class Wanted:
 class ListBand:
     """What a list holds of a band: strengths in cm/molecule at `temperature` (K); `difference` relative.
 
-    `deviations` is the difference in published uncertainties, None where there are none.
+    `rough` says that only errors of a factor can be seen by the band.
+
+    `deviations` is the difference in published uncertainties, None where none was published.
     """
 
     name: str
@@ -70,6 +74,15 @@ class ListBand:
     found: float | None = None
     difference: float | None = None
     deviations: float | None = None
+    rough: bool = False
+
+    @property
+    def words(self) -> str:
+        """The verdict for people: a value that finds errors of a factor alone does not agree to per cents."""
+        if self.verdict != AGREES or not self.rough:
+            return self.verdict
+        what = "a value from memory" if self.status == FROM_MEMORY else "a value without uncertainty"
+        return f"within a factor {SANITY_FACTOR:g} of {what}"
 
     def as_dict(self) -> dict[str, Any]:
         """Plain values for JSON."""
@@ -101,6 +114,7 @@ class BandSums:
         self._wanted = tuple(wanted)
         self._partition = dict(partition or {})
         self._sums = np.zeros(len(self._wanted))
+        self._has_lines = np.zeros((len(self._wanted), _STRETCHES), dtype=bool)
         self._faults: dict[int, str] = {}
         self._reach: dict[Isotopologue, tuple[float, float]] = {}
 
@@ -113,6 +127,7 @@ class BandSums:
         for place, wanted in enumerate(self._wanted):
             low, high = np.searchsorted(lines.wavenumber, wanted.band.range)
             if high > low:
+                self._note_places(place, wanted, lines, slice(low, high))
                 try:
                     self._sums[place] += self._sum(lines, slice(low, high), wanted)
                 except MoleculeError as error:
@@ -122,6 +137,24 @@ class BandSums:
         """Note that the list has lines of an isotopologue from one wavenumber to another (cm-1)."""
         known = self._reach.get(isotopologue, (low, high))
         self._reach[isotopologue] = (min(known[0], low), max(known[1], high))
+
+    def _note_places(self, place: int, wanted: Wanted, lines: LineList, part: slice) -> None:
+        """Note which stretches of a band's range have lines that count."""
+        counts = np.array([wanted.fraction(one) > 0.0 for one in lines.isotopologues])
+        nu = lines.wavenumber[part][counts[lines.isotopologue[part]]]
+        low, high = wanted.band.range
+        self._has_lines[place, np.minimum((nu - low) / (high - low) * _STRETCHES, _STRETCHES - 1).astype(int)] = True
+
+    def _gap(self, place: int) -> tuple[float, float] | None:
+        """The widest gap (cm-1) between lines within a band's range, None where there is none worth a word."""
+        filled = np.flatnonzero(self._has_lines[place])
+        steps = np.diff(filled)
+        if not steps.size or steps.max() <= _GAP:
+            return None
+        before = int(filled[steps.argmax()])
+        low, high = self._wanted[place].band.range
+        width = (high - low) / _STRETCHES
+        return low + (before + 1) * width, low + (before + int(steps.max())) * width
 
     def _sum(self, lines: LineList, part: slice, wanted: Wanted) -> float:
         temperature = wanted.band.temperature
@@ -156,7 +189,11 @@ class BandSums:
 
         def result(verdict: str, detail: str, *numbers: float | None) -> ListBand:
             words = f"{detail}; {band.temperature:g} K; {_source(band)}"
-            return ListBand(band.name, verdict, words, band.source, band.status, band.temperature, published, *numbers)
+            found, difference, deviations = (*numbers, None, None, None)[:3]
+            return ListBand(
+                band.name, verdict, words, band.source, band.status, band.temperature, published, found,
+                difference, deviations, band.sanity_only,
+            )  # fmt: skip
 
         fractions = {one: wanted.fraction(one) for one in self._reach}
         share = sum(fractions.values()) / wanted.whole
@@ -166,14 +203,16 @@ class BandSums:
             return result(CANNOT_JUDGE, self._faults[place])
         found = float(self._sums[place])
         difference = found / published - 1.0
-        deviations = None if band.uncertainty is None else difference / band.uncertainty
+        deviations = None if band.sanity_only or band.uncertainty is None else difference / band.uncertainty
         above, below = _limits(band)
         main = max(fractions, key=lambda one: fractions[one])
         low, high = self._reach[main]
         covered = low <= band.range[0] and high >= band.range[1]
-        words = f"{found:.4e} against {published:.4e} cm/molecule, {100.0 * difference:+.2f} %"
-        if deviations is not None and not band.sanity_only:
-            words += f" ({abs(deviations):.1f} uncertainties)"
+        words = f"{found:.4e} against {published:.4e} cm/molecule, "
+        if deviations is not None:
+            words += f"{100.0 * difference:+.2f} % ({abs(deviations):.1f} uncertainties)"
+        else:
+            words += f"{found / published:.2g} times as much"
         if share < 1.0 - 1e-6 and len(self._reach) < len(isotopologues_of(band.molecule)):
             words += f"; the list's isotopologues make up {100.0 * share:.4g} % of the mixture"
         if difference > above:
@@ -186,8 +225,13 @@ class BandSums:
             )
             return result(CANNOT_JUDGE, f"{detail}; in it {words}" if found else detail, found, difference, deviations)
         # What the isotopologues that the list lacks would hold is not missing from it.
-        verdict = LESS if found / (published * min(share, 1.0)) - 1.0 < below else AGREES
-        return result(verdict, words, found, difference, deviations)
+        if found / (published * min(share, 1.0)) - 1.0 >= below:
+            return result(AGREES, words, found, difference, deviations)
+        gap = self._gap(place)
+        if gap is not None:
+            detail = f"the list has no lines between {gap[0]:.6g} and {gap[1]:.6g} cm-1; in the range {words}"
+            return result(CANNOT_JUDGE, detail, found, difference, deviations)
+        return result(LESS, words, found, difference, deviations)
 
 
 def _limits(band: PublishedBand) -> tuple[float, float]:

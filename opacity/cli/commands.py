@@ -33,14 +33,20 @@ def new(arguments: Namespace) -> int:
     known = isotopologues_of(arguments.formula)
     facts = MoleculeFacts(None, tuple((one.formula, one.abundance) for one in known)) if known else None
     recipe = recipe_template(arguments.formula, facts)
+    to_stdout = arguments.output == "-"
     path = Path(arguments.output or f"{arguments.formula}.toml")
-    if path.exists():
+    if to_stdout:
+        print(recipe, end="")
+    elif path.exists():
         raise InputError(problem(path, "is there already", remedy="choose another name with -o"))
-    write_atomically(path, recipe.encode("utf-8"))
+    else:
+        write_atomically(path, recipe.encode("utf-8"))
     if not known:
         formula = arguments.formula
-        print(text.wrapped(f"{formula}: not in hapi's tables; give its mass and a partition-function file, or mend it"))
-    print(f"{path}: fill in what is marked `decide`, then run `opacity plan {path}`")
+        note = f"{formula}: not in hapi's tables; give its mass and a partition-function file, or mend it"
+        print(text.wrapped(note), file=sys.stderr if to_stdout else sys.stdout)
+    if not to_stdout:
+        print(f"{path}: fill in what is marked `decide`, then run `opacity plan {path}`")
     return DONE
 
 
@@ -69,14 +75,19 @@ def _plan_facts(made: Plan) -> list[tuple[str, str]]:
         ("table", made.table),
         ("grid", f"{text.counted(made.nodes, 'node')} of {text.counted(made.points, 'point')}"),
         ("lines", f"{lines} in reach of the grid ({read} read)"),
-        ("work", f"{made.profile_values:.2g} profile values, about {text.duration(made.seconds)} on one core"),
-        ("summed", f"{100.0 * made.by_cells:.0f} % of tiles by cells, the rest point by point"),
+        ("work", f"{made.profile_values:.2g} profile values"),
+        ("time", _time(made)),
         ("accuracy", f"every value within {made.predicted_error:.1e} of the exact sum, predicted"),
         ("units", f"{made.units}, of up to {text.counted(made.lines_per_unit, 'line')} each"),
         ("workers", f"{made.workers}, {text.size(made.memory_per_worker)} each at most"),
         ("memory", f"up to {text.size(made.memory)} of {text.size(made.memory_available)} allowed"),
         ("disk", f"up to {text.size(made.disk)} of {text.size(made.disk_free)} free"),
     ]
+
+
+def _time(made: Plan) -> str:
+    one = f"about {text.duration(made.seconds)} of one core for spectra, checks and writing"
+    return one if made.workers == 1 else f"{one}; {text.duration(made.wall_seconds)} with {made.workers} workers"
 
 
 def _assumptions(made: Plan) -> list[dict[str, Any]]:

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from opacity.cli import text
+from opacity.recipe.formats import plain_name
 
 if TYPE_CHECKING:
     from opacity.check.list_bands import ListBand
@@ -19,14 +20,7 @@ DATA_SET = (".def", ".def.json", ".states", ".trans")
 
 def is_list(target: Path) -> bool:
     """Whether a file's name is that of a line list, or of a file that leads to one."""
-    return _plain(target).endswith((*RECORDS, *DATA_SET))
-
-
-def _plain(target: Path) -> str:
-    name = target.name.lower()
-    for ending in (".gz", ".bz2"):
-        name = name.removesuffix(ending)
-    return name
+    return plain_name(target.name).lower().endswith((*RECORDS, *DATA_SET))
 
 
 def ingest(arguments: Namespace) -> int:
@@ -67,12 +61,12 @@ def ingest(arguments: Namespace) -> int:
 def _store_facts(one: dict[str, Any]) -> list[tuple[str, str]]:
     if one["store"] is None:
         return [("list", ", ".join(one["files"])), ("store", "none: catalogues are read for each build")]
-    ledger = one["ledger"]
+    ledger, size = one["ledger"], one["bytes"] / max(one["lines"], 1)
     lines = [
         ("list", ", ".join(one["files"])),
         ("store", f"{one['store']} ({'made now' if one['made_now'] else 'up to date: no text was read'})"),
         ("read", f"{ledger['read']} records"),
-        ("kept", f"{ledger['kept']} lines, {one['bytes'] / max(one['lines'], 1):.1f} bytes each"),
+        ("kept", f"{ledger['kept']} lines, {size:.1f} bytes each, widths included"),
     ]
     lines += [("left out", f"{count}: {reason}") for reason, count in ledger["left_out"].items()]
     lines += [("note", f"{count}: {note}") for note, count in ledger["notes"].items()]
@@ -85,7 +79,7 @@ def check_list(target: Path, recipe: str | None, as_json: bool) -> int:
     from opacity.pipeline.list_check import check_records
     from opacity.recipe.load import load_recipe
 
-    look = check_data_set if _plain(target).endswith(DATA_SET) else check_records
+    look = check_data_set if plain_name(target.name).lower().endswith(DATA_SET) else check_records
     report = look(target, load_recipe(recipe) if recipe else None)
     print(text.as_json(report.as_dict()) if as_json else text.facts(_report_facts(report)))
     return 0
@@ -99,6 +93,7 @@ def _report_facts(report: ListReport) -> list[tuple[str, str]]:
     facts.append(("of", ", ".join(report.isotopologues)))
     facts += report.rows
     facts += [("left out", f"{count}: {reason}") for reason, count in sorted(report.ledger.left_out.items())]
+    facts += [("problem", one) for one in report.problems]
     facts += [("note", f"{count}: {note}") for note, count in sorted(report.ledger.notes.items())]
     facts += [("note", remark) for remark in report.remarks]
     for one in report.findings:
@@ -108,4 +103,4 @@ def _report_facts(report: ListReport) -> list[tuple[str, str]]:
 
 
 def _band_facts(bands: Iterable[ListBand]) -> list[tuple[str, str]]:
-    return [("band", f"{one.name}: {one.verdict}; {one.detail}") for one in bands]
+    return [("band", f"{one.name}: {one.words}; {one.detail}") for one in bands]

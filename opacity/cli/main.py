@@ -61,7 +61,7 @@ def parser() -> argparse.ArgumentParser:
 
     one = command("new", "write a commented recipe to fill in")
     one.add_argument("formula", metavar="FORMULA", help="the molecule, such as CO or H2O")
-    one.add_argument("-o", "--output", metavar="FILE", help="where to write it (default: FORMULA.toml)")
+    one.add_argument("-o", "--output", metavar="FILE", help="where to write it (default: FORMULA.toml; - for stdout)")
 
     one = command("fetch", "get the files that a recipe's line lists need")
     one.add_argument("recipe", metavar="RECIPE")

@@ -6,6 +6,7 @@ from typing import Any
 
 from opacity.cli.text import notes
 from opacity.errors import TableError, problem
+from opacity.tables.layout import F4_SMALLEST
 from opacity.tables.read import Table
 
 
@@ -48,7 +49,7 @@ def _lines(table: Table) -> list[tuple[str, str]]:
         ("what", f"{table.title}, cm2 per molecule, {kind}"),
         ("temperature", _axis(table.temperature.tolist(), "K")),
         ("pressure", _axis(table.pressure.tolist(), "bar")),
-        ("stored as", str(table.dtype)),
+        ("stored as", _stored_as(table)),
         ("wavenumber", f"{nu[0]:.8g} to {nu[-1]:.8g} cm-1{wavelength}, {nu.size} points"),
         ("line list", ", ".join(one["file"] for one in provenance.get("line_lists", []))),
         *_isotopologues(provenance.get("isotopologues", [])),
@@ -57,7 +58,6 @@ def _lines(table: Table) -> list[tuple[str, str]]:
         *_profile(provenance.get("profile", {})),
         ("built by", f"{program.get('name', '')} {program.get('version', '')}"),
     ]
-    lines += _summation(checks.get("summation", {}).get("nodes", []))
     lines += [(row["check"], f"{row['verdict']}: {row['detail']}") for row in checks.get("results", [])]
     lines += [("warning", one) for one in checks.get("warnings", [])]
     lines += notes({"left_out": {}, "notes": {}, **checks.get("ledger", {})}, checks.get("assumptions", []))
@@ -92,9 +92,9 @@ def _profile(found: dict[str, Any]) -> list[tuple[str, str]]:
     ]
 
 
-def _summation(nodes: list[dict[str, Any]]) -> list[tuple[str, str]]:
-    cells, points = (sum(one[key] for one in nodes) for key in ("tiles_by_cells", "tiles_by_points"))
-    return [("summed", f"{cells} tiles by cells, {points} point by point")] if nodes else []
+def _stored_as(table: Table) -> str:
+    why = f" (values below {F4_SMALLEST:g}, where float32 loses digits)" if table.dtype.itemsize > 4 else ""
+    return f"{table.dtype}{why}"
 
 
 def _axis(values: list[float], unit: str) -> str:

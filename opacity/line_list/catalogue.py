@@ -109,7 +109,7 @@ def catalogue_isotopologue(path: Path, formula: str, isotopologue: str, mass: fl
             problem(
                 path,
                 f"no mass of {isotopologue} is known",
-                expected="an isotopologue by hapi's formula or number, or molecule.mass",
+                expected="an isotopologue by hapi's formula or number, or the molecule's mass (g/mol)",
             )
         )
     return one

@@ -11,6 +11,8 @@ from opacity.errors import LineListError, problem
 from opacity.line_list.model import LineList
 
 IN_ONE_FILE = "identical to another record of its file: both count, as the list says"
+IN_ONE_LIST = "identical to another record: both count"
+"""The notes of a ledger, of a list in memory and of a line store."""
 
 
 def identical_pairs(lines: LineList) -> tuple[NDArray[np.intp], NDArray[np.intp]]:

@@ -25,6 +25,7 @@ from opacity.kernels.text import BLANK, UNREADABLE, read_fields, split_fields
 from opacity.line_list.hitran import parse_fixed
 from opacity.line_list.records import ParsedColumns
 from opacity.line_list.text import TextChunk, read_text
+from opacity.recipe.formats import plain_name
 
 _NAMES = {
     "molec_id": "molecule",
@@ -63,7 +64,7 @@ def header_of(path: Path) -> Path:
 
 
 def _plain(path: Path) -> Path:
-    return path.with_suffix("") if path.suffix.lower() in (".gz", ".bz2") else path
+    return path.with_name(plain_name(path.name)) if path.name else path
 
 
 def hapi_parser(path: Path) -> Callable[[TextChunk], ParsedColumns]:

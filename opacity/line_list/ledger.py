@@ -6,6 +6,8 @@ from collections import Counter
 from dataclasses import dataclass, field
 from typing import Any
 
+from opacity.errors import LineListError, problem
+
 
 @dataclass
 class Ledger:
@@ -26,6 +28,12 @@ class Ledger:
         self.kept += other.kept
         self.left_out.update(other.left_out)
         self.notes.update(other.notes)
+
+    def refuse_nothing_kept(self, where: object, remedy: str = "mend the list") -> None:
+        """Raise LineListError where every record was left out."""
+        if not self.kept:
+            reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(self.left_out.items()))
+            raise LineListError(problem(where, "every record was left out", found=reasons, remedy=remedy))
 
     def leave_out(self, reason: str, count: int) -> None:
         """Move records that had been kept to those left out."""

@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from opacity.arguments import as_number, shown
 from opacity.errors import InputError, LineListError, problem
 from opacity.grids import FloatArray
 from opacity.line_list.catalogue import catalogue_lines
@@ -21,8 +24,11 @@ from opacity.line_list.records import ParsedColumns, ReadOptions, judge
 from opacity.line_list.text import TextChunk, read_chunks
 from opacity.molecule.broadening import BroadenerColumns
 from opacity.molecule.isotopologue import Isotopologue, isotopologues_of
+from opacity.recipe.formats import plain_name
 
 Parser = Callable[[TextChunk], ParsedColumns]
+
+_MASS = "a mass above 0 g/mol"
 
 READERS: dict[str, Callable[[Path], Parser]] = {"hitran": hitran_parser, "hapi": hapi_parser}
 
@@ -33,6 +39,9 @@ def read_lines(
     *,
     range: tuple[float, float] | None = None,
     bad_records: str = "stop",
+    formula: str | None = None,
+    isotopologue: str | None = None,
+    mass: float | None = None,
     options: ReadOptions | None = None,
 ) -> LineList:
     """Read line lists into one `LineList` sorted by wavenumber.
@@ -40,8 +49,11 @@ def read_lines(
     `format` is "hitran" (160-character records, .gz and .bz2 too), "hapi" (.data, .gz and .bz2 too,
     with its .header) or "catalogue" (JPL/CDMS .cat); if it is None the file's ending decides.
     `range` (cm-1) keeps the lines inside it, ends included.  `bad_records`
-    is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).  `options` are
-    what a recipe says of the list: its molecule, and the one isotopologue to take from it.
+    is "stop" (a record that can't be right is an error) or "leave-out" (it is counted and left out).
+
+    `formula` is the molecule's, and needed for a catalogue, as is `isotopologue`: "(12C)(16O)", "12C-16O", or "1" for
+    HITRAN's local number; from a list of several it takes that one alone.  `mass` (g/mol) is that of a molecule which
+    hapi does not know.  `options` say the same and more where a recipe does.
 
     Raises LineListError naming file and line, InputError for an unknown format or option.
     """
@@ -50,13 +62,11 @@ def read_lines(
     paths = [Path(files)] if isinstance(files, (str, Path)) else [Path(one) for one in files]
     if not paths:
         raise InputError(problem("files", "no line list given", expected="one or more files"))
-    base = options or ReadOptions()
+    base = _options(options or ReadOptions(), formula, isotopologue, mass)
     if range is not None and not range[0] <= range[1]:
         raise InputError(problem("range", "not a range", expected="two wavenumbers, the lower first", found=range))
     lines = refuse_repeated_files(merge([_read_one(path, format, base, bad_records == "leave-out") for path in paths]))
-    if not len(lines):
-        reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(lines.ledger.left_out.items()))
-        raise LineListError(problem(paths[0], "every record was left out", found=reasons, remedy="mend the list"))
+    lines.ledger.refuse_nothing_kept(paths[0])
     formulas = sorted({one.molecule_formula for one in lines.isotopologues})
     if len(formulas) > 1:
         raise LineListError(
@@ -68,6 +78,17 @@ def read_lines(
         lower, upper = range
         lines = lines.select((lines.wavenumber >= lower) & (lines.wavenumber <= upper), "outside the range asked for")
     return check_account(lines)
+
+
+def _options(base: ReadOptions, formula: object, isotopologue: object, mass: object) -> ReadOptions:
+    """Options with what the caller says in place of what they say."""
+    for name, value, example in (("formula", formula, '"CO"'), ("isotopologue", isotopologue, '"(12C)(16O)"')):
+        if value is not None and not (isinstance(value, str) and value):
+            raise InputError(problem(name, "not a name", expected=f"text such as {example}", found=shown(value)))
+    if mass is not None and as_number("mass", mass, _MASS) <= 0.0:
+        raise InputError(problem("mass", "impossible", expected=_MASS, found=shown(mass)))
+    said: dict[str, Any] = {"formula": formula, "isotopologue": isotopologue, "mass": mass}
+    return replace(base, **{name: value for name, value in said.items() if value is not None})
 
 
 def check_account(lines: LineList) -> LineList:
@@ -111,7 +132,12 @@ def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: b
     if is_catalogue(path, format):
         if options.formula is None or options.isotopologue is None:
             raise InputError(
-                problem("options", "a catalogue does not name its molecule", expected="formula and isotopologue")
+                problem(
+                    path,
+                    "a catalogue does not name its molecule",
+                    expected='formula and isotopologue such as formula="CO", isotopologue="(12C)(16O)"',
+                    found=f"formula {shown(options.formula)}, isotopologue {shown(options.isotopologue)}",
+                )
             )
         if options.widths:
             raise LineListError(
@@ -139,8 +165,7 @@ def _read_one(path: Path, format: str | None, options: ReadOptions, leave_out: b
 
 def is_catalogue(path: Path, format: str | None) -> bool:
     """Whether a file is a catalogue, by format, or by its ending where that is None."""
-    name = path.name.lower().removesuffix(".gz").removesuffix(".bz2")
-    return format == "catalogue" or (format is None and name.endswith(".cat"))
+    return format == "catalogue" or (format is None and plain_name(path.name).lower().endswith(".cat"))
 
 
 def parser_of(path: Path, format: str | None) -> Parser:

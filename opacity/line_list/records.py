@@ -40,6 +40,8 @@ LOWEST_WAVENUMBER = 1e-6
 STRONGEST = 1e-6
 WEAKEST = 1e-170
 HIGHEST_ENERGY = 100_000.0
+UNKNOWN = "unknown isotopologue"
+"""Reason for which a record is left out that hapi's tables do not know."""
 _CODES = "a code 1-9, 0, A, B of an isotopologue that hapi's tables hold"
 
 
@@ -92,8 +94,8 @@ def judge(columns: ParsedColumns, options: ReadOptions, leave_out: bool, others:
             good &= ~bad
     index, known, unknown, foreign = _isotopologues(columns, good, options)
     if unknown.any():
-        found.append((int(np.flatnonzero(unknown)[0]), "unknown isotopologue", _CODES))
-        ledger.left_out["unknown isotopologue"] += int(unknown.sum())
+        found.append((int(np.flatnonzero(unknown)[0]), UNKNOWN, _CODES))
+        ledger.left_out[UNKNOWN] += int(unknown.sum())
     good &= ~(unknown | foreign)
     others.add(columns.text, columns.numbers["molecule"], foreign, int(good.sum()), leave_out)
     if foreign.any():

@@ -14,7 +14,7 @@ from opacity.line_list.foreign import ForeignRecords
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.model import LineList
 from opacity.line_list.read import is_catalogue, of_isotopologue, parser_of
-from opacity.line_list.records import ReadOptions, judge
+from opacity.line_list.records import UNKNOWN, ReadOptions, judge
 from opacity.line_list.text import CHUNK, RawText, TextChunk, read_raw
 from opacity.molecule.isotopologue import Isotopologue
 
@@ -50,9 +50,8 @@ def list_parts(path: Path, options: ReadOptions, executor: Executor | None, size
     if not any_part:
         raise LineListError(problem(path, "holds no record", expected="lines", remedy="fetch the file again"))
     others.refuse_if_all()
-    if not account.kept:
-        reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(account.left_out.items()))
-        raise LineListError(problem(path, "every record was left out", found=reasons, remedy="mend the list"))
+    nameless = options.formula is None and UNKNOWN in account.left_out
+    account.refuse_nothing_kept(path, "`--recipe RECIPE` says what the list is of" if nameless else "mend the list")
 
 
 def _reader(path: Path, options: ReadOptions, others: ForeignRecords) -> Callable[[TextChunk], LineList]:

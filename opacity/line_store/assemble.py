@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from opacity.errors import LineListError, ResourceError, problem
 from opacity.grids import FloatArray
+from opacity.line_list.duplicates import IN_ONE_LIST
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.packed import Identical, PackedLines, count_identical, join, used_classes
 from opacity.line_store.layout import FORMAT_NAME, FORMAT_VERSION, INDEX, PARTS, SEGMENT_LINES, Segment, sealed
@@ -52,9 +53,8 @@ def assemble(
     for manifest in manifests:
         ledger.add(Ledger.from_dict(manifest["ledger"]))
     names = [str(manifest["identity"]["files"][0]["file"]) for manifest in manifests]
-    if not ledger.kept and ledger.left_out and not set(ledger.left_out).intersection(ASKED_FOR):
-        reasons = ", ".join(f"{count} {reason}" for reason, count in sorted(ledger.left_out.items()))
-        raise LineListError(problem(names[0], "every record was left out", found=reasons, remedy="mend the list"))
+    if ledger.left_out and not set(ledger.left_out).intersection(ASKED_FOR):
+        ledger.refuse_nothing_kept(names[0])
     still_ours()
     _remove_store(folder)
     spans: Spans = {}
@@ -64,7 +64,7 @@ def assemble(
         _remove_store(folder)
         raise LineListError(_said_twice(names, repeated))
     if repeated.within:
-        ledger.notes["identical to another record: both count"] += repeated.within
+        ledger.notes[IN_ONE_LIST] += repeated.within
     if sum(segment.lines for segment in segments) != ledger.kept:
         raise LineListError(
             problem(folder, "lines were lost on the way to the store", expected=ledger.kept,

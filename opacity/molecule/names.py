@@ -55,10 +55,12 @@ def same_isotopologue(one: str, other: str) -> bool:
 
 
 def molecule_of(name: str) -> str:
-    """The molecule's formula without mass numbers, such as CO2; the name itself where it is no formula or slug."""
+    """The molecule's formula without mass numbers (2H is D), such as CO2; the name itself where it is none."""
     found = atoms_of(name)
     if found is None:
         return name
     atoms, charge = found
-    text = "".join(f"{atom.lstrip('0123456789')}{count if count > 1 else ''}" for atom, count in atoms)
+    plain = [("D" if atom == "2H" else atom.lstrip("0123456789"), count) for atom, count in atoms]
+    runs = [(atom, sum(count for _, count in run)) for atom, run in groupby(plain, key=lambda one: one[0])]
+    text = "".join(f"{atom}{count if count > 1 else ''}" for atom, count in runs)
     return text + {0: "", 1: "+", -1: "-"}[charge]

@@ -51,9 +51,13 @@ def check_data_set(target: Path, recipe: Recipe | None = None) -> ListReport:
     chosen = {"def": files.transitions, "trans": (target,)}.get(kind or "", ())
     with ThreadPoolExecutor(allowed_cpus()) as executor:
         ledger, reach, sums = _read(chosen, files, states, isotopologue, executor, recipe)
-    remarks = _about_definition(definition, files, isotopologue)
+    problems, remarks = [*of_states.problems, *of_widths.problems], []
+    if definition is None:
+        remarks.append("no definition (.def) beside it: nothing is held against one")
+    else:
+        problems += _about_definition(definition, files, isotopologue)
     if kind == "def" and definition is not None:
-        remarks += _against_definition(definition, files, ledger, reach)
+        problems += _against_definition(definition, files, ledger, reach)
     elif kind == "trans" and len(files.transitions) > 1:
         remarks.append(f"one of {len(files.transitions)} .trans files of {files.name} that are here")
     if chosen:
@@ -67,6 +71,7 @@ def check_data_set(target: Path, recipe: Recipe | None = None) -> ListReport:
         reach=reach,
         ledger=ledger,
         findings=(),
+        problems=tuple(problems),
         remarks=tuple(remarks),
         bands=tuple(sums.results()) if ledger.kept else (),
         rows=tuple(rows),
@@ -131,10 +136,8 @@ def _lines(batch: Batch, path: Path) -> LineList:
     return unpack(join([batch.packed]), template, batch.basis, ())
 
 
-def _about_definition(definition: Definition | None, files: FilesBeside, isotopologue: Isotopologue) -> list[str]:
+def _about_definition(definition: Definition, files: FilesBeside, isotopologue: Isotopologue) -> list[str]:
     """What the definition says that does not fit, whatever was read."""
-    if definition is None:
-        return ["no definition (.def) beside it: nothing is held against one"]
     found = [f"{definition.dataset}: {note}" for note in definition.notes]
     if not same_isotopologue(definition.formula, definition.slug):
         found.append(f"the definition is of {definition.formula} by its formula, of {definition.slug} by its slug")

@@ -10,6 +10,7 @@ from pathlib import Path
 from typing import Any
 
 from opacity.line_list.hapi_table import header_of
+from opacity.pipeline.fetch.checksum import refuse_other_content
 from opacity.provenance import VERSION, file_sha256, package_versions
 from opacity.recipe.model import LineListSource, Recipe
 
@@ -34,7 +35,11 @@ class Fingerprint:
 
 
 def fingerprint(recipe: Recipe) -> Fingerprint:
-    """The fingerprint of a recipe's table.  Raises OpacityError for a file that cannot be read."""
+    """The fingerprint of a recipe's table.
+
+    Raises OpacityError for a file that cannot be read, LineListError for one whose sha256 is not that of the recipe
+    or of the record beside it.
+    """
     choice = recipe.partition_function
     content: dict[str, Any] = {
         "program": {"name": "opacity", "version": VERSION},
@@ -42,12 +47,12 @@ def fingerprint(recipe: Recipe) -> Fingerprint:
         "line_lists": [_file_entry(path, source) for source in recipe.line_lists for path in _all_paths(source)],
         "partition_file": None,
         "broadening_files": {
-            name: {"file": _file_name(path), "sha256": file_sha256(path)}
+            name: {"file": _file_name(path), "sha256": _checked_sha256(path)}
             for name, path in sorted(recipe.broadening.files.items())
         },
     }
     if choice.path is not None:
-        content["partition_file"] = {"file": _file_name(choice.path), "sha256": file_sha256(choice.path)}
+        content["partition_file"] = {"file": _file_name(choice.path), "sha256": _checked_sha256(choice.path)}
     text = json.dumps({**content, "recipe": recipe.text}, sort_keys=True)
     return Fingerprint(content, hashlib.sha256(text.encode("utf-8")).hexdigest())
 
@@ -60,7 +65,14 @@ def _all_paths(source: LineListSource) -> list[Path]:
 
 
 def _file_entry(path: Path, source: LineListSource) -> dict[str, Any]:
-    return {"file": _file_name(path), "sha256": file_sha256(path), "reference": source.reference}
+    sha256 = _checked_sha256(path, source.sha256.get(path))
+    return {"file": _file_name(path), "sha256": sha256, "reference": source.reference}
+
+
+def _checked_sha256(path: Path, stated: str | None = None) -> str:
+    found = file_sha256(path)
+    refuse_other_content(path, stated, found)
+    return found
 
 
 def _file_name(path: Path) -> str:

@@ -118,7 +118,7 @@ def load_inputs(
         for name, one in choices["defaults"].items()
     }
     comparison, warnings = states_against_file(recipe, lists)
-    warnings += definition_warnings(recipe, lists)
+    warnings += definition_warnings(recipe, lists) + tuple(words for one in lists for words in one.warnings)
     provenance["partition_function"] |= comparison
     return Inputs(source, used.isotopologues, used.partition, provenance, origin, warnings)
 

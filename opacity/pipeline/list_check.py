@@ -15,7 +15,7 @@ from opacity.line_list.duplicates import IN_ONE_FILE
 from opacity.line_list.examine import Examination, Finding
 from opacity.line_list.ledger import Ledger
 from opacity.line_list.records import ReadOptions
-from opacity.line_list.stream import list_parts
+from opacity.line_list.stream import UNNAMED, list_parts
 from opacity.line_store.store import LineStore
 from opacity.molecule.hapi_tables import hapi
 from opacity.molecule.partition_function import from_states
@@ -26,14 +26,15 @@ _INCOMPLETE = (
     "the list is not in order of wavenumber: repeated records were looked for only among some thousand records that"
     " follow each other; `opacity ingest RECIPE`, which sorts the lines, counts them all"
 )
+_NAMELESS = "a catalogue does not name its molecule: with `--recipe RECIPE` it is held against published bands too"
 
 
 @dataclass(frozen=True)
 class ListReport:
     """What a look at a list gave.
 
-    `reach` are the first and last wavenumber (cm-1), None without lines; `remarks` are whole sentences,
-    `rows` further ones with the word before each.
+    `reach` are the first and last wavenumber (cm-1), None without lines; `problems` and `remarks` are whole sentences,
+    of what seems wrong and of what else to know; `rows` further ones with the word before each.
     """
 
     target: Path
@@ -43,6 +44,7 @@ class ListReport:
     reach: tuple[float, float] | None
     ledger: Ledger
     findings: tuple[Finding, ...]
+    problems: tuple[str, ...] = ()
     remarks: tuple[str, ...] = ()
     bands: tuple[ListBand, ...] = ()
     rows: tuple[tuple[str, str], ...] = ()
@@ -58,6 +60,7 @@ class ListReport:
             "reach": self.reach,
             "ledger": self.ledger.as_dict(),
             "findings": [one.as_dict() for one in self.findings],
+            "problems": list(self.problems),
             "remarks": list(self.remarks),
             "bands": [one.as_dict() for one in self.bands],
             **self.facts,
@@ -83,6 +86,9 @@ def check_records(target: Path, recipe: Recipe | None = None) -> ListReport:
                 sums.add(lines)
     if seen.repeated:
         ledger.notes[IN_ONE_FILE] += seen.repeated
+    remarks = [] if seen.complete else [_INCOMPLETE]
+    if UNNAMED in seen.isotopologues:
+        remarks.append(_NAMELESS)
     return ListReport(
         target=target,
         lines=seen.all.lines,
@@ -91,7 +97,7 @@ def check_records(target: Path, recipe: Recipe | None = None) -> ListReport:
         reach=(seen.all.lowest, seen.all.highest),
         ledger=ledger,
         findings=tuple(seen.findings()),
-        remarks=() if seen.complete else (_INCOMPLETE,),
+        remarks=tuple(remarks),
         bands=tuple(sums.results()) if sums is not None else (),
     )
 

@@ -20,6 +20,7 @@ from opacity.line_list.read import read_lines
 from opacity.molecule.isotopologue import named_isotopologue
 from opacity.molecule.names import same_isotopologue
 from opacity.molecule.partition_function import PartitionFunction, from_file, from_states
+from opacity.pipeline.list_warnings import warnings_of_lines, warnings_of_store
 from opacity.pipeline.sources import ensure_store, is_small, read_options
 from opacity.recipe.faults import faults_of
 from opacity.recipe.model import LineListSource, Recipe
@@ -51,12 +52,16 @@ def located(recipe: Recipe, keys: dict[str, KeyPath]) -> Iterator[None]:
 
 @dataclass(frozen=True)
 class OpenList:
-    """One list: its lines by window, its account, the wavenumbers between which each isotopologue has lines, facts."""
+    """One list: its lines by window, its account, the wavenumbers between which each isotopologue has lines, facts.
+
+    `warnings` are what the lines themselves give reason for.
+    """
 
     windows: Windows
     ledger: Ledger
     spans: dict[str, tuple[float, float]]
     facts: dict[str, Any]
+    warnings: tuple[str, ...] = ()
 
 
 def open_list(recipe: Recipe, number: int, tables: Path, memory: int, quiet: bool, hashes: frozenset[str]) -> OpenList:
@@ -64,7 +69,9 @@ def open_list(recipe: Recipe, number: int, tables: Path, memory: int, quiet: boo
     source = recipe.line_lists[number]
     store = None if is_small(source) else ensure_store(recipe, source, tables, memory, quiet, hashes)[0]
     if store is not None:
-        return OpenList(store, store.index.ledger, store.spans(), store.index.facts)
+        return OpenList(
+            store, store.index.ledger, store.spans(), store.index.facts, warnings_of_store(store, recipe, source)
+        )
     lines = _read(recipe, number, source)
     spans = {}
     for place, one in enumerate(lines.isotopologues):
@@ -72,7 +79,7 @@ def open_list(recipe: Recipe, number: int, tables: Path, memory: int, quiet: boo
         spans[one.formula] = (float(nu.min()), float(nu.max()))
     ledger = Ledger()
     ledger.add(lines.ledger)
-    return OpenList(ListInMemory(lines), ledger, spans, {})
+    return OpenList(ListInMemory(lines), ledger, spans, {}, warnings_of_lines(lines, recipe, source))
 
 
 def summed_states(one: OpenList) -> PartitionFunction:

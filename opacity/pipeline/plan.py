@@ -41,7 +41,9 @@ class NodeResolution:
 
 @dataclass(frozen=True)
 class Plan:
-    """What a build of a recipe amounts to.  Memory and disk in bytes at most, time in seconds on one core.
+    """What a build of a recipe amounts to.  Memory and disk in bytes at most, time in seconds.
+
+    `seconds` are those of one core, `wall_seconds` what the workers take, who share the spectra alone.
 
     `profile_values` are the values of profiles at points that the sum stands for; of its tiles the share `by_cells`
     gets most of them eight a cell.  `predicted_error` is the largest relative error of a value.
@@ -61,6 +63,7 @@ class Plan:
     by_cells: float
     predicted_error: float
     seconds: float
+    wall_seconds: float
     memory: int
     memory_per_worker: int
     memory_available: int
@@ -102,6 +105,7 @@ def make_plan(
     count = max(min(wanted, workers_that_fit(recipe, lines, units, budget, processes), len(units) or 1), 1)
     needs = needs_of(recipe, lines, units, count, processes)
     amount = amount_of(recipe, lines)
+    besides = seconds_besides(nodes, points, len(lines), amount.values / max(nodes * points, 1))
     fitted = [f"memory allows {count} of {wanted} workers"] if count < min(wanted, len(units)) else []
     limits = (("memory", needs.memory, budget), ("disk", needs.disk, disk_free))
     return Plan(
@@ -116,7 +120,8 @@ def make_plan(
         profile_values=amount.values,
         by_cells=amount.by_cells,
         predicted_error=regions(recipe.profile.tolerance, recipe.profile.plinth).predicted_error,
-        seconds=amount.seconds + seconds_besides(nodes, points, len(lines), amount.values / (nodes * points)),
+        seconds=amount.seconds + besides,
+        wall_seconds=(amount.seconds + besides) / count,
         memory=needs.memory,
         memory_per_worker=needs.memory_per_worker,
         memory_available=budget,
@@ -210,6 +215,8 @@ def _warnings(recipe: Recipe, inputs: Inputs, coarse: list[NodeResolution], temp
             " use a high-temperature list above about 700 K"
         )
     chi = recipe.profile.chi
+    if chi is not None:
+        warnings.append(f"chi factors {chi}: {CHI_FACTORS[chi].source}; look the constants up before you publish")
     if chi is not None and CHI_FACTORS[chi].molecule != recipe.molecule.formula:
         made_for = CHI_FACTORS[chi].measured_for
         warnings.append(f"the chi factors {chi} are for {made_for} and are used for {recipe.molecule.formula}")

@@ -14,10 +14,15 @@ from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.plan import table_name
 from opacity.pipeline.progress import Progress
 from opacity.pipeline.resources import allowed_cpus
+from opacity.recipe.formats import exomol_kind
 from opacity.recipe.load import load_recipe
 from opacity.recipe.model import Recipe
 from opacity.tables.read import Table, open_table
 
+CHECKED = (
+    "a table (.h5), a recipe (.toml), or a line list: .par, .data, .cat, .def, .states or .trans, plain or compressed"
+)
+"""What `opacity check` takes."""
 TABLE_ENDING = ".cross-section.h5"
 
 
@@ -34,8 +39,13 @@ def find_table_and_recipe(target: Path, recipe: Path | None, folder: Path) -> Ta
     """The table to check and its recipe, from either of them.
 
     A recipe's table is looked for in `folder`, TableError where there is none; a table's recipe is the one given, or
-    the one that the log beside the table names, None where there is none.
+    the one that the log beside the table names, None where there is none.  TableError for what is neither.
     """
+    if os.path.isdir(target):
+        raise TableError(problem(target, "not a file", expected=CHECKED))
+    if exomol_kind(target.name) in ("pf", "broad"):
+        remedy = "with its data set it is looked at too: give the .states or .def file beside it"
+        raise TableError(problem(target, "not checked by itself", expected=CHECKED, remedy=remedy))
     if target.suffix != ".toml":
         found = recipe if recipe is not None else _recipe_of_log(target)
         return Target(target, found, recipe is not None)

@@ -17,8 +17,9 @@ from opacity.line_list.exomol.dataset import OpenDataSet, sort_files
 from opacity.line_list.hapi_table import header_of
 from opacity.line_list.records import ReadOptions
 from opacity.line_store.ingest import InputFile, ingest
-from opacity.line_store.store import LineStore, is_current, read_index
+from opacity.line_store.store import LineStore, StoreIndex, is_current, read_index
 from opacity.molecule.hapi_tables import hapi
+from opacity.pipeline.fetch.checksum import refuse_other_content
 from opacity.pipeline.progress import RecordProgress
 from opacity.pipeline.resources import allowed_cpus
 from opacity.provenance import package_versions
@@ -118,6 +119,8 @@ def ensure_store(
     """The line store of a list, made if it is missing or no longer what its files say; whether it was made now.
 
     With the files' sha256 at hand (`hashes`) these decide, and not only sizes and times of change.
+    Raises LineListError for files that do not make a list, or are not those that the recipe or the records beside
+    them promise.
     """
     hapi()  # before any thread asks for it
     with ThreadPoolExecutor(allowed_cpus()) as executor:
@@ -128,8 +131,18 @@ def ensure_store(
             known = {str(file["sha256"]) for one in index.inputs for file in one["files"]}
             there = all(_size(folder / segment.file) == segment.bytes for segment in index.segments)
             if there and (hashes is None or known <= hashes):
+                _refuse_other_content(source, made, index)
                 return LineStore(folder), False
         total = sum(_size(one.path) for one in made.inputs)
         with RecordProgress(f"reading lines of {recipe.molecule.formula}", total, quiet) as progress:
             ingest(folder, list(made.inputs), made.key, memory, progress.add, made.facts)
-    return LineStore(folder), True
+    store = LineStore(folder)
+    _refuse_other_content(source, made, store.index)
+    return store, True
+
+
+def _refuse_other_content(source: LineListSource, made: ListInputs, index: StoreIndex) -> None:
+    """Raise LineListError where a store's files are not those that recipe or records promise; it hashed them itself."""
+    for one, known in zip(made.inputs, index.inputs, strict=True):
+        for path, file in zip((one.path, *one.beside), known["files"], strict=True):
+            refuse_other_content(path, source.sha256.get(path), str(file["sha256"]))

@@ -12,7 +12,7 @@ from typing import Any
 from opacity.errors import printable
 from opacity.recipe.downloads import BESIDE, DOWNLOAD_KEYS, Download, means, read_downloads, refuse_twice
 from opacity.recipe.faults import Faults, listed, nearest, shown
-from opacity.recipe.formats import EXOMOL_ENDINGS, FORMATS, NAMELESS, exomol_kind
+from opacity.recipe.formats import EXOMOL_ENDINGS, FORMATS, NAMELESS, exomol_kind, plain_name
 from opacity.recipe.model import LineListSource
 from opacity.recipe.positions import KeyPath
 from opacity.recipe.table import Bounds, Table, checked_text
@@ -68,8 +68,15 @@ def _read_one(
         ),
         reference=table.required_text("reference", "the publication of the list"),
         bad_records=table.choice("bad_records", BAD_RECORDS, default="stop"),
+        sha256=_stated_hashes(paths, downloads),
     )
     return source, downloads
+
+
+def _stated_hashes(paths: Sequence[Path], downloads: Sequence[Download]) -> dict[Path, str]:
+    """What the recipe says of the sha256 of the files found."""
+    stated = {os.path.realpath(one.path): one.sha256 for one in downloads if one.sha256 is not None}
+    return {path: stated[real] for path in paths if (real := os.path.realpath(path)) in stated}
 
 
 def _find_all(
@@ -165,7 +172,7 @@ def full_name(path: Path) -> str:
 def _is_new(faults: Faults, key: KeyPath, path: Path, seen: Seen) -> bool:
     """Whether a file is named for the first time: read twice, also plain and compressed, its lines count twice."""
     real = os.path.realpath(path)
-    plain = real.removesuffix(".bz2").removesuffix(".gz")
+    plain = plain_name(real)
     if plain not in seen:
         seen[plain] = (key, real)
         return True

@@ -28,6 +28,7 @@ class LineListSource:
     """One `[[line_list]]`: files as written in the recipe, `paths` as found beside it.
 
     `format` is "hitran", "hapi", "exomol" or "catalogue"; with the latter two there is an `isotopologue`.
+    `sha256` is what the recipe says of some of the `paths`.
     """
 
     format: str
@@ -37,6 +38,7 @@ class LineListSource:
     isotopologue: str | None = None
     reference: str = ""
     bad_records: str = "stop"
+    sha256: dict[Path, str] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)

@@ -43,6 +43,7 @@ _GAMMA = Bounds(0.0, 10.0, "cm-1/bar", open_low=True)
 _EXPONENT = Bounds(-2.0, 2.0)
 _CUTOFF = Bounds(0.0, 1e6, "cm-1", open_low=True)
 _TOLERANCE = Bounds(1e-6, 0.1)
+_TOLERANCE_WITH_PLINTH = Bounds(2e-6, 0.1, "with plinth")
 _STRENGTH = Bounds(0.0, 1e9, open_low=True)
 _BARE_ATMOSPHERE = ("cm-2 atm-1", "cm-2/atm", "cm^-2 atm^-1", "atm-1 cm-2")
 _WHICH_ATM = "say at which temperature the gas was: " + listed(
@@ -219,10 +220,11 @@ def read_profile(root: Table) -> Profile:
     if values is None:
         return Profile(Cutoff(()))
     table = Table(root.faults, root.path("profile"), values, ("cutoff", "tolerance", "plinth", "chi"))
+    plinth = table.flag("plinth", default=False)
     return Profile(
         cutoff=_cutoff(table),
-        tolerance=table.number("tolerance", _TOLERANCE, default=1e-3),
-        plinth=table.flag("plinth", default=False),
+        tolerance=table.number("tolerance", _TOLERANCE_WITH_PLINTH if plinth else _TOLERANCE, default=1e-3),
+        plinth=plinth,
         chi=_chi(table),
     )
 

@@ -150,9 +150,10 @@ _PROFILE = """\
 # Lines count up to this distance from their centre.  25 cm-1 is common practice; 25 cm-1 up to 200 bar and 100 cm-1
 # above are recommended (Gharib-Nezhad et al. 2024, as quoted; not read).
 cutoff = [{ to_pressure = 200.0, cutoff = 25.0 }, { cutoff = 100.0 }]
-tolerance = 1e-3                       # largest relative error of the sum of lines, 1e-6 to 0.1
+tolerance = 1e-3                       # largest relative error of the sum of lines, 1e-6 to 0.1; from 2e-6 with plinth
 plinth = false                         # true subtracts the profile's value at the cut-off, for use with a continuum
-# chi = "Tonkov-1996"                  # sub-Lorentzian wings: Tonkov-1996 (CO2) or Hartmann-2002 (CH4 in H2)
+# chi = "Tonkov-1996"                  # sub-Lorentzian wings: Tonkov-1996 (CO2) or Hartmann-2002 (CH4 in H2); their
+                                       # constants are from memory: look them up before you publish
 """
 
 _GRID = """\

@@ -116,8 +116,11 @@ def within(wavenumber: FloatArray, centre: float, half_width: float) -> slice:
     return slice(int(first), max(int(last), int(first) + 1))
 
 
-def value_range(groups: list[Group], part: slice, decades: float = 14.0) -> tuple[float, float]:
-    """Limits of an axis that holds all values above 0, or the uppermost `decades` of them, and a legend above."""
+def value_range(groups: list[Group], part: slice, decades: float = 14.0, above: float = 0.13) -> tuple[float, float]:
+    """Limits of an axis that holds all values above 0, or the uppermost `decades` of them, and a legend above.
+
+    The share `above` of the axis, or a little more, lies above all values.
+    """
     lowest, highest = math.inf, 0.0
     for curve in (curve for group in groups for curve in group.curves):
         positive = curve.values[part][curve.values[part] > 0.0]
@@ -126,7 +129,7 @@ def value_range(groups: list[Group], part: slice, decades: float = 14.0) -> tupl
     if highest == 0.0:
         return 1e-30, 1e-16
     bottom = max(lowest / 2.0, highest * 10.0**-decades)
-    return bottom, 2.0 * highest * (highest / bottom) ** 0.15
+    return bottom, 2.0 * highest * (highest / bottom) ** (above / (1.0 - above))
 
 
 def wavelength_ticks(first: float, last: float) -> FloatArray:

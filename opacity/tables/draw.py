@@ -28,6 +28,8 @@ _STYLE = {
     "legend.frameon": False,
     "path.simplify": False,
 }
+_LEGEND_ROW = 0.042
+"""Height of a row of the legend, as a share of the enlarged panel's."""
 _Y_LABEL = r"cross-section (cm$^2$ molecule$^{-1}$)"
 _X_LABEL = r"wavenumber (cm$^{-1}$)"
 
@@ -95,7 +97,9 @@ def _fill_figure(figure: Any, table: Table, groups: list[curves.Group], part: sl
         axes.tick_params(labelbottom=False)
     _add_wavelengths(wide[0])
     zoomed = figure.add_subplot(grid[:, 1])
-    _draw_group(zoomed, table, groups[-1], part, curves.value_range(groups[-1:], part))
+    # Its legend stands above the curves: a line's peak may lie anywhere below it.
+    above = _LEGEND_ROW * (len(groups[-1].curves) + 1.5) if len(groups) > 1 else 0.05
+    _draw_group(zoomed, table, groups[-1], part, curves.value_range(groups[-1:], part, above=above))
     if len(groups) > 1:
         zoomed.legend(title=groups[-1].heading, loc="upper right", handlelength=3.0)
     zoomed.locator_params(axis="x", nbins=4)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import tomllib
 from dataclasses import replace
 from pathlib import Path
@@ -177,6 +178,22 @@ def test_rows_from_memory_see_factors_only(lines, factor, verdict):
         (found,) = judged(scaled(lines, factor), replace(FUNDAMENTAL, **change))
         assert found.verdict == verdict
         assert "uncertainties" not in found.detail
+        assert " %" not in found.detail
+        assert f", {found.found / found.published:.2g} times as much; " in found.detail
+        assert found.deviations is None
+        what = "a value from memory" if "status" in change else "a value without uncertainty"
+        assert found.words == (f"within a factor 1.5 of {what}" if verdict == AGREES else verdict)
+
+
+def test_a_list_with_a_gap_inside_the_band_is_not_called_less(lines):
+    nu = lines.wavenumber
+    (found,) = judged(lines.select((nu < 2160.0) | (nu > 2215.0)), FUNDAMENTAL, parts=3)
+    assert found.verdict == CANNOT_JUDGE
+    low, high = re.match(r"the list has no lines between (\S+) and (\S+) cm-1; in the range ", found.detail).groups()
+    assert float(low) == pytest.approx(2160.0, abs=8.0)
+    assert float(high) == pytest.approx(2215.0, abs=8.0)
+    (found,) = judged(scaled(lines, 0.5).select((nu < 2160.0) | (nu > 2170.0)), FUNDAMENTAL)
+    assert found.verdict == LESS
 
 
 # cm/molecule at which the sources arrive themselves, or that were worked out apart from this program.

@@ -103,10 +103,18 @@ source = "made up"
 """
 
 
+def test_a_catalogue_is_told_that_a_recipe_would_name_it(opacity, tmp_path):
+    path = tmp_path / "co.cat"
+    path.write_text("  115271.2018  0.0005 -5.0105 2    0.0000  3  28001 101 1           0             \n")
+    code, out, err = opacity("check", path)
+    assert (code, err) == (0, "")
+    assert "a catalogue does not name its molecule: with `--recipe RECIPE` it is held against" in one_line(out)
+
+
 def test_a_recipe_says_what_a_list_of_an_unknown_molecule_is_of(opacity, samples):
     code, out, err = opacity("check", samples / "invented-molecule.par")
     assert (code, out) == (1, "")
-    assert "every record was left out; found 1314 unknown isotopologue" in err
+    assert "every record was left out; found 1314 unknown isotopologue; `--recipe RECIPE` says what the list" in err
     recipe = samples.parent / "recipes" / "invented.toml"
     code, out, err = opacity("check", samples / "invented-molecule.par", "--recipe", recipe)
     assert (code, err) == (0, "")

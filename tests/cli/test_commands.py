@@ -7,9 +7,10 @@ import re
 import tomllib
 from pathlib import Path
 
+import numpy as np
 import pytest
 
-from opacity.cli import commands
+from opacity.cli import commands, summary
 
 
 def test_plan_tells_what_a_build_needs(opacity, project):
@@ -21,6 +22,28 @@ def test_plan_tells_what_a_build_needs(opacity, project):
     assert "left out: 176 lines, beyond the reach of the grid" in out
     assert "assumed for 26 lines: no pressure shift by air given: taken as 0" in out
     assert "tables/co.cross-section.h5" in out
+    assert "by cells" not in out
+    assert re.search(r"time +about \S+ s of one core for spectra, checks and writing\n", out)
+    code, out, _ = opacity("plan", "co.toml", "--json")
+    assert 0.0 <= json.loads(out)["by_cells"] <= 1.0
+
+
+def test_plan_tells_the_time_of_all_its_workers(opacity, project, monkeypatch):
+    monkeypatch.setattr("opacity.pipeline.plan.allowed_cpus", lambda: 2)
+    for name in ("FEWEST_VALUES", "MOST_VALUES"):
+        monkeypatch.setattr(f"opacity.pipeline.units.{name}", 101)
+    made = json.loads(opacity("plan", "co.toml", "--json")[1])
+    assert (made["workers"], made["units"]) == (2, 4)
+    assert 0.5 * made["seconds"] < made["wall_seconds"] < made["seconds"]
+    text = opacity("plan", "co.toml")[1]
+    assert re.search(r"time +about \S+ s of one core for spectra, checks and writing; \S+ s with 2 workers\n", text)
+
+
+def test_chi_factors_from_memory_are_told(opacity, write_recipe):
+    path = write_recipe("co", ("tolerance = 1e-3", 'tolerance = 1e-3\nchi = "Tonkov-1996"'))
+    text = one_line(opacity("plan", path)[1])
+    assert "warning: chi factors Tonkov-1996: Tonkov et al. 1996, Appl. Opt. 35, 4863 (constants from memory);" in text
+    assert "warning: the chi factors Tonkov-1996 are for pure CO2 and are used for CO" in text
 
 
 def test_plan_warns(opacity, write_recipe):
@@ -174,6 +197,15 @@ def test_show_summarises(opacity, table):
     assert found["stored_as"] == "float32"
 
 
+@pytest.mark.parametrize("dtype, why", [("<f4", ""), ("<f8", " (values below 1e-37, where float32 loses digits)")])
+def test_show_says_why_values_take_eight_bytes(dtype, why):
+    class Stored:
+        pass
+
+    Stored.dtype = np.dtype(dtype)
+    assert summary._stored_as(Stored) == f"{np.dtype(dtype).name}{why}"
+
+
 def test_a_table_of_another_make_is_shown_as_far_as_it_goes(opacity):
     table = Path(__file__).parents[1] / "tables" / "data" / "version-1.cross-section.h5"
     code, out, err = opacity("show", table)
@@ -260,6 +292,11 @@ def test_new_overwrites_nothing(opacity, project):
     assert err == "co.toml: is there already; choose another name with -o\n"
     assert (project / "co.toml").read_bytes() == before
     assert opacity("new", "CO", "-o", "other.toml")[0] == 0
+    assert opacity("new", "CO", "-o", "-") == (0, Path("other.toml").read_text(), "")
+    assert not Path("-").exists()
+    code, out, err = opacity("new", "FeH", "-o", "-")
+    assert (code, tomllib.loads(out)["molecule"]["formula"]) == (0, "FeH")
+    assert err.startswith("FeH: not in hapi's tables; ")
     assert (project / "other.toml").is_file()
 
 

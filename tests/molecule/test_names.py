@@ -65,9 +65,12 @@ def test_a_slug_finds_the_isotopologue():
     assert (made.formula, made.molecule_formula, made.mass, made.known) == ("48Ti-16O", "TiO", 63.94, False)
 
 
+MIXED = [("1H-2H-16O", "HDO"), ("HD(16O)", "HDO"), ("2H2-16O", "D2O"), ("14N-15N-16O", "N2O"), ("1H-35Cl", "HCl")]
+
+
 @pytest.mark.parametrize(
     "name, molecule",
-    [("12C-16O2", "CO2"), ("(1H)2(222Rn)", "H2Rn"), ("H3+", "H3+"), ("1H3_p", "H3+"), ("velline", "velline")],
+    [("12C-16O2", "CO2"), ("(1H)2(222Rn)", "H2Rn"), ("H3+", "H3+"), ("1H3_p", "H3+"), ("velline", "velline"), *MIXED],
 )
 def test_the_molecule_of_a_name(name, molecule):
     assert molecule_of(name) == molecule

@@ -92,6 +92,7 @@ def test_a_good_data_set_has_nothing_against_it(made: MadeSet) -> None:
     assert (report.lines, report.molecule, report.isotopologues) == (202, "CO", ("(12C)(16O)",))
     assert report.ledger.left_out == {}
     assert report.reach == pytest.approx((1886.458, 2289.717), abs=1e-3)
+    assert report.problems == ()
     assert report.remarks == (
         "transitions given twice are not looked for here: `opacity ingest RECIPE`, which sorts the lines, counts them",
     )
@@ -131,7 +132,7 @@ def test_planted_faults_are_counted_by_kind(made: MadeSet) -> None:
         "row cannot be read": 6,
     }
     assert (report.lines, report.ledger.read) == (203, 224)
-    assert "202 transitions by the definition, 224 found" in report.remarks
+    assert "202 transitions by the definition, 224 found" in report.problems
 
 
 def test_one_file_of_transitions_is_looked_at_with_its_states(made: MadeSet) -> None:
@@ -140,7 +141,7 @@ def test_one_file_of_transitions_is_looked_at_with_its_states(made: MadeSet) -> 
     report = check_data_set(made.folder / f"{STEM}__02100-02300.trans.bz2")
     assert (report.lines, report.ledger.read) == (102, 103)
     assert f"one of 2 .trans files of {STEM} that are here" in report.remarks
-    assert not any("by the definition" in one for one in report.remarks)
+    assert not any("by the definition" in one for one in report.problems)
     assert report.bands[0].verdict == "cannot judge"
     report = check_data_set(made.folder / "13C-16O__OTHER.trans")
     assert report.isotopologues == ("(13C)(16O)",)
@@ -181,14 +182,14 @@ def test_a_missing_ground_state_is_told(made: MadeSet) -> None:
     energies = sorted(float(row.split()[1]) for row in made.states)
     made.states = [row for row in made.states if float(row.split()[1]) > 0.0]
     report = check_data_set(made.write())
-    assert any(words.startswith(f"the lowest energy is {energies[1]:g} cm-1, not 0") for _, words in report.rows)
+    assert any(words.startswith(f"the lowest energy is {energies[1]:g} cm-1, not 0") for words in report.problems)
     assert set(report.ledger.left_out) == {"lower state is not in the states file"}
 
 
 def test_states_without_weight_have_no_partition_function(made: MadeSet) -> None:
     made.states = [f"{row[:26]} 0 {row[34:]}" for row in made.states]
     report = check_data_set(made.write())
-    assert ("states", "the sum over the states is 0: there is no Q of theirs") in report.rows
+    assert "the sum over the states is 0: there is no Q of theirs" in report.problems
     assert report.facts["states"]["notes"] == {"total weight 0: such a state adds nothing": 155}
 
 
@@ -210,8 +211,7 @@ def test_what_the_definition_says_otherwise_is_told(made: MadeSet) -> None:
         "Filename of particular broadener": "12C-16O__he.broad",
         "Iso-slug": "13C-16O",
     }
-    remarks = check_data_set(made.write()).remarks
-    assert remarks[:-1] == (
+    assert check_data_set(made.write()).problems == (
         "the definition is of (12C)(16O) by its formula, of 13C-16O by its slug",
         "mass 28.1 g/mol in the definition, 27.994915 g/mol in hapi's tables (+0.38 %)",
         "12C-16O__he.broad is in the definition, and not beside it",
@@ -226,6 +226,7 @@ def test_a_broadening_file_of_no_use_is_told_and_stops_nothing(made: MadeSet, br
     report = check_data_set(made.write())
     assert report.lines == 202
     assert "12C-16O__H2.broad" in report.facts["broadening"]["H2"]["error"]
+    assert report.problems[0].startswith(f"widths by H2: {made.folder}/12C-16O__H2.broad")
     assert not any("width" in note for note in report.ledger.notes)
 
 
@@ -261,7 +262,7 @@ def test_a_recipe_may_say_what_the_set_is_of(made: MadeSet, write_recipe) -> Non
     )
     report = check_data_set(path, load_recipe(recipe))
     assert report.isotopologues == ("(13C)(16O)",)
-    assert "the definition is of (12C)(16O), and the recipe takes it for (13C)(16O)" in report.remarks
+    assert "the definition is of (12C)(16O), and the recipe takes it for (13C)(16O)" in report.problems
 
 
 @pytest.mark.parametrize("name", [f"{STEM}.def", f"{STEM}.states.bz2", f"{STEM}__02100-02300.trans.bz2"])
@@ -280,6 +281,8 @@ def test_the_command_says_it_in_words_and_as_json(opacity, made: MadeSet, name: 
     found = json.loads(out)
     assert found["data_set"]["name"] == STEM
     assert found["states"]["count"] == 155
+    told = "problem 202 transitions by the definition, 203 found note " in text
+    assert told == ("202 transitions by the definition, 203 found" in found["problems"]) == name.endswith(".def")
     code, out, err = opacity("check", made.folder / f"none-{name}")
     assert (code, out) == (1, "")
     assert err.count("\n") == 1

@@ -4,7 +4,9 @@ from collections.abc import Callable
 
 import pytest
 
+from opacity.cross_sections.tolerance import LARGEST_TOLERANCE, SMALLEST_TOLERANCE, SMALLEST_WITH_PLINTH
 from opacity.errors import RecipeError
+from opacity.recipe import sections
 
 Faults = Callable[..., list[str]]
 
@@ -163,7 +165,7 @@ ONE_FAULT = [
     (
         "tolerance = 1e-4",
         "tolerance = 1e-7",
-        "39: profile.tolerance: impossible value; expected a number from 1e-06 to 0.1, found 1e-07",
+        "39: profile.tolerance: impossible value; expected a number from 2e-06 to 0.1 with plinth, found 1e-07",
     ),
     ("plinth = true", "plinth = 1", "40: profile.plinth: not a boolean; expected true or false, found 1"),
     (
@@ -217,6 +219,19 @@ ONE_FAULT = [
         "49: band_strength: not an array of tables; expected [[band_strength]], found a table; write [[band_strength]]",
     ),
 ]
+
+
+@pytest.mark.parametrize("plinth, smallest, words", [("false", "1e-06", ""), ("true", "2e-06", " with plinth")])
+def test_the_smallest_tolerance_depends_on_the_plinth(faults: Faults, plinth: str, smallest: str, words: str) -> None:
+    changes = (("tolerance = 1e-4", "tolerance = 9e-7"), ("plinth = true", f"plinth = {plinth}"))
+    expected = f"expected a number from {smallest} to 0.1{words}, found 9e-07"
+    assert faults(*changes) == [f"co.toml:39: profile.tolerance: impossible value; {expected}"]
+
+
+def test_a_recipe_and_a_call_have_the_same_tolerances() -> None:
+    assert (sections._TOLERANCE.low, sections._TOLERANCE.high) == (SMALLEST_TOLERANCE, LARGEST_TOLERANCE)
+    with_plinth = sections._TOLERANCE_WITH_PLINTH
+    assert (with_plinth.low, with_plinth.high) == (SMALLEST_WITH_PLINTH, LARGEST_TOLERANCE)
 
 
 @pytest.mark.parametrize("old, new, expected", ONE_FAULT)

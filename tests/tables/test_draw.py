@@ -11,6 +11,7 @@ import pytest
 
 from opacity.errors import InputError, ResourceError
 from opacity.tables import curves
+from opacity.tables import draw as drawing
 from opacity.tables.draw import draw_table
 from opacity.tables.read import open_table
 from opacity.tables.write import write_cross_section_table
@@ -74,6 +75,24 @@ def test_a_band(make_table, tmp_path, points):
 )
 def test_every_kind_of_table(make_table, tmp_path, changes):
     draw(make_table(**changes), tmp_path)
+
+
+@pytest.mark.parametrize("pressures", [(1e-4, 1.0), (9.87e-5, 1.23e-3, 0.123, 12.3)])
+@pytest.mark.parametrize("zoom", [(2143.0, 2147.0), (2146.79, 2146.81)])
+def test_the_legend_covers_no_curve_of_the_enlarged_part(make_table, tmp_path, pressures, zoom):
+    wavenumber, temperatures = np.linspace(2100.0, 2200.0, 20001), (100.0, 300.0, 1000.0)
+    values = rotor_band(wavenumber, temperatures, pressures)
+    table = make_table(temperatures, pressures, wavenumber.size, wavenumber=wavenumber, cross_section=values)
+    with open_table(write_cross_section_table(tmp_path / "a.h5", table)) as read:
+        rc_context, figure_class, canvas_class = drawing._matplotlib(tmp_path)
+        with rc_context(drawing._STYLE):
+            figure = figure_class(figsize=(13.0, 7.3), dpi=160, layout="constrained")
+            canvas = canvas_class(figure)
+            drawing._fill_figure(figure, read, curves.groups_of(read), drawing._zoom_part(read, zoom))
+            canvas.draw()
+    (zoomed,) = (axes for axes in figure.axes if axes.get_title().startswith("enlarged"))
+    highest = max(float(np.nanmax(line.get_ydata())) for line in zoomed.get_lines())
+    assert zoomed.get_legend().get_window_extent().y0 > zoomed.transData.transform((zoom[0], highest))[1]
 
 
 def test_zoom(make_table, tmp_path):

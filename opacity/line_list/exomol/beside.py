@@ -13,7 +13,7 @@ from pathlib import Path
 from opacity.errors import LineListError, problem
 from opacity.line_list.exomol.definition import Definition, read_definition
 from opacity.line_list.exomol.transitions import default_names
-from opacity.recipe.formats import EXOMOL_ENDINGS, exomol_kind
+from opacity.recipe.formats import EXOMOL_ENDINGS, exomol_kind, plain_name
 
 CHECKED = ("def", "states", "trans")
 """Kinds of files that lead to their data set."""
@@ -36,7 +36,7 @@ class FilesBeside:
 
 def stem_of(name: str) -> str:
     """A file's name without the endings of compression and kind."""
-    plain = _plain(name)
+    plain = plain_name(name)
     for ending in sorted(EXOMOL_ENDINGS, key=len, reverse=True):
         if plain.lower().endswith(ending):
             return plain[: -len(ending)]
@@ -83,18 +83,11 @@ def files_beside(target: Path) -> tuple[FilesBeside, Definition | None]:
     return found, definition
 
 
-def _plain(name: str) -> str:
-    for ending in (".gz", ".bz2"):
-        if name.lower().endswith(ending):
-            return name[: -len(ending)]
-    return name
-
-
 def _of_kind(folder: Path, kind: str) -> Iterator[Path]:
     """The files of a kind, sorted by name; of one that lies there plain and compressed only the first."""
     seen = set()
     for path in sorted(folder.iterdir(), key=lambda one: one.name):
-        plain = _plain(path.name)
+        plain = plain_name(path.name)
         if exomol_kind(path.name) == kind and plain not in seen and path.is_file():
             seen.add(plain)
             yield path
@@ -124,7 +117,7 @@ def _broad(paths: list[Path], slug: str, definition: Definition | None) -> tuple
     found = default_names([path for path in paths if path.name.startswith(f"{slug}__")])
     absent = []
     for one in definition.broadeners if definition is not None else ():
-        there = [path for path in paths if _plain(path.name) == _plain(one.file)]
+        there = [path for path in paths if plain_name(path.name) == plain_name(one.file)]
         if there:
             found = {name: path for name, path in found.items() if path not in there} | {one.name: there[0]}
         else:

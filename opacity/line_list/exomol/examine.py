@@ -23,9 +23,10 @@ _TEMPERATURES = 24
 
 @dataclass
 class Said:
-    """Sentences for people, and the same as plain values."""
+    """Sentences for people, those about what seems wrong apart, and the same as plain values."""
 
     sentences: list[str] = field(default_factory=list)
+    problems: list[str] = field(default_factory=list)
     values: dict[str, Any] = field(default_factory=dict)
 
 
@@ -42,9 +43,9 @@ def examine_states(states: States, partition: Path | None, isotopologue: Isotopo
     share = weight / (2.0 * j + 1.0)
     counts["total weight is no whole multiple of 2J + 1"] = int(np.count_nonzero(np.abs(share - np.rint(share)) > 1e-6))
     said.values["notes"] = {what: count for what, count in counts.items() if count}
-    said.sentences += [f"{count}: {what}" for what, count in said.values["notes"].items()]
+    said.problems += [f"states: {count}: {what}" for what, count in said.values["notes"].items()]
     if lowest > 1e-3:
-        said.sentences.append(f"the lowest energy is {lowest:g} cm-1, not 0: the ground state seems to be missing")
+        said.problems.append(f"the lowest energy is {lowest:g} cm-1, not 0: the ground state seems to be missing")
     _compare(said, states, partition, isotopologue)
     return said
 
@@ -62,7 +63,7 @@ def _compare(said: Said, states: States, partition: Path | None, isotopologue: I
     """Q summed over the states against the .pf file and TIPS-2021."""
     whole = summed(states)
     if whole is None:
-        said.sentences.append("the sum over the states is 0: there is no Q of theirs")
+        said.problems.append("the sum over the states is 0: there is no Q of theirs")
         return
     own = float(partition_sum(states, [REFERENCE_TEMPERATURE])[0])
     said.values["partition_296"] = own
@@ -101,7 +102,7 @@ def examine_broadening(broad: dict[str, Path]) -> Said:
         try:
             table = read_broadening(path)
         except LineListError as error:
-            said.sentences.append(f"{name}: {error}")
+            said.problems.append(f"widths by {name}: {error}")
             said.values[name] = {"file": path.name, "error": str(error)}
             continue
         used = {code: int(np.count_nonzero(table.code == number)) for number, code in enumerate(CODES)}

@@ -16,7 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.constants import REFERENCE_TEMPERATURE
-from opacity.errors import LineListError, problem
+from opacity.errors import LineListError, excerpt, problem
 from opacity.grids import FloatArray
 from opacity.kernels import transitions as kernel
 from opacity.kernels.text import UNREADABLE
@@ -172,13 +172,12 @@ def _account(path: Path, raw: RawText, status: NDArray[np.uint8], leave_out: boo
     if found and not leave_out:
         row, (what, expected) = min(found)
         chunk = raw.lines()
-        text = "".join(chr(byte) if 32 <= byte < 127 else "?" for byte in chunk.record(row)[:60])
         raise LineListError(
             problem(
                 f"{path}:{chunk.line[row]}",
                 what,
                 expected=expected,
-                found=f'"{text}"',
+                found=f'"{excerpt(chunk.record(row))}"',
                 remedy='mend the list, or set bad_records = "leave-out"',
             )
         )

@@ -14,7 +14,7 @@ from typing import Any
 from urllib.parse import urlsplit
 
 from opacity.errors import LineListError, ResourceError, problem
-from opacity.pipeline.fetch.checksum import recorded_sha256
+from opacity.pipeline.fetch.checksum import promise_of, recorded_sha256
 from opacity.pipeline.fetch.hitran import check_request, request_words
 from opacity.pipeline.fetch.http import TransferError, size_of
 from opacity.pipeline.fetch.partial import part_length
@@ -158,17 +158,15 @@ def _verify(download: Download, say: Callable[[str], None]) -> Item:
     recorded, request = recorded_sha256(path)
     if isinstance(download, HitranDownload) and recorded is not None and request != request_words(download):
         return Item(download, WRONG, f"fetched for another request ({request})", size)
-    expected, origin = download.sha256, "of the recipe"
-    if expected is None:
-        expected, origin = recorded, "recorded beside it"
-    if expected is None:
+    promise = promise_of(path, download.sha256)
+    if promise is None:
         return Item(download, PRESENT, "no checksum to hold it against", size)
     if size >= _LONG_CHECK:
         say(f"{path.name}: checking {in_bytes(size)}")
     found = file_sha256(path)
-    if found != expected:
-        return Item(download, WRONG, f"not the sha256 {origin}; expected {expected}, found {found}", size)
-    return Item(download, PRESENT, f"sha256 as {'in the recipe' if origin == 'of the recipe' else 'recorded'}", size)
+    if found != promise.sha256:
+        return Item(download, WRONG, promise.broken(found), size)
+    return Item(download, PRESENT, f"sha256 as {'in the recipe' if promise.in_recipe else 'recorded'}", size)
 
 
 def _with_sizes(items: Sequence[Item]) -> list[Item]:
