@@ -34,7 +34,7 @@ def test_plan_tells_the_time_of_all_its_workers(opacity, project, monkeypatch):
         monkeypatch.setattr(f"opacity.pipeline.units.{name}", 101)
     made = json.loads(opacity("plan", "co.toml", "--json")[1])
     assert (made["workers"], made["units"]) == (2, 4)
-    assert 0.5 * made["seconds"] < made["wall_seconds"] < made["seconds"]
+    assert 0.5 * made["seconds"] <= made["wall_seconds"] < made["seconds"]
     text = opacity("plan", "co.toml")[1]
     assert re.search(r"time +about \S+ s of one core for spectra, checks and writing; \S+ s with 2 workers\n", text)
 
