@@ -251,7 +251,8 @@ def plan(recipe: Recipe, folder: str | Path = "tables", *, memory: int = 2_000_0
     from opacity.pipeline.inputs import load_inputs
     from opacity.pipeline.plan import make_plan
 
-    return make_plan(recipe, load_inputs(recipe, Path(folder), memory=memory, quiet=quiet), Path(folder))
+    inputs = load_inputs(recipe, Path(folder), memory=memory, quiet=quiet)
+    return make_plan(recipe, inputs, Path(folder), memory=memory)
 
 
 def build(

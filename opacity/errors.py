@@ -63,6 +63,10 @@ class ResourceError(OpacityError):
     """Memory, disk or permission that the work needs and does not have."""
 
 
+class InUseError(ResourceError):
+    """A folder in which another process is at work."""
+
+
 class AssumptionWarning(UserWarning):
     """What a computation assumed because the line list does not give it, and for how many lines."""
 

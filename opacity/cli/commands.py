@@ -61,7 +61,7 @@ def plan(arguments: Namespace) -> int:
     else:
         print(text.facts(_plan_facts(made)))
         _print_notes(made.ledger, _assumptions(made))
-        for warning in made.warnings:
+        for warning in (*made.warnings, *made.limited):
             print(text.wrapped(f"warning: {warning}"))
     for obstacle in made.obstacles:
         print(f"warning: {obstacle}", file=sys.stderr)
@@ -116,9 +116,9 @@ def build(arguments: Namespace) -> int:
         crew=Crew(arguments.workers, arguments.using, arguments.task, arguments.scheduler),
         memory=arguments.memory,
         quiet=arguments.quiet,
-        announce=lambda plan: _warn(plan.warnings),
+        announce=lambda plan: _warn((*plan.warnings, *plan.limited)),
     )
-    if made.missing:
+    if not made.figures:
         return _tell_of_task(made, arguments)
     figures = made.figures
     if made.reused:
@@ -154,8 +154,10 @@ def _tell_of_task(made: BuildResult, arguments: Namespace) -> int:
     done = made.units - made.missing
     if arguments.json:
         print(text.as_json({"table": None, "units": made.units, "done": done, "seconds": made.seconds}))
-    else:
+    elif made.missing:
         print(f"{done} of {made.units} units done; the table is made when all are, by the last task or `opacity build`")
+    else:
+        print(f"all {made.units} units done; another task is putting the table together")
     return DONE
 
 

@@ -13,7 +13,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from opacity.errors import ResourceError, problem
+from opacity.errors import InUseError, ResourceError, problem
 from opacity.line_store.layout import LOCK
 from opacity.tables.atomic import process_namespace, process_runs, remove_leftovers, temporary_path
 
@@ -168,9 +168,9 @@ def _named(text: str) -> str:
     return f"process {holder['pid']} on {holder['host']}"
 
 
-def _in_use(path: Path, text: str, what: str) -> ResourceError:
+def _in_use(path: Path, text: str, what: str) -> InUseError:
     remedy = f"wait for it, or remove {path.name} if it no longer runs"
-    return ResourceError(problem(path.parent, f"this {what} is being made by {_named(text)}", remedy=remedy))
+    return InUseError(problem(path.parent, f"this {what} is being made by {_named(text)}", remedy=remedy))
 
 
 def _is_left_behind(path: Path, text: str) -> bool:

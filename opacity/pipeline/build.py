@@ -16,11 +16,11 @@ import numpy as np
 
 from opacity.check.run import run_checks
 from opacity.cross_sections.tolerance import regions
-from opacity.errors import ResourceError, TableError, problem
+from opacity.errors import InUseError, ResourceError, TableError, problem
 from opacity.line_store.lock import locked
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
 from opacity.pipeline.inputs import Inputs, load_inputs
-from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit, table_name
+from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit, shards_of, table_name
 from opacity.pipeline.progress import Progress
 from opacity.pipeline.resources import processor
 from opacity.pipeline.sources import DEFAULT_MEMORY
@@ -52,7 +52,8 @@ class Crew:
 class BuildResult:
     """What a build made: the table, the log beside it, the checks, and the plan, None for a table that was kept.
 
-    `missing` units are left to other tasks; until they are done there is no table and there are no checks.
+    `missing` units are left to other tasks; until they are done there is no table and there are no checks.  Where none
+    is missing and there are no checks another task is putting the table together.
     """
 
     table: Path
@@ -91,7 +92,7 @@ def build_table(
     origin = fingerprint(recipe)
     kept = _still_good(path, origin)
     if kept is not None:
-        _remove_shards(folder / f"{recipe.name}.shards")
+        _remove_shards(shards_of(recipe, folder))
         if not log.exists():
             with contextlib.suppress(ResourceError):
                 _write_log(log, recipe, time.monotonic() - started, 0)
@@ -115,7 +116,7 @@ def build_table(
         with contextlib.suppress(OSError):
             job.shards.rmdir()  # unless shards are kept in it
     seconds = time.monotonic() - started
-    if not missing:
+    if figures:
         _write_log(log, recipe, seconds, plan.workers)
     return BuildResult(path, log, plan, figures, seconds, len(units), missing)
 
@@ -132,7 +133,7 @@ class _Job:
 
     @property
     def shards(self) -> Path:
-        return self.folder / f"{self.recipe.name}.shards"
+        return shards_of(self.recipe, self.folder)
 
     @property
     def work(self) -> Work:
@@ -140,7 +141,9 @@ class _Job:
 
     @property
     def origin(self) -> Origin:
-        return Origin(self.recipe.path, self.folder, self.shards, self.inputs.sha256, self.memory)
+        return Origin(
+            self.recipe.path.absolute(), self.folder.absolute(), self.shards.absolute(), self.inputs.sha256, self.memory
+        )
 
 
 def _build_alone(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[str, Any], int]:
@@ -170,7 +173,10 @@ def _build_task(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[st
     missing = sum(not unit.path(job.shards).exists() for unit in units)
     if missing:
         return {}, missing
-    return _build_alone(job, units, crew)
+    try:
+        return _build_alone(job, units, crew)
+    except InUseError:  # the task that found all units done at the same moment puts the table together
+        return {}, 0
 
 
 def _compute(job: _Job, units: tuple[Unit, ...], crew: Crew) -> None:

@@ -5,6 +5,8 @@ Workers compute and write the shards themselves; what travels is a unit's number
 
 from __future__ import annotations
 
+import logging
+import sys
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
@@ -32,6 +34,8 @@ def on_cluster(scheduler: str, origin: Origin, units: Sequence[Unit], workers: i
         what, remedy = "dask.distributed is not installed", "pip install 'opacity[cluster]'"
         raise ResourceError(problem("--scheduler", what, remedy=remedy)) from error
     with _client(scheduler, workers) as client:
+        if not client.scheduler_info()["workers"]:
+            print("the scheduler has no workers yet: waiting for them", file=sys.stderr, flush=True)
         waiting = {
             client.submit(_do, origin, unit.number, key=f"opacity-{unit.name}", retries=RETRIES, pure=False): unit
             for unit in units
@@ -51,6 +55,8 @@ def on_cluster(scheduler: str, origin: Origin, units: Sequence[Unit], workers: i
 def _client(scheduler: str, workers: int) -> Iterator[Any]:
     from distributed import Client, LocalCluster
 
+    # What goes wrong on the way is told in one line.
+    logging.getLogger("distributed").setLevel(logging.CRITICAL)
     if scheduler == "local":
         local = LocalCluster(n_workers=workers, threads_per_worker=1, dashboard_address=None)
         with local as cluster, Client(cluster) as client:

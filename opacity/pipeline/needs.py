@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import time
 from dataclasses import dataclass
+from pathlib import Path
 
 import numpy as np
 
@@ -32,6 +33,11 @@ BYTES_A_LINE = 400
 COPIES_OF_A_UNIT = 3
 """A unit's spectra, and what is made of them on the way to a shard."""
 PROGRAM_BYTES = 400_000_000
+COPIES_OF_AN_AXIS = 3
+"""The grid's wavenumbers: in the recipe, the table's frame, and where they are hashed."""
+COPIES_OF_A_SPECTRUM = 6
+"""While the table is checked: as stored, as f8, weighted, sampled."""
+_MANY = 1_000_000
 ASSEMBLY_BYTES = 150_000_000
 """A shard and a few spectra, while the table is put together and checked."""
 DISK_BYTES_A_VALUE = 8
@@ -50,8 +56,15 @@ class Needs:
     lines_per_unit: int
 
 
-def needs_of(recipe: Recipe, source: LineSource, units: tuple[Unit, ...], workers: int, processes: bool) -> Needs:
-    """What a build with so many workers needs."""
+def needs_of(
+    recipe: Recipe,
+    source: LineSource,
+    units: tuple[Unit, ...],
+    workers: int,
+    processes: bool,
+    shards: Path | None = None,
+) -> Needs:
+    """What a build with so many workers needs, on disk beside the shards that lie in their folder already."""
     nu, margin = recipe.grid.wavenumber, margin_of(recipe)
     reach = [
         source.count(float(nu[unit.start]) - margin, float(nu[unit.stop - 1]) + margin)
@@ -61,20 +74,35 @@ def needs_of(recipe: Recipe, source: LineSource, units: tuple[Unit, ...], worker
     values = max((len(unit.rows) * (unit.stop - unit.start) for unit in units), default=0)
     worker = COPIES_OF_A_UNIT * 8 * values + BYTES_A_LINE * min(lines, LINES_AT_ONCE)
     held = BYTES_A_RECORD * min(source.ledger.read, LINES_AT_ONCE)
-    base = PROGRAM_BYTES + held
+    base = PROGRAM_BYTES + held + COPIES_OF_AN_AXIS * 8 * nu.size
     if processes:
         worker += base
-    table = len(recipe.grid.node_list()) * nu.size * DISK_BYTES_A_VALUE
-    return Needs(base + max(workers * worker, ASSEMBLY_BYTES), worker, 2 * table + 1_000_000, lines)
+    assembly = ASSEMBLY_BYTES + COPIES_OF_A_SPECTRUM * 8 * nu.size
+    return Needs(base + max(workers * worker, assembly), worker, _disk(units, shards), lines)
+
+
+def _disk(units: tuple[Unit, ...], shards: Path | None) -> int:
+    """Bytes that are still to be written: shards that are not there, and the table."""
+    there, missing = 0, 0
+    for unit in units:
+        try:
+            there += unit.path(shards).stat().st_size if shards is not None else 0
+            missing += 0 if shards is not None else len(unit.rows) * (unit.stop - unit.start)
+        except OSError:
+            missing += len(unit.rows) * (unit.stop - unit.start)
+    # What is there goes into the table as it is, or as f8.
+    return 2 * missing * DISK_BYTES_A_VALUE + 2 * there + 1_000_000
 
 
 def workers_that_fit(recipe: Recipe, source: LineSource, units: tuple[Unit, ...], budget: int, processes: bool) -> int:
     """So many workers fit into a budget of memory (bytes); 0 where not even one does."""
     one = needs_of(recipe, source, units, 1, processes)
-    fixed = one.memory - max(one.memory_per_worker, ASSEMBLY_BYTES)
     if one.memory > budget:
         return 0
-    return max((budget - fixed) // max(one.memory_per_worker, 1), 1)
+    # Beside the base, which two different numbers of workers tell.
+    many = needs_of(recipe, source, units, _MANY, processes)
+    base = many.memory - _MANY * many.memory_per_worker
+    return max((budget - base) // max(one.memory_per_worker, 1), 1)
 
 
 @dataclass(frozen=True)

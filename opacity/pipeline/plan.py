@@ -48,7 +48,8 @@ class Plan:
     `profile_values` are the values of profiles at points that the sum stands for; of its tiles the share `by_cells`
     gets most of them eight a cell.  `predicted_error` is the largest relative error of a value.
 
-    `obstacles` say why the build cannot fit here; it is refused then.
+    `obstacles` say why the build cannot fit here; it is refused then.  `limited` says where it gets less than it was
+    to have; being of this machine alone, it is no part of the table.
     """
 
     recipe: str
@@ -70,6 +71,7 @@ class Plan:
     disk: int
     disk_free: int | None
     obstacles: tuple[str, ...]
+    limited: tuple[str, ...]
     coarse_nodes: tuple[NodeResolution, ...]
     warnings: tuple[str, ...]
     assumptions: tuple[tuple[str, int], ...]
@@ -103,7 +105,7 @@ def make_plan(
     available, disk_free = available_memory(), free_disk(folder)
     budget = memory if available is None else min(memory, available)
     count = max(min(wanted, workers_that_fit(recipe, lines, units, budget, processes), len(units) or 1), 1)
-    needs = needs_of(recipe, lines, units, count, processes)
+    needs = needs_of(recipe, lines, units, count, processes, shards_of(recipe, folder))
     amount = amount_of(recipe, lines)
     besides = seconds_besides(nodes, points, len(lines), amount.values / max(nodes * points, 1))
     fitted = [f"memory allows {count} of {wanted} workers"] if count < min(wanted, len(units)) else []
@@ -128,8 +130,9 @@ def make_plan(
         disk=needs.disk,
         disk_free=disk_free,
         obstacles=tuple(_obstacle(recipe, *one) for one in limits if one[2] is not None and one[1] > one[2]),
+        limited=tuple(fitted),
         coarse_nodes=tuple(coarse),
-        warnings=(*inputs.warnings, *_warnings(recipe, inputs, coarse, temperatures), *fitted),
+        warnings=(*inputs.warnings, *_warnings(recipe, inputs, coarse, temperatures)),
         assumptions=tuple((one.what, one.lines) for one in lines.assumptions),
         ledger=lines.ledger.as_dict(),
     )
@@ -138,6 +141,11 @@ def make_plan(
 def table_name(recipe: Recipe) -> str:
     """File name of a recipe's cross-section table."""
     return f"{recipe.name}.cross-section.h5"
+
+
+def shards_of(recipe: Recipe, folder: Path) -> Path:
+    """The folder of the shards of a recipe's table."""
+    return folder / f"{recipe.name}.shards"
 
 
 def _obstacle(recipe: Recipe, what: str, needed: int, free: int | None) -> str:

@@ -7,6 +7,8 @@ from __future__ import annotations
 
 import contextlib
 import multiprocessing
+import signal
+import threading
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import FIRST_COMPLETED, Executor, Future, ProcessPoolExecutor, ThreadPoolExecutor, wait
 from concurrent.futures.process import BrokenProcessPool
@@ -81,7 +83,9 @@ def in_processes(origin: Origin, units: Sequence[Unit], workers: int, done: Done
         pool = ProcessPoolExecutor(count, mp_context=context, initializer=prepare_process, initargs=(origin,))
         try:
             with _ended(pool) as executor:
-                _all_done({executor.submit(do_in_process, number): unit for number, unit in left.items()}, finished)
+                with _interrupts_ignored():  # by the processes that are started here
+                    waiting = {executor.submit(do_in_process, number): unit for number, unit in left.items()}
+                _all_done(waiting, finished)
             return
         except BrokenProcessPool:
             continue
@@ -111,13 +115,24 @@ def _ended(executor: ThreadPoolExecutor | ProcessPoolExecutor) -> Iterator[Execu
         executor.shutdown(wait=True, cancel_futures=True)
 
 
+@contextlib.contextmanager
+def _interrupts_ignored() -> Iterator[None]:
+    """Ignore Ctrl-C for a moment: processes that are started meanwhile ignore it from their first instruction on."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    before = signal.signal(signal.SIGINT, signal.SIG_IGN)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, before)
+
+
 _process: dict[str, object] = {}
 
 
 def prepare_process(origin: Origin, signals: bool = True) -> None:
     """Load a recipe and its lines once in a worker process, which leaves Ctrl-C (`signals`) to its parent."""
-    import signal
-
     from opacity.pipeline.inputs import load_inputs
     from opacity.recipe.load import load_recipe
 

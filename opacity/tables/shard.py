@@ -7,6 +7,7 @@ the header, and the blocks one after the other.  It is written whole and never c
 
 from __future__ import annotations
 
+import errno
 import hashlib
 import json
 from dataclasses import dataclass
@@ -72,6 +73,7 @@ def make_shard(rows: tuple[int, ...], start: int, chunk: int, spectra: FloatArra
 def write_shard(path: Path, shard: Shard) -> None:
     """Write a shard to its final name.  Raises ResourceError for what the file system refuses."""
     header = {
+        "unit": path.stem,
         "rows": list(shard.rows),
         "start": shard.start,
         "stop": shard.stop,
@@ -91,6 +93,8 @@ def write_shard(path: Path, shard: Shard) -> None:
 def read_shard(path: Path) -> Shard:
     """A shard from its file.  Raises TableError where it is missing, damaged or not a shard."""
     try:
+        if not path.is_file():
+            raise FileNotFoundError(errno.ENOENT, "no such file")
         data = path.read_bytes()
     except OSError as error:
         raise TableError(problem(path, f"the shard cannot be read ({error.strerror or error})")) from error
@@ -100,6 +104,8 @@ def read_shard(path: Path) -> Shard:
         raise TableError(problem(path, "the shard is not as it was written"))
     length = int.from_bytes(content[:8], "little")
     header = json.loads(bytes(content[8 : 8 + length]))
+    if header.get("unit") != path.stem:
+        raise TableError(problem(path, "the shard is another unit's", expected=path.stem, found=header.get("unit")))
     blocks, position = [], 8 + length
     for size in header["bytes"]:
         blocks.append(bytes(content[position : position + size]))

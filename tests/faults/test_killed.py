@@ -12,7 +12,10 @@ from pathlib import Path
 import pytest
 
 from opacity.errors import ResourceError
+from opacity.pipeline import build as build_module
 from opacity.pipeline.build import Crew, build_table
+from opacity.pipeline.inputs import load_inputs
+from opacity.pipeline.plan import make_plan
 from opacity.recipe.load import load_recipe
 from opacity.tables.shard import is_whole
 
@@ -144,3 +147,61 @@ def test_a_disk_that_fails_at_every_point(
     assert builds >= 2
     assert table_hash(tmp_path) == undisturbed
     assert files_in(tmp_path) == DONE
+
+
+def test_a_shard_of_another_unit_is_not_taken(
+    tmp_path: Path, build: Callable[..., tuple[int, str, str]], undisturbed: str
+) -> None:
+    """Whole as it is, and under the name of a unit that is not done."""
+    assert build(tmp_path, "--task", "1/3")[0] == 0
+    assert build(tmp_path, "--task", "2/3")[0] == 0
+    names = {path.name for path in tmp_path.rglob("*.shard")}
+    whole = sorted(tmp_path.rglob("*.shard"))[0].read_bytes()
+    assert build(tmp_path / "elsewhere", "--task", "3/3")[0] == 0
+    (missing,) = {path.name for path in (tmp_path / "elsewhere").rglob("*.shard")} - names
+    (tmp_path / "co.shards" / missing).write_bytes(whole)
+    code, _, err = build(tmp_path)
+    assert code == 0, err
+    assert table_hash(tmp_path) == undisturbed
+
+
+def test_the_last_of_two_tasks_leaves_the_table_to_the_first(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, recipe: Path, undisturbed: str
+) -> None:
+    """Both find all units done at the same moment: one puts the table together, the other has nothing left to do."""
+    loaded = load_recipe(recipe)
+    build_table(loaded, tmp_path, crew=Crew(1, task=(1, 2)), quiet=True)
+    second = []
+
+    real = build_module._assemble
+
+    def meanwhile(*given: object) -> object:
+        second.append(build_table(loaded, tmp_path, crew=Crew(1, task=(1, 2)), quiet=True))
+        return real(*given)
+
+    monkeypatch.setattr(build_module, "_assemble", meanwhile)
+    first = build_table(loaded, tmp_path, crew=Crew(1, task=(2, 2)), quiet=True)
+    assert first.figures
+    assert (second[0].figures, second[0].missing) == ({}, 0)
+    assert table_hash(tmp_path) == undisturbed
+
+
+def test_the_bits_do_not_depend_on_memory(tmp_path: Path, recipe: Path, undisturbed: str) -> None:
+    loaded, limited = load_recipe(recipe), []
+    crew = Crew(2)
+    build_table(
+        loaded, tmp_path, crew=crew, memory=580_000_000, quiet=True, announce=lambda p: limited.extend(p.limited)
+    )
+    assert limited == ["memory allows 1 of 2 workers"]
+    assert table_hash(tmp_path) == undisturbed
+
+
+def test_what_is_done_needs_no_room_twice(tmp_path: Path, recipe: Path, build: Callable[..., object]) -> None:
+    """With all shards there only the table is still to be written."""
+    loaded = load_recipe(recipe)
+    inputs = load_inputs(loaded)
+    whole = make_plan(loaded, inputs, tmp_path).disk
+    for k in (1, 2):
+        build_table(loaded, tmp_path, crew=Crew(1, task=(k, 3)), quiet=True)
+    rest = make_plan(loaded, inputs, tmp_path).disk
+    assert rest < 0.6 * whole

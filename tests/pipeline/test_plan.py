@@ -92,18 +92,20 @@ def test_memory_counts_workers_and_every_record_read(write_recipe, tmp_path):
     finer = planned(write_recipe(wavenumber="{ start = 2145.0, stop = 2149.0, step = 0.002 }"), tmp_path)
     assert finer.memory_per_worker - one.memory_per_worker == 3 * 8 * 4 * (2001 - 1001)
     assert finer.disk - one.disk == 2 * 8 * 4 * (2001 - 1001)
-    assert one.memory == needs_module.PROGRAM_BYTES + 600 * 202 + needs_module.ASSEMBLY_BYTES
+    axes = 8 * 1001 * (needs_module.COPIES_OF_AN_AXIS + needs_module.COPIES_OF_A_SPECTRUM)
+    assert one.memory == needs_module.PROGRAM_BYTES + 600 * 202 + needs_module.ASSEMBLY_BYTES + axes
     recipe = load_recipe(write_recipe(wavenumber="{ start = 2145.0, stop = 2149.0, step = 1e-6 }"))
     lines = load_inputs(recipe).lines
     units = parted(recipe, lines, "")
-    needs = [needs_of(recipe, lines, units, workers, False) for workers in (20, 21, 22)]
+    needs = [needs_of(recipe, lines, units, workers, False) for workers in (28, 29, 30)]
     assert needs[2].memory - needs[1].memory == needs[1].memory - needs[0].memory == needs[0].memory_per_worker
-    for workers, need in enumerate(needs, start=20):
+    for workers, need in enumerate(needs, start=28):
         assert workers_that_fit(recipe, lines, units, need.memory, False) == workers
         assert workers_that_fit(recipe, lines, units, need.memory - 1, False) == workers - 1
-    plan = make_plan(recipe, load_inputs(recipe), tmp_path, 22, needs[1].memory)
-    assert plan.workers == 21
-    assert "memory allows 21 of 22 workers" in plan.warnings
+    plan = make_plan(recipe, load_inputs(recipe), tmp_path, 30, needs[1].memory)
+    assert plan.workers == 29
+    assert plan.limited == ("memory allows 29 of 30 workers",)
+    assert not any("memory" in one for one in plan.warnings)
 
 
 def test_where_the_system_does_not_say_nothing_is_refused(write_recipe, tmp_path, monkeypatch):
