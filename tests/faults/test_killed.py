@@ -188,11 +188,9 @@ def test_the_last_of_two_tasks_leaves_the_table_to_the_first(
 
 def test_the_bits_do_not_depend_on_memory(tmp_path: Path, recipe: Path, undisturbed: str) -> None:
     loaded, limited = load_recipe(recipe), []
-    crew = Crew(2)
-    build_table(
-        loaded, tmp_path, crew=crew, memory=580_000_000, quiet=True, announce=lambda p: limited.extend(p.limited)
-    )
-    assert limited == ["memory allows 1 of 2 workers"]
+    choice = {"crew": Crew(5), "memory": 600_000_000, "quiet": True}
+    build_table(loaded, tmp_path, announce=lambda plan: limited.extend(plan.limited), **choice)
+    assert limited == ["memory allows 3 of 5 workers"]
     assert table_hash(tmp_path) == undisturbed
 
 
