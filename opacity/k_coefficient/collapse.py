@@ -1,7 +1,7 @@
 """Spectra to fine cells: 398 means a band and node, from which any number of g points can be made afterwards.
 
-A cell is the exact mean of the cross-section over a fixed interval of g.  The cells are narrow at both ends: at the top
-for the centres of lines, and at the bottom for the windows that large columns see through.
+A cell is the exact mean of the cross-section over a fixed interval of g.  The cells grow narrow towards the top, where
+the centres of lines lie: g_i = 1 - (1 - i/398)^2.
 
 A band wider than what is held at once is collapsed part by part and `merge_cells` puts the parts together.  It takes
 the cells of all parts for samples of their width, so that the mean stays exact, while what is lost within the cells
@@ -26,15 +26,7 @@ _POINTS_A_JOB = 1 << 16
 _INFINITY = np.float64(np.inf).view(np.uint64)
 
 
-def _cell_bounds() -> FloatArray:
-    """Borders of the fine cells in g, (N_CELLS + 1,): even in the angle of a cosine, so narrow as 1/N^2 at the ends."""
-    angle = np.linspace(0.0, np.pi, N_CELLS + 1)
-    bounds = 0.5 * (1.0 - np.cos(angle))
-    bounds[-1] = 1.0
-    return bounds
-
-
-CELL_BOUNDS = _cell_bounds()
+CELL_BOUNDS: FloatArray = 1.0 - (1.0 - np.arange(N_CELLS + 1) / N_CELLS) ** 2
 """Borders of the fine cells in g, (N_CELLS + 1,), from 0 to 1."""
 
 CELL_WIDTHS = np.diff(CELL_BOUNDS)
@@ -104,5 +96,6 @@ def merge_cells(parts: Sequence[FloatArray], widths: Sequence[float]) -> FloatAr
     rows = values.reshape(-1, values.shape[-1])
     weights = np.concatenate([width * CELL_WIDTHS for width in widths])
     cells = np.empty((len(rows), N_CELLS))
-    collapse_rows(rows, rows.view(np.uint64), np.ascontiguousarray(np.broadcast_to(weights, rows.shape)), CELL_WIDTHS, cells)
+    weights = np.ascontiguousarray(np.broadcast_to(weights, rows.shape))
+    collapse_rows(rows, rows.view(np.uint64), weights, CELL_WIDTHS, cells)
     return cells.reshape(*values.shape[:-1], N_CELLS)
