@@ -18,6 +18,7 @@ Array = NDArray[np.float64]
 
 _NOTHING = 1e-12
 """Share of a sample's width that is rounding: its value must not be what an interval is counted from."""
+_ALL = 1.0 - 1e-15
 
 
 @jit_exact
@@ -29,28 +30,44 @@ def _mean(values: Array, widths: Array) -> float:
 
 
 @jit_exact
+def _piece(
+    values: Array, widths: Array, sample: int, left: float, width: float, column: float
+) -> tuple[float, int, float]:
+    """The integral over the next `width` in g of k - lowest, or with a column of 1 - exp(-(k - lowest) column).
+
+    The interval starts in `sample`, of whose width there is `left`, and `lowest` is its value; where it ends is
+    returned as well.  Counted from the lowest value neither small nor large ones lose their digits.
+    """
+    integral, lowest, last = 0.0, values[sample], values.size - 1
+    need = width
+    while need > 0.0:
+        take = need if left > need or sample == last else left
+        above = values[sample] - lowest
+        integral += take * (above if column == 0.0 else -math.expm1(-above * column))
+        need -= take
+        left -= take
+        if left <= _NOTHING * widths[sample] and sample < last:
+            sample += 1
+            left = widths[sample]
+    return integral, sample, left
+
+
+@jit_exact
 def _match(values: Array, widths: Array, bounds: Array, x0: float, out: Array) -> None:
     """Fill `out` (n,) from rising samples (m,) of `widths` (sum 1), over intervals of g between `bounds` (n + 1,)."""
-    mean = _mean(values, widths)
-    if mean <= 0.0:
-        out[:] = 0.0
-        return
-    column = x0 / mean
-    sample, left, rest, last = 0, widths[0], mean, values.size - 1
+    rest = _mean(values, widths)
+    sample, left = 0, widths[0]
     n = out.size
     for i in range(n - 1):
-        width = bounds[i + 1] - bounds[i]
-        need, lost, lowest = width, 0.0, values[sample]
-        while need > 0.0:
-            take = need if left > need or sample == last else left
-            # Counted from the lowest value, so that neither small nor large values lose their digits.
-            lost += take * math.expm1(-(values[sample] - lowest) * column)
-            need -= take
-            left -= take
-            if left <= _NOTHING * widths[sample] and sample < last:
-                sample += 1
-                left = widths[sample]
-        k = lowest - math.log1p(lost / width) / column
+        width, lowest = bounds[i + 1] - bounds[i], values[sample]
+        above, next_sample, next_left = _piece(values, widths, sample, left, width, 0.0)
+        k = lowest
+        if above > 0.0:
+            column = x0 / (lowest + above / width)
+            lost, next_sample, next_left = _piece(values, widths, sample, left, width, column)
+            # Rounding must not make the k of a wide range of values infinite; it is never above the mean.
+            k = min(k - math.log1p(-min(lost / width, _ALL)) / column, lowest + above / width)
+        sample, left = next_sample, next_left
         out[i] = max(k, out[i - 1]) if i else k
         rest -= out[i] * width
     top = rest / (bounds[n] - bounds[n - 1])
