@@ -1,8 +1,9 @@
 """Weights of matched intervals made to fit: the fewest points, shared, that keep every transmission within a target.
 
 The largest error of transmission over all nodes, bands and columns is made small by a descent coordinate by
-coordinate on the logarithms of the weights.  What is descended is a q = 24 norm of the errors of a few rows, the worst
-ones; a row is a band at a node.  When it descends no further, the worst of all other rows are added and it goes on.
+coordinate on the logarithms of the weights.  What is descended is a norm of high power of the errors of a few rows,
+the worst ones; a row is a band at a node.  When it descends no further, the worst of all other rows are added and it
+goes on.
 This is the project's own way; no published one is followed.
 """
 
@@ -20,13 +21,18 @@ from opacity.k_coefficient.collapse import CELL_WIDTHS, N_CELLS
 from opacity.k_coefficient.quadrature import MOST_POINTS, GPoints, g_points, k_from_cells, points_of_bounds
 from opacity.k_coefficient.transmission import columns_of, transmission
 
-NORM = 24.0
+NORMS = (12.0, 48.0)
+"""The norms descended, one after the other: the flatter one first, which leads past small hollows."""
+TRIALS = 4
 ACCEPTED = 0.6
 """Share of the target that the rows trained on must keep: others were seen to have up to 1.7 times their error."""
 
-_ROUNDS = 12
+_ROUNDS = 8
 _SWEEPS = 40
-_FIRST_STEP, _LAST_STEP = 0.3, 0.01
+_FIRST_STEP, _LAST_STEP, _GROWTH = 0.3, 0.005, 1.3
+_THROW = 0.3
+_ADDED = 64
+_HOPELESS = 1.1
 _SMALLEST_WEIGHT = 1e-6
 
 
@@ -49,7 +55,7 @@ class Rows:
 
 
 def rows_of(cells: FloatArray, pressure: FloatArray) -> Rows:
-    """Rows out of fine cells (n_node, n_band, N_CELLS), cm2, of nodes at `pressure` (n_node,), bar; empty ones left out.
+    """Rows out of fine cells (n_node, n_band, N_CELLS), cm2, of nodes at `pressure` (n_node,), bar, without empty ones.
 
     Raises InputError where the two do not fit.
     """
@@ -78,7 +84,7 @@ def rows_by_band(cells: FloatArray, pressure: FloatArray) -> list[Rows]:
 
 
 def training_nodes(temperature: FloatArray, pressure: FloatArray, count: int, seed: int) -> NDArray[np.int64]:
-    """Numbers of nodes to train on, rising: all extremes and others drawn by `seed`, up to `count` where there are more.
+    """Numbers of nodes to train on, rising: all extremes, then others drawn by `seed`, up to `count`.
 
     `temperature` and `pressure` (n_node,) of each node.  The extremes are the lowest and highest pressures of the
     lowest and highest temperatures, and the other way round.
@@ -102,40 +108,54 @@ class Optimised:
     worst: NDArray[np.int64]
 
 
-def optimise_weights(rows: Rows, count: int, seed: int = 0, start: GPoints | None = None) -> Optimised:
+def optimise_weights(
+    rows: Rows, count: int, seed: int = 0, start: GPoints | None = None, trials: int = TRIALS
+) -> Optimised:
     """Matched intervals, `count` of them, of the smallest largest error of transmission over all rows that is found.
 
-    Begins at `start`, or at the fixed bounds of `g_points`.  The same arguments give the same weights.
+    Begins at `start`, or at the fixed bounds of `g_points`; further `trials` begin at the best weights so far, thrown
+    off by random factors, since the descent may end where there is better beyond.  The same arguments give the same
+    weights.
     """
     points = g_points(count) if start is None else start
-    worst = np.max(np.abs(rows.errors(points)), axis=1, initial=0.0)
-    best = Optimised(points, float(np.max(worst, initial=0.0)), np.empty(0, dtype=np.int64))
-    active = np.empty(0, dtype=np.int64)
+    errors = np.max(np.abs(rows.errors(points)), axis=1, initial=0.0)
+    best = Optimised(points, float(np.max(errors, initial=0.0)), np.empty(0, dtype=np.int64))
+    if count == 1 or best.error == 0.0:
+        return best
     random = np.random.default_rng(seed)
-    for _ in range(_ROUNDS if count > 1 else 0):
-        new = _violators(worst, active, max(8, count))
-        if not new.size:
-            break
-        active = np.concatenate([active, new])
-        points = _descend(rows.part(active), points, random)
-        worst = np.max(np.abs(rows.errors(points)), axis=1)
-        if worst.max() < best.error:
-            best = Optimised(points, float(worst.max()), active)
+    active = _worst_others(errors, best.worst, max(8, count))
+    for trial in range(trials):
+        logs = np.log(best.points.weights)
+        if trial:
+            logs = logs + random.normal(0.0, _THROW, logs.size)
+        for _ in range(_ROUNDS):
+            for norm in NORMS:
+                logs = _descend(rows.part(active), logs, norm, random)
+            points = _points(logs)
+            errors = np.max(np.abs(rows.errors(points)), axis=1)
+            if errors.max() < best.error:
+                best = Optimised(points, float(errors.max()), active)
+            new = _worst_others(errors, active, max(8, count))
+            # Not worth going on where the active rows alone do no better than the best so far.
+            hopeless = errors[active].max() > _HOPELESS * best.error
+            active = np.concatenate([active, new])
+            if not new.size or hopeless:
+                break
     return best
 
 
-def _violators(worst: FloatArray, active: NDArray[np.int64], most: int) -> NDArray[np.int64]:
-    """The worst rows that are not active yet, those whose error is near the largest of the active ones."""
-    others = np.setdiff1d(np.arange(worst.size), active)
-    level = 1.01 * worst[active].max() if active.size else 0.0
-    others = others[worst[others] > level]
-    return others[np.argsort(-worst[others], kind="stable")][:most]
+def _worst_others(errors: FloatArray, active: NDArray[np.int64], most: int) -> NDArray[np.int64]:
+    """The worst rows that are not active yet, of those whose error is above that of the active ones."""
+    others = np.setdiff1d(np.arange(errors.size), active)
+    level = 1.01 * errors[active].max() if active.size else 0.0
+    others = others[errors[others] > level]
+    return others[np.argsort(-errors[others], kind="stable")][:most]
 
 
-def _descend(rows: Rows, points: GPoints, random: np.random.Generator) -> GPoints:
-    logs = np.log(points.weights)
+def _descend(rows: Rows, logs: FloatArray, norm: float, random: np.random.Generator) -> FloatArray:
+    """Logarithms of weights from which no step of one of them alone makes the norm of the errors less."""
     steps = np.full(logs.size, _FIRST_STEP)
-    best = _norm(rows, logs)
+    best = _size(rows, logs, norm)
     for _ in range(_SWEEPS):
         before = best
         for i in random.permutation(logs.size):
@@ -143,15 +163,14 @@ def _descend(rows: Rows, points: GPoints, random: np.random.Generator) -> GPoint
             for sign in (1.0, -1.0):
                 trial = logs.copy()
                 trial[i] += sign * steps[i]
-                value = _norm(rows, trial)
+                value = _size(rows, trial, norm)
                 if value < best:
                     logs, best, moved = trial, value, True
                     break
-            if not moved:
-                steps[i] *= 0.5
+            steps[i] *= _GROWTH if moved else 0.5
         if np.all(steps < _LAST_STEP) or (best > 0.999 * before and np.all(steps < 4.0 * _LAST_STEP)):
             break
-    return _points(logs)
+    return logs
 
 
 def _points(logs: FloatArray) -> GPoints:
@@ -161,7 +180,68 @@ def _points(logs: FloatArray) -> GPoints:
     return points_of_bounds(bounds)
 
 
-def _norm(rows: Rows, logs: FloatArray) -> float:
+def _size(rows: Rows, logs: FloatArray, norm: float) -> float:
+    """The norm of the errors with weights of these logarithms."""
     errors = np.abs(rows.errors(_points(logs)))
     largest = float(errors.max())
-    return largest * float(np.sum((errors / largest) ** NORM) ** (1.0 / NORM)) if largest > 0.0 else 0.0
+    return largest * float(np.sum((errors / largest) ** norm) ** (1.0 / norm)) if largest > 0.0 else 0.0
+
+
+@dataclass(frozen=True)
+class Chosen:
+    """The points chosen for a target: largest errors of the rows trained on and of all, and how many there were."""
+
+    points: GPoints
+    target: float
+    trained_error: float
+    error: float
+    trained_rows: int
+    rows: int
+    seed: int
+
+
+def choose_g_points(
+    transmission_error: float, training: Rows, everything: Rows, seed: int = 0, accepted: float = ACCEPTED
+) -> Chosen:
+    """The fewest matched intervals found that keep every transmission within `transmission_error`.
+
+    The weights are fitted to the rows `training` until their largest error is within the share `accepted` of the
+    target, and certified at the rows `everything`; where that fails its violators are trained on as well.
+    Raises InputError for a target that 200 points do not meet.
+    """
+    if not 0.0 < transmission_error < 1.0:
+        expected = "a number between 0 and 1"
+        raise InputError(problem("transmission_error", "impossible", expected=expected, found=transmission_error))
+    goal = accepted * transmission_error
+    count = _fewest(goal, training, seed)
+    while count <= MOST_POINTS:
+        found = optimise_weights(training, count, seed)
+        if found.error <= goal:
+            errors = np.max(np.abs(everything.errors(found.points)), axis=1, initial=0.0)
+            error = float(np.max(errors, initial=0.0))
+            if error <= transmission_error:
+                sizes = (len(training.cells), len(everything.cells))
+                return Chosen(found.points, transmission_error, found.error, error, *sizes, seed)
+            violators = np.flatnonzero(errors > goal)
+            violators = violators[np.argsort(-errors[violators], kind="stable")][:_ADDED]
+            training = joined([training, everything.part(violators)])
+        else:
+            count += 1
+    expected = f"an error that {MOST_POINTS} points can meet"
+    raise InputError(problem("transmission_error", "too small", expected=expected, found=transmission_error))
+
+
+def _fewest(goal: float, rows: Rows, seed: int) -> int:
+    """The number of points from which on the goal is met, by doubling and halving, with one trial each."""
+
+    def met(count: int) -> bool:
+        return optimise_weights(rows, count, seed, trials=1).error <= goal
+
+    low, high = 0, 1
+    while high < MOST_POINTS and not met(high):
+        low, high = high, min(2 * high, MOST_POINTS)
+    while high - low > 1:
+        middle = (low + high) // 2
+        low, high = (low, middle) if met(middle) else (middle, high)
+    # Further trials may do with one less.
+    return max(1, high - 1)

@@ -3,7 +3,7 @@
 matched           matched intervals with mean closure (`kernels.matched`), this project's own: fewest points for an
                   error of transmission, and the mean of the band exact
 interval-mean     the mean of k over each interval; as intervals those of Gauss and Legendre's weights, or given bounds
-gauss-legendre    k at the points of Gauss and Legendre's quadrature in g (Lacis & Oinas 1991, J. Geophys. Res. 96, 9027)
+gauss-legendre    k at the points of Gauss and Legendre's quadrature in g (Lacis & Oinas 1991, JGR 96, 9027)
 split             the same in two pieces, g below and above 0.95, half of the points in each
 """
 
@@ -17,12 +17,15 @@ import numpy as np
 from opacity.arguments import as_numbers, shown
 from opacity.errors import InputError, problem
 from opacity.grids import FloatArray
-from opacity.k_coefficient.collapse import CELL_BOUNDS, CELL_WIDTHS, N_CELLS
+from opacity.k_coefficient.collapse import CELL_WIDTHS, N_CELLS
 from opacity.kernels.matched import at_points, match_rows
 
 QUADRATURES = ("matched", "gauss-legendre", "split", "interval-mean")
+INTERVALS = ("matched", "interval-mean")
+"""Those whose k stand for intervals and keep the band's mean."""
 MOST_POINTS = 200
 SPLIT = 0.95
+_ROUNDING = 1e-6
 
 
 @dataclass(frozen=True)
@@ -42,13 +45,15 @@ class GPoints:
         """How many points a band has."""
         return int(self.weights.shape[-1])
 
+    @property
+    def depth(self) -> float:
+        """x0, the optical depth of an interval's mean at which its k is matched; 0 for plain means.
 
-def matching_depth(count: int) -> float:
-    """x0, the optical depth of the band's mean at which matched intervals are made to agree.
-
-    The leading error of narrow intervals goes as 1 - x0; with few points a larger value was measured to be better.
-    """
-    return 1.5 if count <= 8 else 1.25 if count <= 16 else 1.0
+        The leading error of narrow intervals goes as 1 - x0; with few points a larger value was measured to be better.
+        """
+        if self.quadrature != "matched":
+            return 0.0
+        return 1.5 if self.count <= 8 else 1.25 if self.count <= 16 else 1.0
 
 
 def g_points(count: int, quadrature: str = "matched") -> GPoints:
@@ -79,7 +84,7 @@ def points_of_bounds(bounds: object, quadrature: str = "matched") -> GPoints:
     Raises InputError for anything else.
     """
     check_quadrature(quadrature)
-    if quadrature not in ("matched", "interval-mean"):
+    if quadrature not in INTERVALS:
         expected = 'a number of points, or quadrature "matched" or "interval-mean"'
         raise InputError(problem("g_points", "bounds do not fit the quadrature", expected=expected, found=quadrature))
     array = as_numbers("g_points", bounds, "bounds from 0 to 1")
@@ -88,6 +93,26 @@ def points_of_bounds(bounds: object, quadrature: str = "matched") -> GPoints:
         expected = f"bounds of 1 to {MOST_POINTS} intervals, rising from 0 to 1"
         raise InputError(problem("g_points", "impossible", expected=expected, found=shown(bounds)))
     return _intervals(quadrature, np.ascontiguousarray(array))
+
+
+def points_of_weights(weights: object, quadrature: str = "matched") -> GPoints:
+    """The quadrature of known weights (n,), sum 1.
+
+    Raises InputError where they are impossible, or not those of the quadrature with so many points.
+    """
+    check_quadrature(quadrature)
+    array = as_numbers("weights", weights, "weights in g")
+    fits = array.ndim == 1 and 1 <= array.size <= MOST_POINTS
+    if not fits or not np.all(array > 0.0) or not abs(float(array.sum()) - 1.0) <= _ROUNDING:
+        expected = f"1 to {MOST_POINTS} weights above 0, sum 1"
+        raise InputError(problem("weights", "impossible", expected=expected, found=shown(weights)))
+    if quadrature in INTERVALS:
+        return _intervals(quadrature, _bounds_of(array))
+    made = g_points(array.size, quadrature)
+    if not np.allclose(made.weights, array, rtol=0.0, atol=_ROUNDING):
+        expected = f'those of "{quadrature}" with {array.size} points'
+        raise InputError(problem("weights", "of another quadrature", expected=expected, found=shown(weights)))
+    return made
 
 
 def k_from_cells(cells: FloatArray, points: GPoints) -> FloatArray:
@@ -100,23 +125,11 @@ def k_from_cells(cells: FloatArray, points: GPoints) -> FloatArray:
         raise InputError(problem("cells", "of another shape", expected=expected, found=f"shape {cells.shape}"))
     rows = np.ascontiguousarray(cells, dtype=np.float64).reshape(-1, N_CELLS)
     k = np.empty((len(rows), points.count))
-    if points.quadrature == "matched":
-        match_rows(rows, CELL_WIDTHS, np.atleast_2d(points.bounds), matching_depth(points.count), k)
-    elif points.quadrature == "interval-mean":
-        bounds = np.atleast_2d(points.bounds)
-        for band, of_band in enumerate(bounds):
-            k[band :: len(bounds)] = _means(rows[band :: len(bounds)], of_band)
+    if points.quadrature in INTERVALS:
+        match_rows(rows, CELL_WIDTHS, np.atleast_2d(points.bounds), points.depth, k)
     else:
         at_points(rows, CELL_WIDTHS, np.atleast_2d(points.g), k)
     return k.reshape(*cells.shape[:-1], points.count)
-
-
-def _means(rows: FloatArray, bounds: FloatArray) -> FloatArray:
-    """Means over intervals between bounds (n + 1,), (n_row, n)."""
-    low, high = np.maximum(CELL_BOUNDS[:-1], bounds[:-1, None]), np.minimum(CELL_BOUNDS[1:], bounds[1:, None])
-    shares = np.maximum(high - low, 0.0)
-    k = rows @ (shares / shares.sum(axis=1, keepdims=True)).T
-    return np.maximum.accumulate(k, axis=-1)
 
 
 def _intervals(quadrature: str, bounds: FloatArray) -> GPoints:
@@ -134,9 +147,13 @@ def _legendre(count: int) -> tuple[FloatArray, FloatArray]:
 
 
 def _with_weights(quadrature: str, g: FloatArray, weights: FloatArray) -> GPoints:
+    return GPoints(quadrature, g, _bounds_of(weights), weights)
+
+
+def _bounds_of(weights: FloatArray) -> FloatArray:
     bounds = np.concatenate([[0.0], np.cumsum(weights)])
     bounds[-1] = 1.0
-    return GPoints(quadrature, g, bounds, weights)
+    return bounds
 
 
 def _gauss_legendre(count: int) -> GPoints:

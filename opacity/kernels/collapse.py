@@ -116,9 +116,7 @@ def _pool(cells: Array, widths: Array) -> None:
 
 
 @jit_exact
-def _collapse(
-    values: Array, bits: Keys, weights: Array, widths: Array, cells: Array, keys: Keys, spare: Keys
-) -> None:
+def _collapse(values: Array, bits: Keys, weights: Array, widths: Array, cells: Array, keys: Keys, spare: Keys) -> None:
     """One band: `bits` are those of the samples, `keys` and `spare`, as long, are room to work in."""
     top = np.uint64(0)
     for i in range(bits.size):

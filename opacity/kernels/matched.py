@@ -62,7 +62,9 @@ def _match(values: Array, widths: Array, bounds: Array, x0: float, out: Array) -
         width, lowest = bounds[i + 1] - bounds[i], values[sample]
         above, next_sample, next_left = _piece(values, widths, sample, left, width, 0.0)
         k = lowest
-        if above > 0.0:
+        if above > 0.0 and x0 == 0.0:
+            k += above / width
+        elif above > 0.0:
             column = x0 / (lowest + above / width)
             lost, next_sample, next_left = _piece(values, widths, sample, left, width, column)
             # Rounding must not make the k of a wide range of values infinite; it is never above the mean.
