@@ -36,7 +36,6 @@ def k_coefficients(
     intervals with mean closure: the band's mean is exact), "gauss-legendre", "split" or "interval-mean".  k rises with
     g; weights sum to 1.  `workers` threads give the same bits as one.  Raises InputError for what cannot be right.
     """
-
     check_workers(workers)
     count = isinstance(g_points, (int, np.integer, float, str)) or g_points is None
     chosen = made_points if count else points_of_bounds
