@@ -3,8 +3,8 @@
     python tests/bench/k_coefficients.py FOLDER_OF_REAL_LINES
 
 H2O at 3400-4900 cm-1 and CO at 1950-2250 cm-1, 54 nodes (200-2500 K, 1e-6 to 100 bar), spectra resolved to the
-narrowest line, bands of R = 100.  An error is the largest absolute error of a band's transmission over 64 columns a node
-and band.
+narrowest line, bands of R = 100.  An error is the largest absolute error of a band's transmission over 64 columns a
+node and band.
 """
 
 from __future__ import annotations
