@@ -23,14 +23,14 @@ from opacity.k_coefficient.transmission import columns_of, transmission
 
 NORMS = (12.0, 48.0)
 """The norms descended, one after the other: the flatter one first, which leads past small hollows."""
-TRIALS = 4
+TRIALS = 5
 ACCEPTED = 0.6
 """Share of the target that the rows trained on must keep: others were seen to have up to 1.7 times their error."""
 
 _ROUNDS = 8
 _SWEEPS = 40
 _FIRST_STEP, _LAST_STEP, _GROWTH = 0.3, 0.005, 1.3
-_THROW = 0.3
+_THROWS = (1.0, 0.6, 0.3)
 _ADDED = 64
 _HOPELESS = 1.1
 _SMALLEST_WEIGHT = 1e-6
@@ -127,7 +127,7 @@ def optimise_weights(
     for trial in range(trials):
         logs = np.log(best.points.weights)
         if trial:
-            logs = logs + random.normal(0.0, _THROW, logs.size)
+            logs = logs + random.normal(0.0, _THROWS[trial % len(_THROWS)], logs.size)
         for _ in range(_ROUNDS):
             for norm in NORMS:
                 logs = _descend(rows.part(active), logs, norm, random)
@@ -213,35 +213,64 @@ def choose_g_points(
         expected = "a number between 0 and 1"
         raise InputError(problem("transmission_error", "impossible", expected=expected, found=transmission_error))
     goal = accepted * transmission_error
-    count = _fewest(goal, training, seed)
-    while count <= MOST_POINTS:
-        found = optimise_weights(training, count, seed)
-        if found.error <= goal:
-            errors = np.max(np.abs(everything.errors(found.points)), axis=1, initial=0.0)
-            error = float(np.max(errors, initial=0.0))
-            if error <= transmission_error:
-                sizes = (len(training.cells), len(everything.cells))
-                return Chosen(found.points, transmission_error, found.error, error, *sizes, seed)
-            violators = np.flatnonzero(errors > goal)
-            violators = violators[np.argsort(-errors[violators], kind="stable")][:_ADDED]
-            training = joined([training, everything.part(violators)])
-        else:
-            count += 1
+    found = _fewest(goal, training, seed)
+    while found is not None:
+        errors = np.max(np.abs(everything.errors(found.points)), axis=1, initial=0.0)
+        error = float(np.max(errors, initial=0.0))
+        if error <= transmission_error:
+            sizes = (len(training.cells), len(everything.cells))
+            return Chosen(found.points, transmission_error, found.error, error, *sizes, seed)
+        violators = np.flatnonzero(errors > goal)
+        violators = violators[np.argsort(-errors[violators], kind="stable")][:_ADDED]
+        training = joined([training, everything.part(violators)])
+        found = _upwards(goal, training, seed, found.points)
     expected = f"an error that {MOST_POINTS} points can meet"
     raise InputError(problem("transmission_error", "too small", expected=expected, found=transmission_error))
 
 
-def _fewest(goal: float, rows: Rows, seed: int) -> int:
-    """The number of points from which on the goal is met, by doubling and halving, with one trial each."""
+def _fewest(goal: float, rows: Rows, seed: int) -> Optimised | None:
+    """The fewest points found that meet the goal, by doubling and halving and then downwards; None where none do.
 
-    def met(count: int) -> bool:
-        return optimise_weights(rows, count, seed, trials=1).error <= goal
-
-    low, high = 0, 1
-    while high < MOST_POINTS and not met(high):
+    Each number of points begins at the weights of the one before.
+    """
+    low, high, best = 0, 1, optimise_weights(rows, 1, seed)
+    while best.error > goal and high < MOST_POINTS:
         low, high = high, min(2 * high, MOST_POINTS)
+        best = optimise_weights(rows, high, seed, _resampled(best.points, high), trials=2)
+    if best.error > goal:
+        return None
     while high - low > 1:
         middle = (low + high) // 2
-        low, high = (low, middle) if met(middle) else (middle, high)
-    # Further trials may do with one less.
-    return max(1, high - 1)
+        found = optimise_weights(rows, middle, seed, _resampled(best.points, middle), trials=2)
+        if found.error <= goal:
+            high, best = middle, found
+        else:
+            low = middle
+    # More trials may do with less.
+    while high > 1:
+        found = optimise_weights(rows, high - 1, seed, _resampled(best.points, high - 1))
+        if found.error > goal:
+            break
+        high, best = high - 1, found
+    return best
+
+
+def _upwards(goal: float, rows: Rows, seed: int, points: GPoints) -> Optimised | None:
+    """Points that meet the goal, as few more than those given as do."""
+    for count in range(points.count, MOST_POINTS + 1):
+        found = optimise_weights(rows, count, seed, _resampled(points, count))
+        if found.error <= goal:
+            return found
+    return None
+
+
+def _resampled(points: GPoints, count: int) -> GPoints:
+    """As many intervals, as dense in g as some others; the fixed ones for want of any shape."""
+    if points.count < 4:
+        return g_points(count)
+    places = np.linspace(0.0, 1.0, points.count + 1)
+    # The distance from the top in logarithms, since the last intervals are small.
+    room = np.interp(np.linspace(0.0, 1.0, count + 1)[:-1], places[:-1], np.log(1.0 - points.bounds[:-1]))
+    bounds = np.concatenate([1.0 - np.exp(room), [1.0]])
+    bounds[0] = 0.0
+    return points_of_bounds(bounds) if np.all(np.diff(bounds) > 0.0) else g_points(count)

@@ -95,7 +95,8 @@ def points_needed(name: str, rows: Rows) -> None:
         print(
             f"{name} {quadrature:16} {' / '.join(needed):16} at 16: {largest(rows, points):.1e}, mean off by {off:.0e}"
         )
-    starts = {"H2O": (9, 14, 22), "CO": (7, 16, 30)}[name]
+    # Looked for upwards from where there are surely too few.
+    starts = {"H2O": (9, 13, 22), "CO": (5, 12, 22)}[name]
     needed = [
         fewest(lambda n: optimise_weights(rows, n).error, target, start)
         for target, start in zip(TARGETS, starts, strict=True)
@@ -109,10 +110,8 @@ def points_needed(name: str, rows: Rows) -> None:
 def per_band(name: str, cells: np.ndarray) -> None:
     """The same with weights of each band's own: the largest of all bands."""
     rows = rows_by_band(cells, PRESSURE)
-    for count in (8, 12, 16):
-        print(
-            f"{name} weights per band, {count}: {max(optimise_weights(one, count, trials=2).error for one in rows):.1e}"
-        )
+    for count in (9, 13):
+        print(f"{name} weights per band, {count}: {max(optimise_weights(one, count).error for one in rows):.1e}")
 
 
 def chosen(name: str, cells: np.ndarray, everything: Rows) -> None:
