@@ -29,16 +29,24 @@ def mix(k: Sequence[FloatArray], fractions: Sequence[FloatArray | float], points
         found = f"{len(k)} of k, {len(fractions)} fractions"
         raise InputError(problem("fractions", "do not fit k", expected="one for each species", found=found))
     _check_shapes(k, points)
-    parts = [
-        np.asarray(one) * np.asarray(x, dtype=np.float64)[..., None, None] for one, x in zip(k, fractions, strict=True)
-    ]
-    shape = np.broadcast_shapes(*(part.shape for part in parts))
+    shares = [np.asarray(x, dtype=np.float64)[..., None, None] for x in fractions]
+    shape = _common_shape([*(np.shape(one) for one in k), *(share.shape for share in shares)])
+    parts = [np.asarray(one) * share for one, share in zip(k, shares, strict=True)]
     # Rows in the order of bands, so that each finds the bounds of its band.
     rows = [np.ascontiguousarray(np.broadcast_to(part, shape)).reshape(-1, shape[-1]) for part in parts]
     mixture = rows[0]
     for one in rows[1:]:
         mixture = _overlap(mixture, one, points)
     return mixture.reshape(shape)
+
+
+def _common_shape(shapes: Sequence[tuple[int, ...]]) -> tuple[int, ...]:
+    try:
+        return np.broadcast_shapes(*shapes)
+    except ValueError:
+        found = ", ".join(str(shape) for shape in shapes)
+        expected = "axes before n_band that fit each other"
+        raise InputError(problem("k and fractions", "do not fit", expected=expected, found=found)) from None
 
 
 def _check_shapes(k: Sequence[FloatArray], points: GPoints) -> None:

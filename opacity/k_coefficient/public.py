@@ -18,6 +18,8 @@ from opacity.k_coefficient.mix import mix
 from opacity.k_coefficient.quadrature import g_points as made_points
 from opacity.k_coefficient.quadrature import k_from_cells, points_of_bounds, points_of_weights
 
+_ROUNDING = 1e-6
+
 
 def k_coefficients(
     sigma: NDArray[Any],
@@ -75,11 +77,12 @@ def mix_k(
         expected = f"those of k: {', '.join(sorted(species)) or 'one or more'}"
         raise InputError(problem("fractions", "of other species", expected=expected, found=found))
     shares = [_fraction(name, parts[name]) for name in species]
-    if np.any(sum(shares) > 1.0 + 1e-6):
-        found = f"{float(np.max(sum(shares))):g}"
-        raise InputError(problem("fractions", "too large", expected="a sum of at most 1", found=found))
     points = points_of_weights(weights, quadrature)
-    return mix([_rising_k(name, one) for name, one in species.items()], shares, points)
+    mixture = mix([_rising_k(name, one) for name, one in species.items()], shares, points)
+    total = np.max(sum(shares))
+    if total > 1.0 + _ROUNDING:
+        raise InputError(problem("fractions", "too large", expected="a sum of at most 1", found=f"{total:g}"))
+    return mixture
 
 
 def _fraction(name: str, value: object) -> FloatArray:

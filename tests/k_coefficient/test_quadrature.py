@@ -2,7 +2,7 @@ import numpy as np
 import pytest
 
 from opacity.errors import InputError
-from opacity.k_coefficient.collapse import CELL_WIDTHS, N_CELLS
+from opacity.k_coefficient.collapse import CELL_BOUNDS, CELL_WIDTHS, N_CELLS
 from opacity.k_coefficient.quadrature import (
     QUADRATURES,
     g_points,
@@ -38,6 +38,17 @@ def test_matched_intervals_are_those_of_the_slow_twin(count: int):
     k = k_from_cells(rows(), points)
     for row, found in zip(rows(), k, strict=True):
         expected = slow.matched(row, CELL_WIDTHS, points.bounds, points.depth)
+        np.testing.assert_allclose(found, expected, rtol=1e-9, atol=1e-13 * row.max())
+
+
+@pytest.mark.nojit
+@pytest.mark.parametrize("part", [5e-4, 1e-9, 1e-14, 0.0])
+def test_bounds_that_leave_a_trace_of_a_cell(part: float):
+    # What is left of cell 99 counts; unless it is rounding the interval above must not be counted from its value.
+    bounds = np.array([0.0, CELL_BOUNDS[100] - part * CELL_WIDTHS[99], CELL_BOUNDS[300], 1.0])
+    k = k_from_cells(rows(), points_of_bounds(bounds))
+    for row, found in zip(rows(), k, strict=True):
+        expected = slow.matched(row, CELL_WIDTHS, bounds, 1.5)
         np.testing.assert_allclose(found, expected, rtol=1e-9, atol=1e-13 * row.max())
 
 
