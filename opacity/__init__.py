@@ -26,6 +26,7 @@ if TYPE_CHECKING:
     from opacity.api import build, cross_section, exact_cross_section, plan
     from opacity.arguments import DefaultWidth
     from opacity.chi_factors import CHI_FACTORS
+    from opacity.k_coefficient.public import k_coefficients, mix_k
     from opacity.line_list.model import LineList
     from opacity.line_list.read import read_lines
     from opacity.recipe.load import load_recipe
@@ -36,6 +37,8 @@ _HOMES = {
     "build": "opacity.api",
     "cross_section": "opacity.api",
     "exact_cross_section": "opacity.api",
+    "k_coefficients": "opacity.k_coefficient.public",
+    "mix_k": "opacity.k_coefficient.public",
     "plan": "opacity.api",
     "read_lines": "opacity.line_list.read",
     "LineList": "opacity.line_list.model",
@@ -67,7 +70,9 @@ __all__ = [
     "build",
     "cross_section",
     "exact_cross_section",
+    "k_coefficients",
     "load_recipe",
+    "mix_k",
     "open_table",
     "plan",
     "read_lines",

@@ -12,7 +12,14 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.arguments import DefaultWidth, as_default_widths, as_fractions, as_number, shown
+from opacity.arguments import (
+    DefaultWidth,
+    as_default_widths,
+    as_fractions,
+    as_number,
+    check_workers,
+    shown,
+)
 from opacity.chi_factors import CHI_FACTORS, chi_table
 from opacity.cross_sections.exact import exact_spectrum
 from opacity.cross_sections.prepare import PreparedLines, prepare
@@ -63,7 +70,7 @@ def cross_section(
     # Late, so that importing the package does not load numba.
     from opacity.cross_sections.compute import NodeSum, add_spectra
 
-    _check_workers(workers)
+    check_workers(workers)
     _check_flag("plinth", plinth)
     limits = regions(as_number("tolerance", tolerance), plinth)
     nodes = _nodes(wavenumber, temperature, pressure, cutoff)
@@ -146,12 +153,6 @@ def _nodes(
         expected, found = f"{LOWEST_PRESSURE:g} to {HIGHEST_PRESSURE:g} bar", shown(nodes.pressure.tolist())
         raise InputError(problem("pressure", "out of range", expected=expected, found=found))
     return nodes
-
-
-def _check_workers(workers: object) -> None:
-    if not isinstance(workers, (int, np.integer)) or isinstance(workers, bool) or workers < 1:
-        expected = "a whole number of threads, 1 or more"
-        raise InputError(problem("workers", "impossible", expected=expected, found=shown(workers)))
 
 
 def _check_flag(name: str, value: object) -> None:
@@ -273,7 +274,7 @@ def build(
     from opacity.pipeline.build import Crew, build_table
 
     if workers is not None:
-        _check_workers(workers)
+        check_workers(workers)
     _check_flag("processes", processes)
     crew = Crew(workers, "processes" if processes else "threads")
     return (build_table(recipe, Path(folder), crew=crew, memory=memory, quiet=True).table,)

@@ -85,3 +85,10 @@ def as_default_widths(name: str, value: object) -> dict[str, DefaultWidth]:
             raise InputError(problem(place, "impossible", expected="a width above 0 cm-1/bar", found=shown(one.gamma)))
         as_number(f"{name}[{key!r}].exponent", one.exponent)
     return widths
+
+
+def check_workers(workers: object) -> None:
+    """Raise InputError for a number of threads or processes that is not whole and 1 or more."""
+    if not isinstance(workers, (int, np.integer)) or isinstance(workers, bool) or workers < 1:
+        expected = "a whole number of threads, 1 or more"
+        raise InputError(problem("workers", "impossible", expected=expected, found=shown(workers)))
