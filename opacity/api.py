@@ -267,7 +267,8 @@ def build(
     """Build the tables that a recipe asks for into a folder and return their paths.
 
     `workers` threads, or processes, by default as many as the CPUs and `memory` (bytes) allow; the tables have the
-    same bits for any number.  What a build that was stopped has finished is kept, and not computed again.
+    same bits for any number.  What a build that was stopped has finished is kept, and not computed again.  A script
+    that asks for processes must itself do nothing when it is imported (`if __name__ == "__main__":`).
     A table that is there already and was made from the same inputs is kept.  What was assumed and what there is to be
     warned of stands in the table's `checks`.  Raises OpacityError of the kind that fits.
     """

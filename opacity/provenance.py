@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import zlib
 from importlib import metadata
 from pathlib import Path
 
@@ -11,12 +12,12 @@ from opacity.errors import OpacityError, problem
 VERSION = "0.1.0"
 """The version of this program; the only place where it is written."""
 
-_PACKAGES = ("numpy", "numba", "scipy", "h5py", "hitran-api")
+_PACKAGES = ("numpy", "numba", "llvmlite", "scipy", "h5py", "hitran-api")
 
 
 def package_versions() -> dict[str, str]:
     """Installed versions of the packages that results depend on."""
-    return {name: metadata.version(name) for name in _PACKAGES}
+    return {**{name: metadata.version(name) for name in _PACKAGES}, "zlib": zlib.ZLIB_RUNTIME_VERSION}
 
 
 def file_sha256(path: Path) -> str:

@@ -47,6 +47,11 @@ class Crew:
     task: tuple[int, int] | None = None
     scheduler: str | None = None
 
+    @property
+    def processes(self) -> bool:
+        """Whether each worker of this machine holds recipe and lines of its own."""
+        return self.kind == "processes" or self.scheduler == "local"
+
 
 @dataclass(frozen=True)
 class BuildResult:
@@ -98,7 +103,7 @@ def build_table(
                 _write_log(log, recipe, time.monotonic() - started, 0)
         return BuildResult(path, log, None, kept, time.monotonic() - started)
     inputs = load_inputs(recipe, folder, origin, memory, quiet)
-    plan = make_plan(recipe, inputs, folder, crew.workers, memory, crew.kind == "processes")
+    plan = make_plan(recipe, inputs, folder, crew.workers, memory, crew.processes)
     announce(plan)
     refuse_what_cannot_fit(plan)
     job = _Job(recipe, inputs, plan, folder, path, memory, quiet)
@@ -113,8 +118,9 @@ def build_table(
         stop.args = (f"{done} of {len(units)} units are done and kept; the same command goes on",)
         raise
     finally:
-        with contextlib.suppress(OSError):
-            job.shards.rmdir()  # unless shards are kept in it
+        if crew.task is None:  # other tasks may be about to write into it
+            with contextlib.suppress(OSError):
+                job.shards.rmdir()  # unless shards are kept in it
     seconds = time.monotonic() - started
     if figures:
         _write_log(log, recipe, seconds, plan.workers)
@@ -148,6 +154,9 @@ class _Job:
 
 def _build_alone(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[str, Any], int]:
     with locked(job.shards, "table") as lock:
+        made = _still_good(job.path, job.inputs.fingerprint)
+        if made is not None:  # by a task that was quicker
+            return made, 0
         _compute(job, units, crew)
         figures = _assemble(job, units, lock.check)
     _remove_shards(job.shards)

@@ -5,6 +5,7 @@ Workers compute and write the shards themselves; what travels is a unit's number
 
 from __future__ import annotations
 
+import hashlib
 import logging
 import sys
 from collections.abc import Iterator, Sequence
@@ -29,23 +30,27 @@ def on_cluster(scheduler: str, origin: Origin, units: Sequence[Unit], workers: i
     Raises ResourceError where the cluster is not to be had or loses a unit too often.
     """
     try:
-        from distributed import KilledWorker, as_completed
+        from distributed import CancelledError, KilledWorker, as_completed
+        from distributed.comm import CommClosedError
     except ImportError as error:
         what, remedy = "dask.distributed is not installed", "pip install 'opacity[cluster]'"
         raise ResourceError(problem("--scheduler", what, remedy=remedy)) from error
     with _client(scheduler, workers) as client:
         if not client.scheduler_info()["workers"]:
             print("the scheduler has no workers yet: waiting for them", file=sys.stderr, flush=True)
+        folder = hashlib.sha256(str(origin.shards).encode("utf-8", "surrogateescape")).hexdigest()[:16]
         waiting = {
-            client.submit(_do, origin, unit.number, key=f"opacity-{unit.name}", retries=RETRIES, pure=False): unit
+            client.submit(
+                _do, origin, unit.number, key=f"opacity-{folder}-{unit.name}", retries=RETRIES, pure=False
+            ): unit
             for unit in units
         }
         try:
             for future in as_completed(list(waiting)):
                 future.result()
                 done(waiting[future])
-        except KilledWorker as error:
-            what = "a unit was lost with its workers too often"
+        except (KilledWorker, CancelledError, CommClosedError) as error:
+            what = "the cluster lost a unit, with its workers or altogether"
             raise ResourceError(problem("--scheduler", what, found=one_line(error))) from error
         finally:
             client.cancel(list(waiting))

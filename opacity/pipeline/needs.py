@@ -88,7 +88,7 @@ def _disk(units: tuple[Unit, ...], shards: Path | None) -> int:
         try:
             there += unit.path(shards).stat().st_size if shards is not None else 0
             missing += 0 if shards is not None else len(unit.rows) * (unit.stop - unit.start)
-        except OSError:
+        except (OSError, ValueError):
             missing += len(unit.rows) * (unit.stop - unit.start)
     # What is there goes into the table as it is, or as f8.
     return 2 * missing * DISK_BYTES_A_VALUE + 2 * there + 1_000_000

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import contextlib
 import multiprocessing
+import os
 import signal
 import threading
 from collections.abc import Callable, Iterator, Sequence
@@ -36,7 +37,10 @@ class Work:
 
     def do(self, unit: Unit, executor: Executor | None = None) -> None:
         """Compute a unit and write its shard."""
-        write_shard(unit.path(self.shards), compute(self.recipe, self.source, unit, executor))
+        shard = compute(self.recipe, self.source, unit, executor)
+        # A task that ended may have taken the empty folder with it.
+        self.shards.mkdir(parents=True, exist_ok=True)
+        write_shard(unit.path(self.shards), shard)
 
 
 @dataclass(frozen=True)
@@ -80,7 +84,7 @@ def in_processes(origin: Origin, units: Sequence[Unit], workers: int, done: Done
     for _ in range(MOST_RESTARTS + 1):
         context = multiprocessing.get_context("spawn")
         count = max(min(workers, len(left)), 1)
-        pool = ProcessPoolExecutor(count, mp_context=context, initializer=prepare_process, initargs=(origin,))
+        pool = ProcessPoolExecutor(count, mp_context=context, initializer=start_process, initargs=(origin,))
         try:
             with _ended(pool) as executor:
                 with _interrupts_ignored():  # by the processes that are started here
@@ -131,6 +135,22 @@ def _interrupts_ignored() -> Iterator[None]:
 _process: dict[str, object] = {}
 
 
+def start_process(origin: Origin) -> None:
+    """What a worker process does first; a failure is told by its first unit, since here it would break the pool."""
+    try:
+        prepare_process(origin)
+    except Exception as error:
+        _process["failure"] = error
+
+
+def _end_with_parent() -> None:
+    """End this process when the one that started it is gone, however that ended."""
+    parent = multiprocessing.parent_process()
+    if parent is not None:
+        parent.join()
+        os._exit(1)
+
+
 def prepare_process(origin: Origin, signals: bool = True) -> None:
     """Load a recipe and its lines once in a worker process, which leaves Ctrl-C (`signals`) to its parent."""
     from opacity.pipeline.inputs import load_inputs
@@ -138,6 +158,7 @@ def prepare_process(origin: Origin, signals: bool = True) -> None:
 
     if signals:
         signal.signal(signal.SIGINT, signal.SIG_IGN)
+        threading.Thread(target=_end_with_parent, daemon=True).start()
     recipe = load_recipe(origin.recipe)
     inputs = load_inputs(recipe, origin.tables, memory=origin.memory, quiet=True)
     if inputs.sha256 != origin.inputs_sha256:
@@ -149,6 +170,9 @@ def prepare_process(origin: Origin, signals: bool = True) -> None:
 
 def do_in_process(number: int) -> None:
     """Do a unit in a worker process."""
+    failure = _process.get("failure")
+    if isinstance(failure, Exception):
+        raise failure
     work, units = _process["work"], _process["units"]
     assert isinstance(work, Work)
     assert isinstance(units, tuple)

@@ -28,7 +28,11 @@ class Assembly:
     def __init__(self, path: Path, file: CarefulFile, frame: TableFrame, dtype: np.dtype[Any]) -> None:
         self._path, self._file, self._frame, self._dtype = path, file, frame, dtype
         self._hdf5 = h5py.File(file, "w", driver="fileobj", libver=layout.LIBVER, track_order=True)
-        self._values = write_frame(self._hdf5, frame, dtype)
+        try:
+            self._values = write_frame(self._hdf5, frame, dtype)
+        except BaseException:
+            self.close()
+            raise
         self._chunk = int(self._values.chunks[-1])
         self._blocks = layout.block_slices(frame.wavenumber.size)
         self._hashes = np.zeros((*frame.shape[:-1], len(self._blocks), layout.HEX_DIGITS), dtype="S1")

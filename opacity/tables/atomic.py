@@ -82,7 +82,7 @@ class CarefulFile:
         flags = os.O_RDWR | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0)
         self._descriptor = os.open(path, flags, 0o666)
         self._position = 0
-        self.failure: OSError | None = None
+        self.failure: BaseException | None = None
 
     def write(self, data: Any) -> int:
         """Write at the position."""
@@ -92,7 +92,7 @@ class CarefulFile:
             try:
                 os.lseek(self._descriptor, self._position, os.SEEK_SET)
                 written = os.write(self._descriptor, rest[:_PIECE])
-            except OSError as error:
+            except BaseException as error:  # a signal too: raised through HDF5 it would be lost
                 self.failure = error
                 break
             self._position += written
@@ -121,8 +121,11 @@ class CarefulFile:
 
     def seek(self, offset: int, whence: int = os.SEEK_SET) -> int:
         """Set the position."""
-        start = {os.SEEK_SET: 0, os.SEEK_CUR: self._position, os.SEEK_END: os.fstat(self._descriptor).st_size}
-        self._position = start[whence] + offset
+        if whence == os.SEEK_CUR:
+            offset += self._position
+        elif whence == os.SEEK_END:
+            offset += os.fstat(self._descriptor).st_size
+        self._position = offset
         return self._position
 
     def tell(self) -> int:
@@ -135,7 +138,7 @@ class CarefulFile:
         if self.failure is None:
             try:
                 os.ftruncate(self._descriptor, length)
-            except OSError as error:
+            except BaseException as error:
                 self.failure = error
         return length
 

@@ -16,6 +16,7 @@ from opacity.pipeline import build as build_module
 from opacity.pipeline.build import Crew, build_table
 from opacity.pipeline.inputs import load_inputs
 from opacity.pipeline.plan import make_plan
+from opacity.pipeline.units import parted
 from opacity.recipe.load import load_recipe
 from opacity.tables.shard import is_whole
 
@@ -113,8 +114,8 @@ def test_a_damaged_shard_is_made_again(
 def test_a_disk_that_fails_at_every_point(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, recipe: Path, undisturbed: str, call: str
 ) -> None:
-    """The n-th call fails, as on a full disk, for n up to where none does: one line, nothing half-written, and the same
-    command goes on.
+    """After n calls all fail, as on a full disk, with n up to where it is enough: one line, nothing half-written, and
+    the same command goes on.
     """
     real, loaded, builds = getattr(os, call), load_recipe(recipe), 0
     state = {"left": 0}
@@ -203,3 +204,29 @@ def test_what_is_done_needs_no_room_twice(tmp_path: Path, recipe: Path, build: C
         build_table(loaded, tmp_path, crew=Crew(1, task=(k, 3)), quiet=True)
     rest = make_plan(loaded, inputs, tmp_path).disk
     assert rest < 0.6 * whole
+
+
+@pytest.mark.skipif(not os.path.exists("/proc/self/task"), reason="the system does not tell a process's children")
+def test_worker_processes_end_with_a_killed_parent(tmp_path: Path, start: Callable[..., object]) -> None:
+    with start(tmp_path, "--workers", "2", "--using", "processes") as process:
+        deadline = time.monotonic() + 60.0
+        while not list(tmp_path.rglob("*.shard")) and process.poll() is None and time.monotonic() < deadline:
+            time.sleep(0.005)
+        with open(f"/proc/{process.pid}/task/{process.pid}/children", encoding="ascii") as stream:
+            children = [int(one) for one in stream.read().split()]
+        process.kill()
+    deadline = time.monotonic() + 10.0
+    while any(os.path.exists(f"/proc/{one}") for one in children) and time.monotonic() < deadline:
+        time.sleep(0.05)
+    assert not any(os.path.exists(f"/proc/{one}") for one in children)
+
+
+def test_a_worker_that_cannot_start_says_why(tmp_path: Path, recipe: Path) -> None:
+    """In its one line, and not that it was killed."""
+    from opacity.pipeline.workers import Origin, in_processes
+
+    loaded = load_recipe(recipe)
+    units = parted(loaded, load_inputs(loaded).lines, "")
+    origin = Origin(recipe, tmp_path, tmp_path, "of other inputs", 2_000_000_000)
+    with pytest.raises(ResourceError, match=r"^[^\n]*co\.toml: the recipe or its files changed while the build ran; "):
+        in_processes(origin, units[:2], 1, lambda unit: None)
