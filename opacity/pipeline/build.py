@@ -154,11 +154,10 @@ class _Job:
 
 def _build_alone(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[str, Any], int]:
     with locked(job.shards, "table") as lock:
-        made = _still_good(job.path, job.inputs.fingerprint)
-        if made is not None:  # by a task that was quicker
-            return made, 0
-        _compute(job, units, crew)
-        figures = _assemble(job, units, lock.check)
+        figures = _still_good(job.path, job.inputs.fingerprint)
+        if figures is None:  # else a task was quicker
+            _compute(job, units, crew)
+            figures = _assemble(job, units, lock.check)
     _remove_shards(job.shards)
     return figures, 0
 
