@@ -13,7 +13,7 @@ from opacity.tables.k_model import KTable
 
 
 def k_table_image(table: KTable, types: dict[str, np.dtype[Any]]) -> bytes:
-    """The HDF5 file of `table`; `types` gives the type, f4 or f8, of k_coefficient, and of fine_cells if there are some."""
+    """The HDF5 file of `table`; `types` gives the type, f4 or f8, of k_coefficient, and of any fine_cells."""
 
     def fill(file: Any) -> None:
         _describe(file, table)
@@ -52,6 +52,8 @@ def _write_array(file: Any, table: KTable, name: str, dimensions: tuple[str, ...
         attributes["units"] = k_layout.UNITS[name]
     if name == "g" and table.g_weight.ndim == 1:  # bounds of each band's own are none of this axis
         attributes["bounds"] = "g_bounds"
+    if name == "g_bounds" and table.g_weight.ndim == 2:
+        attributes |= k_layout.BAND_G_BOUNDS
     if table.profile and k_layout.NODE in k_layout.DIMENSIONS.get(name, ()):
         attributes["coordinates"] = "temperature pressure"
     image.write_array(

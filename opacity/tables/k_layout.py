@@ -28,9 +28,9 @@ Where each band has a quadrature of its own g_bounds is (band, g, edge) and g_we
 stands in place of `temperature, pressure`, and temperature(node) and pressure(node) are auxiliary coordinates.
 
 The values of one node are one HDF5 chunk, and one sha256 is that of their little-endian values in C order.  All
-other arrays and the texts carry theirs as the attribute `sha256`, but band_bounds and g_bounds as `bounds_sha256`: by
-the CF conventions they share the attributes of their axes, whose units and names are theirs.  The attribute `quadrature` of the file names the
-way in which k stands for the intervals or points of g.
+other arrays and the texts carry theirs as the attribute `sha256`, but band_bounds and g_bounds as `bounds_sha256`:
+by the CF conventions bounds have no names and units of their own but share those of their axis.  The attribute
+`quadrature` of the file names the way in which k stands for the intervals or points of g.
 """
 
 from __future__ import annotations
@@ -96,6 +96,9 @@ ATTRIBUTES: dict[str, dict[str, str]] = {
         "comment": "over the wavenumbers of the spectra alone",
     },
 }
+
+BAND_G_BOUNDS = {"long_name": "bounds of the interval of g that a point of a band stands for", "units": "1"}
+"""Attributes of g_bounds where each band has its own; they are then no bounds of the axis g."""
 
 GLOBAL_ATTRIBUTES = {
     **layout.GLOBAL_ATTRIBUTES,
