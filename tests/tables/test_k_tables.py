@@ -85,9 +85,7 @@ def test_open_table_tells_the_kinds_apart(make_table, tmp_path):
     with pytest.raises(TableError, match='expected "opacity k-coefficient table", found "opacity cross-'):
         open_k_table(sigma)
     h5py.File(tmp_path / "c.h5", "w").close()
-    with pytest.raises(
-        TableError, match=r'not a table of this program; expected format .*section table" or "opacity k'
-    ):
+    with pytest.raises(TableError, match=r'not a table of this program; expected format .*section table" or'):
         opacity.open_table(tmp_path / "c.h5")
 
 
@@ -272,7 +270,9 @@ def test_every_kind_of_table_is_drawn_and_shown(table, tmp_path, checks, capsys)
         picture = draw_k_table(read, tmp_path / "a.png")
     image = matplotlib.image.imread(picture)
     wanted = np.array([0x00, 0x72, 0xB2]) / 255.0
-    assert (np.abs(image[..., :3] - wanted).max(axis=-1) < 0.02).sum() > 100
+    # A table of zeros has a legend only.
+    least = 100 if table.k_coefficient.any() else 0
+    assert (np.abs(image[..., :3] - wanted).max(axis=-1) < 0.02).sum() > least
     if checks in ({}, None):
         assert main(["show", str(path)]) == 0
         shown = capsys.readouterr().out
