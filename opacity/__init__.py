@@ -31,7 +31,9 @@ if TYPE_CHECKING:
     from opacity.line_list.read import read_lines
     from opacity.recipe.load import load_recipe
     from opacity.recipe.model import Cutoff, CutoffStep
-    from opacity.tables.read import Table, open_table
+    from opacity.tables.k_read import KCoefficientTable
+    from opacity.tables.open import open_table
+    from opacity.tables.read import Table
 
 _HOMES = {
     "build": "opacity.api",
@@ -47,8 +49,9 @@ _HOMES = {
     "load_recipe": "opacity.recipe.load",
     "Cutoff": "opacity.recipe.model",
     "CutoffStep": "opacity.recipe.model",
-    "open_table": "opacity.tables.read",
+    "open_table": "opacity.tables.open",
     "Table": "opacity.tables.read",
+    "KCoefficientTable": "opacity.tables.k_read",
 }
 
 __all__ = [
@@ -58,6 +61,7 @@ __all__ = [
     "CutoffStep",
     "DefaultWidth",
     "InputError",
+    "KCoefficientTable",
     "LineList",
     "LineListError",
     "MoleculeError",

@@ -196,11 +196,14 @@ def show(arguments: Namespace) -> int:
     """`opacity show TABLE`: a summary, and with --plot a picture."""
     from opacity.cli.summary import summary, summary_lines
     from opacity.errors import InputError, problem
-    from opacity.tables.read import open_table
+    from opacity.tables.k_read import KCoefficientTable
+    from opacity.tables.open import open_table
 
     if arguments.zoom and not arguments.plot:
         raise InputError(problem("--zoom", "enlarges a part of a picture", remedy="give --plot FILE.png too"))
     with open_table(arguments.table) as table:
+        if arguments.zoom and isinstance(table, KCoefficientTable):
+            raise InputError(problem("--zoom", "is for tables of cross-sections", remedy="leave it out"))
         if arguments.json:
             print(text.as_json(summary(table)))
         else:
@@ -208,7 +211,12 @@ def show(arguments: Namespace) -> int:
             print(f"table: {table.path}")
         if arguments.plot:
             from opacity.tables.draw import draw_table
+            from opacity.tables.k_draw import draw_k_table
 
-            picture = draw_table(table, Path(arguments.plot), zoom=arguments.zoom)
+            path = Path(arguments.plot)
+            if isinstance(table, KCoefficientTable):
+                picture = draw_k_table(table, path)
+            else:
+                picture = draw_table(table, path, zoom=arguments.zoom)
             print(f"picture: {picture}", file=sys.stderr if arguments.json else sys.stdout)
     return DONE

@@ -6,11 +6,12 @@ from typing import Any
 
 from opacity.cli.text import notes
 from opacity.errors import TableError, problem
+from opacity.tables.k_read import KCoefficientTable
 from opacity.tables.layout import F4_SMALLEST
 from opacity.tables.read import Table
 
 
-def summary(table: Table) -> dict[str, Any]:
+def summary(table: Table | KCoefficientTable) -> dict[str, Any]:
     """A table's axes, sources and checks as plain values for JSON."""
     return {
         "table": str(table.path),
@@ -20,29 +21,66 @@ def summary(table: Table) -> dict[str, Any]:
         "profile": table.profile,
         "temperature": table.temperature.tolist(),
         "pressure": table.pressure.tolist(),
-        "wavenumber": {
-            "first": float(table.wavenumber[0]),
-            "last": float(table.wavenumber[-1]),
-            "points": int(table.wavenumber.size),
-        },
+        **(_k_axes(table) if isinstance(table, KCoefficientTable) else _wavenumbers(table)),
         "stored_as": str(table.dtype),
         "provenance": table.provenance,
         "checks": {key: value for key, value in table.checks.items() if key != "closure"},
     }
 
 
-def summary_lines(table: Table) -> list[tuple[str, str]]:
+def _wavenumbers(table: Table) -> dict[str, Any]:
+    nu = table.wavenumber
+    return {"wavenumber": {"first": float(nu[0]), "last": float(nu[-1]), "points": int(nu.size)}}
+
+
+def _k_axes(table: KCoefficientTable) -> dict[str, Any]:
+    return {
+        "band_bounds": table.band_bounds.tolist(),
+        "quadrature": table.quadrature,
+        "g": table.g.tolist(),
+        "g_weight": table.g_weight.tolist(),
+        "fine_cells": 0 if table.cell_bounds is None else len(table.cell_bounds),
+    }
+
+
+def summary_lines(table: Table | KCoefficientTable) -> list[tuple[str, str]]:
     """The same for people, as pairs of a word and its value.  Raises TableError for texts of another make."""
     try:
-        return _lines(table)
-    except (AttributeError, KeyError, TypeError, ValueError) as error:
+        return _lines(table, _k_lines(table) if isinstance(table, KCoefficientTable) else _point_lines(table))
+    except (AttributeError, IndexError, KeyError, TypeError, ValueError) as error:
         what = f"provenance or checks are not as this version writes them ({type(error).__name__}: {error})"
         raise TableError(problem(table.path, what, remedy="--json shows them as they are")) from error
 
 
-def _lines(table: Table) -> list[tuple[str, str]]:
-    nu, provenance, checks = table.wavenumber, table.provenance, table.checks
-    wavelength = "" if nu[0] <= 0.0 else f" ({1e4 / nu[-1]:.4g} to {1e4 / nu[0]:.4g} um)"
+def _range(first: float, last: float) -> str:
+    wavelength = "" if first <= 0.0 else f" ({1e4 / last:.4g} to {1e4 / first:.4g} um)"
+    return f"{first:.8g} to {last:.8g} cm-1{wavelength}"
+
+
+def _point_lines(table: Table) -> list[tuple[str, str]]:
+    nu = table.wavenumber
+    return [("wavenumber", f"{_range(float(nu[0]), float(nu[-1]))}, {nu.size} points")]
+
+
+def _k_lines(table: KCoefficientTable) -> list[tuple[str, str]]:
+    own = ", weights of each band's own" if table.g_weight.ndim == 2 else ""
+    first, last = float(table.band_bounds[0, 0]), float(table.band_bounds[-1, 1])
+    lines = [
+        ("bands", f"{table.band.size}, {_range(first, last)}"),
+        ("quadrature", f"{table.quadrature}, {table.g.size} g points{own}"),
+    ]
+    if table.cell_bounds is not None:
+        lines.append(("fine cells", f"{len(table.cell_bounds)} a band and node"))
+    errors = [abs(one["largest"]) for one in table.checks.get("certificate", {}).get("bands", [])]
+    if errors:
+        band = table.band_bounds[errors.index(max(errors))]
+        where = f"in the band {band[0]:.8g} to {band[1]:.8g} cm-1"
+        lines.append(("certificate", f"transmission of a band within {max(errors):.2g}, the largest error {where}"))
+    return lines
+
+
+def _lines(table: Table | KCoefficientTable, of_its_kind: list[tuple[str, str]]) -> list[tuple[str, str]]:
+    provenance, checks = table.provenance, table.checks
     kind = f"{table.temperature.size} nodes along a profile" if table.profile else "grid"
     program = provenance.get("program", {})
     lines = [
@@ -50,7 +88,7 @@ def _lines(table: Table) -> list[tuple[str, str]]:
         ("temperature", _axis(table.temperature.tolist(), "K")),
         ("pressure", _axis(table.pressure.tolist(), "bar")),
         ("stored as", _stored_as(table)),
-        ("wavenumber", f"{nu[0]:.8g} to {nu[-1]:.8g} cm-1{wavelength}, {nu.size} points"),
+        *of_its_kind,
         ("line list", ", ".join(one["file"] for one in provenance.get("line_lists", []))),
         *_isotopologues(provenance.get("isotopologues", [])),
         *_partition(provenance.get("partition_function", {})),
@@ -92,7 +130,7 @@ def _profile(found: dict[str, Any]) -> list[tuple[str, str]]:
     ]
 
 
-def _stored_as(table: Table) -> str:
+def _stored_as(table: Table | KCoefficientTable) -> str:
     why = f" (values below {F4_SMALLEST:g}, where float32 loses digits)" if table.dtype.itemsize > 4 else ""
     return f"{table.dtype}{why}"
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import re
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -12,12 +13,13 @@ import numpy as np
 from opacity.errors import InputError, ResourceError, problem
 from opacity.tables import curves
 from opacity.tables.atomic import write_atomically
+from opacity.tables.opened import OpenedTable
 from opacity.tables.read import Table
 
 # Colours that the colour-blind tell apart (Okabe & Ito 2008, "Color Universal Design"; as in matplotlib's
 # "okabe_ito"), dark ones first; curves differ by their dashes too.
-_COLOURS = ("#0072b2", "#009e73", "#d55e00", "#cc79a7", "#000000")
-_DASHES = ("-", (0, (5, 1.2)), (0, (1.2, 1.0)), (0, (6, 1.2, 1.2, 1.2)), "-")
+COLOURS = ("#0072b2", "#009e73", "#d55e00", "#cc79a7", "#000000")
+DASHES = ("-", (0, (5, 1.2)), (0, (1.2, 1.0)), (0, (6, 1.2, 1.2, 1.2)), "-")
 
 _STYLE = {
     "font.size": 11.0,
@@ -41,16 +43,21 @@ def draw_table(table: Table, path: Path, *, zoom: tuple[float, float] | None = N
     Raises InputError for a zoom that holds no point of the table or a path that does not end in .png,
     ResourceError where matplotlib is missing or the file can't be written, TableError for damage.
     """
+    groups = curves.groups_of(table)
+    part = curves.strong_stretch(table, groups[-1]) if zoom is None else _zoom_part(table, zoom)
+    return picture(path, lambda figure: _fill_figure(figure, table, groups, part))
+
+
+def picture(path: Path, fill: Callable[[Any], None]) -> Path:
+    """Write what `fill` draws into a figure to `path` as PNG; errors as those of `draw_table`."""
     path = Path(path)
     if path.suffix.lower() != ".png":
         raise InputError(problem(path, "a figure is written as PNG", expected="a name that ends in .png"))
     rc_context, figure_class, canvas_class = _matplotlib(path)
-    groups = curves.groups_of(table)
-    part = curves.strong_stretch(table, groups[-1]) if zoom is None else _zoom_part(table, zoom)
     with rc_context(_STYLE):
         figure = figure_class(figsize=(13.0, 7.3), dpi=160, layout="constrained")
         canvas = canvas_class(figure)
-        _fill_figure(figure, table, groups, part)
+        fill(figure)
         stream = io.BytesIO()
         # The name and version of the software would make files differ that look the same.
         canvas.print_png(stream, metadata={"Software": None})
@@ -109,12 +116,17 @@ def _fill_figure(figure: Any, table: Table, groups: list[curves.Group], part: sl
 
 
 def _add_words(figure: Any, table: Table) -> None:
-    # The title is the user's own text: a dollar sign in it must not start mathematics.
-    title = table.title.replace("$", r"\$")
-    figure.suptitle(title if table.formula in table.title else f"{title}  ({_formula(table.formula)})", fontsize=15)
+    add_title(figure, table)
     words = curves.caption(table)
     if words:
         figure.supxlabel(words, fontsize=9, color="0.3", x=0.99, ha="right")
+
+
+def add_title(figure: Any, table: OpenedTable) -> None:
+    """The table's title, with its formula where that is not in it."""
+    # The title is the user's own text: a dollar sign in it must not start mathematics.
+    title = table.title.replace("$", r"\$")
+    figure.suptitle(title if table.formula in table.title else f"{title}  ({_formula(table.formula)})", fontsize=15)
 
 
 def _formula(formula: str) -> str:
@@ -135,7 +147,7 @@ def _draw_group(axes: Any, table: Table, group: curves.Group, part: slice, limit
     if last > first:
         axes.set_xlim(first, last)
     for curve in group.curves:
-        look = {"color": _COLOURS[curve.look], "linestyle": _DASHES[curve.look], "label": curve.label}
+        look = {"color": COLOURS[curve.look], "linestyle": DASHES[curve.look], "label": curve.label}
         _draw_curve(axes, table.wavenumber[part], curve.values[part], look)
     axes.tick_params(which="both", right=True)
     axes.ticklabel_format(axis="x", useOffset=False, style="plain")

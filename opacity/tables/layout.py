@@ -33,6 +33,9 @@ FORMAT_NAME = "opacity cross-section table"
 FORMAT_VERSION = 1
 OLDEST_VERSION = 1
 
+FORMATS = (FORMAT_NAME, "opacity k-coefficient table")
+"""Every kind of table; what the second holds is in `k_layout`."""
+
 LIBVER = ("v108", "v110")
 """Bounds of the HDF5 format: newer structures than those of 1.10 fail in readers still in use."""
 

@@ -2,17 +2,15 @@
 
 from __future__ import annotations
 
-import operator
 from pathlib import Path
-from types import TracebackType
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.errors import InputError, TableError, problem
 from opacity.grids import FloatArray
 from opacity.tables import interpolate, layout, structure
+from opacity.tables.opened import OpenedTable, opened
 
 
 def open_table(path: str | Path) -> Table:
@@ -20,16 +18,10 @@ def open_table(path: str | Path) -> Table:
 
     Raises TableError where the file is missing, damaged, not a table, or of a version too new.
     """
-    path = Path(path)
-    file = structure.open_file(path)
-    try:
-        return Table(path, file)
-    except BaseException:
-        file.close()
-        raise
+    return opened(path, Table)
 
 
-class Table:
+class Table(OpenedTable):
     """A cross-section table on disk; spectra are read when asked for, and each block is proved by its sha256.
 
     Attributes: `path`; `title`; `formula`; `recipe` (TOML); `provenance` and `checks` (dict);
@@ -39,19 +31,9 @@ class Table:
     """
 
     def __init__(self, path: Path, file: Any) -> None:
-        self.path = path
-        self._file = file
-        self.format_version: int = structure.check_format(path, file)
-        self.title: str = structure.attribute(path, file, "title")
-        self.formula: str = structure.attribute(path, file, "formula")
-        self.profile: bool = structure.is_profile(path, file)
-        self.temperature = structure.read_axis(path, file, "temperature", rising=not self.profile)
-        self.pressure = structure.read_axis(path, file, "pressure", rising=not self.profile)
+        super().__init__(path, file, layout.FORMAT_NAME, (layout.OLDEST_VERSION, layout.FORMAT_VERSION))
         self.wavenumber = structure.read_axis(path, file, "wavenumber", rising=True)
-        self.recipe = structure.read_text(path, file, "recipe")
-        self.provenance = structure.read_json(path, file, "provenance")
-        self.checks = structure.read_json(path, file, "checks")
-        self.shape = self._expected_shape()
+        self.shape = (*self._sizes, self.wavenumber.size)
         self._values = structure.dataset(path, file, layout.CROSS_SECTION)
         self._hashes = structure.dataset(path, file, layout.HASHES)
         self._check_datasets()
@@ -64,18 +46,6 @@ class Table:
         nu = self.wavenumber
         return f"<Table {self.path}: {self.formula}, {nodes} nodes, {nu.size} points {nu[0]:.6g} to {nu[-1]:.6g} cm-1>"
 
-    def __enter__(self) -> Table:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        self.close()
-
-    def close(self) -> None:
-        """Close the file; what was read stays, further spectra can't be."""
-        self._file.close()
-
     def at(self, temperature: float, pressure: float, clamp: bool = False, method: str = "cubic") -> FloatArray:
         """Cross-section (cm2/molecule) at a temperature (K) and pressure (bar), (n_nu,).
 
@@ -86,13 +56,8 @@ class Table:
         arguments that can't be right.
         """
         if self.profile:
-            return self._at_node(temperature, pressure)
-        try:
-            nodes = interpolate.grid_nodes(
-                self.temperature, self.pressure, temperature, pressure, clamp=clamp, method=method
-            )
-        except TableError as error:
-            raise TableError(f"{self.path}: {error}") from error
+            return self._read(self._profile_node(temperature, pressure)).astype(np.float64)
+        nodes = self._grid_nodes(temperature, pressure, clamp, method)
         return interpolate.from_nodes(nodes, self.wavenumber.size, lambda i, j: self._read((i, j)))
 
     def spectrum(self, *node: int) -> FloatArray:
@@ -101,15 +66,7 @@ class Table:
         The node is given by its indices on the temperature and pressure axes, or along a profile by
         its one index.  InputError for an index that the table does not have.
         """
-        sizes = self.shape[:-1]
-        try:
-            index = tuple(operator.index(i) for i in node)
-        except TypeError:
-            index = ()
-        if len(index) != len(sizes) or not all(0 <= i < size for i, size in zip(index, sizes, strict=True)):
-            expected = "indices from 0 to below " + ", ".join(str(size) for size in sizes)
-            raise InputError(problem(self.path, "no such node", expected=expected, found=node))
-        return self._read(index).astype(np.float64)
+        return self._read(self._index(node)).astype(np.float64)
 
     def verify(self) -> None:
         """Read everything; TableError names the first block that is not as it was written."""
@@ -117,37 +74,14 @@ class Table:
         for node in np.ndindex(self.shape[:-1]):
             self._read(node)
 
-    def _expected_shape(self) -> tuple[int, ...]:
-        sizes = self.temperature.size, self.pressure.size
-        if self.profile and sizes[0] != sizes[1]:
-            raise structure.damaged(self.path, "profile", expected="one pressure a temperature", found=sizes)
-        return (*layout.spectra_shape(*sizes, self.profile), self.wavenumber.size)
-
     def _check_datasets(self) -> None:
         hash_shape = (*self.shape[:-1], layout.block_count(self.wavenumber.size), layout.HEX_DIGITS)
         structure.check_stored_as(self.path, self._values, layout.CROSS_SECTION, self.shape, ("<f4", "<f8"))
         structure.check_stored_as(self.path, self._hashes, layout.HASHES, hash_shape, ("S1",))
 
-    def _at_node(self, temperature: float, pressure: float) -> FloatArray:
-        wanted_t = interpolate.positive_number("temperature", "K", temperature)
-        wanted_p = interpolate.positive_number("pressure", "bar", pressure)
-        for node, (node_t, node_p) in enumerate(zip(self.temperature, self.pressure, strict=True)):
-            if interpolate.same_number(wanted_t, node_t) and interpolate.same_number(wanted_p, node_p):
-                return self._read((node,)).astype(np.float64)
-        raise TableError(
-            problem(
-                self.path,
-                "a table along a profile has values at its own nodes only",
-                expected=f"one of its {self.temperature.size} nodes",
-                found=f"{wanted_t:.10g} K, {wanted_p:.10g} bar",
-                remedy="choose from its temperature and pressure, or build a table on a grid",
-            )
-        )
-
     def _read(self, node: tuple[int, ...]) -> NDArray[Any]:
         """The stored values of a node, (n_nu,), each block proved when it is read for the first time."""
-        if not self._file:
-            raise TableError(problem(self.path, "the table is closed"))
+        self._require_open()
         values = np.empty(self.wavenumber.size, dtype=self.dtype)
         with structure.reading(self.path, f"{layout.HASHES} of node {node}"):
             hashes = self._hashes[node]
@@ -169,6 +103,6 @@ class Table:
         indices = ", ".join(str(i) for i in node)
         first, last = self.wavenumber[block.start], self.wavenumber[block.stop - 1]
         return (
-            f"block cross_section[{indices}, {block.start}:{block.stop}] ({self.temperature[node[0]]:g} K, "
-            f"{self.pressure[node[-1]]:g} bar, {first:.10g} to {last:.10g} cm-1)"
+            f"block cross_section[{indices}, {block.start}:{block.stop}] "
+            f"({self._node_name(node)}, {first:.10g} to {last:.10g} cm-1)"
         )

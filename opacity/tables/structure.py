@@ -6,7 +6,7 @@ import contextlib
 import errno
 import json
 import stat
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -82,23 +82,42 @@ def _open_hdf5(path: Path) -> Any:
         return h5py.File(path, "r", rdcc_nbytes=0, locking=False)
 
 
-def check_format(path: Path, file: Any) -> int:
+def format_name(path: Path, file: Any) -> str:
+    """What the file says its format is; empty where it says nothing."""
+    return str(attribute(path, file, "format", default=""))
+
+
+def other_format(path: Path, found: str, *expected: str) -> TableError:
+    """The error for a file of another format than those expected."""
+    formats = " or ".join(f'"{name}"' for name in expected)
+    return TableError(
+        problem(path, "not a table of this program", expected=f"format {formats}", found=f'"{found}"')
+        if found not in layout.FORMATS
+        else problem(path, "another kind of table than is needed here", expected=formats, found=f'"{found}"')
+    )
+
+
+def check_format(
+    path: Path,
+    file: Any,
+    name: str = layout.FORMAT_NAME,
+    versions: tuple[int, int] = (layout.OLDEST_VERSION, layout.FORMAT_VERSION),
+) -> int:
     """The format version; TableError for another format, or a version that this program can't read."""
-    name = attribute(path, file, "format", default="")
-    if name != layout.FORMAT_NAME:
-        raise TableError(
-            problem(path, "not a table of this program", expected=f'format "{layout.FORMAT_NAME}"', found=f'"{name}"')
-        )
+    found = format_name(path, file)
+    if found != name:
+        raise other_format(path, found, name)
+    oldest, newest = versions
     version = attribute(path, file, "format_version", default=None)
     if not isinstance(version, int):
         raise damaged(path, "format_version", expected="a whole number", found=repr(version))
-    if not layout.OLDEST_VERSION <= version <= layout.FORMAT_VERSION:
-        newer = version > layout.FORMAT_VERSION
+    if not oldest <= version <= newest:
+        newer = version > newest
         raise TableError(
             problem(
                 path,
                 "format version not supported",
-                expected=f"{layout.OLDEST_VERSION} to {layout.FORMAT_VERSION}",
+                expected=f"{oldest} to {newest}",
                 found=version,
                 remedy="install a newer version of opacity" if newer else "build the table again",
             )
@@ -131,8 +150,8 @@ def is_profile(path: Path, file: Any) -> bool:
     return bool(nodes == "profile")
 
 
-def dataset(path: Path, file: Any, name: str) -> Any:
-    """The dataset `name` with the units it must have."""
+def dataset(path: Path, file: Any, name: str, known: Mapping[str, str] = layout.UNITS) -> Any:
+    """The dataset `name` with the units it must have; `known` gives the units of each that has some."""
     with reading(path, f"dataset {name}"):
         if name not in file.keys():  # noqa: SIM118 - `in file` is False also for what is there and damaged
             raise damaged(path, f"dataset {name} is missing")
@@ -143,10 +162,10 @@ def dataset(path: Path, file: Any, name: str) -> Any:
         foreign = sorted({"scale_factor", "add_offset", "valid_range", "missing_value"} & set(found.attrs))
         if foreign:
             raise damaged(path, f"attribute {foreign[0]} of {name}", expected="none", found="one")
-    if name in layout.UNITS:
+    if name in known:
         units = attribute(path, found, "units", default="")
-        if units != layout.UNITS[name]:
-            raise damaged(path, f"units of {name}", expected=f'"{layout.UNITS[name]}"', found=f'"{units}"')
+        if units != known[name]:
+            raise damaged(path, f"units of {name}", expected=f'"{known[name]}"', found=f'"{units}"')
     return found
 
 
@@ -159,32 +178,49 @@ def check_stored_as(path: Path, stored: Any, name: str, shape: tuple[int, ...], 
             raise damaged(path, f"type of {name}", expected=" or ".join(types), found=stored.dtype)
 
 
-def _hashed(path: Path, file: Any, name: str, kind: str) -> NDArray[Any]:
-    """The values of a one-dimensional dataset, proved by its sha256."""
-    stored = dataset(path, file, name)
+def _hashed(
+    stored: Any, path: Path, name: str, kind: str, dimensions: int = 1, hash_name: str = "sha256"
+) -> NDArray[Any]:
+    """The values of a dataset of so many dimensions, proved by the sha256 in its attribute `hash_name`."""
     with reading(path, f"dataset {name}"):
-        if len(stored.shape) != 1 or stored.size == 0:
-            raise damaged(path, f"shape of {name}", expected="one dimension", found=stored.shape)
+        if len(stored.shape) != dimensions or stored.size == 0:
+            expected = "one dimension" if dimensions == 1 else f"{dimensions} dimensions"
+            raise damaged(path, f"shape of {name}", expected=expected, found=stored.shape)
         check_stored_as(path, stored, name, stored.shape, (kind,))
         values: NDArray[Any] = stored[()]
-        if layout.sha256_of(values) != attribute(path, stored, "sha256"):
+        if layout.sha256_of(values) != attribute(path, stored, hash_name):
             raise damaged(path, f"dataset {name} does not match its sha256")
     return values
 
 
-def read_axis(path: Path, file: Any, name: str, *, rising: bool) -> FloatArray:
-    """The values of an axis, (n,), read-only; TableError where they cannot be those of one."""
-    values = _hashed(path, file, name, "<f8").astype(np.float64)
-    if not np.all(np.isfinite(values)) or values.min() < 0.0 or (rising and np.any(np.diff(values) <= 0.0)):
-        raise damaged(path, f"dataset {name}", expected="finite values in rising order", found="others")
+def read_array(
+    path: Path,
+    file: Any,
+    name: str,
+    dimensions: int,
+    known: Mapping[str, str] = layout.UNITS,
+    hash_name: str = "sha256",
+) -> FloatArray:
+    """A stored array of f8, read-only; TableError where it is not what was written, or a value is not 0 or above."""
+    values = _hashed(dataset(path, file, name, known), path, name, "<f8", dimensions, hash_name).astype(np.float64)
+    if not np.all(np.isfinite(values)) or values.min() < 0.0:
+        raise damaged(path, f"dataset {name}", expected="finite values, 0 or above", found="others")
     values.flags.writeable = False
+    return values
+
+
+def read_axis(path: Path, file: Any, name: str, *, rising: bool, known: Mapping[str, str] = layout.UNITS) -> FloatArray:
+    """The values of an axis, (n,), read-only; TableError where they cannot be those of one."""
+    values = read_array(path, file, name, 1, known)
+    if rising and np.any(np.diff(values) <= 0.0):
+        raise damaged(path, f"dataset {name}", expected="finite values in rising order", found="others")
     return values
 
 
 def read_text(path: Path, file: Any, name: str) -> str:
     """A stored text."""
     with reading(path, f"dataset {name}"):
-        text = _hashed(path, file, name, "S1").tobytes().decode("utf-8")
+        text = _hashed(dataset(path, file, name), path, name, "S1").tobytes().decode("utf-8")
     return "" if text == "\0" else text
 
 

@@ -15,6 +15,7 @@ from opacity.tables import layout
 from opacity.tables.atomic import write_atomically
 from opacity.tables.image import as_json, node_indices, table_image
 from opacity.tables.model import CrossSectionTable, TableFrame
+from opacity.tables.opened import OpenedTable
 from opacity.tables.read import open_table
 
 _LONGEST_LABEL = 1000
@@ -31,12 +32,17 @@ def write_cross_section_table(path: Path, table: CrossSectionTable) -> Path:
     """
     path = Path(path)
     dtype = check_table(path, table)
+    return write_image(path, lambda: table_image(table, dtype), verify_written)
+
+
+def write_image(path: Path, make: Callable[[], bytes], verify: Callable[[Path, Path], None]) -> Path:
+    """Write what `make` puts together in memory, once `verify(path, temporary name)` has read it back."""
     try:
-        image = table_image(table, dtype)
+        image = make()
     except (MemoryError, OSError, RuntimeError) as error:
         message = f"the table cannot be put together in memory ({one_line(error) or 'no more of it'})"
         raise ResourceError(problem(path, message, remedy="use fewer nodes or points")) from error
-    return write_atomically(path, image, lambda written: verify_written(path, written))
+    return write_atomically(path, image, lambda written: verify(path, written))
 
 
 def check_table(path: Path, table: CrossSectionTable) -> np.dtype[Any]:
@@ -45,7 +51,7 @@ def check_table(path: Path, table: CrossSectionTable) -> np.dtype[Any]:
     if table.cross_section.shape != table.frame.shape:
         expected, found = table.frame.shape, table.cross_section.shape
         raise TableError(problem(path, "cross_section does not fit its axes", expected=expected, found=found))
-    _check_text(path, lambda: as_json(table.checks))
+    check_text(path, lambda: as_json(table.checks))
     smallest, largest = _extremes(path, table)
     return layout.stored_type(smallest, largest)
 
@@ -53,24 +59,25 @@ def check_table(path: Path, table: CrossSectionTable) -> np.dtype[Any]:
 def check_frame(path: Path, frame: TableFrame) -> None:
     """Raise TableError where a table's axes, names or texts may not be stored."""
     for name in ("title", "formula"):
-        _check_label(path, name, getattr(frame, name))
+        check_label(path, name, getattr(frame, name))
     _check_axes(path, frame)
     if "\0" in frame.recipe:
         raise TableError(problem(path, "the recipe holds a NUL character"))
     for text in (lambda: frame.recipe, lambda: as_json(frame.provenance)):
-        _check_text(path, text)
+        check_text(path, text)
 
 
-def verify_written(path: Path, written: Path) -> None:
+def verify_written(path: Path, written: Path, opened: Callable[[Path], OpenedTable] = open_table) -> None:
     """Read a table under its temporary name back from the disk.  Raises ResourceError where it does not read back."""
     try:
-        with open_table(written) as table:
+        with opened(written) as table:
             table.verify()
     except OpacityError as error:
         raise ResourceError(problem(path, f"what was written does not read back ({error})")) from error
 
 
-def _check_label(path: Path, name: str, text: str) -> None:
+def check_label(path: Path, name: str, text: str) -> None:
+    """Raise TableError for a title or the like that is not one line."""
     if not text.strip() or not text.isprintable() or len(text) > _LONGEST_LABEL:
         expected = f"one line of 1 to {_LONGEST_LABEL} characters"
         raise TableError(problem(path, f"unusable {name}", expected=expected, found=repr(text[:80])))
@@ -102,7 +109,8 @@ def _check_node_axis(name: str, values: FloatArray, profile: bool) -> None:
         as_axis(name, unit, value)
 
 
-def _check_text(path: Path, text: Callable[[], str]) -> None:
+def check_text(path: Path, text: Callable[[], str]) -> None:
+    """Raise TableError where a text cannot be made or stored."""
     try:
         text().encode("utf-8")
     except (TypeError, ValueError, RecursionError) as error:
