@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.kernels.chi import chi_at, weigh
-from opacity.kernels.jit import jit, jit_exact
+from opacity.kernels.jit import jit, jit_exact, jit_inline
 from opacity.kernels.node_line import (
     SMALLEST_Y,
     Formulas,
@@ -91,6 +91,49 @@ def add_weighted(out: Array, nu: Array, first: int, last: int, line: LineAtNode,
     weigh(out[first:last], values, nu[first:last], line.centre, line.plinth, factor, rate)
 
 
+@jit_inline
+def line_in_reach(
+    nu: Array,
+    nu0: float,
+    shift: float,
+    strength: float,
+    lorentz: float,
+    doppler: float,
+    pressure: float,
+    cutoff: float,
+    subtract_plinth: bool,
+    chi: Array,
+    near_radius: float,
+    far_radius: float,
+    exponential: Array,
+) -> tuple[int, int, LineAtNode]:
+    """The points that a line of `LineColumns` reaches, from the first to before the last, and the line at the node."""
+    first, last = reach(nu, nu0, cutoff) if strength != 0.0 else (0, 0)
+    line = line_at_node(nu0, shift, strength, lorentz, doppler, pressure, near_radius, far_radius, exponential)
+    if subtract_plinth and first < last:
+        line = with_plinth(line, cutoff, chi_at(chi, cutoff))
+    return first, last, line
+
+
+@jit_inline
+def stretch(nu: Array, centre: float, chi: Array, number: int, first: int, last: int) -> tuple[int, int, float, float]:
+    """One of the 2 n - 1 stretches in which a line's points have one row of n chi factors: low, high, factor and rate.
+
+    From the centre outwards, left before right.  Without rows the one stretch is all of first..last, its rate below 0.
+    """
+    if chi.shape[0] == 0:
+        return first, last, 1.0, -1.0
+    row = (number + 1) >> 1
+    # Within the same arithmetic as the exact sum.
+    low, high = reach(nu, centre, chi[row, 0])
+    low, high = min(max(low, first), last), min(max(high, first), last)
+    if row > 0:
+        left, right = reach(nu, centre, chi[row - 1, 0])
+        left, right = min(max(left, first), last), min(max(right, first), last)
+        low, high = (low, left) if number % 2 else (right, high)
+    return low, high, chi[row, 1], chi[row, 2]
+
+
 @jit
 def add_lines(
     out: Array,
@@ -112,30 +155,18 @@ def add_lines(
     wavenumber, shift, strength, lorentz, doppler = lines
     near_radius, far_radius, exponential = formulas
     for j in range(first_line, last_line):
-        if strength[j] == 0.0:
-            continue
-        first, last = reach(nu, wavenumber[j], cutoff)
+        first, last, line = line_in_reach(
+            nu, wavenumber[j], shift[j], strength[j], lorentz[j], doppler[j], pressure, cutoff, subtract_plinth, chi,
+            near_radius, far_radius, exponential,
+        )  # fmt: skip
         if first >= last:
             continue
-        line = line_at_node(
-            wavenumber[j], shift[j], strength[j], lorentz[j], doppler[j], pressure, near_radius, far_radius, exponential
-        )
         if not SMALLEST_Y <= line.y < np.inf:
             return j
-        if subtract_plinth:
-            line = with_plinth(line, cutoff, chi_at(chi, cutoff))
-        if chi.shape[0] == 0:
-            add_line(out, nu, first, last, line)
-            continue
-        left, right = last, last
-        for row in range(chi.shape[0]):
-            # Within the same arithmetic as the exact sum; from the centre outwards.
-            low, high = reach(nu, line.centre, chi[row, 0])
-            low, high = min(max(low, first), last), min(max(high, first), last)
-            if row == 0:
-                add_weighted(out, nu, low, high, line, chi[row, 1], chi[row, 2])
+        for number in range(max(2 * chi.shape[0] - 1, 1)):
+            low, high, factor, rate = stretch(nu, line.centre, chi, number, first, last)
+            if rate < 0.0:
+                add_line(out, nu, low, high, line)
             else:
-                add_weighted(out, nu, low, left, line, chi[row, 1], chi[row, 2])
-                add_weighted(out, nu, right, high, line, chi[row, 1], chi[row, 2])
-            left, right = low, high
+                add_weighted(out, nu, low, high, line, factor, rate)
     return -1

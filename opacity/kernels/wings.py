@@ -13,9 +13,9 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.kernels.accumulate import add_line, add_weighted, reach
+from opacity.kernels.accumulate import add_line, add_weighted, line_in_reach, stretch
 from opacity.kernels.cells import CELL_BITS, NODES, RATIO_BITS, Frame, Tree, sums_to_points
-from opacity.kernels.chi import chi_at, weigh
+from opacity.kernels.chi import weigh
 from opacity.kernels.jit import jit, jit_inline
 from opacity.kernels.node_line import (
     SMALLEST_Y,
@@ -23,8 +23,6 @@ from opacity.kernels.node_line import (
     LineAtNode,
     LineColumns,
     add_pieces,
-    line_at_node,
-    with_plinth,
 )
 from opacity.kernels.voigt import add_far
 
@@ -73,32 +71,18 @@ def add_lines_by_cells(
     wavenumber, shift, strength, lorentz, doppler = lines
     near_radius, far_radius, exponential = formulas
     for j in range(first_line, last_line):
-        if strength[j] == 0.0:
-            continue
-        first, last = reach(nu, wavenumber[j], cutoff)
+        first, last, line = line_in_reach(
+            nu, wavenumber[j], shift[j], strength[j], lorentz[j], doppler[j], pressure, cutoff, subtract_plinth, chi,
+            near_radius, far_radius, exponential,
+        )  # fmt: skip
         if first >= last:
             continue
-        line = line_at_node(
-            wavenumber[j], shift[j], strength[j], lorentz[j], doppler[j], pressure, near_radius, far_radius, exponential
-        )
         if not SMALLEST_Y <= line.y < np.inf:
             return j
-        if subtract_plinth:
-            line = with_plinth(line, cutoff, chi_at(chi, cutoff))
         place = _place(frame, line, wavenumber[j], cutoff, subtract_plinth)
-        if chi.shape[0] == 0:
-            _add_line(out, nu, sums, places, offsets, frame, first, last, line, place, 1.0, -1.0)
-            continue
-        left, right = last, last
-        for row in range(chi.shape[0]):
-            low, high = reach(nu, line.centre, chi[row, 0])
-            low, high = min(max(low, first), last), min(max(high, first), last)
-            if row == 0:
-                _add_line(out, nu, sums, places, offsets, frame, low, high, line, place, chi[row, 1], chi[row, 2])
-            else:
-                _add_line(out, nu, sums, places, offsets, frame, low, left, line, place, chi[row, 1], chi[row, 2])
-                _add_line(out, nu, sums, places, offsets, frame, right, high, line, place, chi[row, 1], chi[row, 2])
-            left, right = low, high
+        for number in range(max(2 * chi.shape[0] - 1, 1)):
+            low, high, factor, rate = stretch(nu, line.centre, chi, number, first, last)
+            _add_line(out, nu, sums, places, offsets, frame, low, high, line, place, factor, rate)
     sums_to_points(sums, offsets, out)
     return -1
 
@@ -209,13 +193,12 @@ def _add_line(
 
     On either side of the centre the cells in use are one stretch: left..left_gap - 1 and right_gap..right - 1.
     """
-    if not place.spread < np.inf:
-        _add_points(out, nu, first, last, line, place, factor, rate)
-        return
     left, left_gap, right_gap, right = first, first, last, last
     has_left = has_right = False
     decay = max(rate, 0.0) * frame.step * (places[places.size - 1] if frame.in_log else 1.0)
-    for level in range(offsets.size - 2, -1, -1):
+    # A line that is wide against its own wavenumber gets no cells.
+    levels = offsets.size - 1 if place.spread < np.inf else 0
+    for level in range(levels - 1, -1, -1):
         bits = CELL_BITS + RATIO_BITS * level
         low = (first + (1 << bits) - 1) >> bits
         # The last cell may reach beyond the tile, where there is no point to go wrong.
@@ -233,10 +216,10 @@ def _add_line(
         base = offsets[level]
         if has_left:
             _add_cells(sums, places, base, cells.low, left >> bits, cells, line, factor, rate)
-        _add_cells(sums, places, base, left_gap >> bits if has_left else cells.low, gap_low, cells, line, factor, rate)
-        _add_cells(
-            sums, places, base, gap_high, right_gap >> bits if has_right else cells.high, cells, line, factor, rate
-        )
+        inner_left = left_gap >> bits if has_left else cells.low
+        inner_right = right_gap >> bits if has_right else cells.high
+        _add_cells(sums, places, base, inner_left, gap_low, cells, line, factor, rate)
+        _add_cells(sums, places, base, gap_high, inner_right, cells, line, factor, rate)
         if has_right:
             _add_cells(sums, places, base, right >> bits, cells.high, cells, line, factor, rate)
         if has_left or cells.low < gap_low:

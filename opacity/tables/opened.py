@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import operator
+from abc import ABC, abstractmethod
 from collections.abc import Callable
 from pathlib import Path
 from types import TracebackType
@@ -12,7 +13,7 @@ from opacity.errors import InputError, TableError, problem
 from opacity.tables import interpolate, layout, structure
 
 
-class OpenedTable:
+class OpenedTable(ABC):
     """A table on disk, open for reading; its kinds are `read.Table` and `k_read.KCoefficientTable`.
 
     Attributes: `path`; `title`; `formula`; `recipe` (TOML); `provenance` and `checks` (dict);
@@ -46,9 +47,9 @@ class OpenedTable:
         """Close the file; what was read stays, the values of further nodes can't be."""
         self._file.close()
 
+    @abstractmethod
     def verify(self) -> None:
         """Read everything; TableError names the first part that is not as it was written."""
-        raise NotImplementedError
 
     def _node_sizes(self) -> tuple[int, ...]:
         sizes = self.temperature.size, self.pressure.size
