@@ -1,7 +1,7 @@
 """Mean cross-sections at a temperature: Planck's for emission of thin gas, Rosseland's for diffusion in thick gas.
 
 Planck     integral of sigma B over that of B (Mihalas 1978, Stellar Atmospheres, 2nd ed., section 3-2, from memory)
-Rosseland  integral of dB/dT over that of (1 / sigma) dB/dT (Rosseland 1924, MNRAS 84, 525)
+Rosseland  integral of dB/dT over that of (1 / sigma) dB/dT (Rosseland 1924, MNRAS 84, 525, from memory)
 
 Both integrals are taken over the grid alone, by trapezoids: the weight is renormalised on the grid and what lies beyond
 its ends is left out.
