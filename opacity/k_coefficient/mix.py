@@ -1,9 +1,10 @@
 """k-coefficients of a mixture out of those of its species: random overlap, put in order and rebinned.
 
 Two species overlap at random: each k of the one meets each k of the other with the product of their weights (Lacis &
-Oinas 1991, J. Geophys. Res. 96, 9027; with resorting and rebinning, Amundsen et al. 2017, A&A 598, A97).  The sums are
-put in order and rebinned to the same points: into matched intervals with mean closure (this project's own way) or
-interval means, which both keep the mean, or by interpolation of ln k at points of g, the classical way.
+Oinas 1991, J. Geophys. Res. 96, 9027; with resorting and rebinning, Amundsen et al. 2017, A&A 598, A97; both from
+memory).  The sums are put in order and rebinned to the same points: into matched intervals with mean closure (this
+project's own way) or interval means, which both keep the mean, or by interpolation of ln k at points of g, the
+classical way.
 """
 
 from __future__ import annotations

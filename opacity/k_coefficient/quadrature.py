@@ -3,7 +3,7 @@
 matched           matched intervals with mean closure (`kernels.matched`), this project's own: fewest points for an
                   error of transmission, and the mean of the band exact
 interval-mean     the mean of k over each interval; as intervals those of Gauss and Legendre's weights, or given bounds
-gauss-legendre    k at the points of Gauss and Legendre's quadrature in g (Lacis & Oinas 1991, JGR 96, 9027)
+gauss-legendre    k at the points of Gauss and Legendre's quadrature in g (Lacis & Oinas 1991, from memory)
 split             the same in two pieces, g below and above 0.95, half of the points in each
 """
 
