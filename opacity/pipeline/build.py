@@ -25,13 +25,14 @@ from opacity.pipeline.progress import Progress
 from opacity.pipeline.resources import processor
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.pipeline.units import Unit, parted
-from opacity.pipeline.workers import Origin, Work, in_processes, in_threads
+from opacity.pipeline.workers import Origin, Work, WorkUnit, in_processes, in_threads
 from opacity.recipe.model import Recipe
 from opacity.tables.assemble import Assembly, assemble_table, stored_type_of
 from opacity.tables.atomic import remove_leftovers, write_atomically
 from opacity.tables.model import TableFrame
 from opacity.tables.read import open_table
-from opacity.tables.shard import ENDING, Shard, is_whole, read_shard
+from opacity.tables.sealed import ENDING, is_whole
+from opacity.tables.shard import Shard, read_shard
 
 
 @dataclass(frozen=True)
@@ -193,7 +194,7 @@ def _compute(job: _Job, units: tuple[Unit, ...], crew: Crew) -> None:
     nodes = sum(len(unit.rows) for unit in left)
     with Progress("spectra", nodes, "spectra of windows", job.quiet) as progress:
 
-        def finished(unit: Unit) -> None:
+        def finished(unit: WorkUnit) -> None:
             progress.step(len(unit.rows))
 
         if crew.scheduler is not None:

@@ -14,8 +14,7 @@ from pathlib import Path
 from typing import Any
 
 from opacity.errors import ResourceError, one_line, problem
-from opacity.pipeline.units import Unit
-from opacity.pipeline.workers import Done, Origin, do_in_process, prepare_process
+from opacity.pipeline.workers import Done, Origin, WorkUnit, do_in_process, prepare_process
 
 RETRIES = 3
 """So often a unit is given to another worker when its own was lost."""
@@ -24,7 +23,7 @@ SECONDS_TO_CONNECT = 30
 _prepared: list[Origin] = []
 
 
-def on_cluster(scheduler: str, origin: Origin, units: Sequence[Unit], workers: int, done: Done) -> None:
+def on_cluster(scheduler: str, origin: Origin, units: Sequence[WorkUnit], workers: int, done: Done) -> None:
     """Units side by side on a cluster: the address of its scheduler, the file that names it, or "local".
 
     Raises ResourceError where the cluster is not to be had or loses a unit too often.

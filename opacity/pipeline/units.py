@@ -25,7 +25,8 @@ from opacity.kernels.jit import source_hash
 from opacity.pipeline.resources import processor
 from opacity.recipe.model import Recipe
 from opacity.tables.layout import BLOCK, block_slices
-from opacity.tables.shard import ENDING, Shard, make_shard
+from opacity.tables.sealed import ENDING
+from opacity.tables.shard import Shard, make_shard, write_shard
 
 WINDOW = 8 * BLOCK
 """Points of the widest window."""
@@ -53,6 +54,10 @@ class Unit:
     def path(self, folder: Path) -> Path:
         """Where its shard lies."""
         return folder / f"{self.name}{ENDING}"
+
+    def do(self, recipe: Recipe, source: LineSource, path: Path, executor: Executor | None = None) -> None:
+        """Compute the unit and write its shard."""
+        write_shard(path, compute(recipe, source, self, executor))
 
 
 def parted(recipe: Recipe, source: LineSource, inputs_sha256: str) -> tuple[Unit, ...]:

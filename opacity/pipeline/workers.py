@@ -15,16 +15,38 @@ from concurrent.futures import FIRST_COMPLETED, Executor, Future, ProcessPoolExe
 from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Protocol
 
 from opacity.cross_sections.source import LineSource
 from opacity.errors import ResourceError, problem
-from opacity.pipeline.units import Unit, compute, parted
+from opacity.pipeline.units import parted
 from opacity.recipe.model import Recipe
-from opacity.tables.shard import write_shard
 
 KINDS = ("threads", "processes")
 MOST_RESTARTS = 5
 """So often lost worker processes are replaced before a build gives up."""
+
+
+class WorkUnit(Protocol):
+    """Nodes `rows` of some part of a table; `name` is the hash of its inputs."""
+
+    @property
+    def number(self) -> int:
+        """Its number among all of the table."""
+
+    @property
+    def rows(self) -> tuple[int, ...]:
+        """Numbers of its nodes in stored order."""
+
+    @property
+    def name(self) -> str:
+        """The hash of its inputs."""
+
+    def path(self, folder: Path) -> Path:
+        """Where its shard lies."""
+
+    def do(self, recipe: Recipe, source: LineSource, path: Path, executor: Executor | None = None) -> None:
+        """Compute the unit and write its shard."""
 
 
 @dataclass(frozen=True)
@@ -35,12 +57,11 @@ class Work:
     source: LineSource
     shards: Path
 
-    def do(self, unit: Unit, executor: Executor | None = None) -> None:
+    def do(self, unit: WorkUnit, executor: Executor | None = None) -> None:
         """Compute a unit and write its shard."""
-        shard = compute(self.recipe, self.source, unit, executor)
         # A task that ended may have taken the empty folder with it.
         self.shards.mkdir(parents=True, exist_ok=True)
-        write_shard(unit.path(self.shards), shard)
+        unit.do(self.recipe, self.source, unit.path(self.shards), executor)
 
 
 @dataclass(frozen=True)
@@ -54,10 +75,10 @@ class Origin:
     memory: int
 
 
-Done = Callable[[Unit], None]
+Done = Callable[[WorkUnit], None]
 
 
-def in_threads(work: Work, units: Sequence[Unit], workers: int, done: Done) -> None:
+def in_threads(work: Work, units: Sequence[WorkUnit], workers: int, done: Done) -> None:
     """Units side by side in threads; tiles of one unit after the other where units are fewer than threads."""
     if workers == 1:
         for unit in units:
@@ -73,11 +94,11 @@ def in_threads(work: Work, units: Sequence[Unit], workers: int, done: Done) -> N
         _all_done({executor.submit(work.do, unit): unit for unit in units}, done)
 
 
-def in_processes(origin: Origin, units: Sequence[Unit], workers: int, done: Done) -> None:
+def in_processes(origin: Origin, units: Sequence[WorkUnit], workers: int, done: Done) -> None:
     """Units side by side in processes; those of a process that was killed are done by another."""
     left = {unit.number: unit for unit in units}
 
-    def finished(unit: Unit) -> None:
+    def finished(unit: WorkUnit) -> None:
         left.pop(unit.number, None)
         done(unit)
 
@@ -98,7 +119,7 @@ def in_processes(origin: Origin, units: Sequence[Unit], workers: int, done: Done
     )
 
 
-def _all_done(waiting: dict[Future[None], Unit], done: Done) -> None:
+def _all_done(waiting: dict[Future[None], WorkUnit], done: Done) -> None:
     """Tell of each unit when it is done; the first failure ends the wait."""
     pending = set(waiting)
     while pending:

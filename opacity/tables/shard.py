@@ -1,15 +1,11 @@
 """Shards: finished parts of a table on disk, each proved by a hash of everything in it.
 
-A shard is named by the hash of its inputs and holds the stored blocks of some spectra over a stretch of the grid.  Its
-file: a line that names the format, a line with the sha256 of all that follows, the length of a JSON header as 8 bytes,
-the header, and the blocks one after the other.  It is written whole and never changed.
+A shard is named by the hash of its inputs and holds the stored blocks of some spectra over a stretch of the grid, in a
+sealed file (`sealed`).
 """
 
 from __future__ import annotations
 
-import errno
-import hashlib
-import json
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -17,14 +13,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.errors import TableError, problem
 from opacity.grids import FloatArray
 from opacity.tables import layout
-from opacity.tables.atomic import write_atomically
 from opacity.tables.blocks import pack_block, unpack_block
-
-_MAGIC = b"opacity shard 1\n"
-ENDING = ".shard"
+from opacity.tables.sealed import read_sealed, write_sealed
 
 
 @dataclass(frozen=True)
@@ -73,7 +65,6 @@ def make_shard(rows: tuple[int, ...], start: int, chunk: int, spectra: FloatArra
 def write_shard(path: Path, shard: Shard) -> None:
     """Write a shard to its final name.  Raises ResourceError for what the file system refuses."""
     header = {
-        "unit": path.stem,
         "rows": list(shard.rows),
         "start": shard.start,
         "stop": shard.stop,
@@ -82,34 +73,13 @@ def write_shard(path: Path, shard: Shard) -> None:
         "largest": repr(shard.largest),
         "notes": shard.notes,
         "hashes": list(shard.hashes),
-        "bytes": [len(block) for block in shard.blocks],
     }
-    text = json.dumps(header, sort_keys=True).encode("ascii")
-    content = b"".join([len(text).to_bytes(8, "little"), text, *shard.blocks])
-    seal = hashlib.sha256(content).hexdigest().encode("ascii")
-    write_atomically(path, b"".join([_MAGIC, seal, b"\n", content]))
+    write_sealed(path, header, shard.blocks)
 
 
 def read_shard(path: Path) -> Shard:
     """A shard from its file.  Raises TableError where it is missing, damaged or not a shard."""
-    try:
-        if not path.is_file():
-            raise FileNotFoundError(errno.ENOENT, "no such file")
-        data = path.read_bytes()
-    except OSError as error:
-        raise TableError(problem(path, f"the shard cannot be read ({error.strerror or error})")) from error
-    begin = len(_MAGIC) + 65
-    seal, content = data[len(_MAGIC) : begin], memoryview(data)[begin:]
-    if not data.startswith(_MAGIC) or seal != hashlib.sha256(content).hexdigest().encode("ascii") + b"\n":
-        raise TableError(problem(path, "the shard is not as it was written"))
-    length = int.from_bytes(content[:8], "little")
-    header = json.loads(bytes(content[8 : 8 + length]))
-    if header.get("unit") != path.stem:
-        raise TableError(problem(path, "the shard is another unit's", expected=path.stem, found=header.get("unit")))
-    blocks, position = [], 8 + length
-    for size in header["bytes"]:
-        blocks.append(bytes(content[position : position + size]))
-        position += size
+    header, blocks = read_sealed(path)
     return Shard(
         tuple(header["rows"]),
         header["start"],
@@ -121,12 +91,3 @@ def read_shard(path: Path) -> Shard:
         tuple(header["hashes"]),
         tuple(blocks),
     )
-
-
-def is_whole(path: Path) -> bool:
-    """Whether a shard is there and as it was written."""
-    try:
-        read_shard(path)
-    except TableError:
-        return False
-    return True

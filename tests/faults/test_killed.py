@@ -18,7 +18,7 @@ from opacity.pipeline.inputs import load_inputs
 from opacity.pipeline.plan import make_plan
 from opacity.pipeline.units import parted
 from opacity.recipe.load import load_recipe
-from opacity.tables.shard import is_whole
+from opacity.tables.sealed import is_whole
 
 from .conftest import UNITS, files_in, table_hash
 
