@@ -41,6 +41,25 @@ def rosseland_mean(sigma: FloatArray, wavenumber: FloatArray, temperature: float
     return np.asarray((1.0 / resistance).reshape(np.shape(sigma)[:-1]))
 
 
+def mean_sums(sigma: FloatArray, wavenumber: FloatArray, temperature: float, reference: float) -> FloatArray:
+    """What Planck and Rosseland means of a spectrum (n_nu,) are made of, (4,): sums over its points' cells of B sigma,
+    B, dB/dT / sigma (infinite where sigma is 0) and dB/dT, in one unit for all stretches of a grid.
+
+    Those of adjoining stretches may be added; `reference` (cm-1) is the lowest wavenumber of all.  The means are the
+    first over the second and the fourth over the third.
+    """
+    x = SECOND_RADIATION * wavenumber / temperature
+    start = SECOND_RADIATION * max(reference, 1e-6) / temperature
+    with np.errstate(divide="ignore", invalid="ignore"):
+        planck = np.where(x > 0.0, x**3 * np.exp(start - x) / -np.expm1(-x), 0.0)
+        slope = np.where(x > 0.0, planck * x / -np.expm1(-x), 0.0)
+    widths = cell_widths(wavenumber)
+    planck, slope = planck * widths, slope * widths
+    with np.errstate(divide="ignore", over="ignore"):
+        resistance = float(np.sum(np.where(slope > 0.0, slope / sigma, 0.0)))
+    return np.array([np.sum(planck * sigma), np.sum(planck), resistance, np.sum(slope)])
+
+
 def _weights(wavenumber: FloatArray, temperature: float, *, rosseland: bool) -> FloatArray:
     """B or dB/dT times the widths of the points' cells, sum 1, (n_nu,)."""
     expected = "a number above 0 K"

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Any
 
 from opacity.errors import RecipeError
 from opacity.recipe.document import parse, read_text
 from opacity.recipe.faults import Faults
 from opacity.recipe.grid import read_grid
+from opacity.recipe.k_coefficient import read_k_coefficient
 from opacity.recipe.line_lists import read_line_lists
 from opacity.recipe.model import Recipe
 from opacity.recipe.sections import (
@@ -30,9 +30,9 @@ SECTIONS = (
     "profile",
     "grid",
     "cross_section",
+    "k_coefficient",
     "band_strength",
 )
-LATER_SECTIONS = ("k_coefficient",)
 
 
 def load_recipe(path: str | Path) -> Recipe:
@@ -45,11 +45,11 @@ def load_recipe(path: str | Path) -> Recipe:
     text = read_text(path)
     document, lines = parse(path, text)
     faults = Faults(str(path), lines)
-    read_now = {name: value for name, value in document.items() if name not in LATER_SECTIONS}
-    root = Table(faults, (), read_now, SECTIONS)
+    root = Table(faults, (), document, SECTIONS)
     folder = path.parent
     molecule = read_molecule(root)
     line_lists = read_line_lists(root, folder)
+    grid = read_grid(root)
     recipe = Recipe(
         path=path,
         text=text,
@@ -59,22 +59,22 @@ def load_recipe(path: str | Path) -> Recipe:
         partition_function=read_partition_function(root, folder, line_lists),
         broadening=read_broadening(root, folder),
         profile=read_profile(root),
-        grid=read_grid(root),
+        grid=grid,
         band_strengths=read_band_strengths(root),
+        cross_section="cross_section" in document,
+        k_coefficient=read_k_coefficient(root, grid),
     )
-    _check_tables_wanted(root, document)
+    _check_tables_wanted(root)
     problems = faults.problems()
     if problems:
         raise RecipeError(problems)
     return recipe
 
 
-def _check_tables_wanted(root: Table, document: dict[str, Any]) -> None:
-    """[cross_section] says that this table is wanted; it has no keys."""
-    for name in LATER_SECTIONS:
-        if name in document:
-            what = "not in this version, which writes cross-section tables only"
-            root.faults.add(root.path(name), what, remedy="remove the section")
+def _check_tables_wanted(root: Table) -> None:
+    """[cross_section] says that this table is wanted; it has no keys.  One table at least is."""
+    if "k_coefficient" in root and "cross_section" not in root:
+        return
     values = root.table("cross_section", "an empty section [cross_section]: the table wanted")
     if values:
         Table(root.faults, root.path("cross_section"), values, ())

@@ -140,8 +140,35 @@ class BandStrength:
 
 
 @dataclass(frozen=True)
+class Bands:
+    """How bands are given: `kind` is "resolving_power" or "width" (cm-1) over the grid's range, with one value, or
+    "edges" (cm-1) or "wavelength" (micrometres in vacuum), with all of them.
+    """
+
+    kind: str
+    values: tuple[float, ...]
+
+
+@dataclass(frozen=True)
+class KCoefficientChoice:
+    """A k-coefficient table: `g_points` is None where as many are wanted as `transmission_error` asks for.
+
+    `weights` are "optimised" for all nodes and bands, "optimised-per-band" or "fixed".
+    """
+
+    bands: Bands
+    g_points: int | None
+    transmission_error: float
+    quadrature: str
+    weights: str
+
+
+@dataclass(frozen=True)
 class Recipe:
-    """A whole recipe.  `abundance` is "terrestrial", "pure", or fractions by isotopologue."""
+    """A whole recipe.  `abundance` is "terrestrial", "pure", or fractions by isotopologue.
+
+    `cross_section` and `k_coefficient` say which tables are wanted, one of them at least.
+    """
 
     path: Path
     text: str
@@ -153,6 +180,8 @@ class Recipe:
     profile: Profile
     grid: Grid
     band_strengths: tuple[BandStrength, ...] = ()
+    cross_section: bool = True
+    k_coefficient: KCoefficientChoice | None = None
 
     @property
     def name(self) -> str:
