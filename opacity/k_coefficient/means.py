@@ -16,6 +16,7 @@ from opacity.constants import SECOND_RADIATION
 from opacity.errors import InputError, problem
 from opacity.grids import FloatArray, cell_widths
 from opacity.k_coefficient.collapse import checked_spectra
+from opacity.kernels.means import add_mean_sums
 
 
 def planck_mean(sigma: FloatArray, wavenumber: FloatArray, temperature: float) -> FloatArray:
@@ -45,19 +46,21 @@ def mean_sums(sigma: FloatArray, wavenumber: FloatArray, temperature: float, ref
     """What Planck and Rosseland means of a spectrum (n_nu,) are made of, (4,): sums over its points' cells of B sigma,
     B, dB/dT / sigma (infinite where sigma is 0) and dB/dT, in one unit for all stretches of a grid.
 
-    Those of adjoining stretches may be added; `reference` (cm-1) is the lowest wavenumber of all.  The means are the
-    first over the second and the fourth over the third.
+    Those of adjoining stretches may be added and `means_of_sums` makes the means.  `wavenumber` (n_nu,) is evenly
+    spaced and `reference` (cm-1) the lowest one of all stretches.
     """
-    x = SECOND_RADIATION * wavenumber / temperature
-    start = SECOND_RADIATION * max(reference, 1e-6) / temperature
+    scale, sums = SECOND_RADIATION / temperature, np.zeros(4)
+    first, last = float(wavenumber[0]), float(wavenumber[-1])
+    step = (last - first) / (wavenumber.size - 1)
+    add_mean_sums(sums, sigma, first, step, scale, scale * reference)
+    return sums
+
+
+def means_of_sums(sums: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Planck and Rosseland means (...,) of sums (..., 4); 0 where the weights themselves are too small for a number."""
     with np.errstate(divide="ignore", invalid="ignore"):
-        planck = np.where(x > 0.0, x**3 * np.exp(start - x) / -np.expm1(-x), 0.0)
-        slope = np.where(x > 0.0, planck * x / -np.expm1(-x), 0.0)
-    widths = cell_widths(wavenumber)
-    planck, slope = planck * widths, slope * widths
-    with np.errstate(divide="ignore", over="ignore"):
-        resistance = float(np.sum(np.where(slope > 0.0, slope / sigma, 0.0)))
-    return np.array([np.sum(planck * sigma), np.sum(planck), resistance, np.sum(slope)])
+        planck, rosseland = sums[..., 0] / sums[..., 1], sums[..., 3] / sums[..., 2]
+    return np.nan_to_num(planck, posinf=0.0), np.nan_to_num(rosseland, posinf=0.0)
 
 
 def _weights(wavenumber: FloatArray, temperature: float, *, rosseland: bool) -> FloatArray:

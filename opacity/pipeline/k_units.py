@@ -9,39 +9,36 @@ from __future__ import annotations
 import hashlib
 import json
 import math
+from collections.abc import Sequence
 from concurrent.futures import Executor
 from dataclasses import dataclass
-from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
 
-from opacity.check.closure import resolution_of
-from opacity.cross_sections.compute import NodeSum, add_spectra
-from opacity.cross_sections.prepare import LinesAtTemperature
-from opacity.cross_sections.source import LineSource, pieces
-from opacity.cross_sections.tolerance import regions
+from opacity.cross_sections.source import LINES_AT_ONCE, LineSource
 from opacity.grids import FloatArray
 from opacity.k_coefficient.bands import edges_of_resolving_power, edges_of_wavelengths, edges_of_width
-from opacity.k_coefficient.collapse import N_CELLS, fine_cells
+from opacity.k_coefficient.collapse import N_CELLS
 from opacity.k_coefficient.means import mean_sums
+from opacity.k_coefficient.spectra import FEWEST_POINTS, POINTS_A_HALF_WIDTH, collapsed, lines_of_bands, margin_of
 from opacity.kernels.jit import source_hash
-from opacity.pipeline.units import NODES_PER_READING, WINDOW, margin_of
+from opacity.kernels.line_width import doppler_share
 from opacity.recipe.model import Recipe
 from opacity.tables.band_shard import BandShard, write_band_shard
 from opacity.tables.sealed import ENDING
 
-POINTS_A_HALF_WIDTH = 2.0
-"""Points to a half-width (HWHM) of the narrowest line."""
-FEWEST_POINTS = 512
-"""Points that a band has at least."""
-MOST_POINTS = 1 << 22
-"""Points of a spectrum at most: where more would be needed the step is coarser, and the table says at which nodes."""
+POINTS_A_UNIT = 1 << 20
+"""Points of a unit's spectrum at its coldest node, where it has more bands than one."""
+VALUES_A_UNIT = 1 << 24
+"""Points of all spectra of a unit, where one temperature has fewer."""
 
 
 @dataclass(frozen=True)
 class BandUnit:
-    """Bands from `first` to before `last` at the nodes `rows`; `name` is the hash of its inputs."""
+    """Bands from `first` to before `last` at the nodes `rows` (numbers in stored order); `name` is the hash of its
+    inputs.
+    """
 
     number: int
     first: int
@@ -52,6 +49,10 @@ class BandUnit:
     def path(self, folder: Path) -> Path:
         """Where its shard lies."""
         return folder / f"{self.name}{ENDING}"
+
+    def do(self, recipe: Recipe, source: LineSource, path: Path, executor: Executor | None = None) -> None:
+        """Compute the unit and write its shard."""
+        write_band_shard(path, compute_bands(recipe, source, self, executor))
 
 
 def band_edges(recipe: Recipe) -> FloatArray:
@@ -66,73 +67,77 @@ def band_edges(recipe: Recipe) -> FloatArray:
     return edges_of_wavelengths(bands.values) if bands.kind == "wavelength" else np.array(bands.values)
 
 
-def band_units(recipe: Recipe, inputs_sha256: str) -> tuple[BandUnit, ...]:
-    """All units: bands that have about a window of the recipe's own points together, nodes a temperature or more."""
-    edges, nodes = band_edges(recipe), len(recipe.grid.node_list())
+def band_units(recipe: Recipe, source: LineSource, inputs_sha256: str, heaviest: float) -> tuple[BandUnit, ...]:
+    """All units; `heaviest` is the mass (g/mol) of the heaviest isotopologue, whose lines are the narrowest."""
+    edges, nodes = band_edges(recipe), recipe.grid.node_list()
     pressures = len(recipe.grid.pressure) if recipe.grid.nodes is None else 1
-    size = pressures * math.ceil(NODES_PER_READING / pressures)
-    at = np.searchsorted(recipe.grid.wavenumber, edges) // WINDOW
-    starts = [0, *(int(i) for i in np.flatnonzero(np.diff(at[:-1])) + 1), edges.size - 1]
+    coldest = min(temperature for temperature, _ in nodes)
+    points = _points_at_most(edges, coldest, heaviest)
     found: list[BandUnit] = []
-    for first, last in pairwise(starts):
-        for row in range(0, nodes, size):
-            rows = tuple(range(row, min(row + size, nodes)))
+    for first, last in _groups(edges, points, source, margin_of(recipe.profile)):
+        temperatures = max(VALUES_A_UNIT // int(pressures * points[first:last].sum()), 1)
+        size = pressures * min(temperatures, math.ceil(len(nodes) / pressures))
+        for row in range(0, len(nodes), size):
+            rows = tuple(range(row, min(row + size, len(nodes))))
             text = json.dumps([inputs_sha256, source_hash(), "bands", first, last, rows[0], rows[-1]])
             name = hashlib.sha256(text.encode("ascii")).hexdigest()[:32]
             found.append(BandUnit(len(found), first, last, rows, name))
     return tuple(found)
 
 
-def compute_bands(recipe: Recipe, source: LineSource, unit: BandUnit) -> BandShard:
-    """The fine cells of a unit, node by node."""
-    edges = band_edges(recipe)[unit.first : unit.last + 1]
+def _points_at_most(edges: FloatArray, coldest: float, heaviest: float) -> FloatArray:
+    """Points of each band where only Doppler's width is left of the lines, at the coldest node, (n_band,)."""
+    share = float(doppler_share(coldest, np.array([heaviest]))[0])
+    widths = np.maximum(edges[:-1] * share, np.diff(edges) * 1e-7)
+    return np.maximum(np.diff(edges) * POINTS_A_HALF_WIDTH / widths, FEWEST_POINTS)
+
+
+def _groups(edges: FloatArray, points: FloatArray, source: LineSource, margin: float) -> list[tuple[int, int]]:
+    """Runs of bands whose spectrum and lines can be held at once; the shortest are one band."""
+    found: list[tuple[int, int]] = []
+    first = 0
+    for band in range(1, points.size + 1):
+        if band == points.size:
+            found.append((first, band))
+            break
+        many = points[first : band + 1].sum() > POINTS_A_UNIT
+        if many or source.count(float(edges[first]) - margin, float(edges[band + 1]) + margin) > LINES_AT_ONCE:
+            found.append((first, band))
+            first = band
+    return found
+
+
+def compute_bands(recipe: Recipe, source: LineSource, unit: BandUnit, executor: Executor | None = None) -> BandShard:
+    """The fine cells of a unit, node by node; with an executor of threads the parts of a node are done side by side."""
+    edges = band_edges(recipe)
+    lowest, edges = float(edges[0]), edges[unit.first : unit.last + 1]
     nodes = [recipe.grid.node_list()[row] for row in unit.rows]
-    cells = np.zeros((len(nodes), edges.size - 1, N_CELLS), dtype=np.float32)
-    sums, points = np.zeros((len(nodes), 4)), np.zeros((len(nodes), 2))
-    margin = margin_of(recipe)
-    parts = list(pieces(source, float(edges[0]) - margin, float(edges[-1]) + margin))
-    for place, (temperature, pressure) in enumerate(nodes):
-        lines = [part.at_temperature(temperature) for part in parts]
-        nu, needed = spectrum_points(recipe, lines, edges, pressure)
-        sigma = spectrum_of(recipe, lines, nu, pressure)
-        cells[place] = fine_cells(sigma, nu, edges)
-        sums[place] = mean_sums(sigma, nu, temperature, float(recipe.grid.wavenumber[0]))
-        points[place] = nu.size, needed
+    places: dict[float, list[int]] = {}
+    for place, (temperature, _) in enumerate(nodes):
+        places.setdefault(temperature, []).append(place)
+    cells = np.empty((len(nodes), edges.size - 1, N_CELLS))
+    sums, points = np.zeros((len(nodes), 4)), np.zeros((len(nodes), edges.size - 1, 2))
+    for lines in lines_of_bands(source, recipe.profile, edges, list(places)):
+        for place in places[lines.temperature]:
+
+            def seen(nu: FloatArray, sigma: FloatArray, place: int = place, t: float = lines.temperature) -> None:
+                sums[place] += mean_sums(sigma, nu, t, lowest)
+
+            one = collapsed(lines, edges, nodes[place][1], executor, seen)
+            cells[place], points[place] = one.cells, one.points
     return BandShard(cells, sums, points)
 
 
-def spectrum_points(
-    recipe: Recipe, lines: list[LinesAtTemperature], edges: FloatArray, pressure: float
-) -> tuple[FloatArray, int]:
-    """Evenly spaced wavenumbers between the first and the last edge that resolve the narrowest line, and how many would
-    have been needed.
-    """
-    ends = edges[[0, -1]]
-    narrowest = min((resolution_of(part, pressure, ends)[2] for part in lines), default=math.inf)
-    step = min(narrowest / POINTS_A_HALF_WIDTH, float(np.min(np.diff(edges))) / FEWEST_POINTS)
-    needed = math.ceil((ends[1] - ends[0]) / step) + 1
-    return np.linspace(ends[0], ends[1], min(needed, MOST_POINTS)), needed
-
-
-def spectrum_of(recipe: Recipe, lines: list[LinesAtTemperature], nu: FloatArray, pressure: float) -> FloatArray:
-    """The cross-section of lines in parts at one node, (n_nu,)."""
-    profile, sigma = recipe.profile, np.zeros(nu.size)
-    limits = regions(profile.tolerance, profile.plinth)
-    for part in lines:
-        node = [NodeSum(part, pressure, profile.cutoff.at(pressure))]
-        add_spectra([sigma], node, nu, limits, profile.plinth, profile.chi_table)
-    return sigma
-
-
-@dataclass(frozen=True)
-class BandWork:
-    """What units of bands are computed from, and where their shards go."""
-
-    recipe: Recipe
-    source: LineSource
-    shards: Path
-
-    def do(self, unit: BandUnit, executor: Executor | None = None) -> None:
-        """Compute a unit and write its shard."""
-        del executor
-        write_band_shard(unit.path(self.shards), compute_bands(self.recipe, self.source, unit))
+def missed_points(points: FloatArray, nodes: Sequence[tuple[float, float]]) -> list[str]:
+    """A warning where bands had fewer points than they needed; `points` (n_node, n_band, 2)."""
+    short = np.argwhere(points[..., 0] < points[..., 1])
+    if not short.size:
+        return []
+    node, band = short[np.argmax(points[tuple(short.T)][:, 1])]
+    temperature, pressure = nodes[node]
+    had, needed = points[node, band]
+    place = f"at {temperature:g} K, {pressure:g} bar band {band} has {had:.3g} points and needs {needed:.3g}"
+    return [
+        f"spectra of {len(short)} bands and nodes are too coarse for their lines: {place};"
+        " take narrower bands or a higher lowest pressure"
+    ]

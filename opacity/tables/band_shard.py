@@ -10,14 +10,16 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from opacity.errors import LineListError, problem
 from opacity.grids import FloatArray
+from opacity.tables import layout
 from opacity.tables.sealed import read_sealed, write_sealed
 
 
 @dataclass(frozen=True)
 class BandShard:
-    """Fine `cells` (n_row, n_band, n_cell) as f4 or f8; `sums` (n_row, 4) that means are made of; `points` (n_row, 2)
-    that the spectrum of a node had, and would have needed.
+    """Fine `cells` (n_row, n_band, n_cell), cm2; `sums` (n_row, 4) that means are made of; `points` (n_row, n_band, 2)
+    that the spectrum of a band had, and would have needed.
     """
 
     cells: NDArray[Any]
@@ -26,21 +28,25 @@ class BandShard:
 
 
 def write_band_shard(path: Path, shard: BandShard) -> None:
-    """Write a shard to its final name.  Raises ResourceError for what the file system refuses."""
-    arrays = {name: np.ascontiguousarray(getattr(shard, name)) for name in ("cells", "sums", "points")}
-    blocks = [zlib.compress(one.tobytes(), 1) for one in arrays.values()]
-    header = {
-        "arrays": [[name, one.dtype.str, list(one.shape)] for name, one in arrays.items()],
-        "bytes": [len(block) for block in blocks],
-    }
-    write_sealed(path, header, blocks)
+    """Write a shard to its final name, the cells as f4 where all that are not 0 lie in its range.
+
+    Raises LineListError for values that are not finite, ResourceError for what the file system refuses.
+    """
+    positive = shard.cells[shard.cells > 0.0]
+    if not np.all(np.isfinite(shard.cells)):
+        raise LineListError(problem(path, "a cell is not finite: a line has impossible values"))
+    dtype = layout.stored_type(float(positive.min(initial=np.inf)), float(positive.max(initial=0.0)))
+    arrays = {"cells": shard.cells.astype(dtype), "sums": shard.sums, "points": shard.points}
+    blocks = [zlib.compress(np.ascontiguousarray(one).tobytes(), 1) for one in arrays.values()]
+    write_sealed(path, {"arrays": [[name, one.dtype.str, one.shape] for name, one in arrays.items()]}, blocks)
 
 
 def read_band_shard(path: Path) -> BandShard:
     """A shard from its file.  Raises TableError where it is missing, damaged or not one."""
     header, blocks = read_sealed(path)
-    arrays = {
-        name: np.frombuffer(zlib.decompress(block), dtype).reshape(shape)
-        for (name, dtype, shape), block in zip(header["arrays"], blocks, strict=True)
-    }
-    return BandShard(**arrays)
+    return BandShard(
+        **{
+            name: np.frombuffer(zlib.decompress(block), dtype).reshape(shape)
+            for (name, dtype, shape), block in zip(header["arrays"], blocks, strict=True)
+        }
+    )

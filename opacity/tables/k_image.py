@@ -1,29 +1,25 @@
-"""A k-coefficient table as the bytes of an HDF5 file, built in memory: the same table gives the same bytes."""
+"""A k-coefficient table in HDF5: the same table gives the same bytes."""
 
 from __future__ import annotations
 
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from opacity.tables import image, k_layout, layout
 from opacity.tables.blocks import pack_block
-from opacity.tables.k_model import KTable
+from opacity.tables.k_model import KTable, NodeValues
 
 
-def k_table_image(table: KTable, types: dict[str, np.dtype[Any]]) -> bytes:
-    """The HDF5 file of `table`; `types` gives the type, f4 or f8, of k_coefficient, and of any fine_cells."""
+def write_values(file: Any, table: KTable, types: dict[str, np.dtype[Any]]) -> dict[str, Any]:
+    """Write all of `table` but its texts into an open HDF5 file; the datasets of the values by name.
 
-    def fill(file: Any) -> None:
-        _describe(file, table)
-        _write_arrays(file, table)
-        image.add_dimension(file, "hex_digit", layout.HEX_DIGITS)
-        for name, dtype in types.items():
-            _write_values(file, table, name, dtype)
-        image.write_texts(file, table.frame, table.checks)
-
-    return image.image_of(fill)
+    `types` gives the type, f4 or f8, of k_coefficient, and of any fine_cells.
+    """
+    _describe(file, table)
+    _write_arrays(file, table)
+    image.add_dimension(file, "hex_digit", layout.HEX_DIGITS)
+    return {name: _write_values(file, table, name, dtype) for name, dtype in types.items()}
 
 
 def _describe(file: Any, table: KTable) -> None:
@@ -61,9 +57,9 @@ def _write_array(file: Any, table: KTable, name: str, dimensions: tuple[str, ...
     )
 
 
-def _write_values(file: Any, table: KTable, name: str, dtype: np.dtype[Any]) -> None:
+def _write_values(file: Any, table: KTable, name: str, dtype: np.dtype[Any]) -> Any:
     """The values of every node, a chunk each, and their sha256 as characters, (..., 64)."""
-    values: NDArray[Any] = getattr(table, name)
+    values: NodeValues = getattr(table, name)
     own = ("band", "g" if name == k_layout.K_COEFFICIENT else "cell")
     attributes = {**k_layout.ATTRIBUTES[name], "units": k_layout.UNITS[name]}
     shape = values.shape[-2:]
@@ -77,3 +73,4 @@ def _write_values(file: Any, table: KTable, name: str, dtype: np.dtype[Any]) -> 
     written = file.create_dataset(k_layout.hashes_of(name), data=hashes, track_order=True)
     image.set_attributes(written, k_layout.hash_attributes(name))
     image.attach(file, written, (*layout.node_dimensions(table.profile), "hex_digit"))
+    return dataset

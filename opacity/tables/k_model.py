@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any, NamedTuple
+from typing import Any, NamedTuple, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +14,17 @@ from opacity.tables.model import TableFrame
 
 _ROUNDING = 1e-9
 """By how much sums and differences of weights and bounds may be off."""
+
+
+class NodeValues(Protocol):
+    """Values by node: an array, or what makes those of a node when it is asked for them."""
+
+    @property
+    def shape(self) -> tuple[int, ...]:
+        """The shape of the array that they are, or would be."""
+
+    def __getitem__(self, node: Any, /) -> Any:
+        """The values of a node, given by the tuple of its indices."""
 
 
 @dataclass(frozen=True)
@@ -38,13 +49,13 @@ class KTable:
     g: FloatArray
     g_bounds: FloatArray
     g_weight: FloatArray
-    k_coefficient: NDArray[Any]
+    k_coefficient: NodeValues
     quadrature: str
     recipe: str
     provenance: dict[str, Any]
     checks: dict[str, Any]
     profile: bool = False
-    fine_cells: NDArray[Any] | None = None
+    fine_cells: NodeValues | None = None
     cell_bounds: FloatArray | None = None
     planck_mean: FloatArray | None = None
     rosseland_mean: FloatArray | None = None

@@ -2,20 +2,26 @@
 
 from __future__ import annotations
 
+import contextlib
 import math
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
+import h5py
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.errors import TableError, problem
-from opacity.tables import k_layout, layout, write
+from opacity.errors import ResourceError, TableError, problem
+from opacity.grids import FloatArray
+from opacity.tables import image, k_layout, layout, write
+from opacity.tables.atomic import CarefulFile, renamed_when_done
 from opacity.tables.image import as_json
-from opacity.tables.k_image import k_table_image
+from opacity.tables.k_image import write_values
 from opacity.tables.k_model import (
     Fault,
     KTable,
+    NodeValues,
     fault_of_bands,
     fault_of_cells,
     fault_of_quadrature,
@@ -24,20 +30,53 @@ from opacity.tables.k_model import (
 from opacity.tables.k_read import open_k_table
 
 
-def write_k_table(path: Path, table: KTable) -> Path:
-    """Write `table` to `path` (HDF5) and return the path.
+def write_k_table(
+    path: Path, table: KTable, check: Callable[[KInProgress], dict[str, Any]] | None = None
+) -> dict[str, Any]:
+    """Write `table` to `path` (HDF5), one node at a time in memory; the checks that were stored.
 
-    The file is built in memory, written beside `path`, read back from the disk, compared node by node and only then
-    given its name.  The same table gives the same bytes.  Raises TableError for a table that may not be stored
-    (`check_k_table`), ResourceError where memory or the file system refuses; nothing is left behind then.
+    `check` makes the checks of the values as they are stored, which are those of `table` without it.  The file is
+    written beside `path`, synced, read back from the disk, compared node by node and only then given its name.  The
+    same table gives the same bytes.  Raises TableError for a table that may not be stored (`check_k_table`),
+    ResourceError where memory or the file system refuses; nothing is left behind then.
     """
     path = Path(path)
     types = check_k_table(path, table)
+    with renamed_when_done(path) as temporary, contextlib.closing(CarefulFile(temporary)) as file:
+        try:
+            with h5py.File(file, "w", driver="fileobj", libver=layout.LIBVER, track_order=True) as hdf5:
+                values = write_values(hdf5, table, types)
+                file.raise_failure()
+                checks = table.checks if check is None else check(KInProgress(table, values))
+                write.check_text(path, lambda: as_json(checks))
+                image.write_texts(hdf5, table.frame, checks)
+            file.finish()
+        except MemoryError as error:
+            raise ResourceError(problem(path, "not enough memory to put the table together")) from error
+        except (RuntimeError, ValueError, OSError):
+            # What HDF5 makes of a failure of the disk says less than the failure itself.
+            file.raise_failure()
+            raise
+        write.verify_written(path, temporary, open_k_table)
+    return checks
 
-    def verify(final: Path, written: Path) -> None:
-        write.verify_written(final, written, open_k_table)
 
-    return write.write_image(path, lambda: k_table_image(table, types), verify)
+class KInProgress:
+    """A k-coefficient table whose values are all written, before its checks are; read as it is stored."""
+
+    def __init__(self, table: KTable, values: dict[str, Any]) -> None:
+        self._table, self._values = table, values
+        self.temperature, self.pressure, self.profile = table.temperature, table.pressure, table.profile
+        self.band_bounds, self.quadrature = table.band_bounds, table.quadrature
+        self.g_bounds, self.g_weight = table.g_bounds, table.g_weight
+
+    def k(self, *node: int) -> FloatArray:
+        """k-coefficients of a node (cm2/molecule), (n_band, n_g)."""
+        return np.asarray(self._values[k_layout.K_COEFFICIENT][node], dtype=np.float64)
+
+    def cells(self, *node: int) -> FloatArray:
+        """Means over the fine cells of a node (cm2/molecule), (n_band, n_cell)."""
+        return np.asarray(self._values[k_layout.FINE_CELLS][node], dtype=np.float64)
 
 
 def check_k_table(path: Path, table: KTable) -> dict[str, np.dtype[Any]]:
@@ -70,7 +109,7 @@ def _refuse(path: Path, fault: Fault | None) -> None:
         raise TableError(problem(path, f"impossible {fault.what}", expected=fault.expected, found=fault.found))
 
 
-def _check_shape(path: Path, name: str, values: NDArray[Any], expected: tuple[int, ...]) -> None:
+def _check_shape(path: Path, name: str, values: NodeValues, expected: tuple[int, ...]) -> None:
     if values.shape != expected:
         raise TableError(problem(path, f"{name} does not fit its axes", expected=expected, found=values.shape))
 
@@ -86,7 +125,7 @@ def _check_mean(path: Path, table: KTable, name: str) -> None:
         raise TableError(_impossible(path, f"{name} at {_place(table, node)}", values[node]))
 
 
-def _stored_type(path: Path, table: KTable, name: str, values: NDArray[Any]) -> np.dtype[Any]:
+def _stored_type(path: Path, table: KTable, name: str, values: NodeValues) -> np.dtype[Any]:
     """The type that fits all values; TableError at the first that may not be stored."""
     smallest, largest = math.inf, 0.0
     for node in np.ndindex(table.nodes):

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from opacity.tables.k_model import KTable
+from opacity.tables.k_write import write_k_table
 
 
 def intervals(edges):
@@ -59,3 +60,9 @@ def invented_k_table(
     if means:
         content["planck_mean"], content["rosseland_mean"] = scale * (1.0 + random.random((2, *nodes)))
     return KTable(**{**content, **changes})
+
+
+def written(path, table):
+    """The path of the table, written."""
+    write_k_table(path, table)
+    return path

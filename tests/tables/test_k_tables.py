@@ -21,14 +21,13 @@ from opacity.cli.main import main
 from opacity.errors import InputError, OpacityError, TableError
 from opacity.tables.k_draw import draw_k_table
 from opacity.tables.k_read import KCoefficientTable, open_k_table
-from opacity.tables.k_write import write_k_table
 from opacity.tables.read import Table, open_table
 from opacity.tables.write import write_cross_section_table
 
 _SPEC = importlib.util.spec_from_file_location("k_tables", Path(__file__).with_name("k_tables.py"))
 _MODULE = importlib.util.module_from_spec(_SPEC)
 _SPEC.loader.exec_module(_MODULE)
-make_k_table = _MODULE.invented_k_table
+make_k_table, written = _MODULE.invented_k_table, _MODULE.written
 
 ARRAYS = ("temperature", "pressure", "band", "band_bounds", "g", "g_bounds", "g_weight")
 OPTIONAL = ("cell_bounds", "planck_mean", "rosseland_mean")
@@ -51,7 +50,7 @@ def table(request):
 @pytest.mark.parametrize(("scale", "dtype"), [(1.0, "<f4"), (1e-20, "<f8")])
 def test_round_trip(table, tmp_path, scale, dtype):
     values = table.k_coefficient * scale
-    with open_k_table(write_k_table(tmp_path / "a.h5", replace(table, k_coefficient=values))) as read:
+    with open_k_table(written(tmp_path / "a.h5", replace(table, k_coefficient=values))) as read:
         read.verify()
         for name in (*ARRAYS, *OPTIONAL):
             np.testing.assert_array_equal(getattr(read, name), getattr(table, name))
@@ -67,7 +66,7 @@ def test_round_trip(table, tmp_path, scale, dtype):
 
 
 def test_the_same_table_gives_the_same_bytes(tmp_path):
-    files = [write_k_table(tmp_path / name, make_k_table(cells=30, means=True)) for name in ("a.h5", "b.h5")]
+    files = [written(tmp_path / name, make_k_table(cells=30, means=True)) for name in ("a.h5", "b.h5")]
     assert files[0].read_bytes() == files[1].read_bytes()
     assert sorted(path.name for path in tmp_path.iterdir()) == ["a.h5", "b.h5"]
 
@@ -75,7 +74,7 @@ def test_the_same_table_gives_the_same_bytes(tmp_path):
 def test_open_table_tells_the_kinds_apart(make_table, tmp_path):
     sigma, k = tmp_path / "a.h5", tmp_path / "b.h5"
     write_cross_section_table(sigma, make_table())
-    write_k_table(k, make_k_table())
+    written(k, make_k_table())
     with opacity.open_table(sigma) as one, opacity.open_table(str(k)) as other:
         assert isinstance(one, Table)
         assert isinstance(other, KCoefficientTable)
@@ -92,7 +91,7 @@ def test_open_table_tells_the_kinds_apart(make_table, tmp_path):
 def test_nodes_are_reproduced_and_order_is_kept(tmp_path):
     """Random values at 5 x 5 nodes make the polynomials overshoot, and k fall with g without the repair."""
     table = make_k_table((200.0, 300.0, 500.0, 800.0, 1200.0), (1e-4, 1e-3, 1e-2, 0.1, 1.0), points=12)
-    with open_k_table(write_k_table(tmp_path / "a.h5", table)) as read:
+    with open_k_table(written(tmp_path / "a.h5", table)) as read:
         np.testing.assert_array_equal(read.at(500.0, 0.1), read.k(2, 3))
         np.testing.assert_array_equal(read.at(100.0, 9.0, clamp=True), read.k(0, 4))
         for method in ("cubic", "linear"):
@@ -114,13 +113,13 @@ def test_interpolation_is_exact_for_powers(tmp_path):
     temperatures, pressures = np.array([200.0, 300.0, 500.0, 800.0]), np.array([1e-3, 1e-2, 0.1, 1.0])
     power = 1e-20 * (temperatures[:, None] / 300.0) ** -1.5 * pressures**0.7
     k = power[..., None, None] * np.arange(1.0, 5.0) * np.ones((3, 1))
-    with open_k_table(write_k_table(tmp_path / "a.h5", make_k_table(temperatures, pressures, k_coefficient=k))) as read:
+    with open_k_table(written(tmp_path / "a.h5", make_k_table(temperatures, pressures, k_coefficient=k))) as read:
         expected = 1e-20 * (400.0 / 300.0) ** -1.5 * 0.03**0.7 * np.arange(1.0, 5.0)
         np.testing.assert_allclose(read.at(400.0, 0.03)[1], expected, rtol=1e-6)  # stored as f4
 
 
 def test_a_profile_has_its_own_nodes_only(tmp_path):
-    with open_k_table(write_k_table(tmp_path / "a.h5", make_k_table(**PROFILE))) as read:
+    with open_k_table(written(tmp_path / "a.h5", make_k_table(**PROFILE))) as read:
         np.testing.assert_array_equal(read.at(500.0, 1e-5), read.k(2))
         with pytest.raises(TableError, match="own nodes only"):
             read.at(500.0, 1e-3)
@@ -175,7 +174,7 @@ def _with(**changes):
 def test_wrong_contents_are_refused(tmp_path, change, message):
     table = make_k_table(cells=5, means=True)
     with pytest.raises(TableError, match=message) as caught:
-        write_k_table(tmp_path / "a.h5", replace(table, **change(table)))
+        written(tmp_path / "a.h5", replace(table, **change(table)))
     assert re.fullmatch(r".*a\.h5: [^\n]+", str(caught.value))
     assert list(tmp_path.iterdir()) == []
 
@@ -191,7 +190,7 @@ def _content(path):
 
 def test_flipped_bits(tmp_path):
     """At 2000 places all over the file; most refuse, the rest are in parts that hold nothing of the table."""
-    small = write_k_table(tmp_path / "a.h5", make_k_table((300.0, 500.0), (0.1, 1.0), cells=60, means=True))
+    small = written(tmp_path / "a.h5", make_k_table((300.0, 500.0), (0.1, 1.0), cells=60, means=True))
     good, expected = small.read_bytes(), _content(small)
     random = np.random.default_rng(11)
     refused = 0
@@ -213,7 +212,7 @@ def test_flipped_bits(tmp_path):
 
 
 def test_a_damaged_node_is_named(tmp_path):
-    path = write_k_table(tmp_path / "a.h5", make_k_table(cells=60))
+    path = written(tmp_path / "a.h5", make_k_table(cells=60))
     with h5py.File(path, "r+") as file:
         for name in ("k_coefficient", "fine_cells"):
             file[name][1, 2] = file[name][1, 1]
@@ -231,7 +230,7 @@ def test_a_damaged_node_is_named(tmp_path):
     "name", ["band", "band_bounds", "g", "g_bounds", "g_weight", "k_coefficient", "k_coefficient_sha256", "cell_bounds"]
 )
 def test_missing_parts_are_named(tmp_path, name):
-    path = write_k_table(tmp_path / "a.h5", make_k_table(cells=5))
+    path = written(tmp_path / "a.h5", make_k_table(cells=5))
     with h5py.File(path, "r+") as file:
         del file[name]
     with pytest.raises(TableError, match=f"dataset {name} is missing"):
@@ -239,7 +238,7 @@ def test_missing_parts_are_named(tmp_path, name):
 
 
 def test_netcdf_reads_it(table, tmp_path):
-    with netCDF4.Dataset(write_k_table(tmp_path / "a.nc", table)) as file:
+    with netCDF4.Dataset(written(tmp_path / "a.nc", table)) as file:
         nodes = ("node",) if table.profile else ("temperature", "pressure")
         own = ("band",) if table.g_weight.ndim == 2 else ()
         assert file["k_coefficient"].dimensions == (*nodes, "band", "g")
@@ -255,7 +254,7 @@ def test_netcdf_reads_it(table, tmp_path):
 
 
 def test_the_climate_and_forecast_conventions_are_kept(table, tmp_path):
-    path = write_k_table(tmp_path / "a.nc", table)
+    path = written(tmp_path / "a.nc", table)
     checker = Path(sys.executable).with_name("compliance-checker")
     command = [checker, "-t", "cf:1.11", "-s", "check_dimension_order", "-c", "strict", path]
     done = subprocess.run(command, capture_output=True, text=True, check=False)
@@ -265,7 +264,7 @@ def test_the_climate_and_forecast_conventions_are_kept(table, tmp_path):
 
 @pytest.mark.parametrize("checks", [{}, {"certificate": 3}, {"certificate": {"bands": [{"largest": "x"}]}}, None])
 def test_every_kind_of_table_is_drawn_and_shown(table, tmp_path, checks, capsys):
-    path = write_k_table(tmp_path / "a.h5", table if checks is None else replace(table, checks=checks))
+    path = written(tmp_path / "a.h5", table if checks is None else replace(table, checks=checks))
     with open_k_table(path) as read:
         picture = draw_k_table(read, tmp_path / "a.png")
     image = matplotlib.image.imread(picture)

@@ -1,0 +1,51 @@
+"""Sums over an evenly spaced spectrum that its Planck and Rosseland means are made of."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numpy.typing import NDArray
+
+from opacity.kernels.jit import jit, jit_inline
+
+Array = NDArray[np.float64]
+
+BLOCK = 32
+"""Points between which the weights are interpolated: they change over hundreds of cm-1, the spectrum at each point."""
+
+
+@jit_inline
+def _planck(x: float, start: float) -> tuple[float, float]:
+    """Planck's function and its slope in T at x = c2 nu / T, both without their constants and times exp(start)."""
+    if x <= 0.0:
+        return 0.0, 0.0
+    share = -math.expm1(-x)
+    planck = x * x * x * math.exp(start - x) / share
+    return planck, planck * x / share
+
+
+@jit
+def add_mean_sums(sums: Array, sigma: Array, first: float, step: float, scale: float, start: float) -> None:
+    """Add sums over points of B sigma, B, dB/dT / sigma and dB/dT times the widths of their cells to `sums` (4,).
+
+    Point i lies at first + i step (cm-1); the cells of both ends are half as wide.  `scale` is c2 / T (cm); `start` is
+    scale times the lowest wavenumber of a grid, so that no temperature is too low.  Where sigma is 0 and has weight
+    the third sum is infinite.
+    """
+    size = sigma.size
+    totals = np.zeros(4)
+    for low in range(0, size, BLOCK):
+        high = min(low + BLOCK, size)
+        planck, slope = _planck(scale * (first + low * step), start)
+        end_planck, end_slope = _planck(scale * (first + high * step), start)
+        planck_step, slope_step = (end_planck - planck) / (high - low), (end_slope - slope) / (high - low)
+        for i in range(low, high):
+            weight = step if 0 < i < size - 1 else 0.5 * step
+            b, d = weight * (planck + (i - low) * planck_step), weight * (slope + (i - low) * slope_step)
+            totals[0] += b * sigma[i]
+            totals[1] += b
+            # A weight of 0 lets through nothing, even where sigma is 0.
+            totals[2] += d / sigma[i] if d > 0.0 else 0.0
+            totals[3] += d
+    sums += totals
