@@ -272,10 +272,10 @@ def build(
     A table that is there already and was made from the same inputs is kept.  What was assumed and what there is to be
     warned of stands in the table's `checks`.  Raises OpacityError of the kind that fits.
     """
-    from opacity.pipeline.build import Crew, build_table
+    from opacity.pipeline.build import Crew, build_tables
 
     if workers is not None:
         check_workers(workers)
     _check_flag("processes", processes)
     crew = Crew(workers, "processes" if processes else "threads")
-    return (build_table(recipe, Path(folder), crew=crew, memory=memory, quiet=True).table,)
+    return tuple(made.table for made in build_tables(recipe, Path(folder), crew=crew, memory=memory, quiet=True))

@@ -11,8 +11,8 @@ from opacity.grids import FloatArray
 from opacity.tables import interpolate
 
 
-class Spectra(Protocol):
-    """Axes and spectra of a table: K, bar, cm-1, cm2/molecule."""
+class Nodes(Protocol):
+    """The nodes of a table: K, bar."""
 
     @property
     def temperature(self) -> FloatArray:
@@ -23,12 +23,16 @@ class Spectra(Protocol):
         """Pressures (n_P,), or those of the nodes (n_node,) along a profile."""
 
     @property
-    def wavenumber(self) -> FloatArray:
-        """Wavenumbers (n_nu,)."""
-
-    @property
     def profile(self) -> bool:
         """Whether the nodes are those of a profile."""
+
+
+class Spectra(Nodes, Protocol):
+    """Axes and spectra of a table: K, bar, cm-1, cm2/molecule."""
+
+    @property
+    def wavenumber(self) -> FloatArray:
+        """Wavenumbers (n_nu,)."""
 
     def spectrum(self, *node: int) -> FloatArray:
         """The spectrum of one node, (n_nu,)."""
@@ -37,7 +41,7 @@ class Spectra(Protocol):
 Node = tuple[tuple[int, ...], float, float]
 
 
-def nodes_of(spectra: Spectra) -> list[Node]:
+def nodes_of(spectra: Nodes) -> list[Node]:
     """All nodes as (indices, temperature, pressure), temperature slowest."""
     pairs = (spectra.temperature, spectra.pressure)
     if spectra.profile:

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -74,29 +74,45 @@ class Certificate:
         return asdict(self)
 
 
+class NodeErrors(NamedTuple):
+    """Errors at a node: of `transmission` at `columns` (n_band, n_column), cm-2; relative of the `mean` (n_band,)."""
+
+    columns: FloatArray
+    transmission: FloatArray
+    mean: FloatArray
+
+
+def errors_at_node(k: FloatArray, weights: FloatArray, cells: FloatArray, pressure: float) -> NodeErrors:
+    """Errors of k (n_band, n_g) against fine cells (n_band, N_CELLS), cm2, at a pressure (bar).
+
+    `weights` are (n_g,) or (n_band, n_g).
+    """
+    columns = columns_of(cells, np.full(len(k), pressure))
+    shares = np.broadcast_to(weights, k.shape)
+    errors = transmission(k, shares, columns) - transmission(cells, CELL_WIDTHS, columns)
+    truth = cells @ CELL_WIDTHS
+    mean = np.sum(k * shares, axis=1) - truth
+    return NodeErrors(columns, errors, np.divide(mean, truth, out=np.zeros_like(truth), where=truth > 0.0))
+
+
 class BandErrors:
     """Errors of k against fine cells, gathered node by node; 99th percentiles are good to 1 %."""
 
-    def __init__(self, weights: FloatArray, bands: int) -> None:
-        self._weights = np.atleast_2d(weights)
+    def __init__(self, bands: int) -> None:
         self._largest, self._mean = np.zeros(bands), np.zeros(bands)
         self._node, self._column = np.zeros(bands, dtype=np.int64), np.zeros(bands)
         self._sizes = np.zeros((bands, _BINS), dtype=np.int64)
 
-    def add(self, node: int, k: FloatArray, cells: FloatArray, pressure: float) -> None:
-        """One node: `k` (n_band, n_g) and `cells` (n_band, N_CELLS) in cm2, its pressure in bar."""
-        bands = np.arange(len(k))
-        columns = columns_of(cells, np.full(len(k), pressure))
-        weights = np.broadcast_to(self._weights, k.shape)
-        errors = transmission(k, weights, columns) - transmission(cells, CELL_WIDTHS, columns)
-        worst = np.argmax(np.abs(errors), axis=1)
-        larger = np.abs(errors[bands, worst]) > np.abs(self._largest)
-        self._largest[larger] = errors[bands, worst][larger]
-        self._column[larger], self._node[larger] = columns[bands, worst][larger], node
-        truth = cells @ CELL_WIDTHS
-        mean = np.divide(np.sum(k * weights, axis=1) - truth, truth, out=np.zeros_like(truth), where=truth > 0.0)
-        self._mean = np.where(np.abs(mean) > np.abs(self._mean), mean, self._mean)
-        decades = np.log10(np.maximum(np.abs(errors), _SMALLEST)) - np.log10(_SMALLEST)
+    def add(self, node: int, errors: NodeErrors) -> None:
+        """The errors of one more node, by its number."""
+        bands = np.arange(self._largest.size)
+        worst = np.argmax(np.abs(errors.transmission), axis=1)
+        largest = errors.transmission[bands, worst]
+        larger = np.abs(largest) > np.abs(self._largest)
+        self._largest[larger], self._node[larger] = largest[larger], node
+        self._column[larger] = errors.columns[bands, worst][larger]
+        self._mean = np.where(np.abs(errors.mean) > np.abs(self._mean), errors.mean, self._mean)
+        decades = np.log10(np.maximum(np.abs(errors.transmission), _SMALLEST)) - np.log10(_SMALLEST)
         bins = np.minimum((decades * _BINS_A_DECADE).astype(np.int64), _BINS - 1)
         np.add.at(self._sizes, (np.broadcast_to(bands[:, None], bins.shape), bins), 1)
 
@@ -115,9 +131,9 @@ def band_errors(k: FloatArray, weights: FloatArray, cells: FloatArray, pressure:
 
     `cells` (n_node, n_band, N_CELLS), both in cm2; `pressure` (n_node,) in bar.
     """
-    errors = BandErrors(weights, k.shape[1])
+    errors = BandErrors(k.shape[1])
     for node in range(len(k)):
-        errors.add(node, k[node], cells[node], float(pressure[node]))
+        errors.add(node, errors_at_node(k[node], weights, cells[node], float(pressure[node])))
     return errors.found()
 
 

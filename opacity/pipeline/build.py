@@ -7,7 +7,7 @@ import json
 import os
 import platform
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -20,17 +20,21 @@ from opacity.errors import InUseError, ResourceError, TableError, problem
 from opacity.line_store.lock import locked
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
 from opacity.pipeline.inputs import Inputs, load_inputs
-from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit, shards_of, table_name
+from opacity.pipeline.k_assemble import KJob, ShardCells, assemble_k
+from opacity.pipeline.k_plan import make_k_plan
+from opacity.pipeline.k_units import BandUnit, band_edges
+from opacity.pipeline.kinds import CROSS_SECTION, shards_of, table_name, units_of, wanted
+from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit
 from opacity.pipeline.progress import Progress
 from opacity.pipeline.resources import processor
 from opacity.pipeline.sources import DEFAULT_MEMORY
-from opacity.pipeline.units import Unit, parted
+from opacity.pipeline.units import Unit
 from opacity.pipeline.workers import Origin, Work, WorkUnit, in_processes, in_threads
 from opacity.recipe.model import Recipe
 from opacity.tables.assemble import Assembly, assemble_table, stored_type_of
 from opacity.tables.atomic import remove_leftovers, write_atomically
 from opacity.tables.model import TableFrame
-from opacity.tables.read import open_table
+from opacity.tables.open import open_table
 from opacity.tables.sealed import ENDING, is_whole
 from opacity.tables.shard import Shard, read_shard
 
@@ -76,7 +80,7 @@ class BuildResult:
         return self.plan is None
 
 
-def build_table(
+def build_tables(
     recipe: Recipe,
     folder: Path,
     *,
@@ -84,8 +88,23 @@ def build_table(
     memory: int = DEFAULT_MEMORY,
     quiet: bool = False,
     announce: Callable[[Plan], None] = lambda plan: None,
+) -> tuple[BuildResult, ...]:
+    """Build all tables that a recipe asks for, as `build_table` does each."""
+    choice: dict[str, Any] = {"crew": crew, "memory": memory, "quiet": quiet, "announce": announce}
+    return tuple(build_table(recipe, folder, kind, **choice) for kind in wanted(recipe))
+
+
+def build_table(
+    recipe: Recipe,
+    folder: Path,
+    kind: str = CROSS_SECTION,
+    *,
+    crew: Crew | None = None,
+    memory: int = DEFAULT_MEMORY,
+    quiet: bool = False,
+    announce: Callable[[Plan], None] = lambda plan: None,
 ) -> BuildResult:
-    """Build a recipe's cross-section table into a folder, which is made if it is missing.
+    """Build a recipe's table of a kind into a folder, which is made if it is missing.
 
     A table that is there already and was built from the very same inputs is verified and kept, without a line being
     read; finished units of a build that was stopped are kept too.  `announce` gets the plan before the work starts.
@@ -93,25 +112,26 @@ def build_table(
     """
     started = time.monotonic()
     crew = crew or Crew()
-    path, log = folder / table_name(recipe), folder / f"{recipe.name}.log.json"
+    path, log = folder / table_name(recipe, kind), folder / f"{recipe.name}.log.json"
     remove_leftovers(folder)
     origin = fingerprint(recipe)
     kept = _still_good(path, origin)
     if kept is not None:
-        _remove_shards(shards_of(recipe, folder))
+        _remove_shards(shards_of(recipe, folder, kind))
         if not log.exists():
             with contextlib.suppress(ResourceError):
                 _write_log(log, recipe, time.monotonic() - started, 0)
         return BuildResult(path, log, None, kept, time.monotonic() - started)
     inputs = load_inputs(recipe, folder, origin, memory, quiet)
-    plan = make_plan(recipe, inputs, folder, crew.workers, memory, crew.processes)
+    planned = make_plan if kind == CROSS_SECTION else make_k_plan
+    plan = planned(recipe, inputs, folder, crew.workers, memory, crew.processes)
     announce(plan)
     refuse_what_cannot_fit(plan)
-    job = _Job(recipe, inputs, plan, folder, path, memory, quiet)
+    job = _Job(recipe, kind, inputs, plan, folder, path, memory, quiet)
     _make_folder(folder)
     _refuse_folders(path, log)
     _make_folder(job.shards)
-    units = parted(recipe, inputs.lines, inputs.sha256)
+    units = units_of(recipe, inputs, kind)
     try:
         figures, missing = (_build_alone if crew.task is None else _build_task)(job, units, crew)
     except KeyboardInterrupt as stop:
@@ -128,9 +148,13 @@ def build_table(
     return BuildResult(path, log, plan, figures, seconds, len(units), missing)
 
 
+Units = tuple[Unit, ...] | tuple[BandUnit, ...]
+
+
 @dataclass(frozen=True)
 class _Job:
     recipe: Recipe
+    kind: str
     inputs: Inputs
     plan: Plan
     folder: Path
@@ -140,7 +164,7 @@ class _Job:
 
     @property
     def shards(self) -> Path:
-        return shards_of(self.recipe, self.folder)
+        return shards_of(self.recipe, self.folder, self.kind)
 
     @property
     def work(self) -> Work:
@@ -149,16 +173,21 @@ class _Job:
     @property
     def origin(self) -> Origin:
         return Origin(
-            self.recipe.path.absolute(), self.folder.absolute(), self.shards.absolute(), self.inputs.sha256, self.memory
+            self.recipe.path.absolute(),
+            self.folder.absolute(),
+            self.shards.absolute(),
+            self.inputs.sha256,
+            self.memory,
+            self.kind,
         )
 
 
-def _build_alone(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[str, Any], int]:
+def _build_alone(job: _Job, units: Units, crew: Crew) -> tuple[dict[str, Any], int]:
     with locked(job.shards, "table") as lock:
         figures = _still_good(job.path, job.inputs.fingerprint)
         if figures is None:  # else a task was quicker
             _compute(job, units, crew)
-            figures = _assemble(job, units, lock.check)
+            figures = _put_together(job, units, lock.check)
     _remove_shards(job.shards)
     return figures, 0
 
@@ -173,7 +202,7 @@ def _remove_shards(folder: Path) -> None:
             folder.rmdir()
 
 
-def _build_task(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[str, Any], int]:
+def _build_task(job: _Job, units: Units, crew: Crew) -> tuple[dict[str, Any], int]:
     """A share of the units; whoever finds all of them done puts the table together."""
     assert crew.task is not None
     k, n = crew.task
@@ -188,7 +217,7 @@ def _build_task(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[st
         return {}, 0
 
 
-def _compute(job: _Job, units: tuple[Unit, ...], crew: Crew) -> None:
+def _compute(job: _Job, units: Sequence[WorkUnit], crew: Crew) -> None:
     """Compute the units whose shards are not there."""
     left = [unit for unit in units if not is_whole(unit.path(job.shards))]
     nodes = sum(len(unit.rows) for unit in left)
@@ -207,8 +236,21 @@ def _compute(job: _Job, units: tuple[Unit, ...], crew: Crew) -> None:
             in_threads(job.work, left, job.plan.workers, finished)
 
 
-def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]) -> dict[str, Any]:
+def _put_together(job: _Job, units: Units, still_ours: Callable[[], None]) -> dict[str, Any]:
     """The table from all shards; its checks."""
+    bands = [unit for unit in units if isinstance(unit, BandUnit)]
+    if not bands:
+        return _assemble(job, tuple(unit for unit in units if isinstance(unit, Unit)), still_ours)
+    grid = job.recipe.grid
+    nodes = (len(grid.temperature), len(grid.pressure)) if grid.nodes is None else (len(grid.nodes),)
+    cells = ShardCells(bands, job.shards, nodes, band_edges(job.recipe).size - 1, job.work.do)
+    inputs, plan = job.inputs, job.plan
+    given = (inputs.provenance, plan.warnings, plan.workers, job.quiet)
+    return assemble_k(KJob(job.path, job.recipe, inputs.lines, inputs.seed, *given), cells, still_ours)
+
+
+def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]) -> dict[str, Any]:
+    """The table of cross-sections from all shards; its checks."""
     recipe, grid = job.recipe, job.recipe.grid
     nodes = grid.node_list()
     extremes, tiles, warnings = [], np.zeros((len(nodes), 2), dtype=np.int64), list(job.plan.warnings)

@@ -17,6 +17,7 @@ from opacity.cross_sections.tolerance import regions
 from opacity.errors import ResourceError, problem
 from opacity.molecule.partition_function import STEP, PartitionFunction, editions_differ
 from opacity.pipeline.inputs import Inputs, refuse_invalid_temperatures
+from opacity.pipeline.kinds import shards_of, table_name
 from opacity.pipeline.needs import amount_of, needs_of, seconds_besides, workers_that_fit
 from opacity.pipeline.resources import allowed_cpus, available_memory, free_disk
 from opacity.pipeline.sources import DEFAULT_MEMORY
@@ -41,12 +42,14 @@ class NodeResolution:
 
 @dataclass(frozen=True)
 class Plan:
-    """What a build of a recipe amounts to.  Memory and disk in bytes at most, time in seconds.
+    """What the build of a recipe's table amounts to.  Memory and disk in bytes at most, time in seconds.
 
     `seconds` are those of one core, `wall_seconds` what the workers take, who share the spectra alone.
 
     `profile_values` are the values of profiles at points that the sum stands for; of its tiles the share `by_cells`
     gets most of them eight a cell.  `predicted_error` is the largest relative error of a value.
+
+    For k-coefficients there are `bands`, and `points` are those of a spectrum that is collapsed, in the mean of nodes.
 
     `obstacles` say why the build cannot fit here; it is refused then.  `limited` says where it gets less than it was
     to have; being of this machine alone, it is no part of the table.
@@ -76,6 +79,7 @@ class Plan:
     warnings: tuple[str, ...]
     assumptions: tuple[tuple[str, int], ...]
     ledger: dict[str, Any]
+    bands: int = 0
 
     def as_dict(self) -> dict[str, Any]:
         """The plan as plain values for JSON."""
@@ -129,32 +133,25 @@ def make_plan(
         memory_available=budget,
         disk=needs.disk,
         disk_free=disk_free,
-        obstacles=tuple(_obstacle(recipe, *one) for one in limits if one[2] is not None and one[1] > one[2]),
+        obstacles=tuple(
+            obstacle(recipe, *one, f"{points} values") for one in limits if one[2] is not None and one[1] > one[2]
+        ),
         limited=tuple(fitted),
         coarse_nodes=tuple(coarse),
-        warnings=(*inputs.warnings, *_warnings(recipe, inputs, coarse, temperatures)),
+        warnings=(*inputs.warnings, *warnings_of(recipe, inputs, coarse, temperatures)),
         assumptions=tuple((one.what, one.lines) for one in lines.assumptions),
         ledger=lines.ledger.as_dict(),
     )
 
 
-def table_name(recipe: Recipe) -> str:
-    """File name of a recipe's cross-section table."""
-    return f"{recipe.name}.cross-section.h5"
-
-
-def shards_of(recipe: Recipe, folder: Path) -> Path:
-    """The folder of the shards of a recipe's table."""
-    return folder / f"{recipe.name}.shards"
-
-
-def _obstacle(recipe: Recipe, what: str, needed: int, free: int | None) -> str:
-    nodes, points = len(recipe.grid.node_list()), recipe.grid.wavenumber.size
+def obstacle(recipe: Recipe, what: str, needed: int, free: int | None, values: str = "values") -> str:
+    """Why a build does not fit into "memory" or "disk"; `needed` and `free` in bytes, `values` those of a node."""
+    nodes = len(recipe.grid.node_list())
     return problem(
         recipe.path,
         f"the build does not fit in {what}",
         expected=f"at most {(free or 0) / 1e6:.4g} MB",
-        found=f"{needed / 1e6:.4g} MB for {nodes} x {points} values",
+        found=f"{needed / 1e6:.4g} MB for {nodes} x {values}",
         remedy="allow more with --memory, or use a larger machine" if what == "memory" else "make room on the disk",
     )
 
@@ -204,7 +201,8 @@ def _some_stretches(source: LineSource, first: float, last: float) -> Iterator[P
             yield lines
 
 
-def _warnings(recipe: Recipe, inputs: Inputs, coarse: list[NodeResolution], temperatures: list[float]) -> list[str]:
+def warnings_of(recipe: Recipe, inputs: Inputs, coarse: list[NodeResolution], temperatures: list[float]) -> list[str]:
+    """What a user should know of a recipe's lines and choices; `temperatures` (K) rise."""
     warnings = []
     if not len(inputs.lines):
         warnings.append("no line reaches the grid: every value will be 0")

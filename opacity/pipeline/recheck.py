@@ -11,7 +11,7 @@ from opacity.check.open_check import check_integrity, recheck, require_same_inpu
 from opacity.check.run import CheckReport
 from opacity.errors import InputError, OpacityError, TableError, problem
 from opacity.pipeline.inputs import Inputs, load_inputs
-from opacity.pipeline.plan import table_name
+from opacity.pipeline.kinds import table_name
 from opacity.pipeline.progress import Progress
 from opacity.pipeline.resources import allowed_cpus
 from opacity.recipe.formats import exomol_kind

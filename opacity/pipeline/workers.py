@@ -19,7 +19,7 @@ from typing import Protocol
 
 from opacity.cross_sections.source import LineSource
 from opacity.errors import ResourceError, problem
-from opacity.pipeline.units import parted
+from opacity.pipeline.kinds import units_of
 from opacity.recipe.model import Recipe
 
 KINDS = ("threads", "processes")
@@ -66,13 +66,16 @@ class Work:
 
 @dataclass(frozen=True)
 class Origin:
-    """What a process of its own needs to come to the same work: where recipe and tables lie, and the inputs' hash."""
+    """What a process of its own needs to come to the same work: where recipe and tables lie, the inputs' hash, and the
+    kind of table.
+    """
 
     recipe: Path
     tables: Path
     shards: Path
     inputs_sha256: str
     memory: int
+    kind: str
 
 
 Done = Callable[[WorkUnit], None]
@@ -186,7 +189,7 @@ def prepare_process(origin: Origin, signals: bool = True) -> None:
         what = "the recipe or its files changed while the build ran"
         raise ResourceError(problem(origin.recipe, what, remedy="build again when they are at rest"))
     _process["work"] = Work(recipe, inputs.lines, origin.shards)
-    _process["units"] = parted(recipe, inputs.lines, inputs.sha256)
+    _process["units"] = units_of(recipe, inputs, origin.kind)
 
 
 def do_in_process(number: int) -> None:

@@ -26,8 +26,8 @@ _STEP = Bounds(1e-9, 1e6, "cm-1")
 _RESOLVING_POWER = Bounds(1.0, 1e12)
 
 
-def read_grid(root: Table) -> Grid:
-    """The section [grid]."""
+def read_grid(root: Table, points: bool = True) -> Grid:
+    """The section [grid]; without `points` no spectrum is to be stored, and its step may be left out."""
     values = root.table("grid", "a section [grid] with wavenumber, temperature and pressure")
     if values is None:
         return Grid(np.empty(0), (), ())
@@ -38,7 +38,7 @@ def read_grid(root: Table) -> Grid:
         ("wavenumber", "temperature", "pressure", "nodes"),
         later=("interpolation_error",),
     )
-    wavenumber = _wavenumbers(table)
+    wavenumber = _wavenumbers(table, points)
     if "nodes" in table or table.misspelt("nodes"):
         nodes = _nodes(table) if "nodes" in table else ()
         return Grid(wavenumber, tuple(t for t, _ in nodes), tuple(p for _, p in nodes), nodes)
@@ -51,8 +51,8 @@ def read_grid(root: Table) -> Grid:
     return Grid(wavenumber, temperature, pressure)
 
 
-def _wavenumbers(table: Table) -> grids.FloatArray:
-    """The wavenumber axis, empty after a fault."""
+def _wavenumbers(table: Table, points: bool) -> grids.FloatArray:
+    """The wavenumber axis, empty after a fault; its two ends where no points are needed and no step is given."""
     none = np.empty(0)
     values = table.table("wavenumber", _WAVENUMBER_EXPECTED)
     if values is None:
@@ -67,6 +67,8 @@ def _wavenumbers(table: Table) -> grids.FloatArray:
         width, make = axis.number("resolving_power", _RESOLVING_POWER), grids.log_wavenumbers
     elif axis.misspelt("resolving_power"):
         return none
+    elif not points and "step" not in axis and not axis.misspelt("step"):
+        width, make = stop - start, grids.uniform_wavenumbers
     else:
         width = axis.number("step", _STEP)
     if np.isnan([start, stop, width]).any():

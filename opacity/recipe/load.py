@@ -49,7 +49,7 @@ def load_recipe(path: str | Path) -> Recipe:
     folder = path.parent
     molecule = read_molecule(root)
     line_lists = read_line_lists(root, folder)
-    grid = read_grid(root)
+    grid = read_grid(root, points="cross_section" in document or "k_coefficient" not in document)
     recipe = Recipe(
         path=path,
         text=text,

@@ -14,8 +14,9 @@ from opacity.pipeline import needs as needs_module
 from opacity.pipeline import plan as plan_module
 from opacity.pipeline import sources as sources_module
 from opacity.pipeline.inputs import load_inputs
+from opacity.pipeline.kinds import table_name
 from opacity.pipeline.needs import needs_of, workers_that_fit
-from opacity.pipeline.plan import make_plan, refuse_what_cannot_fit, table_name
+from opacity.pipeline.plan import make_plan, refuse_what_cannot_fit
 from opacity.pipeline.units import parted
 from opacity.recipe.load import load_recipe
 

@@ -1,0 +1,117 @@
+"""The points in g of a table, as a recipe asks for them: fixed, made to fit all nodes and bands, or each band."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from opacity.errors import InputError, problem
+from opacity.grids import FloatArray
+from opacity.k_coefficient.optimise import (
+    ACCEPTED,
+    Rows,
+    choose_g_points,
+    joined,
+    optimise_weights,
+    rows_by_band,
+    rows_of,
+)
+from opacity.k_coefficient.quadrature import MOST_POINTS, GPoints, g_points, points_of_bounds
+
+TRAINING_NODES = 18
+MOST_ROWS = 4000
+"""Bands at nodes that weights are fitted to, at most: of more bands than that allows some are drawn."""
+
+
+@dataclass(frozen=True)
+class Wanted:
+    """What is asked for: `count` points, None for as many as `transmission_error` needs; `weights` are "optimised",
+    "optimised-per-band" or "fixed".
+    """
+
+    count: int | None
+    transmission_error: float
+    quadrature: str
+    weights: str
+
+    @property
+    def needs_cells(self) -> bool:
+        """Whether fine cells decide."""
+        return self.count is None or self.weights != "fixed"
+
+
+@dataclass(frozen=True)
+class Training:
+    """Fine `cells` (n_node, n_band, N_CELLS), cm2, of one species at some nodes, at `pressure` (n_node,), bar."""
+
+    cells: FloatArray
+    pressure: FloatArray
+
+
+def choose(wanted: Wanted, training: Sequence[Training], seed: int) -> tuple[GPoints, dict[str, Any]]:
+    """The points in g and, as plain values, how they were chosen: "weights", "trained_error", and "target" if any.
+
+    With several species, all of the same bands, the points serve all of them.  `training` is not looked at for a fixed
+    number of fixed points.  Raises InputError for a target that cannot be met.
+    """
+    target = {} if wanted.count is not None else {"target": wanted.transmission_error}
+    how: dict[str, Any] = {"weights": wanted.weights, **target}
+    if not wanted.needs_cells:
+        assert wanted.count is not None
+        return g_points(wanted.count, wanted.quadrature), how
+    if wanted.weights == "optimised-per-band":
+        points, error = _per_band(wanted, training, seed)
+    else:
+        rows = joined([rows_of(one.cells[:, _some_bands(one, seed)], one.pressure) for one in training])
+        points, error = _shared(wanted, rows, seed)
+    return points, {**how, "trained_error": error}
+
+
+def _some_bands(training: Training, seed: int) -> NDArray[np.int64]:
+    nodes, bands = training.cells.shape[:2]
+    most = max(MOST_ROWS // max(nodes, 1), 1)
+    if bands <= most:
+        return np.arange(bands)
+    return np.sort(np.random.default_rng(seed).permutation(bands)[:most])
+
+
+def _shared(wanted: Wanted, rows: Rows, seed: int) -> tuple[GPoints, float]:
+    """Points shared by all nodes and bands, and their largest error there."""
+    if not len(rows.cells):
+        return g_points(wanted.count or 1), 0.0
+    if wanted.weights == "fixed":
+        return _fewest_fixed(rows, wanted.transmission_error)
+    if wanted.count is not None:
+        found = optimise_weights(rows, wanted.count, seed)
+        return found.points, found.error
+    chosen = choose_g_points(wanted.transmission_error, rows, rows, seed)
+    return chosen.points, chosen.trained_error
+
+
+def _fewest_fixed(rows: Rows, target: float) -> tuple[GPoints, float]:
+    for count in range(1, MOST_POINTS + 1):
+        points = g_points(count)
+        error = float(np.max(np.abs(rows.errors(points)), initial=0.0))
+        if error <= ACCEPTED * target:
+            return points, error
+    expected = f"an error that {MOST_POINTS} points can meet"
+    raise InputError(problem("transmission_error", "too small", expected=expected, found=target))
+
+
+def _per_band(wanted: Wanted, training: Sequence[Training], seed: int) -> tuple[GPoints, float]:
+    """As many points for every band, at bounds of each band's own, and the largest error of any."""
+    by_species = [rows_by_band(one.cells, one.pressure) for one in training]
+    bands = [joined(parts) for parts in zip(*by_species, strict=True)]
+    count = wanted.count
+    if count is None:
+        target = wanted.transmission_error
+        filled = [one for one in bands if len(one.cells)]
+        counts = [choose_g_points(target, one, one, seed).points.count for one in filled]
+        count = max(counts, default=1)
+    found = [optimise_weights(one, count, seed) if len(one.cells) else None for one in bands]
+    bounds = [g_points(count).bounds if one is None else one.points.bounds for one in found]
+    return points_of_bounds(np.array(bounds)), max((one.error for one in found if one is not None), default=0.0)
