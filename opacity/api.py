@@ -244,16 +244,16 @@ def _above_zero(name: str, value: object, unit: str) -> float:
 
 
 def plan(recipe: Recipe, folder: str | Path = "tables", *, memory: int = 2_000_000_000, quiet: bool = True) -> Plan:
-    """What a build of the recipe into a folder will do and need.
+    """What a build of the recipe into a folder will do and need; of a second table in the plan's `others`.
 
     Raises OpacityError of the kind that fits where the recipe's lines cannot be used; whether the build fits into
     memory and disk is told by the plan's `obstacles`.
     """
     from opacity.pipeline.inputs import load_inputs
-    from opacity.pipeline.plan import make_plan
+    from opacity.pipeline.k_plan import plan_all
 
     inputs = load_inputs(recipe, Path(folder), memory=memory, quiet=quiet)
-    return make_plan(recipe, inputs, Path(folder), memory=memory)
+    return plan_all(recipe, inputs, Path(folder), memory)
 
 
 def build(

@@ -79,6 +79,26 @@ def interpolation_line(between: Mapping[str, Any]) -> str:
     )
 
 
+def certificate_lines(certificate: Mapping[str, Any]) -> list[str]:
+    """What a certificate says beside its checks: of layers of different nodes, and between nodes."""
+    sampled = certificate["sampled"]
+    if not sampled:
+        return []
+    bands = counted(len(sampled), "band")
+    lines = [
+        f"two layers at {counted(len(certificate['pairs']), 'pair')} of nodes, {bands}: transmission within"
+        f" {max(one['two_layers'] for one in sampled):.1e} of line by line: not judged, it is what correlated k costs"
+    ]
+    middles = [one for one in sampled if one["middle"] is not None]
+    if middles:
+        lines.append(
+            f"interpolating at the middle of {counted(len(certificate['middles']), 'cell')}, {bands}: transmission"
+            f" within {max(one['middle'] for one in middles):.1e}, means within"
+            f" {percent(max(one['middle_mean'] for one in middles))}: not judged, it tells how fine the grid is"
+        )
+    return lines
+
+
 def size(n_bytes: float | None) -> str:
     """A number of bytes for people."""
     if n_bytes is None:

@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from opacity.arguments import as_numbers
 from opacity.errors import InputError, problem
 from opacity.grids import FloatArray, as_axis, log_wavenumbers, uniform_wavenumbers
+from opacity.recipe.model import Recipe
 
 _ROUNDING = 1e-9
 """Relative distance within which a band's edge is the grid's own end."""
@@ -57,6 +58,18 @@ def edges_of_wavelengths(wavelength: Sequence[float] | NDArray[Any]) -> FloatArr
     falls = axis.ndim == 1 and axis.size > 1 and axis[0] > axis[-1]
     axis = as_axis("wavelength", "micrometres", axis[::-1] if falls else axis)
     return as_band_edges(1e4 / axis[::-1])
+
+
+def band_edges(recipe: Recipe) -> FloatArray:
+    """Edges of a recipe's bands, rising, (n_band + 1,), cm-1."""
+    assert recipe.k_coefficient is not None
+    bands, nu = recipe.k_coefficient.bands, recipe.grid.wavenumber
+    first, last = float(nu[0]), float(nu[-1])
+    if bands.kind == "resolving_power":
+        return edges_of_resolving_power(first, last, bands.values[0])
+    if bands.kind == "width":
+        return edges_of_width(first, last, bands.values[0])
+    return edges_of_wavelengths(bands.values) if bands.kind == "wavelength" else np.array(bands.values)
 
 
 @dataclass(frozen=True)

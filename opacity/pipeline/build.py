@@ -17,12 +17,13 @@ import numpy as np
 from opacity.check.run import run_checks
 from opacity.cross_sections.tolerance import regions
 from opacity.errors import InUseError, ResourceError, TableError, problem
+from opacity.k_coefficient.bands import band_edges
 from opacity.line_store.lock import locked
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
 from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.k_assemble import KJob, ShardCells, assemble_k
 from opacity.pipeline.k_plan import make_k_plan
-from opacity.pipeline.k_units import BandUnit, band_edges
+from opacity.pipeline.k_units import BandUnit
 from opacity.pipeline.kinds import CROSS_SECTION, shards_of, table_name, units_of, wanted
 from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit
 from opacity.pipeline.progress import Progress

@@ -15,13 +15,14 @@ from opacity.cross_sections.source import LineSource
 from opacity.cross_sections.tolerance import regions
 from opacity.errors import InputError, TableError, problem
 from opacity.grids import FloatArray
+from opacity.k_coefficient.bands import band_edges
 from opacity.k_coefficient.certificate import errors_at_node
 from opacity.k_coefficient.choose import TRAINING_NODES, Training, Wanted, choose
 from opacity.k_coefficient.collapse import CELL_BOUNDS, N_CELLS
 from opacity.k_coefficient.means import means_of_sums
 from opacity.k_coefficient.optimise import training_nodes
 from opacity.k_coefficient.quadrature import GPoints, k_from_cells
-from opacity.pipeline.k_units import BandUnit, band_edges, missed_points
+from opacity.pipeline.k_units import BandUnit, missed_points
 from opacity.pipeline.progress import Progress
 from opacity.recipe.model import Recipe
 from opacity.tables.band_shard import BandShard, read_band_shard

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import time
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -11,6 +11,7 @@ import numpy as np
 from opacity.check.k_samples import MOST_BANDS, MOST_MIDDLES
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource
 from opacity.cross_sections.tolerance import regions
+from opacity.k_coefficient.bands import band_edges
 from opacity.k_coefficient.choose import MOST_ROWS
 from opacity.k_coefficient.collapse import N_CELLS
 from opacity.k_coefficient.spectra import (
@@ -22,10 +23,10 @@ from opacity.k_coefficient.spectra import (
     points_of_bands,
 )
 from opacity.pipeline.inputs import Inputs, refuse_invalid_temperatures
-from opacity.pipeline.k_units import BandUnit, band_edges
-from opacity.pipeline.kinds import K_COEFFICIENT, k_units_of, table_name
+from opacity.pipeline.k_units import BandUnit
+from opacity.pipeline.kinds import CROSS_SECTION, K_COEFFICIENT, k_units_of, table_name, wanted
 from opacity.pipeline.needs import BYTES_A_LINE, BYTES_A_RECORD, COPIES_OF_A_SPECTRUM, PROGRAM_BYTES
-from opacity.pipeline.plan import Plan, obstacle, warnings_of
+from opacity.pipeline.plan import Plan, make_plan, obstacle, warnings_of
 from opacity.pipeline.resources import allowed_cpus, available_memory, free_disk
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.recipe.model import Recipe
@@ -57,12 +58,12 @@ def make_k_plan(
     units = k_units_of(recipe, inputs)
     amount = _amount_of(recipe, lines)
     needs = _needs_of(recipe, lines, units, bands)
-    wanted = allowed_cpus() if workers is None else workers
+    asked = allowed_cpus() if workers is None else workers
     available, disk_free = available_memory(), free_disk(folder)
     budget = memory if available is None else min(memory, available)
     base = needs.base + (needs.base if processes else 0)
     fit = max((budget - needs.base) // (needs.worker + base - needs.base), 1)
-    count = max(min(wanted, fit, len(units)), 1)
+    count = max(min(asked, fit, len(units)), 1)
     memory_needed = needs.base + max(count * (needs.worker + base - needs.base), needs.assembly)
     besides = _seconds_besides(recipe, bands)
     limits = (("memory", memory_needed, budget), ("disk", needs.disk, disk_free))
@@ -89,13 +90,20 @@ def make_k_plan(
         obstacles=tuple(
             obstacle(recipe, *one, f"{bands} bands") for one in limits if one[2] is not None and one[1] > one[2]
         ),
-        limited=(f"memory allows {count} of {wanted} workers",) if count < min(wanted, len(units)) else (),
+        limited=(f"memory allows {count} of {asked} workers",) if count < min(asked, len(units)) else (),
         coarse_nodes=(),
         warnings=(*inputs.warnings, *amount.warnings, *warnings_of(recipe, inputs, [], temperatures)),
         assumptions=tuple((one.what, one.lines) for one in lines.assumptions),
         ledger=lines.ledger.as_dict(),
         bands=bands,
     )
+
+
+def plan_all(recipe: Recipe, inputs: Inputs, folder: Path, memory: int) -> Plan:
+    """The plan of the first table that a recipe asks for, with those of the others in it."""
+    planned = {CROSS_SECTION: make_plan, K_COEFFICIENT: make_k_plan}
+    first, *others = (planned[kind](recipe, inputs, folder, memory=memory) for kind in wanted(recipe))
+    return replace(first, others=tuple(others))
 
 
 @dataclass(frozen=True)

@@ -18,7 +18,7 @@ import numpy as np
 
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource
 from opacity.grids import FloatArray
-from opacity.k_coefficient.bands import edges_of_resolving_power, edges_of_wavelengths, edges_of_width
+from opacity.k_coefficient.bands import band_edges
 from opacity.k_coefficient.collapse import N_CELLS
 from opacity.k_coefficient.means import mean_sums
 from opacity.k_coefficient.spectra import FEWEST_POINTS, POINTS_A_HALF_WIDTH, collapsed, lines_of_bands, margin_of
@@ -53,18 +53,6 @@ class BandUnit:
     def do(self, recipe: Recipe, source: LineSource, path: Path, executor: Executor | None = None) -> None:
         """Compute the unit and write its shard."""
         write_band_shard(path, compute_bands(recipe, source, self, executor))
-
-
-def band_edges(recipe: Recipe) -> FloatArray:
-    """Edges of a recipe's bands, rising, (n_band + 1,), cm-1."""
-    assert recipe.k_coefficient is not None
-    bands, nu = recipe.k_coefficient.bands, recipe.grid.wavenumber
-    first, last = float(nu[0]), float(nu[-1])
-    if bands.kind == "resolving_power":
-        return edges_of_resolving_power(first, last, bands.values[0])
-    if bands.kind == "width":
-        return edges_of_width(first, last, bands.values[0])
-    return edges_of_wavelengths(bands.values) if bands.kind == "wavelength" else np.array(bands.values)
 
 
 def band_units(recipe: Recipe, source: LineSource, inputs_sha256: str, heaviest: float) -> tuple[BandUnit, ...]:

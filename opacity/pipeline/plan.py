@@ -51,6 +51,8 @@ class Plan:
 
     For k-coefficients there are `bands`, and `points` are those of a spectrum that is collapsed, in the mean of nodes.
 
+    `others` are the plans of further tables of the same recipe.
+
     `obstacles` say why the build cannot fit here; it is refused then.  `limited` says where it gets less than it was
     to have; being of this machine alone, it is no part of the table.
     """
@@ -80,6 +82,7 @@ class Plan:
     assumptions: tuple[tuple[str, int], ...]
     ledger: dict[str, Any]
     bands: int = 0
+    others: tuple[Plan, ...] = ()
 
     def as_dict(self) -> dict[str, Any]:
         """The plan as plain values for JSON."""

@@ -11,19 +11,20 @@ from opacity.check.open_check import check_integrity, recheck, require_same_inpu
 from opacity.check.run import CheckReport
 from opacity.errors import InputError, OpacityError, TableError, problem
 from opacity.pipeline.inputs import Inputs, load_inputs
-from opacity.pipeline.kinds import table_name
+from opacity.pipeline.kinds import CROSS_SECTION, K_COEFFICIENT, table_name, wanted
 from opacity.pipeline.progress import Progress
 from opacity.pipeline.resources import allowed_cpus
 from opacity.recipe.formats import exomol_kind
 from opacity.recipe.load import load_recipe
 from opacity.recipe.model import Recipe
-from opacity.tables.read import Table, open_table
+from opacity.tables.k_read import KCoefficientTable
+from opacity.tables.open import open_table
+from opacity.tables.read import Table
 
 CHECKED = (
     "a table (.h5), a recipe (.toml), or a line list: .par, .data, .cat, .def, .states or .trans, plain or compressed"
 )
 """What `opacity check` takes."""
-TABLE_ENDING = ".cross-section.h5"
 
 
 @dataclass(frozen=True)
@@ -35,10 +36,10 @@ class Target:
     asked_for: bool = False
 
 
-def find_table_and_recipe(target: Path, recipe: Path | None, folder: Path) -> Target:
-    """The table to check and its recipe, from either of them.
+def find_tables_and_recipe(target: Path, recipe: Path | None, folder: Path) -> list[Target]:
+    """The tables to check and their recipe, from either of them.
 
-    A recipe's table is looked for in `folder`, TableError where there is none; a table's recipe is the one given, or
+    A recipe's tables are looked for in `folder`, TableError where there is none; a table's recipe is the one given, or
     the one that the log beside the table names, None where there is none.  TableError for what is neither.
     """
     if os.path.isdir(target):
@@ -48,19 +49,24 @@ def find_table_and_recipe(target: Path, recipe: Path | None, folder: Path) -> Ta
         raise TableError(problem(target, "not checked by itself", expected=CHECKED, remedy=remedy))
     if target.suffix != ".toml":
         found = recipe if recipe is not None else _recipe_of_log(target)
-        return Target(target, found, recipe is not None)
+        return [Target(target, found, recipe is not None)]
     if recipe is not None:
         raise InputError(problem("--recipe", f"{target} is a recipe itself", remedy="give the table, or no --recipe"))
-    table = folder / table_name(load_recipe(target))
-    if not os.path.exists(table):
-        command = f"opacity build {target}" + ("" if folder == Path("tables") else f" -o {folder}")
-        raise TableError(problem(table, f"{target} has no table here yet", remedy=f"build it first: `{command}`"))
-    return Target(table, target, True)
+    read = load_recipe(target)
+    tables = [folder / table_name(read, kind) for kind in wanted(read)]
+    for table in tables:
+        if not os.path.exists(table):
+            command = f"opacity build {target}" + ("" if folder == Path("tables") else f" -o {folder}")
+            raise TableError(problem(table, f"{target} has no table here yet", remedy=f"build it first: `{command}`"))
+    return [Target(table, target, True) for table in tables]
 
 
 def _recipe_of_log(table: Path) -> Path | None:
     try:
-        log = table.with_name(table.name.removesuffix(TABLE_ENDING) + ".log.json")
+        name = table.name
+        for kind in (CROSS_SECTION, K_COEFFICIENT):
+            name = name.removesuffix(f".{kind}.h5")
+        log = table.with_name(f"{name}.log.json")
         path = Path(json.loads(log.read_text(encoding="utf-8"))["recipe"])
     except (OSError, ValueError, KeyError, TypeError):
         return None
@@ -90,13 +96,15 @@ def check_table_file(target: Target, seed: int | None = None, quiet: bool = Fals
         return _again(table, recipe, inputs, seed, quiet)
 
 
-def _as_stored(table: Table, why: str) -> tuple[CheckReport, str]:
+def _as_stored(table: Table | KCoefficientTable, why: str) -> tuple[CheckReport, str]:
     rows = [check_integrity(table), *stored_results(table)]
     note = f"{why}: all but integrity as stored by the build; --recipe repeats them from the lines"
     return CheckReport(tuple(rows), table.checks), note
 
 
-def _again(table: Table, recipe: Recipe, inputs: Inputs, seed: int | None, quiet: bool) -> tuple[CheckReport, str]:
+def _again(
+    table: Table | KCoefficientTable, recipe: Recipe, inputs: Inputs, seed: int | None, quiet: bool
+) -> tuple[CheckReport, str]:
     nodes = table.temperature.size if table.profile else table.temperature.size * table.pressure.size
     with Progress("checks", nodes, "nodes", quiet) as progress:
         chosen = inputs.seed if seed is None else seed
