@@ -3,28 +3,24 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from concurrent.futures import Executor, ThreadPoolExecutor
+from concurrent.futures import ThreadPoolExecutor
 from contextlib import nullcontext
-from dataclasses import asdict, dataclass
+from dataclasses import asdict
 from typing import Any
 
 import numpy as np
 
 from opacity.check.closure import strength_between
+from opacity.check.k_nodes import at_all_nodes, certificate_of, follows, place_of, within
 from opacity.check.k_samples import BandSample, KValues, draw, sample_band
-from opacity.check.result import AGREES, CANNOT_JUDGE, CheckResult, finite, judge
+from opacity.check.result import CANNOT_JUDGE, CheckResult, finite, judge
 from opacity.check.run import CheckReport
 from opacity.check.spectra import Node, nodes_of
 from opacity.cross_sections.source import LineSource
 from opacity.grids import FloatArray
-from opacity.k_coefficient.certificate import BandError, BandErrors, NodeErrors, errors_at_node
-from opacity.k_coefficient.collapse import CELL_WIDTHS
-from opacity.k_coefficient.quadrature import INTERVALS, GPoints, g_points, k_from_cells, points_of_bounds
-from opacity.k_coefficient.transmission import BLACK, COLUMN_A_BAR, N_COLUMNS, THINNEST
+from opacity.k_coefficient.quadrature import INTERVALS
 from opacity.recipe.model import Profile, Recipe
 
-ROUNDING = 4e-7
-"""k, and the cells that it is made of, are stored as f4."""
 CELL_ERROR = 2e-4
 """The fine cells' own error of transmission, twice the largest seen, beside what the tolerance allows."""
 COLUMN_SHARE = 0.37
@@ -49,24 +45,20 @@ def run_k_checks(
     """
     nodes, profile = nodes_of(table), recipe.profile
     with ThreadPoolExecutor(workers) if workers > 1 else nullcontext() as executor:
-        found = _at_all_nodes(table, nodes, progress, executor)
+        found = at_all_nodes(table, nodes, progress, executor)
         expected = _strengths(table, nodes, source, profile)
         drawn = draw(table, nodes, seed)
         samples = [sample_band(table, source, profile, drawn, band, seed, executor) for band in drawn.bands]
     looked_at = [one for one in samples if one is not None]
     rows = [
-        _follows(found, table.quadrature in INTERVALS),
-        _within(found.bands, nodes, table, chosen.get("target")),
+        follows(found, table.quadrature in INTERVALS),
+        within(found.bands, nodes, table, chosen.get("target")),
         _closure(found.integrals, expected, nodes, profile.tolerance),
         *_sampled(looked_at, profile.tolerance),
     ]
     certificate = {
         **chosen,
-        "bands": [asdict(one) for one in found.bands],
-        "columns": N_COLUMNS,
-        "thinnest": THINNEST,
-        "black": BLACK,
-        "column_a_bar": COLUMN_A_BAR,
+        **certificate_of(found.bands),
         "seed": seed,
         "sampled": [asdict(one) for one in looked_at],
         "bands_too_wide_to_sample": len(samples) - len(looked_at),
@@ -83,54 +75,6 @@ def run_k_checks(
     return CheckReport(tuple(rows), finite(figures))
 
 
-def points_of(table: KValues) -> GPoints:
-    """The quadrature of a table."""
-    if table.quadrature not in INTERVALS:
-        return g_points(table.g_weight.shape[-1], table.quadrature)
-    bounds = table.g_bounds
-    return points_of_bounds(np.concatenate([bounds[..., 0], bounds[..., -1:, 1]], axis=-1), table.quadrature)
-
-
-@dataclass(frozen=True)
-class _Found:
-    """Errors of all `bands`; `off` by how much k differs from what follows from the cells (relative), and where; the
-    `integrals` of the nodes (n_node,), cm/molecule.
-    """
-
-    bands: tuple[BandError, ...]
-    off: float
-    where: Node
-    integrals: FloatArray
-
-
-def _at_all_nodes(table: KValues, nodes: list[Node], progress: Callable[[], None], executor: Executor | None) -> _Found:
-    points, widths = points_of(table), np.diff(table.band_bounds)[:, 0]
-    errors, off, where, integrals = BandErrors(widths.size), -1.0, nodes[0], []
-
-    def one(values: tuple[Node, FloatArray, FloatArray]) -> tuple[NodeErrors, float, float]:
-        (_, _, pressure), k, cells = values
-        expected = k_from_cells(cells, points)
-        difference = np.abs(k - expected) / np.maximum(expected, 1e-300)
-        found = errors_at_node(k, table.g_weight, cells, pressure)
-        return found, float(np.max(difference)), float(cells @ CELL_WIDTHS @ widths)
-
-    # HDF5 reads under a lock, so that values are read here, some nodes at a time.
-    for first in range(0, len(nodes), _AT_ONCE):
-        some = nodes[first : first + _AT_ONCE]
-        values = [(node, table.k(*node[0]), table.cells(*node[0])) for node in some]
-        results = map(one, values) if executor is None else executor.map(one, values)
-        for number, (node, (found, differs, integral)) in enumerate(zip(some, results, strict=True), start=first):
-            errors.add(number, found)
-            integrals.append(integral)
-            if differs > off:
-                off, where = differs, node
-            progress()
-    return _Found(errors.found(), off, where, np.array(integrals))
-
-
-_AT_ONCE = 8
-
-
 def _strengths(table: KValues, nodes: list[Node], source: LineSource, profile: Profile) -> FloatArray:
     """What the lines of each node have inside cut-off and bands, (n_node,), cm/molecule."""
     between, sums = (float(table.band_bounds[0, 0]), float(table.band_bounds[-1, 1])), np.zeros(len(nodes))
@@ -145,35 +89,11 @@ def _strengths(table: KValues, nodes: list[Node], source: LineSource, profile: P
     return sums
 
 
-def _place(node: Node) -> str:
-    return f"{node[1]:g} K, {node[2]:.3g} bar"
-
-
-def _follows(found: _Found, closed: bool) -> CheckResult:
-    mean = max(abs(one.mean) for one in found.bands)
-    means = f"; means of bands within {mean:.1e} of the cells'" if closed else f"; means of bands off by {mean:.1e}"
-    value = max(found.off, mean if closed else 0.0)
-    detail = f"k follows from the fine cells within {found.off:.1e}, worst at {_place(found.where)}{means}"
-    return judge("k", value, ROUNDING, detail)
-
-
-def _within(bands: tuple[BandError, ...], nodes: list[Node], table: KValues, target: float | None) -> CheckResult:
-    worst = max(range(len(bands)), key=lambda band: abs(bands[band].largest))
-    one, (lower, upper) = bands[worst], table.band_bounds[worst]
-    detail = (
-        f"every band within {abs(one.largest):.1e} of the cells' at all {len(nodes)} nodes, worst {lower:.8g} to"
-        f" {upper:.8g} cm-1 at {_place(nodes[one.node])}"
-    )
-    if target is None:
-        return CheckResult("transmission", AGREES, detail, one.largest)
-    return judge("transmission", one.largest, target, f"{detail}; promised {target:g}")
-
-
 def _closure(integrals: FloatArray, expected: FloatArray, nodes: list[Node], tolerance: float) -> CheckResult:
     difference = np.where(expected > 0.0, integrals / np.where(expected > 0.0, expected, 1.0) - 1.0, 0.0)
     difference = np.where((expected <= 0.0) & (integrals > 0.0), np.inf, difference)
     worst = int(np.argmax(np.abs(difference)))
-    detail = f"{len(nodes)} of {len(nodes)} nodes; worst {difference[worst]:+.1e} at {_place(nodes[worst])}"
+    detail = f"{len(nodes)} of {len(nodes)} nodes; worst {difference[worst]:+.1e} at {place_of(nodes[worst])}"
     return judge("closure", float(difference[worst]), tolerance + SAMPLED, detail)
 
 

@@ -14,6 +14,8 @@ from opacity.cli.build import DONE, FAILED, print_results
 from opacity.cli.build import build as build
 from opacity.cli.build import plan as plan
 from opacity.cli.fetch import fetch as fetch
+from opacity.cli.k_tables import g_points as g_points
+from opacity.cli.k_tables import mix as mix
 from opacity.cli.lists import check_list, is_list
 from opacity.cli.lists import ingest as ingest
 

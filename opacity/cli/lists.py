@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from opacity.cli import text
+from opacity.errors import InputError, problem
 from opacity.recipe.formats import plain_name
 
 if TYPE_CHECKING:
@@ -30,6 +31,8 @@ def ingest(arguments: Namespace) -> int:
     from opacity.recipe.load import load_recipe
 
     recipe = load_recipe(arguments.recipe)
+    if recipe.species:
+        raise InputError(problem(recipe.path, "has no lists of its own", remedy="ingest the recipes of its species"))
     stores: list[dict[str, Any]] = []
     for source in recipe.line_lists:
         if source.format == "catalogue":

@@ -15,7 +15,7 @@ from collections.abc import Callable, Sequence
 from types import FrameType
 from typing import NoReturn
 
-from opacity.cli import commands
+from opacity.cli import commands, k_tables
 from opacity.errors import OpacityError
 from opacity.provenance import VERSION
 
@@ -56,7 +56,7 @@ def parser() -> argparse.ArgumentParser:
 
     def command(name: str, words: str) -> argparse.ArgumentParser:
         made = commands_parser.add_parser(name, help=words, description=words[0].upper() + words[1:] + ".")
-        made.set_defaults(run=getattr(commands, name))
+        made.set_defaults(run=getattr(commands, name.replace("-", "_")))
         return made
 
     one = command("new", "write a commented recipe to fill in")
@@ -92,6 +92,7 @@ def parser() -> argparse.ArgumentParser:
     _add_shared(one)
 
     _add_reading_commands(command)
+    k_tables.add_commands(command)
     return top
 
 

@@ -92,7 +92,8 @@ def _lines(table: Table | KCoefficientTable, of_its_kind: list[tuple[str, str]])
         ("line list", ", ".join(one["file"] for one in provenance.get("line_lists", []))),
         *_isotopologues(provenance.get("isotopologues", [])),
         *_partition(provenance.get("partition_function", {})),
-        ("broadening", _mixture(provenance.get("broadening", {}).get("mixture", {}))),
+        *[("species", f"{one['fraction']:g} {one['formula']}") for one in provenance.get("species", [])],
+        *[("broadening", _mixture(one)) for one in _mixtures(provenance)],
         *_profile(provenance.get("profile", {})),
         ("built by", f"{program.get('name', '')} {program.get('version', '')}"),
     ]
@@ -100,7 +101,13 @@ def _lines(table: Table | KCoefficientTable, of_its_kind: list[tuple[str, str]])
     lines += [("warning", one) for one in checks.get("warnings", [])]
     lines += notes({"left_out": {}, "notes": {}, **checks.get("ledger", {})}, checks.get("assumptions", []))
     lines += [("cite", one) for one in provenance.get("references", [])]
-    return lines
+    return [(word, value) for word, value in lines if value.strip()]
+
+
+def _mixtures(provenance: dict[str, Any]) -> list[dict[str, float]]:
+    """The broadening mixture, or those of the species, each once."""
+    found = [one.get("broadening", {}).get("mixture", {}) for one in provenance.get("species", [provenance])]
+    return [one for number, one in enumerate(found) if one not in found[:number]]
 
 
 def _isotopologues(found: list[dict[str, Any]]) -> list[tuple[str, str]]:

@@ -81,7 +81,7 @@ def interpolation_line(between: Mapping[str, Any]) -> str:
 
 def certificate_lines(certificate: Mapping[str, Any]) -> list[str]:
     """What a certificate says beside its checks: of layers of different nodes, and between nodes."""
-    sampled = certificate["sampled"]
+    sampled = [one for one in certificate.get("sampled", ()) if one["two_layers"] is not None]
     if not sampled:
         return []
     bands = counted(len(sampled), "band")

@@ -40,6 +40,8 @@ def fingerprint(recipe: Recipe) -> Fingerprint:
     Raises OpacityError for a file that cannot be read, LineListError for one whose sha256 is not that of the recipe
     or of the record beside it.
     """
+    if recipe.species:
+        return _of_mixture(recipe)
     choice = recipe.partition_function
     content: dict[str, Any] = {
         "program": {"name": "opacity", "version": VERSION},
@@ -54,6 +56,23 @@ def fingerprint(recipe: Recipe) -> Fingerprint:
     if choice.path is not None:
         content["partition_file"] = {"file": _file_name(choice.path), "sha256": _checked_sha256(choice.path)}
     text = json.dumps({**content, "recipe": recipe.text}, sort_keys=True)
+    return Fingerprint(content, hashlib.sha256(text.encode("utf-8")).hexdigest())
+
+
+def _of_mixture(recipe: Recipe) -> Fingerprint:
+    """That of a recipe of several species, out of theirs."""
+    parts = [fingerprint(one.recipe) for one in recipe.species]
+    content: dict[str, Any] = {
+        "program": {"name": "opacity", "version": VERSION},
+        "packages": package_versions(),
+        "line_lists": [entry for part in parts for entry in part.content["line_lists"]],
+        "broadening_files": {
+            f"{one.recipe.molecule.formula} {name}": entry
+            for one, part in zip(recipe.species, parts, strict=True)
+            for name, entry in part.content["broadening_files"].items()
+        },
+    }
+    text = json.dumps({"species": [part.sha256 for part in parts], "recipe": recipe.text}, sort_keys=True)
     return Fingerprint(content, hashlib.sha256(text.encode("utf-8")).hexdigest())
 
 

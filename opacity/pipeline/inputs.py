@@ -12,6 +12,7 @@ import numpy as np
 
 from opacity.arguments import DefaultWidth
 from opacity.chi_factors import CHI_FACTORS
+from opacity.cross_sections.mixture import MixedLines
 from opacity.cross_sections.prepare import PreparedLines, fraction_of, prepare
 from opacity.cross_sections.source import (
     LINES_AT_ONCE,
@@ -87,6 +88,8 @@ def load_inputs(
     file that cannot be used.
     """
     origin = known or fingerprint(recipe)
+    if recipe.species:
+        return _load_mixture(recipe, tables, origin, memory, quiet)
     _check_molecule(recipe)
     lists = [
         open_list(recipe, number, tables, memory, quiet, origin.hashes) for number in range(len(recipe.line_lists))
@@ -121,6 +124,39 @@ def load_inputs(
     warnings += definition_warnings(recipe, lists) + tuple(words for one in lists for words in one.warnings)
     provenance["partition_function"] |= comparison
     return Inputs(source, used.isotopologues, used.partition, provenance, origin, warnings)
+
+
+def _load_mixture(recipe: Recipe, tables: Path, origin: Fingerprint, memory: int, quiet: bool) -> Inputs:
+    """The lines of all species as one list, and what they came from."""
+    found = [load_inputs(one.recipe, tables, None, memory, quiet) for one in recipe.species]
+    for one, inputs in zip(recipe.species, found, strict=True):
+        refuse_invalid_temperatures(one.recipe, inputs.partition)
+    sources = tuple((inputs.lines, one.fraction) for one, inputs in zip(recipe.species, found, strict=True))
+    origins = [inputs.provenance for inputs in found]
+    provenance: dict[str, Any] = {
+        **origin.content,
+        "records_read": sum(one["records_read"] for one in origins),
+        "partition_function": {
+            "source": recipe.partition_function.source,
+            "valid": {name: ends for one in origins for name, ends in one["partition_function"]["valid"].items()},
+        },
+        "isotopologues": [entry for one in origins for entry in one["isotopologues"]],
+        "profile": origins[0]["profile"],
+        "species": [
+            {"fraction": one.fraction, "formula": one.recipe.molecule.formula, **inputs.provenance}
+            for one, inputs in zip(recipe.species, found, strict=True)
+        ],
+        "references": list(dict.fromkeys(words for one in origins for words in one["references"])),
+        "inputs_sha256": origin.sha256,
+    }
+    return Inputs(
+        MixedLines(sources),
+        tuple(one for inputs in found for one in inputs.isotopologues),
+        tuple(one for inputs in found for one in inputs.partition),
+        provenance,
+        origin,
+        tuple(words for inputs in found for words in inputs.warnings),
+    )
 
 
 def _stored(

@@ -217,7 +217,7 @@ def warnings_of(recipe: Recipe, inputs: Inputs, coarse: list[NodeResolution], te
             f" {worst.temperature:g} K, {worst.pressure:.3g} bar {share} (narrowest half-width"
             f" {worst.narrowest_half_width:.2g} cm-1); each value is right at its point, sums over points are not"
         )
-    made_for_296_k = any(one.format in ("hitran", "hapi") for one in recipe.line_lists)
+    made_for_296_k = any(one.format in ("hitran", "hapi") for part in recipe.parts for one in part.line_lists)
     if made_for_296_k and temperatures and temperatures[-1] > HOT_FOR_296K_LIST:
         warnings.append(
             f"a list made for 296 K lacks hot lines, and the grid goes to {temperatures[-1]:g} K:"
@@ -231,7 +231,7 @@ def warnings_of(recipe: Recipe, inputs: Inputs, coarse: list[NodeResolution], te
         warnings.append(f"the chi factors {chi} are for {made_for} and are used for {recipe.molecule.formula}")
     warnings += [_rough(one) for one in inputs.partition if one.steps]
     for one in inputs.isotopologues:
-        if not recipe.partition_function.source.startswith("TIPS") or not one.known:
+        if not one.known or not any(part.partition_function.source.startswith("TIPS") for part in recipe.parts):
             continue
         worst_t = max(temperatures, key=lambda t, iso=one: abs(editions_differ(iso, t)))  # type: ignore[misc]
         difference = editions_differ(one, worst_t)

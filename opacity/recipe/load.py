@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 from opacity.errors import RecipeError
+from opacity.recipe import mixture
 from opacity.recipe.document import parse, read_text
 from opacity.recipe.faults import Faults
 from opacity.recipe.grid import read_grid
@@ -45,6 +46,9 @@ def load_recipe(path: str | Path) -> Recipe:
     text = read_text(path)
     document, lines = parse(path, text)
     faults = Faults(str(path), lines)
+    if "species" in document:
+        root = Table(faults, (), document, mixture.SECTIONS)
+        return _if_faultless(mixture.read_mixture(path, text, root, load_recipe), root)
     root = Table(faults, (), document, SECTIONS)
     folder = path.parent
     molecule = read_molecule(root)
@@ -64,8 +68,13 @@ def load_recipe(path: str | Path) -> Recipe:
         cross_section="cross_section" in document,
         k_coefficient=read_k_coefficient(root, grid),
     )
+    return _if_faultless(recipe, root)
+
+
+def _if_faultless(recipe: Recipe, root: Table) -> Recipe:
+    """The recipe; RecipeError where there is any fault in it."""
     _check_tables_wanted(root)
-    problems = faults.problems()
+    problems = root.faults.problems()
     if problems:
         raise RecipeError(problems)
     return recipe

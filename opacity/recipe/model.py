@@ -164,9 +164,18 @@ class KCoefficientChoice:
 
 
 @dataclass(frozen=True)
+class Species:
+    """A molecule of a mixture: its recipe, with the mixture's grid and profile, and its mole `fraction`."""
+
+    recipe: Recipe
+    fraction: float
+
+
+@dataclass(frozen=True)
 class Recipe:
     """A whole recipe.  `abundance` is "terrestrial", "pure", or fractions by isotopologue.
 
+    That of a mixture has `species` and no line lists, partition function or broadening of its own.
     `cross_section` and `k_coefficient` say which tables are wanted, one of them at least.
     """
 
@@ -182,6 +191,12 @@ class Recipe:
     band_strengths: tuple[BandStrength, ...] = ()
     cross_section: bool = True
     k_coefficient: KCoefficientChoice | None = None
+    species: tuple[Species, ...] = ()
+
+    @property
+    def parts(self) -> tuple[Recipe, ...]:
+        """The recipes of the species of a mixture, or this one."""
+        return tuple(one.recipe for one in self.species) or (self,)
 
     @property
     def name(self) -> str:
