@@ -14,6 +14,8 @@ Array = NDArray[np.float64]
 BLOCK = 32
 """Points between which the weights are interpolated: they change over hundreds of cm-1, the spectrum at each point."""
 
+_NEARLY_0 = 1e-320
+
 
 @jit_inline
 def _planck(x: float, start: float) -> tuple[float, float]:
@@ -26,12 +28,29 @@ def _planck(x: float, start: float) -> tuple[float, float]:
 
 
 @jit
+def _add_block(totals: Array, sigma: Array, planck: float, planck_step: float, slope: float, slope_step: float) -> None:
+    """The sums over one block, its weights linear from point to point."""
+    emitted, planck_sum, resistance, slope_sum = 0.0, 0.0, 0.0, 0.0
+    for i in range(sigma.size):
+        b, d = planck + i * planck_step, slope + i * slope_step
+        emitted += b * sigma[i]
+        planck_sum += b
+        # Without a weight there is nothing to add, even where sigma is 0.
+        resistance += d / max(sigma[i], _NEARLY_0)
+        slope_sum += d
+    totals[0] += emitted
+    totals[1] += planck_sum
+    totals[2] += resistance
+    totals[3] += slope_sum
+
+
+@jit
 def add_mean_sums(sums: Array, sigma: Array, first: float, step: float, scale: float, start: float) -> None:
     """Add sums over points of B sigma, B, dB/dT / sigma and dB/dT times the widths of their cells to `sums` (4,).
 
     Point i lies at first + i step (cm-1); the cells of both ends are half as wide.  `scale` is c2 / T (cm); `start` is
     scale times the lowest wavenumber of a grid, so that no temperature is too low.  Where sigma is 0 and has weight
-    the third sum is infinite.
+    the third sum is infinite, or too large for what it is compared with to matter.
     """
     size = sigma.size
     totals = np.zeros(4)
@@ -40,12 +59,10 @@ def add_mean_sums(sums: Array, sigma: Array, first: float, step: float, scale: f
         planck, slope = _planck(scale * (first + low * step), start)
         end_planck, end_slope = _planck(scale * (first + high * step), start)
         planck_step, slope_step = (end_planck - planck) / (high - low), (end_slope - slope) / (high - low)
-        for i in range(low, high):
-            weight = step if 0 < i < size - 1 else 0.5 * step
-            b, d = weight * (planck + (i - low) * planck_step), weight * (slope + (i - low) * slope_step)
-            totals[0] += b * sigma[i]
-            totals[1] += b
-            # A weight of 0 lets through nothing, even where sigma is 0.
-            totals[2] += d / sigma[i] if d > 0.0 else 0.0
-            totals[3] += d
-    sums += totals
+        _add_block(totals, sigma[low:high], planck, planck_step, slope, slope_step)
+    for end in (0, size - 1):
+        planck, slope = _planck(scale * (first + end * step), start)
+        _add_block(totals, sigma[end : end + 1], -0.5 * planck, 0.0, -0.5 * slope, 0.0)
+    if math.isnan(totals[2]):  # infinite, less half of what is infinite at an end
+        totals[2] = np.inf
+    sums += step * totals

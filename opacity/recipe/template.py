@@ -169,7 +169,11 @@ pressure = { start = 1e-6, stop = 100.0, count = 9, spacing = "log" }      # dec
 """
 
 _TABLES = """\
-[cross_section]                        # the table wanted; the section has no keys
+[cross_section]                        # a table wanted; the section has no keys
+# [k_coefficient]                      # another: k-coefficients, beside it or alone
+# bands = { resolving_power = 100 }    # or { width = 10.0 }, { edges = [...] }, { wavelength = [...] } (micrometres)
+# g_points = "auto"                    # as few as transmission_error asks for, or a number
+# transmission_error = 5e-3            # largest error of a band's transmission, at every node
 
 # decide: published band strengths that `opacity check` holds the table against; leave out if there are none.
 # [[band_strength]]

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import zlib
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -37,7 +36,7 @@ def write_band_shard(path: Path, shard: BandShard) -> None:
         raise LineListError(problem(path, "a cell is not finite: a line has impossible values"))
     dtype = layout.stored_type(float(positive.min(initial=np.inf)), float(positive.max(initial=0.0)))
     arrays = {"cells": shard.cells.astype(dtype), "sums": shard.sums, "points": shard.points}
-    blocks = [zlib.compress(np.ascontiguousarray(one).tobytes(), 1) for one in arrays.values()]
+    blocks = [np.ascontiguousarray(one).tobytes() for one in arrays.values()]
     write_sealed(path, {"arrays": [[name, one.dtype.str, one.shape] for name, one in arrays.items()]}, blocks)
 
 
@@ -46,7 +45,7 @@ def read_band_shard(path: Path) -> BandShard:
     header, blocks = read_sealed(path)
     return BandShard(
         **{
-            name: np.frombuffer(zlib.decompress(block), dtype).reshape(shape)
+            name: np.frombuffer(block, dtype).reshape(shape)
             for (name, dtype, shape), block in zip(header["arrays"], blocks, strict=True)
         }
     )
