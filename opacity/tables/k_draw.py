@@ -27,7 +27,7 @@ def draw_k_table(table: KCoefficientTable, path: Path) -> Path:
 
 def _fill(figure: Any, table: KCoefficientTable) -> None:
     bands, errors = spread(table.band.size, 3), _errors(table)
-    grid = figure.add_gridspec(1 if errors is None else 2, len(bands), height_ratios=(1,) if errors is None else (2, 1))
+    grid = figure.add_gridspec(2 if errors else 1, len(bands), height_ratios=(2, 1) if errors else (1,))
     nodes = _nodes(table)
     values = [table.k(*node) for node in nodes]
     limits = _limits([k[band] for k in values for band in bands])
@@ -43,7 +43,7 @@ def _fill(figure: Any, table: KCoefficientTable) -> None:
         if column == 0:
             axes.set_ylabel(r"k (cm$^2$ molecule$^{-1}$)")
             axes.legend(loc="upper left", handlelength=3.0)
-    if errors is not None:
+    if errors:
         _draw_errors(figure.add_subplot(grid[1, :]), table, errors)
     draw.add_title(figure, table)
     figure.supxlabel(f"{table.quadrature}, {table.g.size} g points", fontsize=9, color="0.3", x=0.99, ha="right")
@@ -58,25 +58,41 @@ def _draw_steps(axes: Any, table: KCoefficientTable, band: int, k: FloatArray, s
     axes.plot(points, shown, linestyle="none", marker=".", markersize=4, color=style["color"])
 
 
-def _draw_errors(axes: Any, table: KCoefficientTable, errors: FloatArray) -> None:
+def _draw_errors(axes: Any, table: KCoefficientTable, errors: dict[str, FloatArray]) -> None:
     axes.set_yscale("log")
-    shown = np.where(errors > 0.0, errors, np.nan)
-    axes.plot(table.band_bounds.ravel(), np.repeat(shown, 2), color=draw.COLOURS[0], linewidth=1.3)
+    for look, (name, values) in enumerate(errors.items()):
+        shown = np.where(values > 0.0, values, np.nan)
+        style = {"color": draw.COLOURS[look], "linestyle": draw.DASHES[look], "label": name}
+        axes.plot(table.band_bounds.ravel(), np.repeat(shown, 2), linewidth=1.3, **style)
     axes.set_xlim(table.band_bounds[0, 0], table.band_bounds[-1, 1])
-    axes.set(xlabel=r"wavenumber (cm$^{-1}$)", ylabel="largest error\nof transmission")
+    axes.set(xlabel=r"wavenumber (cm$^{-1}$)", ylabel="error of\ntransmission")
     axes.ticklabel_format(axis="x", useOffset=False, style="plain")
     axes.tick_params(which="both", right=True)
+    low, high = axes.get_ylim()
+    axes.set_ylim(10.0 ** math.floor(math.log10(low)), high * (high / low) ** 0.5)
+    axes.legend(loc="upper left", handlelength=3.0, ncols=len(errors))
 
 
-def _errors(table: KCoefficientTable) -> FloatArray | None:
-    """Sizes of the largest errors in the certificate, (n_band,); None where it holds none for every band."""
+def _errors(table: KCoefficientTable) -> dict[str, FloatArray]:
+    """What the certificate says of every band, (n_band,) each; nothing where it holds no error for every band."""
     certificate = table.checks.get("certificate")
-    found = certificate.get("bands") if isinstance(certificate, dict) else None
+    if not isinstance(certificate, dict):
+        return {}
+    words = {"largest": "largest of all nodes", "p99": "99 % of nodes and columns"}
+    sampled = {"middle": "between nodes, sampled", "two_layers": "two layers, sampled"}
+    found = {}
     try:
-        errors = np.abs(np.array([float(one["largest"]) for one in found or []]))
+        for name, label in words.items():
+            found[label] = np.abs(np.array([float(one[name]) for one in certificate["bands"]]))
+        for name, label in sampled.items():
+            values = {int(one["band"]): one[name] for one in certificate.get("sampled", [])}
+            rows = [values.get(band) for band in range(table.band.size)]
+            if any(one is not None for one in rows):
+                found[label] = np.array([math.nan if one is None else float(one) for one in rows])
     except (KeyError, TypeError, ValueError):
-        return None
-    return errors if errors.shape == table.band.shape else None
+        return {}
+    fits = all(values.shape == table.band.shape for values in found.values())
+    return found if fits and any(np.any(values > 0.0) for values in found.values()) else {}
 
 
 def _nodes(table: KCoefficientTable) -> list[tuple[int, ...]]:
