@@ -15,6 +15,8 @@ from opacity.cli import text
 from opacity.cli.fetch import fetch as fetch
 from opacity.cli.lists import check_list, is_list
 from opacity.cli.lists import ingest as ingest
+from opacity.cli.tables import compare as compare
+from opacity.cli.tables import explain as explain
 
 if TYPE_CHECKING:
     from opacity.pipeline.build import BuildResult

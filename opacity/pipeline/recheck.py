@@ -47,7 +47,7 @@ def find_table_and_recipe(target: Path, recipe: Path | None, folder: Path) -> Ta
         remedy = "with its data set it is looked at too: give the .states or .def file beside it"
         raise TableError(problem(target, "not checked by itself", expected=CHECKED, remedy=remedy))
     if target.suffix != ".toml":
-        found = recipe if recipe is not None else _recipe_of_log(target)
+        found = recipe if recipe is not None else recipe_of_log(target)
         return Target(target, found, recipe is not None)
     if recipe is not None:
         raise InputError(problem("--recipe", f"{target} is a recipe itself", remedy="give the table, or no --recipe"))
@@ -58,7 +58,8 @@ def find_table_and_recipe(target: Path, recipe: Path | None, folder: Path) -> Ta
     return Target(table, target, True)
 
 
-def _recipe_of_log(table: Path) -> Path | None:
+def recipe_of_log(table: Path) -> Path | None:
+    """The recipe that the log beside a table names, None where there is none."""
     try:
         log = table.with_name(table.name.removesuffix(TABLE_ENDING) + ".log.json")
         path = Path(json.loads(log.read_text(encoding="utf-8"))["recipe"])
