@@ -16,7 +16,8 @@ def add_arguments(command: Callable[[str, str], argparse.ArgumentParser]) -> Non
         "--at", type=_point, required=True, metavar="NU,T,P", help="wavenumber (cm-1), temperature (K), pressure (bar)"
     )
     one.add_argument("--recipe", metavar="RECIPE", help="the recipe that the table was built from (default: its log's)")
-    one.add_argument("--lines", type=_count, default=10, metavar="N", help="so many lines (default: 10)")
+    one.add_argument("--lines", type=_count(1), default=10, metavar="N", help="so many lines (default: 10)")
+    one.add_argument("--quiet", action="store_true", help="no progress")
     one.add_argument("--json", action="store_true", help="the result as JSON on stdout")
 
     one = command("compare", "hold a table against another one, or against columns of numbers")
@@ -30,9 +31,15 @@ def add_arguments(command: Callable[[str, str], argparse.ArgumentParser]) -> Non
     one.add_argument(
         "--recipe", metavar="RECIPE", help="A's recipe, for the lines at the worst place (default: its log's)"
     )
+    one.add_argument(
+        "--lines", type=_count(0), default=3, metavar="N", help="so many of these (default: 3; 0 for none)"
+    )
+    one.add_argument("--quiet", action="store_true", help="no progress")
     of_columns = one.add_argument_group("columns of numbers")
     of_columns.add_argument("--at", type=_node, metavar="T,P", help="temperature (K) and pressure (bar) of the columns")
-    of_columns.add_argument("--columns", type=_columns, metavar="I,J", help="columns of axis and cross-section (1,2)")
+    of_columns.add_argument(
+        "--columns", type=_columns, default=(1, 2), metavar="I,J", help="those of axis and cross-section (default: 1,2)"
+    )
     of_columns.add_argument(
         "--axis", choices=("cm-1", "um", "nm"), default="cm-1", help="unit of the axis (default: cm-1)"
     )
@@ -88,10 +95,13 @@ def _bands(value: str) -> float | tuple[float, ...]:
     return numbers[0] if len(numbers) == 1 else numbers
 
 
-def _count(value: str) -> int:
-    if not (value.isdecimal() and len(value) <= 4 and 1 <= int(value) <= 1000):
-        raise argparse.ArgumentTypeError(f"expected a whole number, 1 to 1000, found {value!r}")
-    return int(value)
+def _count(lowest: int) -> Callable[[str], int]:
+    def count(value: str) -> int:
+        if not (value.isdecimal() and len(value) <= 4 and lowest <= int(value) <= 1000):
+            raise argparse.ArgumentTypeError(f"expected a whole number, {lowest} to 1000, found {value!r}")
+        return int(value)
+
+    return count
 
 
 def _columns(value: str) -> tuple[int, int]:

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import sys
 from argparse import Namespace
 from typing import TYPE_CHECKING
 
 from opacity.cli import text
+from opacity.cli.comparison import comparison_text
 
 if TYPE_CHECKING:
     from opacity.check.explain import Explanation, LinePart, Width
@@ -25,6 +27,7 @@ def explain(arguments: Namespace) -> int:
         pressure=pressure,
         recipe=arguments.recipe,
         lines=arguments.lines,
+        quiet=arguments.quiet,
     )
     if arguments.json:
         print(text.as_json(found.as_dict()))
@@ -106,4 +109,30 @@ def _width(width: Width, place: str) -> str:
 
 def compare(arguments: Namespace) -> int:
     """`opacity compare A B`: how far two tables, or a table and columns of numbers, are apart."""
-    raise NotImplementedError
+    from opacity.pipeline.compare import compare as compare_tables
+
+    found = compare_tables(
+        arguments.a,
+        arguments.b,
+        at=arguments.at,
+        columns=arguments.columns,
+        axis=arguments.axis,
+        unit=arguments.unit,
+        mass=arguments.mass,
+        bands=arguments.bands,
+        plot=arguments.plot,
+        recipe=arguments.recipe,
+        lines=arguments.lines,
+        quiet=arguments.quiet,
+    )
+    beyond = 0 if arguments.within is None else found.beyond(arguments.within)
+    if arguments.json:
+        content = found.as_dict()
+        if arguments.within is not None:
+            content |= {"within": arguments.within, "ratios_beyond": beyond}
+        print(text.as_json(content))
+    else:
+        print(comparison_text(found, arguments.within))
+    if arguments.plot:
+        print(f"picture: {arguments.plot}", file=sys.stderr if arguments.json else sys.stdout)
+    return FAILED if beyond else DONE

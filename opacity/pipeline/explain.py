@@ -105,7 +105,7 @@ def _paths(recipe: Recipe, source: LineListSource, one: OpenList) -> list[Path]:
 def _require_same_files(table: Table, recipe: Recipe, content: dict[str, Any]) -> None:
     """As `require_same_inputs`, by the files' hashes alone, so that no list is gone through for it."""
     stated = table.provenance
-    wanted = {"line lists": stated.get("line_lists"), "broadening files": stated.get("broadening_files")}
+    wanted = {"line lists": stated.get("line_lists"), "broadening files": stated.get("broadening_files") or {}}
     found = {"line lists": content["line_lists"], "broadening files": content["broadening_files"]}
     partition = stated.get("partition_function")
     if content["partition_file"] is not None and isinstance(partition, dict):
@@ -125,22 +125,30 @@ def explain(
     pressure: float,
     recipe: str | Path | Recipe | None = None,
     lines: int = 10,
+    quiet: bool = True,
 ) -> Explanation:
     """Which lines make a value of a cross-section table, and where each of them comes from.
 
     `wavenumber` (cm-1) is taken to the nearest grid point; `temperature` (K) and `pressure` (bar) may lie between
     nodes, where the table's value is interpolated and the exact sum is made at the very temperature and pressure.
     `recipe` is the one that the table was built from, by default the one that the log beside the table names;
-    `lines` (up to 1000) is how many are told.  Raises TableError where there is no recipe, it is not the table's, or
+    `lines` (up to 1000) is how many are told; a line store that is missing is made again, unless `quiet` with a bar of
+    progress.  Raises TableError where there is no recipe, it is not the table's, or
     the point lies outside of the table, InputError for an argument that cannot be right.
     """
-    expected = f"a whole number from 1 to {MOST_LINES}"
-    if not isinstance(lines, (int, np.integer)) or isinstance(lines, bool) or not 1 <= lines <= MOST_LINES:
-        raise InputError(problem("lines", "impossible", expected=expected, found=shown(lines)))
+    check_lines(lines)
     nu = _above_zero("wavenumber", "cm-1", wavenumber)
     t, p = _above_zero("temperature", "K", temperature), _above_zero("pressure", "bar", pressure)
     with open_table(table) as opened:
-        return explain_open(opened, recipe_for(opened, recipe), nu, t, p, int(lines))
+        return explain_open(opened, recipe_for(opened, recipe), nu, t, p, int(lines), quiet)
+
+
+def check_lines(lines: object, lowest: int = 1) -> None:
+    """Raise InputError for a number of lines to tell that is not whole, or not from `lowest` to 1000."""
+    whole = isinstance(lines, (int, np.integer)) and not isinstance(lines, bool)
+    if not whole or not lowest <= int(lines) <= MOST_LINES:  # type: ignore[call-overload]
+        expected = f"a whole number from {lowest} to {MOST_LINES}"
+        raise InputError(problem("lines", "impossible", expected=expected, found=shown(lines)))
 
 
 def recipe_for(table: Table, given: str | Path | Recipe | None) -> Recipe:
@@ -155,12 +163,12 @@ def recipe_for(table: Table, given: str | Path | Recipe | None) -> Recipe:
 
 
 def explain_open(
-    table: Table, recipe: Recipe, wavenumber: float, temperature: float, pressure: float, most: int
+    table: Table, recipe: Recipe, wavenumber: float, temperature: float, pressure: float, most: int, quiet: bool = True
 ) -> Explanation:
     """As `explain`, of an open table and a recipe at hand."""
     point = point_of(table, wavenumber, temperature, pressure)
     profile = recipe.profile
-    with listed_lines(table, recipe) as listed:
+    with listed_lines(table, recipe, quiet) as listed:
         found = weigh(listed, point, profile, most)
         parts = trace(recipe, found.largest, listed.places, listed.choices["defaults"])
     difference, within = judge_value(point, found, profile)
