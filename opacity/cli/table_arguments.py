@@ -31,9 +31,7 @@ def add_arguments(command: Callable[[str, str], argparse.ArgumentParser]) -> Non
     one.add_argument(
         "--recipe", metavar="RECIPE", help="A's recipe, for the lines at the worst place (default: its log's)"
     )
-    one.add_argument(
-        "--lines", type=_count(0), default=3, metavar="N", help="so many of these (default: 3; 0 for none)"
-    )
+    one.add_argument("--lines", type=_count(0), default=3, metavar="N", help="so many of these (default: 3)")
     one.add_argument("--quiet", action="store_true", help="no progress")
     of_columns = one.add_argument_group("columns of numbers")
     of_columns.add_argument("--at", type=_node, metavar="T,P", help="temperature (K) and pressure (bar) of the columns")

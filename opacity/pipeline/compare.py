@@ -62,6 +62,8 @@ def compare(
     Raises TableError for what can't be compared, InputError for an argument that cannot be right.
     """
     check_lines(lines, lowest=0)
+    if os.path.isfile(a) and not _is_table(Path(a)):
+        raise TableError(problem(a, "not a table", expected="a table first, then what it is compared with"))
     with ExitStack() as stack:
         first = _opened(stack, a)
         second = _other(stack, Path(b), first, at, columns, axis)
@@ -107,7 +109,7 @@ def _other(
     if at is None:
         expected = "the temperature (K) and pressure (bar) of the columns"
         raise InputError(problem("at", f"{path} is no table and does not say it", expected=expected, remedy="give T,P"))
-    if not isinstance(at, Sequence) or isinstance(at, str) or len(at) != 2:
+    if as_numbers("at", at).shape != (2,):
         expected = "a temperature (K) and a pressure (bar)"
         raise InputError(problem("at", "not a node", expected=expected, found=shown(at)))
     node = _positive("at[0]", at[0], "K"), _positive("at[1]", at[1], "bar")
