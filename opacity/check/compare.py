@@ -48,16 +48,15 @@ class SpectrumPair:
         return self.points.pair(self.a.at(*node), self.b.at(*node))
 
     def compare(self) -> tuple[tuple[NodeComparison, ...], tuple[Place, ...]]:
-        """All nodes, and the worst places, one a node and band, largest difference first."""
+        """All nodes, and the worst places, one a wavenumber and few a band, largest difference first."""
         nodes: list[NodeComparison] = []
         places: list[Place] = []
         for node in self.common.nodes:
             a, b = self.values(node)
             nodes.append(self._node(node, a, b))
-            here = self._places(node, a, b)
-            # Neighbouring bands share the points at their edge.
-            found = dict.fromkeys([*places, *here])
-            places = heapq.nlargest(MOST_PLACES, found, key=lambda one: abs(one.difference))
+            # At the same wavenumber the worst node speaks for all.
+            found = sorted([*places, *self._places(node, a, b)], key=_size)
+            places = heapq.nlargest(MOST_PLACES, {one.wavenumber: one for one in found}.values(), key=_size)
         return tuple(nodes), tuple(places)
 
     def _node(self, node: tuple[float, float], a: FloatArray, b: FloatArray) -> NodeComparison:
@@ -94,6 +93,10 @@ class SpectrumPair:
         return tuple(
             (slice(*ends), self.bands.weights(band)) for band, ends in enumerate(zip(first, last, strict=True))
         )
+
+
+def _size(place: Place) -> float:
+    return abs(place.difference)
 
 
 def spectrum_pair(a: Spectrum, b: Spectrum, bands: float | tuple[float, ...] | None) -> SpectrumPair:

@@ -66,7 +66,8 @@ def _within(found: Comparison, within: float, count: int) -> str:
     if not beyond:
         return f"yes: every ratio of bands ({count}) is within {within:g} of 1"
     furthest = found.worst_node.furthest
-    return f"NO: {beyond} of {count} ratios of bands are further than {within:g} from 1, by up to {furthest:.2g}"
+    worst = "in one band only B is 0" if math.isinf(furthest) else f"the worst is {furthest:.2g} from 1"
+    return f"NO: {beyond} of {count} ratios of bands are further than {within:g} from 1; {worst}"
 
 
 def _ratio(ratio: float | None) -> str:

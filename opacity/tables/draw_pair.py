@@ -44,7 +44,7 @@ def _fill(figure: Any, pair: PairPicture) -> None:
     group = curves.Group(
         pair.heading, tuple(curves.Curve(name, values, 0) for name, values in zip("AB", (pair.a, pair.b), strict=True))
     )
-    above.set(yscale="log", ylim=curves.value_range([group], slice(None), _DECADES_SHOWN), ylabel=draw.Y_LABEL)
+    above.set(yscale="log", ylim=curves.value_range([group], slice(None), _DECADES_SHOWN), ylabel=_label(pair))
     above.set_xlim(*_ends(pair))
     # B, in warm dashes, lies over A: where the two agree both are seen.
     for name, label, values, look in zip("AB", pair.names, (pair.a, pair.b), (0, 2), strict=True):
@@ -105,6 +105,10 @@ def _ends(pair: PairPicture) -> tuple[float, float]:
     if pair.edges is not None:
         return float(pair.edges[0, 0]), float(pair.edges[-1, 1])
     return float(pair.wavenumber[0]), float(pair.wavenumber[-1])
+
+
+def _label(pair: PairPicture) -> str:
+    return draw.Y_LABEL if pair.edges is None else r"mean of the band (cm$^2$ molecule$^{-1}$)"
 
 
 def _plain(text: str) -> str:
