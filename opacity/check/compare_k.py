@@ -86,21 +86,29 @@ def k_pair(a: KCoefficientTable | Table, b: KCoefficientTable | Table) -> KPair:
     Raises TableError where they have no node or no band in common.
     """
     common = common_nodes(a, b)
-    if isinstance(a, KCoefficientTable) and isinstance(b, KCoefficientTable):
-        _require_same_bands(a, b)
-        return KPair(a, b, common, a.band_bounds, tuple(range(a.band.size)), ())
-    k_table, other = (a, b) if isinstance(a, KCoefficientTable) else (b, a)
-    assert isinstance(k_table, KCoefficientTable)
-    assert isinstance(other, Table)
-    bounds, nu = k_table.band_bounds, other.wavenumber
+    if isinstance(a, KCoefficientTable):
+        if isinstance(b, KCoefficientTable):
+            _require_same_bands(a, b)
+            return KPair(a, b, common, a.band_bounds, tuple(range(a.band.size)), ())
+        rows, notes = _bands_within(a, b)
+        return KPair(a, b, common, a.band_bounds[list(rows)], rows, notes)
+    if isinstance(b, KCoefficientTable):
+        rows, notes = _bands_within(b, a)
+        return KPair(a, b, common, b.band_bounds[list(rows)], rows, notes)
+    raise TableError(problem(f"{a.path}, {b.path}", "neither is a table of k-coefficients"))
+
+
+def _bands_within(table: KCoefficientTable, spectra: Table) -> tuple[tuple[int, ...], tuple[str, ...]]:
+    """The bands that lie within the spectra, and a note on those that do not."""
+    bounds, nu = table.band_bounds, spectra.wavenumber
     margin = _SAME_EDGE * float(nu[-1])
     inside = np.flatnonzero((bounds[:, 0] >= nu[0] - margin) & (bounds[:, 1] <= nu[-1] + margin))
     if not inside.size or nu.size < 2:
         found = f"bands {_reach(bounds)}, spectra {nu[0]:.10g} to {nu[-1]:.10g} cm-1"
-        raise TableError(problem(f"{a.path}, {b.path}", "no band lies within the spectra", found=found))
+        raise TableError(problem(f"{table.path}, {spectra.path}", "no band lies within the spectra", found=found))
     beyond = len(bounds) - inside.size
     notes = (f"{beyond} of {len(bounds)} bands reach beyond the spectra: left out",) if beyond else ()
-    return KPair(a, b, common, bounds[inside], tuple(inside.tolist()), notes)
+    return tuple(inside.tolist()), notes
 
 
 def _require_same_bands(a: KCoefficientTable, b: KCoefficientTable) -> None:

@@ -2,19 +2,26 @@
 
 from __future__ import annotations
 
+import io
 import math
 import os
+import warnings
 from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
+from numpy.typing import NDArray
 
 from opacity.errors import InputError, TableError, excerpt, problem
 from opacity.grids import FloatArray
-from opacity.line_list.text import read_chunks
+from opacity.line_list.text import TextChunk, read_chunks
 from opacity.units import SPECTRAL_UNITS
 
 _BYTE_ORDER_MARK = b"\xef\xbb\xbf"
+_SEPARATORS = (",", ";")
+_EXPECTED = "rows of wavenumber or wavelength and cross-section"
+_Rows = tuple[FloatArray, FloatArray, NDArray[np.int64]]
+"""Axis, cross-section and line numbers of some rows, (n,) each."""
 
 
 @dataclass(frozen=True)
@@ -56,10 +63,10 @@ def read_number_columns(path: Path, node: tuple[float, float], columns: tuple[in
     if os.path.exists(path) and not os.path.isfile(path):
         # A pipe would be waited for.
         raise TableError(problem(path, "not a file", expected="a table, or text of columns"))
-    places, values, lines = _read(path, columns)
-    if len(places) < 2:
-        raise TableError(problem(path, "fewer than two rows of numbers", expected=_EXPECTED, found=len(places)))
-    nu, sigma = np.array(places), np.array(values)
+    places, sigma, lines = _read(path, columns)
+    if places.size < 2:
+        raise TableError(problem(path, "fewer than two rows of numbers", expected=_EXPECTED, found=places.size))
+    nu = places
     divided = SPECTRAL_UNITS[axis]
     if divided is not None:
         nu = divided / nu
@@ -69,50 +76,77 @@ def read_number_columns(path: Path, node: tuple[float, float], columns: tuple[in
     if wrong.size:
         row = int(wrong[0]) + 1
         found = f"{places[row]:.10g} after {places[row - 1]:.10g}"
-        raise TableError(
-            problem(
-                f"{path}:{lines[row]}", "out of order", expected="an axis that rises or falls throughout", found=found
-            )
-        )
+        expected = "an axis that rises or falls throughout"
+        raise TableError(problem(f"{path}:{lines[row]}", "out of order", expected=expected, found=found))
     if falls:
         nu, sigma = nu[::-1], sigma[::-1]
     axes = np.array(node[:1]), np.array(node[1:])
     return NumberColumns(path, np.ascontiguousarray(nu), np.ascontiguousarray(sigma), *axes)
 
 
-_EXPECTED = "rows of wavenumber or wavelength and cross-section"
+def _read(path: Path, columns: tuple[int, int]) -> _Rows:
+    """The two columns of all rows."""
+    parts = [(np.empty(0), np.empty(0), np.empty(0, dtype=np.int64))]
+    named = begun = False
+    for chunk in read_chunks(path):
+        row = 0
+        # Up to the first row of numbers there may be names of columns.
+        while not begun and row < len(chunk):
+            words = _words(chunk.record(row))
+            if words and not named and all(_number(word) is None for word in words):
+                named = True
+            elif words:
+                parts.append(_one_by_one(path, chunk, row, row + 1, columns))
+                begun = True
+            row += 1
+        if row < len(chunk):
+            parts.append(_at_once(chunk, row, columns) or _one_by_one(path, chunk, row, len(chunk), columns))
+    axis, values, lines = zip(*parts, strict=True)
+    return np.concatenate(axis), np.concatenate(values), np.concatenate(lines)
 
 
-def _read(path: Path, columns: tuple[int, int]) -> tuple[list[float], list[float], list[int]]:
-    """The two columns and the line numbers of their rows."""
+def _at_once(chunk: TextChunk, row: int, columns: tuple[int, int]) -> _Rows | None:
+    """The rows of a chunk from one on by numpy's reader; None where they have to be looked at one by one."""
+    text = chunk.buffer[chunk.starts[row] : chunk.stops[-1]].tobytes().decode("latin-1")
+    delimiter = next((one for one in _SEPARATORS if one in text), None)
+    wanted = [place - 1 for place in columns]
+    try:
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore")  # of text without a row
+            found = np.loadtxt(io.StringIO(text), delimiter=delimiter, usecols=wanted, ndmin=2, dtype=np.float64)
+    except (ValueError, IndexError):
+        return None
+    if found.shape != (len(chunk) - row, 2):
+        return None
+    axis, values = found.T
+    if not np.all((axis > 0.0) & (axis < np.inf) & (values >= 0.0) & (values < np.inf)):
+        return None
+    return axis, values, chunk.line[row:]
+
+
+def _one_by_one(path: Path, chunk: TextChunk, start: int, stop: int, columns: tuple[int, int]) -> _Rows:
+    """The rows of a chunk from one to before another.  Raises TableError for the first that can't be right."""
     places: list[float] = []
     values: list[float] = []
     lines: list[int] = []
-    first = True
-    for chunk in read_chunks(path):
-        for row in range(len(chunk)):
-            record = chunk.record(row).removeprefix(_BYTE_ORDER_MARK).partition(b"#")[0]
-            words = _words(record)
-            if not words:
-                continue
-            where = f"{path}:{chunk.line[row]}"
-            numbers = [_number(words[place - 1]) if place <= len(words) else None for place in columns]
-            if None in numbers and first and not any(_number(word) is not None for word in words):
-                first = False  # names of columns
-                continue
-            first = False
-            if len(words) < max(columns):
-                expected = f"{max(columns)} columns, of which {columns[0]} and {columns[1]} are read"
-                raise TableError(problem(where, "too few columns", expected=expected, found=f'"{excerpt(record)}"'))
-            place, value = (math.nan if one is None else one for one in numbers)
-            if not 0.0 < place < math.inf:
-                raise _fault(where, "axis is impossible", "a finite number above 0", record)
-            if not 0.0 <= value < math.inf:
-                raise _fault(where, "cross-section is impossible", "a finite number, 0 or more", record)
-            places.append(place)
-            values.append(value)
-            lines.append(int(chunk.line[row]))
-    return places, values, lines
+    for row in range(start, stop):
+        record = chunk.record(row)
+        words = _words(record)
+        if not words:
+            continue
+        where = f"{path}:{chunk.line[row]}"
+        if len(words) < max(columns):
+            expected = f"{max(columns)} columns, of which {columns[0]} and {columns[1]} are read"
+            raise _fault(where, "too few columns", expected, record)
+        place, value = (_number(words[one - 1]) for one in columns)
+        if place is None or not 0.0 < place < math.inf:
+            raise _fault(where, "axis is impossible", "a finite number above 0", record)
+        if value is None or not 0.0 <= value < math.inf:
+            raise _fault(where, "cross-section is impossible", "a finite number, 0 or more", record)
+        places.append(place)
+        values.append(value)
+        lines.append(int(chunk.line[row]))
+    return np.array(places), np.array(values), np.array(lines, dtype=np.int64)
 
 
 def _fault(where: str, what: str, expected: str, record: bytes) -> TableError:
@@ -120,8 +154,8 @@ def _fault(where: str, what: str, expected: str, record: bytes) -> TableError:
 
 
 def _words(record: bytes) -> list[str]:
-    text = record.decode("latin-1")
-    for separator in (",", ";"):
+    text = record.removeprefix(_BYTE_ORDER_MARK).partition(b"#")[0].decode("latin-1")
+    for separator in _SEPARATORS:
         if separator in text:
             return [word.strip() for word in text.split(separator)]
     return text.split()

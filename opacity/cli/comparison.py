@@ -9,6 +9,7 @@ from opacity.cli import text
 
 if TYPE_CHECKING:
     from opacity.check.comparison import Comparison, NodeComparison
+    from opacity.check.explain import Explanation
 
 MOST_ROWS = 20
 """Nodes or bands told one by one; of more the worst are."""
@@ -20,7 +21,7 @@ def comparison_text(found: Comparison, within: float | None) -> str:
     if found.worst:
         parts.append(_places(found))
     if found.explanation is not None and found.explanation.parts:
-        parts.append(_lines(found))
+        parts.append(_lines(found.explanation))
     return "\n\n".join(parts)
 
 
@@ -143,9 +144,7 @@ def _places(found: Comparison) -> str:
     return "\n".join(rows)
 
 
-def _lines(found: Comparison) -> str:
-    one = found.explanation
-    assert one is not None
+def _lines(one: Explanation) -> str:
     rows = [f"lines of A at {one.wavenumber:.10g} cm-1, {one.temperature:.6g} K, {one.pressure:.4g} bar:"]
     rows += [
         f"  {part.wavenumber:.6f} cm-1, {text.percent(part.share)} of the exact sum {one.exact:.4e},"

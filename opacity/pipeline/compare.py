@@ -246,9 +246,8 @@ def _draw(
     where = f"{node.temperature:.6g} K, {node.pressure:.4g} bar"
     many = len(found.nodes) > 1
     heading = f"{where}, {'the worst of ' + str(len(found.nodes)) + ' nodes' if many else 'the one node compared'}"
-    ratios = (
-        "a band where only B is 0" if math.isinf(node.furthest) else f"ratios of bands within {node.furthest:.2g} of 1"
-    )
+    far = node.furthest
+    ratios = "in a band only B is 0" if math.isinf(far) else f"ratios of bands within {far:.2g} of 1"
     said = [found.points_compared, ratios]
     names = Path(found.a).name, Path(found.b).name
     draw_pair(PairPicture(heading, names, wavenumber, a, b, edges, "; ".join(one for one in said if one)), path)

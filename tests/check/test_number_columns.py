@@ -25,6 +25,7 @@ def read(tmp_path: Path, text: str | bytes, columns=(1, 2), axis="cm-1"):
     "text",
     [
         "100 1e-20\n101 2e-20\n102.5 0\n",
+        "100 1e-20\n101 2e-20\n102.5 0\n# the end\n# of it\n",
         "# written by hand\nnu sigma\n\n100\t1D-20\n101 2d-20  # a remark\n102.5 0.0",
         "wavenumber (cm-1), cross-section\r\n100, 1e-20\r\n101,2e-20\r\n102.5,0\r\n",
         "\ufeffnu;sigma\n102.5;0\n101;2e-20\n100;1e-20\n",
@@ -35,6 +36,38 @@ def test_what_is_written_is_read(tmp_path: Path, text: str):
     np.testing.assert_array_equal(found.wavenumber, [100.0, 101.0, 102.5])
     np.testing.assert_array_equal(found.at(*NODE), [1e-20, 2e-20, 0.0])
     assert (found.temperature.tolist(), found.pressure.tolist()) == ([296.0], [1.0])
+
+
+@pytest.mark.parametrize(
+    "row, words",
+    [
+        ("{0} {1} # remark", None),
+        ("{0}\t{1:.6E}", None),
+        ("{0} {1} 7 8", None),
+        ("{0},  {1}", None),
+        ("{0} 1.5D-20", None),
+        ("{0} nan", "cross-section is impossible"),
+        ("{0}", "too few columns"),
+        ("{0} 1e-20x", "cross-section is impossible"),
+        ("-{0} 1e-20", "axis is impossible"),
+        ("# all of it", None),
+    ],
+)
+def test_one_odd_row_among_many_is_read_or_named(tmp_path: Path, row: str, words: str | None):
+    """Most rows are read at once by numpy, which must not hide what looking at each would find."""
+    rows = [f"{100.0 + k} {1e-20 * (k % 7 + 1)}" for k in range(300)]
+    odd = 200
+    rows[odd] = row.format(100.0 + odd, 1e-20 * (odd % 7 + 1))
+    text = "nu sigma\n" + "\n".join(rows) + "\n"
+    if words is not None:
+        with pytest.raises(TableError, match=rf"b\.txt:{odd + 2}: {words}"):
+            read(tmp_path, text)
+        return
+    found = read(tmp_path, text)
+    expected = [1.5e-20 if k == odd and "D" in row else 1e-20 * (k % 7 + 1) for k in range(300)]
+    kept = [k for k in range(300) if k != odd or not row.startswith("#")]
+    np.testing.assert_array_equal(found.wavenumber, [100.0 + k for k in kept])
+    np.testing.assert_allclose(found.sigma, [expected[k] for k in kept], rtol=1e-6)
 
 
 def test_wavelengths_and_other_columns(tmp_path: Path):
@@ -59,6 +92,7 @@ def test_compressed(tmp_path: Path):
     [
         ("", "fewer than two rows of numbers"),
         ("# only a remark\n", "fewer than two rows"),
+        ("1 1\n# only a remark\n# and another\n", "fewer than two rows"),
         ("100 1e-20\n", "fewer than two rows"),
         ("100 1e-20\n101 nan\n", r"b\.txt:2: cross-section is impossible; .* found \"101 nan\""),
         ("100 1e-20\n101 inf\n", r"b\.txt:2: cross-section is impossible"),
