@@ -36,7 +36,7 @@ name = "carbon monoxide"
 formula = "CO"
 {lists}
 [isotopologues]
-abundance = "pure"
+abundance = {abundance}
 [partition_function]
 source = "TIPS-2021"
 [broadening]
@@ -66,7 +66,7 @@ def build(tmp_path: Path) -> Build:
     """Write a recipe, build its table in a folder of its own and return the table's path."""
 
     def made(lists: str, broadening: str = "mixture = { air = 1.0 }", **changes: str) -> Path:
-        parts = {"cutoff": "25.0", "profile": "", "nodes": GRID, **changes}
+        parts = {"cutoff": "25.0", "profile": "", "nodes": GRID, "abundance": '"pure"', **changes}
         path = tmp_path / "co.toml"
         path.write_text(RECIPE.format(lists=lists, broadening=broadening, **parts), encoding="utf-8")
         return opacity.build(opacity.load_recipe(path), tmp_path / "tables")[0]
@@ -179,6 +179,42 @@ def test_files_of_one_name_in_two_folders_are_told_apart(build: Build, tmp_path:
     assert {Path(part.file).parent.name for part in found.parts} == {"a", "b"}
     for part in found.parts:
         assert float(record_of(found, part)[3:15]) == part.wavenumber
+
+
+@pytest.mark.parametrize("stored", [False, True])
+@pytest.mark.parametrize("share", [0.0, 0.2])
+def test_isotopologues_of_two_lists_have_their_own_share(
+    build: Build, tmp_path: Path, stored: bool, share: float, monkeypatch: pytest.MonkeyPatch
+):
+    if stored:
+        monkeypatch.setattr(sources_module, "SMALL_LIST", 0)
+    records = (SAMPLES / "carbon-monoxide.par").read_text().splitlines()
+    # Every other line is made one of the second isotopologue.
+    records = [record[:2] + "12"[number % 2] + record[3:] for number, record in enumerate(records)]
+    for name in ("low", "high"):
+        (tmp_path / f"{name}.par").write_text("\n".join(records) + "\n")
+    lists = HITRAN.format(file="low.par") + "range = [0.0, 2147.0]\n"
+    lists += HITRAN.format(file="high.par") + "range = [2147.000001, 3000.0]\n"
+    other = f', "(13C)(16O)" = {share}' if share > 0.0 else ""
+    fractions = f'{{ "(12C)(16O)" = 0.7{other} }}'
+    table = build(lists, abundance=fractions)
+    found = opacity.explain(table, wavenumber=2146.0, temperature=480.0, pressure=1.0, lines=1000)
+    assert found.within
+    assert sum(part.value for part in found.parts) == pytest.approx(found.exact, rel=1e-12)
+    isotopes = {"(12C)(16O)": (1, 0.7), "(13C)(16O)": (2, share)}
+    assert {part.isotopologue for part in found.parts} == {name for name, (_, x) in isotopes.items() if x > 0.0}
+    in_reach = [r for r in records if abs(float(r[3:15]) - 2146.0) <= 25.0 and (share > 0.0 or r[2] == "1")]
+    assert found.lines == len(in_reach)
+    for part in found.parts:
+        record = record_of(found, part)
+        local, fraction = isotopes[part.isotopologue]
+        iso = isotopologue(5, local)
+        assert record[2] == str(local)
+        assert Path(part.file).name == ("low.par" if part.wavenumber <= 2147.0 else "high.par")
+        assert float(record[3:15]) == part.wavenumber
+        expected = float(record[15:25]) / iso.abundance * fraction
+        assert part.strength_296 == pytest.approx(expected, rel=1e-6)
+        assert part.doppler == pytest.approx(doppler_of(part.wavenumber, 480.0, iso.mass), rel=1e-6)
 
 
 def test_a_hapi_table_names_the_record_for_each_gas(build: Build, tmp_path: Path):
@@ -407,7 +443,7 @@ def test_as_dict_is_plain(build: Build, tmp_path: Path):
 def test_real_lines_of_water(build: Build, tmp_path: Path):
     """At the strongest point and at the weakest: the parts' sum is the table's, and each is its record's."""
     shutil.copy(Path(os.environ["OPACITY_REAL_LINES"]) / "H2O.par", tmp_path / "H2O.par")
-    text = RECIPE.replace("CO", "H2O").replace("carbon monoxide", "water").replace('"pure"', '"terrestrial"')
+    text = RECIPE.replace("CO", "H2O").replace("carbon monoxide", "water").replace("{abundance}", '"terrestrial"')
     text = text.replace("2145.0, stop = 2149.0", "3700.0, stop = 3704.0")
     parts = {"cutoff": "25.0", "profile": "", "nodes": GRID, "broadening": "mixture = { air = 0.9, self = 0.1 }"}
     (tmp_path / "h2o.toml").write_text(text.format(lists=HITRAN.format(file="H2O.par"), **parts))
