@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.arguments import as_number, as_numbers, shown
+from opacity.arguments import as_numbers, as_positive, shown
 from opacity.check.compare import SpectrumPair, spectrum_pair
 from opacity.check.compare_k import KPair, k_pair
 from opacity.check.comparison import Comparison
@@ -113,7 +113,7 @@ def _other(
     if as_numbers("at", at).shape != (2,):
         expected = "a temperature (K) and a pressure (bar)"
         raise InputError(problem("at", "not a node", expected=expected, found=shown(at)))
-    node = _positive("at[0]", at[0], "K"), _positive("at[1]", at[1], "bar")
+    node = as_positive("at[0]", at[0], "K"), as_positive("at[1]", at[1], "bar")
     whole = all(isinstance(one, (int, np.integer)) and not isinstance(one, bool) and one >= 1 for one in columns)
     if len(columns) != 2 or not whole or columns[0] == columns[1]:
         raise InputError(problem("columns", "impossible", expected="two numbers from 1", found=shown(columns)))
@@ -133,19 +133,11 @@ def _is_table(path: Path) -> bool:
         return False
 
 
-def _positive(name: str, value: object, unit: str) -> float:
-    expected = f"a number above 0 {unit}"
-    number = as_number(name, value, expected)
-    if number <= 0.0:
-        raise InputError(problem(name, "impossible", expected=expected, found=shown(value)))
-    return number
-
-
 def _bands(bands: object) -> float | tuple[float, ...] | None:
     if bands is None:
         return None
     if isinstance(bands, (int, float, np.number)):
-        return _positive("bands", bands, "cm-1")
+        return as_positive("bands", bands, "cm-1")
     return tuple(as_numbers("bands", bands, "a width, or rising edges in cm-1").tolist())
 
 
@@ -153,7 +145,7 @@ def _factor(table: Table | KCoefficientTable, unit: str, mass: float | None) -> 
     """By what the columns' cross-section is multiplied, and what was assumed for that."""
     words = []
     if mass is not None:
-        mass = _positive("mass", mass, "g/mol")
+        mass = as_positive("mass", mass, "g/mol")
     elif unit == "cm2/g":
         mass = _mean_mass(table)
         words = [] if mass is None else [f"cm2/g of B taken with a mass of {mass:.6g} g/mol, that of A's isotopologues"]

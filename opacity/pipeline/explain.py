@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 
-from opacity.arguments import as_number, shown
+from opacity.arguments import as_positive, shown
 from opacity.check.explain import Explanation, judge_value, point_of, weigh
 from opacity.check.open_check import require_same_recipe
 from opacity.cross_sections.prepare import PreparedLines, abundance_factors, prepare
@@ -137,8 +137,8 @@ def explain(
     the point lies outside of the table, InputError for an argument that cannot be right.
     """
     check_lines(lines)
-    nu = _above_zero("wavenumber", "cm-1", wavenumber)
-    t, p = _above_zero("temperature", "K", temperature), _above_zero("pressure", "bar", pressure)
+    nu = as_positive("wavenumber", wavenumber, "cm-1")
+    t, p = as_positive("temperature", temperature, "K"), as_positive("pressure", pressure, "bar")
     with open_table(table) as opened:
         return explain_open(opened, recipe_for(opened, recipe), nu, t, p, int(lines), quiet)
 
@@ -190,11 +190,3 @@ def explain_open(
         share_of_ten=found.share_of_ten,
         parts=tuple(replace(one, share=one.value / found.total) for one in parts),
     )
-
-
-def _above_zero(name: str, unit: str, value: object) -> float:
-    expected = f"a number above 0 {unit}"
-    number = as_number(name, value, expected)
-    if number <= 0.0:
-        raise InputError(problem(name, "impossible", expected=expected, found=shown(value)))
-    return number
