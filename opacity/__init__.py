@@ -25,10 +25,14 @@ __version__ = VERSION
 if TYPE_CHECKING:
     from opacity.api import build, cross_section, exact_cross_section, plan
     from opacity.arguments import DefaultWidth
+    from opacity.check.comparison import Comparison
+    from opacity.check.explain import Explanation
     from opacity.chi_factors import CHI_FACTORS
     from opacity.k_coefficient.public import k_coefficients, mix_k
     from opacity.line_list.model import LineList
     from opacity.line_list.read import read_lines
+    from opacity.pipeline.compare import compare
+    from opacity.pipeline.explain import explain
     from opacity.recipe.load import load_recipe
     from opacity.recipe.model import Cutoff, CutoffStep
     from opacity.tables.k_read import KCoefficientTable
@@ -37,13 +41,17 @@ if TYPE_CHECKING:
 
 _HOMES = {
     "build": "opacity.api",
+    "compare": "opacity.pipeline.compare",
     "cross_section": "opacity.api",
     "exact_cross_section": "opacity.api",
+    "explain": "opacity.pipeline.explain",
     "k_coefficients": "opacity.k_coefficient.public",
     "mix_k": "opacity.k_coefficient.public",
     "plan": "opacity.api",
     "read_lines": "opacity.line_list.read",
     "LineList": "opacity.line_list.model",
+    "Comparison": "opacity.check.comparison",
+    "Explanation": "opacity.check.explain",
     "DefaultWidth": "opacity.arguments",
     "CHI_FACTORS": "opacity.chi_factors",
     "load_recipe": "opacity.recipe.load",
@@ -57,9 +65,11 @@ _HOMES = {
 __all__ = [
     "CHI_FACTORS",
     "AssumptionWarning",
+    "Comparison",
     "Cutoff",
     "CutoffStep",
     "DefaultWidth",
+    "Explanation",
     "InputError",
     "KCoefficientTable",
     "LineList",
@@ -72,8 +82,10 @@ __all__ = [
     "TableError",
     "__version__",
     "build",
+    "compare",
     "cross_section",
     "exact_cross_section",
+    "explain",
     "k_coefficients",
     "load_recipe",
     "mix_k",

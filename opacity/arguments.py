@@ -50,6 +50,15 @@ def as_number(name: str, value: object, expected: str = "a number") -> float:
     raise InputError(problem(name, "not a number", expected=expected, found=shown(value)))
 
 
+def as_positive(name: str, value: object, unit: str) -> float:
+    """A finite number above 0 as float.  Raises InputError for anything else."""
+    expected = f"a number above 0 {unit}"
+    number = as_number(name, value, expected)
+    if number <= 0.0:
+        raise InputError(problem(name, "impossible", expected=expected, found=shown(value)))
+    return number
+
+
 def as_numbers(name: str, values: object, expected: str = "numbers") -> NDArray[np.float64]:
     """Numbers as an array of f8 of one or more dimensions.  Raises InputError for text, booleans and anything else."""
     try:

@@ -94,6 +94,9 @@ def build(arguments: Namespace) -> int:
         quiet=arguments.quiet,
         announce=lambda plan: _warn((*plan.warnings, *plan.limited)),
     )
+    for one in made:
+        if one.reused:
+            _warn(one.figures["warnings"])
     if arguments.json:
         contents = [_as_dict(one) for one in made]
         print(text.as_json(contents[0] if len(made) == 1 else {"tables": contents}))
@@ -137,8 +140,6 @@ def _tell(made: BuildResult, quiet: bool) -> None:
     if not figures:
         print(f"all {made.units} units done; another task is putting the table together")
         return
-    if made.reused:
-        _warn(figures["warnings"])
     if not quiet:
         _print_notes(figures["ledger"], figures["assumptions"])
         print_results([CheckResult(**row) for row in figures["results"]], figures)

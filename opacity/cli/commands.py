@@ -18,6 +18,8 @@ from opacity.cli.k_tables import g_points as g_points
 from opacity.cli.k_tables import mix as mix
 from opacity.cli.lists import check_list, is_list
 from opacity.cli.lists import ingest as ingest
+from opacity.cli.tables import compare as compare
+from opacity.cli.tables import explain as explain
 
 
 def new(arguments: Namespace) -> int:

@@ -16,6 +16,7 @@ from types import FrameType
 from typing import NoReturn
 
 from opacity.cli import commands, k_tables
+from opacity.cli.table_arguments import add_arguments
 from opacity.errors import OpacityError
 from opacity.provenance import VERSION
 
@@ -111,6 +112,8 @@ def _add_reading_commands(command: Callable[[str, str], argparse.ArgumentParser]
     one.add_argument("--plot", metavar="FILE.png", help="draw the table (needs the plot extra)")
     one.add_argument("--zoom", type=_range, metavar="FROM,TO", help="stretch (cm-1) to draw enlarged")
     one.add_argument("--json", action="store_true", help="the result as JSON on stdout")
+
+    add_arguments(command)
 
 
 def _add_shared(one: argparse.ArgumentParser) -> None:

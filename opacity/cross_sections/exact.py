@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy.special import wofz
 
 from opacity.cross_sections.prepare import NodeLines
@@ -77,11 +78,36 @@ def exact_at(
         line = low[point] + place
         within = np.abs(points[point] - node.wavenumber[line]) <= cutoff
         point, line = point[within], line[within]
-        widths = node.doppler[line], node.lorentz[line]
-        distance = points[point] - node.centre[line]
-        profile = chi_factors(chi, distance) * voigt_profile(distance, *widths)
-        if plinth:
-            edge = np.full(line.size, cutoff)
-            profile = np.maximum(profile - chi_factors(chi, edge) * voigt_profile(edge, *widths), 0.0)
+        profile = _profiles(node, line, points[point] - node.centre[line], cutoff, plinth, chi)
         sigma += np.bincount(point, node.strength[line] * profile, points.size)
     return sigma
+
+
+def exact_parts(
+    node: NodeLines, point: float, cutoff: float, plinth: bool = False, chi: FloatArray | None = None
+) -> tuple[NDArray[np.intp], FloatArray]:
+    """The lines in reach of one point (cm-1), (n,) as indices, and what each adds there, (n,), cm2/molecule.
+
+    Their sum is what `exact_at` gives.  The lines of `node` must be sorted by unshifted wavenumber.
+    """
+    low, high = np.searchsorted(node.wavenumber, [point - cutoff - 1e-6, point + cutoff + 1e-6])
+    line = np.arange(low, high)
+    line = line[np.abs(point - node.wavenumber[line]) <= cutoff]
+    return line, node.strength[line] * _profiles(node, line, point - node.centre[line], cutoff, plinth, chi)
+
+
+def _profiles(
+    node: NodeLines,
+    line: NDArray[np.intp],
+    distance: FloatArray,
+    cutoff: float,
+    plinth: bool,
+    chi: FloatArray | None,
+) -> FloatArray:
+    """The profiles (per cm-1) of lines at distances (cm-1) from their shifted centres, (n,) all."""
+    widths = node.doppler[line], node.lorentz[line]
+    profile = chi_factors(chi, distance) * voigt_profile(distance, *widths)
+    if not plinth:
+        return profile
+    edge = np.full(line.size, cutoff)
+    return np.maximum(profile - chi_factors(chi, edge) * voigt_profile(edge, *widths), 0.0)

@@ -98,7 +98,7 @@ def load_inputs(
     nu = recipe.grid.wavenumber
     margin = max(step.cutoff for step in recipe.profile.cutoff.steps)
     lower, upper = max(float(nu[0]) - margin, 0.0), float(nu[-1]) + margin
-    choices = _choices(recipe, lists)
+    choices = choices_of(recipe, lists)
     stores = [one.windows for one in lists]
     ledger = Ledger()
     for one in lists:
@@ -212,7 +212,7 @@ def _check_molecule(recipe: Recipe) -> None:
         raise RecipeError(faults.problems())
 
 
-def _choices(recipe: Recipe, lists: Sequence[OpenList]) -> dict[str, Any]:
+def choices_of(recipe: Recipe, lists: Sequence[OpenList]) -> dict[str, Any]:
     """The recipe's choices as arguments of `prepare`; a definition's default widths serve where nothing else does."""
     choice = recipe.partition_function
     partition: Any = choice.path if choice.path is not None else choice.source

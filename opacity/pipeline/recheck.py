@@ -48,7 +48,7 @@ def find_tables_and_recipe(target: Path, recipe: Path | None, folder: Path) -> l
         remedy = "with its data set it is looked at too: give the .states or .def file beside it"
         raise TableError(problem(target, "not checked by itself", expected=CHECKED, remedy=remedy))
     if target.suffix != ".toml":
-        found = recipe if recipe is not None else _recipe_of_log(target)
+        found = recipe if recipe is not None else recipe_of_log(target)
         return [Target(target, found, recipe is not None)]
     if recipe is not None:
         raise InputError(problem("--recipe", f"{target} is a recipe itself", remedy="give the table, or no --recipe"))
@@ -61,7 +61,8 @@ def find_tables_and_recipe(target: Path, recipe: Path | None, folder: Path) -> l
     return [Target(table, target, True) for table in tables]
 
 
-def _recipe_of_log(table: Path) -> Path | None:
+def recipe_of_log(table: Path) -> Path | None:
+    """The recipe that the log beside a table names, None where there is none."""
     try:
         name = table.name
         for kind in (CROSS_SECTION, K_COEFFICIENT):

@@ -32,8 +32,8 @@ _STYLE = {
 }
 _LEGEND_ROW = 0.042
 """Height of a row of the legend, as a share of the enlarged panel's."""
-_Y_LABEL = r"cross-section (cm$^2$ molecule$^{-1}$)"
-_X_LABEL = r"wavenumber (cm$^{-1}$)"
+Y_LABEL = r"cross-section (cm$^2$ molecule$^{-1}$)"
+X_LABEL = r"wavenumber (cm$^{-1}$)"
 
 
 def draw_table(table: Table, path: Path, *, zoom: tuple[float, float] | None = None) -> Path:
@@ -93,16 +93,16 @@ def _fill_figure(figure: Any, table: Table, groups: list[curves.Group], part: sl
     for row, group in enumerate(groups):
         axes = figure.add_subplot(grid[row, 0], sharex=wide[0] if wide else None)
         _draw_group(axes, table, group, everything, limits)
-        axes.set_ylabel(_Y_LABEL)
+        axes.set_ylabel(Y_LABEL)
         axes.text(0.012, 0.94, group.heading, transform=axes.transAxes, va="top")
         columns = len(group.curves) if len(group.curves) <= 4 else 3
         axes.legend(loc="upper right", ncols=columns, handlelength=3.0, columnspacing=1.5)
         wide.append(axes)
         axes.axvspan(*_ends(table, part), color="0.85", zorder=0)
-    wide[-1].set_xlabel(_X_LABEL)
+    wide[-1].set_xlabel(X_LABEL)
     for axes in wide[:-1]:
         axes.tick_params(labelbottom=False)
-    _add_wavelengths(wide[0])
+    add_wavelengths(wide[0])
     zoomed = figure.add_subplot(grid[:, 1])
     # Its legend stands above the curves: a line's peak may lie anywhere below it.
     above = _LEGEND_ROW * (len(groups[-1].curves) + 1.5) if len(groups) > 1 else 0.05
@@ -110,7 +110,7 @@ def _fill_figure(figure: Any, table: Table, groups: list[curves.Group], part: sl
     if len(groups) > 1:
         zoomed.legend(title=groups[-1].heading, loc="upper right", handlelength=3.0)
     zoomed.locator_params(axis="x", nbins=4)
-    zoomed.set_xlabel(_X_LABEL)
+    zoomed.set_xlabel(X_LABEL)
     zoomed.set_title("enlarged: the stretch shaded on the left", color="0.3")
     _add_words(figure, table)
 
@@ -148,12 +148,12 @@ def _draw_group(axes: Any, table: Table, group: curves.Group, part: slice, limit
         axes.set_xlim(first, last)
     for curve in group.curves:
         look = {"color": COLOURS[curve.look], "linestyle": DASHES[curve.look], "label": curve.label}
-        _draw_curve(axes, table.wavenumber[part], curve.values[part], look)
+        draw_curve(axes, table.wavenumber[part], curve.values[part], look)
     axes.tick_params(which="both", right=True)
     axes.ticklabel_format(axis="x", useOffset=False, style="plain")
 
 
-def _draw_curve(axes: Any, wavenumber: Any, values: Any, look: dict[str, Any]) -> None:
+def draw_curve(axes: Any, wavenumber: Any, values: Any, look: dict[str, Any]) -> None:
     """Zeros are gaps; a curve of many points is the band between its bins' smallest and largest values."""
     if wavenumber.size <= curves.MOST_POINTS:
         marker = "." if wavenumber.size == 1 else None
@@ -164,7 +164,7 @@ def _draw_curve(axes: Any, wavenumber: Any, values: Any, look: dict[str, Any]) -
     axes.plot(band.wavenumber, band.highest, linewidth=1.0, **look)
 
 
-def _add_wavelengths(axes: Any) -> None:
+def add_wavelengths(axes: Any) -> None:
     """A scale of wavelengths (um) along the top."""
     first, last = axes.get_xlim()
     top = axes.secondary_xaxis("top")
