@@ -32,7 +32,7 @@ from opacity.tables.atomic import remove_leftovers, write_atomically
 from opacity.tables.model import TableFrame
 from opacity.tables.read import open_table
 from opacity.tables.sealed import ENDING, is_whole
-from opacity.tables.shard import Shard, read_shard
+from opacity.tables.shard import Shard, read_shard, read_shard_header
 
 
 @dataclass(frozen=True)
@@ -213,7 +213,7 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
     nodes = grid.node_list()
     extremes, tiles, warnings = [], np.zeros((len(nodes), 2), dtype=np.int64), list(job.plan.warnings)
     processors: set[str] = set()
-    for shard in _shards(job, units):
+    for shard in _shards(job, units, read_shard_header):
         extremes.append((shard.smallest, shard.largest))
         tiles[list(shard.rows)] += np.array(shard.notes["tiles"])
         processors.add(shard.notes["processor"])
@@ -239,17 +239,18 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
         still_ours()
         return {**report.figures, "warnings": warnings, "summation": _summation(recipe, tiles)}
 
-    return assemble_table(job.path, frame, stored_type_of(extremes), _shards(job, units), check)
+    shards = _shards(job, units, read_shard)
+    return assemble_table(job.path, frame, stored_type_of(extremes), shards, check, job.plan.workers)
 
 
-def _shards(job: _Job, units: tuple[Unit, ...]) -> Iterator[Shard]:
+def _shards(job: _Job, units: tuple[Unit, ...], read: Callable[[Path], Shard]) -> Iterator[Shard]:
     """All shards in order; one that was damaged since is computed again."""
     for unit in units:
         try:
-            shard = read_shard(unit.path(job.shards))
+            shard = read(unit.path(job.shards))
         except TableError:
             job.work.do(unit)
-            shard = read_shard(unit.path(job.shards))
+            shard = read(unit.path(job.shards))
         yield shard
 
 

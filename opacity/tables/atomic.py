@@ -10,7 +10,7 @@ import platform
 import re
 import secrets
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -44,7 +44,7 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
     """
     path = Path(path)
     with renamed_when_done(path) as temporary:
-        _write_synced(temporary, data)
+        write_all(temporary, [data])
         _compare(temporary, data, path)
         if check is not None:
             check(temporary)
@@ -52,10 +52,10 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
 
 
 @contextlib.contextmanager
-def renamed_when_done(path: Path) -> Iterator[Path]:
+def renamed_when_done(path: Path, lasting: bool = True) -> Iterator[Path]:
     """A temporary name beside `path`; what was written to it and synced inside the `with` becomes `path` at its end.
 
-    On any failure it is removed.  Raises ResourceError for what the file system refuses, InputError for a path that
+    On any failure it is removed.  The name outlasts a crash of the machine, unless it need not (`lasting`).  Raises ResourceError for what the file system refuses, InputError for a path that
     can't be one.
     """
     if "\0" in str(path) or path.name in ("", ".."):
@@ -68,7 +68,8 @@ def renamed_when_done(path: Path) -> Iterator[Path]:
         finally:
             with contextlib.suppress(FileNotFoundError, NotADirectoryError):
                 os.unlink(temporary)
-        _sync_folder(path.parent)
+        if lasting:
+            _sync_folder(path.parent)
 
 
 class CarefulFile:
@@ -82,6 +83,7 @@ class CarefulFile:
         flags = os.O_RDWR | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0)
         self._descriptor = os.open(path, flags, 0o666)
         self._position = 0
+        self._at = 0  # where the descriptor is, -1 where a call that may be interrupted moves it
         self.failure: BaseException | None = None
 
     def write(self, data: Any) -> int:
@@ -90,12 +92,14 @@ class CarefulFile:
         size = len(rest)
         while rest and self.failure is None:
             try:
-                os.lseek(self._descriptor, self._position, os.SEEK_SET)
+                self._go_to_position()
+                self._at = -1
                 written = os.write(self._descriptor, rest[:_PIECE])
             except BaseException as error:  # a signal too: raised through HDF5 it would be lost
                 self.failure = error
                 break
             self._position += written
+            self._at = self._position
             rest = rest[written:]
         self._position += len(rest)
         return size
@@ -103,14 +107,20 @@ class CarefulFile:
     def readinto(self, buffer: Any) -> int:
         """Fill a buffer from the position; beyond the end with zeros."""
         view = memoryview(buffer).cast("B")
-        os.lseek(self._descriptor, self._position, os.SEEK_SET)
-        done = 0
+        self._go_to_position()
+        self._at, done = -1, 0
         while done < len(view) and (data := os.read(self._descriptor, len(view) - done)):
             view[done : done + len(data)] = data
             done += len(data)
+        self._at = self._position + done
         view[done:] = bytes(len(view) - done)
         self._position += len(view)
         return len(view)
+
+    def _go_to_position(self) -> None:
+        """Move the descriptor, unless it is there already."""
+        if self._at != self._position:
+            self._at = os.lseek(self._descriptor, self._position, os.SEEK_SET)
 
     def read(self, size: int = -1) -> bytes:
         """Bytes from the position."""
@@ -227,14 +237,17 @@ def _as_resource_error(path: Path) -> Iterator[None]:
         raise ResourceError(problem(path, f"cannot be written ({reason})", remedy=remedy)) from error
 
 
-def _write_synced(path: Path, data: bytes) -> None:
+def write_all(path: Path, pieces: Iterable[Any], lasting: bool = True) -> None:
+    """Write pieces of bytes to a new file, and sync it unless it need not outlast a crash.  Raises OSError."""
     descriptor = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0), 0o666)
     try:
-        rest = memoryview(data)
-        while rest:
-            rest = rest[os.write(descriptor, rest[:_PIECE]) :]
-        os.fsync(descriptor)
-        _drop_cached_pages(descriptor)
+        for piece in pieces:
+            rest = memoryview(piece)
+            while rest:
+                rest = rest[os.write(descriptor, rest[:_PIECE]) :]
+        if lasting:
+            os.fsync(descriptor)
+            _drop_cached_pages(descriptor)
     finally:
         os.close(descriptor)
 
@@ -247,11 +260,11 @@ def _drop_cached_pages(descriptor: int) -> None:
 
 
 def _compare(written: Path, data: bytes, path: Path) -> None:
-    digest = hashlib.sha256()
-    with open(written, "rb") as stream:
-        while piece := stream.read(_PIECE):
-            digest.update(piece)
-    if digest.digest() != hashlib.sha256(data).digest():
+    rest = memoryview(data)
+    with open(written, "rb", buffering=0) as stream:
+        while (piece := stream.read(_PIECE)) and piece == rest[: len(piece)]:
+            rest = rest[len(piece) :]
+    if piece or rest:
         raise ResourceError(problem(path, "what the disk gives back is not what was written to it"))
 
 

@@ -178,6 +178,14 @@ def check_stored_as(path: Path, stored: Any, name: str, shape: tuple[int, ...], 
             raise damaged(path, f"type of {name}", expected=" or ".join(types), found=stored.dtype)
 
 
+def is_packed_as(stored: Any, block: int) -> bool:
+    """Whether a dataset's chunks are blocks of one spectrum, shuffled and deflated, as this program writes them."""
+    plan = stored.id.get_create_plist()
+    filters = [plan.get_filter(i)[0] for i in range(plan.get_nfilters())]
+    chunk = (*(1 for _ in stored.shape[:-1]), min(block, stored.shape[-1]))
+    return filters == [h5py.h5z.FILTER_SHUFFLE, h5py.h5z.FILTER_DEFLATE] and stored.chunks == chunk
+
+
 def _hashed(
     stored: Any, path: Path, name: str, kind: str, dimensions: int = 1, hash_name: str = "sha256"
 ) -> NDArray[Any]:
