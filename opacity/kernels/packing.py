@@ -24,6 +24,7 @@ WORTH_IT = 0.95
 SAMPLED = 8
 NOISE_BITS = 7.6
 """Bits a byte above which a sample of every 8th byte is taken for noise, unless neighbours are often equal."""
+NO_WORD = (1 << 64) - 1
 ADLER = 65521
 ADLER_AT_ONCE = 5552
 """So many bytes are summed before the remainder is taken; 32 bits would do (RFC 1950)."""
@@ -58,7 +59,7 @@ def pack_rows(words: NDArray[Any], chunk: int, block: int, out: NDArray[np.uint8
 @jit_exact
 def _part_planes(words: NDArray[Any], planes: NDArray[np.uint8]) -> None:
     """Bytes of words by significance, lowest first; the rest of each plane is that of a quiet NaN."""
-    size, chunk = planes.shape
+    size = planes.shape[0]
     for k in range(size):
         plane = planes[k]
         shift = 8 * k
@@ -70,7 +71,11 @@ def _part_planes(words: NDArray[Any], planes: NDArray[np.uint8]) -> None:
 
 @jit_exact
 def _write_block(
-    planes: NDArray[np.uint8], coded: NDArray[np.uint8], symbols: NDArray[np.int16], out: NDArray[np.uint8], position: int
+    planes: NDArray[np.uint8],
+    coded: NDArray[np.uint8],
+    symbols: NDArray[np.int16],
+    out: NDArray[np.uint8],
+    position: int,
 ) -> int:
     """Write the zlib stream of a block; where it ends."""
     size = planes.shape[0]
@@ -120,8 +125,8 @@ def _adler(plane: NDArray[np.uint8], low: int, high: int) -> tuple[int, int]:
             total += np.uint32(piece[i])
             weighted += np.uint32(piece[i]) * np.uint32(i)
         # weighted stays below 255 * 5552^2 / 2 < 2^32.
-        high = (high + piece.size * low + piece.size * np.int64(total) - np.int64(weighted)) % ADLER
-        low = (low + np.int64(total)) % ADLER
+        high = (high + piece.size * low + piece.size * int(total) - int(weighted)) % ADLER
+        low = (low + int(total)) % ADLER
     return low, high
 
 
@@ -170,15 +175,15 @@ def _code(plane: NDArray[np.uint8], symbols: NDArray[np.int16], out: NDArray[np.
 
 
 @jit_exact
-def word_range(words: NDArray[np.uint64]) -> tuple[int, int]:
-    """Smallest word above 0, less 1, and largest word of f8 values (n,): those of doubles at or above 0 rise with them.
+def word_range(words: NDArray[np.uint64]) -> tuple[np.uint64, np.uint64]:
+    """Smallest word above 0 and largest word of f8 values (n,): the words of doubles at or above 0 rise with them.
 
-    A negative zero counts as 0; of values without one above 0 the first is 2^64 - 1.
+    A negative zero counts as 0; where no word is above 0 the smallest is `NO_WORD`.
     """
-    one, none, negative_zero = np.uint64(1), np.uint64(0), np.uint64(1 << 63)
-    smallest, largest = none - one, none
+    none, negative_zero = np.uint64(0), np.uint64(1 << 63)
+    smallest, largest = np.uint64(NO_WORD), none
     for i in range(words.size):
         word = none if words[i] == negative_zero else words[i]
-        smallest = min(smallest, word - one)
+        smallest = min(smallest, np.uint64(NO_WORD) if word == none else word)
         largest = max(largest, word)
     return smallest, largest

@@ -149,7 +149,12 @@ class _Job:
     @property
     def origin(self) -> Origin:
         return Origin(
-            self.recipe.path.absolute(), self.folder.absolute(), self.shards.absolute(), self.inputs.sha256, self.memory
+            self.recipe.path.absolute(),
+            self.folder.absolute(),
+            self.shards.absolute(),
+            self.inputs.sha256,
+            self.memory,
+            self.inputs.fingerprint,
         )
 
 
@@ -157,10 +162,22 @@ def _build_alone(job: _Job, units: tuple[Unit, ...], crew: Crew) -> tuple[dict[s
     with locked(job.shards, "table") as lock:
         figures = _still_good(job.path, job.inputs.fingerprint)
         if figures is None:  # else a task was quicker
+            if crew.task is None:
+                _remove_stale(job.shards, units)
             _compute(job, units, crew)
             figures = _assemble(job, units, lock.check)
     _remove_shards(job.shards)
     return figures, 0
+
+
+def _remove_stale(folder: Path, units: tuple[Unit, ...]) -> None:
+    """Remove what killed workers left, and the shards of other units: those of a recipe that has changed since."""
+    remove_leftovers(folder)
+    ours = {unit.path(folder) for unit in units}
+    for path in folder.glob(f"*{ENDING}"):
+        if path not in ours:
+            with contextlib.suppress(OSError):
+                path.unlink()
 
 
 def _remove_shards(folder: Path) -> None:
@@ -169,6 +186,7 @@ def _remove_shards(folder: Path) -> None:
         with contextlib.suppress(ResourceError), locked(folder, "table"):
             for path in folder.glob(f"*{ENDING}"):
                 path.unlink(missing_ok=True)
+            remove_leftovers(folder)
         with contextlib.suppress(OSError):
             folder.rmdir()
 

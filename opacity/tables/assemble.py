@@ -62,6 +62,7 @@ class Assembly:
         spectrum = np.empty(self._frame.wavenumber.size)
         for block in self._blocks:
             _, data = self._values.id.read_direct_chunk((*node, block.start))
+            self._file.raise_failure()
             spectrum[block] = unpack_block(data, block.stop - block.start, self._dtype)
         return spectrum
 

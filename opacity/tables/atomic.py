@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import errno
+import functools
 import hashlib
 import os
 import platform
@@ -55,7 +56,8 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
 def renamed_when_done(path: Path, lasting: bool = True) -> Iterator[Path]:
     """A temporary name beside `path`; what was written to it and synced inside the `with` becomes `path` at its end.
 
-    On any failure it is removed.  The name outlasts a crash of the machine, unless it need not (`lasting`).  Raises ResourceError for what the file system refuses, InputError for a path that
+    On any failure it is removed.  The name outlasts a crash of the machine, unless it need not (`lasting`).
+    Raises ResourceError for what the file system refuses, InputError for a path that
     can't be one.
     """
     if "\0" in str(path) or path.name in ("", ".."):
@@ -72,6 +74,20 @@ def renamed_when_done(path: Path, lasting: bool = True) -> Iterator[Path]:
             _sync_folder(path.parent)
 
 
+def _remembered(call: Callable[..., Any]) -> Callable[..., Any]:
+    """A call from within HDF5 whose failure, a signal too, is remembered: raised through HDF5 it would be lost."""
+
+    @functools.wraps(call)
+    def run(self: CarefulFile, *given: Any) -> Any:
+        try:
+            return call(self, *given)
+        except BaseException as error:
+            self.failure = self.failure or error
+            return 0
+
+    return run
+
+
 class CarefulFile:
     """A file that HDF5 writes through (as h5py's `fileobj` driver takes it) and that remembers the first failure.
 
@@ -83,27 +99,25 @@ class CarefulFile:
         flags = os.O_RDWR | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0)
         self._descriptor = os.open(path, flags, 0o666)
         self._position = 0
-        self._at = 0  # where the descriptor is, -1 where a call that may be interrupted moves it
+        self._at = 0  # where the descriptor is, -1 while a call moves it that may be interrupted
         self.failure: BaseException | None = None
 
+    @_remembered
     def write(self, data: Any) -> int:
         """Write at the position."""
         rest = memoryview(data).cast("B")
         size = len(rest)
         while rest and self.failure is None:
-            try:
-                self._go_to_position()
-                self._at = -1
-                written = os.write(self._descriptor, rest[:_PIECE])
-            except BaseException as error:  # a signal too: raised through HDF5 it would be lost
-                self.failure = error
-                break
+            self._go_to_position()
+            self._at = -1
+            written = os.write(self._descriptor, rest[:_PIECE])
             self._position += written
             self._at = self._position
             rest = rest[written:]
         self._position += len(rest)
         return size
 
+    @_remembered
     def readinto(self, buffer: Any) -> int:
         """Fill a buffer from the position; beyond the end with zeros."""
         view = memoryview(buffer).cast("B")
@@ -112,15 +126,10 @@ class CarefulFile:
         while done < len(view) and (data := os.read(self._descriptor, len(view) - done)):
             view[done : done + len(data)] = data
             done += len(data)
-        self._at = self._position + done
         view[done:] = bytes(len(view) - done)
+        self._at = self._position + done
         self._position += len(view)
         return len(view)
-
-    def _go_to_position(self) -> None:
-        """Move the descriptor, unless it is there already."""
-        if self._at != self._position:
-            self._at = os.lseek(self._descriptor, self._position, os.SEEK_SET)
 
     def read(self, size: int = -1) -> bytes:
         """Bytes from the position."""
@@ -129,6 +138,7 @@ class CarefulFile:
         self.readinto(buffer)
         return bytes(buffer)
 
+    @_remembered
     def seek(self, offset: int, whence: int = os.SEEK_SET) -> int:
         """Set the position."""
         if whence == os.SEEK_CUR:
@@ -138,22 +148,26 @@ class CarefulFile:
         self._position = offset
         return self._position
 
+    @_remembered
     def tell(self) -> int:
         """The position."""
         return self._position
 
+    @_remembered
     def truncate(self, size: int | None = None) -> int:
         """Set the file's length."""
         length = self._position if size is None else size
         if self.failure is None:
-            try:
-                os.ftruncate(self._descriptor, length)
-            except BaseException as error:
-                self.failure = error
+            os.ftruncate(self._descriptor, length)
         return length
 
     def flush(self) -> None:
         """Nothing is held back."""
+
+    def _go_to_position(self) -> None:
+        """Move the descriptor, unless it is there already."""
+        if self._at != self._position:
+            self._at = os.lseek(self._descriptor, self._position, os.SEEK_SET)
 
     def raise_failure(self) -> None:
         """Raise the first failure, if there was one."""
@@ -191,6 +205,14 @@ def remove_leftovers(folder: Path) -> None:
             if match is not None and (_is_old(path) or (match[1] == _host() and not process_runs(int(match[2])))):
                 with contextlib.suppress(OSError):
                     path.unlink()
+
+
+def remove_own_leftovers(folder: Path) -> None:
+    """Remove the temporary files of this process, which is about to end."""
+    with contextlib.suppress(OSError, ValueError):
+        for path in folder.glob(f".opacity-{_host()}-{os.getpid()}-*.part"):
+            with contextlib.suppress(OSError):
+                path.unlink()
 
 
 def _host() -> str:

@@ -7,6 +7,7 @@ values are noise that deflate cannot shorten, so they are stored as they are wit
 
 from __future__ import annotations
 
+import itertools
 import zlib
 from typing import Any
 
@@ -31,8 +32,8 @@ def pack_rows_of(values: NDArray[Any], chunk: int, block: int = BLOCK) -> list[m
     room, ends = np.empty(count * room_for(chunk, size), np.uint8), np.empty(count, np.int64)
     pack_rows(native.view(_WORDS[size]), chunk, block, room, ends)
     # Not a copy: most of the room is used.
-    data, starts = memoryview(room), [0, *ends.tolist()]
-    return [data[start:stop] for start, stop in zip(starts, starts[1:], strict=False)]
+    data = memoryview(room.data)
+    return [data[start:stop] for start, stop in itertools.pairwise([0, *ends.tolist()])]
 
 
 def pack_block(values: NDArray[Any], chunk: int) -> bytes:

@@ -49,7 +49,7 @@ class OpenedTable(ABC):
 
     @abstractmethod
     def verify(self, workers: int = 1) -> None:
-        """Read everything, in so many threads where that is quicker; TableError names the first part that is not as it was written."""
+        """Read everything, in so many threads at most; TableError names a part that is not as it was written."""
 
     def _node_sizes(self) -> tuple[int, ...]:
         sizes = self.temperature.size, self.pressure.size

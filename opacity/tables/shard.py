@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.grids import FloatArray
-from opacity.kernels.packing import word_range
+from opacity.kernels.packing import NO_WORD, word_range
 from opacity.tables import layout
 from opacity.tables.blocks import pack_rows_of, unpack_block
 from opacity.tables.sealed import read_header, read_sealed, write_sealed
@@ -67,10 +67,8 @@ def make_shard(rows: tuple[int, ...], start: int, chunk: int, spectra: FloatArra
 def _extremes(spectra: FloatArray) -> tuple[float, float]:
     """The smallest value that is not 0, infinite where there is none, and the largest; NaN for what may not be."""
     smallest, largest = word_range(np.ascontiguousarray(spectra, dtype=np.float64).reshape(-1).view(np.uint64))
-    words = np.array([smallest, largest], dtype=np.uint64)
-    words[0] += np.uint64(1)
-    low, high = words.view(np.float64).tolist()
-    return low if words[0] else float("inf"), high if high >= 0.0 else float("nan")
+    low, high = np.array([smallest, largest], dtype=np.uint64).view(np.float64).tolist()
+    return low if smallest != NO_WORD else float("inf"), high if high >= 0.0 else float("nan")
 
 
 def write_shard(path: Path, shard: Shard) -> None:
