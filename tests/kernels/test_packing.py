@@ -26,11 +26,12 @@ def random_bits(rng: np.random.Generator, n: int, dtype: str) -> Values:
 
 def lines_of_all_heights(rng: np.random.Generator, n: int, dtype: str) -> Values:
     """Smooth over some points, as spectra are."""
-    return (10.0 ** np.interp(np.arange(n), np.arange(0, n + 40, 40), rng.uniform(-30, -18, n // 40 + 2))).astype(dtype)
+    places = np.arange(0, n + 40, 40)
+    return (10.0 ** np.interp(np.arange(n), places, rng.uniform(-30, -18, places.size))).astype(dtype)
 
 
 def denormals(rng: np.random.Generator, n: int, dtype: str) -> Values:
-    return rng.integers(0, 5, n) * np.finfo(dtype).smallest_subnormal
+    return rng.integers(0, 5, n).astype(f"u{np.dtype(dtype).itemsize}").view(dtype)
 
 
 def gaps(rng: np.random.Generator, n: int, dtype: str) -> Values:
