@@ -98,7 +98,7 @@ class Table(OpenedTable):
         with structure.reading(self.path, f"{layout.HASHES} of node {node}"):
             hashes = self._hashes[node]
         for number, block in enumerate(self._blocks):
-            with structure.reading(self.path, self._block_name(node, block)):
+            with structure.reading(self.path, lambda block=block: self._block_name(node, block)):  # type: ignore[misc]
                 values[block] = self._block(node, block)
             if not self._proved[(*node, number)]:
                 self._prove(node, block, values[block], hashes[number].tobytes())

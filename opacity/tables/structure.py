@@ -6,7 +6,7 @@ import contextlib
 import errno
 import json
 import stat
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -27,8 +27,8 @@ def damaged(path: Path, what: str, *, expected: object = None, found: object = N
 
 
 @contextlib.contextmanager
-def reading(path: Path, what: str) -> Iterator[None]:
-    """Name the file and the part read in whatever goes wrong inside.
+def reading(path: Path, what: str | Callable[[], str]) -> Iterator[None]:
+    """Name the file and the part read in whatever goes wrong inside; `what` may be made only then.
 
     A damaged file can make the HDF5 library raise nearly any type of error, hence the wide net.
     """
@@ -37,6 +37,7 @@ def reading(path: Path, what: str) -> Iterator[None]:
     except OpacityError:
         raise
     except Exception as error:
+        what = what if isinstance(what, str) else what()
         raise damaged(path, f"{what} cannot be read ({one_line(error) or type(error).__name__})") from error
 
 

@@ -78,6 +78,7 @@ def stages(title: str, recipe_path: Path, folder: Path) -> None:
     from opacity.recipe.load import load_recipe
 
     spent: dict[str, np.ndarray] = {}
+    under_way: list[str] = []
 
     def now() -> np.ndarray:
         return np.array([time.perf_counter(), time.process_time()])
@@ -86,12 +87,14 @@ def stages(title: str, recipe_path: Path, folder: Path) -> None:
         real = getattr(place, function)
 
         def run(*given: object, **named: object) -> object:
+            under_way.append(name)
             started = now()
             try:
                 return real(*given, **named)
             finally:
-                # The checks look at lines as well.
-                if name != "lines" or "units" not in spent:
+                under_way.pop()
+                # Plan and checks look at lines as well.
+                if name != "lines" or "units" in under_way:
                     spent[name] = spent.get(name, np.zeros(2)) + now() - started
 
         setattr(place, function, run)
