@@ -14,20 +14,21 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.tables.layout import BLOCK
+from opacity.tables import layout
 
 _WORDS = {4: np.uint32, 8: np.uint64}
 
 
-def pack_rows_of(values: NDArray[Any], chunk: int, block: int = BLOCK) -> list[memoryview]:
+def pack_rows_of(values: NDArray[Any], chunk: int, block: int | None = None) -> list[memoryview]:
     """The stored bytes of every block of rows (n_row, n) of f4 or f8, by row, then along it.
 
-    The last block of a row, where it is shorter than the `chunk`, is filled up with NaN.
+    Blocks are those of a table unless `block` is given.  One shorter than the `chunk` is filled up with NaN.
     """
     from opacity.kernels.packing import pack_rows, room_for  # late: who only reads tables needs no kernels
 
     native = np.ascontiguousarray(values, dtype=values.dtype.newbyteorder("="))
-    size = native.itemsize
+    size, block = native.itemsize, block or layout.BLOCK
+    chunk = max(chunk, min(block, native.shape[1]))  # the kernel does not look whether a block fits
     count = native.shape[0] * -(-native.shape[1] // block)
     room, ends = np.empty(count * room_for(chunk, size), np.uint8), np.empty(count, np.int64)
     pack_rows(native.view(_WORDS[size]), chunk, block, room, ends)
