@@ -131,12 +131,12 @@ def test_build_warns_on_stderr_before_the_work_and_again_when_it_keeps_the_table
 
 
 def test_a_warning_is_told_before_a_build_that_fails(opacity, write_recipe, tmp_path, monkeypatch):
-    from opacity.pipeline import workers as workers_module
+    from opacity.pipeline import units as units_module
 
     def fail(*_):
         raise MemoryError
 
-    monkeypatch.setattr(workers_module, "compute", fail)
+    monkeypatch.setattr(units_module, "compute", fail)
     code, _, err = opacity("build", write_recipe(**COARSE), "-o", tmp_path / "out", "--quiet")
     assert code == 1
     assert err.startswith("warning: the step is too coarse")
