@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import stat
 import zlib
 from importlib import metadata
 from pathlib import Path
@@ -24,6 +25,8 @@ def file_sha256(path: Path) -> str:
     """Hexadecimal sha256 of a file's bytes as they lie on disk.  Raises OpacityError if it can't be read."""
     digest = hashlib.sha256()
     try:
+        if not stat.S_ISREG(path.stat().st_mode) and not path.is_dir():  # a pipe would be waited for without end
+            raise OpacityError(problem(path, "not a file", expected="a regular file"))
         with open(path, "rb") as stream:
             while block := stream.read(1 << 20):
                 digest.update(block)

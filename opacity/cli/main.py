@@ -258,4 +258,8 @@ def run() -> NoReturn:
         if signals.seen is None:
             raise
         code = _tell(*_failure(signals.seen), _wants_json(sys.argv))
+    if signals.seen is not None:
+        # While the interpreter ends it puts the system's own handlers back: a second signal would have the last word.
+        for number in (signal.SIGINT, signal.SIGTERM):
+            signal.signal(number, signal.SIG_IGN)
     sys.exit(code)

@@ -12,6 +12,7 @@ can be written to; where there is none it is not kept, since numba's own choice 
 from __future__ import annotations
 
 import contextlib
+import functools
 import hashlib
 import os
 import shutil
@@ -28,6 +29,7 @@ Function = TypeVar("Function", bound=Callable[..., Any])
 _FAST_MATH = {"contract", "reassoc", "arcp", "nsz"}
 
 
+@functools.cache
 def source_hash() -> str:
     """A hash of the source of all kernels: what was computed by others has other bits."""
     digest = hashlib.sha256()

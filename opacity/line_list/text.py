@@ -6,6 +6,7 @@ import bz2
 import contextlib
 import gzip
 import importlib
+import stat
 import zlib
 from collections.abc import Iterator
 from contextlib import AbstractContextManager
@@ -111,6 +112,7 @@ def _blocks(path: Path, size: int) -> Iterator[tuple[bytes, int]]:
     """Blocks of decompressed bytes, and how far into the file they go; every way of failing becomes a LineListError."""
     suffix = path.suffix.lower()
     try:
+        refuse_no_file(path)
         with open(path, "rb") as file, _opened(path, file, suffix) as reader:
             while block := reader.read(size):
                 yield block, reader.tell() if suffix == ".bz2" else file.tell()
@@ -121,6 +123,13 @@ def _blocks(path: Path, size: int) -> Iterator[tuple[bytes, int]]:
     except OSError as error:
         reason = error.strerror or f"damaged {path.suffix} file ({one_line(error)})"
         raise LineListError(problem(path, f"cannot be read ({reason})")) from error
+
+
+def refuse_no_file(path: Path) -> None:
+    """Raise LineListError for what is there and is no regular file: a pipe would be waited for without end."""
+    mode = path.stat().st_mode
+    if not stat.S_ISREG(mode) and not stat.S_ISDIR(mode):
+        raise LineListError(problem(path, "not a file", expected="a regular file", remedy="write its content to one"))
 
 
 def _opened(path: Path, file: BinaryIO, suffix: str) -> AbstractContextManager[Any]:

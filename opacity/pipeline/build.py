@@ -3,9 +3,7 @@
 from __future__ import annotations
 
 import contextlib
-import json
 import os
-import platform
 import time
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
@@ -16,10 +14,11 @@ import numpy as np
 
 from opacity.check.run import run_checks
 from opacity.cross_sections.tolerance import regions
-from opacity.errors import InUseError, ResourceError, TableError, problem
+from opacity.errors import InUseError, ResourceError, TableError
 from opacity.k_coefficient.bands import band_edges
 from opacity.line_store.lock import locked
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
+from opacity.pipeline.folders import make_folder, refuse_folders, write_log
 from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.k_assemble import KJob, ShardCells, assemble_k
 from opacity.pipeline.k_plan import make_k_plan
@@ -27,17 +26,16 @@ from opacity.pipeline.k_units import BandUnit
 from opacity.pipeline.kinds import CROSS_SECTION, shards_of, table_name, units_of, wanted
 from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit
 from opacity.pipeline.progress import Progress
-from opacity.pipeline.resources import processor
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.pipeline.units import Unit
 from opacity.pipeline.workers import Origin, Work, WorkUnit, in_processes, in_threads
 from opacity.recipe.model import Recipe
 from opacity.tables.assemble import Assembly, assemble_table, stored_type_of
-from opacity.tables.atomic import remove_leftovers, write_atomically
+from opacity.tables.atomic import remove_leftovers
 from opacity.tables.model import TableFrame
 from opacity.tables.open import open_table
 from opacity.tables.sealed import ENDING, is_whole
-from opacity.tables.shard import Shard, read_shard
+from opacity.tables.shard import Shard, read_shard, read_shard_header
 
 
 @dataclass(frozen=True)
@@ -121,7 +119,7 @@ def build_table(
         _remove_shards(shards_of(recipe, folder, kind))
         if not log.exists():
             with contextlib.suppress(ResourceError):
-                _write_log(log, recipe, time.monotonic() - started, 0)
+                write_log(log, recipe, time.monotonic() - started, 0)
         return BuildResult(path, log, None, kept, time.monotonic() - started)
     inputs = load_inputs(recipe, folder, origin, memory, quiet)
     planned = make_plan if kind == CROSS_SECTION else make_k_plan
@@ -129,9 +127,9 @@ def build_table(
     announce(plan)
     refuse_what_cannot_fit(plan)
     job = _Job(recipe, kind, inputs, plan, folder, path, memory, quiet)
-    _make_folder(folder)
-    _refuse_folders(path, log)
-    _make_folder(job.shards)
+    make_folder(folder)
+    refuse_folders(path, log)
+    make_folder(job.shards)
     units = units_of(recipe, inputs, kind)
     try:
         figures, missing = (_build_alone if crew.task is None else _build_task)(job, units, crew)
@@ -145,7 +143,7 @@ def build_table(
                 job.shards.rmdir()  # unless shards are kept in it
     seconds = time.monotonic() - started
     if figures:
-        _write_log(log, recipe, seconds, plan.workers)
+        write_log(log, recipe, seconds, plan.workers)
     return BuildResult(path, log, plan, figures, seconds, len(units), missing)
 
 
@@ -180,6 +178,7 @@ class _Job:
             self.inputs.sha256,
             self.memory,
             self.kind,
+            self.inputs.fingerprint,
         )
 
 
@@ -187,10 +186,22 @@ def _build_alone(job: _Job, units: Units, crew: Crew) -> tuple[dict[str, Any], i
     with locked(job.shards, "table") as lock:
         figures = _still_good(job.path, job.inputs.fingerprint)
         if figures is None:  # else a task was quicker
+            if crew.task is None:
+                _remove_stale(job.shards, units)
             _compute(job, units, crew)
             figures = _put_together(job, units, lock.check)
     _remove_shards(job.shards)
     return figures, 0
+
+
+def _remove_stale(folder: Path, units: Units) -> None:
+    """Remove what killed workers left, and the shards of other units: those of a recipe that has changed since."""
+    remove_leftovers(folder)
+    ours = {unit.path(folder) for unit in units}
+    for path in folder.glob(f"*{ENDING}"):
+        if path not in ours:
+            with contextlib.suppress(OSError):
+                path.unlink()
 
 
 def _remove_shards(folder: Path) -> None:
@@ -199,6 +210,7 @@ def _remove_shards(folder: Path) -> None:
         with contextlib.suppress(ResourceError), locked(folder, "table"):
             for path in folder.glob(f"*{ENDING}"):
                 path.unlink(missing_ok=True)
+            remove_leftovers(folder)
         with contextlib.suppress(OSError):
             folder.rmdir()
 
@@ -256,7 +268,7 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
     nodes = grid.node_list()
     extremes, tiles, warnings = [], np.zeros((len(nodes), 2), dtype=np.int64), list(job.plan.warnings)
     processors: set[str] = set()
-    for shard in _shards(job, units):
+    for shard in _shards(job, units, read_shard_header):
         extremes.append((shard.smallest, shard.largest))
         tiles[list(shard.rows)] += np.array(shard.notes["tiles"])
         processors.add(shard.notes["processor"])
@@ -282,17 +294,18 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
         still_ours()
         return {**report.figures, "warnings": warnings, "summation": _summation(recipe, tiles)}
 
-    return assemble_table(job.path, frame, stored_type_of(extremes), _shards(job, units), check)
+    shards = _shards(job, units, read_shard)
+    return assemble_table(job.path, frame, stored_type_of(extremes), shards, check, job.plan.workers)
 
 
-def _shards(job: _Job, units: tuple[Unit, ...]) -> Iterator[Shard]:
+def _shards(job: _Job, units: tuple[Unit, ...], read: Callable[[Path], Shard]) -> Iterator[Shard]:
     """All shards in order; one that was damaged since is computed again."""
     for unit in units:
         try:
-            shard = read_shard(unit.path(job.shards))
+            shard = read(unit.path(job.shards))
         except TableError:
             job.work.do(unit)
-            shard = read_shard(unit.path(job.shards))
+            shard = read(unit.path(job.shards))
         yield shard
 
 
@@ -320,36 +333,3 @@ def _still_good(path: Path, origin: Fingerprint) -> dict[str, Any] | None:
             return table.checks
     except TableError:  # damaged: it is built again
         return None
-
-
-def _make_folder(folder: Path) -> None:
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-    except (OSError, ValueError) as error:
-        reason = getattr(error, "strerror", None) or str(error)
-        raise ResourceError(problem(folder, f"the folder for the tables cannot be made ({reason})")) from error
-    if not os.access(folder, os.W_OK | os.X_OK):
-        raise ResourceError(
-            problem(folder, "nothing can be written here", remedy="choose a folder in which you may write")
-        )
-
-
-def _refuse_folders(*paths: Path) -> None:
-    """Before hours of work, not after them."""
-    for path in paths:
-        if path.is_dir():
-            raise ResourceError(problem(path, "is a folder", expected="a file or nothing", remedy="move it away"))
-
-
-def _write_log(log: Path, recipe: Recipe, seconds: float, workers: int) -> None:
-    """What depends on time and place, beside the table and not in it."""
-    entry = {
-        "recipe": str(recipe.path.absolute()),
-        "finished": time.strftime("%Y-%m-%dT%H:%M:%SZ", time.gmtime()),
-        "seconds": round(seconds, 3),
-        "workers": workers,
-        "host": platform.node(),
-        "processor": processor(),
-        "python": platform.python_version(),
-    }
-    write_atomically(log, (json.dumps(entry, indent=2) + "\n").encode("utf-8"))

@@ -8,19 +8,22 @@ from __future__ import annotations
 import hashlib
 import logging
 import sys
+import threading
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 from opacity.errors import ResourceError, one_line, problem
-from opacity.pipeline.workers import Done, Origin, WorkUnit, do_in_process, prepare_process
+from opacity.pipeline.workers import Done, Origin, Prepared, WorkUnit, prepare_process
 
 RETRIES = 3
 """So often a unit is given to another worker when its own was lost."""
 SECONDS_TO_CONNECT = 30
 
-_prepared: list[Origin] = []
+_prepared: list[tuple[Origin, Prepared]] = []
+_preparing = threading.Lock()
 
 
 def on_cluster(scheduler: str, origin: Origin, units: Sequence[WorkUnit], workers: int, done: Done) -> None:
@@ -34,6 +37,7 @@ def on_cluster(scheduler: str, origin: Origin, units: Sequence[WorkUnit], worker
     except ImportError as error:
         what, remedy = "dask.distributed is not installed", "pip install 'opacity[cluster]'"
         raise ResourceError(problem("--scheduler", what, remedy=remedy)) from error
+    origin = replace(origin, known=None)  # other machines have packages and files of their own
     with _client(scheduler, workers) as client:
         if not client.scheduler_info()["workers"]:
             print("the scheduler has no workers yet: waiting for them", file=sys.stderr, flush=True)
@@ -78,8 +82,9 @@ def _client(scheduler: str, workers: int) -> Iterator[Any]:
 
 def _do(origin: Origin, number: int) -> int:
     """A unit on a worker, which loads recipe and lines for the first one."""
-    if _prepared != [origin]:
-        prepare_process(origin, signals=False)
-        _prepared[:] = [origin]
-    do_in_process(number)
+    with _preparing:  # a worker of a cluster of others' making may have several threads
+        if not _prepared or _prepared[0][0] != origin:
+            _prepared[:] = [(origin, prepare_process(origin))]
+        ((_, prepared),) = _prepared
+    prepared.do(number)
     return number

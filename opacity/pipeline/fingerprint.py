@@ -21,6 +21,16 @@ class Fingerprint:
 
     content: dict[str, Any]
     sha256: str
+    stamps: tuple[tuple[str, int, int], ...] = ()
+    """Path, size and time of change (ns) of every file, taken before it was hashed."""
+
+    def still_of(self, recipe: Recipe) -> bool:
+        """Whether it is that of a recipe still, as far as text, versions, sizes and times of change tell."""
+        if recipe.species:
+            return False
+        versions = {"program": {"name": "opacity", "version": VERSION}, "packages": package_versions()}
+        same = all(self.content[name] == value for name, value in versions.items())
+        return same and _hashed(self.content, recipe) == self.sha256 and self.stamps == _stamps(recipe)
 
     @property
     def hashes(self) -> frozenset[str]:
@@ -42,7 +52,7 @@ def fingerprint(recipe: Recipe) -> Fingerprint:
     """
     if recipe.species:
         return _of_mixture(recipe)
-    choice = recipe.partition_function
+    choice, stamps = recipe.partition_function, _stamps(recipe)
     content: dict[str, Any] = {
         "program": {"name": "opacity", "version": VERSION},
         "packages": package_versions(),
@@ -55,8 +65,27 @@ def fingerprint(recipe: Recipe) -> Fingerprint:
     }
     if choice.path is not None:
         content["partition_file"] = {"file": _file_name(choice.path), "sha256": _checked_sha256(choice.path)}
+    return Fingerprint(content, _hashed(content, recipe), stamps)
+
+
+def _hashed(content: dict[str, Any], recipe: Recipe) -> str:
     text = json.dumps({**content, "recipe": recipe.text}, sort_keys=True)
-    return Fingerprint(content, hashlib.sha256(text.encode("utf-8")).hexdigest())
+    return hashlib.sha256(text.encode("utf-8")).hexdigest()
+
+
+def _stamps(recipe: Recipe) -> tuple[tuple[str, int, int], ...]:
+    """Of files that cannot be looked at nothing, so that they are found out when they are read."""
+    paths = [path for source in recipe.line_lists for path in _all_paths(source)]
+    paths += [*recipe.broadening.files.values()]
+    paths += [recipe.partition_function.path] if recipe.partition_function.path is not None else []
+    stamps = []
+    for path in paths:
+        try:
+            found = path.stat()
+        except (OSError, ValueError):
+            return ()
+        stamps.append((str(path.absolute()), found.st_size, found.st_mtime_ns))
+    return tuple(stamps)
 
 
 def _of_mixture(recipe: Recipe) -> Fingerprint:
@@ -73,6 +102,7 @@ def _of_mixture(recipe: Recipe) -> Fingerprint:
         },
     }
     text = json.dumps({"species": [part.sha256 for part in parts], "recipe": recipe.text}, sort_keys=True)
+    # Without stamps: it is hashed again wherever it is needed.
     return Fingerprint(content, hashlib.sha256(text.encode("utf-8")).hexdigest())
 
 

@@ -114,8 +114,8 @@ class Amount:
     by_cells: float
 
 
-def amount_of(recipe: Recipe, source: LineSource) -> Amount:
-    """The work in a build's spectra as the planner predicts it, scaled by a short trial on the recipe's own lines."""
+def amount_of(recipe: Recipe, source: LineSource, trial: bool = True) -> Amount:
+    """The work in a build's spectra as the planner predicts it, scaled by a short `trial` on the recipe's own lines."""
     nu, places = recipe.grid.wavenumber, source.sample()
     share = len(source) / max(places.size, 1)
     values, seconds, cells, tiles = 0.0, 0.0, 0, 0
@@ -128,7 +128,8 @@ def amount_of(recipe: Recipe, source: LineSource) -> Amount:
         count, one = known[cutoff]
         values, seconds = values + count, seconds + one.seconds
         cells, tiles = cells + one.by_cells, tiles + one.tiles
-    return Amount(values, seconds * _calibration(recipe, source), cells / max(tiles, 1))
+    scale = _calibration(recipe, source) if trial else 1.0
+    return Amount(values, seconds * scale, cells / max(tiles, 1))
 
 
 def _calibration(recipe: Recipe, source: LineSource) -> float:

@@ -53,7 +53,8 @@ class Plan:
 
     `others` are the plans of further tables of the same recipe.
 
-    `obstacles` say why the build cannot fit here; it is refused then.  `limited` says where it gets less than it was
+    `obstacles` say why the build cannot fit here; it is refused then, and neither is a trial of its speed made nor are
+    coarse nodes looked for.  `limited` says where it gets less than it was
     to have; being of this machine alone, it is no part of the table.
     """
 
@@ -106,17 +107,21 @@ def make_plan(
     node_list = grid.node_list()
     temperatures = sorted({t for t, _ in node_list})
     points, nodes = grid.wavenumber.size, len(node_list)
-    coarse = _coarse_nodes(recipe, lines)
     units = parted(recipe, lines, inputs.sha256)
     wanted = allowed_cpus() if workers is None else workers
     available, disk_free = available_memory(), free_disk(folder)
     budget = memory if available is None else min(memory, available)
     count = max(min(wanted, workers_that_fit(recipe, lines, units, budget, processes), len(units) or 1), 1)
     needs = needs_of(recipe, lines, units, count, processes, shards_of(recipe, folder))
-    amount = amount_of(recipe, lines)
+    limits = (("memory", needs.memory, budget), ("disk", needs.disk, disk_free))
+    obstacles = tuple(
+        obstacle(recipe, *one, f"{points} values") for one in limits if one[2] is not None and one[1] > one[2]
+    )
+    # What takes time is looked into only where the build can be.
+    coarse = [] if obstacles else _coarse_nodes(recipe, lines)
+    amount = amount_of(recipe, lines, trial=not obstacles)
     besides = seconds_besides(nodes, points, len(lines), amount.values / max(nodes * points, 1))
     fitted = [f"memory allows {count} of {wanted} workers"] if count < min(wanted, len(units)) else []
-    limits = (("memory", needs.memory, budget), ("disk", needs.disk, disk_free))
     return Plan(
         recipe=str(recipe.path),
         table=str(folder / table_name(recipe)),
@@ -136,9 +141,7 @@ def make_plan(
         memory_available=budget,
         disk=needs.disk,
         disk_free=disk_free,
-        obstacles=tuple(
-            obstacle(recipe, *one, f"{points} values") for one in limits if one[2] is not None and one[1] > one[2]
-        ),
+        obstacles=obstacles,
         limited=tuple(fitted),
         coarse_nodes=tuple(coarse),
         warnings=(*inputs.warnings, *warnings_of(recipe, inputs, coarse, temperatures)),

@@ -7,6 +7,7 @@ where the system's files are looked for; tests put another tree there.
 
 from __future__ import annotations
 
+import functools
 import os
 import platform
 import shutil
@@ -16,6 +17,7 @@ from pathlib import Path
 ROOT = Path("/")
 
 
+@functools.cache
 def processor(root: Path = ROOT) -> str:
     """The type of processor: on another one the last bits of a sum may differ."""
     for line in _lines(root / "proc/cpuinfo"):

@@ -131,12 +131,18 @@ def compute(recipe: Recipe, source: LineSource, unit: Unit, executor: Executor |
                 found = _add(recipe, nu, at_temperature, [nodes[i][1] for i in here], [sums[i] for i in here], executor)
                 for place, tally in zip(here, found, strict=True):
                     tallies[place] = tallies[place].plus(tally)
+    notes = {"tiles": [[one.by_cells, one.by_points] for one in tallies], "processor": processor()}
+    shard = make_shard(unit.rows, unit.start, min(BLOCK, recipe.grid.wavenumber.size), sums, notes)
+    if not math.isfinite(shard.largest):
+        _refuse(nodes, sums)
+    return shard
+
+
+def _refuse(nodes: list[tuple[float, float]], sums: FloatArray) -> None:
     for (temperature, pressure), spectrum in zip(nodes, sums, strict=True):
-        if not np.all(np.isfinite(spectrum)):
+        if not np.all(np.isfinite(spectrum) & (spectrum >= 0.0)):
             where = f"node {temperature:g} K, {pressure:g} bar"
             raise LineListError(problem(where, "the sum is not finite: a line has impossible values"))
-    notes = {"tiles": [[one.by_cells, one.by_points] for one in tallies], "processor": processor()}
-    return make_shard(unit.rows, unit.start, min(BLOCK, recipe.grid.wavenumber.size), sums, notes)
 
 
 def _some_at_once(temperatures: list[float], lines: int) -> list[list[float]]:

@@ -11,7 +11,7 @@ import os
 import signal
 import threading
 from collections.abc import Callable, Iterator, Sequence
-from concurrent.futures import FIRST_COMPLETED, Executor, Future, ProcessPoolExecutor, ThreadPoolExecutor, wait
+from concurrent.futures import Executor, Future, ProcessPoolExecutor, ThreadPoolExecutor, as_completed
 from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass
 from pathlib import Path
@@ -19,8 +19,10 @@ from typing import Protocol
 
 from opacity.cross_sections.source import LineSource
 from opacity.errors import ResourceError, problem
+from opacity.pipeline.fingerprint import Fingerprint
 from opacity.pipeline.kinds import units_of
 from opacity.recipe.model import Recipe
+from opacity.tables.atomic import remove_own_leftovers
 
 KINDS = ("threads", "processes")
 MOST_RESTARTS = 5
@@ -66,8 +68,11 @@ class Work:
 
 @dataclass(frozen=True)
 class Origin:
-    """What a process of its own needs to come to the same work: where recipe and tables lie, the inputs' hash, and the
-    kind of table.
+    """What a process of its own needs to come to the same work: where recipe and tables lie, the inputs' hash,
+    and the kind of table.
+
+    `known` is what the inputs' hash was made of, for a process of this machine, which then hashes only files that
+    were changed since.
     """
 
     recipe: Path
@@ -76,6 +81,19 @@ class Origin:
     inputs_sha256: str
     memory: int
     kind: str
+    known: Fingerprint | None = None
+
+
+@dataclass(frozen=True)
+class Prepared:
+    """Work and units of it as a process of its own has them."""
+
+    work: Work
+    units: tuple[WorkUnit, ...]
+
+    def do(self, number: int) -> None:
+        """Do a unit by its number."""
+        self.work.do(self.units[number])
 
 
 Done = Callable[[WorkUnit], None]
@@ -124,14 +142,9 @@ def in_processes(origin: Origin, units: Sequence[WorkUnit], workers: int, done: 
 
 def _all_done(waiting: dict[Future[None], WorkUnit], done: Done) -> None:
     """Tell of each unit when it is done; the first failure ends the wait."""
-    pending = set(waiting)
-    while pending:
-        ready, pending = wait(pending, return_when=FIRST_COMPLETED)
-        failed = [one for one in ready if one.exception() is not None]
-        for one in ready.difference(failed):
-            done(waiting[one])
-        for one in failed:
-            one.result()
+    for one in as_completed(waiting):
+        one.result()
+        done(waiting[one])
 
 
 @contextlib.contextmanager
@@ -156,15 +169,25 @@ def _interrupts_ignored() -> Iterator[None]:
         signal.signal(signal.SIGINT, before)
 
 
-_process: dict[str, object] = {}
+_process: list[Prepared | Exception] = []
+"""What this worker process has prepared, or why it could not."""
 
 
 def start_process(origin: Origin) -> None:
     """What a worker process does first; a failure is told by its first unit, since here it would break the pool."""
+    signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C is the parent's
+    signal.signal(signal.SIGTERM, lambda *_: _end_at_once(origin.shards))
+    threading.Thread(target=_end_with_parent, daemon=True).start()
     try:
-        prepare_process(origin)
+        _process.append(prepare_process(origin))
     except Exception as error:
-        _process["failure"] = error
+        _process.append(error)
+
+
+def _end_at_once(shards: Path) -> None:
+    """End this process and take what it was writing along."""
+    remove_own_leftovers(shards)
+    os._exit(1)
 
 
 def _end_with_parent() -> None:
@@ -175,29 +198,23 @@ def _end_with_parent() -> None:
         os._exit(1)
 
 
-def prepare_process(origin: Origin, signals: bool = True) -> None:
-    """Load a recipe and its lines once in a worker process, which leaves Ctrl-C (`signals`) to its parent."""
+def prepare_process(origin: Origin) -> Prepared:
+    """A recipe and its lines, loaded in a worker process."""
     from opacity.pipeline.inputs import load_inputs
     from opacity.recipe.load import load_recipe
 
-    if signals:
-        signal.signal(signal.SIGINT, signal.SIG_IGN)
-        threading.Thread(target=_end_with_parent, daemon=True).start()
     recipe = load_recipe(origin.recipe)
-    inputs = load_inputs(recipe, origin.tables, memory=origin.memory, quiet=True)
+    known = origin.known if origin.known is not None and origin.known.still_of(recipe) else None
+    inputs = load_inputs(recipe, origin.tables, known, origin.memory, quiet=True)
     if inputs.sha256 != origin.inputs_sha256:
         what = "the recipe or its files changed while the build ran"
         raise ResourceError(problem(origin.recipe, what, remedy="build again when they are at rest"))
-    _process["work"] = Work(recipe, inputs.lines, origin.shards)
-    _process["units"] = units_of(recipe, inputs, origin.kind)
+    return Prepared(Work(recipe, inputs.lines, origin.shards), units_of(recipe, inputs, origin.kind))
 
 
 def do_in_process(number: int) -> None:
     """Do a unit in a worker process."""
-    failure = _process.get("failure")
-    if isinstance(failure, Exception):
-        raise failure
-    work, units = _process["work"], _process["units"]
-    assert isinstance(work, Work)
-    assert isinstance(units, tuple)
-    work.do(units[number])
+    (prepared,) = _process
+    if isinstance(prepared, Exception):
+        raise prepared
+    prepared.do(number)

@@ -59,11 +59,12 @@ class Assembly:
 
     def spectrum(self, *node: int) -> FloatArray:
         """The stored values of a node (cm2/molecule), (n_nu,)."""
-        parts = []
+        spectrum = np.empty(self._frame.wavenumber.size)
         for block in self._blocks:
             _, data = self._values.id.read_direct_chunk((*node, block.start))
-            parts.append(unpack_block(data, block.stop - block.start, self._dtype))
-        return np.concatenate(parts).astype(np.float64)
+            self._file.raise_failure()
+            spectrum[block] = unpack_block(data, block.stop - block.start, self._dtype)
+        return spectrum
 
     def add(self, shard: Shard) -> None:
         """Take in a shard's blocks as they are, or packed anew where the table needs f8 and the shard has f4."""
@@ -100,6 +101,7 @@ def assemble_table(
     dtype: np.dtype[Any],
     shards: Iterable[Shard],
     check: Callable[[Assembly], dict[str, Any]],
+    workers: int = 1,
 ) -> dict[str, Any]:
     """Write the table of `frame` from all its shards, one at a time in memory; the checks that were stored.
 
@@ -123,7 +125,7 @@ def assemble_table(
             raise
         finally:
             table.close()
-        verify_written(path, temporary)
+        verify_written(path, temporary, workers=workers)
     return checks
 
 

@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import contextlib
 import errno
+import functools
 import hashlib
 import os
 import platform
 import re
 import secrets
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -44,7 +45,7 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
     """
     path = Path(path)
     with renamed_when_done(path) as temporary:
-        _write_synced(temporary, data)
+        write_all(temporary, [data])
         _compare(temporary, data, path)
         if check is not None:
             check(temporary)
@@ -52,10 +53,11 @@ def write_atomically(path: Path, data: bytes, check: Callable[[Path], None] | No
 
 
 @contextlib.contextmanager
-def renamed_when_done(path: Path) -> Iterator[Path]:
+def renamed_when_done(path: Path, lasting: bool = True) -> Iterator[Path]:
     """A temporary name beside `path`; what was written to it and synced inside the `with` becomes `path` at its end.
 
-    On any failure it is removed.  Raises ResourceError for what the file system refuses, InputError for a path that
+    On any failure it is removed.  The name outlasts a crash of the machine, unless it need not (`lasting`).
+    Raises ResourceError for what the file system refuses, InputError for a path that
     can't be one.
     """
     if "\0" in str(path) or path.name in ("", ".."):
@@ -68,7 +70,22 @@ def renamed_when_done(path: Path) -> Iterator[Path]:
         finally:
             with contextlib.suppress(FileNotFoundError, NotADirectoryError):
                 os.unlink(temporary)
-        _sync_folder(path.parent)
+        if lasting:
+            _sync_folder(path.parent)
+
+
+def _remembered(call: Callable[..., Any]) -> Callable[..., Any]:
+    """A call from within HDF5 whose failure, a signal too, is remembered: raised through HDF5 it would be lost."""
+
+    @functools.wraps(call)
+    def run(self: CarefulFile, *given: Any) -> Any:
+        try:
+            return call(self, *given)
+        except BaseException as error:
+            self.failure = self.failure or error
+            return 0
+
+    return run
 
 
 class CarefulFile:
@@ -82,33 +99,35 @@ class CarefulFile:
         flags = os.O_RDWR | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0)
         self._descriptor = os.open(path, flags, 0o666)
         self._position = 0
+        self._at = 0  # where the descriptor is, -1 while a call moves it that may be interrupted
         self.failure: BaseException | None = None
 
+    @_remembered
     def write(self, data: Any) -> int:
         """Write at the position."""
         rest = memoryview(data).cast("B")
         size = len(rest)
         while rest and self.failure is None:
-            try:
-                os.lseek(self._descriptor, self._position, os.SEEK_SET)
-                written = os.write(self._descriptor, rest[:_PIECE])
-            except BaseException as error:  # a signal too: raised through HDF5 it would be lost
-                self.failure = error
-                break
+            self._go_to_position()
+            self._at = -1
+            written = os.write(self._descriptor, rest[:_PIECE])
             self._position += written
+            self._at = self._position
             rest = rest[written:]
         self._position += len(rest)
         return size
 
+    @_remembered
     def readinto(self, buffer: Any) -> int:
         """Fill a buffer from the position; beyond the end with zeros."""
         view = memoryview(buffer).cast("B")
-        os.lseek(self._descriptor, self._position, os.SEEK_SET)
-        done = 0
+        self._go_to_position()
+        self._at, done = -1, 0
         while done < len(view) and (data := os.read(self._descriptor, len(view) - done)):
             view[done : done + len(data)] = data
             done += len(data)
         view[done:] = bytes(len(view) - done)
+        self._at = self._position + done
         self._position += len(view)
         return len(view)
 
@@ -119,6 +138,7 @@ class CarefulFile:
         self.readinto(buffer)
         return bytes(buffer)
 
+    @_remembered
     def seek(self, offset: int, whence: int = os.SEEK_SET) -> int:
         """Set the position."""
         if whence == os.SEEK_CUR:
@@ -128,22 +148,26 @@ class CarefulFile:
         self._position = offset
         return self._position
 
+    @_remembered
     def tell(self) -> int:
         """The position."""
         return self._position
 
+    @_remembered
     def truncate(self, size: int | None = None) -> int:
         """Set the file's length."""
         length = self._position if size is None else size
         if self.failure is None:
-            try:
-                os.ftruncate(self._descriptor, length)
-            except BaseException as error:
-                self.failure = error
+            os.ftruncate(self._descriptor, length)
         return length
 
     def flush(self) -> None:
         """Nothing is held back."""
+
+    def _go_to_position(self) -> None:
+        """Move the descriptor, unless it is there already."""
+        if self._at != self._position:
+            self._at = os.lseek(self._descriptor, self._position, os.SEEK_SET)
 
     def raise_failure(self) -> None:
         """Raise the first failure, if there was one."""
@@ -181,6 +205,14 @@ def remove_leftovers(folder: Path) -> None:
             if match is not None and (_is_old(path) or (match[1] == _host() and not process_runs(int(match[2])))):
                 with contextlib.suppress(OSError):
                     path.unlink()
+
+
+def remove_own_leftovers(folder: Path) -> None:
+    """Remove the temporary files of this process, which is about to end."""
+    with contextlib.suppress(OSError, ValueError):
+        for path in folder.glob(f".opacity-{_host()}-{os.getpid()}-*.part"):
+            with contextlib.suppress(OSError):
+                path.unlink()
 
 
 def _host() -> str:
@@ -227,14 +259,17 @@ def _as_resource_error(path: Path) -> Iterator[None]:
         raise ResourceError(problem(path, f"cannot be written ({reason})", remedy=remedy)) from error
 
 
-def _write_synced(path: Path, data: bytes) -> None:
+def write_all(path: Path, pieces: Iterable[Any], lasting: bool = True) -> None:
+    """Write pieces of bytes to a new file, and sync it unless it need not outlast a crash.  Raises OSError."""
     descriptor = os.open(path, os.O_WRONLY | os.O_CREAT | os.O_EXCL | getattr(os, "O_BINARY", 0), 0o666)
     try:
-        rest = memoryview(data)
-        while rest:
-            rest = rest[os.write(descriptor, rest[:_PIECE]) :]
-        os.fsync(descriptor)
-        _drop_cached_pages(descriptor)
+        for piece in pieces:
+            rest = memoryview(piece)
+            while rest:
+                rest = rest[os.write(descriptor, rest[:_PIECE]) :]
+        if lasting:
+            os.fsync(descriptor)
+            _drop_cached_pages(descriptor)
     finally:
         os.close(descriptor)
 
@@ -247,11 +282,11 @@ def _drop_cached_pages(descriptor: int) -> None:
 
 
 def _compare(written: Path, data: bytes, path: Path) -> None:
-    digest = hashlib.sha256()
-    with open(written, "rb") as stream:
-        while piece := stream.read(_PIECE):
-            digest.update(piece)
-    if digest.digest() != hashlib.sha256(data).digest():
+    rest = memoryview(data)
+    with open(written, "rb", buffering=0) as stream:
+        while (piece := stream.read(_PIECE)) and piece == rest[: len(piece)]:
+            rest = rest[len(piece) :]
+    if piece or rest:
         raise ResourceError(problem(path, "what the disk gives back is not what was written to it"))
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -9,7 +10,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.errors import LineListError, problem
+from opacity.errors import LineListError, TableError, problem
 from opacity.grids import FloatArray
 from opacity.tables import layout
 from opacity.tables.sealed import read_sealed, write_sealed
@@ -37,15 +38,22 @@ def write_band_shard(path: Path, shard: BandShard) -> None:
     dtype = layout.stored_type(float(positive.min(initial=np.inf)), float(positive.max(initial=0.0)))
     arrays = {"cells": shard.cells.astype(dtype), "sums": shard.sums, "points": shard.points}
     blocks = [np.ascontiguousarray(one).tobytes() for one in arrays.values()]
-    write_sealed(path, {"arrays": [[name, one.dtype.str, one.shape] for name, one in arrays.items()]}, blocks)
+    described = [[name, one.dtype.str, one.shape] for name, one in arrays.items()]
+    write_sealed(path, {"arrays": described, "sha256": [_sha256(block) for block in blocks]}, blocks)
 
 
 def read_band_shard(path: Path) -> BandShard:
     """A shard from its file.  Raises TableError where it is missing, damaged or not one."""
     header, blocks = read_sealed(path)
+    if [_sha256(block) for block in blocks] != header["sha256"]:
+        raise TableError(problem(path, "the shard is not as it was written"))
     return BandShard(
         **{
             name: np.frombuffer(block, dtype).reshape(shape)
             for (name, dtype, shape), block in zip(header["arrays"], blocks, strict=True)
         }
     )
+
+
+def _sha256(block: bytes | memoryview) -> str:
+    return hashlib.sha256(block).hexdigest()

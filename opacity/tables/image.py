@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from opacity.grids import FloatArray
 from opacity.provenance import VERSION
 from opacity.tables import layout
-from opacity.tables.blocks import pack_block
+from opacity.tables.blocks import pack_rows_of
 from opacity.tables.model import CrossSectionTable, TableFrame
 
 _GROWTH = 1 << 22
@@ -193,8 +193,9 @@ def _fill(dataset: Any, table: CrossSectionTable, dtype: np.dtype[Any]) -> NDArr
     for node in node_indices(table):
         # Adding 0 turns a negative zero into the plain one.
         spectrum = np.add(table.cross_section[node], 0.0).astype(dtype)
+        packed = pack_rows_of(spectrum.reshape(1, -1), dataset.chunks[-1])
         for number, block in enumerate(blocks):
-            dataset.id.write_direct_chunk((*node, block.start), pack_block(spectrum[block], dataset.chunks[-1]))
+            dataset.id.write_direct_chunk((*node, block.start), bytes(packed[number]))
             hashes[(*node, number)] = characters(layout.sha256_of(spectrum[block]))
     return hashes
 

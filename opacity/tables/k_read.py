@@ -95,7 +95,7 @@ class KCoefficientTable(OpenedTable):
         k = interpolate.from_nodes(nodes, points, lambda i, j: self._k.read((i, j)).ravel())
         return np.maximum.accumulate(k.reshape(self.shape[-2:]), axis=-1)
 
-    def verify(self) -> None:
+    def verify(self, workers: int = 1) -> None:
         """Read everything; TableError names the first node whose values are not as they were written."""
         for values in (self._k, self._cells):
             if values is not None:
@@ -168,7 +168,7 @@ class _Values:
             self._proved[node] = True
         return values
 
-    def verify(self) -> None:
+    def verify(self, workers: int = 1) -> None:
         """Read all nodes from the disk, also those proved before."""
         self._proved[...] = False
         for node in np.ndindex(self._proved.shape):

@@ -114,4 +114,4 @@ def block_slices(points: int) -> list[slice]:
 def sha256_of(values: NDArray[Any]) -> str:
     """Hexadecimal sha256 of an array's little-endian bytes in C order."""
     little = np.ascontiguousarray(values, dtype=values.dtype.newbyteorder("<"))
-    return hashlib.sha256(little.tobytes()).hexdigest()
+    return hashlib.sha256(little.reshape(-1).view(np.uint8).data).hexdigest()

@@ -48,8 +48,8 @@ class OpenedTable(ABC):
         self._file.close()
 
     @abstractmethod
-    def verify(self) -> None:
-        """Read everything; TableError names the first part that is not as it was written."""
+    def verify(self, workers: int = 1) -> None:
+        """Read everything, in so many threads at most; TableError names a part that is not as it was written."""
 
     def _node_sizes(self) -> tuple[int, ...]:
         sizes = self.temperature.size, self.pressure.size

@@ -1,4 +1,4 @@
-"""Shards: finished parts of a table on disk, each proved by a hash of everything in it.
+"""Shards: finished parts of a table on disk, each of whose bytes is proved.
 
 A shard is named by the hash of its inputs and holds the stored blocks of some spectra over a stretch of the grid, in a
 sealed file (`sealed`).
@@ -6,6 +6,7 @@ sealed file (`sealed`).
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -14,9 +15,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.grids import FloatArray
+from opacity.kernels.packing import NO_WORD, word_range
 from opacity.tables import layout
-from opacity.tables.blocks import pack_block, unpack_block
-from opacity.tables.sealed import read_sealed, write_sealed
+from opacity.tables.blocks import pack_rows_of, unpack_block
+from opacity.tables.sealed import read_header, read_sealed, write_sealed
 
 
 @dataclass(frozen=True)
@@ -34,7 +36,7 @@ class Shard:
     largest: float
     notes: dict[str, Any]
     hashes: tuple[str, ...]
-    blocks: tuple[bytes, ...]
+    blocks: tuple[Any, ...]
 
     def values(self, number: int) -> NDArray[Any]:
         """The values of one block by its number, (n,)."""
@@ -46,20 +48,27 @@ class Shard:
 def make_shard(rows: tuple[int, ...], start: int, chunk: int, spectra: FloatArray, notes: dict[str, Any]) -> Shard:
     """Spectra (n_rows, n_points) as a shard; `chunk` is the length of the table's chunks.
 
-    Stored as f4 where all values that are not 0 lie in its range, else as f8.  The values must be finite, 0 or above.
+    Stored as f4 where all values that are not 0 lie in its range, else as f8.  The values must be 0 or above; where
+    one is not, or not finite, `largest` is NaN or infinite.
     """
-    positive = spectra[spectra > 0.0]
-    smallest, largest = float(positive.min(initial=np.inf)), float(positive.max(initial=0.0))
+    smallest, largest = _extremes(spectra)
     dtype = layout.stored_type(smallest, largest)
-    hashes, blocks = [], []
-    for spectrum in spectra:
+    stored = np.empty(spectra.shape, dtype)
+    hashes = []
+    for spectrum, row in zip(spectra, stored, strict=True):
         # Adding 0 turns a negative zero into the plain one.
-        values = np.add(spectrum, 0.0).astype(dtype)
-        for block in layout.block_slices(values.size):
-            hashes.append(layout.sha256_of(values[block]))
-            blocks.append(pack_block(values[block], chunk))
+        np.add(spectrum, 0.0, out=row, casting="same_kind")
+        hashes += [layout.sha256_of(row[block]) for block in layout.block_slices(row.size)]
+    blocks = pack_rows_of(stored, chunk)
     stop = start + spectra.shape[1]
     return Shard(rows, start, stop, dtype, smallest, largest, notes, tuple(hashes), tuple(blocks))
+
+
+def _extremes(spectra: FloatArray) -> tuple[float, float]:
+    """The smallest value that is not 0, infinite where there is none, and the largest; NaN for what may not be."""
+    smallest, largest = word_range(np.ascontiguousarray(spectra, dtype=np.float64).reshape(-1).view(np.uint64))
+    low, high = np.array([smallest, largest], dtype=np.uint64).view(np.float64).tolist()
+    return low if smallest != NO_WORD else float("inf"), high if high >= 0.0 else float("nan")
 
 
 def write_shard(path: Path, shard: Shard) -> None:
@@ -79,7 +88,15 @@ def write_shard(path: Path, shard: Shard) -> None:
 
 def read_shard(path: Path) -> Shard:
     """A shard from its file.  Raises TableError where it is missing, damaged or not a shard."""
-    header, blocks = read_sealed(path)
+    return _shard(*read_sealed(path))
+
+
+def read_shard_header(path: Path) -> Shard:
+    """A shard from its file without its blocks, which are not proved.  Raises TableError as `read_shard` does."""
+    return _shard(read_header(path), [])
+
+
+def _shard(header: dict[str, Any], blocks: Sequence[Any]) -> Shard:
     return Shard(
         tuple(header["rows"]),
         header["start"],

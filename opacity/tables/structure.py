@@ -6,7 +6,7 @@ import contextlib
 import errno
 import json
 import stat
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -27,8 +27,8 @@ def damaged(path: Path, what: str, *, expected: object = None, found: object = N
 
 
 @contextlib.contextmanager
-def reading(path: Path, what: str) -> Iterator[None]:
-    """Name the file and the part read in whatever goes wrong inside.
+def reading(path: Path, what: str | Callable[[], str]) -> Iterator[None]:
+    """Name the file and the part read in whatever goes wrong inside; `what` may be made only then.
 
     A damaged file can make the HDF5 library raise nearly any type of error, hence the wide net.
     """
@@ -37,6 +37,7 @@ def reading(path: Path, what: str) -> Iterator[None]:
     except OpacityError:
         raise
     except Exception as error:
+        what = what if isinstance(what, str) else what()
         raise damaged(path, f"{what} cannot be read ({one_line(error) or type(error).__name__})") from error
 
 
@@ -176,6 +177,14 @@ def check_stored_as(path: Path, stored: Any, name: str, shape: tuple[int, ...], 
             raise damaged(path, f"shape of {name}", expected=shape, found=stored.shape)
         if stored.dtype not in [np.dtype(kind) for kind in types]:
             raise damaged(path, f"type of {name}", expected=" or ".join(types), found=stored.dtype)
+
+
+def is_packed_as(stored: Any, block: int) -> bool:
+    """Whether a dataset's chunks are blocks of one spectrum, shuffled and deflated, as this program writes them."""
+    plan = stored.id.get_create_plist()
+    filters = [plan.get_filter(i)[0] for i in range(plan.get_nfilters())]
+    chunk = (*(1 for _ in stored.shape[:-1]), min(block, stored.shape[-1]))
+    return filters == [h5py.h5z.FILTER_SHUFFLE, h5py.h5z.FILTER_DEFLATE] and stored.chunks == chunk
 
 
 def _hashed(

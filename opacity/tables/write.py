@@ -67,11 +67,13 @@ def check_frame(path: Path, frame: TableFrame) -> None:
         check_text(path, text)
 
 
-def verify_written(path: Path, written: Path, opened: Callable[[Path], OpenedTable] = open_table) -> None:
+def verify_written(
+    path: Path, written: Path, opened: Callable[[Path], OpenedTable] = open_table, workers: int = 1
+) -> None:
     """Read a table under its temporary name back from the disk.  Raises ResourceError where it does not read back."""
     try:
         with opened(written) as table:
-            table.verify()
+            table.verify(workers)
     except OpacityError as error:
         raise ResourceError(problem(path, f"what was written does not read back ({error})")) from error
 

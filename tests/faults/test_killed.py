@@ -126,7 +126,7 @@ def test_a_disk_that_fails_at_every_point(
             raise OSError(28, "No space left on device")
         return real(*given, **named)
 
-    n = 1
+    n = 0
     while True:
         with monkeypatch.context() as patch:
             patch.setattr(os, call, failing)

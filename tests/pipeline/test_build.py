@@ -20,6 +20,7 @@ from opacity.pipeline.build import Crew, build_table
 from opacity.pipeline.inputs import load_inputs
 from opacity.recipe.load import load_recipe
 from opacity.tables.read import open_table
+from opacity.tables.sealed import is_whole
 
 SHORT = "{ start = 2146.9, stop = 2147.3, step = 0.004 }"
 LONG = "{ start = 2145.0, stop = 2149.0, step = 0.0001 }"
@@ -122,7 +123,9 @@ def test_a_failing_write_leaves_what_was_there(write_recipe, tmp_path, monkeypat
         patched.setattr(os, "fsync", full)
         with pytest.raises(ResourceError, match="No space left"):
             built(changed, out)
-    assert left_in(out) == ["co.cross-section.h5", "co.log.json"]
+    # What is done is kept for the next attempt.
+    assert left_in(out) == ["co.cross-section.h5", "co.log.json", "co.shards"]
+    assert [is_whole(one) for one in (out / "co.shards").iterdir()] == [True]
     assert sha256(out / "co.cross-section.h5") == old
 
 
