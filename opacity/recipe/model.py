@@ -128,15 +128,25 @@ class Grid:
 
 @dataclass(frozen=True)
 class BandStrength:
-    """A published integrated strength that `check` holds the table against."""
+    """A published integrated strength that `check` holds the table against.
+
+    It is per molecule of one `isotopologue`, of the "natural" mixture, or, where that is None, of the recipe's own.
+    `uncertainty` is relative, one standard deviation, None where none was published.
+    """
 
     name: str
     range: tuple[float, float]
     strength: float
     unit: str
     temperature: float
-    uncertainty: float
+    uncertainty: float | None
     source: str
+    isotopologue: str | None = None
+
+    @property
+    def sanity_only(self) -> bool:
+        """Whether only errors of a factor can be seen by it: it is from memory, or has no uncertainty."""
+        return self.uncertainty is None or self.source.lower().startswith("from memory")
 
 
 @dataclass(frozen=True)

@@ -193,8 +193,8 @@ ONE_FAULT = [
     (
         'unit = "cm/molecule"',
         'unit = "cm-2 atm-1"',
-        '53: band_strength[0].unit: unknown value; expected "cm/molecule", "km/mol", "cm-2 atm-1 (273.15 K)", '
-        '"cm-2 atm-1 (296 K)", "cm-2 atm-1 (300 K)" or "cm-2 amagat-1", found "cm-2 atm-1"; '
+        '53: band_strength[0].unit: unknown value; expected "cm/molecule", "km/mol", "cm/mol", '
+        '"cm-2 atm-1 (273.15 K)", "cm-2 atm-1 (296 K)", "cm-2 atm-1 (300 K)" or "cm-2 amagat-1", found "cm-2 atm-1"; '
         'say at which temperature the gas was: "cm-2 atm-1 (273.15 K)", "cm-2 atm-1 (296 K)" or "cm-2 atm-1 (300 K)"',
     ),
     (
