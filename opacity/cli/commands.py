@@ -173,6 +173,7 @@ def check(arguments: Namespace) -> int:
     if is_list(Path(arguments.target)):
         return check_list(Path(arguments.target), arguments.recipe, arguments.json)
     from opacity.pipeline.recheck import check_table_file, find_table_and_recipe
+    from opacity.recipe.unverified import accepted_in_words
 
     given = Path(arguments.recipe) if arguments.recipe else None
     target = find_table_and_recipe(Path(arguments.target), given, Path(arguments.output))
@@ -187,7 +188,9 @@ def check(arguments: Namespace) -> int:
         }
         print(text.as_json(content))
     else:
-        print(text.facts([("table", str(target.table)), ("basis", basis)]))
+        from_memory = accepted_in_words(report.figures.get("unverified", []))
+        facts = [("table", str(target.table)), ("basis", basis)]
+        print(text.facts([*facts, *([("accepted", f"from memory: {from_memory}")] if from_memory else [])]))
         _print_results(report.results, report.figures)
     return DONE if report.passed else FAILED
 

@@ -28,8 +28,10 @@ def ingest(arguments: Namespace) -> int:
     from opacity.pipeline.list_check import store_bands
     from opacity.pipeline.sources import ensure_store
     from opacity.recipe.load import load_recipe
+    from opacity.recipe.unverified import refuse_unverified
 
     recipe = load_recipe(arguments.recipe)
+    refuse_unverified(recipe)
     stores: list[dict[str, Any]] = []
     for source in recipe.line_lists:
         if source.format == "catalogue":

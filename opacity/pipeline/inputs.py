@@ -41,6 +41,7 @@ from opacity.pipeline.open_lists import (
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.recipe.faults import faults_of, shown
 from opacity.recipe.model import Recipe
+from opacity.recipe.unverified import accepted, accepted_in_words, refuse_unverified
 
 _REFERENCES = {
     "TIPS-2021": "Gamache et al. 2021, JQSRT 271, 107713, doi:10.1016/j.jqsrt.2021.107713",
@@ -86,6 +87,7 @@ def load_inputs(
     Raises RecipeError for a choice of the recipe that does not fit the lines, LineListError or MoleculeError for a
     file that cannot be used.
     """
+    refuse_unverified(recipe)
     origin = known or fingerprint(recipe)
     _check_molecule(recipe)
     lists = [
@@ -120,6 +122,9 @@ def load_inputs(
     comparison, warnings = states_against_file(recipe, lists)
     warnings += definition_warnings(recipe, lists) + tuple(words for one in lists for words in one.warnings)
     provenance["partition_function"] |= comparison
+    provenance["unverified"] = accepted(recipe)
+    if provenance["unverified"]:
+        warnings += (f"values from memory are accepted: {accepted_in_words(provenance['unverified'])}",)
     return Inputs(source, used.isotopologues, used.partition, provenance, origin, warnings)
 
 

@@ -20,6 +20,7 @@ from opacity.recipe.sections import (
     read_profile,
 )
 from opacity.recipe.table import Table
+from opacity.recipe.unverified import ACCEPT
 
 SECTIONS = (
     "molecule",
@@ -46,7 +47,7 @@ def load_recipe(path: str | Path) -> Recipe:
     document, lines = parse(path, text)
     faults = Faults(str(path), lines)
     read_now = {name: value for name, value in document.items() if name not in LATER_SECTIONS}
-    root = Table(faults, (), read_now, SECTIONS)
+    root = Table(faults, (), read_now, (*SECTIONS, ACCEPT))
     folder = path.parent
     molecule = read_molecule(root)
     line_lists = read_line_lists(root, folder)
@@ -61,6 +62,7 @@ def load_recipe(path: str | Path) -> Recipe:
         profile=read_profile(root),
         grid=read_grid(root),
         band_strengths=read_band_strengths(root),
+        accept_unverified=root.flag(ACCEPT, default=False),
     )
     _check_tables_wanted(root, document)
     problems = faults.problems()

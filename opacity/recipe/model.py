@@ -151,7 +151,10 @@ class BandStrength:
 
 @dataclass(frozen=True)
 class Recipe:
-    """A whole recipe.  `abundance` is "terrestrial", "pure", or fractions by isotopologue."""
+    """A whole recipe.  `abundance` is "terrestrial", "pure", or fractions by isotopologue.
+
+    `accept_unverified` says that values from memory may be used.
+    """
 
     path: Path
     text: str
@@ -163,6 +166,7 @@ class Recipe:
     profile: Profile
     grid: Grid
     band_strengths: tuple[BandStrength, ...] = ()
+    accept_unverified: bool = False
 
     @property
     def name(self) -> str:

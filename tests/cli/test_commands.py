@@ -40,7 +40,11 @@ def test_plan_tells_the_time_of_all_its_workers(opacity, project, monkeypatch):
 
 
 def test_chi_factors_from_memory_are_told(opacity, write_recipe):
-    path = write_recipe("co", ("tolerance = 1e-3", 'tolerance = 1e-3\nchi = "Tonkov-1996"'))
+    chi = ("tolerance = 1e-3", 'tolerance = 1e-3\nchi = "Tonkov-1996"')
+    code, _, err = opacity("plan", write_recipe("co", chi))
+    assert code == 2
+    assert "co.toml:23: profile.chi: a value from memory; expected a published source, found" in err
+    path = write_recipe("co", chi, ("[molecule]", "accept_unverified = true\n[molecule]"))
     text = one_line(opacity("plan", path)[1])
     assert "warning: chi factors Tonkov-1996: Tonkov et al. 1996, Appl. Opt. 35, 4863 (constants from memory);" in text
     assert "warning: the chi factors Tonkov-1996 are for pure CO2 and are used for CO" in text

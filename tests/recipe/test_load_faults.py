@@ -45,7 +45,8 @@ ONE_FAULT = [
         "[molecule]",
         "[molecules]",
         "2: molecules: unknown key; expected molecule, line_list, isotopologues, "
-        'partition_function, broadening, profile, grid, cross_section or band_strength, found "molecules"; '
+        "partition_function, broadening, profile, grid, cross_section, band_strength or accept_unverified, "
+        'found "molecules"; '
         "did you mean molecule?",
     ),
     # isotopologues and partition function
