@@ -15,39 +15,14 @@ from opacity.cli import text
 from opacity.cli.fetch import fetch as fetch
 from opacity.cli.lists import check_list, is_list
 from opacity.cli.lists import ingest as ingest
+from opacity.cli.recipes import check_recipe, is_recipe_without_table
+from opacity.cli.recipes import new as new
 
 if TYPE_CHECKING:
     from opacity.pipeline.build import BuildResult
     from opacity.pipeline.plan import Plan
 
 DONE, FAILED = 0, 1
-
-
-def new(arguments: Namespace) -> int:
-    """`opacity new FORMULA`: a commented recipe to fill in."""
-    from opacity.errors import InputError, problem
-    from opacity.molecule.isotopologue import isotopologues_of
-    from opacity.recipe.template import MoleculeFacts, recipe_template
-    from opacity.tables.atomic import write_atomically
-
-    known = isotopologues_of(arguments.formula)
-    facts = MoleculeFacts(None, tuple((one.formula, one.abundance) for one in known)) if known else None
-    recipe = recipe_template(arguments.formula, facts)
-    to_stdout = arguments.output == "-"
-    path = Path(arguments.output or f"{arguments.formula}.toml")
-    if to_stdout:
-        print(recipe, end="")
-    elif path.exists():
-        raise InputError(problem(path, "is there already", remedy="choose another name with -o"))
-    else:
-        write_atomically(path, recipe.encode("utf-8"))
-    if not known:
-        formula = arguments.formula
-        note = f"{formula}: not in hapi's tables; give its mass and a partition-function file, or mend it"
-        print(text.wrapped(note), file=sys.stderr if to_stdout else sys.stdout)
-    if not to_stdout:
-        print(f"{path}: fill in what is marked `decide`, then run `opacity plan {path}`")
-    return DONE
 
 
 def plan(arguments: Namespace) -> int:
@@ -172,6 +147,8 @@ def check(arguments: Namespace) -> int:
     """`opacity check TABLE|RECIPE`: the table of results, exit code 1 where a check differs."""
     if is_list(Path(arguments.target)):
         return check_list(Path(arguments.target), arguments.recipe, arguments.json)
+    if not arguments.recipe and is_recipe_without_table(Path(arguments.target), Path(arguments.output)):
+        return check_recipe(arguments)
     from opacity.pipeline.recheck import check_table_file, find_table_and_recipe
     from opacity.recipe.unverified import accepted_in_words
 

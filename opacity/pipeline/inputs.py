@@ -89,7 +89,7 @@ def load_inputs(
     """
     refuse_unverified(recipe)
     origin = known or fingerprint(recipe)
-    _check_molecule(recipe)
+    check_molecule(recipe)
     lists = [
         open_list(recipe, number, tables, memory, quiet, origin.hashes) for number in range(len(recipe.line_lists))
     ]
@@ -162,7 +162,7 @@ def _stored(
     return source, found
 
 
-def _check_molecule(recipe: Recipe) -> None:
+def check_molecule(recipe: Recipe) -> None:
     """A mass is needed for a molecule that hapi does not know, and would contradict what hapi knows of another."""
     molecule, faults = recipe.molecule, faults_of(recipe)
     known = bool(isotopologues_of(molecule.formula))

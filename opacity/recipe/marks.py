@@ -1,7 +1,7 @@
 """What the comments of a recipe say of its values: undecided, or from memory.
 
-``# DECIDE: which gas`` marks what whoever fills in a recipe has still to decide; ``# ... from memory`` behind a value says
-that it has no source.
+``# DECIDE: which gas`` marks what whoever fills in a recipe has still to decide; ``# ... from memory`` behind a value
+says that it has no source.
 """
 
 from __future__ import annotations
