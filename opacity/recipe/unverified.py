@@ -12,8 +12,8 @@ from dataclasses import dataclass
 from typing import Any
 
 from opacity.chi_factors import CHI_FACTORS
-from opacity.errors import RecipeError
-from opacity.recipe.faults import Faults, dotted, faults_of, shown
+from opacity.errors import RecipeError, printable
+from opacity.recipe.faults import Faults, dotted, faults_of
 from opacity.recipe.marks import comments_of
 from opacity.recipe.model import Recipe
 from opacity.recipe.positions import KeyPath, key_lines, line_of
@@ -47,7 +47,7 @@ def unverified_values(text: str) -> tuple[Unverified, ...]:
     lines = key_lines(text)
     found = {key: Unverified(key, line_of(lines, key), says) for key, says in _said(document, ())}
     for comment in comments_of(text):
-        if comment.key and not comment.alone and WORDS in comment.text.lower():
+        if comment.key not in ((), (ACCEPT,)) and not comment.alone and WORDS in comment.text.lower():
             found.setdefault(comment.key, Unverified(comment.key, comment.line, comment.text))
     return tuple(sorted(found.values(), key=lambda one: one.line))
 
@@ -73,7 +73,7 @@ def add_unverified(faults: Faults, text: str) -> None:
             one.key,
             f"{one.name} is {WORDS}" if one.name != dotted(one.key) else f"a value {WORDS}",
             expected="a published source",
-            found=shown(one.says),
+            found=f'"{printable(one.says)}"',
             remedy=f"look it up, or put {ACCEPT} = true at the top of the recipe",
         )
 
