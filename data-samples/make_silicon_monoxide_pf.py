@@ -3,8 +3,8 @@
     python data-samples/make_silicon_monoxide_pf.py c044505.cat
 
 The list is CDMS 044505, version 2 (Mueller et al. 2013, J. Phys. Chem. A 117, 13843), lines within v = 0 to 10, which
-the general package linecat carries.  Each line names its two levels by J and v and gives the energy of the lower one; the
-upper one lies the line's wavenumber above it.  Q is the sum of (2J + 1) exp(-c2 E / T) over the 1201 levels.  Levels
+the general package linecat carries.  Each line names its two levels by J and v and gives the energy of the lower one;
+the upper one lies the wavenumber above it.  Q is the sum of (2J + 1) exp(-c2 E / T) over the 1201 levels.  Levels
 above v = 10 are missing: nothing up to 1000 K, 3e-4 at 2000 K.
 """
 
@@ -16,7 +16,7 @@ from pathlib import Path
 
 C2 = 1.438776877  # cm K, CODATA 2018
 LIGHT_SPEED = 29979.2458  # MHz cm
-TEMPERATURES = [*range(2, 20), *range(20, 60, 5), *range(60, 300, 20), *range(300, 2001, 50)]
+TEMPERATURES = [*(0.5 * t for t in range(4, 40)), *range(20, 60, 5), *range(60, 300, 20), *range(300, 2001, 50)]
 TARGET = Path(__file__).resolve().parents[1] / "recipes" / "silicon-monoxide.pf"
 
 
