@@ -253,4 +253,8 @@ def _source(band: PublishedBand) -> str:
     if band.status == PUBLISHED:
         no_limit = " (no uncertainty: a factor of 1.5 is taken to agree)" if band.uncertainty is None else ""
         return band.source + no_limit
-    return f"{band.status}" if band.source.startswith("none") else f"{band.source} ({band.status})"
+    return (
+        f"{band.status}"
+        if band.source.lower().startswith(("none", "from memory"))
+        else f"{band.source} ({band.status})"
+    )

@@ -40,6 +40,7 @@ from opacity.pipeline.open_lists import (
 )
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.recipe.faults import faults_of, shown
+from opacity.recipe.marks import undecided_warnings
 from opacity.recipe.model import Recipe
 from opacity.recipe.unverified import accepted, accepted_in_words, refuse_unverified
 
@@ -122,6 +123,7 @@ def load_inputs(
     comparison, warnings = states_against_file(recipe, lists)
     warnings += definition_warnings(recipe, lists) + tuple(words for one in lists for words in one.warnings)
     provenance["partition_function"] |= comparison
+    warnings += undecided_warnings(recipe.text)
     provenance["unverified"] = accepted(recipe)
     if provenance["unverified"]:
         warnings += (f"values from memory are accepted: {accepted_in_words(provenance['unverified'])}",)

@@ -7,6 +7,8 @@ says that it has no source.
 from __future__ import annotations
 
 import re
+import tomllib
+from bisect import bisect_right
 from dataclasses import dataclass
 
 from opacity.recipe.positions import STRING, KeyPath, key_lines
@@ -44,8 +46,8 @@ def comments_of(text: str) -> tuple[Comment, ...]:
             continue
         start = match.start()
         line, counted = line + text.count("\n", counted, start), start
-        above = [row for row in rows if row <= line]
-        key = by_line[above[-1]] if above else ()
+        above = bisect_right(rows, line)
+        key = by_line[rows[above - 1]] if above else ()
         alone = not text[text.rfind("\n", 0, start) + 1 : start].strip()
         if alone:
             named = _KEY_IN_COMMENT.match(match["comment"])
@@ -63,10 +65,28 @@ def _section(key: KeyPath) -> KeyPath:
 
 
 def undecided(text: str) -> tuple[tuple[int, KeyPath, str], ...]:
-    """Line, key and words of all that is marked as undecided."""
-    marked = []
+    """Line, key and words of all that is marked as undecided; nothing where the text is no TOML."""
+    marked: list[tuple[int, KeyPath, str]] = []
+    if DECIDE not in text or not _is_toml(text):
+        return ()
     for one in comments_of(text):
         _, mark, words = one.text.partition(DECIDE)
         if mark:
             marked.append((one.line, one.key, words.strip()))
     return tuple(marked)
+
+
+def undecided_warnings(text: str) -> tuple[str, ...]:
+    """What to warn of where a recipe is used with decisions still marked."""
+    lines = [str(line) for line, _, _ in undecided(text)]
+    if not lines:
+        return ()
+    return (f"still marked {DECIDE.rstrip(':')} in the recipe: line{'s' * (len(lines) > 1)} {', '.join(lines)}",)
+
+
+def _is_toml(text: str) -> bool:
+    try:
+        tomllib.loads(text.replace("\r\n", "\n"))
+    except ValueError:
+        return False
+    return True

@@ -62,6 +62,13 @@ def test_a_fault_of_what_is_still_to_be_decided_is_not_told_twice(write_recipe):
     assert one.startswith(f"{line_of(path, 'DECIDE')}: line_list[0].reference: not decided yet; expected what to cite;")
 
 
+def test_a_recipe_used_before_all_is_decided_is_warned_of(opacity, write_recipe, tmp_path):
+    path = write_recipe("co", ("cutoff = 25.0", "cutoff = 25.0  # DECIDE: how far"))
+    code, out, _ = opacity("plan", path, "-o", tmp_path)
+    assert code == 0
+    assert f"warning: still marked DECIDE in the recipe: line {line_of(path, 'DECIDE')}\n" in out
+
+
 def test_values_from_memory_are_told_unless_they_are_accepted(write_recipe):
     change = ("cutoff = 25.0", "cutoff = 25.0  # from memory")
     (one,) = lacks(write_recipe("co", change))
