@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+import tomllib
+from pathlib import Path
 
 import pytest
 
@@ -131,3 +133,22 @@ def test_the_key_in_the_wrong_place_and_of_the_wrong_kind(opacity, write_recipe)
     code, _, err = opacity("plan", write_recipe("co", head))
     assert code == 2
     assert 'accept_unverified: not a boolean; expected true or false, found "yes"' in err
+
+
+def test_no_text_that_is_toml_trips_the_search() -> None:
+    """Every recipe of the fuzzing corpus that is TOML, and all that ship, with comments planted on each line."""
+    corpus = Path(__file__).parents[1] / "fuzz" / "corpus" / "recipe"
+    texts = [path.read_bytes().decode("utf-8", "replace") for path in sorted(corpus.iterdir())]
+    texts += [path.read_text() for path in sorted((Path(__file__).parents[2] / "recipes").glob("*.toml"))]
+    tried = 0
+    for text in texts:
+        try:
+            tomllib.loads(text.replace("\r\n", "\n"))
+        except (ValueError, RecursionError):
+            continue
+        tried += 1
+        lines = text.replace("\r\n", "\n").count("\n") + 1
+        for one in (*undecided(text + "\n# DECIDE: x"), *unverified_values(text + "\n# from memory")):
+            assert 1 <= (one.line if hasattr(one, "line") else one[0]) <= lines + 1
+        assert [words for _, _, words in undecided(text + "\n# DECIDE: planted")][-1] == "planted"
+    assert tried > 20

@@ -131,7 +131,7 @@ def level_spacing(row: Row) -> float:
 
 @cache
 def catalogue_a() -> tuple[float, ...]:
-    """A of JPL's records of CO, J = 1-0 to 8-7, from intensities at 300 K."""
+    """A of CO, J = 1-0 to 8-7, from intensities at 300 K: records of JPL 28001, version 4, from astroquery 0.4.11."""
     lines = read_catalogue(DATA / "jpl_28001.cat")
     return tuple(einstein_a(lines, tips("TIPS-2021", isotopologue(5, 1))(300.0)).tolist())
 
