@@ -16,6 +16,7 @@ _KM_PER_MOL = 1e5 / AVOGADRO
 BAND_STRENGTH_UNITS: dict[str, float] = {
     "cm/molecule": 1.0,
     "km/mol": _KM_PER_MOL,
+    "cm/mol": 1.0 / AVOGADRO,
     "cm-2 atm-1 (273.15 K)": 1.0 / LOSCHMIDT,
     "cm-2 atm-1 (296 K)": 296.0 / 273.15 / LOSCHMIDT,
     "cm-2 atm-1 (300 K)": 300.0 / 273.15 / LOSCHMIDT,

@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from opacity.check.band_strength import STANDARD_DEVIATIONS
+from opacity.check.band_strength import SANITY_FACTOR, STANDARD_DEVIATIONS
 from opacity.check.result import AGREES, CANNOT_JUDGE
 from opacity.cross_sections.prepare import fraction_of
 from opacity.errors import MoleculeError
@@ -24,9 +24,6 @@ from opacity.recipe.model import BandStrength, Recipe
 
 MORE = "more than the band allows"
 LESS = "less than the band"
-
-SANITY_FACTOR = 1.5
-"""A strength from memory, or one published without an uncertainty, agrees within this factor."""
 
 _EDITION = "TIPS-2021"
 _STRETCHES, _GAP = 64, 8
@@ -93,14 +90,18 @@ def bands_of(molecule: str, recipe: Recipe | None = None) -> list[Wanted]:
     """The published bands of a molecule, and those of a recipe, per molecule of its mixture of isotopologues."""
     found = [Wanted(band) for band in published_bands(molecule)]
     if recipe is not None:
-        found += [Wanted(_of_recipe(band, molecule), recipe.abundance) for band in recipe.band_strengths]
+        for band in recipe.band_strengths:
+            mixture = "terrestrial" if band.isotopologue == "natural" else recipe.abundance
+            found.append(Wanted(_of_recipe(band, molecule), mixture))
     return found
 
 
 def _of_recipe(band: BandStrength, molecule: str) -> PublishedBand:
+    of = None if band.isotopologue == "natural" else band.isotopologue
+    status = FROM_MEMORY if band.sanity_only and band.uncertainty is not None else PUBLISHED
     return PublishedBand(
-        molecule, None, f"{band.name} (recipe)", band.range, band.strength, band.unit, band.temperature,
-        band.uncertainty, PUBLISHED, band.source,
+        molecule, of, f"{band.name} (recipe)", band.range, band.strength, band.unit, band.temperature,
+        band.uncertainty, status, band.source,
     )  # fmt: skip
 
 
@@ -125,9 +126,11 @@ class BandSums:
             if nu.size:
                 self.reaches(one, float(nu[0]), float(nu[-1]))
         for place, wanted in enumerate(self._wanted):
+            if wanted.band.range is None:
+                continue
             low, high = np.searchsorted(lines.wavenumber, wanted.band.range)
             if high > low:
-                self._note_places(place, wanted, lines, slice(low, high))
+                self._note_places(place, wanted.band.range, wanted, lines, slice(low, high))
                 try:
                     self._sums[place] += self._sum(lines, slice(low, high), wanted)
                 except MoleculeError as error:
@@ -138,21 +141,23 @@ class BandSums:
         known = self._reach.get(isotopologue, (low, high))
         self._reach[isotopologue] = (min(known[0], low), max(known[1], high))
 
-    def _note_places(self, place: int, wanted: Wanted, lines: LineList, part: slice) -> None:
+    def _note_places(
+        self, place: int, between: tuple[float, float], wanted: Wanted, lines: LineList, part: slice
+    ) -> None:
         """Note which stretches of a band's range have lines that count."""
         counts = np.array([wanted.fraction(one) > 0.0 for one in lines.isotopologues])
         nu = lines.wavenumber[part][counts[lines.isotopologue[part]]]
-        low, high = wanted.band.range
+        low, high = between
         self._has_lines[place, np.minimum((nu - low) / (high - low) * _STRETCHES, _STRETCHES - 1).astype(int)] = True
 
-    def _gap(self, place: int) -> tuple[float, float] | None:
+    def _gap(self, place: int, between: tuple[float, float]) -> tuple[float, float] | None:
         """The widest gap (cm-1) between lines within a band's range, None where there is none worth a word."""
         filled = np.flatnonzero(self._has_lines[place])
         steps = np.diff(filled)
         if not steps.size or steps.max() <= _GAP:
             return None
         before = int(filled[steps.argmax()])
-        low, high = self._wanted[place].band.range
+        low, high = between
         width = (high - low) / _STRETCHES
         return low + (before + 1) * width, low + (before + int(steps.max())) * width
 
@@ -195,6 +200,8 @@ class BandSums:
                 difference, deviations, band.sanity_only,
             )  # fmt: skip
 
+        if band.range is None:
+            return result(CANNOT_JUDGE, "no range holds it alone: other bands overlap it")
         fractions = {one: wanted.fraction(one) for one in self._reach}
         share = sum(fractions.values()) / wanted.whole
         if share <= 0.0:
@@ -227,7 +234,7 @@ class BandSums:
         # What the isotopologues that the list lacks would hold is not missing from it.
         if found / (published * min(share, 1.0)) - 1.0 >= below:
             return result(AGREES, words, found, difference, deviations)
-        gap = self._gap(place)
+        gap = self._gap(place, band.range)
         if gap is not None:
             detail = f"the list has no lines between {gap[0]:.6g} and {gap[1]:.6g} cm-1; in the range {words}"
             return result(CANNOT_JUDGE, detail, found, difference, deviations)
@@ -246,4 +253,8 @@ def _source(band: PublishedBand) -> str:
     if band.status == PUBLISHED:
         no_limit = " (no uncertainty: a factor of 1.5 is taken to agree)" if band.uncertainty is None else ""
         return band.source + no_limit
-    return f"{band.status}" if band.source.startswith("none") else f"{band.source} ({band.status})"
+    return (
+        f"{band.status}"
+        if band.source.lower().startswith(("none", "from memory"))
+        else f"{band.source} ({band.status})"
+    )

@@ -57,7 +57,7 @@ def run_checks(
         rows = [judge_closure(accounts, profile.tolerance), judge_audit(found, profile.tolerance)]
         for band in recipe.band_strengths:
             pressure = choose_pressure(band, accounts, source, profile)
-            rows.append(check_band(band, spectra, pressure, source, profile, executor))
+            rows.append(check_band(band, spectra, pressure, source, profile, executor, recipe.abundance))
     figures = {
         "tolerance": profile.tolerance,
         "results": [row.as_dict() for row in rows],

@@ -18,42 +18,20 @@ from opacity.cli.k_tables import g_points as g_points
 from opacity.cli.k_tables import mix as mix
 from opacity.cli.lists import check_list, is_list
 from opacity.cli.lists import ingest as ingest
+from opacity.cli.recipes import check_recipe, is_recipe_without_table
+from opacity.cli.recipes import new as new
 from opacity.cli.tables import compare as compare
 from opacity.cli.tables import explain as explain
-
-
-def new(arguments: Namespace) -> int:
-    """`opacity new FORMULA`: a commented recipe to fill in."""
-    from opacity.errors import InputError, problem
-    from opacity.molecule.isotopologue import isotopologues_of
-    from opacity.recipe.template import MoleculeFacts, recipe_template
-    from opacity.tables.atomic import write_atomically
-
-    known = isotopologues_of(arguments.formula)
-    facts = MoleculeFacts(None, tuple((one.formula, one.abundance) for one in known)) if known else None
-    recipe = recipe_template(arguments.formula, facts)
-    to_stdout = arguments.output == "-"
-    path = Path(arguments.output or f"{arguments.formula}.toml")
-    if to_stdout:
-        print(recipe, end="")
-    elif path.exists():
-        raise InputError(problem(path, "is there already", remedy="choose another name with -o"))
-    else:
-        write_atomically(path, recipe.encode("utf-8"))
-    if not known:
-        formula = arguments.formula
-        note = f"{formula}: not in hapi's tables; give its mass and a partition-function file, or mend it"
-        print(text.wrapped(note), file=sys.stderr if to_stdout else sys.stdout)
-    if not to_stdout:
-        print(f"{path}: fill in what is marked `decide`, then run `opacity plan {path}`")
-    return DONE
 
 
 def check(arguments: Namespace) -> int:
     """`opacity check TABLE|RECIPE`: the tables of results, exit code 1 where a check differs."""
     if is_list(Path(arguments.target)):
         return check_list(Path(arguments.target), arguments.recipe, arguments.json)
+    if not arguments.recipe and is_recipe_without_table(Path(arguments.target), Path(arguments.output)):
+        return check_recipe(arguments)
     from opacity.pipeline.recheck import check_table_file, find_tables_and_recipe
+    from opacity.recipe.unverified import accepted_in_words
 
     given = Path(arguments.recipe) if arguments.recipe else None
     targets = find_tables_and_recipe(Path(arguments.target), given, Path(arguments.output))
@@ -72,7 +50,9 @@ def check(arguments: Namespace) -> int:
                 }
             )
         else:
-            print(text.facts([("table", str(target.table)), ("basis", basis)]))
+            from_memory = accepted_in_words(report.figures.get("unverified", []))
+            facts = [("table", str(target.table)), ("basis", basis)]
+            print(text.facts([*facts, *([("accepted", f"from memory: {from_memory}")] if from_memory else [])]))
             print_results(report.results, report.figures)
     if arguments.json:
         print(text.as_json(found[0] if len(found) == 1 else {"passed": passed, "tables": found}))

@@ -29,10 +29,12 @@ def ingest(arguments: Namespace) -> int:
     from opacity.pipeline.list_check import store_bands
     from opacity.pipeline.sources import ensure_store
     from opacity.recipe.load import load_recipe
+    from opacity.recipe.unverified import refuse_unverified
 
     recipe = load_recipe(arguments.recipe)
     if recipe.species:
         raise InputError(problem(recipe.path, "has no lists of its own", remedy="ingest the recipes of its species"))
+    refuse_unverified(recipe)
     stores: list[dict[str, Any]] = []
     for source in recipe.line_lists:
         if source.format == "catalogue":

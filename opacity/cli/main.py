@@ -63,6 +63,7 @@ def parser() -> argparse.ArgumentParser:
     one = command("new", "write a commented recipe to fill in")
     one.add_argument("formula", metavar="FORMULA", help="the molecule, such as CO or H2O")
     one.add_argument("-o", "--output", metavar="FILE", help="where to write it (default: FORMULA.toml; - for stdout)")
+    one.add_argument("--from", dest="source", metavar="FOLDER|FILE", help="a data set in ExoMol format, or its .def")
 
     one = command("fetch", "get the files that a recipe's line lists need")
     one.add_argument("recipe", metavar="RECIPE")
@@ -98,7 +99,7 @@ def parser() -> argparse.ArgumentParser:
 
 
 def _add_reading_commands(command: Callable[[str, str], argparse.ArgumentParser]) -> None:
-    one = command("check", "show a table right, or say what differs; or look at a line list")
+    one = command("check", "show a table right, or say what differs; what a recipe lacks; or look at a line list")
     one.add_argument("target", metavar="TABLE|RECIPE|LIST")
     one.add_argument(
         "--recipe", metavar="RECIPE", help="the recipe that the table was built from, or that says what a list is of"

@@ -72,6 +72,13 @@ def hapi_parser(path: Path) -> Callable[[TextChunk], ParsedColumns]:
     return partial(_parse, path, _read_header(path))
 
 
+def broadeners_of(path: Path) -> frozenset[str]:
+    """The broadeners, in lower case, for which a hapi table has half-widths.  Raises LineListError as `hapi_parser`."""
+    header = _read_header(path)
+    matches = (_COLUMN.fullmatch(name) for name in (*header.layout, *(extra.lower() for extra in header.extra)))
+    return frozenset(match[2] for match in matches if match and match[1] == "gamma")
+
+
 def _parse(path: Path, header: _Header, chunk: TextChunk) -> ParsedColumns:
     # Behind the fixed part stands a separator, so that the first field is empty where there are extra columns.
     count = len(header.extra) + 1

@@ -1,8 +1,9 @@
 """Published integrated strengths of bands, from `band_strengths.csv` beside this file; every row names its source.
 
 Strengths, temperatures and uncertainties are as published, in the units published.  The ranges are chosen here: they
-hold the band with its hot bands and those of other isotopologues, so that lines need no assignment.  Rows whose status
-is "from memory: sanity only" have no source and find errors of a factor, not of per cents.
+hold the band with its hot bands and those of other isotopologues, so that lines need no assignment; a band that no
+range holds alone has none, and is not judged.  Rows whose status is "from memory: sanity only" have no source and find
+errors of a factor, not of per cents.
 """
 
 from __future__ import annotations
@@ -22,7 +23,7 @@ _FILE = Path(__file__).with_name("band_strengths.csv")
 
 @dataclass(frozen=True)
 class PublishedBand:
-    """One band: `range` cm-1, `strength` in `unit` (of `opacity.units`), `temperature` K.
+    """One band: `range` cm-1, None where others overlap it; `strength` in `unit` of `opacity.units`; `temperature` K.
 
     The strength is per molecule of one `isotopologue` (by hapi's formula), or of the natural mixture where that is
     None.  `uncertainty` is relative, one standard deviation, None where none was published.
@@ -31,7 +32,7 @@ class PublishedBand:
     molecule: str
     isotopologue: str | None
     name: str
-    range: tuple[float, float]
+    range: tuple[float, float] | None
     strength: float
     unit: str
     temperature: float
@@ -59,7 +60,7 @@ def all_published_bands() -> tuple[PublishedBand, ...]:
                 molecule=row["molecule"],
                 isotopologue=row["isotopologue"] or None,
                 name=row["name"],
-                range=(float(row["lower"]), float(row["upper"])),
+                range=(float(row["lower"]), float(row["upper"])) if row["lower"] else None,
                 strength=float(row["strength"]),
                 unit=row["unit"],
                 temperature=float(row["temperature"]),

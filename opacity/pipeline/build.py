@@ -30,6 +30,7 @@ from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.pipeline.units import Unit
 from opacity.pipeline.workers import Origin, Work, WorkUnit, in_processes, in_threads
 from opacity.recipe.model import Recipe
+from opacity.recipe.unverified import refuse_unverified
 from opacity.tables.assemble import Assembly, assemble_table, stored_type_of
 from opacity.tables.atomic import remove_leftovers
 from opacity.tables.model import TableFrame
@@ -111,6 +112,7 @@ def build_table(
     """
     started = time.monotonic()
     crew = crew or Crew()
+    refuse_unverified(recipe)
     path, log = folder / table_name(recipe, kind), folder / f"{recipe.name}.log.json"
     remove_leftovers(folder)
     origin = fingerprint(recipe)

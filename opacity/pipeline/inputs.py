@@ -41,7 +41,9 @@ from opacity.pipeline.open_lists import (
 )
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.recipe.faults import faults_of, shown
+from opacity.recipe.marks import undecided_warnings
 from opacity.recipe.model import Recipe
+from opacity.recipe.unverified import accepted, accepted_in_words, refuse_unverified
 
 _REFERENCES = {
     "TIPS-2021": "Gamache et al. 2021, JQSRT 271, 107713, doi:10.1016/j.jqsrt.2021.107713",
@@ -87,10 +89,11 @@ def load_inputs(
     Raises RecipeError for a choice of the recipe that does not fit the lines, LineListError or MoleculeError for a
     file that cannot be used.
     """
+    refuse_unverified(recipe)
     origin = known or fingerprint(recipe)
     if recipe.species:
         return _load_mixture(recipe, tables, origin, memory, quiet)
-    _check_molecule(recipe)
+    check_molecule(recipe)
     lists = [
         open_list(recipe, number, tables, memory, quiet, origin.hashes) for number in range(len(recipe.line_lists))
     ]
@@ -123,6 +126,10 @@ def load_inputs(
     comparison, warnings = states_against_file(recipe, lists)
     warnings += definition_warnings(recipe, lists) + tuple(words for one in lists for words in one.warnings)
     provenance["partition_function"] |= comparison
+    warnings += undecided_warnings(recipe.text)
+    provenance["unverified"] = accepted(recipe)
+    if provenance["unverified"]:
+        warnings += (f"values from memory are accepted: {accepted_in_words(provenance['unverified'])}",)
     return Inputs(source, used.isotopologues, used.partition, provenance, origin, warnings)
 
 
@@ -146,6 +153,7 @@ def _load_mixture(recipe: Recipe, tables: Path, origin: Fingerprint, memory: int
             {"fraction": one.fraction, "formula": one.recipe.molecule.formula, **inputs.provenance}
             for one, inputs in zip(recipe.species, found, strict=True)
         ],
+        "unverified": list(dict.fromkeys(words for one in origins for words in one["unverified"])),
         "references": list(dict.fromkeys(words for one in origins for words in one["references"])),
         "inputs_sha256": origin.sha256,
     }
@@ -193,7 +201,7 @@ def _stored(
     return source, found
 
 
-def _check_molecule(recipe: Recipe) -> None:
+def check_molecule(recipe: Recipe) -> None:
     """A mass is needed for a molecule that hapi does not know, and would contradict what hapi knows of another."""
     molecule, faults = recipe.molecule, faults_of(recipe)
     known = bool(isotopologues_of(molecule.formula))

@@ -134,7 +134,7 @@ def store_bands(store: LineStore, recipe: Recipe) -> list[ListBand]:
     for one in store.index.isotopologues:
         if one.formula in spans:
             sums.reaches(one, *spans[one.formula])
-    for low, high in _joined([one.band.range for one in wanted]):
+    for low, high in _joined([one.band.range for one in wanted if one.band.range is not None]):
         for lines in store.stretches(low, high):
             sums.add(lines)
     return sums.results()

@@ -6,6 +6,7 @@ import json
 import os
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 from opacity.check.open_check import check_integrity, recheck, require_same_inputs, require_same_recipe, stored_results
 from opacity.check.run import CheckReport
@@ -100,7 +101,7 @@ def check_table_file(target: Target, seed: int | None = None, quiet: bool = Fals
 def _as_stored(table: Table | KCoefficientTable, why: str) -> tuple[CheckReport, str]:
     rows = [check_integrity(table), *stored_results(table)]
     note = f"{why}: all but integrity as stored by the build; --recipe repeats them from the lines"
-    return CheckReport(tuple(rows), table.checks), note
+    return CheckReport(tuple(rows), {**table.checks, **_unverified(table)}), note
 
 
 def _again(
@@ -110,4 +111,10 @@ def _again(
     with Progress("checks", nodes, "nodes", quiet) as progress:
         chosen = inputs.seed if seed is None else seed
         report = recheck(table, recipe, inputs.lines, chosen, progress.step, allowed_cpus())
+    report = CheckReport(report.results, {**report.figures, **_unverified(table)})
     return report, f"recomputed from {recipe.path} with seed {chosen}"
+
+
+def _unverified(table: Table | KCoefficientTable) -> dict[str, Any]:
+    """The values from memory that the table's recipe accepted; tables made before there was such a choice say none."""
+    return {"unverified": table.provenance.get("unverified", [])}

@@ -21,6 +21,7 @@ from opacity.recipe.sections import (
     read_profile,
 )
 from opacity.recipe.table import Table
+from opacity.recipe.unverified import ACCEPT
 
 SECTIONS = (
     "molecule",
@@ -49,7 +50,7 @@ def load_recipe(path: str | Path) -> Recipe:
     if "species" in document:
         root = Table(faults, (), document, mixture.SECTIONS)
         return _if_faultless(mixture.read_mixture(path, text, root, load_recipe), root)
-    root = Table(faults, (), document, SECTIONS)
+    root = Table(faults, (), document, (*SECTIONS, ACCEPT))
     folder = path.parent
     molecule = read_molecule(root)
     line_lists = read_line_lists(root, folder)
@@ -67,6 +68,7 @@ def load_recipe(path: str | Path) -> Recipe:
         band_strengths=read_band_strengths(root),
         cross_section="cross_section" in document,
         k_coefficient=read_k_coefficient(root, grid),
+        accept_unverified=root.flag(ACCEPT, default=False),
     )
     return _if_faultless(recipe, root)
 

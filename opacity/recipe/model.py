@@ -128,15 +128,25 @@ class Grid:
 
 @dataclass(frozen=True)
 class BandStrength:
-    """A published integrated strength that `check` holds the table against."""
+    """A published integrated strength that `check` holds the table against.
+
+    It is per molecule of one `isotopologue`, of the "natural" mixture, or, where that is None, of the recipe's own.
+    `uncertainty` is relative, one standard deviation, None where none was published.
+    """
 
     name: str
     range: tuple[float, float]
     strength: float
     unit: str
     temperature: float
-    uncertainty: float
+    uncertainty: float | None
     source: str
+    isotopologue: str | None = None
+
+    @property
+    def sanity_only(self) -> bool:
+        """Whether only errors of a factor can be seen by it: it is from memory, or has no uncertainty."""
+        return self.uncertainty is None or self.source.lower().startswith("from memory")
 
 
 @dataclass(frozen=True)
@@ -177,6 +187,7 @@ class Recipe:
 
     That of a mixture has `species` and no line lists, partition function or broadening of its own.
     `cross_section` and `k_coefficient` say which tables are wanted, one of them at least.
+    `accept_unverified` says that values from memory may be used.
     """
 
     path: Path
@@ -192,6 +203,7 @@ class Recipe:
     cross_section: bool = True
     k_coefficient: KCoefficientChoice | None = None
     species: tuple[Species, ...] = ()
+    accept_unverified: bool = False
 
     @property
     def parts(self) -> tuple[Recipe, ...]:

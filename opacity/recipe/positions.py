@@ -18,7 +18,7 @@ _INLINE_BLANK = re.compile(r"[ \t]*")
 _BARE_KEY = re.compile(r"[A-Za-z0-9_-]+")
 _BARE_VALUE = re.compile(r"[^,\]}#\n]*")
 # A multi-line string may end in one or two quotes of its own before the closing three.
-_STRING = re.compile(
+STRING = re.compile(
     r'"""(?:[^\\]|\\.)*?"""(?:"{0,2})'
     r"|'''.*?'''(?:'{0,2})"
     r'|"(?:[^"\\\n]|\\.)*"'
@@ -115,7 +115,7 @@ class _Scanner:
 
     def _key_part(self) -> str:
         if self._peek() in ('"', "'"):
-            quoted = self._skip(_STRING)
+            quoted = self._skip(STRING)
             return str(tomllib.loads(f"key = {quoted}")["key"]) if quoted else ""
         return self._skip(_BARE_KEY)
 
@@ -136,7 +136,7 @@ class _Scanner:
         elif first == "{":
             self._inline_table(path)
         elif first in ('"', "'"):
-            self._skip(_STRING)
+            self._skip(STRING)
         else:
             self._skip(_BARE_VALUE)
 

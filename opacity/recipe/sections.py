@@ -32,7 +32,7 @@ from opacity.units import BAND_STRENGTH_UNITS
 FORMULA = re.compile(r"[A-Z(][A-Za-z0-9()]*[+-]*")
 ABUNDANCES = ("terrestrial", "pure")
 PARTITION_FUNCTIONS = ("TIPS-2021", "TIPS-2025", "file", "states")
-BAND_STRENGTH_KEYS = ("name", "range", "strength", "unit", "temperature", "uncertainty", "source")
+BAND_STRENGTH_KEYS = ("name", "isotopologue", "range", "strength", "unit", "temperature", "uncertainty", "source")
 SUM_TOLERANCE = 1e-6
 
 TEMPERATURE = Bounds(1.0, 20000.0, "K")
@@ -50,6 +50,7 @@ _WHICH_ATM = "say at which temperature the gas was: " + listed(
     [unit for unit in BAND_STRENGTH_UNITS if unit.startswith("cm-2 atm-1 (")], quoted=True
 )
 _PARTITION_FILE = "the name of a file of temperature and partition function"
+_BAND_OF = 'the isotopologue of which the strength was published, such as (12C)(16O), or "natural"'
 _BROADENER = re.compile(r"[A-Za-z][A-Za-z0-9]*")
 
 
@@ -289,6 +290,8 @@ def _band_strength(table: Table) -> BandStrength:
         strength=table.number("strength", _STRENGTH),
         unit=table.choice("unit", tuple(BAND_STRENGTH_UNITS), remedies=dict.fromkeys(_BARE_ATMOSPHERE, _WHICH_ATM)),
         temperature=table.number("temperature", TEMPERATURE),
-        uncertainty=table.number("uncertainty", _FRACTION),
+        # Not left out, so that it is not forgotten.
+        uncertainty=None if table.values.get("uncertainty") == "unknown" else table.number("uncertainty", _FRACTION),
         source=table.required_text("source", "the publication of the strength"),
+        isotopologue=table.text("isotopologue", _BAND_OF, pattern=ISOTOPOLOGUE, required=False),
     )

@@ -74,6 +74,8 @@ class Table:
         else:
             self._meant.add(meant)
         remedy = f"did you mean {meant}?" if meant else None
+        if name == "accept_unverified":  # written behind a section's header it is a key of that section
+            remedy = "put it at the top of the recipe, before the first section"
         self.faults.add((*self.key, name), "unknown key", expected=expected, found=shown(name), remedy=remedy)
 
     def __contains__(self, name: str) -> bool:

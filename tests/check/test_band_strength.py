@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import replace
 
 import numpy as np
@@ -9,6 +10,7 @@ import pytest
 
 from opacity.check.band_strength import check_band, integral_between
 from opacity.check.run import run_checks
+from opacity.molecule.isotopologue import isotopologue
 from opacity.recipe.model import BandStrength
 from opacity.units import BAND_STRENGTH_UNITS
 
@@ -17,6 +19,7 @@ FACTORS = {
     # Loschmidt constant 2.686780111e19 cm-3 at 273.15 K and 1 atm, Avogadro constant 6.02214076e23 (CODATA 2018).
     "cm/molecule": 1.0,
     "km/mol": 6.02214076e23 * 1e-5,
+    "cm/mol": 6.02214076e23,
     "cm-2 atm-1 (273.15 K)": 2.686780111e19,
     "cm-2 atm-1 (296 K)": 2.686780111e19 * 273.15 / 296.0,
     "cm-2 atm-1 (300 K)": 2.686780111e19 * 273.15 / 300.0,
@@ -122,6 +125,69 @@ def test_a_step_that_resolves_no_pressure_cannot_be_judged(make_case):
     row = run_checks(case.values, recipe, case.lines, 1).results[2]
     assert row.verdict == "cannot judge"
     assert row.detail == "the step is too coarse for the lines at every pressure"
+
+
+def test_a_band_of_one_isotopologue_is_corrected_for_abundance(make_case):
+    case = make_case()
+    iso = case.lines.isotopologues[0]
+    band = band_of(case, isotopologue=iso.formula)  # the case is pure: fraction 1
+    assert check_band(band, case.values, 0.01, case.lines, case.recipe.profile).verdict == "agrees"
+    # The same values taken for those of a mixture of which the isotopologue is half: twice as much a molecule of it.
+    half = check_band(band, case.values, 0.01, case.lines, case.recipe.profile, abundance={iso.formula: 0.5})
+    assert half.value == pytest.approx(1.0, abs=5e-3)
+    assert "of (12C)(16O) alone, abundance 0.5, +" in half.detail
+    natural = replace(band, isotopologue="natural")
+    row = check_band(natural, case.values, 0.01, case.lines, case.recipe.profile, abundance="terrestrial")
+    assert row.value == pytest.approx(1.0 / 0.98654 - 1.0, abs=3e-3)
+    assert "of the natural mixture, of which the table holds 98.65 %" in row.detail
+    other = replace(band, isotopologue="(13C)(16O)")
+    row = check_band(other, case.values, 0.01, case.lines, case.recipe.profile)
+    assert (row.verdict, row.detail) == ("cannot judge", "the table holds no line of (13C)(16O) in the band")
+
+
+def test_other_isotopologues_are_taken_off_a_band_of_one(make_case):
+    """One of the band's lines given to (13C)(16O): its strength is not of the band."""
+    case = make_case()
+    lines, heavy = case.lines, isotopologue(5, 2)
+    wide = (2145.2, 2148.8)
+    inside = np.flatnonzero((lines.wavenumber > wide[0]) & (lines.wavenumber < wide[1]))
+    weakest = inside[np.argmin(lines.strength[inside])]
+    number = np.zeros(len(lines), dtype=np.int16)
+    number[weakest] = 1
+    both = replace(
+        lines,
+        isotopologue=number,
+        isotopologues=(*lines.isotopologues, heavy),
+        basis=(*lines.basis, *lines.basis),
+        partition=(*lines.partition, *lines.partition),
+    )
+    band = band_of(case, isotopologue=lines.isotopologues[0].formula, range=wide)
+    plain = judged(case, band)
+    row = check_band(band, case.values, 0.01, both, case.recipe.profile)
+    taken = float(lines.strengths(296.0)[weakest])
+    assert taken > 0.0
+    assert (plain.value - row.value) * strength_in(case) == pytest.approx(taken, rel=1e-6)
+    assert "of other isotopologues" in row.detail
+
+
+@pytest.mark.parametrize(
+    "factor, verdict", [(1.45, "agrees"), (1.55, "differs"), (1.0 / 1.45, "agrees"), (1.0 / 1.55, "differs")]
+)
+def test_a_value_from_memory_or_without_uncertainty_finds_factors_only(small, factor, verdict):
+    for change, why in (
+        ({"source": "from memory"}, "a value from memory"),
+        ({"uncertainty": None}, "no uncertainty is published"),
+    ):
+        row = judged(small, band_of(small, strength_in(small) / factor, **change))
+        assert row.verdict == verdict
+        assert f"times as much ({why}: within a factor 1.5 is taken to agree)" in row.detail
+
+
+def test_the_difference_is_told_in_per_cent_and_in_uncertainties(small):
+    row = judged(small, band_of(small, strength_in(small) / 1.1))
+    percent, deviations = re.search(r" cm/molecule, (\S+) % \((\S+) uncertainties\); 296 K", row.detail).groups()
+    assert float(percent) == pytest.approx(10.0, abs=0.4)
+    assert float(deviations) == pytest.approx(float(percent) / 0.7, abs=0.06)
 
 
 def test_ends_between_points_count_in_part():

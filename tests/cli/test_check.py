@@ -142,13 +142,20 @@ def test_a_list_that_changed_since_is_refused_only_if_the_recipe_was_asked_for(
 
 def test_check_of_a_recipe_without_a_table_says_to_build_it(opacity, project):
     code, out, err = opacity("check", "co.toml", "-o", "elsewhere")
-    assert (code, out) == (1, "")
-    assert err == (
-        "elsewhere/co.cross-section.h5: co.toml has no table here yet;"
-        " build it first: `opacity build co.toml -o elsewhere`\n"
+    assert (code, err) == (0, "")
+    assert "co.toml: nothing is missing; there is no table yet" in one_line(out)
+    assert one_line(out).endswith(
+        "`opacity plan co.toml -o elsewhere`, which reads the lines; then `opacity build co.toml -o elsewhere`"
     )
     (project / "tables" / "co.cross-section.h5").unlink()
-    assert opacity("check", "co.toml")[2].endswith("build it first: `opacity build co.toml`\n")
+    code, out, _ = opacity("check", "co.toml", "--json")
+    assert code == 0
+    assert json.loads(out) == {
+        "recipe": "co.toml",
+        "complete": True,
+        "table": None,
+        "next": ["opacity plan co.toml", "opacity build co.toml"],
+    }
 
 
 def test_check_names_the_damaged_block(opacity, table):

@@ -83,7 +83,8 @@ def test_an_ingest_reports_bands_from_the_store(opacity, write_recipe, samples, 
     for stored, read in zip(store["bands"], json.loads(out)["bands"], strict=True):
         assert (stored["name"], stored["verdict"]) == (read["name"], read["verdict"])
         assert stored["found"] == pytest.approx(read["found"], rel=1e-7)
-    assert [one["name"] for one in store["bands"]] == ["1-0", "2-0", "half (recipe)"]
+    names = [one["name"] for one in store["bands"]]
+    assert (names[:2], names[-1]) == (["1-0", "2-0"], "half (recipe)")
     for _ in range(2):  # made now, and up to date
         code, out, _ = opacity("ingest", path, "-o", tmp_path / "out", "--quiet")
         assert code == 0

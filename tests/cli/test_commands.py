@@ -40,7 +40,11 @@ def test_plan_tells_the_time_of_all_its_workers(opacity, project, monkeypatch):
 
 
 def test_chi_factors_from_memory_are_told(opacity, write_recipe):
-    path = write_recipe("co", ("tolerance = 1e-3", 'tolerance = 1e-3\nchi = "Tonkov-1996"'))
+    chi = ("tolerance = 1e-3", 'tolerance = 1e-3\nchi = "Tonkov-1996"')
+    code, _, err = opacity("plan", write_recipe("co", chi))
+    assert code == 2
+    assert "co.toml:22: profile.chi: a value from memory; expected a published source, found" in err
+    path = write_recipe("co", chi, ("[molecule]", "accept_unverified = true\n[molecule]"))
     text = one_line(opacity("plan", path)[1])
     assert "warning: chi factors Tonkov-1996: Tonkov et al. 1996, Appl. Opt. 35, 4863 (constants from memory);" in text
     assert "warning: the chi factors Tonkov-1996 are for pure CO2 and are used for CO" in text
@@ -266,7 +270,7 @@ def test_new_writes_a_recipe_to_fill_in(opacity, tmp_path, monkeypatch, formula,
     code, out, err = opacity("new", formula)
     assert (code, err) == (0, "")
     *unknown, last = out.splitlines()
-    assert last == f"{formula}.toml: fill in what is marked `decide`, then run `opacity plan {formula}.toml`"
+    assert last == f"{formula}.toml: fill in what is marked DECIDE; `opacity check {formula}.toml` says what is missing"
     words = f"{formula}: not in hapi's tables; give its mass and a partition-function file, or mend it"
     assert unknown == ([] if known else [words])
     text = (tmp_path / f"{formula}.toml").read_text()
@@ -276,7 +280,9 @@ def test_new_writes_a_recipe_to_fill_in(opacity, tmp_path, monkeypatch, formula,
     assert ("mass = 28.01" in text) is not known
     assert recipe["isotopologues"]["abundance"] == ("terrestrial" if known else "pure")
     assert all(f"# [broadening.default.{name}]" in text for name in recipe["broadening"]["mixture"])
-    assert all("decide" in line for line in text.splitlines() if line.startswith(("wavenumber", "temperature", "pres")))
+    assert all(
+        "DECIDE" in line for line in text.splitlines() if line.startswith(("wavenumber", "temperature = {", "pres"))
+    )
     assert ("#   1   (12C)(16O)               0.986544\n" in text) is (formula == "CO")
     # What is not yet decided is an error of the recipe, not of the program.
     code, out, err = opacity("plan", f"{formula}.toml")

@@ -248,11 +248,7 @@ MISSING = "cannot be opened (No such file or directory)"
         (["show", "none.h5"], 1, f"none.h5: {MISSING}"),
         (["check", "none.h5"], 1, f"none.h5: {MISSING}"),
         (["check", ""], 1, ".: not a file; expected a table"),
-        (
-            ["check", "co.toml", "-o", "nowhere"],
-            1,
-            "nowhere/co.cross-section.h5: co.toml has no table here yet; build it first",
-        ),
+        (["check", "none.toml"], 2, "none.toml: no such file; expected a recipe; `opacity new FORMULA` writes"),
         (["build", "none.toml"], 2, "none.toml: no such file; expected a recipe; `opacity new FORMULA` writes"),
         (["plan", ""], 2, ".: not a file; expected a recipe, found a folder"),
         (["build", "tables"], 2, "tables: not a file; expected a recipe, found a folder"),

@@ -30,7 +30,7 @@ def test_a_good_list_is_not_warned_of(of_records):
 def test_a_list_four_times_too_strong(of_records, monkeypatch, small):
     if not small:
         monkeypatch.setattr(sources, "SMALL_LIST", 0)
-    repeated, band = of_records(lambda records: 4 * records)
+    repeated, band, *_ = of_records(lambda records: 4 * records)
     assert "carbon-monoxide.par: 606 records repeat another one" in repeated
     assert (", with 75 % of the list's strength" in repeated) == small
     assert repeated.endswith(", and all of them count")

@@ -119,11 +119,11 @@ def test_where_the_system_does_not_say_nothing_is_refused(write_recipe, tmp_path
 
 
 def test_a_default_width_is_counted(write_recipe, tmp_path):
-    default = '[broadening.default.H2]\ngamma = 0.07\nexponent = 0.5\nsource = "from memory"\n\n[profile]'
+    default = '[broadening.default.H2]\ngamma = 0.07\nexponent = 0.5\nsource = "a book"\n\n[profile]'
     path = write_recipe("co", ("{ air = 1.0 }", "{ H2 = 1.0 }"), ("[profile]", default))
     plan = planned(path, tmp_path)
     assert (
-        "H2 width from the default 0.07 cm-1/bar, exponent 0.5 (from memory)",
+        "H2 width from the default 0.07 cm-1/bar, exponent 0.5 (a book)",
         plan.lines,
     ) in plan.assumptions
 

@@ -45,7 +45,8 @@ ONE_FAULT = [
         "[molecule]",
         "[molecules]",
         "2: molecules: unknown key; expected molecule, line_list, isotopologues, "
-        'partition_function, broadening, profile, grid, cross_section or band_strength, found "molecules"; '
+        "partition_function, broadening, profile, grid, cross_section, band_strength or accept_unverified, "
+        'found "molecules"; '
         "did you mean molecule?",
     ),
     # isotopologues and partition function
@@ -193,8 +194,8 @@ ONE_FAULT = [
     (
         'unit = "cm/molecule"',
         'unit = "cm-2 atm-1"',
-        '53: band_strength[0].unit: unknown value; expected "cm/molecule", "km/mol", "cm-2 atm-1 (273.15 K)", '
-        '"cm-2 atm-1 (296 K)", "cm-2 atm-1 (300 K)" or "cm-2 amagat-1", found "cm-2 atm-1"; '
+        '53: band_strength[0].unit: unknown value; expected "cm/molecule", "km/mol", "cm/mol", '
+        '"cm-2 atm-1 (273.15 K)", "cm-2 atm-1 (296 K)", "cm-2 atm-1 (300 K)" or "cm-2 amagat-1", found "cm-2 atm-1"; '
         'say at which temperature the gas was: "cm-2 atm-1 (273.15 K)", "cm-2 atm-1 (296 K)" or "cm-2 atm-1 (300 K)"',
     ),
     (

@@ -52,7 +52,7 @@ def test_an_unfilled_template_names_what_is_open(tmp_path: Path) -> None:
     assert keys == ["line_list[0].files[0]", "line_list[0].reference", "partition_function.file"]
     for line in caught.value.problems:
         number = int(line.removeprefix(f"{path}:").split(":")[0])
-        assert "decide:" in text.splitlines()[number - 1]
+        assert "DECIDE:" in text.splitlines()[number - 1]
 
 
 def test_commented_parts_load_too(place: Path) -> None:
