@@ -20,20 +20,19 @@ from opacity.grids import FloatArray
 from opacity.k_coefficient.collapse import CELL_WIDTHS, N_CELLS
 from opacity.k_coefficient.quadrature import MOST_POINTS, GPoints, g_points, k_from_cells, points_of_bounds
 from opacity.k_coefficient.transmission import columns_of, transmission
+from opacity.kernels.fit import bounds_of_logs, descend, error_rows
 
-NORMS = (12.0, 48.0)
-"""The norms descended, one after the other: the flatter one first, which leads past small hollows."""
+NORMS = (2, 4)
+"""The norms descended, of powers 12 and 48 (3 times 2 to these): the flatter first, which leads past small hollows."""
 TRIALS = 5
 ACCEPTED = 0.6
 """Share of the target that the rows trained on must keep: others were seen to have up to 1.7 times their error."""
 
 _ROUNDS = 8
 _SWEEPS = 40
-_FIRST_STEP, _LAST_STEP, _GROWTH = 0.3, 0.005, 1.3
 _THROWS = (2.0, 1.0, 0.5)
 _ADDED = 64
 _HOPELESS = 1.1
-_SMALLEST_WEIGHT = 1e-6
 
 
 @dataclass(frozen=True)
@@ -50,8 +49,11 @@ class Rows:
 
     def errors(self, points: GPoints) -> FloatArray:
         """Error of transmission of a quadrature shared by all rows, (n_row, 64)."""
-        k = k_from_cells(self.cells, points)
-        return transmission(k, points.weights, self.columns) - self.truth
+        if points.quadrature != "matched":
+            return transmission(k_from_cells(self.cells, points), points.weights, self.columns) - self.truth
+        errors = np.empty(self.truth.shape)
+        error_rows(self.cells, CELL_WIDTHS, self.columns, self.truth, points.bounds, points.depth, errors)
+        return errors
 
 
 def rows_of(cells: FloatArray, pressure: FloatArray) -> Rows:
@@ -131,7 +133,7 @@ def optimise_weights(
         for _ in range(_ROUNDS):
             for norm in NORMS:
                 logs = _descend(rows.part(active), logs, norm, random)
-            points = _points(logs)
+            points = points_of_bounds(bounds_of_logs(logs))
             errors = np.max(np.abs(rows.errors(points)), axis=1)
             if errors.max() < best.error:
                 best = Optimised(points, float(errors.max()), active)
@@ -152,39 +154,13 @@ def _worst_others(errors: FloatArray, active: NDArray[np.int64], most: int) -> N
     return others[np.argsort(-errors[others], kind="stable")][:most]
 
 
-def _descend(rows: Rows, logs: FloatArray, norm: float, random: np.random.Generator) -> FloatArray:
+def _descend(rows: Rows, logs: FloatArray, squarings: int, random: np.random.Generator) -> FloatArray:
     """Logarithms of weights from which no step of one of them alone makes the norm of the errors less."""
-    steps = np.full(logs.size, _FIRST_STEP)
-    best = _size(rows, logs, norm)
-    for _ in range(_SWEEPS):
-        before = best
-        for i in random.permutation(logs.size):
-            moved = False
-            for sign in (1.0, -1.0):
-                trial = logs.copy()
-                trial[i] += sign * steps[i]
-                value = _size(rows, trial, norm)
-                if value < best:
-                    logs, best, moved = trial, value, True
-                    break
-            steps[i] *= _GROWTH if moved else 0.5
-        if np.all(steps < _LAST_STEP) or (best > 0.999 * before and np.all(steps < 4.0 * _LAST_STEP)):
-            break
+    turns = random.permuted(np.tile(np.arange(logs.size), (_SWEEPS, 1)), axis=1)
+    logs = logs.copy()
+    depth = points_of_bounds(bounds_of_logs(logs)).depth
+    descend(rows.cells, CELL_WIDTHS, rows.columns, rows.truth, depth, squarings, turns, logs)
     return logs
-
-
-def _points(logs: FloatArray) -> GPoints:
-    weights = np.maximum(np.exp(logs - logs.max()), _SMALLEST_WEIGHT)
-    bounds = np.concatenate([[0.0], np.cumsum(weights / weights.sum())])
-    bounds[-1] = 1.0
-    return points_of_bounds(bounds)
-
-
-def _size(rows: Rows, logs: FloatArray, norm: float) -> float:
-    """The norm of the errors with weights of these logarithms."""
-    errors = np.abs(rows.errors(_points(logs)))
-    largest = float(errors.max())
-    return largest * float(np.sum((errors / largest) ** norm) ** (1.0 / norm)) if largest > 0.0 else 0.0
 
 
 @dataclass(frozen=True)
