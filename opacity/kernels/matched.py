@@ -104,7 +104,7 @@ def match_rows(values: Array, widths: Array, bounds: Array, x0: float, out: Arra
     takes, work = np.empty(widths.size + n), np.empty(widths.size + 2 * n)
     for row in range(values.shape[0]):
         own = bounds[row % bounds.shape[0]]
-        if row < bounds.shape[0]:
+        if row == 0 or bounds.shape[0] > 1:
             cut(widths, own, starts, ends, takes)
         mean = weighted_sum(values[row], widths)
         match_cut(values[row], mean, own, starts, ends, takes, x0, work, out[row])
