@@ -24,7 +24,9 @@ from opacity.kernels.fit import bounds_of_logs, descend, error_rows
 
 NORMS = (2, 4)
 """The norms descended, of powers 12 and 48 (3 times 2 to these): the flatter first, which leads past small hollows."""
-TRIALS = 5
+TRIALS = 8
+TRIALS_FROM_FITTED = 3
+"""As many trials are enough from weights that were fitted to most of the rows before."""
 ACCEPTED = 0.6
 """Share of the target that the rows trained on must keep: others were seen to have up to 1.7 times their error."""
 
@@ -177,19 +179,25 @@ class Chosen:
 
 
 def choose_g_points(
-    transmission_error: float, training: Rows, everything: Rows, seed: int = 0, accepted: float = ACCEPTED
+    transmission_error: float,
+    training: Rows,
+    everything: Rows,
+    seed: int = 0,
+    accepted: float = ACCEPTED,
+    start: GPoints | None = None,
 ) -> Chosen:
     """The fewest matched intervals found that keep every transmission within `transmission_error`.
 
     The weights are fitted to the rows `training` until their largest error is within the share `accepted` of the
-    target, and certified at the rows `everything`; where that fails its violators are trained on as well.
+    target, and certified at the rows `everything`; where that fails its violators are trained on as well.  With points
+    to `start` from, found for fewer rows, none fewer than those are looked for.
     Raises InputError for a target that 200 points do not meet.
     """
     if not 0.0 < transmission_error < 1.0:
         expected = "a number between 0 and 1"
         raise InputError(problem("transmission_error", "impossible", expected=expected, found=transmission_error))
     goal = accepted * transmission_error
-    found = _fewest(goal, training, seed)
+    found = _fewest(goal, training, seed) if start is None else _upwards(goal, training, seed, start)
     while found is not None:
         errors = np.max(np.abs(everything.errors(found.points)), axis=1, initial=0.0)
         error = float(np.max(errors, initial=0.0))
@@ -234,7 +242,10 @@ def _fewest(goal: float, rows: Rows, seed: int) -> Optimised | None:
 def _upwards(goal: float, rows: Rows, seed: int, points: GPoints) -> Optimised | None:
     """Points that meet the goal, as few more than those given as do."""
     for count in range(points.count, MOST_POINTS + 1):
-        found = optimise_weights(rows, count, seed, _resampled(points, count))
+        if count == points.count:
+            found = optimise_weights(rows, count, seed, points, TRIALS_FROM_FITTED)
+        else:
+            found = optimise_weights(rows, count, seed, _resampled(points, count))
         if found.error <= goal:
             return found
     return None
