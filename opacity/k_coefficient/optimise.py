@@ -24,12 +24,13 @@ from opacity.kernels.fit import bounds_of_logs, descend, error_rows
 
 NORMS = (2, 4)
 """The norms descended, of powers 12 and 48 (3 times 2 to these): the flatter first, which leads past small hollows."""
-TRIALS = 8
+TRIALS = 12
 TRIALS_FROM_FITTED = 3
 """As many trials are enough from weights that were fitted to most of the rows before."""
 ACCEPTED = 0.6
 """Share of the target that the rows trained on must keep: others were seen to have up to 1.7 times their error."""
 
+_POWERS = (2, 3)
 _ROUNDS = 8
 _SWEEPS = 40
 _THROWS = (2.0, 1.0, 0.5)
@@ -117,8 +118,9 @@ def optimise_weights(
 ) -> Optimised:
     """Matched intervals, `count` of them, of the smallest largest error of transmission over all rows that is found.
 
-    Begins at `start`, or at the fixed bounds of `g_points`; further `trials` begin at the best weights so far, thrown
-    off by random factors, since the descent may end where there is better beyond.  The same arguments give the same
+    Begins at `start`, or at the fixed bounds of `g_points` and then at g_i = 1 - (1 - i/n)^2 and ^3; further `trials`
+    begin at the best weights so far, thrown off by random factors, since the descent may end where there is better
+    beyond.  The same arguments give the same
     weights.
     """
     points = g_points(count) if start is None else start
@@ -130,7 +132,9 @@ def optimise_weights(
     active = _worst_others(errors, best.worst, max(8, count))
     for trial in range(trials):
         logs = np.log(best.points.weights)
-        if trial:
+        if start is None and trial in _POWERS:
+            logs = np.log(np.diff(1.0 - (1.0 - np.arange(count + 1) / count) ** trial))
+        elif trial:
             logs = logs + random.normal(0.0, _THROWS[trial % len(_THROWS)], logs.size)
         for _ in range(_ROUNDS):
             for norm in NORMS:
