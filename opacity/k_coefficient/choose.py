@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Iterable, Sequence
+from concurrent.futures import Executor
 from dataclasses import dataclass
 from typing import Any
 
@@ -13,6 +14,9 @@ from opacity.errors import InputError, problem
 from opacity.grids import FloatArray
 from opacity.k_coefficient.optimise import (
     ACCEPTED,
+    TRIALS,
+    TRIALS_FROM_FITTED,
+    Optimised,
     Rows,
     choose_g_points,
     joined,
@@ -52,11 +56,19 @@ class Training:
     pressure: FloatArray
 
 
-def choose(wanted: Wanted, training: Sequence[Training], seed: int) -> tuple[GPoints, dict[str, Any]]:
+def choose(
+    wanted: Wanted,
+    training: Sequence[Training],
+    seed: int,
+    start: GPoints | None = None,
+    executor: Executor | None = None,
+) -> tuple[GPoints, dict[str, Any]]:
     """The points in g and, as plain values, how they were chosen: "weights", "trained_error", and "target" if any.
 
     With several species, all of the same bands, the points serve all of them.  `training` is not looked at for a fixed
-    number of fixed points.  Raises InputError for a target that cannot be met.
+    number of fixed points.  Points found for some of the training before are where to `start`.  With an executor of
+    threads bands of weights of their own are fitted side by side, to the same bits.  Raises InputError for a target
+    that cannot be met.
     """
     target = {} if wanted.count is not None else {"target": wanted.transmission_error}
     how: dict[str, Any] = {"weights": wanted.weights, **target}
@@ -64,10 +76,10 @@ def choose(wanted: Wanted, training: Sequence[Training], seed: int) -> tuple[GPo
         assert wanted.count is not None
         return g_points(wanted.count, wanted.quadrature), how
     if wanted.weights == "optimised-per-band":
-        points, error = _per_band(wanted, training, seed)
+        points, error = _per_band(wanted, training, seed, start, executor)
     else:
         rows = joined([rows_of(one.cells[:, _some_bands(one, seed)], one.pressure) for one in training])
-        points, error = _shared(wanted, rows, seed)
+        points, error = _shared(wanted, rows, seed, start)
     return points, {**how, "trained_error": error}
 
 
@@ -79,17 +91,21 @@ def _some_bands(training: Training, seed: int) -> NDArray[np.int64]:
     return np.sort(np.random.default_rng(seed).permutation(bands)[:most])
 
 
-def _shared(wanted: Wanted, rows: Rows, seed: int) -> tuple[GPoints, float]:
+def _shared(wanted: Wanted, rows: Rows, seed: int, start: GPoints | None) -> tuple[GPoints, float]:
     """Points shared by all nodes and bands, and their largest error there."""
     if not len(rows.cells):
         return g_points(wanted.count or 1), 0.0
     if wanted.weights == "fixed":
         return _fewest_fixed(rows, wanted.transmission_error)
     if wanted.count is not None:
-        found = optimise_weights(rows, wanted.count, seed)
+        found = optimise_weights(rows, wanted.count, seed, start, _trials(start))
         return found.points, found.error
-    chosen = choose_g_points(wanted.transmission_error, rows, rows, seed)
+    chosen = choose_g_points(wanted.transmission_error, rows, rows, seed, start=start)
     return chosen.points, chosen.trained_error
+
+
+def _trials(start: GPoints | None) -> int:
+    return TRIALS if start is None else TRIALS_FROM_FITTED
 
 
 def _fewest_fixed(rows: Rows, target: float) -> tuple[GPoints, float]:
@@ -102,16 +118,28 @@ def _fewest_fixed(rows: Rows, target: float) -> tuple[GPoints, float]:
     raise InputError(problem("transmission_error", "too small", expected=expected, found=target))
 
 
-def _per_band(wanted: Wanted, training: Sequence[Training], seed: int) -> tuple[GPoints, float]:
+def _per_band(
+    wanted: Wanted, training: Sequence[Training], seed: int, start: GPoints | None, executor: Executor | None
+) -> tuple[GPoints, float]:
     """As many points for every band, at bounds of each band's own, and the largest error of any."""
+    side_by_side: Callable[..., Iterable[Any]] = map if executor is None else executor.map
     by_species = [rows_by_band(one.cells, one.pressure) for one in training]
     bands = [joined(parts) for parts in zip(*by_species, strict=True)]
+    starts: list[GPoints | None] = [None] * len(bands)
+    if start is not None:
+        starts = [points_of_bounds(bounds) for bounds in start.bounds]
+
+    def needed(rows: Rows, start: GPoints | None) -> int:
+        return choose_g_points(wanted.transmission_error, rows, rows, seed, start=start).points.count
+
     count = wanted.count
     if count is None:
-        target = wanted.transmission_error
-        filled = [one for one in bands if len(one.cells)]
-        counts = [choose_g_points(target, one, one, seed).points.count for one in filled]
-        count = max(counts, default=1)
-    found = [optimise_weights(one, count, seed) if len(one.cells) else None for one in bands]
-    bounds = [g_points(count).bounds if one is None else one.points.bounds for one in found]
-    return points_of_bounds(np.array(bounds)), max((one.error for one in found if one is not None), default=0.0)
+        filled = [(rows, its) for rows, its in zip(bands, starts, strict=True) if len(rows.cells)]
+        count = max(side_by_side(needed, *zip(*filled, strict=True)), default=1) if filled else 1
+    starts = [its if its is not None and its.count == count else None for its in starts]
+
+    def fitted(rows: Rows, start: GPoints | None) -> Optimised:
+        return optimise_weights(rows, count, seed, start, _trials(start))
+
+    found = list(side_by_side(fitted, bands, starts))
+    return points_of_bounds(np.array([one.points.bounds for one in found])), max(one.error for one in found)

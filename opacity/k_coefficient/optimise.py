@@ -20,20 +20,22 @@ from opacity.grids import FloatArray
 from opacity.k_coefficient.collapse import CELL_WIDTHS, N_CELLS
 from opacity.k_coefficient.quadrature import MOST_POINTS, GPoints, g_points, k_from_cells, points_of_bounds
 from opacity.k_coefficient.transmission import columns_of, transmission
+from opacity.kernels.fit import bounds_of_logs, descend, error_rows
 
-NORMS = (12.0, 48.0)
-"""The norms descended, one after the other: the flatter one first, which leads past small hollows."""
-TRIALS = 5
+NORMS = (2, 4)
+"""The norms descended, of powers 12 and 48 (3 times 2 to these): the flatter first, which leads past small hollows."""
+TRIALS = 12
+TRIALS_FROM_FITTED = 3
+"""As many trials are enough from weights that were fitted to most of the rows before."""
 ACCEPTED = 0.6
 """Share of the target that the rows trained on must keep: others were seen to have up to 1.7 times their error."""
 
+_POWERS = (2, 3)
 _ROUNDS = 8
 _SWEEPS = 40
-_FIRST_STEP, _LAST_STEP, _GROWTH = 0.3, 0.005, 1.3
 _THROWS = (2.0, 1.0, 0.5)
 _ADDED = 64
 _HOPELESS = 1.1
-_SMALLEST_WEIGHT = 1e-6
 
 
 @dataclass(frozen=True)
@@ -50,8 +52,11 @@ class Rows:
 
     def errors(self, points: GPoints) -> FloatArray:
         """Error of transmission of a quadrature shared by all rows, (n_row, 64)."""
-        k = k_from_cells(self.cells, points)
-        return transmission(k, points.weights, self.columns) - self.truth
+        if points.quadrature != "matched":
+            return transmission(k_from_cells(self.cells, points), points.weights, self.columns) - self.truth
+        errors = np.empty(self.truth.shape)
+        error_rows(self.cells, CELL_WIDTHS, self.columns, self.truth, points.bounds, points.depth, errors)
+        return errors
 
 
 def rows_of(cells: FloatArray, pressure: FloatArray) -> Rows:
@@ -113,8 +118,9 @@ def optimise_weights(
 ) -> Optimised:
     """Matched intervals, `count` of them, of the smallest largest error of transmission over all rows that is found.
 
-    Begins at `start`, or at the fixed bounds of `g_points`; further `trials` begin at the best weights so far, thrown
-    off by random factors, since the descent may end where there is better beyond.  The same arguments give the same
+    Begins at `start`, or at the fixed bounds of `g_points` and then at g_i = 1 - (1 - i/n)^2 and ^3; further `trials`
+    begin at the best weights so far, thrown off by random factors, since the descent may end where there is better
+    beyond.  The same arguments give the same
     weights.
     """
     points = g_points(count) if start is None else start
@@ -126,12 +132,14 @@ def optimise_weights(
     active = _worst_others(errors, best.worst, max(8, count))
     for trial in range(trials):
         logs = np.log(best.points.weights)
-        if trial:
+        if start is None and trial in _POWERS:
+            logs = np.log(np.diff(1.0 - (1.0 - np.arange(count + 1) / count) ** trial))
+        elif trial:
             logs = logs + random.normal(0.0, _THROWS[trial % len(_THROWS)], logs.size)
         for _ in range(_ROUNDS):
             for norm in NORMS:
                 logs = _descend(rows.part(active), logs, norm, random)
-            points = _points(logs)
+            points = points_of_bounds(bounds_of_logs(logs))
             errors = np.max(np.abs(rows.errors(points)), axis=1)
             if errors.max() < best.error:
                 best = Optimised(points, float(errors.max()), active)
@@ -152,39 +160,13 @@ def _worst_others(errors: FloatArray, active: NDArray[np.int64], most: int) -> N
     return others[np.argsort(-errors[others], kind="stable")][:most]
 
 
-def _descend(rows: Rows, logs: FloatArray, norm: float, random: np.random.Generator) -> FloatArray:
+def _descend(rows: Rows, logs: FloatArray, squarings: int, random: np.random.Generator) -> FloatArray:
     """Logarithms of weights from which no step of one of them alone makes the norm of the errors less."""
-    steps = np.full(logs.size, _FIRST_STEP)
-    best = _size(rows, logs, norm)
-    for _ in range(_SWEEPS):
-        before = best
-        for i in random.permutation(logs.size):
-            moved = False
-            for sign in (1.0, -1.0):
-                trial = logs.copy()
-                trial[i] += sign * steps[i]
-                value = _size(rows, trial, norm)
-                if value < best:
-                    logs, best, moved = trial, value, True
-                    break
-            steps[i] *= _GROWTH if moved else 0.5
-        if np.all(steps < _LAST_STEP) or (best > 0.999 * before and np.all(steps < 4.0 * _LAST_STEP)):
-            break
+    turns = random.permuted(np.tile(np.arange(logs.size), (_SWEEPS, 1)), axis=1)
+    logs = logs.copy()
+    depth = points_of_bounds(bounds_of_logs(logs)).depth
+    descend(rows.cells, CELL_WIDTHS, rows.columns, rows.truth, depth, squarings, turns, logs)
     return logs
-
-
-def _points(logs: FloatArray) -> GPoints:
-    weights = np.maximum(np.exp(logs - logs.max()), _SMALLEST_WEIGHT)
-    bounds = np.concatenate([[0.0], np.cumsum(weights / weights.sum())])
-    bounds[-1] = 1.0
-    return points_of_bounds(bounds)
-
-
-def _size(rows: Rows, logs: FloatArray, norm: float) -> float:
-    """The norm of the errors with weights of these logarithms."""
-    errors = np.abs(rows.errors(_points(logs)))
-    largest = float(errors.max())
-    return largest * float(np.sum((errors / largest) ** norm) ** (1.0 / norm)) if largest > 0.0 else 0.0
 
 
 @dataclass(frozen=True)
@@ -201,19 +183,25 @@ class Chosen:
 
 
 def choose_g_points(
-    transmission_error: float, training: Rows, everything: Rows, seed: int = 0, accepted: float = ACCEPTED
+    transmission_error: float,
+    training: Rows,
+    everything: Rows,
+    seed: int = 0,
+    accepted: float = ACCEPTED,
+    start: GPoints | None = None,
 ) -> Chosen:
     """The fewest matched intervals found that keep every transmission within `transmission_error`.
 
     The weights are fitted to the rows `training` until their largest error is within the share `accepted` of the
-    target, and certified at the rows `everything`; where that fails its violators are trained on as well.
+    target, and certified at the rows `everything`; where that fails its violators are trained on as well.  With points
+    to `start` from, found for fewer rows, none fewer than those are looked for.
     Raises InputError for a target that 200 points do not meet.
     """
     if not 0.0 < transmission_error < 1.0:
         expected = "a number between 0 and 1"
         raise InputError(problem("transmission_error", "impossible", expected=expected, found=transmission_error))
     goal = accepted * transmission_error
-    found = _fewest(goal, training, seed)
+    found = _fewest(goal, training, seed) if start is None else _upwards(goal, training, seed, start)
     while found is not None:
         errors = np.max(np.abs(everything.errors(found.points)), axis=1, initial=0.0)
         error = float(np.max(errors, initial=0.0))
@@ -258,7 +246,10 @@ def _fewest(goal: float, rows: Rows, seed: int) -> Optimised | None:
 def _upwards(goal: float, rows: Rows, seed: int, points: GPoints) -> Optimised | None:
     """Points that meet the goal, as few more than those given as do."""
     for count in range(points.count, MOST_POINTS + 1):
-        found = optimise_weights(rows, count, seed, _resampled(points, count))
+        if count == points.count:
+            found = optimise_weights(rows, count, seed, points, TRIALS_FROM_FITTED)
+        else:
+            found = optimise_weights(rows, count, seed, _resampled(points, count))
         if found.error <= goal:
             return found
     return None

@@ -9,6 +9,7 @@ split             the same in two pieces, g below and above 0.95, half of the po
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -59,7 +60,8 @@ class GPoints:
 def g_points(count: int, quadrature: str = "matched") -> GPoints:
     """The quadrature with a number of points, 1 to 200 ("split": 2 or more).
 
-    The matched intervals' bounds are g_i = 1 - (1 - i/n)^2 (`optimise` finds better ones for given spectra).
+    The matched intervals' bounds are g_i = erf(a i/n) / erf(a) with a = sqrt(ln n): even below, and the more crowded
+    towards the top the more there are (`optimise` finds better ones for given spectra).
     Raises InputError for a quadrature that there is not.
     """
     check_quadrature(quadrature)
@@ -136,8 +138,10 @@ def _intervals(quadrature: str, bounds: FloatArray) -> GPoints:
     return GPoints(quadrature, 0.5 * (bounds[..., 1:] + bounds[..., :-1]), bounds, np.diff(bounds))
 
 
-def _quadratic(count: int) -> GPoints:
-    return _intervals("matched", 1.0 - (1.0 - np.arange(count + 1) / count) ** 2)
+def _crowded(count: int) -> GPoints:
+    steep = math.sqrt(math.log(count))
+    bounds = [math.erf(steep * i / count) / math.erf(steep) for i in range(count)] if count > 1 else [0.0]
+    return _intervals("matched", np.array([*bounds, 1.0]))
 
 
 def _legendre(count: int) -> tuple[FloatArray, FloatArray]:
@@ -171,7 +175,7 @@ def _split(count: int) -> GPoints:
 
 
 _MADE_BY: dict[str, Callable[[int], GPoints]] = {
-    "matched": _quadratic,
+    "matched": _crowded,
     "gauss-legendre": _gauss_legendre,
     "split": _split,
     "interval-mean": _interval_mean,

@@ -98,6 +98,14 @@ def jit_exact(function: Function) -> Function:
     return _compile(function, fastmath=False)
 
 
+def jit_in_order(function: Function) -> Function:
+    """As `jit_exact`, but a product and the sum that it goes into are rounded once where the processor can.
+
+    Sums stay in the order written, so that what is gained by rounding tricks is not optimised away.
+    """
+    return _compile(function, fastmath={"contract"})
+
+
 def jit_inline(function: Function) -> Function:
     """As `jit`, for small functions called for each line: made part of their callers."""
     return _compile(function, fastmath=_FAST_MATH, forceinline=True)

@@ -12,9 +12,11 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.kernels.jit import jit_exact
+from opacity.kernels.absorption import absorb, weighted_sum
+from opacity.kernels.jit import jit_exact, jit_in_order
 
 Array = NDArray[np.float64]
+Counts = NDArray[np.int64]
 
 _NOTHING = 1e-12
 """Share of a sample's width that is rounding: its value must not be what an interval is counted from."""
@@ -22,54 +24,69 @@ _ALL = 1.0 - 1e-15
 
 
 @jit_exact
-def _mean(values: Array, widths: Array) -> float:
-    total = 0.0
-    for i in range(values.size):
-        total += values[i] * widths[i]
-    return total
+def cut(widths: Array, bounds: Array, starts: Counts, ends: Counts, takes: Array) -> None:
+    """Cut samples of `widths` (m,) into pieces at `bounds` (n + 1,) of intervals of g, all but the top one.
 
-
-@jit_exact
-def _piece(
-    values: Array, widths: Array, sample: int, left: float, width: float, column: float
-) -> tuple[float, int, float]:
-    """The integral over the next `width` in g of k - lowest, or with a column of 1 - exp(-(k - lowest) column).
-
-    The interval starts in `sample`, of whose width there is `left`, and `lowest` is its value; where it ends is
-    returned as well.  Counted from the lowest value neither small nor large ones lose their digits.
+    Interval i has the pieces from ends[i] to ends[i + 1], of widths `takes`; the first of them is of the sample
+    starts[i] and each other of the next sample.  `starts` (n,), `ends` (n,), `takes` (m + n,).
     """
-    integral, lowest, last = 0.0, values[sample], values.size - 1
-    need = width
-    while need > 0.0:
-        take = need if left > need or sample == last else left
-        above = values[sample] - lowest
-        integral += take * (above if column == 0.0 else -math.expm1(-above * column))
-        need -= take
-        left -= take
-        if left <= _NOTHING * widths[sample] and sample < last:
-            sample += 1
-            left = widths[sample]
-    return integral, sample, left
+    sample, left, last, piece = 0, widths[0], widths.size - 1, 0
+    ends[0] = 0
+    for i in range(starts.size - 1):
+        starts[i] = sample
+        need = bounds[i + 1] - bounds[i]
+        while need > 0.0:
+            take = need if left > need or sample == last else left
+            takes[piece] = take
+            piece += 1
+            need -= take
+            left -= take
+            if left <= _NOTHING * widths[sample] and sample < last:
+                sample += 1
+                left = widths[sample]
+        ends[i + 1] = piece
 
 
-@jit_exact
-def _match(values: Array, widths: Array, bounds: Array, x0: float, out: Array) -> None:
-    """Fill `out` (n,) from rising samples (m,) of `widths` (sum 1), over intervals of g between `bounds` (n + 1,)."""
-    rest = _mean(values, widths)
-    sample, left = 0, widths[0]
-    n = out.size
+@jit_in_order
+def match_cut(
+    values: Array,
+    mean: float,
+    bounds: Array,
+    starts: Counts,
+    ends: Counts,
+    takes: Array,
+    x0: float,
+    work: Array,
+    out: Array,
+) -> None:
+    """Fill `out` (n,) from rising `values` (m,) that `cut` has cut into pieces; `mean` is theirs.
+
+    `work` (m + 2 n,) is room to work in.  Counted from an interval's lowest value neither small nor large ones lose
+    their digits.
+    """
+    n, pieces = out.size, ends[out.size - 1]
+    depths, means = work[:pieces], work[work.size - n :]
     for i in range(n - 1):
-        width, lowest = bounds[i + 1] - bounds[i], values[sample]
-        above, next_sample, next_left = _piece(values, widths, sample, left, width, 0.0)
-        k = lowest
-        if above > 0.0 and x0 == 0.0:
-            k += above / width
-        elif above > 0.0:
-            column = x0 / (lowest + above / width)
-            lost, next_sample, next_left = _piece(values, widths, sample, left, width, column)
+        shift, lowest, above = starts[i] - ends[i], values[starts[i]], 0.0
+        for piece in range(ends[i], ends[i + 1]):
+            depths[piece] = values[shift + piece] - lowest
+            above += takes[piece] * depths[piece]
+        means[i] = above / (bounds[i + 1] - bounds[i])
+        column = x0 / (lowest + means[i]) if means[i] > 0.0 else 0.0
+        for piece in range(ends[i], ends[i + 1]):
+            depths[piece] *= column
+    if x0 > 0.0:
+        absorb(depths)
+    rest = mean
+    for i in range(n - 1):
+        lowest, width = values[starts[i]], bounds[i + 1] - bounds[i]
+        k = lowest + means[i]
+        if x0 > 0.0 and means[i] > 0.0:
+            lost = 0.0
+            for piece in range(ends[i], ends[i + 1]):
+                lost += takes[piece] * depths[piece]
             # Rounding must not make the k of a wide range of values infinite; it is never above the mean.
-            k = min(k - math.log1p(-min(lost / width, _ALL)) / column, lowest + above / width)
-        sample, left = next_sample, next_left
+            k = min(lowest - math.log1p(-min(lost / width, _ALL)) * k / x0, k)
         out[i] = max(k, out[i - 1]) if i else k
         rest -= out[i] * width
     top = rest / (bounds[n] - bounds[n - 1])
@@ -82,8 +99,15 @@ def match_rows(values: Array, widths: Array, bounds: Array, x0: float, out: Arra
 
     `bounds` (n_row, n + 1) rise from 0 to 1, or (1, n + 1) for all rows; `out` (n_row, n) rises.
     """
+    n = out.shape[1]
+    starts, ends = np.empty(n, dtype=np.int64), np.empty(n, dtype=np.int64)
+    takes, work = np.empty(widths.size + n), np.empty(widths.size + 2 * n)
     for row in range(values.shape[0]):
-        _match(values[row], widths, bounds[row % bounds.shape[0]], x0, out[row])
+        own = bounds[row % bounds.shape[0]]
+        if row == 0 or bounds.shape[0] > 1:
+            cut(widths, own, starts, ends, takes)
+        mean = weighted_sum(values[row], widths)
+        match_cut(values[row], mean, own, starts, ends, takes, x0, work, out[row])
 
 
 @jit_exact
@@ -111,10 +135,14 @@ def mix_matched(first: Array, second: Array, weights: Array, bounds: Array, x0: 
     """
     n = first.shape[1]
     values, products = np.empty(n * n), np.empty(n * n)
+    starts, ends = np.empty(n, dtype=np.int64), np.empty(n, dtype=np.int64)
+    takes, work = np.empty(n * n + n), np.empty(n * n + 2 * n)
     for row in range(first.shape[0]):
-        own = weights[row % weights.shape[0]]
+        own, its_bounds = weights[row % weights.shape[0]], bounds[row % bounds.shape[0]]
         _pairs(first[row], own, second[row], own, values, products)
-        _match(values, products, bounds[row % bounds.shape[0]], x0, out[row])
+        cut(products, its_bounds, starts, ends, takes)
+        mean = weighted_sum(values, products)
+        match_cut(values, mean, its_bounds, starts, ends, takes, x0, work, out[row])
 
 
 @jit_exact

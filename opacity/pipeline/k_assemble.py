@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from concurrent.futures import Executor, ThreadPoolExecutor
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -34,6 +35,8 @@ MOST_ROUNDS = 4
 WORSE_ELSEWHERE = 1.2
 """Weights are fitted again where nodes that they were not fitted to are worse by more than this."""
 NODES_ADDED = 4
+
+_NODES_AT_ONCE = 8
 
 
 @dataclass
@@ -172,12 +175,17 @@ def _choose(job: KJob, cells: ShardCells) -> tuple[GPoints, dict[str, Any]]:
         return choose(wanted, [], job.seed)
     temperature, pressure = (np.array(axis) for axis in zip(*job.recipe.grid.node_list(), strict=True))
     nodes = training_nodes(temperature, pressure, TRAINING_NODES, job.seed)
-    with Progress("g points", MOST_ROUNDS, "rounds of fitting", job.quiet) as progress:
+    start: GPoints | None = None
+    with (
+        ThreadPoolExecutor(job.workers) as executor,
+        Progress("g points", MOST_ROUNDS, "rounds of fitting", job.quiet) as progress,
+    ):
         for _ in range(MOST_ROUNDS):
             training = Training(np.array([cells[_index(cells, row)] for row in nodes]), pressure[nodes])
-            points, how = choose(wanted, [training], job.seed)
+            start, how = choose(wanted, [training], job.seed, start, executor)
+            points = start
             progress.step()
-            errors = _largest_errors(cells, points, pressure)
+            errors = _largest_errors(cells, points, pressure, executor)
             how |= {"trained_nodes": [list(job.recipe.grid.node_list()[row]) for row in nodes]}
             limit = how.get("target", WORSE_ELSEWHERE * how["trained_error"])
             others = np.setdiff1d(np.flatnonzero(errors > limit), nodes)
@@ -196,11 +204,17 @@ def _index(cells: ShardCells, row: int) -> tuple[int, ...]:
     return tuple(int(i) for i in np.unravel_index(row, cells.nodes))
 
 
-def _largest_errors(cells: ShardCells, points: GPoints, pressure: FloatArray) -> FloatArray:
+def _largest_errors(cells: ShardCells, points: GPoints, pressure: FloatArray, executor: Executor) -> FloatArray:
     """Size of the largest error of transmission at each node, (n_node,)."""
-    found = np.empty(pressure.size)
-    for row, at in enumerate(pressure):
-        here = cells[_index(cells, row)]
-        errors = errors_at_node(k_from_cells(here, points), points.weights, here, float(at))
-        found[row] = np.max(np.abs(errors.transmission))
-    return found
+
+    def largest(here: FloatArray, at: float) -> float:
+        errors = errors_at_node(k_from_cells(here, points), points.weights, here, at)
+        return float(np.max(np.abs(errors.transmission)))
+
+    found: list[float] = []
+    # Read one after the other, a few at a time, since shards are kept open one block at a time.
+    for first in range(0, pressure.size, _NODES_AT_ONCE):
+        some = range(first, min(first + _NODES_AT_ONCE, pressure.size))
+        here = [cells[_index(cells, row)] for row in some]
+        found += executor.map(largest, here, pressure[some.start : some.stop].tolist())
+    return np.array(found)

@@ -36,8 +36,8 @@ def test_errors_of_16_points_are_those_measured(sigma: np.ndarray):
     cells, pressure = fine_cells(sigma, NU, EDGES), np.tile(PRESSURES, 3)
     fixed = g_points(16)
     found = certify(k_from_cells(cells, fixed), fixed.weights, cells, pressure, sigma, band_points(NU, EDGES), pairs=4)
-    # Fixed bounds: 1.3e-2 over more nodes and bands; the fine cells' own error 3e-5.
-    assert found.largest < 1.4e-2
+    # Fixed bounds: 9.1e-3 over more nodes and bands; the fine cells' own error 3e-5.
+    assert found.largest < 1e-2
     assert max(found.fine_cells) < 1e-4
     assert max(abs(band.mean) for band in found.bands) < 1e-12
     fitted = optimise_weights(rows_of(cells, pressure), 16)
