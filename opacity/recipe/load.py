@@ -45,16 +45,23 @@ def load_recipe(path: str | Path) -> Recipe:
     path = Path(path)
     text = read_text(path)
     document, lines = parse(path, text)
-    faults = Faults(str(path), lines)
+    root = Table(Faults(str(path), lines), (), document, mixture.SECTIONS if "species" in document else SECTIONS)
     if "species" in document:
-        root = Table(faults, (), document, mixture.SECTIONS)
-        return _if_faultless(mixture.read_mixture(path, text, root, load_recipe), root)
-    root = Table(faults, (), document, SECTIONS)
+        return _if_faultless(mixture.read_mixture(path, text, root, _load_species), root)
+    return _if_faultless(_of_one_molecule(path, text, root), root)
+
+
+def _load_species(path: Path) -> Recipe | None:
+    """The recipe of one molecule, None for one of several species, which may even name itself."""
+    return None if "species" in parse(path, read_text(path))[0] else load_recipe(path)
+
+
+def _of_one_molecule(path: Path, text: str, root: Table) -> Recipe:
     folder = path.parent
     molecule = read_molecule(root)
     line_lists = read_line_lists(root, folder)
-    grid = read_grid(root, points="cross_section" in document or "k_coefficient" not in document)
-    recipe = Recipe(
+    grid = read_grid(root, points="cross_section" in root or "k_coefficient" not in root)
+    return Recipe(
         path=path,
         text=text,
         molecule=molecule,
@@ -65,10 +72,9 @@ def load_recipe(path: str | Path) -> Recipe:
         profile=read_profile(root),
         grid=grid,
         band_strengths=read_band_strengths(root),
-        cross_section="cross_section" in document,
+        cross_section="cross_section" in root,
         k_coefficient=read_k_coefficient(root, grid),
     )
-    return _if_faultless(recipe, root)
 
 
 def _if_faultless(recipe: Recipe, root: Table) -> Recipe:
