@@ -48,9 +48,7 @@ class ShardCells:
     nodes: tuple[int, ...]
     bands: int
     again: Callable[[BandUnit], None]
-    _first: int = -1
-    _block: list[BandShard] = field(default_factory=list)
-    _parts: list[BandUnit] = field(default_factory=list)
+    _held: dict[int, tuple[BandUnit, BandShard]] = field(default_factory=dict)
 
     @property
     def shape(self) -> tuple[int, ...]:
@@ -59,21 +57,25 @@ class ShardCells:
 
     def __getitem__(self, node: Any, /) -> FloatArray:
         """The cells of a node as f8, (n_band, N_CELLS)."""
-        row, parts = self._found(node)
-        return np.concatenate([one.cells[row] for one in parts]).astype(np.float64)
+        return np.concatenate([one.cells[row] for row, one in self._found(node)]).astype(np.float64)
 
     def beside(self, node: tuple[int, ...]) -> tuple[FloatArray, FloatArray]:
         """Sums for means (4,) of a node, and points of each band, (n_band, 2)."""
-        row, parts = self._found(node)
-        sums = np.sum([one.sums[row] for one in parts], axis=0)
-        return sums, np.concatenate([one.points[row] for one in parts])
+        parts = self._found(node)
+        return np.sum([one.sums[row] for row, one in parts], axis=0), np.concatenate(
+            [one.points[row] for row, one in parts]
+        )
 
-    def _found(self, node: Any) -> tuple[int, list[BandShard]]:
+    def _found(self, node: Any) -> list[tuple[int, BandShard]]:
+        """The shards that hold a node, by rising bands, and its row in each: units of other bands may have other rows."""
         number = int(np.ravel_multi_index(tuple(node), self.nodes))
-        if not self._parts or number not in self._parts[0].rows:
-            self._parts = sorted((unit for unit in self.units if number in unit.rows), key=lambda unit: unit.first)
-            self._block = [self._read(unit) for unit in self._parts]
-        return number - self._parts[0].rows[0], self._block
+        if not self._held or any(number not in unit.rows for unit, _ in self._held.values()):
+            here = sorted((unit for unit in self.units if number in unit.rows), key=lambda unit: unit.first)
+            held = self._held
+            self._held = {
+                one.number: held[one.number] if one.number in held else (one, self._read(one)) for one in here
+            }
+        return [(number - unit.rows[0], shard) for unit, shard in self._held.values()]
 
     def _read(self, unit: BandUnit) -> BandShard:
         path = unit.path(self.folder)

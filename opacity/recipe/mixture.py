@@ -66,7 +66,11 @@ def _species(root: Table, folder: Path, load: Callable[[Path], Recipe | None]) -
         if not os.path.exists(folder / name):
             remedy = "names are looked for from this recipe's folder"
             table.faults.add(
-                table.path("recipe"), "no such file", expected="a recipe", found=shown(str(folder / name)), remedy=remedy
+                table.path("recipe"),
+                "no such file",
+                expected="a recipe",
+                found=shown(name),
+                remedy=remedy,
             )
             continue
         recipe = load(folder / name)
