@@ -67,7 +67,7 @@ class ShardCells:
         )
 
     def _found(self, node: Any) -> list[tuple[int, BandShard]]:
-        """The shards that hold a node, by rising bands, and its row in each: units of other bands may have other rows."""
+        """The shards that hold a node, by rising bands, and its row in each: units differ in their rows."""
         number = int(np.ravel_multi_index(tuple(node), self.nodes))
         if not self._held or any(number not in unit.rows for unit, _ in self._held.values()):
             here = sorted((unit for unit in self.units if number in unit.rows), key=lambda unit: unit.first)
