@@ -22,7 +22,9 @@ FRACTIONS = (0.3, 0.6)
 def species(seed: int, broadener: str, n: int = 60) -> PreparedLines:
     lines = random_list(n, 2000.0, 2020.0, seed)
     columns = lines.broadeners["air"]
-    lines = replace(lines, broadeners={broadener: BroadenerColumns(columns.gamma, columns.exponent, columns.shift)})
+    lines = replace(
+        lines, broadeners={broadener.lower(): BroadenerColumns(columns.gamma, columns.exponent, columns.shift)}
+    )
     return prepared(lines, broadener)
 
 
