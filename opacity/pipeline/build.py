@@ -16,10 +16,11 @@ import numpy as np
 
 from opacity.check.run import run_checks
 from opacity.cross_sections.tolerance import regions
-from opacity.errors import InUseError, ResourceError, TableError, problem
+from opacity.errors import InUseError, ResourceError, TableError
 from opacity.k_coefficient.bands import band_edges
 from opacity.line_store.lock import locked
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
+from opacity.pipeline.folders import make_folder, refuse_folders
 from opacity.pipeline.inputs import Inputs, load_inputs
 from opacity.pipeline.k_assemble import KJob, ShardCells, assemble_k
 from opacity.pipeline.k_plan import make_k_plan
@@ -129,9 +130,9 @@ def build_table(
     announce(plan)
     refuse_what_cannot_fit(plan)
     job = _Job(recipe, kind, inputs, plan, folder, path, memory, quiet)
-    _make_folder(folder)
-    _refuse_folders(path, log)
-    _make_folder(job.shards)
+    make_folder(folder)
+    refuse_folders(path, log)
+    make_folder(job.shards)
     units = units_of(recipe, inputs, kind)
     try:
         figures, missing = (_build_alone if crew.task is None else _build_task)(job, units, crew)
@@ -320,25 +321,6 @@ def _still_good(path: Path, origin: Fingerprint) -> dict[str, Any] | None:
             return table.checks
     except TableError:  # damaged: it is built again
         return None
-
-
-def _make_folder(folder: Path) -> None:
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-    except (OSError, ValueError) as error:
-        reason = getattr(error, "strerror", None) or str(error)
-        raise ResourceError(problem(folder, f"the folder for the tables cannot be made ({reason})")) from error
-    if not os.access(folder, os.W_OK | os.X_OK):
-        raise ResourceError(
-            problem(folder, "nothing can be written here", remedy="choose a folder in which you may write")
-        )
-
-
-def _refuse_folders(*paths: Path) -> None:
-    """Before hours of work, not after them."""
-    for path in paths:
-        if path.is_dir():
-            raise ResourceError(problem(path, "is a folder", expected="a file or nothing", remedy="move it away"))
 
 
 def _write_log(log: Path, recipe: Recipe, seconds: float, workers: int) -> None:

@@ -13,27 +13,22 @@ from numpy.typing import NDArray
 from opacity.check.k_run import run_k_checks
 from opacity.cross_sections.source import LineSource
 from opacity.cross_sections.tolerance import regions
-from opacity.errors import InputError, TableError, problem
+from opacity.errors import TableError
 from opacity.grids import FloatArray
 from opacity.k_coefficient.bands import band_edges
-from opacity.k_coefficient.certificate import errors_at_node
-from opacity.k_coefficient.choose import TRAINING_NODES, Training, Wanted, choose
+from opacity.k_coefficient.choose import Wanted
 from opacity.k_coefficient.collapse import CELL_BOUNDS, N_CELLS
 from opacity.k_coefficient.means import means_of_sums
-from opacity.k_coefficient.optimise import training_nodes
 from opacity.k_coefficient.quadrature import GPoints, k_from_cells
+from opacity.pipeline.k_choose import MOST_ROUNDS, NodeCells, choose_certified
 from opacity.pipeline.k_units import BandUnit, missed_points
+from opacity.pipeline.open_lists import located
 from opacity.pipeline.progress import Progress
 from opacity.recipe.model import Recipe
+from opacity.recipe.positions import KeyPath
 from opacity.tables.band_shard import BandShard, read_band_shard
 from opacity.tables.k_model import KTable
 from opacity.tables.k_write import KInProgress, write_k_table
-
-MOST_ROUNDS = 4
-"""So often points in g are chosen again with the nodes at which they failed."""
-WORSE_ELSEWHERE = 1.2
-"""Weights are fitted again where nodes that they were not fitted to are worse by more than this."""
-NODES_ADDED = 4
 
 
 @dataclass
@@ -166,43 +161,12 @@ def _spectra(recipe: Recipe, points: FloatArray) -> dict[str, Any]:
 
 
 def _choose(job: KJob, cells: ShardCells) -> tuple[GPoints, dict[str, Any]]:
-    """The points in g, and how they were chosen; certified at all nodes where a target is to be met."""
-    choice = job.recipe.k_coefficient
+    """The points in g, and how they were chosen."""
+    choice, nodes = job.recipe.k_coefficient, job.recipe.grid.node_list()
     assert choice is not None
     wanted = Wanted(choice.g_points, choice.transmission_error, choice.quadrature, choice.weights)
-    if not wanted.needs_cells:
-        return choose(wanted, [], job.seed)
-    temperature, pressure = (np.array(axis) for axis in zip(*job.recipe.grid.node_list(), strict=True))
-    nodes = training_nodes(temperature, pressure, TRAINING_NODES, job.seed)
-    with Progress("g points", MOST_ROUNDS, "rounds of fitting", job.quiet) as progress:
-        for _ in range(MOST_ROUNDS):
-            training = Training(np.array([cells[_index(cells, row)] for row in nodes]), pressure[nodes])
-            points, how = choose(wanted, [training], job.seed)
-            progress.step()
-            errors = _largest_errors(cells, points, pressure)
-            how |= {"trained_nodes": [list(job.recipe.grid.node_list()[row]) for row in nodes]}
-            limit = how.get("target", WORSE_ELSEWHERE * how["trained_error"])
-            others = np.setdiff1d(np.flatnonzero(errors > limit), nodes)
-            if not others.size:
-                return points, how
-            nodes = np.sort(np.append(nodes, others[np.argsort(-errors[others], kind="stable")][:NODES_ADDED]))
-    if "target" in how and errors.max() > how["target"]:
-        expected, found = f"{how['target']:g} at every node", f"{errors.max():.2g} with {points.count} points"
-        remedy = "choose a larger transmission_error"
-        what = "transmission_error is not met"
-        raise InputError(problem(job.recipe.path, what, expected=expected, found=found, remedy=remedy))
-    return points, how
-
-
-def _index(cells: ShardCells, row: int) -> tuple[int, ...]:
-    return tuple(int(i) for i in np.unravel_index(row, cells.nodes))
-
-
-def _largest_errors(cells: ShardCells, points: GPoints, pressure: FloatArray) -> FloatArray:
-    """Size of the largest error of transmission at each node, (n_node,)."""
-    found = np.empty(pressure.size)
-    for row, at in enumerate(pressure):
-        here = cells[_index(cells, row)]
-        errors = errors_at_node(k_from_cells(here, points), points.weights, here, float(at))
-        found[row] = np.max(np.abs(errors.transmission))
-    return found
+    table = NodeCells(lambda row: cells[np.unravel_index(row, cells.nodes)], nodes)
+    keys: dict[str, KeyPath] = {"transmission_error": ("k_coefficient", "transmission_error")}
+    with located(job.recipe, keys), Progress("g points", MOST_ROUNDS, "rounds of fitting", job.quiet) as progress:
+        points, how, (rows,) = choose_certified(wanted, [table], job.seed, progress.step)
+    return points, {**how, "trained_nodes": [list(nodes[row]) for row in rows]} if rows.size else how

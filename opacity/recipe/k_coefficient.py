@@ -36,7 +36,8 @@ def read_k_coefficient(root: Table, grid: Grid) -> KCoefficientChoice | None:
     quadrature = table.choice("quadrature", QUADRATURES, default="matched")
     weights = table.choice("weights", WEIGHTS, default="optimised" if quadrature == "matched" else "fixed")
     auto = table.values.get("g_points") == "auto"
-    count = None if auto else table.count("g_points", 1, MOST_POINTS) if "g_points" in table else 16
+    least = 2 if quadrature == "split" else 1
+    count = None if auto else table.count("g_points", least, MOST_POINTS) if "g_points" in table else 16
     if (auto or weights != "fixed") and quadrature != "matched":
         what = "goes with the quadrature matched alone"
         table.faults.add(table.path("g_points" if auto else "weights"), what, found=shown(quadrature))

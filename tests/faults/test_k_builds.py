@@ -37,7 +37,7 @@ def k_recipe(tmp_path_factory: pytest.TempPathFactory) -> Path:
     for old, new in (
         ("start = 2000.0, stop = 2300.0, step = 0.001", "start = 0.0, stop = 2300.0"),
         ("[200.0, 250.0, 296.0, 350.0, 400.0, 450.0, 500.0, 550.0]", "[200.0, 296.0, 400.0, 550.0, 900.0]"),
-        ("[0.001, 0.01, 0.1, 1.0]", "[0.01, 1.0]"),
+        ("[0.001, 0.01, 0.1, 1.0]", "[0.5, 2.0]"),
         ("[cross_section]\n", f"[k_coefficient]\nbands = {{ edges = {EDGES} }}\ng_points = 4\n"),
     ):
         assert text.count(old) == 1, old

@@ -171,6 +171,10 @@ FAULTS = [
         "49: k_coefficient.g_points: impossible value; expected a whole number from 1 to 200, found 201",
     ),
     (
+        GOOD + 'g_points = 1\nquadrature = "split"',
+        "49: k_coefficient.g_points: impossible value; expected a whole number from 2 to 200, found 1",
+    ),
+    (
         GOOD + 'g_points = "many"',
         '49: k_coefficient.g_points: impossible value; expected a whole number from 1 to 200, found "many"',
     ),
