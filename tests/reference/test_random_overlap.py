@@ -75,7 +75,7 @@ def test_the_gas_of_both_passes_its_checks(tables: Path) -> None:
         results = {row["check"]: row["verdict"] for row in one.figures["results"]}
         assert results["closure"] == "agrees"
         assert "differs" not in results.values()
-        assert list(results.values()).count("agrees") >= 3
+        assert list(results.values()).count("agrees") >= 2
 
 
 def test_means_add(tables: Path) -> None:

@@ -32,7 +32,7 @@ def test_version_1():
 
 
 def test_k_coefficients_of_version_1():
-    """Written by version 0.1.0; k[i, j, b, m] = 2**-70 (i + 1) (j + 2) (b + 1) (m + 1), each twice in the fine cells."""
+    """k[i, j, b, m] = 2**-70 (i + 1) (j + 2) (b + 1) (m + 1), each twice in the fine cells."""
     with open_k_table(DATA / "version-1.k-coefficient.h5") as table:
         table.verify()
         assert table.format_version == 1
