@@ -14,7 +14,6 @@ import pytest
 from opacity.errors import ResourceError
 from opacity.pipeline import build as build_module
 from opacity.pipeline import units as units_module
-from opacity.pipeline import workers as workers_module
 from opacity.pipeline.build import Crew, build_table
 from opacity.recipe.load import load_recipe
 from opacity.tables.read import open_table
@@ -91,13 +90,13 @@ def test_what_does_not_fit_is_refused_before_the_work(write_recipe, tmp_path, mo
 
 def test_warnings_come_before_the_work_and_stay_in_the_table(write_recipe, tmp_path, monkeypatch):
     told = []
-    real = workers_module.compute
+    real = units_module.compute
 
     def compute(*arguments):
         assert len(told) == 1
         return real(*arguments)
 
-    monkeypatch.setattr(workers_module, "compute", compute)
+    monkeypatch.setattr(units_module, "compute", compute)
     path = write_recipe(wavenumber="{ start = 2145.0, stop = 2149.0, step = 0.01 }")
     made = built(path, tmp_path, announce=lambda plan: told.extend(plan.warnings))
     assert told[0].startswith("the step is too coarse at 2 of 4 nodes")
