@@ -103,10 +103,11 @@ def _sampled(samples: list[BandSample], tolerance: float) -> list[CheckResult]:
         what = "every band drawn has too many points to be made again"
         return [CheckResult("fine cells", CANNOT_JUDGE, what), CheckResult("audit", CANNOT_JUDGE, what)]
     bands = f"{len(samples)} bands made again line by line"
-    cells, exact = max(one.fine_cells for one in samples), max(one.exact for one in samples)
+    worst, exact = max(samples, key=lambda one: one.fine_cells - one.border), max(one.exact for one in samples)
+    cells, limit = worst.fine_cells, CELL_ERROR + COLUMN_SHARE * tolerance + worst.border
     mean = max(one.mean for one in samples)
     return [
-        judge("fine cells", cells, CELL_ERROR + COLUMN_SHARE * tolerance, f"transmission within {cells:.1e}, {bands}"),
+        judge("fine cells", cells, limit, f"transmission within {max(one.fine_cells for one in samples):.1e}, {bands}"),
         judge("band means", mean, tolerance + SAMPLED, f"within {mean:.1e}, {bands}"),
         judge("audit", exact, tolerance, f"spectra of these bands within {exact:.1e} of the exact sum"),
     ]

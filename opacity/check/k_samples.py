@@ -18,7 +18,7 @@ from opacity.cross_sections.source import LineSource, exact_points
 from opacity.grids import FloatArray
 from opacity.k_coefficient.bands import BandPoints, band_points
 from opacity.k_coefficient.certificate import fine_cell_errors, two_layer_error
-from opacity.k_coefficient.collapse import CELL_WIDTHS, fine_cells
+from opacity.k_coefficient.collapse import CELL_BOUNDS, CELL_WIDTHS, fine_cells
 from opacity.k_coefficient.spectra import POINTS_AT_ONCE, BandLines, lines_of_bands, points_of_bands
 from opacity.k_coefficient.transmission import columns_of, transmission
 from opacity.recipe.model import Profile
@@ -61,7 +61,8 @@ class KValues(Nodes, Protocol):
 @dataclass(frozen=True)
 class BandSample:
     """What one band was found to be, largest sizes: `fine_cells` error of transmission and `mean` relative error of the
-    stored cells against line by line; `two_layers` of the transmission of two layers; `middle` of the transmission at
+    stored cells against line by line; `border` the width in g of the cell in which the part of the band that does not
+    absorb ends, 0 where none does, by which such a cell may be off; `two_layers` of the transmission of two layers; `middle` of the transmission at
     cell middles of the grid and `middle_mean` relative of the mean there, None without cells; `exact` relative error
     of the spectrum against the exact sum.
     """
@@ -69,6 +70,7 @@ class BandSample:
     band: int
     fine_cells: float
     mean: float
+    border: float
     two_layers: float
     middle: float | None
     middle_mean: float | None
@@ -157,6 +159,7 @@ def sample_band(
         band,
         fine_cell_errors(cells, at_nodes, points, pressure)[0],
         _largest_relative(cells[:, 0] @ CELL_WIDTHS, means),
+        _border(at_nodes[:, points.first[0] : points.last[0]], widths),
         two_layer_error(k, weights[None], cells, at_nodes, points, pressure, layers).largest,
         middle,
         middle_mean,
@@ -193,6 +196,13 @@ def _at_middles(
     columns = columns_of(cells, np.array([pressure for _, pressure in drawn.middles]))
     errors = transmission(k, weights, columns) - transmission(cells, CELL_WIDTHS, columns)
     return float(np.max(np.abs(errors))), _largest_relative(k @ weights, cells @ CELL_WIDTHS)
+
+
+def _border(sigma: FloatArray, shares: FloatArray) -> float:
+    """Width of the widest cell that lies half in what is clear of spectra (n_node, n_nu) with `shares` of the band."""
+    clear = (sigma == 0.0) @ shares
+    cells = np.searchsorted(CELL_BOUNDS, clear[(clear > 0.0) & (clear < 1.0)], side="right") - 1
+    return float(np.max(CELL_WIDTHS[np.clip(cells, 0, CELL_WIDTHS.size - 1)], initial=0.0))
 
 
 def _largest_relative(values: FloatArray, truth: FloatArray) -> float:

@@ -55,11 +55,16 @@ class MixedLines:
 
     def sample(self) -> FloatArray:
         """Wavenumbers of some of the lines (n,), of each species as many as its share of the lines."""
-        most = min(_SAMPLED, min(source.sample().size for source, _ in self.parts) * len(self.parts))
+        samples = [source.sample() for source, _ in self.parts]
+        # The species of which the fewest are at hand, beside its lines, says how many of all may stand for all.
+        share = min(
+            (found.size / len(one) for (one, _), found in zip(self.parts, samples, strict=True) if len(one)),
+            default=1.0,
+        )
+        share = min(share, _SAMPLED / max(len(self), 1))
         found = []
-        for source, _ in self.parts:
-            places = source.sample()
-            count = max(min(round(most * len(source) / max(len(self), 1)), places.size), min(places.size, 2))
+        for (source, _), places in zip(self.parts, samples, strict=True):
+            count = min(max(round(share * len(source)), 2), places.size)
             found.append(places[np.linspace(0, places.size - 1, count).astype(np.intp)])
         return np.sort(np.concatenate(found))
 

@@ -110,7 +110,7 @@ def collapsed(
     needed = points_of_bands(lines, edges, pressure)
     had = np.minimum(needed, MOST_POINTS)
     cells = np.empty((edges.size - 1, N_CELLS))
-    for first, last in _stretches(had):
+    for first, last in _stretches(edges, had):
         if last == first + 1 and had[first] > POINTS_AT_ONCE:
             cells[first] = _merged(lines, edges[first : last + 1], int(had[first]), pressure, executor, seen)
             continue
@@ -131,15 +131,19 @@ def points_of_bands(lines: BandLines, edges: FloatArray, pressure: float) -> Flo
     return np.maximum(np.ceil(widths / step), float(FEWEST_POINTS))
 
 
-def _stretches(points: FloatArray) -> Iterator[tuple[int, int]]:
-    """Runs of bands, as (first, last + 1), that have no more points together than are held at once."""
-    first, finest, bands = 0, 0.0, len(points)
-    for band in range(bands):
-        finest = max(finest, float(points[band]))
-        if band > first and finest * (band + 1 - first) > POINTS_AT_ONCE:
+def _stretches(edges: FloatArray, points: FloatArray) -> Iterator[tuple[int, int]]:
+    """Runs of bands, as (first, last + 1), whose spectrum at the finest step of any of them can be held at once, and
+    has at most twice as many points as they ask for.
+    """
+    first, finest, asked = 0, math.inf, 0.0
+    for band in range(len(points)):
+        step = float(edges[band + 1] - edges[band]) / float(points[band])
+        finest, asked = min(finest, step), asked + float(points[band])
+        together = float(edges[band + 1] - edges[first]) / finest
+        if band > first and (together > POINTS_AT_ONCE or together > 2.0 * asked):
             yield first, band
-            first, finest = band, float(points[band])
-    yield first, bands
+            first, finest, asked = band, step, float(points[band])
+    yield first, len(points)
 
 
 def _merged(

@@ -12,7 +12,10 @@ from opacity.kernels.jit import jit, jit_inline
 Array = NDArray[np.float64]
 
 BLOCK = 32
-"""Points between which the weights are interpolated: they change over hundreds of cm-1, the spectrum at each point."""
+"""Points between which the weights are interpolated, at most: they change over hundreds of cm-1, the spectrum at each
+point."""
+WIDEST = 2e-3
+"""The largest change of c2 nu / T in which they are: its square over 12 is the relative error of a weight."""
 
 _NEARLY_0 = 1e-320
 
@@ -52,10 +55,12 @@ def add_mean_sums(sums: Array, sigma: Array, first: float, step: float, scale: f
     scale times the lowest wavenumber of a grid, so that no temperature is too low.  Where sigma is 0 and has weight
     the third sum is infinite, or too large for what it is compared with to matter.
     """
-    size = sigma.size
+    size, block = sigma.size, BLOCK
+    if scale * step * BLOCK > WIDEST:
+        block = max(int(WIDEST / (scale * step)), 1)
     totals = np.zeros(4)
-    for low in range(0, size, BLOCK):
-        high = min(low + BLOCK, size)
+    for low in range(0, size, block):
+        high = min(low + block, size)
         planck, slope = _planck(scale * (first + low * step), start)
         end_planck, end_slope = _planck(scale * (first + high * step), start)
         planck_step, slope_step = (end_planck - planck) / (high - low), (end_slope - slope) / (high - low)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from concurrent.futures import Executor, ThreadPoolExecutor
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -14,29 +14,22 @@ from numpy.typing import NDArray
 from opacity.check.k_run import run_k_checks
 from opacity.cross_sections.source import LineSource
 from opacity.cross_sections.tolerance import regions
-from opacity.errors import InputError, TableError, problem
+from opacity.errors import TableError
 from opacity.grids import FloatArray
 from opacity.k_coefficient.bands import band_edges
-from opacity.k_coefficient.certificate import errors_at_node
-from opacity.k_coefficient.choose import TRAINING_NODES, Training, Wanted, choose
+from opacity.k_coefficient.choose import Wanted
 from opacity.k_coefficient.collapse import CELL_BOUNDS, N_CELLS
 from opacity.k_coefficient.means import means_of_sums
-from opacity.k_coefficient.optimise import training_nodes
 from opacity.k_coefficient.quadrature import GPoints, k_from_cells
+from opacity.pipeline.k_choose import MOST_ROUNDS, NodeCells, choose_certified
 from opacity.pipeline.k_units import BandUnit, missed_points
+from opacity.pipeline.open_lists import located
 from opacity.pipeline.progress import Progress
 from opacity.recipe.model import Recipe
+from opacity.recipe.positions import KeyPath
 from opacity.tables.band_shard import BandShard, read_band_shard
 from opacity.tables.k_model import KTable
 from opacity.tables.k_write import KInProgress, write_k_table
-
-MOST_ROUNDS = 4
-"""So often points in g are chosen again with the nodes at which they failed."""
-WORSE_ELSEWHERE = 1.2
-"""Weights are fitted again where nodes that they were not fitted to are worse by more than this."""
-NODES_ADDED = 4
-
-_NODES_AT_ONCE = 8
 
 
 @dataclass
@@ -51,9 +44,7 @@ class ShardCells:
     nodes: tuple[int, ...]
     bands: int
     again: Callable[[BandUnit], None]
-    _first: int = -1
-    _block: list[BandShard] = field(default_factory=list)
-    _parts: list[BandUnit] = field(default_factory=list)
+    _held: dict[int, tuple[BandUnit, BandShard]] = field(default_factory=dict)
 
     @property
     def shape(self) -> tuple[int, ...]:
@@ -62,21 +53,25 @@ class ShardCells:
 
     def __getitem__(self, node: Any, /) -> FloatArray:
         """The cells of a node as f8, (n_band, N_CELLS)."""
-        row, parts = self._found(node)
-        return np.concatenate([one.cells[row] for one in parts]).astype(np.float64)
+        return np.concatenate([one.cells[row] for row, one in self._found(node)]).astype(np.float64)
 
     def beside(self, node: tuple[int, ...]) -> tuple[FloatArray, FloatArray]:
         """Sums for means (4,) of a node, and points of each band, (n_band, 2)."""
-        row, parts = self._found(node)
-        sums = np.sum([one.sums[row] for one in parts], axis=0)
-        return sums, np.concatenate([one.points[row] for one in parts])
+        parts = self._found(node)
+        return np.sum([one.sums[row] for row, one in parts], axis=0), np.concatenate(
+            [one.points[row] for row, one in parts]
+        )
 
-    def _found(self, node: Any) -> tuple[int, list[BandShard]]:
+    def _found(self, node: Any) -> list[tuple[int, BandShard]]:
+        """The shards that hold a node, by rising bands, and its row in each: units differ in their rows."""
         number = int(np.ravel_multi_index(tuple(node), self.nodes))
-        if not self._parts or number not in self._parts[0].rows:
-            self._parts = sorted((unit for unit in self.units if number in unit.rows), key=lambda unit: unit.first)
-            self._block = [self._read(unit) for unit in self._parts]
-        return number - self._parts[0].rows[0], self._block
+        if not self._held or any(number not in unit.rows for unit, _ in self._held.values()):
+            here = sorted((unit for unit in self.units if number in unit.rows), key=lambda unit: unit.first)
+            held = self._held
+            self._held = {
+                one.number: held[one.number] if one.number in held else (one, self._read(one)) for one in here
+            }
+        return [(number - unit.rows[0], shard) for unit, shard in self._held.values()]
 
     def _read(self, unit: BandUnit) -> BandShard:
         path = unit.path(self.folder)
@@ -167,54 +162,16 @@ def _spectra(recipe: Recipe, points: FloatArray) -> dict[str, Any]:
 
 
 def _choose(job: KJob, cells: ShardCells) -> tuple[GPoints, dict[str, Any]]:
-    """The points in g, and how they were chosen; certified at all nodes where a target is to be met."""
-    choice = job.recipe.k_coefficient
+    """The points in g, and how they were chosen."""
+    choice, nodes = job.recipe.k_coefficient, job.recipe.grid.node_list()
     assert choice is not None
     wanted = Wanted(choice.g_points, choice.transmission_error, choice.quadrature, choice.weights)
-    if not wanted.needs_cells:
-        return choose(wanted, [], job.seed)
-    temperature, pressure = (np.array(axis) for axis in zip(*job.recipe.grid.node_list(), strict=True))
-    nodes = training_nodes(temperature, pressure, TRAINING_NODES, job.seed)
-    start: GPoints | None = None
+    table = NodeCells(lambda row: cells[np.unravel_index(row, cells.nodes)], nodes)
+    keys: dict[str, KeyPath] = {"transmission_error": ("k_coefficient", "transmission_error")}
     with (
+        located(job.recipe, keys),
         ThreadPoolExecutor(job.workers) as executor,
         Progress("g points", MOST_ROUNDS, "rounds of fitting", job.quiet) as progress,
     ):
-        for _ in range(MOST_ROUNDS):
-            training = Training(np.array([cells[_index(cells, row)] for row in nodes]), pressure[nodes])
-            start, how = choose(wanted, [training], job.seed, start, executor)
-            points = start
-            progress.step()
-            errors = _largest_errors(cells, points, pressure, executor)
-            how |= {"trained_nodes": [list(job.recipe.grid.node_list()[row]) for row in nodes]}
-            limit = how.get("target", WORSE_ELSEWHERE * how["trained_error"])
-            others = np.setdiff1d(np.flatnonzero(errors > limit), nodes)
-            if not others.size:
-                return points, how
-            nodes = np.sort(np.append(nodes, others[np.argsort(-errors[others], kind="stable")][:NODES_ADDED]))
-    if "target" in how and errors.max() > how["target"]:
-        expected, found = f"{how['target']:g} at every node", f"{errors.max():.2g} with {points.count} points"
-        remedy = "choose a larger transmission_error"
-        what = "transmission_error is not met"
-        raise InputError(problem(job.recipe.path, what, expected=expected, found=found, remedy=remedy))
-    return points, how
-
-
-def _index(cells: ShardCells, row: int) -> tuple[int, ...]:
-    return tuple(int(i) for i in np.unravel_index(row, cells.nodes))
-
-
-def _largest_errors(cells: ShardCells, points: GPoints, pressure: FloatArray, executor: Executor) -> FloatArray:
-    """Size of the largest error of transmission at each node, (n_node,)."""
-
-    def largest(here: FloatArray, at: float) -> float:
-        errors = errors_at_node(k_from_cells(here, points), points.weights, here, at)
-        return float(np.max(np.abs(errors.transmission)))
-
-    found: list[float] = []
-    # Read one after the other, a few at a time, since shards are kept open one block at a time.
-    for first in range(0, pressure.size, _NODES_AT_ONCE):
-        some = range(first, min(first + _NODES_AT_ONCE, pressure.size))
-        here = [cells[_index(cells, row)] for row in some]
-        found += executor.map(largest, here, pressure[some.start : some.stop].tolist())
-    return np.array(found)
+        points, how, (rows,) = choose_certified(wanted, [table], job.seed, progress.step, executor)
+    return points, {**how, "trained_nodes": [list(nodes[row]) for row in rows]} if rows.size else how

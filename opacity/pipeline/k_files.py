@@ -17,10 +17,11 @@ from opacity.check.result import AGREES, CheckResult, finite
 from opacity.check.spectra import nodes_of
 from opacity.errors import InputError, TableError, problem
 from opacity.grids import FloatArray
-from opacity.k_coefficient.choose import TRAINING_NODES, Training, Wanted, choose
+from opacity.k_coefficient.choose import Wanted
 from opacity.k_coefficient.mix import mix
-from opacity.k_coefficient.optimise import training_nodes
-from opacity.k_coefficient.quadrature import INTERVALS, GPoints, k_from_cells
+from opacity.k_coefficient.quadrature import INTERVALS, GPoints, g_points, k_from_cells
+from opacity.pipeline.folders import make_folder
+from opacity.pipeline.k_choose import MOST_ROUNDS, NodeCells, choose_certified
 from opacity.pipeline.progress import Progress
 from opacity.provenance import VERSION, file_sha256, package_versions
 from opacity.tables.k_model import KTable
@@ -29,6 +30,8 @@ from opacity.tables.k_write import KInProgress, write_k_table
 
 OF_THE_CELLS = ("closure", "fine cells", "band means", "audit")
 """Results that are about the fine cells, which other points in g leave as they are."""
+OF_THE_CHOICE = ("weights", "target", "trained_error", "trained_nodes")
+"""What a certificate says about how the points were chosen, which new ones do not inherit."""
 _ROUNDING = 1e-6
 
 
@@ -51,6 +54,7 @@ def choose_again(
     The points are made of the fine cells, which the tables must hold; no line is read.  Raises TableError for tables
     without, or of different bands, InputError where a file would be written over its source or a target is not met.
     """
+    _check_wanted(wanted)
     with ExitStack() as stack:
         opened = [stack.enter_context(open_k_table(path)) for path in tables]
         for table in opened:
@@ -61,16 +65,32 @@ def choose_again(
             _same_bands(opened[0], table)
         if len({table.path.name for table in opened}) < len(opened):
             raise InputError(problem("tables", "two of one name", expected="names that differ"))
-        points, how = choose(wanted, [_training(table, seed) for table in opened], seed)
-        folder.mkdir(parents=True, exist_ok=True)
-        return [_chosen(table, points, how, folder, quiet) for table in opened]
+        with Progress("g points", MOST_ROUNDS, "rounds of fitting", quiet) as progress:
+            cells = [_cells_by_number(table) for table in opened]
+            points, how, trained = choose_certified(wanted, cells, seed, progress.step)
+        make_folder(folder)
+        found = []
+        for table, one, rows in zip(opened, cells, trained, strict=True):
+            nodes = {"trained_nodes": [list(one.nodes[row]) for row in rows]} if rows.size else {}
+            found.append(_chosen(table, points, {**how, **nodes}, folder, quiet))
+        return found
 
 
-def _training(table: KCoefficientTable, seed: int) -> Training:
+def _check_wanted(wanted: Wanted) -> None:
+    """Before a table is opened: a number of points or an error that can be, of a quadrature that they go with."""
+    if wanted.quadrature != "matched" and wanted.needs_cells:
+        expected, found = "a number of points, and fixed weights", wanted.quadrature
+        raise InputError(problem("quadrature", "only matched is made to fit", expected=expected, found=found))
+    if wanted.count is not None:
+        g_points(wanted.count, wanted.quadrature)
+    elif not 0.0 < wanted.transmission_error < 1.0:
+        expected, found = "a number between 0 and 1", f"{wanted.transmission_error:g}"
+        raise InputError(problem("transmission_error", "impossible", expected=expected, found=found))
+
+
+def _cells_by_number(table: KCoefficientTable) -> NodeCells:
     nodes = nodes_of(table)
-    temperature, pressure = (np.array([node[i] for node in nodes]) for i in (1, 2))
-    some = training_nodes(temperature, pressure, TRAINING_NODES, seed)
-    return Training(np.array([table.cells(*nodes[row][0]) for row in some]), pressure[some])
+    return NodeCells(lambda row: table.cells(*nodes[row][0]), tuple(node[1:] for node in nodes))
 
 
 def _chosen(
@@ -90,7 +110,8 @@ def _chosen(
         kept = [row for row in before.get("results", []) if row.get("check") in OF_THE_CELLS]
         of_k = {"two_layers": None, "middle": None, "middle_mean": None}
         sampled = [{**one, **of_k} for one in old.get("sampled", [])]
-        certificate = {**old, **how, **certificate_of(found.bands), "sampled": sampled}
+        kept_of_old = {name: value for name, value in old.items() if name not in OF_THE_CHOICE}
+        certificate = {**kept_of_old, **how, **certificate_of(found.bands), "sampled": sampled}
         results = [row.as_dict() for row in rows] + kept
         return dict(finite({**before, "results": results, "certificate": certificate}))
 
@@ -168,7 +189,7 @@ def mix_tables(parts: Sequence[tuple[Path, float]], path: Path, quiet: bool = Fa
             planck_mean=_mean(opened, fractions),
             rosseland_mean=None,
         )
-        path.parent.mkdir(parents=True, exist_ok=True)
+        make_folder(path.parent)
         return path, write_k_table(path, made, lambda written: _mixture_checks(written, opened, fractions, quiet))
 
 

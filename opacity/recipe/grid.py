@@ -68,7 +68,8 @@ def _wavenumbers(table: Table, points: bool) -> grids.FloatArray:
     elif axis.misspelt("resolving_power"):
         return none
     elif not points and "step" not in axis and not axis.misspelt("step"):
-        width, make = stop - start, grids.uniform_wavenumbers
+        # One point, where there is no range: what asks for one says so.
+        width, make = stop - start if stop > start else 1.0, grids.uniform_wavenumbers
     else:
         width = axis.number("step", _STEP)
     if np.isnan([start, stop, width]).any():

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import math
 from itertools import pairwise
 from typing import Any
 
+from opacity import grids
+from opacity.errors import InputError
 from opacity.recipe.faults import shown
 from opacity.recipe.line_lists import WAVENUMBER
 from opacity.recipe.model import Bands, Grid, KCoefficientChoice
@@ -13,6 +16,7 @@ from opacity.recipe.table import Bounds, Table, checked_number
 QUADRATURES = ("matched", "gauss-legendre", "split", "interval-mean")
 WEIGHTS = ("optimised", "optimised-per-band", "fixed")
 MOST_POINTS = 200
+MOST_BANDS = 1_000_000
 _BANDS = "{ resolving_power }, { width }, { edges } or { wavelength }"
 _RESOLVING_POWER = Bounds(1.0, 1e6)
 _WIDTH = Bounds(1e-3, 1e6, "cm-1")
@@ -32,7 +36,8 @@ def read_k_coefficient(root: Table, grid: Grid) -> KCoefficientChoice | None:
     quadrature = table.choice("quadrature", QUADRATURES, default="matched")
     weights = table.choice("weights", WEIGHTS, default="optimised" if quadrature == "matched" else "fixed")
     auto = table.values.get("g_points") == "auto"
-    count = None if auto else table.count("g_points", 1, MOST_POINTS) if "g_points" in table else 16
+    least = 2 if quadrature == "split" else 1
+    count = None if auto else table.count("g_points", least, MOST_POINTS) if "g_points" in table else 16
     if (auto or weights != "fixed") and quadrature != "matched":
         what = "goes with the quadrature matched alone"
         table.faults.add(table.path("g_points" if auto else "weights"), what, found=shown(quadrature))
@@ -56,9 +61,33 @@ def _bands(table: Table, grid: Grid) -> Bands:
             table.faults.add(inner.key, "not one way to give bands", expected=_BANDS, found=shown(values))
         return none
     kind = kinds[0]
-    if kind in ("resolving_power", "width"):
-        return Bands(kind, (inner.number(kind, _RESOLVING_POWER if kind == "resolving_power" else _WIDTH),))
-    return Bands(kind, _edges(inner, kind, grid))
+    if kind not in ("resolving_power", "width"):
+        return Bands(kind, _edges(inner, kind, grid))
+    value = inner.number(kind, _RESOLVING_POWER if kind == "resolving_power" else _WIDTH)
+    if grid.wavenumber.size and value > 0.0:
+        _check_that_they_fit(inner, kind, value, grid)
+    return Bands(kind, (value,))
+
+
+def _check_that_they_fit(table: Table, kind: str, value: float, grid: Grid) -> None:
+    """Bands of one width, or even in log, fill the grid's range, and are not too many."""
+    start, stop = float(grid.wavenumber[0]), float(grid.wavenumber[-1])
+    span = f"{start:.10g} to {stop:.10g} cm-1"
+    if start == stop or (kind == "resolving_power" and start == 0.0):
+        expected = "a grid with start < stop" if start == stop else "a grid with start above 0 cm-1"
+        remedy = None if start == stop else "bands even in log have none at 0; give width or edges"
+        table.faults.add(table.key, "no range for bands", expected=expected, found=span, remedy=remedy)
+        return
+    count = (stop - start) / value if kind == "width" else math.log(stop / start) * value
+    if count > MOST_BANDS:
+        table.faults.add(table.path(kind), "too many bands", expected=f"at most {MOST_BANDS}", found=f"{count:.3g}")
+    elif kind == "width":
+        try:
+            grids.uniform_wavenumbers(start, stop, value)
+        except InputError:
+            remedy = "choose a width that divides the range, or other ends of the grid"
+            expected, found = f"a whole number of widths in {span}", f"{count:.6g} of {value:.10g} cm-1"
+            table.faults.add(table.path(kind), "does not fit the grid", expected=expected, found=found, remedy=remedy)
 
 
 def _edges(table: Table, kind: str, grid: Grid) -> tuple[float, ...]:

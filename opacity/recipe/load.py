@@ -46,31 +46,42 @@ def load_recipe(path: str | Path) -> Recipe:
     path = Path(path)
     text = read_text(path)
     document, lines = parse(path, text)
-    faults = Faults(str(path), lines)
+    root = Table(
+        Faults(str(path), lines), (), document, mixture.SECTIONS if "species" in document else (*SECTIONS, ACCEPT)
+    )
     if "species" in document:
-        root = Table(faults, (), document, mixture.SECTIONS)
-        return _if_faultless(mixture.read_mixture(path, text, root, load_recipe), root)
-    root = Table(faults, (), document, (*SECTIONS, ACCEPT))
+        return _if_faultless(mixture.read_mixture(path, text, root, _load_species), root)
+    return _if_faultless(_of_one_molecule(path, text, root), root)
+
+
+def _load_species(path: Path) -> Recipe | None:
+    """The recipe of one molecule, None for one of several species, which may even name itself."""
+    return None if "species" in parse(path, read_text(path))[0] else load_recipe(path)
+
+
+def _of_one_molecule(path: Path, text: str, root: Table) -> Recipe:
     folder = path.parent
     molecule = read_molecule(root)
     line_lists = read_line_lists(root, folder)
-    grid = read_grid(root, points="cross_section" in document or "k_coefficient" not in document)
-    recipe = Recipe(
+    abundance = read_abundance(root)
+    partition_function = read_partition_function(root, folder, line_lists)
+    broadening, profile = read_broadening(root, folder), read_profile(root)
+    grid = read_grid(root, points="cross_section" in root or "k_coefficient" not in root)
+    return Recipe(
         path=path,
         text=text,
         molecule=molecule,
         line_lists=line_lists,
-        abundance=read_abundance(root),
-        partition_function=read_partition_function(root, folder, line_lists),
-        broadening=read_broadening(root, folder),
-        profile=read_profile(root),
+        abundance=abundance,
+        partition_function=partition_function,
+        broadening=broadening,
+        profile=profile,
         grid=grid,
         band_strengths=read_band_strengths(root),
-        cross_section="cross_section" in document,
+        cross_section="cross_section" in root,
         k_coefficient=read_k_coefficient(root, grid),
         accept_unverified=root.flag(ACCEPT, default=False),
     )
-    return _if_faultless(recipe, root)
 
 
 def _if_faultless(recipe: Recipe, root: Table) -> Recipe:
@@ -83,9 +94,10 @@ def _if_faultless(recipe: Recipe, root: Table) -> Recipe:
 
 
 def _check_tables_wanted(root: Table) -> None:
-    """[cross_section] says that this table is wanted; it has no keys.  One table at least is."""
+    """[cross_section] says that this table is wanted and has no keys.  One table at least is."""
     if "k_coefficient" in root and "cross_section" not in root:
         return
-    values = root.table("cross_section", "an empty section [cross_section]: the table wanted")
+    expected = "an empty section [cross_section], or a section [k_coefficient]: the tables wanted"
+    values = root.table("cross_section", expected)
     if values:
         Table(root.faults, root.path("cross_section"), values, ())

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
@@ -18,8 +19,9 @@ _FRACTION = Bounds(0.0, 1.0, open_low=True)
 _ROUNDING = 1e-9
 
 
-def read_mixture(path: Path, text: str, root: Table, load: Callable[[Path], Recipe]) -> Recipe:
-    """The recipe in `root`; `load` reads those of the species, whose own grids, profiles and tables are left aside.
+def read_mixture(path: Path, text: str, root: Table, load: Callable[[Path], Recipe | None]) -> Recipe:
+    """The recipe in `root`; `load` reads those of the species, whose own grids, profiles and tables are left aside, and
+    has None for a recipe of several species.
 
     Faults are gathered in `root`.  Raises RecipeError for a species' recipe that cannot be read.
     """
@@ -47,7 +49,7 @@ def read_mixture(path: Path, text: str, root: Table, load: Callable[[Path], Reci
     )
 
 
-def _species(root: Table, folder: Path, load: Callable[[Path], Recipe]) -> list[Species]:
+def _species(root: Table, folder: Path, load: Callable[[Path], Recipe | None]) -> list[Species]:
     """The species and their mole fractions; what is not one has none."""
     expected, key = "two or more [[species]] tables, each with recipe and fraction", root.path("species")
     values = root.values["species"]
@@ -61,9 +63,20 @@ def _species(root: Table, folder: Path, load: Callable[[Path], Recipe]) -> list[
         fraction = table.number("fraction", _FRACTION)
         if not name or len(root.faults):
             continue
+        if not os.path.exists(folder / name):
+            remedy = "names are looked for from this recipe's folder"
+            table.faults.add(
+                table.path("recipe"),
+                "no such file",
+                expected="a recipe",
+                found=shown(name),
+                remedy=remedy,
+            )
+            continue
         recipe = load(folder / name)
-        if recipe.species:
+        if recipe is None:
             table.faults.add(table.path("recipe"), "is of several species itself", expected="a recipe of one molecule")
+            continue
         formulas = [other.recipe.molecule.formula for other in found]
         if recipe.molecule.formula in formulas:
             table.faults.add(table.path("recipe"), "a molecule twice", found=recipe.molecule.formula)

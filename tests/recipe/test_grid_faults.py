@@ -151,7 +151,8 @@ def test_faults_of_nodes(faults: Faults, nodes: str, expected: str) -> None:
 
 def test_nodes_beside_axes(faults: Faults) -> None:
     assert faults(("[cross_section]", ""), ("temperature = [300.0", "nodes = [[300, 1]]\ntemperature = [300.0")) == [
-        "co.toml:1: cross_section: missing; expected an empty section [cross_section]: the table wanted",
+        "co.toml:1: cross_section: missing; expected an empty section [cross_section], "
+        "or a section [k_coefficient]: the tables wanted",
         "co.toml:45: grid.temperature: given beside nodes; expected nodes, or temperature and pressure",
         "co.toml:46: grid.pressure: given beside nodes; expected nodes, or temperature and pressure",
     ]

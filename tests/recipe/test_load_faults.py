@@ -45,8 +45,8 @@ ONE_FAULT = [
         "[molecule]",
         "[molecules]",
         "2: molecules: unknown key; expected molecule, line_list, isotopologues, "
-        "partition_function, broadening, profile, grid, cross_section, band_strength or accept_unverified, "
-        'found "molecules"; '
+        "partition_function, broadening, profile, grid, cross_section, k_coefficient, band_strength or "
+        'accept_unverified, found "molecules"; '
         "did you mean molecule?",
     ),
     # isotopologues and partition function
@@ -178,7 +178,8 @@ ONE_FAULT = [
     (
         "[cross_section]",
         "",
-        "1: cross_section: missing; expected an empty section [cross_section]: the table wanted",
+        "1: cross_section: missing; expected an empty section [cross_section], "
+        "or a section [k_coefficient]: the tables wanted",
     ),
     (
         "[cross_section]",
@@ -188,7 +189,7 @@ ONE_FAULT = [
     (
         "[cross_section]",
         "[cross_section]\n[k_coefficient]",
-        "48: k_coefficient: not in this version, which writes cross-section tables only; remove the section",
+        "48: k_coefficient.bands: missing; expected { resolving_power }, { width }, { edges } or { wavelength }",
     ),
     # band strengths
     (
@@ -262,14 +263,13 @@ def test_many_faults_come_at_once_in_the_order_of_the_file(faults: Faults) -> No
         ("uncertainty = 0.007", ""),
     )
     assert [line.split("; ")[0] for line in lines] == [
-        "co.toml:1: cross_section: missing",
         "co.toml:5: molecule.mass: impossible value",
         "co.toml:14: line_list[1].format: unknown value",
         "co.toml:19: line_list[1].referense: unknown key",
         "co.toml:34: broadening.default.H2.exponent: not a number",
         "co.toml:40: profile.plint: unknown key",
         "co.toml:44: grid.temperature[1]: not in rising order",
-        "co.toml:47: k_coefficient: not in this version, which writes cross-section tables only",
+        "co.toml:47: k_coefficient.bands: missing",
         "co.toml:51: band_strength[0].uncertainty: missing",
     ]
 

@@ -59,7 +59,8 @@ def test_commented_parts_load_too(place: Path) -> None:
     text = filled(recipe_template("CO", CO)).replace("name.pf", "partition-function.pf")
     lines = [
         line[2:] if line.startswith(("# [", "# gamma", "# exponent", "# source", "# name", "# range", "# strength",
-                                     "# unit", "# temperature =", "# uncertainty")) else line
+                                     "# unit", "# temperature =", "# uncertainty", "# bands",
+                                     "# g_points", "# transmission_error")) else line
         for line in text.splitlines()
     ]  # fmt: skip
     place.write_text("\n".join(lines))
@@ -67,6 +68,8 @@ def test_commented_parts_load_too(place: Path) -> None:
     assert recipe.line_lists[0].range == (0.0, 9000.0)
     assert recipe.broadening.default["H2"].gamma == 0.07
     assert recipe.band_strengths[0].name == "1-0"
+    assert recipe.k_coefficient is not None
+    assert recipe.k_coefficient.g_points is None
 
 
 @pytest.mark.parametrize("key", ["urls", "hitran"])
