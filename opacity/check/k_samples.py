@@ -60,11 +60,13 @@ class KValues(Nodes, Protocol):
 
 @dataclass(frozen=True)
 class BandSample:
-    """What one band was found to be, largest sizes: `fine_cells` error of transmission and `mean` relative error of the
-    stored cells against line by line; `border` the width in g of the cell in which the part of the band that does not
-    absorb ends, 0 where none does, by which such a cell may be off; `two_layers` of the transmission of two layers; `middle` of the transmission at
-    cell middles of the grid and `middle_mean` relative of the mean there, None without cells; `exact` relative error
-    of the spectrum against the exact sum.
+    """What one band was found to be, largest sizes.
+
+    `fine_cells` error of transmission, and `mean` relative error, of the stored cells against line by line; `border`
+    the width in g of the cell in which the part of the band that does not absorb ends, by which that cell may be off, 0
+    where there is none; `two_layers` error of the transmission of two layers; `middle` of the transmission at cell
+    middles of the grid and `middle_mean` relative of the mean there, None without cells; `exact` relative error of the
+    spectrum against the exact sum.
     """
 
     band: int
