@@ -31,6 +31,7 @@ C2 = 100.0 * constants.h * constants.c / constants.k
 ATM = 1.01325
 
 RECIPE = """\
+accept_unverified = true
 [molecule]
 name = "carbon monoxide"
 formula = "CO"

@@ -121,7 +121,7 @@ def test_threads_of_one_dask_worker_prepare_once(tmp_path, monkeypatch) -> None:
 
     monkeypatch.setattr(cluster, "prepare_process", prepare)
     monkeypatch.setattr(cluster, "_prepared", [])
-    origins = [Origin(tmp_path, tmp_path, tmp_path, name, 1) for name in ("a", "b")]
+    origins = [Origin(tmp_path, tmp_path, tmp_path, name, 1, "cross-section") for name in ("a", "b")]
     with ThreadPoolExecutor(4) as executor:
         list(executor.map(lambda number: cluster._do(origins[0], number), range(4)))
         assert made == origins[:1]
@@ -156,7 +156,7 @@ from pathlib import Path
 from opacity.pipeline.workers import Origin, start_process
 from opacity.tables.atomic import temporary_path
 folder = Path({str(tmp_path)!r})
-start_process(Origin(folder / "none.toml", folder, folder, "", 1))
+start_process(Origin(folder / "none.toml", folder, folder, "", 1, "cross-section"))
 temporary_path(folder).write_bytes(b"x")
 (folder / "other.shard").write_bytes(b"x")
 print("ready", flush=True)
