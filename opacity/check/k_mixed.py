@@ -9,7 +9,7 @@ import numpy as np
 from opacity.grids import FloatArray
 from opacity.k_coefficient.certificate import BandError, BandErrors, NodeErrors
 from opacity.k_coefficient.collapse import CELL_WIDTHS
-from opacity.k_coefficient.transmission import N_COLUMNS, columns_of, transmission
+from opacity.k_coefficient.transmission import N_COLUMNS, columns_of, means_over_g, transmission
 
 
 class MixedErrors:
@@ -47,7 +47,7 @@ def mixed_errors(
     truth, means = np.ones_like(columns), np.zeros(len(k))
     for one, x in zip(cells, fractions, strict=True):
         truth *= transmission(one, CELL_WIDTHS, x * columns)
-        means += x * (one @ CELL_WIDTHS)
+        means += x * means_over_g(one, CELL_WIDTHS)
     shares = np.broadcast_to(weights, k.shape)
     off = np.sum(k * shares, axis=1) - means
     errors = transmission(k, shares, columns) - truth

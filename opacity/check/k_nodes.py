@@ -16,7 +16,7 @@ from opacity.grids import FloatArray
 from opacity.k_coefficient.certificate import BandError, BandErrors, NodeErrors, errors_at_node
 from opacity.k_coefficient.collapse import CELL_WIDTHS
 from opacity.k_coefficient.quadrature import INTERVALS, GPoints, g_points, k_from_cells, points_of_bounds
-from opacity.k_coefficient.transmission import BLACK, COLUMN_A_BAR, N_COLUMNS, THINNEST
+from opacity.k_coefficient.transmission import BLACK, COLUMN_A_BAR, N_COLUMNS, THINNEST, means_over_g
 
 ROUNDING = 4e-7
 """k, and the cells that it is made of, are stored as f4."""
@@ -53,7 +53,7 @@ def at_all_nodes(table: KValues, nodes: list[Node], progress: Callable[[], None]
         expected = k_from_cells(cells, points)
         difference = np.abs(k - expected) / np.maximum(expected, 1e-300)
         found = errors_at_node(k, table.g_weight, cells, pressure)
-        return found, float(np.max(difference)), float(cells @ CELL_WIDTHS @ widths)
+        return found, float(np.max(difference)), float(np.sum(means_over_g(cells, CELL_WIDTHS) * widths))
 
     # HDF5 reads under a lock, so that values are read here, some nodes at a time.
     for first in range(0, len(nodes), _AT_ONCE):

@@ -20,7 +20,7 @@ from opacity.k_coefficient.bands import BandPoints, band_points
 from opacity.k_coefficient.certificate import fine_cell_errors, two_layer_error
 from opacity.k_coefficient.collapse import CELL_BOUNDS, CELL_WIDTHS, fine_cells
 from opacity.k_coefficient.spectra import POINTS_AT_ONCE, BandLines, lines_of_bands, points_of_bands
-from opacity.k_coefficient.transmission import columns_of, transmission
+from opacity.k_coefficient.transmission import columns_of, means_over_g, transmission
 from opacity.recipe.model import Profile
 from opacity.tables import interpolate
 
@@ -155,12 +155,12 @@ def sample_band(
     layers = [(places[a], places[b]) for a, b in pairs]
     at_nodes = sigma[: len(used)]
     widths = points.weights(0) / (edges[1] - edges[0])
-    means = at_nodes[:, points.first[0] : points.last[0]] @ widths
+    means = means_over_g(at_nodes[:, points.first[0] : points.last[0]], widths)
     middle, middle_mean = _at_middles(drawn, band, nu, sigma[len(used) :], points, weights)
     return BandSample(
         band,
         fine_cell_errors(cells, at_nodes, points, pressure)[0],
-        _largest_relative(cells[:, 0] @ CELL_WIDTHS, means),
+        _largest_relative(means_over_g(cells[:, 0], CELL_WIDTHS), means),
         _border(at_nodes[:, points.first[0] : points.last[0]], widths),
         two_layer_error(k, weights[None], cells, at_nodes, points, pressure, layers).largest,
         middle,
@@ -197,12 +197,12 @@ def _at_middles(
     k, cells = drawn.k_between[:, band], fine_cells(sigma, nu, points.edges)[:, 0]
     columns = columns_of(cells, np.array([pressure for _, pressure in drawn.middles]))
     errors = transmission(k, weights, columns) - transmission(cells, CELL_WIDTHS, columns)
-    return float(np.max(np.abs(errors))), _largest_relative(k @ weights, cells @ CELL_WIDTHS)
+    return float(np.max(np.abs(errors))), _largest_relative(means_over_g(k, weights), means_over_g(cells, CELL_WIDTHS))
 
 
 def _border(sigma: FloatArray, shares: FloatArray) -> float:
     """Width of the widest cell that lies half in what is clear of spectra (n_node, n_nu) with `shares` of the band."""
-    clear = (sigma == 0.0) @ shares
+    clear = means_over_g((sigma == 0.0).astype(np.float64), shares)
     cells = np.searchsorted(CELL_BOUNDS, clear[(clear > 0.0) & (clear < 1.0)], side="right") - 1
     return float(np.max(CELL_WIDTHS[np.clip(cells, 0, CELL_WIDTHS.size - 1)], initial=0.0))
 

@@ -16,7 +16,15 @@ from numpy.typing import NDArray
 from opacity.grids import FloatArray
 from opacity.k_coefficient.bands import BandPoints
 from opacity.k_coefficient.collapse import CELL_WIDTHS
-from opacity.k_coefficient.transmission import BLACK, COLUMN_A_BAR, N_COLUMNS, THINNEST, columns_of, transmission
+from opacity.k_coefficient.transmission import (
+    BLACK,
+    COLUMN_A_BAR,
+    N_COLUMNS,
+    THINNEST,
+    columns_of,
+    means_over_g,
+    transmission,
+)
 
 _SMALLEST = 1e-12
 _BINS_A_DECADE = 230
@@ -90,7 +98,7 @@ def errors_at_node(k: FloatArray, weights: FloatArray, cells: FloatArray, pressu
     columns = columns_of(cells, np.full(len(k), pressure))
     shares = np.broadcast_to(weights, k.shape)
     errors = transmission(k, shares, columns) - transmission(cells, CELL_WIDTHS, columns)
-    truth = cells @ CELL_WIDTHS
+    truth = means_over_g(cells, CELL_WIDTHS)
     mean = np.sum(k * shares, axis=1) - truth
     return NodeErrors(columns, errors, np.divide(mean, truth, out=np.zeros_like(truth), where=truth > 0.0))
 
@@ -192,7 +200,8 @@ def two_layer_error(
 
 def _through(k: FloatArray, weights: FloatArray, columns: FloatArray) -> FloatArray:
     """Transmissions (n_column,) through layers k (n_layer, n) of `columns` (n_layer, n_column)."""
-    return np.array([np.exp(-(k.T @ column)) @ weights for column in columns.T])
+    depths = (np.sum(k * column[:, None], axis=0) for column in columns.T)
+    return np.array([np.sum(np.exp(-depth) * weights) for depth in depths])
 
 
 def _shares(points: BandPoints, band: int) -> FloatArray:

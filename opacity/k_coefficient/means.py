@@ -27,7 +27,7 @@ def planck_mean(sigma: FloatArray, wavenumber: FloatArray, temperature: float) -
     """
     spectra = checked_spectra(sigma, wavenumber)
     weights = _weights(wavenumber, temperature, rosseland=False)
-    return np.asarray((spectra @ weights).reshape(np.shape(sigma)[:-1]))
+    return np.asarray(np.sum(spectra * weights, axis=-1).reshape(np.shape(sigma)[:-1]))
 
 
 def rosseland_mean(sigma: FloatArray, wavenumber: FloatArray, temperature: float) -> FloatArray:
@@ -38,7 +38,7 @@ def rosseland_mean(sigma: FloatArray, wavenumber: FloatArray, temperature: float
     spectra = checked_spectra(sigma, wavenumber)
     weights = _weights(wavenumber, temperature, rosseland=True)
     with np.errstate(divide="ignore", over="ignore"):
-        resistance = np.where(weights > 0.0, 1.0 / spectra, 0.0) @ weights
+        resistance = np.sum(np.where(weights > 0.0, 1.0 / spectra, 0.0) * weights, axis=-1)
     return np.asarray((1.0 / resistance).reshape(np.shape(sigma)[:-1]))
 
 

@@ -30,7 +30,8 @@ def transmission(k: FloatArray, weights: FloatArray, columns: FloatArray) -> Flo
 
 def means_over_g(k: FloatArray, weights: FloatArray) -> FloatArray:
     """Means of rows (n_row, n) over g, (n_row,); `weights` (n,), or (n_row, n) where each row has its own."""
-    return np.asarray(k @ weights if weights.ndim == 1 else np.sum(k * weights, axis=-1))
+    # Not by the matrix product, whose last bits may depend on the threads that BLAS gets.
+    return np.asarray(np.sum(k * weights, axis=-1))
 
 
 def columns_of(

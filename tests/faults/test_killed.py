@@ -227,6 +227,6 @@ def test_a_worker_that_cannot_start_says_why(tmp_path: Path, recipe: Path) -> No
 
     loaded = load_recipe(recipe)
     units = parted(loaded, load_inputs(loaded).lines, "")
-    origin = Origin(recipe, tmp_path, tmp_path, "of other inputs", 2_000_000_000)
+    origin = Origin(recipe, tmp_path, tmp_path, "of other inputs", 2_000_000_000, "cross-section")
     with pytest.raises(ResourceError, match=r"^[^\n]*co\.toml: the recipe or its files changed while the build ran; "):
         in_processes(origin, units[:2], 1, lambda unit: None)
