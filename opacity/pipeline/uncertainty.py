@@ -1,0 +1,133 @@
+"""The uncertainty that a recipe's line lists state of themselves, by band and node of its tables."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from concurrent.futures import Executor, ThreadPoolExecutor
+from contextlib import nullcontext
+from pathlib import Path
+from typing import Any, Protocol
+
+import numpy as np
+
+from opacity.check.uncertainty import UncertaintySums, bands_of
+from opacity.cross_sections.mixture import mixed
+from opacity.line_list.exomol.dataset import OpenDataSet, sort_files
+from opacity.line_list.exomol.uncertainty import state_errors
+from opacity.line_list.model import LineList
+from opacity.line_list.uncertainty import (
+    MOST_RECORDS,
+    StatedUncertainty,
+    TooManyRecordsError,
+    catalogue_errors,
+    record_codes,
+)
+from opacity.pipeline.listed import ListedLines, open_listed
+from opacity.pipeline.sources import DEFAULT_MEMORY
+from opacity.recipe.model import Recipe
+
+CODES = (
+    "codes of the records (Rothman et al. 2005, JQSRT 96, 139, table 5, from memory), the upper end of each class;"
+    " 20 % or more, estimates and defaults are not stated"
+)
+ERRORS = "errors of the catalogue's positions"
+STATES = "uncertainties of the states' energies, in quadrature"
+NO_CODES = "no column of codes in the list"
+NO_STATES = "no definition names a column of uncertainties of states"
+TOO_MANY = f"not looked at: more than {MOST_RECORDS:,} records"
+
+
+class _Says(Protocol):
+    def of(self, lines: LineList) -> StatedUncertainty: ...
+
+
+class Statements:
+    """What the files of one recipe's lists state, each read when a line of it is first met."""
+
+    def __init__(self, recipe: Recipe, listed: ListedLines) -> None:
+        self.sources: dict[str, None] = {}
+        self._recipe, self._places = recipe, listed.places
+        self._known: dict[object, _Says | None] = {}
+        self._room = MOST_RECORDS
+
+    def of(self, lines: LineList) -> StatedUncertainty:
+        """What is stated of some lines, by what their files say."""
+        stated = StatedUncertainty.nothing(len(lines))
+        for number, path, which in self._by_file(lines):
+            said = self._said(number, path)
+            if said is not None:
+                stated.put(which, said.of(lines.select(which)))
+        return stated
+
+    def _by_file(self, lines: LineList) -> Iterator[tuple[int, Path, np.ndarray[Any, np.dtype[np.intp]]]]:
+        """List, file and lines; the files of a list in ExoMol format, which may be many, are taken together."""
+        groups: dict[object, tuple[int, int, Path]] = {}
+        group = np.empty(len(lines.files), dtype=np.int64)
+        for place, name in enumerate(lines.files):
+            number, path = self._places[name]
+            key = number if self._recipe.line_lists[number].format == "exomol" else path
+            group[place] = groups.setdefault(key, (len(groups), number, path))[0]
+        of_line = group[lines.file]
+        order = np.argsort(of_line, kind="stable")
+        ends = np.searchsorted(of_line[order], np.arange(len(groups) + 1))
+        for place, number, path in groups.values():
+            if ends[place] < ends[place + 1]:
+                yield number, path, order[ends[place] : ends[place + 1]]
+
+    def _said(self, number: int, path: Path) -> _Says | None:
+        key = number if self._recipe.line_lists[number].format == "exomol" else path
+        if key not in self._known:
+            try:
+                self._known[key], source = self._read(number, path)
+            except TooManyRecordsError:
+                self._known[key], source = None, TOO_MANY
+            self.sources[source] = None
+        return self._known[key]
+
+    def _read(self, number: int, path: Path) -> tuple[_Says | None, str]:
+        recipe, source = self._recipe, self._recipe.line_lists[number]
+        if source.format == "exomol":
+            given = recipe.molecule.formula, source.isotopologue or "", recipe.broadening.files
+            data = OpenDataSet(sort_files(source.paths, str(recipe.path), *given), recipe.molecule.mass)
+            stated = data.definition is not None and data.definition.has_uncertainty
+            return (state_errors(data.states), STATES) if stated else (None, NO_STATES)
+        if source.format == "catalogue":
+            errors = catalogue_errors(path, self._room)
+            self._room -= errors.error.size
+            return errors, ERRORS
+        codes = record_codes(path, source.format, self._room)
+        self._room -= 0 if codes is None else codes.packed.size
+        return (None, NO_CODES) if codes is None else (codes, CODES)
+
+
+def stated_uncertainty(
+    recipe: Recipe,
+    tables: Path,
+    hashes: frozenset[str],
+    memory: int = DEFAULT_MEMORY,
+    quiet: bool = False,
+    workers: int = 1,
+) -> dict[str, Any]:
+    """The relative uncertainty of a table's bands at its nodes by its lists' own statements, as plain values for JSON.
+
+    The lists, whose files have these sha256, are opened again, with line stores beside the `tables`, and each file of
+    records is read once more for its codes; an ingest that is missing takes up to `memory` bytes.  `workers` threads do nodes side by side, with the same result.
+    Raises OpacityError of the kind that fits where a list can no longer be read.
+    """
+    sums, sources = UncertaintySums(bands_of(recipe), recipe.grid.node_list()), dict[str, None]()
+    parts = [(one.recipe, one.fraction) for one in recipe.species] or [(recipe, 1.0)]
+    with ThreadPoolExecutor(workers) if workers > 1 else nullcontext() as executor:
+        for one, fraction in parts:
+            with open_listed(one, tables, memory, quiet, hashes) as listed:
+                said = Statements(one, listed)
+                _add(sums, listed, said, fraction, executor)
+                sources |= said.sources
+    return {**sums.figures(), "source": "; ".join(sources) or "no line in any band"}
+
+
+def _add(
+    sums: UncertaintySums, listed: ListedLines, said: Statements, fraction: float, executor: Executor | None
+) -> None:
+    lower, upper = min(low for low, _ in sums.bands), max(high for _, high in sums.bands)
+    for lines in listed.stretches(lower, upper):
+        sums.add(mixed([(listed.prepare(lines), fraction)]), said.of(lines), executor)
