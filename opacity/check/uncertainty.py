@@ -10,9 +10,9 @@ table's abundances, u the stated relative uncertainty of a line's intensity, in 
 - `position` is sum S v / h / sum S, v the uncertainty of the position and h the Voigt half-width (HWHM) at the node.
 
 Each sum is of the lines of which the list states that uncertainty; `not_stated`, `width_not_stated` and
-`position_not_stated` are the shares of the band's strength of the others.  Of a mixture of gases a width is stated where
-it is for every gas that widens the line.  A band has the lines whose unshifted wavenumber lies in it, ends included.
-Uncertainties of temperature exponents, pressure shifts and partition functions are not in it.
+`position_not_stated` are the shares of the band's strength of the others.  Of a mixture of gases a width is stated
+where it is for every gas that widens the line.  A band has the lines whose unshifted wavenumber lies in it, ends
+included.  Uncertainties of temperature exponents, pressure shifts and partition functions are not in it.
 """
 
 from __future__ import annotations
@@ -58,7 +58,7 @@ class UncertaintySums:
         self._profiles = [np.zeros((len(bands), 4)) for _ in nodes]
 
     def add(self, lines: PreparedLines, stated: StatedUncertainty, executor: Executor | None = None) -> None:
-        """Add lines, sorted by wavenumber, and what is stated of them; nodes side by side in an executor's threads."""
+        """Add lines, sorted by wavenumber, and what is stated of them; temperatures side by side in threads."""
         nu = lines.wavenumber
         ends = np.array(
             [[np.searchsorted(nu, low, "left"), np.searchsorted(nu, high, "right")] for low, high in self.bands],

@@ -56,7 +56,7 @@ class Statements:
         for number, path, which in self._by_file(lines):
             said = self._said(number, path)
             if said is not None:
-                stated.put(which, said.of(lines.select(which)))
+                stated.put(which, said.of(lines if which.size == len(lines) else lines.select(which)))
         return stated
 
     def _by_file(self, lines: LineList) -> Iterator[tuple[int, Path, np.ndarray[Any, np.dtype[np.intp]]]]:
@@ -111,8 +111,9 @@ def stated_uncertainty(
     """The relative uncertainty of a table's bands at its nodes by its lists' own statements, as plain values for JSON.
 
     The lists, whose files have these sha256, are opened again, with line stores beside the `tables`, and each file of
-    records is read once more for its codes; an ingest that is missing takes up to `memory` bytes.  `workers` threads do nodes side by side, with the same result.
-    Raises OpacityError of the kind that fits where a list can no longer be read.
+    records is read once more for its codes; an ingest that is missing takes up to `memory` bytes.  `workers` threads
+    do temperatures side by side, with the same result.  Raises OpacityError of the kind that fits where a list can no
+    longer be read.
     """
     sums, sources = UncertaintySums(bands_of(recipe), recipe.grid.node_list()), dict[str, None]()
     parts = [(one.recipe, one.fraction) for one in recipe.species] or [(recipe, 1.0)]
