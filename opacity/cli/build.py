@@ -150,7 +150,7 @@ def _tell(made: BuildResult, quiet: bool) -> None:
 
 
 def print_results(rows: Iterable[Any], figures: Mapping[str, Any]) -> None:
-    """The results of a table's checks, what interpolating costs, and apart from these what its lists say of themselves."""
+    """The results of a table's checks, what interpolating costs, and apart from these what its lists state."""
     print(text.results_table(rows))
     between, certificate, stated = (figures.get(key) for key in ("interpolation", "certificate", "uncertainty"))
     if between:

@@ -103,7 +103,7 @@ def uncertainty_lines(stated: Mapping[str, Any]) -> list[str]:
     """What the line lists say of their own uncertainty, in words: ranges over all bands and nodes."""
     together, apart = _span(stated["strength_correlated"]), _span(stated["strength_uncorrelated"])
     if together is None:
-        strengths = "strengths is not stated"
+        strengths = "strengths: not stated"
     else:
         without = _most(stated["not_stated"])
         strengths = f"strengths {together} if all lines err together, {apart} if each for itself{without}"

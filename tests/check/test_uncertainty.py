@@ -6,6 +6,7 @@ import math
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -160,7 +161,7 @@ def test_bands_are_those_named_or_ten_parts(make_case: Callable, small):
     parts = bands_of(small.recipe)
     assert len(parts) == 10
     assert (parts[0][0], parts[-1][1]) == (2145.0, 2149.0)
-    assert all(a[1] == b[0] for a, b in zip(parts[:-1], parts[1:], strict=True))
+    assert all(a[1] == b[0] for a, b in pairwise(parts))
     row = '[[band_strength]]\nname = "{}"\nrange = {}\nstrength = 1e-17\nunit = "cm/molecule"\ntemperature = 296.0\n'
     rest = 'uncertainty = 0.1\nsource = "invented"\n'
     text = "\n".join(row.format(*one) + rest for one in (("a", "[2145.5, 2147.0]"), ("b", "[2146.0, 2149.0]")))
