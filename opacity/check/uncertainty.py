@@ -100,6 +100,13 @@ class UncertaintySums:
             "position_not_stated": _rest(with_position, total),
         }
 
+    def nothing(self) -> dict[str, Any]:
+        """The figures of lists that state nothing of any line, whether a band has lines or not."""
+        shape = len(self.bands), len(self.nodes)
+        found = self.figures()
+        whole = {name: np.ones(shape).tolist() for name in found if name.endswith("not_stated")}
+        return {**found, **whole}
+
 
 def relative_width(lines: PreparedLines, stated: StatedUncertainty, temperature: float) -> FloatArray:
     """Relative uncertainty of each line's half-width in its mixture at a temperature (K), (n_lines,), NaN where one

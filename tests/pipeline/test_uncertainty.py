@@ -252,6 +252,25 @@ def test_species_count_by_their_strength(tmp_path: Path):
         assert_is(table.checks["uncertainty"], lines)
 
 
+def test_no_line_is_read_for_lists_that_cannot_state_anything(
+    stated: Build, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+):
+    header = json.loads((SAMPLES / "carbon-monoxide.header").read_text())
+    del header["position"]["ierr"]
+    (tmp_path / "co.header").write_text(json.dumps(header))
+    shutil.copy(SAMPLES / "carbon-monoxide.data", tmp_path / "co.data")
+
+    def never(*_: object) -> None:
+        raise AssertionError
+
+    monkeypatch.setattr(uncertainty_module.ListedLines, "stretches", never)
+    found = stated(LIST.format("hapi", '"co.data"'))
+    assert found["source"] == uncertainty_module.NO_CODES
+    for name, rows in found.items():
+        if name not in ("of", "source", "bands", "nodes"):
+            assert rows == [[1.0 if name.endswith("not_stated") else None] * 4] * 10
+
+
 @pytest.fixture
 def opacity_command(request: pytest.FixtureRequest) -> Callable:
     return request.getfixturevalue("opacity")
