@@ -150,11 +150,16 @@ def _tell(made: BuildResult, quiet: bool) -> None:
 
 
 def print_results(rows: Iterable[Any], figures: Mapping[str, Any]) -> None:
-    """The results of a table's checks, and what interpolating between its nodes costs."""
+    """The results of a table's checks, what interpolating costs, and apart from these what its lists state."""
     print(text.results_table(rows))
-    between, certificate = figures.get("interpolation"), figures.get("certificate")
+    between, certificate, stated = (figures.get(key) for key in ("interpolation", "certificate", "uncertainty"))
     if between:
         print(text.wrapped(text.interpolation_line(between)))
     if certificate:
         for line in text.certificate_lines(certificate):
             print(text.wrapped(line))
+    if stated:
+        print()
+        print("the list's own uncertainty, by band and node; it is no check of the table's numbers:")
+        for line in text.uncertainty_lines(stated):
+            print(text.wrapped(f"    {line}"))

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from opacity.cli.text import notes
+from opacity.cli.text import notes, uncertainty_lines
 from opacity.errors import TableError, problem
 from opacity.tables.k_read import KCoefficientTable
 from opacity.tables.layout import F4_SMALLEST
@@ -98,6 +98,9 @@ def _lines(table: Table | KCoefficientTable, of_its_kind: list[tuple[str, str]])
         ("built by", f"{program.get('name', '')} {program.get('version', '')}"),
     ]
     lines += [(row["check"], f"{row['verdict']}: {row['detail']}") for row in checks.get("results", [])]
+    if checks.get("uncertainty"):
+        lines += [("list's own", f"uncertainty of {one}") for one in uncertainty_lines(checks["uncertainty"])]
+        lines.append(("stated by", checks["uncertainty"]["source"]))
     lines += [("warning", one) for one in checks.get("warnings", [])]
     lines += notes({"left_out": {}, "notes": {}, **checks.get("ledger", {})}, checks.get("assumptions", []))
     lines += [("cite", one) for one in provenance.get("references", [])]

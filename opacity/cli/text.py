@@ -99,6 +99,41 @@ def certificate_lines(certificate: Mapping[str, Any]) -> list[str]:
     return lines
 
 
+def uncertainty_lines(stated: Mapping[str, Any]) -> list[str]:
+    """What the line lists say of their own uncertainty, in words: ranges over all bands and nodes."""
+    together, apart = _span(stated["strength_correlated"]), _span(stated["strength_uncorrelated"])
+    if together is None:
+        strengths = "strengths: not stated"
+    else:
+        without = _most(stated["not_stated"])
+        strengths = f"strengths {together} if all lines err together, {apart} if each for itself{without}"
+    found = []
+    for name, words in (("width", "half-widths {}"), ("position", "positions {} of a half-width")):
+        span = _span(stated[name])
+        if span is not None:
+            found.append(words.format(span) + _most(stated[f"{name}_not_stated"]))
+    return [strengths, *(["; ".join(found)] if found else [])]
+
+
+def _values(rows: Iterable[Iterable[float | None]]) -> list[float]:
+    return [value for row in rows for value in row if value is not None]
+
+
+def _span(rows: Iterable[Iterable[float | None]]) -> str | None:
+    """From the smallest to the largest value in per cent, None where there is none."""
+    values = _values(rows)
+    if not values:
+        return None
+    low, high = percent(min(values)), percent(max(values))
+    return high if low == high else f"{low.removesuffix(' %')} to {high}"
+
+
+def _most(rows: Iterable[Iterable[float | None]]) -> str:
+    """For how much of a band's strength nothing is stated, at worst."""
+    most = max(_values(rows), default=0.0)
+    return f" (not stated for up to {percent(most)} of a band)" if most > 0.0 else ""
+
+
 def size(n_bytes: float | None) -> str:
     """A number of bytes for people."""
     if n_bytes is None:

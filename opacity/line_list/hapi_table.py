@@ -51,6 +51,7 @@ class _Header:
     width: int
     extra: tuple[str, ...]
     separator: bytes
+    codes_column: int | None
 
 
 def is_hapi(path: Path) -> bool:
@@ -77,6 +78,14 @@ def broadeners_of(path: Path) -> frozenset[str]:
     header = _read_header(path)
     matches = (_COLUMN.fullmatch(name) for name in (*header.layout, *(extra.lower() for extra in header.extra)))
     return frozenset(match[2] for match in matches if match and match[1] == "gamma")
+
+
+def hapi_codes_column(path: Path) -> int | None:
+    """Where a hapi table's six codes of uncertainty (its column `ierr`) start in the record, None where it has none.
+
+    Raises LineListError as `hapi_parser`.
+    """
+    return _read_header(path).codes_column
 
 
 def _parse(path: Path, header: _Header, chunk: TextChunk) -> ParsedColumns:
@@ -157,7 +166,9 @@ def _interpret(header: dict[str, Any]) -> _Header:
         raise ValueError(f"column named twice: {', '.join(twice)}")
     layout = {known: span for name, span in spans.items() if (known := _internal_name(name)) is not None}
     width = max(stop for _, stop in spans.values())
-    return _Header(layout, spans["local_iso_id"][0], width, extra, separator)
+    start, stop = spans.get("ierr", (0, 0))
+    codes = start if stop - start == 6 else None
+    return _Header(layout, spans["local_iso_id"][0], width, extra, separator, codes)
 
 
 def _check_spans(spans: dict[str, tuple[int, int]]) -> None:

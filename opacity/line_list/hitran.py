@@ -30,6 +30,8 @@ LAYOUT = {
     "lower_weight": (153, 160),
 }
 CODE_BYTE = 2
+CODES_COLUMN = 127
+"""The first of six codes of uncertainty: position, intensity, half-widths by air and self, exponent, shift."""
 
 
 def hitran_parser(path: Path) -> Callable[[TextChunk], ParsedColumns]:

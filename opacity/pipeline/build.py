@@ -27,6 +27,7 @@ from opacity.pipeline.kinds import CROSS_SECTION, shards_of, table_name, units_o
 from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit
 from opacity.pipeline.progress import Progress
 from opacity.pipeline.sources import DEFAULT_MEMORY
+from opacity.pipeline.uncertainty import stated_uncertainty
 from opacity.pipeline.units import Unit
 from opacity.pipeline.workers import Origin, Work, WorkUnit, in_processes, in_threads
 from opacity.recipe.model import Recipe
@@ -171,6 +172,11 @@ class _Job:
     def work(self) -> Work:
         return Work(self.recipe, self.inputs.lines, self.shards)
 
+    def stated(self) -> dict[str, Any]:
+        """What the lists say of their own uncertainty."""
+        hashes = self.inputs.fingerprint.hashes
+        return stated_uncertainty(self.recipe, self.folder, hashes, self.memory, self.quiet, self.plan.workers)
+
     @property
     def origin(self) -> Origin:
         return Origin(
@@ -261,7 +267,7 @@ def _put_together(job: _Job, units: Units, still_ours: Callable[[], None]) -> di
     cells = ShardCells(bands, job.shards, nodes, band_edges(job.recipe).size - 1, job.work.do)
     inputs, plan = job.inputs, job.plan
     given = (inputs.provenance, plan.warnings, plan.workers, job.quiet)
-    return assemble_k(KJob(job.path, job.recipe, inputs.lines, inputs.seed, *given), cells, still_ours)
+    return assemble_k(KJob(job.path, job.recipe, inputs.lines, inputs.seed, *given, job.stated), cells, still_ours)
 
 
 def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]) -> dict[str, Any]:
@@ -293,8 +299,9 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
     def check(table: Assembly) -> dict[str, Any]:
         with Progress("checks", len(nodes), "nodes", job.quiet) as progress:
             report = run_checks(table, recipe, job.inputs.lines, job.inputs.seed, progress.step, job.plan.workers)
+        beside = {"uncertainty": job.stated(), "warnings": warnings, "summation": _summation(recipe, tiles)}
         still_ours()
-        return {**report.figures, "warnings": warnings, "summation": _summation(recipe, tiles)}
+        return {**report.figures, **beside}
 
     shards = _shards(job, units, read_shard)
     return assemble_table(job.path, frame, stored_type_of(extremes), shards, check, job.plan.workers)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import contextlib
 from collections.abc import Iterator
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -13,59 +13,17 @@ import numpy as np
 from opacity.arguments import as_positive, shown
 from opacity.check.explain import Explanation, judge_value, point_of, weigh
 from opacity.check.open_check import require_same_recipe
-from opacity.cross_sections.prepare import PreparedLines, abundance_factors, prepare
-from opacity.cross_sections.source import ListInMemory
 from opacity.errors import InputError, TableError, problem
-from opacity.line_list.exomol.dataset import sort_files
-from opacity.line_list.model import LineList
-from opacity.line_list.read import merge
-from opacity.line_store.store import LineStore
 from opacity.pipeline.fingerprint import fingerprint
-from opacity.pipeline.inputs import choices_of
-from opacity.pipeline.open_lists import KEYS, OpenList, located, open_list
+from opacity.pipeline.listed import ListedLines, open_listed
 from opacity.pipeline.recheck import recipe_of_log
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.pipeline.trace import trace
 from opacity.recipe.load import load_recipe
-from opacity.recipe.model import LineListSource, Recipe
+from opacity.recipe.model import Recipe
 from opacity.tables.read import Table, open_table
 
 MOST_LINES = 1000
-
-
-@dataclass(frozen=True)
-class ListedLines:
-    """The lines of a recipe's lists, by window, each with a name of its file that `places` knows.
-
-    `places` gives the number of the list and the path; `choices` are the recipe's, as arguments of `prepare`.
-    """
-
-    recipe: Recipe
-    lists: tuple[OpenList, ...]
-    choices: dict[str, Any]
-    names: tuple[tuple[str, ...], ...]
-    places: dict[str, tuple[int, Path]]
-
-    def count(self, lower: float, upper: float) -> int:
-        """How many lines lie between two wavenumbers (cm-1), before any is left out for its isotopologue."""
-        return sum(one.windows.count(lower, upper) for one in self.lists)
-
-    def window(self, lower: float, upper: float) -> LineList:
-        """Those lines, less those of isotopologues that the mixture has none of."""
-        found = [
-            replace(one.windows.window(lower, upper), files=names)
-            for one, names in zip(self.lists, self.names, strict=True)
-        ]
-        # The selection drops isotopologues that have no line here.
-        lines = merge(found).select(slice(None))
-        with located(self.recipe, KEYS):
-            factors = abundance_factors(lines.isotopologues, lines.basis, self.choices["abundance"], lines.dropped)
-        return lines.select(np.array(factors or [0.0])[lines.isotopologue] > 0.0)
-
-    def prepare(self, lines: LineList) -> PreparedLines:
-        """The lines made ready, all of them and in their order."""
-        with located(self.recipe, KEYS):
-            return prepare(lines, **self.choices)
 
 
 @contextlib.contextmanager
@@ -77,32 +35,8 @@ def listed_lines(table: Table, recipe: Recipe, quiet: bool = True) -> Iterator[L
         raise InputError(problem(recipe.path, what, remedy=remedy))
     origin = fingerprint(recipe)
     _require_same_files(table, recipe, origin.content)
-    with contextlib.ExitStack() as stack:
-        lists = []
-        for number in range(len(recipe.line_lists)):
-            one = open_list(recipe, number, table.path.parent, DEFAULT_MEMORY, quiet, origin.hashes)
-            if isinstance(one.windows, LineStore):
-                stack.callback(one.windows.close)
-            lists.append(one)
-        names: list[tuple[str, ...]] = []
-        places: dict[str, tuple[int, Path]] = {}
-        for number, (source, one) in enumerate(zip(recipe.line_lists, lists, strict=True)):
-            paths = _paths(recipe, source, one)
-            # Files of several folders may have one name: numbers keep them apart.
-            names.append(tuple(f"{number}:{k}" for k in range(len(paths))))
-            places |= {name: (number, path) for name, path in zip(names[-1], paths, strict=True)}
-        yield ListedLines(recipe, tuple(lists), choices_of(recipe, lists), tuple(names), places)
-
-
-def _paths(recipe: Recipe, source: LineListSource, one: OpenList) -> list[Path]:
-    """The paths that the numbers of files in a list's lines stand for."""
-    if isinstance(one.windows, ListInMemory):
-        by_name = {str(path): path for path in source.paths}
-        return [by_name[name] for name in one.windows.lines.files]
-    if source.format != "exomol":
-        return list(source.paths)
-    given = recipe.molecule.formula, source.isotopologue or "", recipe.broadening.files
-    return list(sort_files(source.paths, str(recipe.path), *given).transitions)
+    with open_listed(recipe, table.path.parent, DEFAULT_MEMORY, quiet, origin.hashes) as listed:
+        yield listed
 
 
 def _require_same_files(table: Table, recipe: Recipe, content: dict[str, Any]) -> None:

@@ -95,7 +95,10 @@ class _ByNode:
 
 @dataclass(frozen=True)
 class KJob:
-    """What a table is put together from: the recipe's `wanted` table, its lines, and what goes in as it is."""
+    """What a table is put together from: the recipe's `wanted` table, its lines, and what goes in as it is.
+
+    `stated` gives what the lists say of their own uncertainty.
+    """
 
     path: Path
     recipe: Recipe
@@ -105,6 +108,7 @@ class KJob:
     warnings: tuple[str, ...]
     workers: int
     quiet: bool
+    stated: Callable[[], dict[str, Any]]
 
 
 def assemble_k(job: KJob, cells: ShardCells, still_ours: Callable[[], None]) -> dict[str, Any]:
@@ -145,8 +149,9 @@ def assemble_k(job: KJob, cells: ShardCells, still_ours: Callable[[], None]) -> 
         count = int(np.prod(cells.nodes))
         with Progress("checks", count, "nodes", job.quiet) as progress:
             report = run_k_checks(written, recipe, job.source, job.seed, chosen, progress.step, job.workers)
+        beside = {"uncertainty": job.stated(), "warnings": warnings, "spectra": _spectra(recipe, spectra)}
         still_ours()
-        return {**report.figures, "warnings": warnings, "spectra": _spectra(recipe, spectra)}
+        return {**report.figures, **beside}
 
     return write_k_table(job.path, table, check)
 

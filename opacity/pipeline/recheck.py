@@ -111,7 +111,9 @@ def _again(
     with Progress("checks", nodes, "nodes", quiet) as progress:
         chosen = inputs.seed if seed is None else seed
         report = recheck(table, recipe, inputs.lines, chosen, progress.step, allowed_cpus())
-    report = CheckReport(report.results, {**report.figures, **_unverified(table)})
+    # What the lists say of themselves is no matter of the table's numbers: it stays as the build found it.
+    stated = {key: table.checks[key] for key in ("uncertainty",) if key in table.checks}
+    report = CheckReport(report.results, {**report.figures, **stated, **_unverified(table)})
     return report, f"recomputed from {recipe.path} with seed {chosen}"
 
 
