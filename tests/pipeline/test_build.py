@@ -14,7 +14,7 @@ import pytest
 
 from opacity.cross_sections.exact import exact_spectrum
 from opacity.errors import ResourceError
-from opacity.pipeline import build as build_module
+from opacity.pipeline import folders as folders_module
 from opacity.pipeline import units as units_module
 from opacity.pipeline.build import Crew, build_table
 from opacity.pipeline.inputs import load_inputs
@@ -85,13 +85,13 @@ def test_the_bits_do_not_depend_on_workers_time_or_folder(write_recipe, tmp_path
     for workers, folder in ((1, "a"), (2, "b"), (5, "c")):
         if hashes:
             time.sleep(0.6)  # HDF5 can keep whole seconds: three builds are never within one
-        monkeypatch.setattr(build_module.platform, "node", lambda name=folder: f"host {name}")
+        monkeypatch.setattr(folders_module.platform, "node", lambda name=folder: f"host {name}")
         hashes.add(sha256(built(path, tmp_path / folder / "deep", workers=workers).table))
     assert len(hashes) == 1
 
 
 def test_the_table_names_neither_folder_nor_host(write_recipe, tmp_path, monkeypatch):
-    monkeypatch.setattr(build_module.platform, "node", lambda: "a-host-of-this-name")
+    monkeypatch.setattr(folders_module.platform, "node", lambda: "a-host-of-this-name")
     path = write_recipe(wavenumber=SHORT)
     made = built(path, tmp_path / "a-folder-of-this-name")
     with open_table(made.table) as table:
