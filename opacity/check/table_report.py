@@ -108,8 +108,8 @@ def table_report(table: AnyTable, report: CheckReport, basis: str, evidence: Evi
 
 def _gathered(table: AnyTable, report: CheckReport, basis: str, evidence: Evidence | None) -> TableReport:
     figures, provenance = report.figures, table.provenance
-    outcome, verdict = _verdict(report.results)
     bands, other_rows = _bands(table, report, evidence)
+    outcome, verdict = _verdict(report.results, other_rows)
     ledger = figures.get("ledger", {})
     return TableReport(
         table=str(table.path),
@@ -140,20 +140,23 @@ def _gathered(table: AnyTable, report: CheckReport, basis: str, evidence: Eviden
     )
 
 
-def _verdict(rows: Sequence[CheckResult]) -> tuple[str, str]:
-    """The word that marks a table's checks, and the sentence."""
-    counts = {word: sum(row.verdict == word for row in rows) for word in (AGREES, DIFFERS, CANNOT_JUDGE)}
-    if counts[DIFFERS]:
-        verb = "differs" if counts[DIFFERS] == 1 else "differ"
-        rest = f"{counts[AGREES]} agree, {counts[CANNOT_JUDGE]} cannot judge"
-        words = f"{counts[DIFFERS]} of {len(rows)} checks {verb} ({rest}): do not use this table before you know why."
-        return DIFFERS, words
-    if counts[CANNOT_JUDGE]:
-        return (
-            CANNOT_JUDGE,
-            f"{counts[AGREES]} of {len(rows)} checks agree, none differs; {counts[CANNOT_JUDGE]} cannot judge.",
-        )
-    return AGREES, f"All {len(rows)} checks agree." if len(rows) > 1 else "The one check, of integrity, agrees."
+def _verdict(rows: Sequence[CheckResult], others: Sequence[CheckResult]) -> tuple[str, str]:
+    """The word that marks a table's checks, and the sentence; other published bands are told and not counted."""
+    agree, differ, open_ = (_number_of(rows, word) for word in (AGREES, DIFFERS, CANNOT_JUDGE))
+    beside = ""
+    if _number_of(others, DIFFERS):
+        beside = f"; of {len(others)} other published bands in its range {_number_of(others, DIFFERS)} differ"
+    if differ:
+        rest = f"{agree} agree" + (f", {open_} cannot judge" if open_ else "")
+        words = f"{differ} of {len(rows)} checks {'differs' if differ == 1 else 'differ'} ({rest})"
+        return DIFFERS, f"{words}: do not use this table before you know why{beside}."
+    if open_:
+        return CANNOT_JUDGE, f"{agree} of {len(rows)} checks agree, none differs, {open_} cannot judge{beside}."
+    return AGREES, f"All {len(rows)} checks agree{beside}." if len(rows) > 1 else "The one check, of integrity, agrees."
+
+
+def _number_of(rows: Sequence[CheckResult], verdict: str) -> int:
+    return sum(row.verdict == verdict for row in rows)
 
 
 def _counts(found: Mapping[str, Any]) -> tuple[tuple[str, int], ...]:

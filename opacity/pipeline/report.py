@@ -8,10 +8,10 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from opacity.check.run import CheckReport
-from opacity.check.table_report import AnyTable, Evidence, table_report
+from opacity.check.table_report import Evidence, table_report
 from opacity.errors import InputError, ResourceError, problem
 from opacity.pipeline.recheck import Checked, Target, check_open_table, find_tables_and_recipe
-from opacity.pipeline.report_html import page
+from opacity.pipeline.report_html import article, contents, page
 from opacity.pipeline.report_sections import sections
 from opacity.tables.atomic import write_atomically
 from opacity.tables.open import open_table
@@ -19,12 +19,14 @@ from opacity.tables.open import open_table
 
 @dataclass(frozen=True)
 class Reported:
-    """A table that was checked, its results and what they rest on, and what a page says of it."""
+    """A table that was checked: its results, what they rest on, and what a page says of it under `name`."""
 
-    target: Target
     report: CheckReport
     basis: str
+    name: str
     title: str
+    outcome: str
+    verdict: str
     markup: tuple[str, ...]
 
 
@@ -60,8 +62,9 @@ def report_table(target: Target, number: int = 1, seed: int | None = None, quiet
     with open_table(target.table) as table:
         checked = check_open_table(table, target, seed, quiet)
         content = table_report(table, checked.report, checked.basis, _evidence(checked))
-        markup = tuple(sections(content, table, f"t{number}"))
-        return Reported(target, checked.report, checked.basis, _title(table), markup)
+        name, title = f"t{number}", f"{table.title} ({table.path.name})"
+        markup = tuple(sections(content, table, name))
+        return Reported(checked.report, checked.basis, name, title, content.outcome, content.verdict, markup)
 
 
 def _evidence(checked: Checked) -> Evidence | None:
@@ -71,12 +74,10 @@ def _evidence(checked: Checked) -> Evidence | None:
     return Evidence(checked.recipe, inputs.lines, inputs.isotopologues, inputs.partition)
 
 
-def _title(table: AnyTable) -> str:
-    return f"{table.title} ({table.formula}): {table.path.name}"
-
-
 def write_report(path: Path, found: Sequence[Reported]) -> Path:
     """Write one page on one table or several; it has its name only when it is whole."""
-    title = "; ".join(one.title for one in found)
-    markup = page(f"Report: {title}", [part for one in found for part in one.markup])
+    body = [article(one.name, one.markup) for one in found]
+    if len(found) > 1:
+        body.insert(0, contents((one.name, one.title, one.outcome, one.verdict) for one in found))
+    markup = page("; ".join(one.title for one in found), body)
     return write_atomically(path, markup.encode("utf-8", "backslashreplace"))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Sequence
 
 from opacity.check.result import AGREES, CANNOT_JUDGE, DIFFERS, CheckResult
@@ -28,6 +29,26 @@ def page(title: str, body: Iterable[str]) -> str:
         + "\n".join(body)
         + "\n</body>\n</html>\n"
     )
+
+
+def words_of(text: str) -> str:
+    """A text with its units kept whole at the ends of lines."""
+    return re.sub(r"\bcm-1\b", '<span class="unit">cm-1</span>', escaped(text))
+
+
+def article(name: str, parts: Iterable[str]) -> str:
+    """What a page says of one table, to be found by its name."""
+    return f'<article id="{escaped(name)}">\n' + "\n".join(parts) + "\n</article>"
+
+
+def contents(found: Iterable[tuple[str, str, str, str]]) -> str:
+    """Ways to the articles of a page: name, title, outcome and verdict of each."""
+    items = (
+        f'<li><a href="#{escaped(name)}">{escaped(title)}</a>: '
+        f'<span class="{_class(outcome)}">{mark(outcome)}{escaped(verdict)}</span></li>'
+        for name, title, outcome, verdict in found
+    )
+    return f"<nav><ul>{''.join(items)}</ul></nav>"
 
 
 def heading(level: int, words: str) -> str:
@@ -66,7 +87,7 @@ def results(rows: Sequence[CheckResult], caption: str) -> str:
             f'<td class="{_class(row.verdict)}"><span class="word">{mark(row.verdict)}'
             f"{escaped(row.verdict)}</span></td>"
             f'<td class="number" data-label="difference">{value}</td><td class="number" data-label="limit">{limit}</td>'
-            f"<td>{escaped(row.detail)}</td></tr>"
+            f"<td>{words_of(row.detail)}</td></tr>"
         )
     head = '<th scope="col">check</th><th scope="col">verdict</th><th scope="col" class="number">difference</th>'
     head += '<th scope="col" class="number">limit</th><th scope="col">detail</th>'
@@ -92,12 +113,12 @@ def _table(head: str, body: Sequence[str], caption: str) -> str:
 
 def pairs(found: Iterable[tuple[str, str]]) -> str:
     """Words and their values."""
-    return '<dl class="facts">' + "".join(f"<dt>{escaped(a)}</dt><dd>{escaped(b)}</dd>" for a, b in found) + "</dl>"
+    return '<dl class="facts">' + "".join(f"<dt>{escaped(a)}</dt><dd>{words_of(b)}</dd>" for a, b in found) + "</dl>"
 
 
 def listed(found: Iterable[str]) -> str:
     """A list of sentences."""
-    return "<ul>" + "".join(f"<li>{escaped(one)}</li>" for one in found) + "</ul>"
+    return "<ul>" + "".join(f"<li>{words_of(one)}</li>" for one in found) + "</ul>"
 
 
 def block(text: str) -> str:
@@ -112,8 +133,8 @@ def _lines(text: str) -> str:
 
 
 def figure(picture: Picture) -> str:
-    """A picture with its title and, for all readers, what is to be seen in it."""
-    words = f"<strong>{escaped(picture.title)}.</strong> {escaped(picture.description)}"
+    """A picture with its title and, for all readers, what is to be seen in it; all of its text is inside."""
+    words = f"<strong>{escaped(picture.title)}.</strong> {escaped(picture.caption or picture.description)}"
     return (
         f'<figure><div class="picture" tabindex="0" role="group" aria-label="{escaped(picture.title)}">'
         f"{picture.svg()}</div><figcaption>{words}</figcaption></figure>"

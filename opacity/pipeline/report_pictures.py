@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -77,10 +78,11 @@ def _bands(name: str, title: str, bands: Sequence[BandDifference], exact: bool) 
         if exact
         else "no uncertainty is published, or the value is from memory: bars are a factor of 1.5"
     )
-    words = f"Table over published strength, less 1, in per cent; {bars}. {' '.join(said)}"
+    words = f"Table over published strength, less 1, in per cent; {bars}."
+    text = f"{words} {' '.join(said)}"
     legend = ["named by the recipe", "other published bands in the range"]
     shown = legend if any(not one.in_recipe for one in bands) else legend[:1]
-    return mark_rows(name, title, words, rows, "difference (%)", shown)
+    return replace(mark_rows(name, title, text, rows, "difference (%)", shown), caption=words)
 
 
 def partition_pictures(name: str, found: Sequence[PartitionValues]) -> list[Picture]:
@@ -88,14 +90,16 @@ def partition_pictures(name: str, found: Sequence[PartitionValues]) -> list[Pict
     pictures = []
     for place, isotopologue in enumerate(dict.fromkeys(one.isotopologue for one in found)):
         here = [one for one in found if one.isotopologue == isotopologue]
-        lines = [Line(one.source, one.temperature, 100.0 * one.difference) for one in here]
+        small = all(abs(one.largest[0]) < 1e-4 for one in here)
+        factor, unit = (1e6, "parts in a million") if small else (100.0, "%")
+        lines = [Line(one.source, one.temperature, factor * one.difference) for one in here]
         said = []
         for one in here:
             largest, where = one.largest
-            said.append(f"{one.source}: largest difference {100.0 * largest:+.3g} % at {where:.4g} K.")
+            said.append(f"{one.source}: largest difference {factor * largest:+.3g} {unit} at {where:.4g} K.")
         words = f"Q(T)/Q(296 K) of {isotopologue}, relative to {here[0].used}. {' '.join(said)}"
         title = f"Partition function of {isotopologue} against independent values"
-        labels = ("temperature (K)", "difference (%)")
+        labels = ("temperature (K)", f"difference ({unit})")
         pictures.append(line_picture(f"{name}-{place}", title, words, lines, labels))
     return pictures
 
@@ -106,7 +110,7 @@ def loss_picture(name: str, found: Sequence[Loss]) -> Picture | None:
     parted = all(one.cutoff is not None for one in found)
     for one in found:
         values = [one.cutoff, one.ends] if parted else [one.whole]
-        marks = tuple(Mark(v if v is not None and v > 0.0 else None, look) for look, v in enumerate(values))
+        marks = tuple(Mark(v if v is not None and v > 0.0 else None, look, look > 0) for look, v in enumerate(values))
         label = f"{one.temperature:.4g} K, {number(one.pressure)} bar"
         rows.append(Row(label, marks, f"{max(one.whole, 0.0):.2e} in all"))
         parts = f" (cut-off {one.cutoff:.1e}, ends {one.ends:.1e})" if parted else ""
@@ -114,9 +118,14 @@ def loss_picture(name: str, found: Sequence[Loss]) -> Picture | None:
     if not any(mark.value is not None for row in rows for mark in row.marks):
         return None
     legend = ["beyond the cut-off", "beyond the grid's ends"] if parted else ["beyond cut-off and grid's ends together"]
-    words = f"Share of the strength of all lines in reach that a node does not hold. {' '.join(said)}"
+    most = max(found, key=lambda one: one.whole)
+    words = (
+        "Share of the strength of all lines in reach that a node does not hold; the largest is"
+        f" {most.whole:.2e}, at {most.temperature:.4g} K, {number(most.pressure)} bar."
+    )
     title = "Strength lost beyond cut-off and grid"
-    return mark_rows(name, title, words, rows, "share of the strength", legend, log=True)
+    text = f"{words} {' '.join(said)}"
+    return replace(mark_rows(name, title, text, rows, "share of the strength", legend, log=True), caption=words)
 
 
 def uncertainty_picture(name: str, found: ListUncertainty) -> Picture | None:

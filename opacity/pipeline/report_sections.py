@@ -128,12 +128,13 @@ def _lost(report: TableReport, name: str) -> Iterator[str]:
         if picture is None:
             yield html.paragraph("No strength is lost beyond cut-off and grid at the nodes looked at.")
     if report.left_out:
-        yield html.columns(("left out", "lines"), [(what, str(count)) for what, count in report.left_out])
+        yield html.heading(3, "Left out of the list")
+        yield html.pairs([(_counted(count, "line"), what) for what, count in report.left_out])
 
 
 def _assumed(report: TableReport) -> Iterator[str]:
-    said = [("assumed", what, f"{count} lines") for what, count in report.assumed]
-    said += [("note", what, f"{count} records") for what, count in report.noted]
+    said = [("assumed", what, _counted(count, "line")) for what, count in report.assumed]
+    said += [("note", what, _counted(count, "record")) for what, count in report.noted]
     said += [("from memory, accepted", key, words) for key, words in report.from_memory]
     if not (said or report.warnings):
         return
@@ -164,6 +165,10 @@ def _references(report: TableReport) -> Iterator[str]:
         yield html.heading(3, "As BibTeX")
         yield html.paragraph("Made of what the references above say, and of nothing else.", "soft")
         yield html.block("\n\n".join(one.bibtex for one in report.references))
+
+
+def _counted(count: int, word: str) -> str:
+    return f"{count} {word}" if count == 1 else f"{count} {word}s"
 
 
 def _figures(found: list[Picture | None] | list[Picture]) -> Iterator[str]:

@@ -29,6 +29,8 @@ table{border-collapse:collapse;width:100%;font-size:.93rem;margin:.5rem 0}
 caption{text-align:left}
 th,td{text-align:left;vertical-align:top;padding:.4rem .7rem .4rem 0;border-bottom:1px solid var(--rule)}
 th{font-weight:600}
+th[scope=row]{min-width:9rem}
+.unit{white-space:nowrap}
 .number{text-align:right;white-space:nowrap;font-variant-numeric:tabular-nums}
 .facts{display:grid;grid-template-columns:minmax(7rem,max-content) 1fr;
 gap:.25rem 1.2rem;margin:.5rem 0;font-size:.95rem}
@@ -36,7 +38,10 @@ gap:.25rem 1.2rem;margin:.5rem 0;font-size:.95rem}
 figure{margin:1.2rem 0}
 figcaption{margin-top:.3rem}
 .picture{overflow-x:auto}
-pre{background:var(--box);padding:.8rem 1rem;font:.82rem/1.45 ui-monospace,monospace;white-space:pre-wrap;margin:.5rem 0}
+pre{background:var(--box);padding:.8rem 1rem;font:.82rem/1.45 ui-monospace,monospace;white-space:pre-wrap;
+margin:.5rem 0}
+article+article{margin-top:4rem;padding-top:1.5rem;border-top:.3rem double var(--rule)}
+a{color:inherit}
 code{font:.82rem ui-monospace,monospace}
 li{margin:.25rem 0}
 @media screen and (max-width:40rem){
@@ -50,7 +55,7 @@ body{padding:1rem .9rem 3rem}
 @media print{:root{--paper:#fff;--ink:#000;--soft:#444;--box:#fff}
 html{color-scheme:light}
 body{max-width:none;padding:0;font-size:10.5pt}
-figure,tr,.verdict{break-inside:avoid}h2,h3{break-after:avoid}
+figure,tr,.verdict{break-inside:avoid}article+article{break-before:page}h2,h3{break-after:avoid}
 .picture{overflow:visible}svg[role=img]{min-width:0}
 pre{border:1px solid var(--rule)}
 *{-webkit-print-color-adjust:exact;print-color-adjust:exact}}

@@ -41,7 +41,8 @@ def error_map(name: str, title: str, cells: Cells, words: str) -> Picture:
     bottom = top + rows * height
     picture = Picture(name, title, _said(cells, words), bottom + 46.0)
     width = (WIDTH - LEFT - RIGHT) / columns
-    _shade_legend(picture, low, high)
+    judged = bool(np.any(np.isfinite(cells.limits)))
+    _shade_legend(picture, low, high, "smaller to larger" + ("; crossed out: beyond its limit" if judged else ""))
     for i in range(rows):
         y = bottom - (i + 1) * height
         if i % max(1, int(18.0 / height)) == 0:
@@ -84,24 +85,24 @@ def _cell(
     size = f'x="{x:.1f}" y="{y:.1f}" width="{width:.1f}" height="{height:.1f}"'
     picture.parts.append(f'<rect {size} style="fill:var(--look0);fill-opacity:{shade:.2f};stroke:var(--paper)"/>')
     if width >= _NARROWEST and height >= 17.0:
-        # On a dark cell the letters are those of the paper.
-        ink = "small mid onshade" if shade > 0.5 else "small mid"
+        # On dark paper the letters of a bright cell are dark.
+        ink = "small mid onshade" if shade > 0.68 else "small mid"
         picture.text(x + 0.5 * width, y + 0.5 * height + 4.0, f"{value:.1e}" if value else "0", ink)
     if beyond:
         picture.line(x + 2.0, y + 2.0, x + width - 2.0, y + height - 2.0, "axis")
         picture.line(x + 2.0, y + height - 2.0, x + width - 2.0, y + 2.0, "axis")
 
 
-def _shade_legend(picture: Picture, low: float, high: float) -> None:
+def _shade_legend(picture: Picture, low: float, high: float, words: str) -> None:
     width = 62.0
     for place, value in enumerate(np.geomspace(low, high, _SHADES)):
         x = LEFT + place * width
         shade = _shade(float(value), (low, high))
         size = f'x="{x:.1f}" y="4" width="{width:.1f}" height="20"'
         picture.parts.append(f'<rect {size} style="fill:var(--look0);fill-opacity:{shade:.2f};stroke:var(--paper)"/>')
-        ink = "small mid onshade" if shade > 0.5 else "small mid"
+        ink = "small mid onshade" if shade > 0.68 else "small mid"
         picture.text(x + 0.5 * width, 18.0, f"{value:.0e}", ink)
-    picture.text(LEFT + _SHADES * width + 12.0, 18.5, "smaller to larger; crossed out: beyond its limit")
+    picture.text(LEFT + _SHADES * width + 12.0, 18.5, words)
 
 
 def _said(cells: Cells, words: str) -> str:
@@ -113,8 +114,8 @@ def _said(cells: Cells, words: str) -> str:
     beyond = int(np.sum(there & (values > np.broadcast_to(cells.limits, values.shape))))
     return (
         f"{words} {int(there.sum())} values, median {number(float(np.median(values[there])), 2)}, largest"
-        f" {number(float(values[i, j]), 2)} at {cells.temperature[i]:g} K, {number(float(cells.pressure[j]))} bar;"
-        f" {beyond} beyond their limit."
+        f" {number(float(values[i, j]), 2)} at {cells.temperature[i]:.6g} K, {number(float(cells.pressure[j]))} bar"
+        + (f"; {beyond} beyond their limit." if np.any(np.isfinite(cells.limits)) else ".")
     )
 
 
@@ -151,7 +152,7 @@ def mark_rows(
     spans = [end for row in rows for bar in (row.narrow, row.wide) if bar for end in bar]
     ends = decades([np.array(values)]) if log else widened(min([*values, *spans, 0.0]), max([*values, *spans, 0.0]))
     scale = Scale(*ends, left, right, log)
-    Axes(picture, scale, Scale(0.0, float(len(rows)), bottom, top)).frame(label, y_ticks=False, most=5)
+    Axes(picture, scale, Scale(0.0, float(len(rows)), bottom, top)).frame(label, rows=False, most=5)
     for place, row in enumerate(rows):
         _mark_row(picture, scale, row, top + _ROW * (place + 0.5) + 4.0)
     return picture

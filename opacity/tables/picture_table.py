@@ -12,7 +12,7 @@ from opacity.tables.read import Table
 from opacity.tables.svg import LEFT, RIGHT, WIDTH, Axes, Picture, Scale, decades, number
 
 X_LABEL = "wavenumber (cm⁻¹)"
-_GAP = 16.0
+_GAP = 24.0
 
 
 def spectra(table: Table, name: str) -> list[Picture]:
@@ -76,7 +76,9 @@ def k_distributions(table: KCoefficientTable, name: str) -> Picture:
         lower, upper = table.band_bounds[band]
         spans = [f"{label}: {_span(k[band])}" for label, k in zip(labels, values, strict=True)]
         said.append(f"Band {lower:.7g} to {upper:.7g} cm⁻¹: {'; '.join(spans)}.")
-    picture = Picture(name, f"k against g, {table.g.size} points", f"k in cm² per molecule. {' '.join(said)}")
+    words = f"{len(bands)} of {table.band.size} bands at {len(nodes)} nodes; each step is as wide as its weight in g."
+    picture = Picture(name, f"k against g, {table.g.size} points", f"k in cm² per molecule, {words} {' '.join(said)}")
+    picture.caption = words
     top = picture.legend([(label, look) for look, label in enumerate(labels)], 4.0) + 32.0
     picture.height = top + 300.0
     width = (WIDTH - LEFT - RIGHT - _GAP * (len(bands) - 1)) / len(bands)
@@ -84,7 +86,7 @@ def k_distributions(table: KCoefficientTable, name: str) -> Picture:
         left = LEFT + column * (width + _GAP)
         scales = Scale(0.0, 1.0, left, left + width), Scale(low, high, picture.height - 44.0, top, True)
         first = column == 0
-        axes = Axes(picture, *scales).frame("g", "k (cm² molecule⁻¹)" if first else "", first, 4)
+        axes = Axes(picture, *scales).frame("g", "k (cm² molecule⁻¹)" if first else "", first, most=4)
         lower, upper = table.band_bounds[band]
         picture.text(left + 0.5 * width, top - 9.0, f"{lower:.7g} to {upper:.7g} cm⁻¹", "mid")
         bounds = table.g_bounds[band] if table.g_bounds.ndim == 3 else table.g_bounds

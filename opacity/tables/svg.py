@@ -19,9 +19,9 @@ from opacity.grids import FloatArray
 from opacity.tables.draw import COLOURS, DASHES
 
 WIDTH = 720.0
-LEFT, RIGHT = 78.0, 14.0
-FONT, LETTER, ROW = 13.0, 6.8, 20.0
-"""Size of the letters, the width of a middling one, and the height of a row of a legend."""
+LEFT, RIGHT = 78.0, 26.0
+LETTER, ROW = 7.4, 20.0
+"""Width of a wide letter, and height of a row of a legend."""
 MARKS = ("circle", "square", "diamond", "triangle", "cross")
 
 # On dark paper the lighter ones of the same set of colours (Okabe & Ito 2008), so that curves stand out as much.
@@ -37,7 +37,7 @@ STYLE = (
     f"@media screen and (prefers-color-scheme:dark){{:root{{{_colours(_ON_DARK)}}}}}"
     "svg[role=img]{display:block;width:100%;height:auto;min-width:560px;fill:currentColor}"
     "svg text{font:13px system-ui,sans-serif}"
-    "svg .onshade{fill:var(--paper)}"
+    "@media screen and (prefers-color-scheme:dark){svg .onshade{fill:var(--paper)}}"
     "svg .axis{stroke:currentColor;fill:none;stroke-width:1}"
     "svg .grid{stroke:currentColor;stroke-opacity:.13;fill:none}"
     "svg .curve{fill:none;stroke-width:1.6;stroke-linejoin:round}"
@@ -94,7 +94,9 @@ class Scale:
             if last - first >= 1:
                 every = max(1, math.ceil((last - first + 1) / most))
                 return [10.0**power for power in range(first, last + 1) if (power - last) % every == 0]
-            return [t for t in _round_values(self.low, self.high, most) if t > 0.0]
+            found = [f * 10.0**p for p in range(first - 1, last + 1) for f in (1.0, 2.0, 5.0)]
+            found = [one for one in found if self.low <= one <= self.high]
+            return found if len(found) > 1 else _round_values(self.low, self.high, 4)
         return _round_values(self.low, self.high, most)
 
 
@@ -113,12 +115,16 @@ def tick_text(value: float, log: bool) -> str:
 
 @dataclass
 class Picture:
-    """One picture.  `name` makes its ids, unique on a page where names are; `title` and `description` are its text."""
+    """One picture.  `name` makes its ids, unique on a page where names are.
+
+    `title` and `description` are its text; `caption`, where given, is a shorter one to stand below it.
+    """
 
     name: str
     title: str
     description: str
     height: float = 330.0
+    caption: str = ""
     parts: list[str] = field(default_factory=list)
     _clips: int = 0
 
@@ -201,18 +207,18 @@ class Axes:
         """Left, top, right and bottom."""
         return self.x.start, self.y.end, self.x.end, self.y.start
 
-    def frame(self, x_label: str, y_label: str = "", y_ticks: bool = True, most: int = 7) -> Axes:
-        """Frame, grid, ticks and their words."""
+    def frame(self, x_label: str, y_label: str = "", y_words: bool = True, rows: bool = True, most: int = 7) -> Axes:
+        """Frame, grid (with `rows` across), ticks and their words."""
         left, top, right, bottom = self.box
         picture = self.picture
         for value in self.x.ticks(most):
             x = float(self.x(value))
             picture.line(x, top, x, bottom, "grid")
             picture.text(x, bottom + 17.0, tick_text(value, self.x.log), "mid")
-        for value in self.y.ticks():
+        for value in self.y.ticks() if rows else ():
             y = float(self.y(value))
             picture.line(left, y, right, y, "grid")
-            if y_ticks:
+            if y_words:
                 picture.text(left - 7.0, y + 4.5, tick_text(value, self.y.log), "end")
         picture.parts.append(f'<path d="M{left:.1f} {top:.1f}H{right:.1f}V{bottom:.1f}H{left:.1f}z" class="axis"/>')
         picture.text(0.5 * (left + right), bottom + 36.0, x_label, "mid")
