@@ -2,8 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
+
+
+def size(value: Any, figures: int = 2) -> str:
+    """A number from JSON, which knows no infinity: there it is null."""
+    return f"{value:.{figures}e}" if isinstance(value, float | int) else "infinite"
 
 
 def audit_facts(figures: Mapping[str, Any]) -> list[tuple[str, str]]:
@@ -25,8 +30,8 @@ def _of_points(audit: Mapping[str, Any], tolerance: Any) -> list[tuple[str, str]
     promised = f"; the tolerance is {tolerance:g}" if isinstance(tolerance, float) else ""
     found = [
         ("computed again", f"{audit['points']} points of {audit['nodes']} nodes, as the exact sum over all lines"),
-        ("largest error", f"{audit['largest_error']:.2e}, relative{promised}"),
-        ("99 % within", f"{audit['p99_error']:.2e}"),
+        ("largest error", f"{size(audit['largest_error'])}, relative{promised}"),
+        ("99 % within", size(audit["p99_error"])),
     ]
     if "exact" in worst:
         found.append(("worst point", f"{place}: {worst['value']:.6e}, exact {worst['exact']:.6e} cm2 per molecule"))
@@ -35,10 +40,11 @@ def _of_points(audit: Mapping[str, Any], tolerance: Any) -> list[tuple[str, str]
 
 def _between(between: Mapping[str, Any]) -> str:
     worst = between["worst_cell"]
+    half, most, largest = (size(between[name], 1) for name in ("p50", "p99", "largest"))
     return (
-        f"{between['points']} points at the middle of {between['cells']} cells: half within {between['p50']:.1e}, 99 %"
-        f" within {between['p99']:.1e}, largest {between['largest']:.1e}; worst cell {worst['temperature']:.5g} K,"
-        f" {worst['pressure']:.3g} bar. Not judged: it tells how fine the grid is"
+        f"{between['points']} points at the middle of {between['cells']} cells: half within {half}, 99 % within {most},"
+        f" largest {largest}; worst cell {worst['temperature']:.5g} K, {worst['pressure']:.3g} bar."
+        " Not judged: it tells how fine the grid is"
     )
 
 
@@ -47,10 +53,10 @@ def _of_bands(certificate: Mapping[str, Any]) -> list[tuple[str, str]]:
     found = []
     bands = certificate.get("bands", [])
     if bands:
-        largest = [abs(one["largest"]) for one in bands]
-        found.append(("all nodes", f"transmission within {max(largest):.2e}, the largest of {len(bands)} bands"))
+        largest = size(_largest(bands, "largest"))
+        found.append(("all nodes", f"transmission within {largest}, the largest of {len(bands)} bands"))
         if all("p99" in one for one in bands):
-            found.append(("99 % within", f"{max(abs(one['p99']) for one in bands):.2e} in every band"))
+            found.append(("99 % within", f"{size(_largest(bands, 'p99'))} in every band"))
     if certificate.get("target") is not None:
         found.append(("promised", f"{certificate['target']:g}"))
     sampled = certificate.get("sampled", [])
@@ -61,7 +67,13 @@ def _of_bands(certificate: Mapping[str, Any]) -> list[tuple[str, str]]:
     return found
 
 
-def _sampled(sampled: list[Mapping[str, Any]]) -> list[tuple[str, str]]:
+def _largest(entries: Sequence[Mapping[str, Any]], name: str) -> float | None:
+    """The largest size among entries, None where one of them is infinite."""
+    values = [one[name] for one in entries]
+    return None if None in values else max(abs(one) for one in values)
+
+
+def _sampled(sampled: Sequence[Mapping[str, Any]]) -> list[tuple[str, str]]:
     """Bands that were made again line by line, largest of all."""
     words = {
         "fine_cells": ("fine cells", "transmission within {:.1e} of line by line"),

@@ -185,7 +185,8 @@ def _middles(figures: Mapping[str, Any]) -> tuple[tuple[float, float, float], ..
     """Cell middles with their errors; tables made before these were kept tell the worst one alone."""
     between = figures.get("interpolation") or {}
     cells = between.get("by_cell", [between["worst_cell"]] if "worst_cell" in between else [])
-    return tuple((float(one["temperature"]), float(one["pressure"]), float(one["p99"])) for one in cells)
+    known = [one for one in cells if one["p99"] is not None]
+    return tuple((float(one["temperature"]), float(one["pressure"]), float(one["p99"])) for one in known)
 
 
 def _bands(

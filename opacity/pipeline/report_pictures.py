@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import replace
 
@@ -57,7 +58,8 @@ def band_pictures(name: str, bands: Sequence[BandDifference]) -> list[Picture]:
         (True, "exact", "Band strengths against published values"),
         (False, "rough", "Band strengths against values that find factors only"),
     ):
-        chosen = [one for one in bands if (one.deviation is not None) is exact and one.difference is not None]
+        known = [one for one in bands if one.difference is not None and math.isfinite(one.difference)]
+        chosen = [one for one in known if (one.deviation is not None) is exact]
         if chosen:
             found.append(_bands(f"{name}-{suffix}", title, chosen, exact))
     return found

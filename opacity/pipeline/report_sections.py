@@ -22,6 +22,10 @@ CAUTION = (
 )
 
 
+_MOST_BANDS = 40
+"""Rows of a table that somebody is to read."""
+
+
 def sections(report: TableReport, table: AnyTable, name: str) -> Iterator[str]:
     """Markup of all sections; `name` starts every id.  The table must be open; TableError for damage."""
     yield from _head(report, table)
@@ -72,12 +76,17 @@ def _uncertainty(found: ListUncertainty | None, name: str) -> Iterator[str]:
     yield html.heading(2, "The list's own uncertainty")
     yield html.paragraph("What the line list says of itself; no arithmetic makes it smaller.", "soft")
     yield from _figures([pictures.uncertainty_picture(f"{name}-uncertainty", found)])
+    largest = np.nan_to_num(np.maximum(found.correlated, found.uncorrelated), nan=-1.0).max(axis=0)
+    shown = np.sort(np.argsort(-largest, kind="stable")[:_MOST_BANDS])
     rows = []
-    for place, (low, high) in enumerate(found.bands):
+    for place in shown:
+        low, high = found.bands[place]
         spans = [_span(values[:, place]) for values in (found.correlated, found.uncorrelated)]
         rows.append((f"{low:.7g} to {high:.7g}", *spans))
     heads = ("band (cm-1)", "lines off together", "each by itself")
-    yield html.columns(heads, rows, f"Strength of the band, one standard deviation, over {len(found.nodes)} nodes.")
+    most = f"; the {len(rows)} of {len(found.bands)} bands with the largest" if len(rows) < len(found.bands) else ""
+    said = f"Strength of the band, one standard deviation, over {len(found.nodes)} nodes{most}."
+    yield html.columns(heads, rows, said)
     yield html.pairs(found.facts)
 
 

@@ -121,7 +121,7 @@ def _said(cells: Cells, words: str) -> str:
 
 @dataclass(frozen=True)
 class Mark:
-    """A mark on a row: its `value`, None where there is none, and the number of its look; hollow where it is rough."""
+    """A mark on a row: its `value`, None for no mark, and the number of its look; `hollow` lets one beneath show."""
 
     value: float | None
     look: int = 0
@@ -145,7 +145,15 @@ def mark_rows(
     """Rows of marks on one scale across; where bars are given they are the published uncertainty, once and twice."""
     left, right = 208.0, WIDTH - (176.0 if any(row.words for row in rows) else RIGHT)
     picture = Picture(name, title, description)
-    top = picture.legend([(words, look) for look, words in enumerate(legend)], 4.0, marks=True) + 10.0
+    top = (
+        picture.legend(
+            [(words, look) for look, words in enumerate(legend)],
+            4.0,
+            True,
+            any(m.hollow for r in rows for m in r.marks),
+        )
+        + 10.0
+    )
     bottom = top + _ROW * len(rows) + 8.0
     picture.height = bottom + 44.0
     values = [mark.value for row in rows for mark in row.marks if mark.value is not None]

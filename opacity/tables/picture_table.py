@@ -22,12 +22,13 @@ def spectra(table: Table, name: str) -> list[Picture]:
     """
     found = []
     groups = curves.groups_of(table, number)
+    at = "at " if table.profile else ""
     everything = slice(0, table.wavenumber.size)
     for place, group in enumerate(groups):
-        found.append(_spectra(table, group, everything, f"{name}-{place}", f"Cross-section {group.heading}"))
+        found.append(_spectra(table, group, everything, f"{name}-{place}", f"Cross-section {at}{group.heading}"))
     part = curves.strong_stretch(table, groups[-1])
     if 1 < part.stop - part.start < table.wavenumber.size:
-        title = f"Its strongest line enlarged, {groups[-1].heading}"
+        title = f"Its strongest line enlarged, {at}{groups[-1].heading}"
         found.append(_spectra(table, groups[-1], part, f"{name}-line", title))
     return found
 

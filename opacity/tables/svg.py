@@ -169,15 +169,15 @@ class Picture:
         fill = "none" if hollow or MARKS[look % len(MARKS)] == "cross" else colour
         self.parts.append(f'<path d="{shape}" style="fill:{fill};stroke:{colour};stroke-width:1.8"/>')
 
-    def legend(self, labels: Sequence[tuple[str, int]], top: float, marks: bool = False) -> float:
-        """A legend in rows from `top` on; where it ends."""
+    def legend(self, labels: Sequence[tuple[str, int]], top: float, marks: bool = False, hollow: bool = False) -> float:
+        """A legend in rows from `top` on; where it ends.  `hollow` is for marks of all looks but the first."""
         x, y = LEFT, top
         for label, look in labels:
             width = 46.0 + LETTER * len(label)
             if x + width > WIDTH and x > LEFT:
                 x, y = LEFT, y + ROW
             if marks:
-                self.mark(x + 12.0, y + 10.0, look)
+                self.mark(x + 12.0, y + 10.0, look, hollow and look > 0)
             else:
                 self.line(x, y + 10.0, x + 28.0, y + 10.0, "curve", curve_style(look))
             self.text(x + (24.0 if marks else 34.0), y + 14.5, label)
