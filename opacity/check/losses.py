@@ -20,7 +20,7 @@ _FAR = 1e9
 class Loss:
     """Shares of the strength of all lines in reach that one node lacks; parts are None where only `whole` is known.
 
-    `cutoff` lies beyond the cut-off, or was subtracted with the plinth; `ends` lies beyond the grid's ends.
+    `cutoff` lies beyond the cut-off, or was taken off with the plinth or by chi factors; `ends` beyond the grid's ends.
     """
 
     temperature: float

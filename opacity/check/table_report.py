@@ -44,12 +44,15 @@ class Evidence:
 
 @dataclass(frozen=True)
 class NodeDifferences:
-    """What closure found, in the order of the nodes (n,): K, bar, relative difference (NaN: not judged), its limit."""
+    """What closure found, in the order of the nodes (n,): K, bar, relative difference (NaN: not judged), its limit, and
+    the share of the strength in lines that the step does not resolve.
+    """
 
     temperature: FloatArray
     pressure: FloatArray
     difference: FloatArray
     limit: FloatArray
+    unresolved: FloatArray
 
 
 @dataclass(frozen=True)
@@ -178,6 +181,7 @@ def _differences(figures: Mapping[str, Any]) -> NodeDifferences | None:
         np.array([one.pressure for one in accounts]),
         np.array([one.difference if one.can_be_judged else np.nan for one in accounts]),
         np.array([tolerance + one.allowance for one in accounts]),
+        np.array([one.at_risk for one in accounts]),
     )
 
 

@@ -33,6 +33,7 @@ class Reported:
 def report(table: str | Path, path: str | Path, recipe: str | Path | None = None, quiet: bool = True) -> Path:
     """Check a table and write all that is known of it to one HTML page at `path`, which is returned.
 
+    `table` may be a recipe whose tables are in the folder `tables`; they share the page then.
     The checks are made again from the recipe that the log beside the table names, or from `recipe`; without one,
     those that the build stored are shown.  The page needs no other file, no network and no script.
     Raises InputError for a `path` that does not end in .html, ResourceError where it can't be written, TableError and

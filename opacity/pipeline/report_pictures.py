@@ -8,6 +8,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from opacity.check.closure import JUDGED_BELOW
 from opacity.check.list_uncertainty import ListUncertainty
 from opacity.check.losses import Loss
 from opacity.check.other_bands import BandDifference
@@ -25,13 +26,30 @@ def closure_picture(name: str, found: NodeDifferences, profile: bool) -> Picture
     size = np.abs(found.difference)
     if not np.any(np.isfinite(size)):
         return None
-    if not profile:
-        return error_map(name, title, _cells(found.temperature, found.pressure, found.difference, found.limit), words)
+    if profile:
+        return _along(name, title, words, found, size)
+    return error_map(name, title, _cells(found.temperature, found.pressure, found.difference, found.limit), words)
+
+
+def resolution_picture(name: str, found: NodeDifferences, profile: bool) -> Picture | None:
+    """Shares of the strength that the step does not resolve; None where no node loses sight of one in a hundred."""
+    if not np.any(found.unresolved > JUDGED_BELOW):
+        return None
+    title = "Lines narrower than the step resolves"
+    words = f"Share of a node's strength in lines that the step does not resolve; the limit is {JUDGED_BELOW:g}."
+    if profile:
+        return _along(name, title, words, found, found.unresolved)
+    limits = np.full(found.unresolved.size, JUDGED_BELOW)
+    return error_map(name, title, _cells(found.temperature, found.pressure, found.unresolved, limits), words)
+
+
+def _along(name: str, title: str, words: str, found: NodeDifferences, size: FloatArray) -> Picture:
+    """Sizes of the nodes of a profile, one after the other."""
     worst = int(np.nanargmax(size))
     place = f"{found.temperature[worst]:g} K, {number(float(found.pressure[worst]))} bar"
     said = f"{words} {size.size} nodes along the profile, largest {number(float(size[worst]), 2)} at {place}."
-    line = Line("size of the difference", np.arange(1.0, size.size + 1.0), size)
-    return line_picture(name, title, said, [line], ("node of the profile", "relative difference"), log=True)
+    line = Line("size at each node", np.arange(1.0, size.size + 1.0), size)
+    return line_picture(name, title, said, [line], ("node of the profile", "relative"), log=True)
 
 
 def _cells(temperature: FloatArray, pressure: FloatArray, values: FloatArray, limits: FloatArray) -> Cells:
@@ -126,7 +144,8 @@ def loss_picture(name: str, found: Sequence[Loss]) -> Picture | None:
         f" {most.whole:.2e}, at {most.temperature:.4g} K, {number(most.pressure)} bar."
     )
     title = "Strength lost beyond cut-off and grid"
-    text = f"{words} {' '.join(said)}"
+    aside = "What plinth removal or chi factors take off counts as beyond the cut-off."
+    text = f"{words} {aside} {' '.join(said)}"
     return replace(mark_rows(name, title, text, rows, "share of the strength", legend, log=True), caption=words)
 
 

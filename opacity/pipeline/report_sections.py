@@ -76,7 +76,7 @@ def _uncertainty(found: ListUncertainty | None, name: str) -> Iterator[str]:
     yield html.heading(2, "The list's own uncertainty")
     yield html.paragraph("What the line list says of itself; no arithmetic makes it smaller.", "soft")
     yield from _figures([pictures.uncertainty_picture(f"{name}-uncertainty", found)])
-    largest = np.nan_to_num(np.maximum(found.correlated, found.uncorrelated), nan=-1.0).max(axis=0)
+    largest = np.nan_to_num(np.fmax(found.correlated, found.uncorrelated), nan=-1.0).max(axis=0)
     shown = np.sort(np.argsort(-largest, kind="stable")[:_MOST_BANDS])
     rows = []
     for place in shown:
@@ -112,9 +112,10 @@ def _errors(report: TableReport, table: AnyTable, name: str) -> Iterator[str]:
     found: list[Picture | None] = []
     if report.closure is not None:
         found.append(pictures.closure_picture(f"{name}-closure", report.closure, table.profile))
+        found.append(pictures.resolution_picture(f"{name}-resolution", report.closure, table.profile))
     if report.middles:
         found.append(pictures.middles_picture(f"{name}-middles", report.middles))
-    if found:
+    if any(found):
         yield html.heading(2, "Errors over temperature and pressure")
         yield from _figures(found)
 
@@ -123,7 +124,7 @@ def _published(report: TableReport, name: str) -> Iterator[str]:
     found: list[Picture | None] = [*pictures.band_pictures(f"{name}-bands", report.bands)]
     found += pictures.partition_pictures(f"{name}-partition", report.partition)
     if found:
-        yield html.heading(2, "Against published values")
+        yield html.heading(2, "Against independent values")
         yield from _figures(found)
 
 

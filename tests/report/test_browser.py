@@ -115,7 +115,7 @@ def _luminance(colour: str) -> float:
     return 0.2126 * linear[0] + 0.7152 * linear[1] + 0.0722 * linear[2]
 
 
-@pytest.mark.parametrize("scheme", ("light", "dark"))
+@pytest.mark.parametrize("scheme", ["light", "dark"])
 def test_words_stand_out_on_light_and_on_dark(shown, scheme):
     """Contrast as the Web Content Accessibility Guidelines 2.1 define it: 4.5 for text, 3 for what is drawn."""
     page = shown("cross-section", scheme=scheme)
