@@ -111,9 +111,10 @@ def _said(cells: Cells, words: str) -> str:
     if not np.any(there):
         return f"{words} No value is known."
     i, j = np.unravel_index(int(np.argmax(np.where(there, values, -1.0))), values.shape)
+    counted = f"{int(there.sum())} value{'' if there.sum() == 1 else 's'}"
     beyond = int(np.sum(there & (values > np.broadcast_to(cells.limits, values.shape))))
     return (
-        f"{words} {int(there.sum())} values, median {number(float(np.median(values[there])), 2)}, largest"
+        f"{words} {counted}, median {number(float(np.median(values[there])), 2)}, largest"
         f" {number(float(values[i, j]), 2)} at {cells.temperature[i]:.6g} K, {number(float(cells.pressure[j]))} bar"
         + (f"; {beyond} beyond their limit." if np.any(np.isfinite(cells.limits)) else ".")
     )

@@ -151,7 +151,7 @@ def test_tables_made_before_cells_were_kept_tell_the_worst(sigma, tmp_path, read
         checks = json.loads(json.dumps(table.checks))
     del checks["interpolation"]["by_cell"]
     page = read_page(report(altered(sigma, tmp_path, checks=checks), tmp_path / "page.html"))
-    assert "1 values" in page.pictures()["Interpolation at cell middles"]
+    assert "1 value, median" in page.pictures()["Interpolation at cell middles"]
 
 
 def altered(path: Path, folder: Path, **changes) -> Path:
