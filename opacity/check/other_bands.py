@@ -6,15 +6,19 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
 from opacity.check.band_strength import SANITY_FACTOR, STANDARD_DEVIATIONS, check_band, choose_pressure
-from opacity.check.closure import Closure
-from opacity.check.result import CheckResult
+from opacity.check.closure import Closure, strength_between
+from opacity.check.result import CANNOT_JUDGE, CheckResult
 from opacity.check.spectra import Spectra
 from opacity.cross_sections.source import LineSource
 from opacity.molecule.published_bands import FROM_MEMORY, PublishedBand, published_bands
-from opacity.recipe.model import BandStrength, Recipe
+from opacity.recipe.model import BandStrength, Profile, Recipe
 
 _MEMORY = "from memory"
+WINGS_SHARE = 0.25
+"""A band is judged where wings crossing its ends make no more than this share of what is accepted."""
 
 
 @dataclass(frozen=True)
@@ -50,8 +54,30 @@ def other_bands(
         if band is None or not _inside(band, table) or any(_same(band, one) for one in recipe.band_strengths):
             continue
         pressure = choose_pressure(band, accounts, source, recipe.profile)
-        found.append((band, check_band(band, table, pressure, source, recipe.profile, None, recipe.abundance)))
+        row = check_band(band, table, pressure, source, recipe.profile, None, recipe.abundance)
+        found.append((band, row if pressure is None else _if_whole(row, band, pressure, source, recipe.profile)))
     return found
+
+
+def _if_whole(
+    row: CheckResult, band: BandStrength, pressure: float, source: LineSource, profile: Profile
+) -> CheckResult:
+    """The row, unless wings that cross the ends of the band's range change its integral by too much to judge it.
+
+    A recipe's author chooses range and grid for each other; here a range that is a line wide may meet any table.
+    """
+    whole, within = 0.0, 0.0
+    for lines in source.stretches():
+        columns = lines.at_temperature(band.temperature)
+        first = np.searchsorted(columns.wavenumber, band.range[0])
+        last = np.searchsorted(columns.wavenumber, band.range[1], side="right")
+        whole += float(np.sum(columns.strength[first:last]))
+        within += strength_between(columns, pressure, band.range, profile)
+    change = within / whole - 1.0 if whole > 0.0 else 0.0
+    if row.limit is None or abs(change) <= WINGS_SHARE * row.limit:
+        return row
+    detail = f"at {pressure:.3g} bar, the best node for it, wings that cross its ends change the band by {change:+.1%}"
+    return CheckResult(row.check, CANNOT_JUDGE, f"{detail}; {band.source}")
 
 
 def _as_asked(published: PublishedBand) -> BandStrength | None:
