@@ -22,8 +22,8 @@ CAUTION = (
 )
 
 
-_MOST_BANDS = 40
-"""Rows of a table that somebody is to read."""
+_MOST_BANDS = 12
+"""Rows of a table that somebody is to read; the picture shows all."""
 
 
 def sections(report: TableReport, table: AnyTable, name: str) -> Iterator[str]:

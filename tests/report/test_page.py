@@ -310,9 +310,9 @@ def test_of_many_bands_those_with_the_largest_uncertainty_are_listed(sigma, tmp_
     stated = uncertainty(bands=bands, strength_correlated=[sizes, sizes], strength_uncorrelated=[[None] * 100] * 2)
     made = altered(sigma, tmp_path, checks={**checks, "uncertainty": stated})
     page = read_page(report(made, tmp_path / "page.html"))
-    assert "the 40 of 100 bands with the largest" in page.text
+    assert "the 12 of 100 bands with the largest" in page.text
     heads = [one.text for one in page.all("th") if re.fullmatch(r"20\d\d to 2\d\d\d", one.text)]
-    assert (len(heads), heads[0], heads[-1]) == (40, "2060 to 2061", "2099 to 2100")
+    assert (len(heads), heads[0], heads[-1]) == (12, "2088 to 2089", "2099 to 2100")
 
 
 def test_the_lists_own_uncertainty_is_shown_where_it_is_there(sigma, tmp_path, read_page, pages):
