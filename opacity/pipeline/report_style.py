@@ -42,7 +42,6 @@ pre{background:var(--box);padding:.8rem 1rem;font:.82rem/1.45 ui-monospace,monos
 margin:.5rem 0}
 article+article{margin-top:4rem;padding-top:1.5rem;border-top:.3rem double var(--rule)}
 a{color:inherit}
-code{font:.82rem ui-monospace,monospace}
 li{margin:.25rem 0}
 @media screen and (max-width:40rem){
 body{padding:1rem .9rem 3rem}

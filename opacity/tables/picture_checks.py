@@ -201,21 +201,18 @@ def line_picture(
     lines: Sequence[Line],
     labels: tuple[str, str],
     log: bool = False,
-    limit: float | None = None,
 ) -> Picture:
     """Curves in one box; `labels` of x and y; `log` is of y; a single point becomes a mark."""
     picture = Picture(name, title, description)
     top = picture.legend([(line.label, look) for look, line in enumerate(lines)], 4.0) + 10.0
     picture.height = top + 240.0
     x = np.concatenate([line.x for line in lines])
-    y = np.concatenate([line.y for line in lines] + ([] if limit is None else [np.array([limit])]))
+    y = np.concatenate([line.y for line in lines])
     y = y[np.isfinite(y)]
     across = (float(x.min()), float(x.max())) if x.max() > x.min() else widened(float(x[0]), float(x[0]))
     up = decades([y]) if log else widened(float(y.min()), float(y.max()))
     scales = Scale(*across, LEFT, WIDTH - RIGHT), Scale(*up, picture.height - 44.0, top, log)
     axes = Axes(picture, *scales).frame(*labels)
-    if limit is not None:
-        axes.limit(limit, "limit")
     for look, line in enumerate(lines):
         axes.curve(line.x, line.y, look)
         if line.x.size <= 12:

@@ -41,7 +41,6 @@ STYLE = (
     "svg .axis{stroke:currentColor;fill:none;stroke-width:1}"
     "svg .grid{stroke:currentColor;stroke-opacity:.13;fill:none}"
     "svg .curve{fill:none;stroke-width:1.6;stroke-linejoin:round}"
-    "svg .limit{stroke:currentColor;fill:none;stroke-dasharray:2 3}"
     "svg .small{font-size:11px}"
     "svg .end{text-anchor:end}svg .mid{text-anchor:middle}"
 )
@@ -243,13 +242,6 @@ class Axes:
             edge = np.concatenate([highs[start:stop], lows[start:stop][::-1]])
             style = f"fill:var(--look{look % len(COLOURS)});fill-opacity:.2"
             self._add(f'<path d="{_path(way, edge)}z" style="{style}"/>')
-
-    def limit(self, value: float, words: str = "") -> None:
-        """A dotted line across at a value, with its words above it on the right."""
-        left, _, right, _ = self.box
-        y = float(self.y(value))
-        self.picture.line(left, y, right, y, "limit")
-        self.picture.text(right - 6.0, y - 5.0, words, "end small")
 
     def _add(self, element: str) -> None:
         self.picture.parts.append(f'<g clip-path="url(#{self._clip})">{element}</g>')
