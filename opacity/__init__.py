@@ -33,6 +33,7 @@ if TYPE_CHECKING:
     from opacity.line_list.read import read_lines
     from opacity.pipeline.compare import compare
     from opacity.pipeline.explain import explain
+    from opacity.pipeline.report import report
     from opacity.recipe.load import load_recipe
     from opacity.recipe.model import Cutoff, CutoffStep
     from opacity.tables.k_read import KCoefficientTable
@@ -48,6 +49,7 @@ _HOMES = {
     "k_coefficients": "opacity.k_coefficient.public",
     "mix_k": "opacity.k_coefficient.public",
     "plan": "opacity.api",
+    "report": "opacity.pipeline.report",
     "read_lines": "opacity.line_list.read",
     "LineList": "opacity.line_list.model",
     "Comparison": "opacity.check.comparison",
@@ -92,6 +94,7 @@ __all__ = [
     "open_table",
     "plan",
     "read_lines",
+    "report",
 ]
 
 

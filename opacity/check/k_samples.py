@@ -19,7 +19,15 @@ from opacity.grids import FloatArray
 from opacity.k_coefficient.bands import BandPoints, band_points
 from opacity.k_coefficient.certificate import fine_cell_errors, two_layer_error
 from opacity.k_coefficient.collapse import CELL_BOUNDS, CELL_WIDTHS, fine_cells
-from opacity.k_coefficient.spectra import POINTS_AT_ONCE, BandLines, lines_of_bands, points_of_bands
+from opacity.k_coefficient.spectra import (
+    EDGE_ERROR,
+    FINER_AT_EDGES,
+    POINTS_AT_ONCE,
+    BandLines,
+    edge_errors,
+    lines_of_bands,
+    points_of_bands,
+)
 from opacity.k_coefficient.transmission import columns_of, means_over_g, transmission
 from opacity.recipe.model import Profile
 from opacity.tables import interpolate
@@ -176,7 +184,7 @@ def _spectra(
     wanted: Sequence[tuple[float, float]],
     executor: Executor | None,
 ) -> tuple[FloatArray, FloatArray] | None:
-    """One grid for all (T, P), as fine as any needs, and the spectra there, (n, n_nu)."""
+    """One grid for all (T, P), as fine as any needs, also where edges cut lines, and the spectra there, (n, n_nu)."""
     by_temperature: dict[float, BandLines] = {}
     temperatures = list(dict.fromkeys(t for t, _ in wanted))
     for lines in lines_of_bands(source, profile, edges, temperatures):
@@ -184,8 +192,16 @@ def _spectra(
     points = FINER * max(float(points_of_bands(by_temperature[t], edges, p)[0]) for t, p in wanted)
     if points > FINER * POINTS_AT_ONCE:
         return None
-    nu = np.linspace(edges[0], edges[1], int(points) + 1)
-    return nu, np.array([by_temperature[t].spectrum(nu, p, executor) for t, p in wanted])
+    while True:
+        nu = np.linspace(edges[0], edges[1], int(points) + 1)
+        sigma = np.array([by_temperature[t].spectrum(nu, p, executor) for t, p in wanted])
+        means = means_over_g(sigma, band_points(nu, edges).weights(0) / (edges[1] - edges[0]))
+        cut = max(
+            float(edge_errors(nu, one, edges, np.array([mean]))[0]) for one, mean in zip(sigma, means, strict=True)
+        )
+        if cut <= EDGE_ERROR or points * FINER_AT_EDGES > POINTS_AT_ONCE:
+            return nu, sigma
+        points *= FINER_AT_EDGES
 
 
 def _at_middles(

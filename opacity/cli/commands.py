@@ -10,7 +10,7 @@ from argparse import Namespace
 from pathlib import Path
 
 from opacity.cli import text
-from opacity.cli.build import DONE, FAILED, print_results
+from opacity.cli.build import DONE, FAILED
 from opacity.cli.build import build as build
 from opacity.cli.build import plan as plan
 from opacity.cli.fetch import fetch as fetch
@@ -20,49 +20,46 @@ from opacity.cli.lists import check_list, is_list
 from opacity.cli.lists import ingest as ingest
 from opacity.cli.recipes import check_recipe, is_recipe_without_table
 from opacity.cli.recipes import new as new
+from opacity.cli.results import tell_checks
 from opacity.cli.tables import compare as compare
 from opacity.cli.tables import explain as explain
+from opacity.errors import InputError, problem
 
 
 def check(arguments: Namespace) -> int:
     """`opacity check TABLE|RECIPE`: the tables of results, exit code 1 where a check differs."""
-    if is_list(Path(arguments.target)):
-        return check_list(Path(arguments.target), arguments.recipe, arguments.json)
-    if not arguments.recipe and is_recipe_without_table(Path(arguments.target), Path(arguments.output)):
+    target = Path(arguments.target)
+    if is_list(target):
+        if arguments.report:
+            raise InputError(problem("--report", "is of tables", remedy="give a table, or a recipe that has one"))
+        return check_list(target, arguments.recipe, arguments.json)
+    if not (arguments.recipe or arguments.report) and is_recipe_without_table(target, Path(arguments.output)):
         return check_recipe(arguments)
     from opacity.pipeline.recheck import check_table_file, find_tables_and_recipe
-    from opacity.recipe.unverified import accepted_in_words
+    from opacity.pipeline.report import report_table, require_page, write_report
 
-    given = Path(arguments.recipe) if arguments.recipe else None
-    targets = find_tables_and_recipe(Path(arguments.target), given, Path(arguments.output))
-    passed, found = True, []
-    for target in targets:
-        report, basis = check_table_file(target, arguments.seed, arguments.quiet)
-        passed = passed and report.passed
-        if arguments.json:
-            found.append(
-                {
-                    "table": str(target.table),
-                    "passed": report.passed,
-                    "basis": basis,
-                    "results": [row.as_dict() for row in report.results],
-                    "figures": {key: value for key, value in report.figures.items() if key != "results"},
-                }
-            )
+    page = require_page(arguments.report) if arguments.report else None
+    targets = find_tables_and_recipe(
+        target, Path(arguments.recipe) if arguments.recipe else None, Path(arguments.output)
+    )
+    found, reported = [], []
+    for number, one in enumerate(targets, start=1):
+        if page is None:
+            found.append((one.table, *check_table_file(one, arguments.seed, arguments.quiet)))
         else:
-            from_memory = accepted_in_words(report.figures.get("unverified", []))
-            facts = [("table", str(target.table)), ("basis", basis)]
-            print(text.facts([*facts, *([("accepted", f"from memory: {from_memory}")] if from_memory else [])]))
-            print_results(report.results, report.figures)
-    if arguments.json:
-        print(text.as_json(found[0] if len(found) == 1 else {"passed": passed, "tables": found}))
-    return DONE if passed else FAILED
+            reported.append(report_table(one, number, arguments.seed, arguments.quiet))
+            found.append((one.table, reported[-1].report, reported[-1].basis))
+    if page is not None:
+        write_report(page, reported)
+    tell_checks(found, arguments.json)
+    if page is not None:
+        print(f"report: {page}", file=sys.stderr if arguments.json else sys.stdout)
+    return DONE if all(report.passed for _, report, _ in found) else FAILED
 
 
 def show(arguments: Namespace) -> int:
     """`opacity show TABLE`: a summary, and with --plot a picture."""
     from opacity.cli.summary import summary, summary_lines
-    from opacity.errors import InputError, problem
     from opacity.tables.k_read import KCoefficientTable
     from opacity.tables.open import open_table
 

@@ -104,6 +104,7 @@ def _add_reading_commands(command: Callable[[str, str], argparse.ArgumentParser]
     one.add_argument(
         "--recipe", metavar="RECIPE", help="the recipe that the table was built from, or that says what a list is of"
     )
+    one.add_argument("--report", metavar="FILE.html", help="write all that is known of the table to one page too")
     one.add_argument("--seed", type=_whole, metavar="N", help="audit with other points (default: those of the build)")
     one.add_argument("--quiet", action="store_true", help="no progress")
     _add_shared(one)

@@ -15,7 +15,7 @@ from opacity.cross_sections.prepare import LinesAtTemperature, PreparedLines
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource, pieces
 from opacity.cross_sections.tolerance import regions
 from opacity.grids import FloatArray
-from opacity.k_coefficient.collapse import N_CELLS, fine_cells, merge_cells
+from opacity.k_coefficient.collapse import CELL_WIDTHS, N_CELLS, fine_cells, merge_cells
 from opacity.kernels.closure import resolution
 from opacity.kernels.node_line import LineColumns
 from opacity.recipe.model import Profile
@@ -24,6 +24,9 @@ POINTS_A_HALF_WIDTH = 2.0
 """Points to a half-width (HWHM) of the narrowest line."""
 FEWEST_POINTS = 512
 """Points that a band has at least."""
+EDGE_ERROR = 3e-4
+"""A band whose mean may be off by more than this (relative), since its edges cut through lines, gets a finer grid."""
+FINER_AT_EDGES = 4
 POINTS_AT_ONCE = 1 << 19
 """Points of a spectrum that are held at once; a band of more is merged of its parts' fine cells."""
 MOST_POINTS = 1 << 26
@@ -121,14 +124,49 @@ def collapsed(
         sigma = lines.spectrum(nu, pressure, executor)
         seen(nu, sigma)
         cells[first:last] = fine_cells(sigma, nu, edges[first : last + 1], executor)
+        means = np.sum(cells[first:last] * CELL_WIDTHS, axis=-1)
+        for band in first + np.flatnonzero(edge_errors(nu, sigma, edges[first : last + 1], means) > EDGE_ERROR):
+            pair = edges[band : band + 2]
+            if had[band] * FINER_AT_EDGES <= POINTS_AT_ONCE:
+                cells[band], had[band] = _refined(lines, pair, int(had[band]), pressure, executor)
     return BandCells(cells, np.stack([had, needed], axis=1).astype(np.float64))
 
 
 def points_of_bands(lines: BandLines, edges: FloatArray, pressure: float) -> FloatArray:
-    """How many points each band needs to resolve the narrowest line among all of them, (n_band,)."""
-    widths = np.diff(edges)
-    step = lines.narrowest(float(edges[0]), float(edges[-1]), pressure) / POINTS_A_HALF_WIDTH
-    return np.maximum(np.ceil(widths / step), float(FEWEST_POINTS))
+    """How many points each band needs, (n_band,), for the narrowest line among all of them."""
+    return points_needed(np.diff(edges), lines.narrowest(float(edges[0]), float(edges[-1]), pressure))
+
+
+def points_needed(widths: FloatArray, half_width: float | FloatArray) -> FloatArray:
+    """Points that bands of some `widths` (n_band,) need whose narrowest line has a half-width (HWHM), both cm-1."""
+    return np.maximum(np.ceil(POINTS_A_HALF_WIDTH * widths / half_width), float(FEWEST_POINTS))
+
+
+def edge_errors(nu: FloatArray, sigma: FloatArray, edges: FloatArray, means: FloatArray) -> FloatArray:
+    """Relative errors of the means of bands (n_band,) that come of edges which cut through lines, roughly.
+
+    Within the cell of a point that an edge cuts a spectrum is taken to be flat: an eighth of its slope there times the
+    step squared is off at most.
+    """
+    at = np.clip(np.searchsorted(nu, edges), 1, nu.size - 1)
+    rises = np.abs(sigma[at] - sigma[at - 1])
+    off = 0.125 * float(nu[1] - nu[0]) * (rises[:-1] + rises[1:])
+    whole = means * np.diff(edges)
+    return np.asarray(np.divide(off, whole, out=np.zeros_like(off), where=whole > 0.0))
+
+
+def _refined(
+    lines: BandLines, edges: FloatArray, points: int, pressure: float, executor: Executor | None
+) -> tuple[FloatArray, int]:
+    """The fine cells of one band on a grid so fine that its edges may cut through lines, and its points."""
+    while True:
+        points *= FINER_AT_EDGES
+        nu = _even(edges[0], edges[1], points)
+        sigma = lines.spectrum(nu, pressure, executor)
+        cells = fine_cells(sigma, nu, edges, executor)[0]
+        error = float(edge_errors(nu, sigma, edges, np.array([np.sum(cells * CELL_WIDTHS)]))[0])
+        if error <= EDGE_ERROR or points * FINER_AT_EDGES > POINTS_AT_ONCE:
+            return cells, points
 
 
 def _stretches(edges: FloatArray, points: FloatArray) -> Iterator[tuple[int, int]]:

@@ -133,7 +133,7 @@ def load_inputs(
     return Inputs(source, used.isotopologues, used.partition, provenance, origin, warnings)
 
 
-def _load_mixture(recipe: Recipe, tables: Path, origin: Fingerprint, memory: int, quiet: bool) -> Inputs:
+def _load_mixture(recipe: Recipe, tables: Path, made_of: Fingerprint, memory: int, quiet: bool) -> Inputs:
     """The lines of all species as one list, and what they came from."""
     found = [load_inputs(one.recipe, tables, None, memory, quiet) for one in recipe.species]
     for one, inputs in zip(recipe.species, found, strict=True):
@@ -141,7 +141,7 @@ def _load_mixture(recipe: Recipe, tables: Path, origin: Fingerprint, memory: int
     sources = tuple((inputs.lines, one.fraction) for one, inputs in zip(recipe.species, found, strict=True))
     origins = [inputs.provenance for inputs in found]
     provenance: dict[str, Any] = {
-        **origin.content,
+        **made_of.content,
         "records_read": sum(one["records_read"] for one in origins),
         "partition_function": {
             "source": recipe.partition_function.source,
@@ -153,16 +153,20 @@ def _load_mixture(recipe: Recipe, tables: Path, origin: Fingerprint, memory: int
             {"fraction": one.fraction, "formula": one.recipe.molecule.formula, **inputs.provenance}
             for one, inputs in zip(recipe.species, found, strict=True)
         ],
-        "unverified": list(dict.fromkeys(words for one in origins for words in one["unverified"])),
+        "unverified": [
+            {**value, "key": f"{one.recipe.molecule.formula} {value['key']}"}
+            for one, origin in zip(recipe.species, origins, strict=True)
+            for value in origin["unverified"]
+        ],
         "references": list(dict.fromkeys(words for one in origins for words in one["references"])),
-        "inputs_sha256": origin.sha256,
+        "inputs_sha256": made_of.sha256,
     }
     return Inputs(
         MixedLines(sources),
         tuple(one for inputs in found for one in inputs.isotopologues),
         tuple(one for inputs in found for one in inputs.partition),
         provenance,
-        origin,
+        made_of,
         tuple(words for inputs in found for words in inputs.warnings),
     )
 

@@ -21,7 +21,7 @@ from opacity.grids import FloatArray
 from opacity.k_coefficient.bands import band_edges
 from opacity.k_coefficient.collapse import N_CELLS
 from opacity.k_coefficient.means import mean_sums
-from opacity.k_coefficient.spectra import FEWEST_POINTS, POINTS_A_HALF_WIDTH, collapsed, lines_of_bands, margin_of
+from opacity.k_coefficient.spectra import collapsed, lines_of_bands, margin_of, points_needed
 from opacity.kernels.jit import source_hash
 from opacity.kernels.line_width import doppler_share
 from opacity.recipe.model import Recipe
@@ -76,8 +76,7 @@ def band_units(recipe: Recipe, source: LineSource, inputs_sha256: str, heaviest:
 def _points_at_most(edges: FloatArray, coldest: float, heaviest: float) -> FloatArray:
     """Points of each band where only Doppler's width is left of the lines, at the coldest node, (n_band,)."""
     share = float(doppler_share(coldest, np.array([heaviest]))[0])
-    widths = np.maximum(edges[:-1] * share, np.diff(edges) * 1e-7)
-    return np.maximum(np.diff(edges) * POINTS_A_HALF_WIDTH / widths, FEWEST_POINTS)
+    return points_needed(np.diff(edges), np.maximum(edges[:-1] * share, np.diff(edges) * 1e-7))
 
 
 def _groups(edges: FloatArray, points: FloatArray, source: LineSource, margin: float) -> list[tuple[int, int]]:

@@ -75,6 +75,16 @@ def recipe_of_log(table: Path) -> Path | None:
     return path if os.path.isfile(path) else None
 
 
+@dataclass(frozen=True)
+class Checked:
+    """A table's checks and a word on what they rest on; the recipe and its lines where they were used."""
+
+    report: CheckReport
+    basis: str
+    recipe: Recipe | None = None
+    inputs: Inputs | None = None
+
+
 def check_table_file(target: Target, seed: int | None = None, quiet: bool = False) -> tuple[CheckReport, str]:
     """Check a table on disk; the report and a word on what it rests on.
 
@@ -83,30 +93,36 @@ def check_table_file(target: Target, seed: int | None = None, quiet: bool = Fals
     one that was not built from the recipe asked for, RecipeError for one that cannot be used.
     """
     with open_table(target.table) as table:
-        if target.recipe is None:
-            return _as_stored(table, "recipe not at hand")
-        try:
-            recipe = load_recipe(target.recipe)
-            require_same_recipe(table, recipe)
-            inputs = load_inputs(recipe, table.path.parent, quiet=quiet)
-            require_same_inputs(table, recipe, inputs.provenance)
-        except OpacityError as error:
-            if target.asked_for:
-                raise
-            reason = str(error).split("\n")[0].removeprefix(f"{table.path}: ").partition("; ")[0]
-            return _as_stored(table, f"recipe of the log not used ({reason})")
-        return _again(table, recipe, inputs, seed, quiet)
+        checked = check_open_table(table, target, seed, quiet)
+    return checked.report, checked.basis
 
 
-def _as_stored(table: Table | KCoefficientTable, why: str) -> tuple[CheckReport, str]:
+def check_open_table(
+    table: Table | KCoefficientTable, target: Target, seed: int | None = None, quiet: bool = False
+) -> Checked:
+    """The same of a table that is open."""
+    if target.recipe is None:
+        return _as_stored(table, "recipe not at hand")
+    try:
+        recipe = load_recipe(target.recipe)
+        require_same_recipe(table, recipe)
+        inputs = load_inputs(recipe, table.path.parent, quiet=quiet)
+        require_same_inputs(table, recipe, inputs.provenance)
+    except OpacityError as error:
+        if target.asked_for:
+            raise
+        reason = str(error).split("\n")[0].removeprefix(f"{table.path}: ").partition("; ")[0]
+        return _as_stored(table, f"recipe of the log not used ({reason})")
+    return _again(table, recipe, inputs, seed, quiet)
+
+
+def _as_stored(table: Table | KCoefficientTable, why: str) -> Checked:
     rows = [check_integrity(table), *stored_results(table)]
     note = f"{why}: all but integrity as stored by the build; --recipe repeats them from the lines"
-    return CheckReport(tuple(rows), {**table.checks, **_unverified(table)}), note
+    return Checked(CheckReport(tuple(rows), {**table.checks, **_unverified(table)}), note)
 
 
-def _again(
-    table: Table | KCoefficientTable, recipe: Recipe, inputs: Inputs, seed: int | None, quiet: bool
-) -> tuple[CheckReport, str]:
+def _again(table: Table | KCoefficientTable, recipe: Recipe, inputs: Inputs, seed: int | None, quiet: bool) -> Checked:
     nodes = table.temperature.size if table.profile else table.temperature.size * table.pressure.size
     with Progress("checks", nodes, "nodes", quiet) as progress:
         chosen = inputs.seed if seed is None else seed
@@ -114,7 +130,7 @@ def _again(
     # What the lists say of themselves is no matter of the table's numbers: it stays as the build found it.
     stated = {key: table.checks[key] for key in ("uncertainty",) if key in table.checks}
     report = CheckReport(report.results, {**report.figures, **stated, **_unverified(table)})
-    return report, f"recomputed from {recipe.path} with seed {chosen}"
+    return Checked(report, f"recomputed from {recipe.path} with seed {chosen}", recipe, inputs)
 
 
 def _unverified(table: Table | KCoefficientTable) -> dict[str, Any]:

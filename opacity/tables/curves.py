@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -47,21 +48,25 @@ def spread(count: int, most: int) -> list[int]:
     return sorted({round(x) for x in np.linspace(0, count - 1, min(count, most))})
 
 
-def groups_of(table: Table) -> list[Group]:
-    """Temperatures at a middle pressure and pressures at a middle temperature, or the nodes of a profile."""
+def groups_of(table: Table, words: Callable[[float], str] | None = None) -> list[Group]:
+    """Temperatures at a middle pressure and pressures at a middle temperature, or the nodes of a profile.
+
+    `words` makes a pressure's words; by default they are mathematical text (`quantity`).
+    """
+    said = quantity if words is None else words
     if table.profile:
         picked = spread(table.temperature.size, 5)
-        return [_group("nodes of the profile", [(_node_label(table, i), table.spectrum(i)) for i in picked])]
+        return [_group("nodes of the profile", [(_node_label(table, i, said), table.spectrum(i)) for i in picked])]
     middle_t, middle_p = table.temperature.size // 2, table.pressure.size // 2
     warm = spread(table.temperature.size, 3)
     at_pressure = _group(
-        f"at {quantity(table.pressure[middle_p])} bar",
+        f"at {said(float(table.pressure[middle_p]))} bar",
         [(f"{table.temperature[i]:.4g} K", table.spectrum(i, middle_p)) for i in warm],
     )
     dense = spread(table.pressure.size, 4)
     at_temperature = _group(
         f"at {table.temperature[middle_t]:.4g} K",
-        [(f"{quantity(table.pressure[j])} bar", table.spectrum(middle_t, j)) for j in dense],
+        [(f"{said(float(table.pressure[j]))} bar", table.spectrum(middle_t, j)) for j in dense],
     )
     if len(dense) == 1:
         return [at_pressure]
@@ -74,8 +79,8 @@ def _group(heading: str, spectra: list[tuple[str, FloatArray]]) -> Group:
     return Group(heading, tuple(Curve(label, values, look) for look, (label, values) in enumerate(spectra)))
 
 
-def _node_label(table: Table, node: int) -> str:
-    return f"{table.temperature[node]:.4g} K, {quantity(table.pressure[node])} bar"
+def _node_label(table: Table, node: int, said: Callable[[float], str]) -> str:
+    return f"{table.temperature[node]:.4g} K, {said(float(table.pressure[node]))} bar"
 
 
 def quantity(value: float) -> str:

@@ -26,9 +26,9 @@ def draw_k_table(table: KCoefficientTable, path: Path) -> Path:
 
 
 def _fill(figure: Any, table: KCoefficientTable) -> None:
-    bands, errors = spread(table.band.size, 3), _errors(table)
+    bands, errors = spread(table.band.size, 3), band_errors(table)
     grid = figure.add_gridspec(2 if errors else 1, len(bands), height_ratios=(2, 1) if errors else (1,))
-    nodes = _nodes(table)
+    nodes = some_nodes(table)
     values = [table.k(*node) for node in nodes]
     limits = _limits([k[band] for k in values for band in bands])
     for column, band in enumerate(bands):
@@ -73,7 +73,7 @@ def _draw_errors(axes: Any, table: KCoefficientTable, errors: dict[str, FloatArr
     axes.legend(loc="upper left", handlelength=3.0, ncols=len(errors))
 
 
-def _errors(table: KCoefficientTable) -> dict[str, FloatArray]:
+def band_errors(table: KCoefficientTable) -> dict[str, FloatArray]:
     """What the certificate says of every band, (n_band,) each; nothing where it holds no error for every band."""
     certificate = table.checks.get("certificate")
     if not isinstance(certificate, dict):
@@ -95,7 +95,7 @@ def _errors(table: KCoefficientTable) -> dict[str, FloatArray]:
     return found if fits and any(np.any(values > 0.0) for values in found.values()) else {}
 
 
-def _nodes(table: KCoefficientTable) -> list[tuple[int, ...]]:
+def some_nodes(table: KCoefficientTable) -> list[tuple[int, ...]]:
     """Up to five nodes: along a profile, or the corners and the middle of a grid."""
     if table.profile:
         return [(i,) for i in spread(table.temperature.size, 5)]

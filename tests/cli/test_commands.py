@@ -10,7 +10,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from opacity.cli import commands, summary
+from opacity.check import table_facts
+from opacity.cli import commands
 
 
 def test_plan_tells_what_a_build_needs(opacity, project):
@@ -207,7 +208,7 @@ def test_show_says_why_values_take_eight_bytes(dtype, why):
         pass
 
     Stored.dtype = np.dtype(dtype)
-    assert summary._stored_as(Stored) == f"{np.dtype(dtype).name}{why}"
+    assert table_facts._stored_as(Stored) == f"{np.dtype(dtype).name}{why}"
 
 
 def test_a_table_of_another_make_is_shown_as_far_as_it_goes(opacity):
