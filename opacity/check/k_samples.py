@@ -19,14 +19,14 @@ from opacity.grids import FloatArray
 from opacity.k_coefficient.bands import BandPoints, band_points
 from opacity.k_coefficient.certificate import fine_cell_errors, two_layer_error
 from opacity.k_coefficient.collapse import CELL_BOUNDS, CELL_WIDTHS, fine_cells
+from opacity.k_coefficient.spectra import FINER as TIMES
 from opacity.k_coefficient.spectra import (
-    EDGE_ERROR,
-    FINER_AT_EDGES,
     POINTS_AT_ONCE,
+    SAMPLING_ERROR,
     BandLines,
-    edge_errors,
     lines_of_bands,
     points_of_bands,
+    sampling_errors,
 )
 from opacity.k_coefficient.transmission import columns_of, means_over_g, transmission
 from opacity.recipe.model import Profile
@@ -184,7 +184,7 @@ def _spectra(
     wanted: Sequence[tuple[float, float]],
     executor: Executor | None,
 ) -> tuple[FloatArray, FloatArray] | None:
-    """One grid for all (T, P), as fine as any needs, also where edges cut lines, and the spectra there, (n, n_nu)."""
+    """One grid for all (T, P), as fine as any needs, edges and cut-offs among it, and the spectra there, (n, n_nu)."""
     by_temperature: dict[float, BandLines] = {}
     temperatures = list(dict.fromkeys(t for t, _ in wanted))
     for lines in lines_of_bands(source, profile, edges, temperatures):
@@ -193,15 +193,12 @@ def _spectra(
     if points > FINER * POINTS_AT_ONCE:
         return None
     while True:
-        nu = np.linspace(edges[0], edges[1], int(points) + 1)
+        nu = np.linspace(edges[0], edges[1], 2 * int(0.5 * points) + 1)
         sigma = np.array([by_temperature[t].spectrum(nu, p, executor) for t, p in wanted])
-        means = means_over_g(sigma, band_points(nu, edges).weights(0) / (edges[1] - edges[0]))
-        cut = max(
-            float(edge_errors(nu, one, edges, np.array([mean]))[0]) for one, mean in zip(sigma, means, strict=True)
-        )
-        if cut <= EDGE_ERROR or points * FINER_AT_EDGES > POINTS_AT_ONCE:
+        off = max(float(sampling_errors(nu, one, edges)[0]) for one in sigma)
+        if off <= SAMPLING_ERROR or points * TIMES > POINTS_AT_ONCE:
             return nu, sigma
-        points *= FINER_AT_EDGES
+        points *= TIMES
 
 
 def _at_middles(

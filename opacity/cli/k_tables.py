@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import sys
 from argparse import Namespace
 from collections.abc import Callable
 from pathlib import Path
@@ -25,12 +26,12 @@ def add_commands(command: Callable[[str, str], argparse.ArgumentParser]) -> None
     one.add_argument("--weights", choices=WEIGHTS, help="made to fit, all bands alike or each, or fixed")
     one.add_argument("-o", "--output", metavar="DIR", required=True, help="folder of the new tables")
     one.add_argument("--json", action="store_true", help="the result as JSON on stdout")
-    one.add_argument("--quiet", action="store_true", help="no progress")
+    one.add_argument("--quiet", action="store_true", help="only warnings and the table's name")
     one = command("mix", "mix k-coefficient tables of several species by random overlap")
     one.add_argument("parts", metavar="TABLE=FRACTION", nargs="+", type=_part, help="with its mole fraction")
     one.add_argument("-o", "--output", metavar="FILE.h5", required=True, help="the table of the mixture")
     one.add_argument("--json", action="store_true", help="the result as JSON on stdout")
-    one.add_argument("--quiet", action="store_true", help="no progress")
+    one.add_argument("--quiet", action="store_true", help="only warnings and the table's name")
 
 
 def _part(word: str) -> tuple[Path, float]:
@@ -53,17 +54,19 @@ def g_points(arguments: Namespace) -> int:
     weights = arguments.weights or ("optimised" if quadrature == "matched" else "fixed")
     wanted = Wanted(arguments.count, arguments.transmission_error, quadrature, weights)
     made = choose_again([Path(one) for one in arguments.tables], wanted, Path(arguments.output), quiet=arguments.quiet)
-    return _tell(made, arguments.json)
+    return _tell(made, arguments.json, arguments.quiet)
 
 
 def mix(arguments: Namespace) -> int:
     """`opacity mix TABLE=FRACTION... -o FILE.h5`: the table of the mixture."""
     from opacity.pipeline.k_files import mix_tables
 
-    return _tell([mix_tables(arguments.parts, Path(arguments.output), arguments.quiet)], arguments.json)
+    made = mix_tables(arguments.parts, Path(arguments.output), arguments.quiet)
+    return _tell([made], arguments.json, arguments.quiet)
 
 
-def _tell(made: list[tuple[Path, dict[str, Any]]], as_json: bool) -> int:
+def _tell(made: list[tuple[Path, dict[str, Any]]], as_json: bool, quiet: bool) -> int:
+    """What was made, and what is to be warned of."""
     from opacity.check.result import DIFFERS, CheckResult
 
     failed = any(row["verdict"] == DIFFERS for _, checks in made for row in checks["results"])
@@ -72,6 +75,9 @@ def _tell(made: list[tuple[Path, dict[str, Any]]], as_json: bool) -> int:
         print(text.as_json({"passed": not failed, "tables": tables}))
     else:
         for path, checks in made:
-            print_results([CheckResult(**row) for row in checks["results"]], checks)
+            for warning in checks.get("warnings", []):
+                print(text.wrapped(f"warning: {warning}"), file=sys.stderr)
+            if not quiet:
+                print_results([CheckResult(**row) for row in checks["results"]], checks)
             print(f"table: {path}")
     return FAILED if failed else DONE

@@ -60,11 +60,18 @@ def check_recipe(arguments: Namespace) -> int:
 
 
 def _facts(recipe: Recipe) -> list[tuple[str, str]]:
-    mixture = ", ".join(f"{name} {fraction:g}" for name, fraction in recipe.broadening.mixture.items())
+    from opacity.k_coefficient.bands import band_edges
+
     nodes = text.counted(len(recipe.grid.node_list()), "node")
+    points = [text.counted(recipe.grid.wavenumber.size, "point")] if recipe.cross_section else []
+    points += [text.counted(band_edges(recipe).size - 1, "band")] if recipe.k_coefficient is not None else []
+    mixtures = dict.fromkeys(
+        ", ".join(f"{name} {fraction:g}" for name, fraction in part.broadening.mixture.items()) for part in recipe.parts
+    )
     return [
         ("recipe", f"{recipe.path}: nothing is missing; there is no table yet, so nothing else is checked"),
-        ("lines", ", ".join(name for source in recipe.line_lists for name in source.files)),
-        ("broadening", mixture),
-        ("grid", f"{nodes} of {text.counted(recipe.grid.wavenumber.size, 'point')}"),
+        *[("species", f"{one.fraction:g} {one.recipe.molecule.formula}") for one in recipe.species],
+        ("lines", ", ".join(name for part in recipe.parts for source in part.line_lists for name in source.files)),
+        *[("broadening", one) for one in mixtures],
+        ("grid", f"{nodes} of {' and of '.join(points)}"),
     ]

@@ -15,8 +15,10 @@ from opacity.cross_sections.prepare import LinesAtTemperature, PreparedLines
 from opacity.cross_sections.source import LINES_AT_ONCE, LineSource, pieces
 from opacity.cross_sections.tolerance import regions
 from opacity.grids import FloatArray
-from opacity.k_coefficient.collapse import CELL_WIDTHS, N_CELLS, fine_cells, merge_cells
+from opacity.k_coefficient.bands import band_points
+from opacity.k_coefficient.collapse import N_CELLS, fine_cells, merge_cells
 from opacity.kernels.closure import resolution
+from opacity.kernels.collapse import band_means
 from opacity.kernels.node_line import LineColumns
 from opacity.recipe.model import Profile
 
@@ -24,9 +26,9 @@ POINTS_A_HALF_WIDTH = 2.0
 """Points to a half-width (HWHM) of the narrowest line."""
 FEWEST_POINTS = 512
 """Points that a band has at least."""
-EDGE_ERROR = 3e-4
-"""A band whose mean may be off by more than this (relative), since its edges cut through lines, gets a finer grid."""
-FINER_AT_EDGES = 4
+SAMPLING_ERROR = 3e-4
+"""A band gets a finer grid where its mean by every other point differs by more than this (relative)."""
+FINER = 4
 POINTS_AT_ONCE = 1 << 19
 """Points of a spectrum that are held at once; a band of more is merged of its parts' fine cells."""
 MOST_POINTS = 1 << 26
@@ -124,10 +126,9 @@ def collapsed(
         sigma = lines.spectrum(nu, pressure, executor)
         seen(nu, sigma)
         cells[first:last] = fine_cells(sigma, nu, edges[first : last + 1], executor)
-        means = np.sum(cells[first:last] * CELL_WIDTHS, axis=-1)
-        for band in first + np.flatnonzero(edge_errors(nu, sigma, edges[first : last + 1], means) > EDGE_ERROR):
+        for band in first + np.flatnonzero(sampling_errors(nu, sigma, edges[first : last + 1]) > SAMPLING_ERROR):
             pair = edges[band : band + 2]
-            if had[band] * FINER_AT_EDGES <= POINTS_AT_ONCE:
+            if had[band] * FINER <= POINTS_AT_ONCE:
                 cells[band], had[band] = _refined(lines, pair, int(had[band]), pressure, executor)
     return BandCells(cells, np.stack([had, needed], axis=1).astype(np.float64))
 
@@ -142,30 +143,33 @@ def points_needed(widths: FloatArray, half_width: float | FloatArray) -> FloatAr
     return np.maximum(np.ceil(POINTS_A_HALF_WIDTH * widths / half_width), float(FEWEST_POINTS))
 
 
-def edge_errors(nu: FloatArray, sigma: FloatArray, edges: FloatArray, means: FloatArray) -> FloatArray:
-    """Relative errors of the means of bands (n_band,) that come of edges which cut through lines, roughly.
+def sampling_errors(nu: FloatArray, sigma: FloatArray, edges: FloatArray) -> FloatArray:
+    """Relative differences of the means of bands (n_band,) by all points and by every other one, of an odd number.
 
-    Within the cell of a point that an edge cuts a spectrum is taken to be flat: an eighth of its slope there times the
-    step squared is off at most.
+    Where bands' edges cut through lines, and where lines end at their cut-offs, the mean by all points is off by less
+    than that; elsewhere both agree, since even the wider step resolves the lines.
     """
-    at = np.clip(np.searchsorted(nu, edges), 1, nu.size - 1)
-    rises = np.abs(sigma[at] - sigma[at - 1])
-    off = 0.125 * float(nu[1] - nu[0]) * (rises[:-1] + rises[1:])
-    whole = means * np.diff(edges)
-    return np.asarray(np.divide(off, whole, out=np.zeros_like(off), where=whole > 0.0))
+    means = []
+    for step in (1, 2):
+        points = band_points(nu[::step], edges)
+        mean = np.empty(points.first.size)
+        values = np.ascontiguousarray(sigma[::step])
+        band_means(values, points.borders, points.edges, points.first, points.last, mean)
+        means.append(mean)
+    fine, coarse = means
+    return np.asarray(np.divide(np.abs(coarse - fine), fine, out=np.zeros_like(fine), where=fine > 0.0))
 
 
 def _refined(
     lines: BandLines, edges: FloatArray, points: int, pressure: float, executor: Executor | None
 ) -> tuple[FloatArray, int]:
-    """The fine cells of one band on a grid so fine that its edges may cut through lines, and its points."""
+    """The fine cells of one band on a grid so fine that edges and cut-offs do no harm, and its points."""
     while True:
-        points *= FINER_AT_EDGES
+        points *= FINER
         nu = _even(edges[0], edges[1], points)
         sigma = lines.spectrum(nu, pressure, executor)
         cells = fine_cells(sigma, nu, edges, executor)[0]
-        error = float(edge_errors(nu, sigma, edges, np.array([np.sum(cells * CELL_WIDTHS)]))[0])
-        if error <= EDGE_ERROR or points * FINER_AT_EDGES > POINTS_AT_ONCE:
+        if float(sampling_errors(nu, sigma, edges)[0]) <= SAMPLING_ERROR or points * FINER > POINTS_AT_ONCE:
             return cells, points
 
 
@@ -205,4 +209,5 @@ def _merged(
 
 
 def _even(lower: float, upper: float, steps: int) -> FloatArray:
-    return np.linspace(lower, upper, max(steps, 1) + 1)
+    """Evenly spaced points, an odd number of them, with `steps` or one more between."""
+    return np.linspace(lower, upper, 2 * math.ceil(max(steps, 1) / 2) + 1)

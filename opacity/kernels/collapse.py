@@ -168,3 +168,15 @@ def collapse_bands(
             weights[i] = min(borders[start + i + 1], high) - max(borders[start + i], low)
         values, its_bits = sigma[start : start + n], bits[start : start + n]
         _collapse(values, its_bits, weights[:n], widths, cells[band], keys[:n], spare[:n])
+
+
+@jit_exact
+def band_means(
+    sigma: Array, borders: Array, edges: Array, first: NDArray[np.int64], last: NDArray[np.int64], means: Array
+) -> None:
+    """Fill `means` (n_band,) with the means of a spectrum (n_nu,) in bands; arguments as those of `collapse_bands`."""
+    for band in range(first.size):
+        low, high, total = edges[band], edges[band + 1], 0.0
+        for i in range(first[band], last[band]):
+            total += sigma[i] * (min(borders[i + 1], high) - max(borders[i], low))
+        means[band] = total / (high - low)

@@ -178,7 +178,8 @@ def _notes(a: Table | KCoefficientTable, b: Table | KCoefficientTable | NumberCo
             ("abundance", ("abundance",)),
             ("line lists", ("line_lists",)),
         )
-        if _said(a.provenance, path) != _said(b.provenance, path)
+        # A mixture made of tables says nothing of these.
+        if None not in (said := (_said(a.provenance, path), _said(b.provenance, path))) and said[0] != said[1]
     ]
     return [*notes, f"made with different {', '.join(differing)}"] if differing else notes
 

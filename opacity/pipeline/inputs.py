@@ -167,7 +167,12 @@ def _load_mixture(recipe: Recipe, tables: Path, made_of: Fingerprint, memory: in
         tuple(one for inputs in found for one in inputs.partition),
         provenance,
         made_of,
-        tuple(words for inputs in found for words in inputs.warnings),
+        tuple(words for inputs in found for words in inputs.warnings)
+        + tuple(
+            f"no line of {one.recipe.molecule.formula} reaches the grid: the mixture is without it"
+            for one, inputs in zip(recipe.species, found, strict=True)
+            if not len(inputs.lines)
+        ),
     )
 
 

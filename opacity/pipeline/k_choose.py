@@ -86,6 +86,7 @@ def choose_certified(
         largest = max(float(found.max()) for found in errors)
         if not any(one.size for one in failed):
             if target is None or largest <= limit:
+                points, how = _fewer(aimed, training, tables, seed, (points, how), limit, executor)
                 return points, how, trained
             aimed = replace(aimed, transmission_error=TIGHTER * aimed.transmission_error * target / largest)
         nodes = [
@@ -99,6 +100,27 @@ def choose_certified(
         error = InputError(problem("transmission_error", "is not met", expected=expected, found=found_, remedy=remedy))
         raise error.about("transmission_error")
     return points, how, trained
+
+
+def _fewer(
+    wanted: Wanted,
+    training: Sequence[Training],
+    tables: Sequence[NodeCells],
+    seed: int,
+    chosen: tuple[GPoints, dict[str, Any]],
+    limit: float,
+    executor: Executor | None,
+) -> tuple[GPoints, dict[str, Any]]:
+    """Fewer points where they are certified too: those chosen keep a margin at the nodes that they are fitted to."""
+    if wanted.count is not None or wanted.weights == "fixed":
+        return chosen
+    points, how = chosen
+    while points.count > 1:
+        fewer, said = _chosen(replace(wanted, count=points.count - 1), training, seed, None, executor)
+        if max(float(_largest_errors(one, fewer, executor).max()) for one in tables) > limit:
+            break
+        points, how = fewer, {**how, **said}
+    return points, how
 
 
 def _chosen(

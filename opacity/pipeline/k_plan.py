@@ -14,6 +14,7 @@ from opacity.cross_sections.tolerance import regions
 from opacity.k_coefficient.bands import band_edges
 from opacity.k_coefficient.choose import MOST_ROWS
 from opacity.k_coefficient.collapse import N_CELLS
+from opacity.k_coefficient.quadrature import INTERVALS
 from opacity.k_coefficient.spectra import (
     MOST_POINTS,
     POINTS_AT_ONCE,
@@ -92,7 +93,12 @@ def make_k_plan(
         ),
         limited=(f"memory allows {count} of {asked} workers",) if count < min(asked, len(units)) else (),
         coarse_nodes=(),
-        warnings=(*inputs.warnings, *amount.warnings, *warnings_of(recipe, inputs, [], temperatures)),
+        warnings=(
+            *inputs.warnings,
+            *amount.warnings,
+            *_means_lost(recipe),
+            *warnings_of(recipe, inputs, [], temperatures),
+        ),
         assumptions=tuple((one.what, one.lines) for one in lines.assumptions),
         ledger=lines.ledger.as_dict(),
         bands=bands,
@@ -104,6 +110,16 @@ def plan_all(recipe: Recipe, inputs: Inputs, folder: Path, memory: int) -> Plan:
     planned = {CROSS_SECTION: make_plan, K_COEFFICIENT: make_k_plan}
     first, *others = (planned[kind](recipe, inputs, folder, memory=memory) for kind in wanted(recipe))
     return replace(first, others=tuple(others))
+
+
+def _means_lost(recipe: Recipe) -> list[str]:
+    """A warning where the quadrature chosen does not keep the means of bands."""
+    assert recipe.k_coefficient is not None
+    quadrature = recipe.k_coefficient.quadrature
+    if quadrature in INTERVALS:
+        return []
+    what = f'the quadrature "{quadrature}" does not keep the means of bands, which may be off by most of their value'
+    return [f'{what} at low pressures; "matched" and "interval-mean" keep them']
 
 
 @dataclass(frozen=True)

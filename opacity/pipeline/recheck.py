@@ -119,6 +119,8 @@ def check_open_table(
 def _as_stored(table: Table | KCoefficientTable, why: str) -> Checked:
     rows = [check_integrity(table), *stored_results(table)]
     note = f"{why}: all but integrity as stored by the build; --recipe repeats them from the lines"
+    if "mixed" in table.provenance:
+        note = "mixed of other tables, and so without lines: all but integrity as stored"
     return Checked(CheckReport(tuple(rows), {**table.checks, **_unverified(table)}), note)
 
 

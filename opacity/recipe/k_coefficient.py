@@ -37,11 +37,15 @@ def read_k_coefficient(root: Table, grid: Grid) -> KCoefficientChoice | None:
     weights = table.choice("weights", WEIGHTS, default="optimised" if quadrature == "matched" else "fixed")
     auto = table.values.get("g_points") == "auto"
     least = 2 if quadrature == "split" else 1
-    count = None if auto else table.count("g_points", least, MOST_POINTS) if "g_points" in table else 16
+    named = isinstance(table.values.get("g_points"), str)
+    if named and not auto:
+        expected = f'"auto" or a whole number from {least} to {MOST_POINTS}'
+        table.faults.add(table.path("g_points"), "impossible", expected=expected, found=shown(table.values["g_points"]))
+    count = None if named else table.count("g_points", least, MOST_POINTS) if "g_points" in table else 16
     if (auto or weights != "fixed") and quadrature != "matched":
         what = "goes with the quadrature matched alone"
         table.faults.add(table.path("g_points" if auto else "weights"), what, found=shown(quadrature))
-    if "transmission_error" in table and not auto:
+    if "transmission_error" in table and not named:
         table.faults.add(table.path("transmission_error"), 'goes with g_points = "auto" alone')
     return KCoefficientChoice(
         _bands(table, grid), count, table.number("transmission_error", _ERROR, 5e-3), quadrature, weights
