@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.kernels.chi import chi_at, weigh
-from opacity.kernels.jit import jit, jit_exact, jit_inline
+from opacity.kernels.jit import jit, jit_exact
 from opacity.kernels.node_line import (
     SMALLEST_Y,
     Formulas,
@@ -91,7 +91,7 @@ def add_weighted(out: Array, nu: Array, first: int, last: int, line: LineAtNode,
     weigh(out[first:last], values, nu[first:last], line.centre, line.plinth, factor, rate)
 
 
-@jit_inline
+@jit
 def line_in_reach(
     nu: Array,
     nu0: float,
@@ -115,7 +115,7 @@ def line_in_reach(
     return first, last, line
 
 
-@jit_inline
+@jit
 def stretch(nu: Array, centre: float, chi: Array, number: int, first: int, last: int) -> tuple[int, int, float, float]:
     """One of the 2 n - 1 stretches in which a line's points have one row of n chi factors: low, high, factor and rate.
 

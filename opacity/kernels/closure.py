@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from opacity.kernels.accumulate import first_not_below
 from opacity.kernels.chi import chi_at
-from opacity.kernels.jit import jit, jit_exact, jit_inline
+from opacity.kernels.jit import jit, jit_exact
 from opacity.kernels.line_width import LOWEST_SHIFTED, voigt_half_width
 from opacity.kernels.node_line import SQRT_LN2, LineColumns
 from opacity.kernels.profile_tail import VERY_FAR, derivatives, share, tail, value, very_far
@@ -69,7 +69,7 @@ class Sampled(NamedTuple):
     offset: float
 
 
-@jit_inline
+@jit
 def centred(nu0: float, shift: float, lorentz: float, doppler: float, pressure: float) -> Centred:
     """A line of `LineColumns` at a pressure (bar)."""
     centre = nu0 + pressure * shift
@@ -77,7 +77,7 @@ def centred(nu0: float, shift: float, lorentz: float, doppler: float, pressure: 
     return Centred(nu0, centre, scale, pressure * lorentz * scale)
 
 
-@jit_inline
+@jit
 def share_within(line: Centred, reach: Reach, chi: Array) -> float:
     """Share of a profile, times its chi factors, inside cut-off and limits; less the plinth."""
     lower = max(line.nu0 - reach.cutoff, reach.first)
@@ -130,7 +130,7 @@ def _decaying_share(line: Centred, start: float, stop: float, rate: float) -> fl
     return total * half * line.scale * INV_SQRT_PI
 
 
-@jit_inline
+@jit
 def sampled(s: float, y: float, phase: float) -> Sampled:
     """What points a step s apart make of a profile; `phase` is how many steps its centre lies from a point."""
     rate, square = 2.0 * math.pi * y / s, (math.pi / s) ** 2
@@ -158,13 +158,13 @@ def sampled(s: float, y: float, phase: float) -> Sampled:
     return Sampled(risk, offset)
 
 
-@jit_inline
+@jit
 def _risk(s: float, y: float) -> float:
     decay = 2.0 * math.pi * y / s + (math.pi / s) ** 2
     return min(2.0 * math.exp(-decay), 1.0) if decay < _NEGLIGIBLE else 0.0
 
 
-@jit_inline
+@jit
 def _part(line: Centred, reach: Reach, chi: Array) -> Part:
     """What of a profile is in reach, and its K at the cuts."""
     low, high = line.nu0 - reach.cutoff, line.nu0 + reach.cutoff
@@ -182,7 +182,7 @@ def _part(line: Centred, reach: Reach, chi: Array) -> Part:
     return Part(share_within(line, reach, chi), at_cut)
 
 
-@jit_inline
+@jit
 def _ends(line: Centred, reach: Reach, at_cut: float, step: float, risk: float) -> float:
     """How far the trapezoid sum of a profile may be off at the cut-off's steps and across the grid's ends.
 

@@ -4,6 +4,10 @@
 infinity undefined are left out, so that a NaN that gets in comes out.  Kernels are single-threaded and release the
 interpreter lock: the caller runs tiles side by side in threads, and results do not depend on their number.
 
+What a kernel calls is made part of it. Otherwise a process that loads machine code from disk may link it with another
+copy of the function called than the process that compiled it, optimised for another caller and rounding otherwise: bits
+would depend on the order in which kernels were once compiled.
+
 Machine code is kept on disk.  numba judges its age by the file of the function alone, not by the files of the
 functions that it calls: so it is kept in a folder named by a hash of all kernels' source, in the first place that
 can be written to; where there is none it is not kept, since numba's own choice of place would not know the hash.
@@ -106,12 +110,8 @@ def jit_in_order(function: Function) -> Function:
     return _compile(function, fastmath={"contract"})
 
 
-def jit_inline(function: Function) -> Function:
-    """As `jit`, for small functions called for each line: made part of their callers."""
-    return _compile(function, fastmath=_FAST_MATH, forceinline=True)
-
-
-def _compile(function: Function, **options: Any) -> Function:
+def _compile(function: Function, fastmath: bool | set[str]) -> Function:
+    options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "forceinline": True, "fastmath": fastmath}
     with _cache_of_this_source():
-        compiled: Any = numba.njit(nogil=True, cache=_FOLDER is not None, error_model="numpy", **options)(function)
+        compiled: Any = numba.njit(cache=_FOLDER is not None, **options)(function)
     return cast(Function, compiled)

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from opacity.constants import DOPPLER_HWHM, REFERENCE_TEMPERATURE
-from opacity.kernels.jit import jit_inline
+from opacity.kernels.jit import jit
 
 Array = NDArray[np.float64]
 
@@ -39,7 +39,7 @@ def pressure_half_width(gamma: Array, exponent: Array, temperature: float, press
     return np.asarray(pressure * np.sum(gamma * (REFERENCE_TEMPERATURE / temperature) ** exponent, axis=0))
 
 
-@jit_inline
+@jit
 def voigt_half_width(doppler: float, lorentz: float) -> float:
     """Half-width at half maximum of a Voigt profile from both half-widths, in their unit.
 

@@ -7,7 +7,7 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.kernels.jit import jit, jit_inline
+from opacity.kernels.jit import jit
 
 Array = NDArray[np.float64]
 
@@ -20,7 +20,7 @@ WIDEST = 2e-3
 _NEARLY_0 = 1e-320
 
 
-@jit_inline
+@jit
 def _planck(x: float, start: float) -> tuple[float, float]:
     """Planck's function and its slope in T at x = c2 nu / T, both without their constants and times exp(start)."""
     if x <= 0.0:

@@ -12,7 +12,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.kernels.jit import jit, jit_inline
+from opacity.kernels.jit import jit
 from opacity.kernels.line_width import LOWEST_SHIFTED
 from opacity.kernels.voigt import INV_SQRT_PI, NARROW_X, NARROW_Y, add_core, add_far, add_narrow, add_near
 
@@ -62,7 +62,7 @@ class LineAtNode(NamedTuple):
     near: float
 
 
-@jit_inline
+@jit
 def region_radii(y: float, near_radius: float, far_radius: float, exponential: Array) -> tuple[float, float]:
     """Distances |x| up to which a core formula, and up to which `near`, is needed; -1 where not at all."""
     y2 = y * y
@@ -76,7 +76,7 @@ def region_radii(y: float, near_radius: float, far_radius: float, exponential: A
     return core, near
 
 
-@jit_inline
+@jit
 def line_at_node(
     nu0: float,
     shift: float,

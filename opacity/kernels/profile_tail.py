@@ -17,7 +17,7 @@ import math
 import numpy as np
 from numpy.typing import NDArray
 
-from opacity.kernels.jit import jit, jit_inline
+from opacity.kernels.jit import jit
 from opacity.kernels.voigt import INV_SQRT_PI, NARROW_Y, add_core, add_narrow, weideman_coefficients
 
 Array = NDArray[np.float64]
@@ -36,7 +36,7 @@ _TERMS = 48
 _WEIDEMAN, _LENGTH = weideman_coefficients(_TERMS)
 
 
-@jit_inline
+@jit
 def _inverse_square(x: float, y: float, r2: float) -> complex:
     """1/z^2 where |z|^2 = r2."""
     inverse = 1.0 / r2
@@ -44,7 +44,7 @@ def _inverse_square(x: float, y: float, r2: float) -> complex:
     return complex(re * re - im * im, 2.0 * re * im)
 
 
-@jit_inline
+@jit
 def _angle(x: float, y: float) -> float:
     """arg z for x >= 0."""
     if y < _FLAT * x:
@@ -54,7 +54,7 @@ def _angle(x: float, y: float) -> float:
     return math.atan2(y, x)
 
 
-@jit_inline
+@jit
 def _far_tail(x: float, y: float, r2: float) -> float:
     """T for x >= 0 by the series."""
     u = _inverse_square(x, y, r2)
@@ -80,7 +80,7 @@ def _near_tail(x: float, y: float) -> float:
     return _far_tail(FAR, y, _FAR2 + y * y) + half * total * INV_SQRT_PI
 
 
-@jit_inline
+@jit
 def tail(x: float, y: float) -> float:
     """T(x, y); relative error below 2e-7 for x >= 0, below 0 that of 1 - T(-x, y)."""
     distance = abs(x)
@@ -89,7 +89,7 @@ def tail(x: float, y: float) -> float:
     return found if x >= 0.0 else 1.0 - found
 
 
-@jit_inline
+@jit
 def share(start: float, stop: float, y: float) -> float:
     """Integral of K(t, y)/sqrt(pi) from one x to another, 0 where `stop` <= `start`.
 
@@ -112,7 +112,7 @@ def _near_value(x: float, y: float) -> float:
     return float(out[0])
 
 
-@jit_inline
+@jit
 def value(x: float, y: float) -> float:
     """K(x, y), relative error below 2e-7."""
     r2 = x * x + y * y
@@ -126,7 +126,7 @@ def value(x: float, y: float) -> float:
     return INV_SQRT_PI * (y * series.real - x * series.imag) / r2
 
 
-@jit_inline
+@jit
 def very_far(x: float, y: float) -> tuple[float, float]:
     """T and K for x >= VERY_FAR, both from one division."""
     r2 = x * x + y * y
@@ -152,7 +152,7 @@ def _near_derivatives(x: float, y: float) -> tuple[float, float]:
     return first.real, third.real
 
 
-@jit_inline
+@jit
 def derivatives(x: float, y: float) -> tuple[float, float]:
     """First and third derivative of K(x, y) with respect to x; beyond |z| = 6 relative error below 2e-4."""
     r2 = x * x + y * y

@@ -21,7 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import dawsn
 
-from opacity.kernels.jit import jit, jit_inline
+from opacity.kernels.jit import jit
 
 Array = NDArray[np.float64]
 
@@ -64,7 +64,7 @@ _T1, _T2, _T3 = (float(t * t) for t in _T[3:])
 _W1, _W2, _W3 = (float(2.0 * w / math.sqrt(math.pi)) for w in _W[3:])
 
 
-@jit_inline
+@jit
 def add_far(
     out: Array, nu: Array, first: int, last: int, centre: float, scale: float, y: float, amplitude: float, plinth: float
 ) -> None:

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from opacity.kernels.accumulate import add_line, add_weighted, line_in_reach, stretch
 from opacity.kernels.cells import CELL_BITS, NODES, RATIO_BITS, Frame, Tree, sums_to_points
 from opacity.kernels.chi import weigh
-from opacity.kernels.jit import jit, jit_inline
+from opacity.kernels.jit import jit
 from opacity.kernels.node_line import (
     SMALLEST_Y,
     Formulas,
@@ -87,7 +87,7 @@ def add_lines_by_cells(
     return -1
 
 
-@jit_inline
+@jit
 def _not_below(value: float, low: int, high: int) -> int:
     """The first whole number not below a value, within low..high; the value may be infinite."""
     if not value > low:
@@ -95,7 +95,7 @@ def _not_below(value: float, low: int, high: int) -> int:
     return high if value >= high else math.ceil(value)
 
 
-@jit_inline
+@jit
 def _not_above(value: float, low: int, high: int) -> int:
     """The last whole number not above a value, within low..high; the value may be infinite."""
     if not value > low:
@@ -103,7 +103,7 @@ def _not_above(value: float, low: int, high: int) -> int:
     return high if value >= high else math.floor(value)
 
 
-@jit_inline
+@jit
 def _place(frame: Frame, line: LineAtNode, nu0: float, cutoff: float, subtract_plinth: bool) -> Place:
     gamma, unit = line.y / line.scale, 1.0 / line.scale
     if frame.in_log:
@@ -147,7 +147,7 @@ class Level(NamedTuple):
     near_high: int
 
 
-@jit_inline
+@jit
 def _level(frame: Frame, bits: int, low: int, high: int, place: Place, decay: float) -> Level:
     """What a level of cells 2^bits points wide can do for a line; `decay` is the chi factor's rate per point, or 0."""
     per_width = 1.0 / (1 << bits)
@@ -231,7 +231,7 @@ def _add_line(
     _add_points(out, nu, right, last, line, place, factor, rate)
 
 
-@jit_inline
+@jit
 def _add_cells(
     sums: Array,
     places: Array,
