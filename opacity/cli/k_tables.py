@@ -40,8 +40,8 @@ def _part(word: str) -> tuple[Path, float]:
         number = float(fraction)
     except ValueError:
         number = -1.0
-    if not equals or not name or not 0.0 < number <= 1.0:
-        raise argparse.ArgumentTypeError(f"expected TABLE=FRACTION, above 0 and at most 1, found {word!r}")
+    if not equals or not name or not 1e-30 <= number <= 1.0:
+        raise argparse.ArgumentTypeError(f"expected TABLE=FRACTION, 1e-30 to 1, found {word!r}")
     return Path(name), number
 
 

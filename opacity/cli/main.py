@@ -231,9 +231,9 @@ class _Signals:
     seen: KeyboardInterrupt | None = None
 
     def __call__(self, number: int, frame: FrameType | None) -> NoReturn:
-        if self.seen is not None and number == signal.SIGINT:
+        if self.seen is not None:
             # Asked twice: what runs is not waited for; what it was writing has no final name.
-            os._exit(INTERRUPTED)
+            os._exit(TERMINATED if number == signal.SIGTERM else INTERRUPTED)
         self.seen = Terminated() if number == signal.SIGTERM else KeyboardInterrupt()
         raise self.seen
 
@@ -264,4 +264,9 @@ def run() -> NoReturn:
         # While the interpreter ends it puts the system's own handlers back: a second signal would have the last word.
         for number in (signal.SIGINT, signal.SIGTERM):
             signal.signal(number, signal.SIG_IGN)
+        # Nor is anything waited for that the signal may have left half ended, such as processes of workers.
+        with contextlib.suppress(OSError, ValueError, AttributeError):
+            sys.stdout.flush()
+            sys.stderr.flush()
+        os._exit(code)
     sys.exit(code)

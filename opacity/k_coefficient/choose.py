@@ -78,13 +78,13 @@ def choose(
     if wanted.weights == "optimised-per-band":
         points, error = _per_band(wanted, training, seed, start, executor)
     else:
-        rows = joined([rows_of(one.cells[:, _some_bands(one, seed)], one.pressure) for one in training])
+        rows = joined([rows_of(one.cells, one.pressure) for one in training])
         points, error = _shared(wanted, rows, seed, start)
     return points, {**how, "trained_error": error}
 
 
-def _some_bands(training: Training, seed: int) -> NDArray[np.int64]:
-    nodes, bands = training.cells.shape[:2]
+def some_bands(nodes: int, bands: int, seed: int) -> NDArray[np.int64]:
+    """Numbers of the bands, rising, that weights are fitted to at so many nodes: all, or some drawn by `seed`."""
     most = max(MOST_ROWS // max(nodes, 1), 1)
     if bands <= most:
         return np.arange(bands)

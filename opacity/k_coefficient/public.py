@@ -81,7 +81,7 @@ def mix_k(
     sizes = {np.shape(one) for one in species.values()}
     if len(sizes) > 1:
         found = ", ".join(str(size) for size in sorted(sizes))
-        raise InputError(problem("k", "of different shapes", expected="one shape for all species", found=found))
+        raise InputError(problem("k", "of another shape", expected="one shape for all species", found=found))
     mixture = mix([_rising_k(name, one) for name, one in species.items()], shares, points)
     total = np.max(sum(shares))
     if total > 1.0 + _ROUNDING:

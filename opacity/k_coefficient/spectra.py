@@ -128,7 +128,7 @@ def collapsed(
         cells[first:last] = fine_cells(sigma, nu, edges[first : last + 1], executor)
         for band in first + np.flatnonzero(sampling_errors(nu, sigma, edges[first : last + 1]) > SAMPLING_ERROR):
             pair = edges[band : band + 2]
-            if had[band] * FINER <= POINTS_AT_ONCE:
+            if had[band] * FINER <= min(POINTS_AT_ONCE, MOST_POINTS):
                 cells[band], had[band] = _refined(lines, pair, int(had[band]), pressure, executor)
     return BandCells(cells, np.stack([had, needed], axis=1).astype(np.float64))
 

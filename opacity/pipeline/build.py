@@ -14,7 +14,7 @@ import numpy as np
 
 from opacity.check.run import run_checks
 from opacity.cross_sections.tolerance import regions
-from opacity.errors import InUseError, ResourceError, TableError
+from opacity.errors import InUseError, ResourceError, TableError, problem
 from opacity.k_coefficient.bands import band_edges
 from opacity.line_store.lock import locked
 from opacity.pipeline.fingerprint import Fingerprint, fingerprint
@@ -26,6 +26,7 @@ from opacity.pipeline.k_units import BandUnit
 from opacity.pipeline.kinds import CROSS_SECTION, shards_of, table_name, units_of, wanted
 from opacity.pipeline.plan import Plan, make_plan, refuse_what_cannot_fit
 from opacity.pipeline.progress import Progress
+from opacity.pipeline.resources import several
 from opacity.pipeline.sources import DEFAULT_MEMORY
 from opacity.pipeline.uncertainty import stated_uncertainty
 from opacity.pipeline.units import Unit
@@ -173,9 +174,13 @@ class _Job:
         return Work(self.recipe, self.inputs.lines, self.shards)
 
     def stated(self) -> dict[str, Any]:
-        """What the lists say of their own uncertainty."""
-        hashes = self.inputs.fingerprint.hashes
-        return stated_uncertainty(self.recipe, self.folder, hashes, self.memory, self.quiet, self.plan.workers)
+        """What the lists say of their own uncertainty.  Raises ResourceError where they are others by now."""
+        origin = self.inputs.fingerprint
+        found = stated_uncertainty(self.recipe, self.folder, origin.hashes, self.memory, self.quiet, self.plan.workers)
+        if not origin.still_of(self.recipe) and fingerprint(self.recipe).sha256 != origin.sha256:
+            what = "its files changed while the table was built"
+            raise ResourceError(problem(self.recipe.path, what, remedy="build again when they are at rest"))
+        return found
 
     @property
     def origin(self) -> Origin:
@@ -280,9 +285,7 @@ def _assemble(job: _Job, units: tuple[Unit, ...], still_ours: Callable[[], None]
         extremes.append((shard.smallest, shard.largest))
         tiles[list(shard.rows)] += np.array(shard.notes["tiles"])
         processors.add(shard.notes["processor"])
-    if len(processors) > 1:
-        kinds = "; ".join(sorted(processors))
-        warnings.append(f"units were computed on several types of processor, whose last bits may differ: {kinds}")
+    warnings += several(processors)
     axes = (grid.temperature, grid.pressure) if grid.nodes is None else zip(*grid.nodes, strict=True)
     temperature, pressure = (np.array(axis, dtype=np.float64) for axis in axes)
     frame = TableFrame(

@@ -25,6 +25,7 @@ from opacity.pipeline.k_choose import MOST_ROUNDS, NodeCells, choose_certified
 from opacity.pipeline.k_units import BandUnit, missed_points
 from opacity.pipeline.open_lists import located
 from opacity.pipeline.progress import Progress
+from opacity.pipeline.resources import several
 from opacity.recipe.model import Recipe
 from opacity.recipe.positions import KeyPath
 from opacity.tables.band_shard import BandShard, read_band_shard
@@ -44,6 +45,7 @@ class ShardCells:
     nodes: tuple[int, ...]
     bands: int
     again: Callable[[BandUnit], None]
+    processors: set[str] = field(default_factory=set)
     _held: dict[int, tuple[BandUnit, BandShard]] = field(default_factory=dict)
 
     @property
@@ -71,6 +73,7 @@ class ShardCells:
             self._held = {
                 one.number: held[one.number] if one.number in held else (one, self._read(one)) for one in here
             }
+            self.processors |= {shard.processor for _, shard in self._held.values()}
         return [(number - unit.rows[0], shard) for unit, shard in self._held.values()]
 
     def _read(self, unit: BandUnit) -> BandShard:
@@ -118,7 +121,7 @@ def assemble_k(job: KJob, cells: ShardCells, still_ours: Callable[[], None]) -> 
     beside = [cells.beside(node) for node in np.ndindex(cells.nodes)]
     planck, rosseland = means_of_sums(np.array([sums for sums, _ in beside]))
     spectra = np.array([had for _, had in beside])
-    warnings = [*job.warnings, *missed_points(spectra, recipe.grid.node_list())]
+    warnings = [*job.warnings, *missed_points(spectra, recipe.grid.node_list()), *several(cells.processors)]
     edges = band_edges(recipe)
     shape = (*cells.nodes, cells.bands, points.count)
     axes = (recipe.grid.temperature, recipe.grid.pressure)

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from opacity.errors import InputError, problem
 from opacity.grids import FloatArray
 from opacity.k_coefficient.certificate import errors_at_node
-from opacity.k_coefficient.choose import TRAINING_NODES, Training, Wanted, choose
+from opacity.k_coefficient.choose import TRAINING_NODES, Training, Wanted, choose, some_bands
 from opacity.k_coefficient.optimise import training_nodes
 from opacity.k_coefficient.quadrature import GPoints, k_from_cells
 
@@ -72,7 +72,7 @@ def choose_certified(
     for _ in range(MOST_ROUNDS):
         trained = nodes
         training = [
-            Training(np.array([one.cells(row) for row in rows]), one.pressure[rows])
+            Training(np.array([_some(one.cells(row), len(rows), wanted, seed) for row in rows]), one.pressure[rows])
             for one, rows in zip(tables, nodes, strict=True)
         ]
         points, how = _chosen(aimed, training, seed, points, executor)
@@ -100,6 +100,11 @@ def choose_certified(
         error = InputError(problem("transmission_error", "is not met", expected=expected, found=found_, remedy=remedy))
         raise error.about("transmission_error")
     return points, how, trained
+
+
+def _some(cells: FloatArray, nodes: int, wanted: Wanted, seed: int) -> FloatArray:
+    """Of a node's cells (n_band, N_CELLS) those of the bands that weights are fitted to at so many nodes."""
+    return cells if wanted.weights == "optimised-per-band" else cells[some_bands(nodes, len(cells), seed)]
 
 
 def _fewer(

@@ -24,6 +24,7 @@ from opacity.k_coefficient.means import mean_sums
 from opacity.k_coefficient.spectra import collapsed, lines_of_bands, margin_of, points_needed
 from opacity.kernels.jit import source_hash
 from opacity.kernels.line_width import doppler_share
+from opacity.pipeline.resources import processor
 from opacity.recipe.model import Recipe
 from opacity.tables.band_shard import BandShard, write_band_shard
 from opacity.tables.sealed import ENDING
@@ -112,7 +113,7 @@ def compute_bands(recipe: Recipe, source: LineSource, unit: BandUnit, executor: 
 
             one = collapsed(lines, edges, nodes[place][1], executor, seen)
             cells[place], points[place] = one.cells, one.points
-    return BandShard(cells, sums, points)
+    return BandShard(cells, sums, points, processor())
 
 
 def missed_points(points: FloatArray, nodes: Sequence[tuple[float, float]]) -> list[str]:

@@ -106,3 +106,11 @@ def _lines(path: Path) -> list[str]:
 def _words(path: Path) -> list[str]:
     lines = _lines(path)
     return lines[0].split() if lines else []
+
+
+def several(processors: set[str]) -> list[str]:
+    """A warning where units were computed on several types of processor."""
+    if len(processors) < 2:
+        return []
+    kinds = "; ".join(sorted(processors))
+    return [f"units were computed on several types of processor, whose last bits may differ: {kinds}"]

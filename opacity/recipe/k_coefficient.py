@@ -21,7 +21,7 @@ _BANDS = "{ resolving_power }, { width }, { edges } or { wavelength }"
 _RESOLVING_POWER = Bounds(1.0, 1e6)
 _WIDTH = Bounds(1e-3, 1e6, "cm-1")
 _WAVELENGTH = Bounds(1e-2, 1e8, "micrometres")
-_ERROR = Bounds(1e-5, 0.1)
+_ERROR = Bounds(1e-4, 0.1)
 
 
 def read_k_coefficient(root: Table, grid: Grid) -> KCoefficientChoice | None:

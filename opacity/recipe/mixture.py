@@ -15,7 +15,7 @@ from opacity.recipe.sections import read_profile
 from opacity.recipe.table import Bounds, Table
 
 SECTIONS = ("species", "profile", "grid", "cross_section", "k_coefficient")
-_FRACTION = Bounds(0.0, 1.0, open_low=True)
+_FRACTION = Bounds(1e-30, 1.0)
 _ROUNDING = 1e-9
 
 

@@ -19,12 +19,13 @@ from opacity.tables.sealed import read_sealed, write_sealed
 @dataclass(frozen=True)
 class BandShard:
     """Fine `cells` (n_row, n_band, n_cell), cm2; `sums` (n_row, 4) that means are made of; `points` (n_row, n_band, 2)
-    that the spectrum of a band had, and would have needed.
+    that the spectrum of a band had, and would have needed; the type of `processor` that made them.
     """
 
     cells: NDArray[Any]
     sums: FloatArray
     points: FloatArray
+    processor: str
 
 
 def write_band_shard(path: Path, shard: BandShard) -> None:
@@ -39,7 +40,8 @@ def write_band_shard(path: Path, shard: BandShard) -> None:
     arrays = {"cells": shard.cells.astype(dtype), "sums": shard.sums, "points": shard.points}
     blocks = [np.ascontiguousarray(one).tobytes() for one in arrays.values()]
     described = [[name, one.dtype.str, one.shape] for name, one in arrays.items()]
-    write_sealed(path, {"arrays": described, "sha256": [_sha256(block) for block in blocks]}, blocks)
+    header = {"arrays": described, "sha256": [_sha256(block) for block in blocks], "processor": shard.processor}
+    write_sealed(path, header, blocks)
 
 
 def read_band_shard(path: Path) -> BandShard:
@@ -47,12 +49,11 @@ def read_band_shard(path: Path) -> BandShard:
     header, blocks = read_sealed(path)
     if [_sha256(block) for block in blocks] != header["sha256"]:
         raise TableError(problem(path, "the shard is not as it was written"))
-    return BandShard(
-        **{
-            name: np.frombuffer(block, dtype).reshape(shape)
-            for (name, dtype, shape), block in zip(header["arrays"], blocks, strict=True)
-        }
-    )
+    arrays = {
+        name: np.frombuffer(block, dtype).reshape(shape)
+        for (name, dtype, shape), block in zip(header["arrays"], blocks, strict=True)
+    }
+    return BandShard(arrays["cells"], arrays["sums"], arrays["points"], header["processor"])
 
 
 def _sha256(block: bytes | memoryview) -> str:

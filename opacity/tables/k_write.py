@@ -129,10 +129,11 @@ def _stored_type(path: Path, table: KTable, name: str, values: NodeValues) -> np
     """The type that fits all values; TableError at the first that may not be stored."""
     smallest, largest = math.inf, 0.0
     for node in np.ndindex(table.nodes):
-        bad = first_impossible(values[node], rising=name == k_layout.K_COEFFICIENT)
+        one = values[node]
+        bad = first_impossible(one, rising=name == k_layout.K_COEFFICIENT)
         if bad is not None:
             raise TableError(_misplaced(path, table, name, node, bad))
-        positive = values[node][values[node] > 0.0]
+        positive = one[one > 0.0]
         if positive.size:
             smallest, largest = min(smallest, float(positive.min())), max(largest, float(positive.max()))
     return layout.stored_type(smallest, largest)
@@ -140,7 +141,7 @@ def _stored_type(path: Path, table: KTable, name: str, values: NodeValues) -> np
 
 def _misplaced(path: Path, table: KTable, name: str, node: tuple[int, ...], bad: tuple[int, int]) -> str:
     band, point = bad
-    row = getattr(table, name)[(*node, band)]
+    row = getattr(table, name)[node][band]
     place = f"{name} at {_place(table, node)}, {table.band[band]:.10g} cm-1, point {point}"
     if np.isfinite(row[point]) and row[point] >= 0.0:
         return problem(path, f"{place} falls", expected=f"{row[point - 1]:g} or above", found=f"{row[point]:g}")

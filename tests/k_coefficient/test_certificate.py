@@ -44,7 +44,7 @@ def test_errors_are_those_of_transmissions_taken_one_by_one(cells: np.ndarray):
         np.testing.assert_allclose(found.largest, errors[worst], rtol=1e-9)
         assert found.node == worst[0]
         np.testing.assert_allclose(found.column, columns[worst])
-        np.testing.assert_allclose(found.p99, np.percentile(np.abs(errors), 99.0, method="inverted_cdf"), rtol=0.01)
+        np.testing.assert_allclose(found.p99, np.percentile(np.abs(errors), 99.0, method="inverted_cdf"), rtol=0.04)
         assert abs(found.mean) < 1e-12
 
 

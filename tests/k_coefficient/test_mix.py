@@ -116,7 +116,7 @@ K4 = np.array([[1.0, 2.0, 3.0, 4.0]])
         ({"a": K4[0]}, {"a": 1.0}, W4, "k: of another shape"),
         ({"a": K4[:, :3]}, {"a": 1.0}, W4, "k: of another shape.*n_band, 4"),
         ({"a": K4, "b": np.repeat(K4, 2, axis=0)}, {"a": 0.5, "b": 0.5}, W4, "k: of another shape"),
-        ({"a": np.ones((3, 1, 4)), "b": np.ones((2, 1, 4))}, {"a": 0.5, "b": 0.5}, W4, "k and fractions: do not fit"),
+        ({"a": np.ones((3, 1, 4)), "b": np.ones((2, 1, 4))}, {"a": 0.5, "b": 0.5}, W4, "k: of another shape"),
         ({"a": np.ones((3, 1, 4))}, {"a": [0.5, 0.5]}, W4, r"k and fractions: do not fit.*\(2, 1, 1\)"),
         (K4, {"a": 1.0}, W4, "k: not a dict"),
         ({"a": K4}, {"a": 1.0}, [1.0, 2.0], "weights: impossible"),

@@ -176,12 +176,12 @@ FAULTS = [
     ),
     (
         GOOD + 'g_points = "many"',
-        '49: k_coefficient.g_points: impossible value; expected a whole number from 1 to 200, found "many"',
+        '49: k_coefficient.g_points: impossible; expected "auto" or a whole number from 1 to 200, found "many"',
     ),
     (GOOD + "transmission_error = 1e-3", '49: k_coefficient.transmission_error: goes with g_points = "auto" alone'),
     (
         GOOD + 'g_points = "auto"\ntransmission_error = nan',
-        "50: k_coefficient.transmission_error: impossible value; expected a number from 1e-05 to 0.1, found nan",
+        "50: k_coefficient.transmission_error: impossible value; expected a number from 0.0001 to 0.1, found nan",
     ),
     (
         GOOD + 'quadrature = "simpson"',

@@ -87,13 +87,13 @@ FAULTS = [
     ),
     (
         [("0.3", "0.0")],
-        "3: species[0].fraction: impossible value; expected a number above 0 and at most 1, found 0.0",
+        "3: species[0].fraction: impossible value; expected a number from 1e-30 to 1, found 0.0",
     ),
     (
         [("0.3", "nan")],
-        "3: species[0].fraction: impossible value; expected a number above 0 and at most 1, found nan",
+        "3: species[0].fraction: impossible value; expected a number from 1e-30 to 1, found nan",
     ),
-    ([("fraction = 0.7\n", "")], "5: species[1].fraction: missing; expected a number above 0 and at most 1"),
+    ([("fraction = 0.7\n", "")], "5: species[1].fraction: missing; expected a number from 1e-30 to 1"),
     (
         [("0.3", "0.4")],
         "1: species: too much; expected a sum of fractions of at most 1, found 1.1; fractions are mole fractions; "

@@ -94,7 +94,8 @@ def partition_sum(states: States, temperatures: ArrayLike) -> FloatArray:
         energy = states.energy[start : start + _AT_A_TIME]
         weight = states.total_weight[start : start + _AT_A_TIME]
         for i, temperature in enumerate(wanted):
-            total[i] += np.dot(weight, np.exp(-SECOND_RADIATION / temperature * energy))
+            # Not by the dot product, whose last bits depend on the threads that BLAS gets.
+            total[i] += np.sum(weight * np.exp(-SECOND_RADIATION / temperature * energy))
     return total
 
 
