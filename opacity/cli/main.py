@@ -7,6 +7,7 @@ import contextlib
 import io
 import json
 import math
+import multiprocessing
 import os
 import re
 import signal
@@ -264,9 +265,10 @@ def run() -> NoReturn:
         # While the interpreter ends it puts the system's own handlers back: a second signal would have the last word.
         for number in (signal.SIGINT, signal.SIGTERM):
             signal.signal(number, signal.SIG_IGN)
-        # Nor is anything waited for that the signal may have left half ended, such as processes of workers.
-        with contextlib.suppress(OSError, ValueError, AttributeError):
-            sys.stdout.flush()
-            sys.stderr.flush()
-        os._exit(code)
+        if multiprocessing.active_children():
+            # Their end would be waited for, and a signal may have left them without the word for it.
+            with contextlib.suppress(OSError, ValueError, AttributeError):
+                sys.stdout.flush()
+                sys.stderr.flush()
+            os._exit(code)
     sys.exit(code)
