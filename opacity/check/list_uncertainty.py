@@ -13,7 +13,7 @@ from opacity.grids import FloatArray
 
 @dataclass(frozen=True)
 class ListUncertainty:
-    """Relative standard deviations of the bands' strengths that follow from what a list states of its lines.
+    """Relative uncertainties of the bands' strengths that follow from what a list states of its lines.
 
     `bands` (n_band, 2), cm-1; `nodes` (n_node, 2), K and bar; `correlated` (all lines off together) and `uncorrelated`
     (each line by itself), (n_node, n_band), NaN where unknown; `facts` what else is said, as words and values.
@@ -26,7 +26,14 @@ class ListUncertainty:
     facts: tuple[tuple[str, str], ...]
 
 
-_WORDS = (("width", "half-widths"), ("position", "positions"), ("not_stated", "not stated"), ("source", "source"))
+_WORDS = (
+    ("width", "half-widths (relative, times Lorentz's share)"),
+    ("position", "positions (in half-widths)"),
+    ("not_stated", "share without a stated strength"),
+    ("width_not_stated", "share without a stated half-width"),
+    ("position_not_stated", "share without a stated position"),
+    ("source", "source"),
+)
 
 
 def list_uncertainty(stored: Any) -> ListUncertainty | None:

@@ -15,7 +15,7 @@ from opacity.pipeline.inputs import check_molecule, refuse_invalid_temperatures
 from opacity.recipe.document import parse, read_text
 from opacity.recipe.faults import Faults, dotted, faults_of
 from opacity.recipe.load import load_recipe
-from opacity.recipe.marks import DECIDE, undecided
+from opacity.recipe.marks import undecided
 from opacity.recipe.model import LineListSource, Recipe
 from opacity.recipe.unverified import ACCEPT, add_unverified
 
@@ -52,7 +52,7 @@ def require_complete(path: Path) -> Recipe:
 
 def _undecided(path: Path, line: int, key: str, words: str) -> str:
     where = f"{printable(str(path))}:{line}: {key}" if key else f"{printable(str(path))}:{line}"
-    remedy = f"decide, then remove the mark {DECIDE.rstrip(':')}"
+    remedy = "decide, then remove the mark DECIDE"
     return problem(where, "not decided yet", expected=printable(words) or None, remedy=remedy)
 
 

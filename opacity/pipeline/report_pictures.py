@@ -162,6 +162,6 @@ def uncertainty_picture(name: str, found: ListUncertainty) -> Picture | None:
                 said.append(f"{label}: at most {100.0 * values[node, worst]:.3g} % at {middles[worst]:.6g} cm⁻¹.")
     if not lines:
         return None
-    words = f"Relative standard deviation of the strength of each band that follows from the list. {' '.join(said)}"
+    words = f"Relative uncertainty of the strength of each band that follows from the list. {' '.join(said)}"
     labels = ("wavenumber (cm⁻¹)", "uncertainty (%)")
     return line_picture(name, "The list's own uncertainty by band", words, lines, labels, log=True)

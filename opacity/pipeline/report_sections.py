@@ -85,7 +85,8 @@ def _uncertainty(found: ListUncertainty | None, name: str) -> Iterator[str]:
         rows.append((f"{low:.7g} to {high:.7g}", *spans))
     heads = ("band (cm-1)", "lines off together", "each by itself")
     most = f"; the {len(rows)} of {len(found.bands)} bands with the largest" if len(rows) < len(found.bands) else ""
-    said = f"Strength of the band, one standard deviation, over {len(found.nodes)} nodes{most}."
+    of_what = "Strength of the band, relative uncertainty by the upper ends of the classes stated"
+    said = f"{of_what}, over {len(found.nodes)} nodes{most}."
     yield html.columns(heads, rows, said)
     yield html.pairs(found.facts)
 

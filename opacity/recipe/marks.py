@@ -13,7 +13,7 @@ from dataclasses import dataclass
 
 from opacity.recipe.positions import STRING, KeyPath, key_lines
 
-DECIDE = "DECIDE:"
+DECIDE = re.compile(r"^#?\s*DECIDE\b:?|\bDECIDE:", re.MULTILINE)
 """The word, in a comment, for what is still to be decided."""
 
 _COMMENT = re.compile(STRING.pattern + r"|(?P<comment>#[^\n]*)", re.DOTALL)
@@ -67,12 +67,12 @@ def _section(key: KeyPath) -> KeyPath:
 def undecided(text: str) -> tuple[tuple[int, KeyPath, str], ...]:
     """Line, key and words of all that is marked as undecided; nothing where the text is no TOML."""
     marked: list[tuple[int, KeyPath, str]] = []
-    if DECIDE not in text or not _is_toml(text):
+    if "DECIDE" not in text or not _is_toml(text):
         return ()
     for one in comments_of(text):
-        _, mark, words = one.text.partition(DECIDE)
-        if mark:
-            marked.append((one.line, one.key, words.strip()))
+        mark = DECIDE.search(one.text)
+        if mark is not None:
+            marked.append((one.line, one.key, one.text[mark.end() :].strip()))
     return tuple(marked)
 
 
@@ -81,7 +81,7 @@ def undecided_warnings(text: str) -> tuple[str, ...]:
     lines = [str(line) for line, _, _ in undecided(text)]
     if not lines:
         return ()
-    return (f"still marked {DECIDE.rstrip(':')} in the recipe: line{'s' * (len(lines) > 1)} {', '.join(lines)}",)
+    return (f"still marked DECIDE in the recipe: line{'s' * (len(lines) > 1)} {', '.join(lines)}",)
 
 
 def _is_toml(text: str) -> bool:

@@ -6,6 +6,7 @@ comment behind a value on its line.
 
 from __future__ import annotations
 
+import re
 import tomllib
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -18,7 +19,7 @@ from opacity.recipe.marks import comments_of
 from opacity.recipe.model import Recipe
 from opacity.recipe.positions import KeyPath, key_lines, line_of
 
-WORDS = "from memory"
+WORDS = re.compile(r"from[\s-]+memory", re.IGNORECASE)
 ACCEPT = "accept_unverified"
 _SOURCES = ("source", "reference")
 
@@ -39,7 +40,7 @@ class Unverified:
 
 def unverified_values(text: str) -> tuple[Unverified, ...]:
     """All values from memory of a recipe's text, in the order of its lines; none where the text is no TOML."""
-    if WORDS not in text.lower() and not any(name in text for name in CHI_FACTORS):
+    if not WORDS.search(text) and not any(name in text for name in CHI_FACTORS):
         return ()  # a recipe may have a million nodes
     text = text.replace("\r\n", "\n")
     try:
@@ -49,7 +50,7 @@ def unverified_values(text: str) -> tuple[Unverified, ...]:
     lines = key_lines(text)
     found = {key: Unverified(key, line_of(lines, key), says) for key, says in _said(document, ())}
     for comment in comments_of(text):
-        if comment.key not in ((), (ACCEPT,)) and not comment.alone and WORDS in comment.text.lower():
+        if comment.key not in ((), (ACCEPT,)) and not comment.alone and WORDS.search(comment.text):
             found.setdefault(comment.key, Unverified(comment.key, comment.line, comment.text))
     return tuple(sorted(found.values(), key=lambda one: one.line))
 
@@ -64,7 +65,7 @@ def _said(value: Any, key: KeyPath) -> Iterator[tuple[KeyPath, str]]:
             yield from _said(inner, (*key, index))
     elif isinstance(value, str) and key:
         says = CHI_FACTORS[value].source if key[-1] == "chi" and value in CHI_FACTORS else value
-        if (key[-1] in _SOURCES or says is not value) and WORDS in says.lower():
+        if (key[-1] in _SOURCES or says is not value) and WORDS.search(says):
             yield key, says
 
 
@@ -73,7 +74,7 @@ def add_unverified(faults: Faults, text: str) -> None:
     for one in unverified_values(text):
         faults.add(
             one.key,
-            f"{one.name} is {WORDS}" if one.name != dotted(one.key) else f"a value {WORDS}",
+            f"{one.name} is from memory" if one.name != dotted(one.key) else "a value from memory",
             expected="a published source",
             found=f'"{printable(one.says)}"',
             remedy=f"look it up, or put {ACCEPT} = true at the top of the recipe",
