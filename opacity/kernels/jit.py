@@ -4,9 +4,9 @@
 infinity undefined are left out, so that a NaN that gets in comes out.  Kernels are single-threaded and release the
 interpreter lock: the caller runs tiles side by side in threads, and results do not depend on their number.
 
-What a kernel calls is made part of it. Otherwise a process that loads machine code from disk may link it with another
-copy of the function called than the process that compiled it, optimised for another caller and rounding otherwise: bits
-would depend on the order in which kernels were once compiled.
+What a kernel calls is made part of it, if its arithmetic may be rearranged.  Otherwise a process that loads machine
+code from disk may link it with another copy of the function called than the process that compiled it, optimised for
+another caller and rounding otherwise: bits would depend on the order in which kernels were once compiled.
 
 Machine code is kept on disk.  numba judges its age by the file of the function alone, not by the files of the
 functions that it calls: so it is kept in a folder named by a hash of all kernels' source, in the first place that
@@ -111,7 +111,13 @@ def jit_in_order(function: Function) -> Function:
 
 
 def _compile(function: Function, fastmath: bool | set[str]) -> Function:
-    options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "forceinline": True, "fastmath": fastmath}
+    # Plain IEEE arithmetic rounds the same wherever it stands, and compiles sooner on its own.
+    options: dict[str, Any] = {
+        "nogil": True,
+        "error_model": "numpy",
+        "forceinline": bool(fastmath),
+        "fastmath": fastmath,
+    }
     with _cache_of_this_source():
         compiled: Any = numba.njit(cache=_FOLDER is not None, **options)(function)
     return cast(Function, compiled)

@@ -30,11 +30,14 @@ print(digest[True], digest[False])
 
 def test_compiled_here_or_there_in_any_order(tmp_path):
     def run(order: str, cache: str) -> str:
-        environment = {**os.environ, "NUMBA_CACHE_DIR": str(tmp_path / cache), "NUMBA_DISABLE_JIT": "0"}
+        environment = {**os.environ, "NUMBA_DISABLE_JIT": "0"}
+        if cache == "a":
+            environment["NUMBA_CACHE_DIR"] = str(tmp_path / cache)
         command = [sys.executable, "-c", PROGRAM, order]
         return subprocess.run(command, env=environment, capture_output=True, text=True, check=True).stdout
 
     compiled = run("cells first", "a")
     assert len(compiled.split()) == 2
     assert run("points first", "a") == compiled  # loaded, not compiled
-    assert run("points first", "b") == compiled
+    # By whoever compiled what the other tests use, in another order.
+    assert run("points first", os.environ.get("NUMBA_CACHE_DIR", "")) == compiled
