@@ -108,6 +108,7 @@ def stages(title: str, recipe_path: Path, folder: Path) -> None:
         timed("packing", units_module, "make_shard"),
         timed("units", build_module, "in_threads"),
         timed("checks", build_module, "run_checks"),
+        timed("checks", build_module, "stated_uncertainty"),
         timed("assembly", build_module, "assemble_table"),
     ]
     try:
